@@ -1,15 +1,28 @@
-"""The types that stand between generation and fit: a set of templates with their variations."""
+"""The types that stand between generation and fit: a set of templates with their variations.
+
+All are validated when made, and raise InputError with every problem found. Arrays are copied and made read-only.
+"""
 
 from __future__ import annotations
 
-from collections.abc import Mapping
-from dataclasses import dataclass, field
+import re
+from collections import Counter
+from collections.abc import Iterable, Iterator, Mapping
+from dataclasses import dataclass, field, replace
+from math import isfinite
 from types import MappingProxyType
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
+
+from .errors import InputError, Problem
 
 Floats = NDArray[np.float64]
+
+ROLES = ("signal", "normalisation", "feed-down", "background")
+KINDS = ("ratio", "yield")
+RESERVED = {"component": "data", "category": "meta"}
+"""Names that the template file uses for itself."""
 
 
 @dataclass(frozen=True)
@@ -21,6 +34,22 @@ class Observable:
     unit: str
     edges: tuple[float, ...]
 
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "edges", tuple(float(edge) for edge in self.edges))
+        _refuse(self._problems())
+
+    def _problems(self) -> Iterator[Problem]:
+        where = f"observable {self.name}"
+        yield from _name_problems("observable", self.name)
+        if len(self.edges) < 2:
+            yield Problem("an axis needs at least two edges", where, got=str(len(self.edges)))
+        elif not all(map(isfinite, self.edges)):
+            yield Problem("edges must be finite", where, got=str(list(self.edges)))
+        else:
+            for low, high in zip(self.edges, self.edges[1:], strict=False):
+                if low >= high:
+                    yield Problem("edges must increase", where, got=f"{low:g} before {high:g}")
+
 
 @dataclass(frozen=True)
 class Category:
@@ -29,6 +58,17 @@ class Category:
     name: str
     label: str
     observables: tuple[Observable, ...]
+
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "observables", tuple(self.observables))
+        _refuse(self._problems())
+
+    def _problems(self) -> Iterator[Problem]:
+        where = f"category {self.name}"
+        yield from _name_problems("category", self.name)
+        if not 1 <= len(self.observables) <= 3:
+            yield Problem("wrong number of observables", where, got=str(len(self.observables)), wanted="1 to 3")
+        yield from _repeated("observable", (observable.name for observable in self.observables), where)
 
     @property
     def shape(self) -> tuple[int, ...]:
@@ -49,6 +89,17 @@ class Component:
     role: str
     scales_with: tuple[str, ...]
 
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "scales_with", tuple(self.scales_with))
+        _refuse(self._problems())
+
+    def _problems(self) -> Iterator[Problem]:
+        where = f"component {self.name}"
+        yield from _name_problems("component", self.name)
+        if self.role not in ROLES:
+            yield Problem("unknown role", where, got=repr(self.role), wanted=", ".join(ROLES))
+        yield from _repeated("scale parameter", self.scales_with, where)
+
 
 @dataclass(frozen=True)
 class ScaleParameter:
@@ -64,6 +115,19 @@ class ScaleParameter:
     injected: float
     constraint: float | None = None
 
+    def __post_init__(self) -> None:
+        _refuse(self._problems())
+
+    def _problems(self) -> Iterator[Problem]:
+        where = f"parameter {self.name}"
+        yield from _name_problems("parameter", self.name)
+        if self.kind not in KINDS:
+            yield Problem("unknown kind", where, got=repr(self.kind), wanted=", ".join(KINDS))
+        # Templates are divided by the injected value: zero would leave nothing to scale.
+        for what, value in (("injected value", self.injected), ("constraint", self.constraint)):
+            if value is not None and not (isfinite(value) and value > 0):
+                yield Problem(f"{what} must be positive and finite", where, got=str(value))
+
 
 @dataclass(frozen=True)
 class Nuisance:
@@ -73,13 +137,18 @@ class Nuisance:
     label: str
     group: str
 
+    def __post_init__(self) -> None:
+        _refuse(_name_problems("nuisance", self.name))
 
-@dataclass(frozen=True)
+
+@dataclass(frozen=True, eq=False)
 class Template:
     """Expected events of one component in one category.
 
     nominal, variance : (bins of the category's axes) float64, events and events squared (finite generated sample).
     plus, minus : nuisance name -> array of the same shape; the same keys in both; absent where it does not act.
+
+    Contents may be negative (weights may be), but not NaN or infinite; variances may be neither.
     """
 
     nominal: Floats
@@ -87,8 +156,31 @@ class Template:
     plus: Mapping[str, Floats] = field(default_factory=lambda: MappingProxyType({}))
     minus: Mapping[str, Floats] = field(default_factory=lambda: MappingProxyType({}))
 
+    def __post_init__(self) -> None:
+        object.__setattr__(self, "nominal", _read_only(self.nominal))
+        object.__setattr__(self, "variance", _read_only(self.variance))
+        object.__setattr__(self, "plus", _read_only_mapping(self.plus))
+        object.__setattr__(self, "minus", _read_only_mapping(self.minus))
+        _refuse(self._problems())
 
-@dataclass(frozen=True)
+    def __reduce__(self) -> tuple[object, ...]:  # mapping proxies do not pickle
+        return Template, (self.nominal, self.variance, dict(self.plus), dict(self.minus))
+
+    def _problems(self) -> Iterator[Problem]:
+        sides = {f"{side}/{name}": values for side in ("plus", "minus") for name, values in getattr(self, side).items()}
+        for where, values in {"nominal": self.nominal, "variance": self.variance, **sides}.items():
+            if values.shape != self.nominal.shape:
+                yield Problem("shape differs from the nominal", where, str(values.shape), str(self.nominal.shape))
+            yield from _bin_problems(where, "not finite", values, ~np.isfinite(values))
+        yield from _bin_problems("variance", "negative variance", self.variance, self.variance < 0)
+        for name in sorted(self.plus.keys() ^ self.minus.keys()):
+            there, missing = ("plus", "minus") if name in self.plus else ("minus", "plus")
+            yield Problem(
+                "one side of a variation is missing", f"{missing}/{name}", remedy=f"Add it beside {there}/{name}."
+            )
+
+
+@dataclass(frozen=True, eq=False)
 class TemplateSet:
     """Everything a fit needs, as read from or written to a template file.
 
@@ -104,3 +196,97 @@ class TemplateSet:
     templates: Mapping[tuple[str, str], Template]
     data: Mapping[str, Floats] = field(default_factory=lambda: MappingProxyType({}))
     provenance: Mapping[str, object] = field(default_factory=lambda: MappingProxyType({}))
+
+    def __post_init__(self) -> None:
+        for name in ("categories", "components", "parameters", "nuisances"):
+            object.__setattr__(self, name, tuple(getattr(self, name)))
+        object.__setattr__(self, "templates", MappingProxyType(dict(self.templates)))
+        object.__setattr__(self, "data", _read_only_mapping(self.data))
+        object.__setattr__(self, "provenance", MappingProxyType(dict(self.provenance)))
+        _refuse(self._problems())
+
+    def __reduce__(self) -> tuple[object, ...]:
+        mappings = dict(self.templates), dict(self.data), dict(self.provenance)
+        return TemplateSet, (self.categories, self.components, self.parameters, self.nuisances, *mappings)
+
+    def with_data(self, data: Mapping[str, ArrayLike]) -> TemplateSet:
+        """The same templates with these observed counts: category name -> array of the category's shape."""
+        return replace(self, data={name: _read_only(counts) for name, counts in data.items()})
+
+    def _problems(self) -> Iterator[Problem]:
+        if not self.categories:
+            yield Problem("there is no category")
+        if not self.components:
+            yield Problem("there is no component")
+        yield from _repeated("category", (category.name for category in self.categories))
+        yield from _repeated("component", (component.name for component in self.components))
+        # Both kinds are parameters of one fit, so they share one set of names.
+        parameters = [parameter.name for parameter in self.parameters]
+        yield from _repeated("parameter", [*parameters, *(nuisance.name for nuisance in self.nuisances)])
+        for component in self.components:
+            yield from _unknown("parameter", component.scales_with, parameters, f"component {component.name}")
+        shapes = {category.name: category.shape for category in self.categories}
+        components = {component.name for component in self.components}
+        nuisances = {nuisance.name for nuisance in self.nuisances}
+        for (category, name), template in self.templates.items():
+            where = f"{category}/{name}"
+            yield from _unknown("category", [category], shapes, where)
+            yield from _unknown("component", [name], components, where)
+            yield from _unknown("nuisance", template.plus, nuisances, where)
+            if template.nominal.shape != shapes.get(category, template.nominal.shape):
+                yield Problem("shape differs from the axes", where, str(template.nominal.shape), str(shapes[category]))
+        for category, counts in self.data.items():
+            where = f"{category}/data"
+            yield from _unknown("category", [category], shapes, where)
+            if counts.shape != shapes.get(category, counts.shape):
+                yield Problem("shape differs from the axes", where, str(counts.shape), str(shapes[category]))
+            yield from _bin_problems(where, "not finite", counts, ~np.isfinite(counts))
+            yield from _bin_problems(where, "negative count", counts, counts < 0)
+
+
+def _refuse(problems: Iterable[Problem]) -> None:
+    found = tuple(problems)
+    if found:
+        raise InputError(*found)
+
+
+def _name_problems(kind: str, name: object) -> Iterator[Problem]:
+    if not isinstance(name, str) or not re.fullmatch(r"[A-Za-z0-9_]+", name):
+        yield Problem(f"not a name for a {kind}", got=repr(name), wanted="letters, digits and _")
+    elif name == RESERVED.get(kind):
+        yield Problem(f"the template file keeps this name for itself: no {kind} can have it", got=repr(name))
+
+
+def _repeated(kind: str, names: Iterable[str], where: str = "") -> Iterator[Problem]:
+    for name, times in Counter(names).items():
+        if times > 1:
+            yield Problem(f"{kind} given {times} times", where, got=repr(name), wanted="once")
+
+
+def _unknown(kind: str, names: Iterable[str], known: Iterable[str], where: str) -> Iterator[Problem]:
+    for name in names:
+        if name not in known:
+            yield Problem(f"unknown {kind}", where, got=repr(name), wanted=", ".join(sorted(known)) or "none")
+
+
+def _bin_problems(where: str, what: str, values: Floats, wrong: NDArray[np.bool_]) -> Iterator[Problem]:
+    """One problem for all wrong bins of an array: it names the first, and how many there are."""
+    if wrong.any():
+        place = tuple(int(index) for index in np.argwhere(wrong)[0])
+        more = int(wrong.sum()) - 1
+        yield Problem(
+            what, f"{where} bin {list(place)}" + (f" and {more} more" if more else ""), got=f"{values[place]:g}"
+        )
+
+
+def _read_only(values: ArrayLike) -> Floats:
+    try:
+        array = np.array(values, dtype=np.float64, order="C")
+    except (TypeError, ValueError) as error:
+        raise InputError(Problem("not an array of numbers", got=type(values).__name__)) from error
+    array.flags.writeable = False
+    return array
+
+
+def _read_only_mapping(mapping: Mapping[str, ArrayLike]) -> Mapping[str, Floats]:
+    return MappingProxyType({name: _read_only(values) for name, values in mapping.items()})

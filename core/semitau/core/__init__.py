@@ -1,0 +1,34 @@
+"""What generation and fit share: errors, templates and their file, the task engine, files that appear whole."""
+
+from importlib import import_module
+from typing import Any
+
+_HOME = {
+    "Category": "templates",
+    "Component": "templates",
+    "InputError": "errors",
+    "Nuisance": "templates",
+    "Observable": "templates",
+    "Problem": "errors",
+    "RunError": "errors",
+    "ScaleParameter": "templates",
+    "SemitauError": "errors",
+    "Template": "templates",
+    "TemplateSet": "templates",
+    "run": "engine",
+    "whole_file": "whole_files",
+    "write_whole": "whole_files",
+}
+
+__all__ = sorted(_HOME)
+
+
+def __getattr__(name: str) -> Any:
+    """Names are imported when asked for, so that a light one (the errors) does not bring numpy with it."""
+    if name not in _HOME:
+        raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+    return getattr(import_module(f".{_HOME[name]}", __name__), name)
+
+
+def __dir__() -> list[str]:
+    return __all__
