@@ -1,0 +1,153 @@
+"""Components of a study: [[mode]] (made by the decay generator) and [[background]] (made from shapes)."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, Literal
+
+from pydantic import Field, GetJsonSchemaHandler, model_validator
+from pydantic.json_schema import JsonSchemaValue
+from pydantic_core import CoreSchema
+
+from .study_laws import Law
+from .study_names import CharmFamily, Lepton, Parent, RatioName
+from .study_rules import ByObservable, Count, Flag, Identifier, NotNegative, Number, Positive, Table, Text, broken, rule
+
+_Distinct = rule(lambda names: len(set(names)) == len(names), "must not name anything twice")
+
+
+class Yield(Table):
+    """How far the fit may move a component's yield from the expectation.
+
+    In the file: "free", "fixed", or { uncertainty = 0.3 }, the relative standard deviation of a Gaussian constraint.
+    """
+
+    kind: Literal["free", "fixed", "gaussian"] = "gaussian"
+    uncertainty: Positive | None = Field(default=None, description="relative, one standard deviation")
+
+    @model_validator(mode="before")
+    @classmethod
+    def _from_word(cls, given: Any) -> Any:
+        if isinstance(given, Yield):
+            return given
+        if given in ("free", "fixed"):
+            return {"kind": given}
+        if not isinstance(given, dict):
+            raise broken("is no yield", '"free", "fixed" or { uncertainty = 0.3 }')
+        if "kind" in given:
+            return given
+        if "uncertainty" not in given:
+            raise broken("lacks the key uncertainty", remedy="Write { uncertainty = 0.3 } for 30%.", got="")
+        return given | {"kind": "gaussian"}
+
+    @classmethod
+    def __get_pydantic_json_schema__(cls, core: CoreSchema, handler: GetJsonSchemaHandler) -> JsonSchemaValue:
+        table = {
+            "type": "object",
+            "properties": {"uncertainty": {"type": "number", "exclusiveMinimum": 0}},
+            "required": ["uncertainty"],
+            "additionalProperties": False,
+        }
+        return {"anyOf": [{"enum": ["free", "fixed"]}, table], "description": cls.__doc__}
+
+
+class Mode(Table):
+    """A component made by the decay generator.
+
+    `charm` names hadrons without their charge; charges follow from the parents, charge conjugates are implied.
+    `events` generated decays are shared between all decay chains of the mode by their expected rate.
+
+    A mode with `scales_with` is a numerator: its yield is the ratio times the yield of the mode that it `follows`,
+    which is found by itself if it is the one mode with the same charm and leptons e and mu. A mode that `follows`
+    another without a ratio scales with the other's yield besides its own.
+    """
+
+    component: Identifier
+    label: Text | None = Field(default=None, description="in pictures and tables; the component's name if left out")
+    parents: Annotated[tuple[Parent, ...], Field(min_length=1), _Distinct] = Field(default=("B+", "B0"))
+    charm: Annotated[tuple[CharmFamily, ...], Field(min_length=1), _Distinct]
+    leptons: Annotated[tuple[Lepton, ...], Field(min_length=1), _Distinct]
+    scales_with: RatioName | None = Field(default=None, description="the ratio that the fit measures with this mode")
+    follows: Identifier | None = Field(default=None, description="component whose yield this one scales with")
+    yield_: Yield | None = Field(
+        default=None, alias="yield", description='"free" for a mode without ratio, none for one with a ratio'
+    )
+    events: Count = Field(description="generated decays")
+
+    @model_validator(mode="after")
+    def _consistent(self) -> Mode:
+        if self.scales_with and self.yield_:
+            raise broken(
+                "has both scales_with and yield",
+                remedy="Remove yield: the ratio sets it.",
+                got="",
+            )
+        if self.scales_with and self.leptons != ("tau",):
+            raise broken(
+                f"scales with {self.scales_with} but its leptons are not tau alone",
+                'leptons = ["tau"]',
+                got=str(list(self.leptons)),
+            )
+        return self
+
+    @property
+    def name(self) -> str:
+        """The component's name."""
+        return self.component
+
+    @property
+    def yield_constraint(self) -> Yield:
+        """Free unless the file says otherwise; fixed (it is the ratio that moves) for a mode with a ratio."""
+        return self.yield_ or Yield(kind="fixed" if self.scales_with else "free")
+
+    @property
+    def role(self) -> str:
+        """As in core.templates.Component: "signal", "normalisation" or "feed-down"."""
+        if self.scales_with:
+            return "signal"
+        if set(self.charm) <= {"D", "D*"} and "tau" not in self.leptons:
+            return "normalisation"
+        return "feed-down"
+
+
+Shape = Annotated[dict[str, Law], ByObservable]
+
+
+class Background(Table):
+    """A component made from shapes: each observable drawn from its own law, the same in every category of `expected`.
+
+    `shape_in` replaces laws in a category ("Dstp_mu"), or in all categories of a charm hadron ("D*+"); a category goes
+    before a hadron. `expected` counts events before [selection] within the ranges of the laws; a cut acts on a
+    background only if the background draws the cut's observable.
+
+    `correlation` is the correlation of a Gaussian copula, written `el.mm2 = 0.3`; it needs one pair once.
+
+    A background with `misidentified` stands for hadrons taken for leptons: it must draw p_lepton, the momentum of the
+    hadrons before identification, which is multiplied by the detector's misidentification table and normalised again.
+    """
+
+    component: Identifier
+    label: Text | None = Field(default=None, description="in pictures and tables; the component's name if left out")
+    events: Count = Field(description="drawn events, shared evenly between its categories")
+    yield_: Yield = Field(default=Yield(kind="free"), alias="yield")
+    misidentified: Flag = False
+    expected: Annotated[dict[str, NotNegative], Field(min_length=1)] = Field(description="events by category")
+    shape: Shape = Field(description="law of each observable")
+    shape_in: dict[str, Shape] = Field(default={}, description="laws that differ, by category or charm hadron")
+    correlation: dict[str, dict[str, Annotated[Number, Field(gt=-1, lt=1)]]] = Field(
+        default={}, description="of the Gaussian copula, by observable and observable"
+    )
+
+    @property
+    def name(self) -> str:
+        """The component's name."""
+        return self.component
+
+    @property
+    def yield_constraint(self) -> Yield:
+        """How far the fit may move the yield."""
+        return self.yield_
+
+    @property
+    def role(self) -> str:
+        """As in core.templates.Component."""
+        return "background"
