@@ -45,8 +45,8 @@ class Channel:
     ground : species of the D at the end, "D0" or "D+".
     branching_fraction : of the whole chain for one B of this kind, up to the D, whose own decay is not part of it.
 
-    Species leave charge conjugation out: a B+ or B0 gives the conjugate of `vector` and `ground`. A neutral species next to
-    the lepton therefore looks like a charged B, a charged species like a neutral one.
+    Species leave charge conjugation out: a B+ or B0 gives the conjugate of `vector` and `ground`. A neutral species next
+    to the lepton therefore looks like a charged B, a charged species like a neutral one.
     """
 
     decay: Decay
@@ -146,7 +146,7 @@ def channels(
     _check("charmed meson", charms, FAMILIES)
     _check("lepton", leptons, LEPTONS)
     _check("tau decay", tau_to, tuple(BRANCHING_FRACTION["tau"]))
-    found = []
+    found: list[Channel] = []
     for parent in parents:
         for family in charms:
             for lepton in leptons:
