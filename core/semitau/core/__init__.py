@@ -16,9 +16,13 @@ _HOME = {
     "SemitauError": "errors",
     "Template": "templates",
     "TemplateSet": "templates",
+    "open_root": "root_files",
+    "read_data": "template_file",
+    "read_templates": "template_file",
     "root_histogram": "root_files",
     "run": "engine",
     "whole_file": "whole_files",
+    "write_templates": "template_file",
     "write_whole": "whole_files",
 }
 

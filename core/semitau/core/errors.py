@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 
 @dataclass(frozen=True)
@@ -27,6 +27,10 @@ class Problem:
         if details:
             text += f" ({', '.join(details)})"
         return f"{text}. {self.remedy}" if self.remedy else text
+
+    def inside(self, place: str) -> Problem:
+        """The same problem, seen from further out: `place` is put before where it is."""
+        return replace(self, where=f"{place}: {self.where}" if self.where else place)
 
 
 class SemitauError(Exception):

@@ -52,7 +52,7 @@ def open_root(path: Path | str) -> Iterator[Any]:
                     Problem("not a ROOT file", where, remedy="Give a file that ROOT, uproot or semitau wrote.")
                 )
         # A dict keeps a colon in the path from being taken for an object's name; the handler keeps to local files.
-        with uproot.open({where: None}, handler=uproot.source.file.MemmapSource, object_cache=None) as directory:
+        with uproot.open({where: None}, handler=uproot.source.file.MemmapSource, object_cache=500) as directory:
             if directory.file.fEND > Path(path).stat().st_size:
                 raise InputError(Problem("the ROOT file is truncated", where, remedy="Copy or make it again."))
             yield directory
