@@ -1,0 +1,24 @@
+"""What users see: the command line, whole studies, their results, pictures and report."""
+
+from __future__ import annotations
+
+from importlib import import_module
+
+__all__ = ["Results", "read_results", "run_study", "write_report"]
+
+_HOMES = {
+    "Results": ".results",
+    "read_results": ".results",
+    "run_study": ".study_run",
+    "write_report": ".report",
+}
+
+
+def __getattr__(name: str) -> object:
+    if name in _HOMES:
+        return getattr(import_module(_HOMES[name], __name__), name)
+    raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
+
+
+def __dir__() -> list[str]:
+    return sorted(__all__)

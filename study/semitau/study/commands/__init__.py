@@ -1,0 +1,1 @@
+"""One module a command, each with `command`: imported only when that command is called."""

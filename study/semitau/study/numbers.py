@@ -1,0 +1,45 @@
+"""Numbers as people write them: errors with two digits, thin gaps between thousands."""
+
+from __future__ import annotations
+
+import math
+
+GAP = "\u00a0"
+"""Between what belongs on one line."""
+
+
+def digits_for(error: float) -> int:
+    """Decimal places that show two significant digits of `error` (10 to 99 in units of the last place)."""
+    if not (error > 0 and math.isfinite(error)):
+        return 3
+    places = 1 - math.floor(math.log10(error))
+    # 0.0996 shows as 0.10, not as 0.100.
+    if round(error * 10.0**places) >= 100:
+        places -= 1
+    return max(places, 0)
+
+
+def with_error(value: float, error: float) -> str:
+    """E.g. "0.299 ± 0.012"."""
+    places = digits_for(error)
+    return f"{signed(value, places)}{GAP}±{GAP}{error:.{places}f}"
+
+
+def signed(value: float, places: int, plus: bool = False) -> str:
+    """Fixed decimal places, a true minus sign, no "-0"."""
+    text = f"{value:+.{places}f}" if plus else f"{value:.{places}f}"
+    if float(text) == 0:
+        text = text.lstrip("+-")
+    return text.replace("-", "−")
+
+
+def counted(number: float) -> str:
+    """A count with a thin gap between thousands: 12 345, 8.4 (one decimal below 10 if it is not whole)."""
+    if abs(number) < 10 and number != round(number):
+        return f"{number:.1f}"
+    return f"{round(number):,}".replace(",", "\u202f")
+
+
+def percent(fraction: float, places: int = 1) -> str:
+    """E.g. "4.2 %"."""
+    return f"{signed(100 * fraction, places)}{GAP}%"

@@ -1,0 +1,103 @@
+"""All pictures of a study, in the order of the report."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator
+from functools import partial
+from pathlib import Path
+
+from matplotlib import rc_context
+
+from ..numbers import counted
+from ..results import Results
+from .budget_bars import budget_bars
+from .correlations import correlation_matrix
+from .linearity import linearity
+from .projections import stacked_projections
+from .sheet import Picture, Sheet
+from .style import RC, component_colours
+from .toy_pulls import toy_pulls
+
+DATA_LABELS = {"expected": "expected events", "pseudo": "pseudo-data", "file": "data"}
+
+Drawing = tuple[str, str, str, Callable[[], Sheet]]
+
+
+def draw_pictures(
+    results: Results, folder: Path, report: Callable[[str, int, int | None], None] | None = None
+) -> tuple[Picture, ...]:
+    """Draw every picture into `folder` as SVG and PNG; same results, same bytes.
+
+    report : called as report(label, done, total) after each.
+
+    Raises
+    ------
+    RunError : a file cannot be written.
+    """
+    drawings = list(_drawings(results))
+    pictures = []
+    for done, (name, title, caption, draw) in enumerate(drawings, start=1):
+        with rc_context(RC):
+            pictures.append(draw().save(folder, name, title, caption))
+        if report is not None:
+            report("pictures", done, len(drawings))
+    return tuple(pictures)
+
+
+def _drawings(results: Results) -> Iterator[Drawing]:
+    values = {ratio.name: ratio.value for ratio in results.ratios}
+    labels = {ratio.name: ratio.label for ratio in results.ratios}
+    if results.budget:
+        yield (
+            "budget",
+            "Uncertainty by source",
+            "Error of each ratio from each source, in per cent of the fitted ratio, with the total on top.",
+            partial(budget_bars, results.budget, values, labels),
+        )
+    toys = results.toys
+    if toys is not None and toys.number > toys.failures:
+        yield (
+            "toy_pulls",
+            "Pulls of the toys",
+            "Difference of fitted and injected ratio over the error of the fit, with the unit Gaussian.",
+            partial(toy_pulls, toys),
+        )
+    if results.linearity:
+        yield (
+            "linearity",
+            "Linearity",
+            "Mean fitted against injected ratio, and the bias in units of the error of one fit; the band is ±0.1.",
+            partial(linearity, results.linearity),
+        )
+    yield from _projections(results)
+    if results.fit.correlation:
+        yield (
+            "correlations",
+            "Correlations",
+            "Correlations of the fitted parameters in per cent.",
+            partial(correlation_matrix, results.fit),
+        )
+
+
+def _projections(results: Results) -> Iterator[Drawing]:
+    colours = component_colours(results.components, [ratio.name for ratio in results.ratios])
+    data_label = DATA_LABELS[results.data.kind]
+    for enhanced in (True, False):
+        for category in results.categories:
+            chosen = [p for p in results.projections if p.category == category.name and bool(p.region) == enhanced]
+            if not chosen:
+                continue
+            events = counted(sum(chosen[0].data))
+            note = f"{events} events" + (f" with {chosen[0].region}" if enhanced else "") + f", {data_label}"
+            title = f"{category.label}: signal-enhanced" if enhanced else category.label
+            caption = (
+                f"Fitted components and {data_label} of {category.label}"
+                + (f" with {chosen[0].region}" if enhanced else "")
+                + "; residuals in units of the Poisson error underneath."
+            )
+            yield (
+                f"signal_{category.name}" if enhanced else f"projection_{category.name}",
+                title,
+                caption,
+                partial(stacked_projections, chosen, results.components, colours, title, note, data_label),
+            )

@@ -1,0 +1,69 @@
+"""A figure laid out in inches, and how it becomes files with the same bytes every time."""
+
+from __future__ import annotations
+
+import io
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from matplotlib import rc_context
+from matplotlib.axes import Axes
+from matplotlib.backends.backend_agg import FigureCanvasAgg
+from matplotlib.figure import Figure
+from semitau.core.whole_files import write_whole
+
+from .style import QUIET, RC
+
+PIXELS_PER_INCH = 160
+
+
+@dataclass(frozen=True)
+class Picture:
+    """A drawn picture: `name` of its files, `title` and `caption` for people, `svg` as text."""
+
+    name: str
+    title: str
+    caption: str
+    svg: str
+
+
+class Sheet:
+    """A figure of `width` times `height` inches with a heading; places are in inches from the lower left corner."""
+
+    def __init__(self, width: float, height: float, heading: str = "", note: str = "") -> None:
+        self.width, self.height = width, height
+        with rc_context(RC):
+            self.figure = Figure(figsize=(width, height))
+            FigureCanvasAgg(self.figure)
+        if heading:
+            self.text(0.12, height - 0.24, heading, size=10.5, weight="bold")
+        if note:
+            self.text(0.12, height - 0.43, note, color=QUIET, size=8)
+
+    def text(self, x: float, y: float, text: str, **style: Any) -> None:
+        """Write `text` with its left end of the base line at (x, y)."""
+        with rc_context(RC):
+            self.figure.text(x / self.width, y / self.height, text, **style)
+
+    def axes(self, left: float, bottom: float, width: float, height: float, **how: Any) -> Axes:
+        """Axes with their frame at this place."""
+        box = (left / self.width, bottom / self.height, width / self.width, height / self.height)
+        with rc_context(RC):
+            return self.figure.add_axes(box, **how)
+
+    def save(self, folder: Path, name: str, title: str, caption: str) -> Picture:
+        """Write NAME.svg and NAME.png into `folder`, each whole or not at all.
+
+        Raises
+        ------
+        RunError : they cannot be written.
+        """
+        with rc_context(RC):
+            svg, png = io.BytesIO(), io.BytesIO()
+            # No date, no version: the same picture has the same bytes.
+            self.figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "semitau", "Title": title})
+            self.figure.savefig(png, format="png", dpi=PIXELS_PER_INCH, metadata={"Software": None, "Title": title})
+        write_whole(folder / f"{name}.svg", svg.getvalue())
+        write_whole(folder / f"{name}.png", png.getvalue())
+        return Picture(name, title, caption, svg.getvalue().decode())

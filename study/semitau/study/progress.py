@@ -1,0 +1,83 @@
+"""Progress of long work: bars with an estimate on a terminal, a few lines elsewhere."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+
+from rich.console import Console
+from rich.progress import (
+    BarColumn,
+    MofNCompleteColumn,
+    Progress,
+    TaskID,
+    TextColumn,
+    TimeElapsedColumn,
+    TimeRemainingColumn,
+)
+
+Report = Callable[[str, int, int | None], None]
+"""report(label, done, total): `done` of `total` steps of the work `label`; total None if unknown."""
+
+BETWEEN_LINES = 10.0
+"""Seconds between two lines about the same work, where there is no terminal to draw a bar on."""
+
+
+def silence(label: str, done: int, total: int | None) -> None:
+    """A report that shows nothing."""
+
+
+@contextmanager
+def bars(console: Console) -> Iterator[Report]:
+    """One bar a label, the finished ones kept above with the time they took."""
+    columns = (
+        TextColumn("{task.description}"),
+        BarColumn(bar_width=28),
+        MofNCompleteColumn(),
+        TimeElapsedColumn(),
+        TextColumn("left"),
+        TimeRemainingColumn(compact=True),
+    )
+    with Progress(*columns, console=console, refresh_per_second=5) as progress:
+        tasks: dict[str, TaskID] = {}
+
+        def report(label: str, done: int, total: int | None) -> None:
+            if label not in tasks:
+                tasks[label] = progress.add_task(label, total=total)
+            progress.update(tasks[label], completed=done, total=total)
+
+        yield report
+
+
+@contextmanager
+def sparse_lines(console: Console, clock: Callable[[], float] = time.monotonic) -> Iterator[Report]:
+    """A line when a piece of work ends, and every BETWEEN_LINES seconds while it lasts."""
+    started: dict[str, float] = {}
+    spoken: dict[str, float] = {}
+    finished: set[str] = set()
+
+    def report(label: str, done: int, total: int | None) -> None:
+        now = clock()
+        begin = started.setdefault(label, now)
+        if total is not None and done >= total:
+            if label not in finished:
+                finished.add(label)
+                console.print(f"{label}: done in {duration(now - begin)}", highlight=False)
+        elif now - spoken.setdefault(label, begin) >= BETWEEN_LINES:
+            spoken[label] = now
+            if total and done:
+                left = (now - begin) * (total - done) / done
+                console.print(f"{label}: {100 * done // total} %, about {duration(left)} left", highlight=False)
+            else:
+                console.print(f"{label}: {done} done", highlight=False)
+
+    yield report
+
+
+def duration(seconds: float) -> str:
+    """Seconds in words, e.g. "0.8 s", "42 s", "3 min 20 s"."""
+    if seconds < 9.95:
+        return f"{seconds:.1f} s"
+    whole = round(seconds)
+    return f"{whole} s" if whole < 60 else f"{whole // 60} min {whole % 60} s"

@@ -1,0 +1,71 @@
+"""Results and pictures laid out as one HTML page."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+
+from jinja2 import Environment, FileSystemLoader, StrictUndefined
+from markupsafe import Markup
+from semitau.core.whole_files import write_whole
+
+from ..numbers import counted, digits_for, percent, signed, with_error
+from ..pictures.gallery import DATA_LABELS
+from ..pictures.sheet import Picture
+from ..progress import duration
+from ..results import Results
+from .inline_svg import inline_svg
+
+HERE = Path(__file__).parent
+
+VERDICT_WORDS = {
+    "sound": "The fit is sound",
+    "doubtful": "The fit is doubtful",
+    "unsound": "The fit is not sound",
+    "undecided": "Not decided: too few toys",
+}
+
+
+def write_report(results: Results, pictures: Sequence[Picture], path: Path) -> None:
+    """Write the report to `path`, whole or not at all.
+
+    Raises
+    ------
+    RunError : it cannot be written.
+    """
+    write_whole(path, page(results, pictures))
+
+
+def page(results: Results, pictures: Sequence[Picture]) -> str:
+    """The report as HTML: pictures, style and numbers in one text, no link to anything outside."""
+    environment = Environment(
+        loader=FileSystemLoader(HERE),
+        autoescape=True,
+        undefined=StrictUndefined,
+        trim_blocks=True,
+        lstrip_blocks=True,
+        keep_trailing_newline=True,
+    )
+    environment.filters |= {
+        "counted": counted,
+        "percent": percent,
+        "signed": signed,
+        "with_error": with_error,
+        "digits_for": digits_for,
+        "duration": duration,
+    }
+    return environment.get_template("page.html.j2").render(
+        results=results,
+        data_label=DATA_LABELS[results.data.kind],
+        headline=VERDICT_WORDS[results.verdict.status],
+        style=Markup((HERE / "page.css").read_text()),
+        pictures={
+            picture.name: {
+                "name": picture.name,
+                "title": picture.title,
+                "caption": picture.caption,
+                "svg": Markup(inline_svg(picture.svg, picture.name, f"{picture.title}. {picture.caption}")),
+            }
+            for picture in pictures
+        },
+    )
