@@ -17,19 +17,19 @@ LANES = 256
 # COS_THETA: lepton direction in the W* frame against the W* flight. COS_V: D (or D*) direction in the charm frame
 # against the charm flight. COS_CHI, SIN_CHI: azimuth between the two decay planes.
 # VISIBLE_E: energy of the charged daughter of the tau in the tau rest frame; VISIBLE_X, _Y, _Z: its unit direction on
-# the axes (theta-hat, phi-hat, n) of the tau in the W* frame. Unset in channels without a tau.
-# SOFT: pion or photon of the D*. PION: pion of a D**. TAU: the tau. LEPTON: the charged lepton (daughter) that is seen.
-# Particles that a channel does not have are zero rows.
+# the axes (theta-hat, phi-hat, n) of the tau in the W* frame. POLARISATION: of the tau on these axes. All these are
+# unset in channels without a tau. SOFT: pion or photon of the D*. PION: pion of a D**. TAU: the tau. LEPTON: the
+# charged lepton (daughter) that is seen. Particles that a channel does not have are zero rows.
 (
     Q2, NODE, COS_THETA, COS_V, COS_CHI, SIN_CHI,
-    VISIBLE_E, VISIBLE_X, VISIBLE_Y, VISIBLE_Z,
+    VISIBLE_E, VISIBLE_X, VISIBLE_Y, VISIBLE_Z, POLARISATION_X, POLARISATION_Y, POLARISATION_Z,
     D_PX, D_PY, D_PZ, D_E,
     SOFT_PX, SOFT_PY, SOFT_PZ, SOFT_E,
     PION_PX, PION_PY, PION_PZ, PION_E,
     TAU_PX, TAU_PY, TAU_PZ, TAU_E,
     LEPTON_PX, LEPTON_PY, LEPTON_PZ, LEPTON_E,
-) = (LANES * row for row in range(30))  # fmt: skip
-TRUTH_ROWS = 30
+) = (LANES * row for row in range(33))  # fmt: skip
+TRUTH_ROWS = 33
 
 # Rows that a truth kernel may scribble on; free for later stages afterwards.
 (
@@ -39,8 +39,40 @@ TRUTH_ROWS = 30
 ) = (LANES * row for row in range(TRUTH_ROWS, TRUTH_ROWS + 24))  # fmt: skip
 SCRATCH_END = TRUTH_ROWS + 24
 
+# --- response ------------------------------------------------------------------------------------------------------
+# Laboratory frame unless said otherwise. BOOST_*: signal B in the centre-of-mass frame, gamma and gamma*beta vector.
+# TRACK*: true momenta of the charged daughters of the D (the third is zero for a D0). LAB_LEPTON: true momentum.
+# FLAVOUR: identified lepton, 0 electron, 1 muon.
+(
+    BOOST_GAMMA, BOOST_X, BOOST_Y, BOOST_Z,
+    TRACK1_PX, TRACK1_PY, TRACK1_PZ, TRACK2_PX, TRACK2_PY, TRACK2_PZ, TRACK3_PX, TRACK3_PY, TRACK3_PZ,
+    LAB_LEPTON_PX, LAB_LEPTON_PY, LAB_LEPTON_PZ,
+    FLAVOUR,
+) = (LANES * row for row in range(SCRATCH_END, SCRATCH_END + 17))  # fmt: skip
+FOUND_END = SCRATCH_END + 17
+
+# Rows of events whose D and lepton were found. MEASURED_*: sums of smeared momenta at the nominal momentum scale.
+# TAG_*: true momentum of the signal B in the centre-of-mass frame; TAG_SHIFT_*: what the nominal resolution adds to it.
+# TAG_CHARGED: 1 if the tag looks like a charged B. SOFT_EFFICIENCY: chance that the soft particle is found, 0 where it
+# cannot be; SOFT_FOUND: 1 if it was. EXTRA: 1 if the charged pion of a D** was seen as a track.
+# RANDOM_*: delta_m of a random soft candidate (0: there is none), its mass, and its direction in the D frame.
+(
+    LAB_SOFT_PX, LAB_SOFT_PY, LAB_SOFT_PZ, LAB_SOFT_E, LAB_PION_PX, LAB_PION_PY, LAB_PION_PZ, LAB_PION_E,
+    MEASURED_D_PX, MEASURED_D_PY, MEASURED_D_PZ, MEASURED_LEPTON_PX, MEASURED_LEPTON_PY, MEASURED_LEPTON_PZ,
+    MEASURED_SOFT_PX, MEASURED_SOFT_PY, MEASURED_SOFT_PZ,
+    TAG_PX, TAG_PY, TAG_PZ, TAG_SHIFT_X, TAG_SHIFT_Y, TAG_SHIFT_Z, TAG_CHARGED, TAG_WRONG,
+    SOFT_EFFICIENCY, SOFT_FOUND, EXTRA, LEFT_OVER,
+    RANDOM_DELTA_M, RANDOM_MASS, RANDOM_X, RANDOM_Y, RANDOM_Z,
+) = (LANES * row for row in range(FOUND_END, FOUND_END + 34))  # fmt: skip
+MEASURED_END = FOUND_END + 34
+
+# One scenario of the reconstruction. CATEGORY: 2 * charm (D0, D+, D*0, D*+) + FLAVOUR, or -1 if there is no candidate.
+(
+    MM2, Q2_MEASURED, EL, P_LEPTON, P_CHARM, E_RES, DELTA_M, CATEGORY,
+) = (LANES * row for row in range(MEASURED_END, MEASURED_END + 8))  # fmt: skip
+
 # --- all -----------------------------------------------------------------------------------------------------------
-ROWS = SCRATCH_END
+ROWS = MEASURED_END + 8
 
 
 def new_block() -> npt.NDArray[np.float64]:

@@ -1,0 +1,138 @@
+"""What the truth kernel needs of one decay chain: numbers and tables, ready for compiled loops.
+
+q² runs over a position t in [0, 1], q² = q²_min + (q²_max - q²_min) t² (3 - 2t), which tames both end points.
+Amplitudes are tabulated at Q2_INTERVALS + 1 nodes in t, times sqrt(q²) (then none of them diverges at small q²), and
+read with linear interpolation. A common factor drops out of every angular density.
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+import numpy.typing as npt
+
+from .alias import interval_table
+from .amplitudes import HelicityAmplitudes, helicity_amplitudes
+from .chains import Channel
+from .decay import Decay
+from .tau_decay import energy_density, energy_range
+
+Floats = npt.NDArray[np.float64]
+
+Q2_INTERVALS = 512
+VISIBLE_INTERVALS = 256
+
+# Values of ChannelTable.chain.
+GROUND = 0  # the charm hadron of the B decay is the D that is seen
+VECTOR = 1  # D* -> D soft
+ORBITAL_GROUND = 2  # D** -> D pion
+ORBITAL_VECTOR = 3  # D** -> D* pion, D* -> D soft
+
+
+class ChannelTable(NamedTuple):
+    """Constants and tables of one fully specified decay chain. Masses in GeV, q² in GeV².
+
+    incoherent, coherent : how the charm helicities add, see `spin_density`.
+    has_tau : 1 if the lepton of the B decay is a tau that decays, else 0.
+    to_pion : 1 for tau -> pi nu, else 0. visible_mass, visible_span : lowest energy and range of the tau's daughter.
+    vector_mass, d_mass, soft_mass, pion_mass : of the D*, D, soft particle of the D*, pion of the D**; 0 if absent.
+    q2_table (512, 3), visible_table (256, 3) : for `draw_position`.
+    amplitudes (514, 4 or 16) : at the nodes and once more at the last; columns J_+, J_-, J_0, J_t if all is real, else
+        real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0.
+    """
+
+    parent_mass: float
+    charm_mass: float
+    lepton_mass: float
+    q2_min: float
+    q2_span: float
+    incoherent: float
+    coherent: float
+    chain: int
+    vector_mass: float
+    d_mass: float
+    soft_mass: float
+    pion_mass: float
+    has_tau: int
+    to_pion: float
+    visible_mass: float
+    visible_span: float
+    q2_table: Floats
+    amplitudes: Floats
+    visible_table: Floats
+
+
+def channel_table(channel: Channel) -> ChannelTable:
+    """Table of a decay chain, about a millisecond to make."""
+    decay = channel.decay
+    photon = channel.soft == "photon"
+    if channel.bachelor == "none":
+        chain = VECTOR if channel.vector else GROUND
+    else:
+        chain = ORBITAL_VECTOR if channel.vector else ORBITAL_GROUND
+    low, high = decay.q2_range
+    visible_mass = channel.m_seen_lepton if channel.tau_to else 0.0
+    energy_low, energy_high = energy_range(visible_mass)
+    return ChannelTable(
+        parent_mass=decay.m_parent,
+        charm_mass=decay.m_charm,
+        lepton_mass=decay.m_lepton,
+        q2_min=low,
+        q2_span=high - low,
+        incoherent=(0.5 if photon else 0.0) if chain == VECTOR else 1.0,
+        coherent=(-0.5 if photon else 1.0) if chain == VECTOR else 0.0,
+        chain=chain,
+        vector_mass=channel.m_vector,
+        d_mass=channel.m_ground,
+        soft_mass=channel.m_soft,
+        pion_mass=channel.m_bachelor,
+        has_tau=int(channel.tau_to is not None),
+        to_pion=float(channel.tau_to == "pi"),
+        visible_mass=visible_mass,
+        visible_span=energy_high - energy_low,
+        q2_table=q2_table(decay),
+        amplitudes=amplitude_columns(regular_amplitudes(decay)),
+        visible_table=interval_table(lambda s: energy_density(visible_mass, s), VISIBLE_INTERVALS),
+    )
+
+
+def q2_of_position(decay: Decay, t: Floats) -> Floats:
+    """q² in GeV² at positions t in [0, 1] of the tables."""
+    low, high = decay.q2_range
+    return low + (high - low) * t * t * (3.0 - 2.0 * t)
+
+
+def regular_amplitudes(decay: Decay) -> HelicityAmplitudes:
+    """Amplitudes times sqrt(q²) at the nodes, with a copy of the last node behind it; shape (514,) each."""
+    t = np.minimum(np.arange(Q2_INTERVALS + 2) / Q2_INTERVALS, 1.0)
+    q2 = q2_of_position(decay, t)
+    values = helicity_amplitudes(decay, q2)
+    return HelicityAmplitudes(**{name: value * np.sqrt(q2) for name, value in vars(values).items()})
+
+
+def amplitude_columns(amplitudes: HelicityAmplitudes) -> Floats:
+    """(nodes, 4) if only real J appear, else (nodes, 16); see `ChannelTable`."""
+    columns = np.stack(list(vars(amplitudes).values()), axis=-1)
+    if not np.any(columns[:, 4:]) and not np.any(columns.imag):
+        return np.ascontiguousarray(columns[:, :4].real)
+    return np.ascontiguousarray(columns).view(np.float64)
+
+
+def q2_table(decay: Decay) -> Floats:
+    """(512, 3) table for `draw_position` of d Gamma / dt."""
+
+    def density(t: Floats) -> Floats:
+        q2 = q2_of_position(decay, t)
+        x = decay.m_lepton / np.sqrt(q2)
+        values = helicity_amplitudes(decay, q2).with_lepton(x)
+        a, b = (np.abs([getattr(values, f"{k}_{h}") for h in ("plus", "minus", "zero")]) ** 2 for k in "ab")
+        total = (4.0 / 3.0) * a.sum(axis=0) + (2.0 / 3.0) * b.sum(axis=0) + 2.0 * np.abs(values.t) ** 2
+        # |p| (1 - x²) N² dq²/dt; q²_max - q² without cancellation
+        M, m = decay.m_parent, decay.m_charm
+        to_end = (decay.q2_range[1] - decay.q2_range[0]) * (1.0 - t) ** 2 * (1.0 + 2.0 * t)
+        momentum = np.sqrt(to_end * ((M + m) ** 2 - q2))
+        result: Floats = momentum * (1.0 - x * x) ** 2 * q2 * total * t * (1.0 - t)
+        return result
+
+    return interval_table(density, Q2_INTERVALS)

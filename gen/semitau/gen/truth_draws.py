@@ -1,0 +1,48 @@
+"""Numbers of the random draws of a true decay (0 to 49; see core/streams.py for how they are shared out).
+
+The numbers are part of the result: changing one changes every event.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+Q2_INTERVAL = np.uint64(0)
+Q2_INSIDE = np.uint64(1)
+Q2_SIDE = np.uint64(2)
+
+THETA_1 = np.uint64(3)
+THETA_2 = np.uint64(4)
+THETA_3 = np.uint64(5)
+THETA_TERM = np.uint64(6)
+THETA_SIGN = np.uint64(7)
+
+V_1 = np.uint64(8)
+V_2 = np.uint64(9)
+V_3 = np.uint64(10)
+V_TERM = np.uint64(11)
+CHI_BASE = np.uint64(12)
+CHI_QUARTER = np.uint64(13)
+
+VISIBLE_INTERVAL = np.uint64(14)
+VISIBLE_INSIDE = np.uint64(15)
+VISIBLE_SIDE = np.uint64(16)
+VISIBLE_COS = np.uint64(17)
+VISIBLE_AZIMUTH = np.uint64(18)
+VISIBLE_FLIP = np.uint64(19)
+
+ROTATION_COS = np.uint64(20)
+ROTATION_AZIMUTH = np.uint64(21)
+ROTATION_SPIN = np.uint64(22)
+
+SOFT_COS = np.uint64(23)
+SOFT_AZIMUTH = np.uint64(24)
+
+FLIGHT_1 = np.uint64(25)  # of the B in the Upsilon(4S) frame: three draws, then its azimuth
+FLIGHT_2 = np.uint64(26)
+FLIGHT_3 = np.uint64(27)
+FLIGHT_AZIMUTH = np.uint64(28)
+
+CHAIN = np.uint64(29)  # which decay chain, where a sample mixes them
+
+NEUTRINO_FIRST = 192  # three draws for each try
