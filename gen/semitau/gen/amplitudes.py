@@ -34,7 +34,7 @@ from .decay import Decay
 from .form_factor_values import PseudoscalarFormFactors, VectorFormFactors
 from .kinematics import Floats, kallen
 from .orbital_amplitudes import orbital_currents
-from .tensor_form_factors import pseudoscalar_tensor, vector_tensor
+from .tensor_form_factors import VectorTensorFormFactors, pseudoscalar_tensor, vector_tensor
 
 Complexes = NDArray[np.complex128]
 
@@ -90,8 +90,10 @@ def helicity_amplitudes(decay: Decay, q2: ArrayLike) -> HelicityAmplitudes:
         return _orbital(decay, q2)
     values = decay.model(decay.m_parent, decay.m_charm, q2)
     if isinstance(values, VectorFormFactors):
-        return _vector(decay, q2, values)
-    return _pseudoscalar(decay, q2, values)
+        tensor = vector_tensor(decay.tensor, values, decay.m_parent, decay.m_charm, q2)
+        return vector_amplitudes(decay, q2, values, tensor)
+    f_T = pseudoscalar_tensor(decay.tensor, values, decay.m_parent, decay.m_charm, q2)
+    return pseudoscalar_amplitudes(decay, q2, values, f_T)
 
 
 def lepton_amplitudes(decay: Decay, q2: ArrayLike) -> LeptonAmplitudes:
@@ -108,11 +110,13 @@ def _amplitudes(q2: Floats, **given: ArrayLike) -> HelicityAmplitudes:
     )
 
 
-def _pseudoscalar(decay: Decay, q2: Floats, values: PseudoscalarFormFactors) -> HelicityAmplitudes:
+def pseudoscalar_amplitudes(
+    decay: Decay, q2: Floats, values: PseudoscalarFormFactors, f_T: Floats
+) -> HelicityAmplitudes:
+    """B -> D from given form factors; masses and couplings of `decay`."""
     M, m, c = decay.m_parent, decay.m_charm, decay.couplings
     size, gap = np.sqrt(kallen(M, m, q2)), M**2 - m**2
     vector = 1.0 + c.VL + c.VR
-    f_T = pseudoscalar_tensor(decay.tensor, values, M, m, q2)
     return _amplitudes(
         q2,
         J_zero=-0.5 * vector * size / np.sqrt(q2) * values.f_plus,
@@ -122,12 +126,14 @@ def _pseudoscalar(decay: Decay, q2: Floats, values: PseudoscalarFormFactors) -> 
     )
 
 
-def _vector(decay: Decay, q2: Floats, values: VectorFormFactors) -> HelicityAmplitudes:
+def vector_amplitudes(
+    decay: Decay, q2: Floats, values: VectorFormFactors, tensor: VectorTensorFormFactors
+) -> HelicityAmplitudes:
+    """B -> D* from given form factors; masses and couplings of `decay`."""
     M, m, c = decay.m_parent, decay.m_charm, decay.couplings
     square = kallen(M, m, q2)
     size, root, gap = np.sqrt(square), np.sqrt(q2), M**2 - m**2
     axial, vector = 1.0 + c.VL - c.VR, 1.0 + c.VL + c.VR
-    tensor = vector_tensor(decay.tensor, values, M, m, q2)
     transverse, parity = axial * (M + m) * values.A1, vector * size * values.V / (M + m)
     T_even, T_odd = gap * tensor.T2, size * tensor.T1
     return _amplitudes(
@@ -154,5 +160,5 @@ def _orbital(decay: Decay, q2: Floats) -> HelicityAmplitudes:
         J_plus=0.5 * (even * currents.transverse - odd * currents.parity),
         J_minus=0.5 * (even * currents.transverse + odd * currents.parity),
         J_zero=0.5 * even * currents.longitudinal,
-        J_t=0.5 * even * currents.timelike,
+        J_t=-0.5 * even * currents.timelike,  # the helicity table above has J_t and J_0 of opposite sign
     )

@@ -45,8 +45,8 @@ class Channel:
     ground : species of the D at the end, "D0" or "D+".
     branching_fraction : of the whole chain for one B of this kind, up to the D, whose own decay is not part of it.
 
-    Species leave charge conjugation out: a B+ or B0 gives the conjugate of `vector` and `ground`. A neutral species next
-    to the lepton therefore looks like a charged B, a charged species like a neutral one.
+    Species leave charge conjugation out: a B+ or B0 gives the conjugate of `vector` and `ground`. So a neutral species
+    with the lepton looks like a charged B, a charged species like a neutral one.
     """
 
     decay: Decay
