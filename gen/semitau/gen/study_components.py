@@ -2,24 +2,39 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, ClassVar, Literal
 
-from pydantic import Field, GetJsonSchemaHandler, model_validator
-from pydantic.json_schema import JsonSchemaValue
-from pydantic_core import CoreSchema
+import numpy as np
+from numpy.typing import NDArray
+from pydantic import Field, model_validator
 
 from .study_laws import Law
 from .study_names import CharmFamily, Lepton, Parent, RatioName
-from .study_rules import ByObservable, Count, Flag, Identifier, NotNegative, Number, Positive, Table, Text, broken, rule
+from .study_rules import (
+    ByObservable,
+    Count,
+    Distinct,
+    Flag,
+    Identifier,
+    NotNegative,
+    Number,
+    ObservableKey,
+    Positive,
+    ShortTable,
+    Table,
+    Text,
+    broken,
+    suggestion,
+)
 
-_Distinct = rule(lambda names: len(set(names)) == len(names), "must not name anything twice")
 
-
-class Yield(Table):
+class Yield(ShortTable):
     """How far the fit may move a component's yield from the expectation.
 
     In the file: "free", "fixed", or { uncertainty = 0.3 }, the relative standard deviation of a Gaussian constraint.
     """
+
+    short_schema: ClassVar[dict[str, Any]] = {"enum": ["free", "fixed"]}
 
     kind: Literal["free", "fixed", "gaussian"] = "gaussian"
     uncertainty: Positive | None = Field(default=None, description="relative, one standard deviation")
@@ -27,27 +42,17 @@ class Yield(Table):
     @model_validator(mode="before")
     @classmethod
     def _from_word(cls, given: Any) -> Any:
-        if isinstance(given, Yield):
+        if isinstance(given, Yield | dict):
             return given
         if given in ("free", "fixed"):
             return {"kind": given}
-        if not isinstance(given, dict):
-            raise broken("is no yield", '"free", "fixed" or { uncertainty = 0.3 }')
-        if "kind" in given:
-            return given
-        if "uncertainty" not in given:
-            raise broken("lacks the key uncertainty", remedy="Write { uncertainty = 0.3 } for 30%.", got="")
-        return given | {"kind": "gaussian"}
+        raise broken("is no yield", '"free", "fixed" or { uncertainty = 0.3 }', suggestion(given, ("free", "fixed")))
 
-    @classmethod
-    def __get_pydantic_json_schema__(cls, core: CoreSchema, handler: GetJsonSchemaHandler) -> JsonSchemaValue:
-        table = {
-            "type": "object",
-            "properties": {"uncertainty": {"type": "number", "exclusiveMinimum": 0}},
-            "required": ["uncertainty"],
-            "additionalProperties": False,
-        }
-        return {"anyOf": [{"enum": ["free", "fixed"]}, table], "description": cls.__doc__}
+    @model_validator(mode="after")
+    def _complete(self) -> Yield:
+        if (self.kind == "gaussian") != (self.uncertainty is not None):
+            raise broken("is no yield", '"free", "fixed" or { uncertainty = 0.3 }')
+        return self
 
 
 class Mode(Table):
@@ -63,9 +68,9 @@ class Mode(Table):
 
     component: Identifier
     label: Text | None = Field(default=None, description="in pictures and tables; the component's name if left out")
-    parents: Annotated[tuple[Parent, ...], Field(min_length=1), _Distinct] = Field(default=("B+", "B0"))
-    charm: Annotated[tuple[CharmFamily, ...], Field(min_length=1), _Distinct]
-    leptons: Annotated[tuple[Lepton, ...], Field(min_length=1), _Distinct]
+    parents: Annotated[tuple[Parent, ...], Field(min_length=1), Distinct] = Field(default=("B+", "B0"))
+    charm: Annotated[tuple[CharmFamily, ...], Field(min_length=1), Distinct]
+    leptons: Annotated[tuple[Lepton, ...], Field(min_length=1), Distinct]
     scales_with: RatioName | None = Field(default=None, description="the ratio that the fit measures with this mode")
     follows: Identifier | None = Field(default=None, description="component whose yield this one scales with")
     yield_: Yield | None = Field(
@@ -109,7 +114,7 @@ class Mode(Table):
         return "feed-down"
 
 
-Shape = Annotated[dict[str, Law], ByObservable]
+Shape = Annotated[dict[ObservableKey, Law], ByObservable]
 
 
 class Background(Table):
@@ -133,7 +138,7 @@ class Background(Table):
     expected: Annotated[dict[str, NotNegative], Field(min_length=1)] = Field(description="events by category")
     shape: Shape = Field(description="law of each observable")
     shape_in: dict[str, Shape] = Field(default={}, description="laws that differ, by category or charm hadron")
-    correlation: dict[str, dict[str, Annotated[Number, Field(gt=-1, lt=1)]]] = Field(
+    correlation: dict[ObservableKey, dict[ObservableKey, Annotated[Number, Field(gt=-1, lt=1)]]] = Field(
         default={}, description="of the Gaussian copula, by observable and observable"
     )
 
@@ -151,3 +156,31 @@ class Background(Table):
     def role(self) -> str:
         """As in core.templates.Component."""
         return "background"
+
+    def overrides(self, category: str, charm: str) -> tuple[str, ...]:
+        """Keys of `shape_in` that apply to a category and its charm hadron, the stronger first."""
+        return tuple(key for key in (category, charm) if key in self.shape_in)
+
+    def laws(self, category: str, charm: str) -> dict[str, Law]:
+        """Law of each observable in a category, which has this charm hadron."""
+        laws = dict(self.shape)
+        for key in reversed(self.overrides(category, charm)):
+            laws |= self.shape_in[key]
+        return laws
+
+    @property
+    def correlated(self) -> tuple[str, ...]:
+        """Observables in the correlation table, in the order of `shape`."""
+        named = {name for first, row in self.correlation.items() for name in (first, *row)}
+        return tuple(name for name in self.shape if name in named)
+
+    @property
+    def correlation_matrix(self) -> NDArray[np.float64]:
+        """(n, n) float64, in the order of `correlated`."""
+        names = self.correlated
+        matrix = np.eye(len(names))
+        for first, row in self.correlation.items():
+            for second, value in row.items():
+                i, j = names.index(first), names.index(second)
+                matrix[i, j] = matrix[j, i] = value
+        return matrix

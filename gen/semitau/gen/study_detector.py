@@ -6,7 +6,7 @@ what differs. Momenta are laboratory momenta in GeV.
 
 from __future__ import annotations
 
-from typing import Annotated, Any
+from typing import Annotated, Any, ClassVar
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -20,6 +20,7 @@ from .study_rules import (
     NotNegative,
     PositiveAngle,
     PositiveEnergy,
+    ShortTable,
     Table,
     broken,
     rule,
@@ -32,11 +33,13 @@ Acceptance = Annotated[
 Pair = tuple[NotNegative, NotNegative]
 
 
-class Curve(Table):
+class Curve(ShortTable):
     """A probability against momentum: straight lines between the points, constant outside them.
 
     In the file: a bare number (the same at every momentum), or { momentum = [...], value = [...] }.
     """
+
+    short_schema: ClassVar[dict[str, Any]] = {"type": "number", "minimum": 0, "maximum": 1}
 
     momentum: Momenta = Field(min_length=1, description="GeV, increasing")
     value: tuple[Fraction, ...] = Field(min_length=1, description="probabilities, as many as momenta")

@@ -7,13 +7,23 @@ from __future__ import annotations
 
 from typing import Annotated, Literal
 
-from pydantic import Field
+import numpy as np
+from pydantic import Field, model_validator
 
-from .study_rules import Flag, Fraction, Increasing, NotNegative, Number, Table, Text, Value, rule
+from .study_rules import Flag, Fraction, Increasing, NotNegative, Number, Table, Text, Value, broken, rule
 
 Range = Annotated[tuple[Value, Value], Increasing]
 _NotZero = rule(lambda value: value != 0, "must not be zero")
 _Some = rule(lambda values: any(values), "must not all be zero")
+
+
+_FAR = 30.0  # standard deviations; beyond it a Gaussian is zero for every purpose
+
+
+def _near(mean: float, sigma: float, limits: tuple[float, float]) -> None:
+    if mean + _FAR * sigma < limits[0] or mean - _FAR * sigma > limits[1]:
+        got = f"mean {mean:g}, sigma {sigma:g}, range {list(limits)}"
+        raise broken("misses its range", f"a range within {_FAR:g} sigma of the mean", got=got)
 
 
 class Exponential(Table):
@@ -32,6 +42,11 @@ class Gaussian(Table):
     sigma: Annotated[Value, Field(gt=0)]
     range: Range
 
+    @model_validator(mode="after")
+    def _met(self) -> Gaussian:
+        _near(self.mean, self.sigma, self.range)
+        return self
+
 
 class DoubleGaussian(Table):
     """(1 − wide_fraction) of a core Gaussian and wide_fraction of a wide one about the same or another mean.
@@ -47,6 +62,12 @@ class DoubleGaussian(Table):
     wide_mean: Value | None = Field(default=None, description="mean of the wide Gaussian; that of the core if left out")
     range: Range
 
+    @model_validator(mode="after")
+    def _met(self) -> DoubleGaussian:
+        _near(self.mean, self.sigma, self.range)
+        _near(self.mean if self.wide_mean is None else self.wide_mean, self.wide_sigma, self.range)
+        return self
+
 
 class Power(Table):
     """(x − origin)^exponent, truncated to a range right of the origin."""
@@ -55,6 +76,17 @@ class Power(Table):
     exponent: Number
     origin: Value = 0.0
     range: Range
+
+    @model_validator(mode="after")
+    def _right_of_origin(self) -> Power:
+        low = self.range[0]
+        if low < self.origin:
+            raise broken("must stay right of the origin", f"from {self.origin:g}", got=f"range from {low:g}")
+        if low == self.origin and self.exponent <= -1:
+            raise broken(
+                "has no area", "exponent above -1, or a range that starts above the origin", got=f"{self.exponent:g}"
+            )
+        return self
 
 
 class Threshold(Table):
@@ -66,6 +98,12 @@ class Threshold(Table):
     scale: Annotated[Value, Field(gt=0)]
     range: Range
 
+    @model_validator(mode="after")
+    def _past_threshold(self) -> Threshold:
+        if self.range[1] <= self.threshold:
+            raise broken("ends below the threshold", f"a range beyond {self.threshold:g}", got=f"{self.range[1]:g}")
+        return self
+
 
 class EndPoint(Table):
     """Kinematic limit from below: x · (1 − x²/end²)^power · exp(−curvature · (1 − x²/end²)), 0 ≤ x ≤ end."""
@@ -73,8 +111,14 @@ class EndPoint(Table):
     law: Literal["end_point"]
     end: Annotated[Value, Field(gt=0)]
     power: NotNegative = 0.5
-    curvature: Number = 0.0
+    curvature: Annotated[Number, Field(ge=-500, le=500)] = 0.0
     range: Range
+
+    @model_validator(mode="after")
+    def _within_limit(self) -> EndPoint:
+        if self.range[0] >= self.end or self.range[1] <= 0:
+            raise broken("misses the law", f"a range that meets 0 to {self.end:g}", got=str(list(self.range)))
+        return self
 
 
 class PhaseSpace(Table):
@@ -93,12 +137,30 @@ class Uniform(Table):
     range: Range
 
 
+def _lowest(coefficients: tuple[float, ...], limits: tuple[float, float]) -> tuple[float, float]:
+    """Place and value of the polynomial's minimum; values within rounding of zero count as zero."""
+    falling = np.array(coefficients[::-1])
+    turns = [float(root.real) for root in np.roots(np.polyder(falling)) if abs(root.imag) < 1e-9 * (1 + abs(root))]
+    places = np.array([*limits, *(turn for turn in turns if limits[0] < turn < limits[1])])
+    values = np.polyval(falling, places)
+    rounding = 1e-12 * np.max(np.polyval(np.abs(falling), np.abs(places)))
+    lowest = int(np.argmin(values))
+    return float(places[lowest]), float(values[lowest]) if values[lowest] < -rounding else 0.0
+
+
 class Polynomial(Table):
     """coefficients[0] + coefficients[1]·x + coefficients[2]·x² + ..., nowhere negative in the range."""
 
     law: Literal["polynomial"]
     coefficients: Annotated[tuple[Number, ...], Field(min_length=1, max_length=12), _Some]
     range: Range
+
+    @model_validator(mode="after")
+    def _positive(self) -> Polynomial:
+        x, low = _lowest(self.coefficients, self.range)
+        if low < 0:
+            raise broken("is negative within its range", "no negative value", got=f"{low:g} at {x:g}")
+        return self
 
 
 class Histogram(Table):

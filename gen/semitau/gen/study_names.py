@@ -35,6 +35,7 @@ RatioName = Literal["R_D", "R_Dst"]
 
 PARENTS: tuple[str, ...] = get_args(Parent)
 LEPTONS: tuple[str, ...] = get_args(Lepton)
+RATIOS: tuple[str, ...] = get_args(RatioName)
 CHARM_FAMILIES: tuple[str, ...] = get_args(CharmFamily)
 CHARM_HADRONS: tuple[str, ...] = get_args(CharmHadron)
 

@@ -2,12 +2,15 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import json
+from collections.abc import Callable, Iterable
+from difflib import get_close_matches
 from itertools import pairwise
-from typing import Annotated, Any
+from typing import Annotated, Any, ClassVar
 
-from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, WithJsonSchema
-from pydantic_core import PydanticCustomError
+from pydantic import AfterValidator, BaseModel, BeforeValidator, ConfigDict, Field, GetJsonSchemaHandler, WithJsonSchema
+from pydantic.json_schema import JsonSchemaValue
+from pydantic_core import CoreSchema, PydanticCustomError
 
 from .study_names import OBSERVABLES
 from .units import UNITS, UnitError, quantity
@@ -25,6 +28,41 @@ def broken(what: str, wanted: str = "", remedy: str = "", got: str | None = None
     """The error of a broken rule; `got` defaults to the value found in the file ("" hides it)."""
     context = {"what": what, "wanted": wanted, "remedy": remedy, "got": got}
     return PydanticCustomError(RULE, "{what}", context)
+
+
+def shown(value: object) -> str:
+    """A value as the study file would write it, cut to a length that fits a message."""
+    if isinstance(value, bool):
+        text = str(value).lower()
+    elif isinstance(value, str):
+        text = json.dumps(str(value), ensure_ascii=False)
+    elif isinstance(value, dict):
+        text = "{ " + ", ".join(f"{key} = {shown(item)}" for key, item in value.items()) + " }" if value else "{}"
+    elif isinstance(value, list | tuple):
+        text = "[" + ", ".join(map(shown, value)) + "]"
+    else:
+        text = str(value)
+    return text if len(text) <= 80 else text[:77] + "..."
+
+
+def suggestion(given: object, known: Iterable[str]) -> str:
+    """ "Did you mean ...?" if a known word is near to `given`; else ""."""
+    if not isinstance(given, str):
+        return ""
+    folded = {word.casefold(): word for word in known}
+    near = get_close_matches(given.casefold(), folded, n=1, cutoff=0.6)
+    return f'Did you mean "{folded[near[0]]}"?' if near else ""
+
+
+class ShortTable(Table):
+    """A table that may be written short, as a word, a number or a list; `short_schema` is the JSON schema of that."""
+
+    short_schema: ClassVar[dict[str, Any]]
+
+    @classmethod
+    def __get_pydantic_json_schema__(cls, core: CoreSchema, handler: GetJsonSchemaHandler) -> JsonSchemaValue:
+        table = handler.resolve_ref_schema(handler(core))
+        return {"anyOf": [cls.short_schema, table], "description": cls.__doc__}
 
 
 def _in(dimension: str) -> tuple[BeforeValidator, WithJsonSchema]:
@@ -76,6 +114,12 @@ def _know_dimensions(given: Any) -> Any:
 ByObservable = BeforeValidator(_know_dimensions)
 
 
+def _known_observable(name: str) -> str:
+    if name not in OBSERVABLES:
+        raise broken("is no observable", ", ".join(OBSERVABLES), suggestion(name, OBSERVABLES), got=name)
+    return name
+
+
 def _by_dimension(value: Any) -> Any:
     if not isinstance(value, str):
         return value
@@ -123,6 +167,8 @@ Fraction = Annotated[float, _strict, Field(ge=0, le=1)]
 Count = Annotated[int, BeforeValidator(_whole), Field(strict=True, gt=0)]
 Seed = Annotated[int, Field(strict=True, ge=0, lt=2**63)]
 Energy = Annotated[float, _energy, _energy_schema, _strict]
+# Where an observable is named as a key.
+ObservableKey = Annotated[str, AfterValidator(_known_observable)]
 # In the unit of the observable it belongs to.
 Value = Annotated[
     float,
@@ -140,4 +186,10 @@ def increasing(values: tuple[float, ...]) -> bool:
     return all(low < high for low, high in pairwise(values))
 
 
+def distinct(values: tuple[object, ...]) -> bool:
+    """True if no value stands twice."""
+    return len(set(values)) == len(values)
+
+
+Distinct = rule(distinct, "must not name anything twice")
 Increasing = rule(increasing, "must increase", "each value larger than the one before")

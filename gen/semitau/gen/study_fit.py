@@ -1,0 +1,69 @@
+"""[fit] and [toys]: what is fitted, and how often."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, ClassVar, Literal
+
+from pydantic import BeforeValidator, Field, model_validator
+
+from .study_names import RatioName
+from .study_rules import Count, Flag, Increasing, Positive, ShortTable, Table, Text, broken, suggestion
+
+
+class FitData(ShortTable):
+    """What is fitted: "expected", "pseudo" (independent events), or { file = "data.root" }.
+
+    The file holds histograms <category>/data with the axes of the study.
+    """
+
+    short_schema: ClassVar[dict[str, Any]] = {"enum": ["expected", "pseudo"]}
+
+    kind: Literal["expected", "pseudo", "file"] = "file"
+    file: Text | None = None
+
+    @model_validator(mode="before")
+    @classmethod
+    def _from_word(cls, given: Any) -> Any:
+        if isinstance(given, FitData | dict):
+            return given
+        if given in ("expected", "pseudo"):
+            return {"kind": given}
+        near = suggestion(given, ("expected", "pseudo"))
+        raise broken("is no data", '"expected", "pseudo" or { file = "data.root" }', near)
+
+    @model_validator(mode="after")
+    def _complete(self) -> FitData:
+        if (self.kind == "file") != (self.file is not None):
+            raise broken("is no data", '"expected", "pseudo" or { file = "data.root" }')
+        return self
+
+
+class FitSection(Table):
+    """[fit]."""
+
+    ratios: Literal["isospin", "separate"] = Field(
+        default="isospin", description='"separate": R_D and R_Dst for B⁺ and B⁰ on their own'
+    )
+    template_statistics: Flag = Field(default=True, description="finite template statistics in the likelihood")
+    data: FitData = Field(default=FitData(kind="expected"), description="what is fitted")
+    injected: dict[RatioName, Positive] = Field(
+        default={}, description="ratios that templates are made with; those of the form factors if left out"
+    )
+
+
+class Linearity(Table):
+    """Toys at several injected ratios."""
+
+    factors: Annotated[tuple[Positive, ...], Field(min_length=2), Increasing] = Field(
+        default=(0.8, 1.0, 1.2, 1.4), description="of all injected ratios at once"
+    )
+    number: Count = Field(default=500, description="toys at each")
+
+
+class Toys(Table):
+    """[toys]."""
+
+    number: Count = 2000
+    linearity: Annotated[Linearity | None, BeforeValidator(lambda given: None if given is False else given)] = Field(
+        default=Linearity(), description="false switches it off"
+    )
