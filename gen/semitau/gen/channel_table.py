@@ -73,6 +73,7 @@ def channel_table(channel: Channel) -> ChannelTable:
         chain = ORBITAL_VECTOR if channel.vector else ORBITAL_GROUND
     low, high = decay.q2_range
     visible_mass = channel.m_seen_lepton if channel.tau_to else 0.0
+    amplitudes = regular_amplitudes(decay)
     energy_low, energy_high = energy_range(visible_mass)
     return ChannelTable(
         parent_mass=decay.m_parent,
@@ -92,7 +93,7 @@ def channel_table(channel: Channel) -> ChannelTable:
         visible_mass=visible_mass,
         visible_span=energy_high - energy_low,
         q2_table=q2_table(decay),
-        amplitudes=amplitude_columns(regular_amplitudes(decay)),
+        amplitudes=complex_columns(amplitudes) if needs_complex(amplitudes) else real_columns(amplitudes),
         visible_table=interval_table(lambda s: energy_density(visible_mass, s), VISIBLE_INTERVALS),
     )
 
@@ -111,12 +112,23 @@ def regular_amplitudes(decay: Decay) -> HelicityAmplitudes:
     return HelicityAmplitudes(**{name: value * np.sqrt(q2) for name, value in vars(values).items()})
 
 
-def amplitude_columns(amplitudes: HelicityAmplitudes) -> Floats:
-    """(nodes, 4) if only real J appear, else (nodes, 16); see `ChannelTable`."""
-    columns = np.stack(list(vars(amplitudes).values()), axis=-1)
-    if not np.any(columns[:, 4:]) and not np.any(columns.imag):
-        return np.ascontiguousarray(columns[:, :4].real)
-    return np.ascontiguousarray(columns).view(np.float64)
+def needs_complex(amplitudes: HelicityAmplitudes) -> bool:
+    """Whether there is more than a real vector and axial current, i.e. more than the standard model or real VL, VR."""
+    values = vars(amplitudes)
+    return any(np.any(value.imag) or (name[0] != "J" and np.any(value)) for name, value in values.items())
+
+
+def real_columns(amplitudes: HelicityAmplitudes) -> Floats:
+    """(nodes, 4): J_+, J_-, J_0, J_t."""
+    a = amplitudes
+    return np.ascontiguousarray(np.stack([a.J_plus, a.J_minus, a.J_zero, a.J_t], axis=-1).real)
+
+
+def complex_columns(amplitudes: HelicityAmplitudes) -> Floats:
+    """(nodes, 16): real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0."""
+    a = amplitudes
+    values = [a.J_plus, a.J_minus, a.J_zero, a.J_t, a.S, a.T_plus, a.T_minus, a.T_zero]
+    return np.ascontiguousarray(np.stack(values, axis=-1)).view(np.float64)
 
 
 def q2_table(decay: Decay) -> Floats:

@@ -77,3 +77,29 @@ def spin_density(
         kp_minus * np.conj(kp_plus) + km_minus * np.conj(km_plus) + k0_minus * np.conj(k0_plus)
     )
     return plus + minus, 2.0 * mixed.real, 2.0 * mixed.imag, plus - minus
+
+
+@njit(forceinline=True, cache=True, error_model="numpy")
+def chain_density(
+    x: float,
+    incoherent: float,
+    coherent: float,
+    cos_theta: float,
+    cos_v: float,
+    cos_chi: float,
+    sin_chi: float,
+    even: float,
+    odd_x: float,
+    odd_y: float,
+    odd_z: float,
+    amplitudes: Any,
+) -> float:
+    """|M|² of a whole event up to a factor that does not depend on the amplitudes.
+
+    x : m_lepton / sqrt(q²). even, odd_* : the tau decay is even + odd . P, with P on x', y', z'; 1, 0, 0, 0 without a
+    tau.
+    amplitudes : the eight of the module's docstring, real or complex.
+    """
+    states = helicity_states(cos_theta, *lepton_terms(x, *amplitudes))
+    trace, px, py, pz = spin_density(incoherent, coherent, cos_v, cos_chi, sin_chi, *states)
+    return even * trace + (odd_x * px + odd_y * py + odd_z * pz)

@@ -3,9 +3,9 @@
 Nothing is rejected and nothing is weighted. The joint density is drawn as a chain of exact conditionals:
 
 - q²: alias table (`alias.py`).
-- cos(theta), and cos(theta_V): the even part is a mixture of sin² and cos² terms. The median of three uniforms on [-1, 1]
-  is distributed as 1 - c², the one of largest modulus as c². An odd part comes from choosing the sign with the odds of
-  the density at c and -c.
+- cos(theta), and cos(theta_V): the even part is a mixture of sin² and cos² terms. The median of three uniforms on
+  [-1, 1] is distributed as 1 - c², the one of largest modulus as c². An odd part comes from choosing the sign with the
+  odds of the density at c and -c.
 - chi: the density is a trigonometric polynomial up to 2 chi. Its values at four angles a quarter turn apart have a sum
   that does not depend on the base angle, so a uniform base angle and a choice among the four are exact.
 - tau daughter: energy from an alias table, direction isotropic, then reversed with the odds of the density at n and -n;
@@ -86,14 +86,14 @@ def _look_up(x: Floats, q2_table: Floats, visible_table: Floats, amplitudes: Flo
         x[row.NODE + i] = draw_position(q2_table, x[row.SCRATCH_0 + i], x[row.SCRATCH_1 + i], x[row.SCRATCH_2 + i])
     if columns == 4:
         for i in range(LANES):
-            k = np.int64(x[row.NODE + i])
+            k = int(x[row.NODE + i])
             f = x[row.NODE + i] - k
             for column in range(4):
                 low = amplitudes[k, column]
                 x[_FIRST_AMPLITUDE + column * LANES + i] = low + f * (amplitudes[k + 1, column] - low)
     else:
         for i in range(LANES):
-            k = np.int64(x[row.NODE + i])
+            k = int(x[row.NODE + i])
             f = x[row.NODE + i] - k
             for column in range(16):
                 low = amplitudes[k, column]
