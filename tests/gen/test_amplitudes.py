@@ -171,8 +171,6 @@ def heavy_quark_amplitudes(decay: Decay, q2: float) -> HelicityAmplitudes:
 def test_heavy_quark_limit(family: str, coupling: str) -> None:
     """Signs of V/A and T/(V-A), and all of D**, from the trace formalism of the heavy-quark limit."""
     c = COUPLINGS[coupling]
-    if family not in ("D", "D*") and any((c.SL, c.SR, c.T)):
-        pytest.skip("no scalar and tensor couplings for D**")
     decay = Decay("B0", charm_name("B0", family), "tau", wilson=c)
     for q2, theta, phi in points(decay):
         if decay.orbital is None:

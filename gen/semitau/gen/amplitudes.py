@@ -150,15 +150,29 @@ def vector_amplitudes(
 
 
 def _orbital(decay: Decay, q2: Floats) -> HelicityAmplitudes:
+    """B -> D**. Scalar and tensor currents follow from the equations of motion, exact at leading order in 1/m."""
     currents = orbital_currents(decay, q2)
-    c = decay.couplings
+    M, m, c = decay.m_parent, decay.m_charm, decay.couplings
+    root, total, difference = np.sqrt(q2), M + m, M - m
     axial, vector = 1.0 + c.VL - c.VR, 1.0 + c.VL + c.VR
-    # In 1+ states the vector current is the one that carries the polarisation vector, in 0+ and 2+ the axial one.
-    even, odd = (vector, axial) if currents.natural_is_vector else (axial, vector)
+    timelike = -0.5 * currents.timelike  # the helicity table has J_t and J_0 of opposite sign
+    drag = np.sqrt(kallen(M, m, q2)) * currents.timelike
+    # The current that carries the polarisation vector of the charmed meson is the vector one in 1+ states, the axial
+    # one in 0+ and 2+; the other one has the epsilon tensor.
+    if currents.natural_is_vector:
+        even, odd, scalar = vector, axial, (c.SL + c.SR) / (BOTTOM_MASS - CHARM_MASS)
+        tensor, with_even, with_odd = -c.T, total, difference
+    else:
+        even, odd, scalar = axial, vector, (c.SR - c.SL) / (BOTTOM_MASS + CHARM_MASS)
+        tensor, with_even, with_odd = c.T, difference, total
     return _amplitudes(
         q2,
         J_plus=0.5 * (even * currents.transverse - odd * currents.parity),
         J_minus=0.5 * (even * currents.transverse + odd * currents.parity),
         J_zero=0.5 * even * currents.longitudinal,
-        J_t=-0.5 * even * currents.timelike,  # the helicity table above has J_t and J_0 of opposite sign
+        J_t=even * timelike,
+        S=scalar * root * timelike,
+        T_plus=-2.0 * tensor * (with_even * currents.transverse + with_odd * currents.parity) / root,
+        T_minus=-2.0 * tensor * (with_even * currents.transverse - with_odd * currents.parity) / root,
+        T_zero=-2.0 * tensor * (with_even * currents.longitudinal - drag / with_odd) / root,
     )

