@@ -154,7 +154,7 @@ def channels(
                 chosen = (form_factors or {}).get(transition, DEFAULT_SETS[transition])
                 couplings, model = (wilson, tensor) if lepton == "tau" else (None, "LO")
                 decay = Decay(parent, charm_name(parent, family), lepton, chosen, couplings, model)
-                found.extend(_chains(decay, tau_to))
+                found.extend(chains_of(decay, tau_to))
     return tuple(found)
 
 
@@ -169,7 +169,8 @@ def semileptonic_branching_fraction(decay: Decay) -> float:
     return light * ratio(decay.parent, decay.charm, decay.form_factors, decay.couplings, decay.tensor)
 
 
-def _chains(decay: Decay, tau_to: tuple[str, ...]) -> Iterator[Channel]:
+def chains_of(decay: Decay, tau_to: tuple[str, ...]) -> Iterator[Channel]:
+    """Every chain of one decay; the decays of the tau in `tau_to`, which a light lepton does not look at."""
     start = semileptonic_branching_fraction(decay)
     if decay.lepton == "tau":
         leptonic: list[tuple[str | None, float]] = [(name, BRANCHING_FRACTION["tau"][name]) for name in tau_to]
