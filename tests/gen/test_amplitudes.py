@@ -12,6 +12,7 @@ from collections.abc import Iterator
 import numpy as np
 import pytest
 from semitau.core.constants import BOTTOM_MASS, CHARM_MASS
+from semitau.gen import tensor_form_factors
 from semitau.gen.amplitudes import (
     HelicityAmplitudes,
     LeptonAmplitudes,
@@ -22,7 +23,12 @@ from semitau.gen.amplitudes import (
 )
 from semitau.gen.decay import FAMILIES, Decay, WilsonCoefficients, charm_name
 from semitau.gen.form_factor_values import PseudoscalarFormFactors, VectorFormFactors, longitudinal
-from semitau.gen.tensor_form_factors import VectorTensorFormFactors
+from semitau.gen.tensor_form_factors import (
+    TENSOR_MODELS,
+    VectorTensorFormFactors,
+    pseudoscalar_tensor,
+    vector_tensor,
+)
 
 from . import dirac
 
@@ -155,15 +161,26 @@ def test_vector(coupling: str, lepton: str, final: str) -> None:
         np.testing.assert_allclose(ours, brute(p, operators(currents, decay.couplings)), rtol=PRECISION, atol=1e-12)
 
 
+def heavy_quark_pseudoscalar(M: float, m: float, q2: np.ndarray) -> PseudoscalarFormFactors:
+    """B -> D in the heavy-quark limit, Isgur-Wise function 1 (Phys. Rept. 245 (1994) 259)."""
+    r, w = m / M, (M * M + m * m - q2) / (2 * M * m)
+    return PseudoscalarFormFactors((1 + r) / (2 * np.sqrt(r)) + 0 * q2, np.sqrt(r) * (w + 1) / (1 + r))
+
+
+def heavy_quark_vector(M: float, m: float, q2: np.ndarray) -> VectorFormFactors:
+    """The same for B -> D*."""
+    d = heavy_quark_pseudoscalar(M, m, q2)
+    return VectorFormFactors(V=d.f_plus, A0=d.f_plus, A1=d.f_zero, F1=longitudinal(M, m, q2, d.f_zero, d.f_plus))
+
+
 def heavy_quark_amplitudes(decay: Decay, q2: float) -> HelicityAmplitudes:
-    """D and D* with the form factors of the heavy-quark limit, Isgur-Wise function 1 (Phys. Rept. 245 (1994) 259)."""
+    """D and D* in the heavy-quark limit, with the tensor form factors of the package's LO model."""
     M, m, q = decay.m_parent, decay.m_charm, np.array([q2])
-    r, w = m / M, (M * M + m * m - q) / (2 * M * m)
-    odd, even = (1 + r) / (2 * np.sqrt(r)) + 0 * q, np.sqrt(r) * (w + 1) / (1 + r)
     if decay.family == "D":
-        return pseudoscalar_amplitudes(decay, q, PseudoscalarFormFactors(odd, even), odd)
-    values = VectorFormFactors(V=odd, A0=odd, A1=even, F1=longitudinal(M, m, q, even, odd))
-    return vector_amplitudes(decay, q, values, VectorTensorFormFactors(odd, even, (1 - r) / (2 * np.sqrt(r)) + 0 * q))
+        values = heavy_quark_pseudoscalar(M, m, q)
+        return pseudoscalar_amplitudes(decay, q, values, pseudoscalar_tensor("LO", values, M, m, q))
+    vector = heavy_quark_vector(M, m, q)
+    return vector_amplitudes(decay, q, vector, vector_tensor("LO", vector, M, m, q))
 
 
 @pytest.mark.parametrize("coupling", COUPLINGS)
@@ -196,17 +213,28 @@ def test_heavy_quark_limit(family: str, coupling: str) -> None:
         np.testing.assert_allclose(ours, expected, rtol=PRECISION, atol=1e-12)
 
 
-def test_heavy_quark_limit_of_the_tensor_models() -> None:
-    """The LO tensor model is the heavy-quark limit of the definitions: T1(0) = T2(0) exactly."""
-    decay = Decay("B0", "D*-", "tau", wilson={"T": 1.0})
-    near_zero = helicity_amplitudes(decay, np.array([1e-9]))
-    # T_+- ~ gap T2 +- sqrt(lambda) T1 over sqrt(q2): T_- stays finite only if T1(0) = T2(0).
+def test_tensor_models_agree_in_the_heavy_quark_limit(monkeypatch: pytest.MonkeyPatch) -> None:
+    """With quark masses = hadron masses the equations of motion hold exactly there, so EOM = LO."""
+    M, m = 5.28, 2.01
+    monkeypatch.setattr(tensor_form_factors, "BOTTOM_POLE_MASS", M)
+    monkeypatch.setattr(tensor_form_factors, "CHARM_POLE_MASS", m)
+    q2 = np.linspace(3.2, 10.6, 9)
+    d, dst = heavy_quark_pseudoscalar(M, m, q2), heavy_quark_vector(M, m, q2)
+    models = [(pseudoscalar_tensor(name, d, M, m, q2), vector_tensor(name, dst, M, m, q2)) for name in TENSOR_MODELS]
+    np.testing.assert_allclose(models[0][0], models[1][0], rtol=1e-9)
+    for name in ("T1", "T2", "T3"):
+        np.testing.assert_allclose(getattr(models[0][1], name), getattr(models[1][1], name), rtol=1e-9)
+
+
+def test_tensor_at_zero_q2() -> None:
+    """T_+- ~ gap T2 +- sqrt(lambda) T1 over sqrt(q2): T_- stays finite only if T1(0) = T2(0), which is exact."""
+    near_zero = helicity_amplitudes(Decay("B0", "D*-", "tau", wilson={"T": 1.0}), np.array([1e-9]))
     assert abs(near_zero.T_minus[0]) < 1e-4 * abs(near_zero.T_plus[0])
 
 
 @pytest.mark.parametrize("coupling", ["none", "VL"])
 def test_left_handed_dominance(coupling: str) -> None:
-    """With a right-handed antineutrino the negative D* helicity dominates; destructive T-SM interference for D*."""
+    """With a right-handed antineutrino the negative D* helicity dominates."""
     q2 = np.linspace(3.2, 10.6, 50)
     k = helicity_amplitudes(Decay("B0", "D*-", "tau", wilson=COUPLINGS[coupling]), q2)
     assert np.all(np.abs(k.J_minus) > np.abs(k.J_plus))

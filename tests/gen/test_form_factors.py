@@ -52,6 +52,9 @@ def test_cln_normalisation_and_slope(name: str) -> None:
     assert -(-3 * h[0] + 4 * h[1] - h[2]) / (2 * step) / h[0] == pytest.approx(p["rho2"], rel=1e-6)
 
     p = gen.form_factors(name)["D"].parameters
+    scalar = pseudoscalar(name, q2_at(1.0, D)).f_zero[0]
+    # S1(1)/V1(1) = 0.981 (Phys. Rev. D 82 (2010) 034027)
+    assert scalar == pytest.approx(0.981 * p["V1(1)"] * 2 * np.sqrt(D / B) / (1 + D / B), rel=1e-12)
     f = [pseudoscalar(name, q2_at(w, D)).f_plus[0] for w in (1.0, 1.0 + step, 1.0 + 2 * step)]
     assert -(-3 * f[0] + 4 * f[1] - f[2]) / (2 * step) / f[0] == pytest.approx(p["rho2"], rel=1e-6)
 
