@@ -1,0 +1,234 @@
+"""Templates as flat arrays for the compiled likelihood: lanes, tiles, pieces, moves.
+
+A lane holds one bin. Lanes come in tiles: up to TILE bins of one category, filled up to a multiple of WIDTH with lanes
+that hold nothing, so that inner loops are whole vectors and a tile's working set stays in the first cache. A piece is
+one component's template in one tile, a move what one nuisance does to one piece. Bins in which nothing is ever expected
+have no lane.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Iterator, Mapping, Sequence
+from typing import NamedTuple
+
+import numpy as np
+from numpy.typing import NDArray
+from semitau.core.errors import InputError, Problem
+from semitau.core.templates import Category, Floats, Template, TemplateSet
+
+from .interpolation import FLOOR
+from .vectors import WIDTH
+
+Indices = NDArray[np.int64]
+
+TILE = 128
+
+
+class Arrays(NamedTuple):
+    """What the compiled functions read. Parameters: scale parameters first, then nuisances."""
+
+    inverse_injected: Floats  # (parameters,); 0 for nuisances
+    inverse_variance: Floats  # (parameters,) of the Gaussian constraint; 0 without one
+    component_first: Indices  # (components + 1,) into component_scales
+    component_scales: Indices  # parameters whose product scales the component
+    tile_first: Indices  # (tiles + 1,) lane
+    tile_filled: Indices  # (tiles,) lanes that hold a bin; they come first
+    tile_pieces: Indices  # (tiles + 1,) piece
+    tile_rows: Indices  # (tiles + 1,) into rows
+    rows: Indices  # parameters that change the tile, increasing
+    piece_component: Indices  # (pieces,)
+    piece_offset: Indices  # (pieces,) into nominal
+    piece_moves: Indices  # (pieces + 1,) move
+    move_parameter: Indices  # (moves,)
+    move_offset: Indices  # (moves,) into odd and even
+    nominal: Floats
+    odd: Floats
+    even: Floats
+    floor: Floats  # (lanes,) expectation below which the protection sets in
+    template_variance: Floats  # (lanes,) squared relative error of the expectation from finite templates
+
+
+class Layout(NamedTuple):
+    """The arrays and how bins map to lanes."""
+
+    arrays: Arrays
+    lane_bin: Indices  # (lanes,) bin, in the order of categories and their axes; -1 for lanes that fill up
+    bin_lane: Indices  # (bins,) lane; -1 for bins that never hold anything
+
+
+class _Totals(NamedTuple):
+    """Per bin of a category: the expectation, its variance, and how far variations could fill it."""
+
+    expected: Floats
+    variance: Floats
+    reach: Floats
+
+
+class _Padded:
+    """A growing flat array whose parts are filled up to the length of their tile."""
+
+    def __init__(self) -> None:
+        self.parts: list[Floats] = [np.zeros(0)]
+        self.size = 0
+
+    def add(self, values: Floats, length: int, filling: float = 0.0) -> int:
+        part = np.full(length, filling)
+        part[: values.size] = values
+        self.parts.append(part)
+        self.size += length
+        return self.size - length
+
+    def array(self) -> Floats:
+        return np.concatenate(self.parts)
+
+
+class _Growing:
+    """The arrays under construction, tile by tile."""
+
+    def __init__(self, templates: TemplateSet, indices: Mapping[str, int]) -> None:
+        self.templates, self.indices = templates, indices
+        self.lane_bin: list[int] = []
+        self.tile_first, self.tile_filled, self.tile_pieces = [0], list[int](), [0]
+        self.tile_rows, self.rows = [0], list[int]()
+        self.piece_component, self.piece_offset, self.piece_moves = list[int](), list[int](), [0]
+        self.move_parameter, self.move_offset = list[int](), list[int]()
+        self.nominal, self.odd, self.even = _Padded(), _Padded(), _Padded()
+        self.floor, self.template_variance = _Padded(), _Padded()
+
+    def add_tile(self, category: Category, bins: Indices, first_bin: int, totals: _Totals) -> None:
+        length = -(-bins.size // WIDTH) * WIDTH
+        touched: set[int] = set()
+        for number, component in enumerate(self.templates.components):
+            template = self.templates.templates.get((category.name, component.name))
+            if template is not None and self._add_piece(number, template, bins, length, touched):
+                touched.update(self.indices[name] for name in component.scales_with)
+        self.lane_bin += [*(first_bin + bins).tolist(), *[-1] * (length - bins.size)]
+        expected, variance, reach = (part[bins] for part in totals)
+        filled = expected > 0
+        # A bin that only variations fill has no expectation of its own to take a part of.
+        self.floor.add(FLOOR * np.where(filled, expected, reach), length, 1.0)
+        self.template_variance.add(np.where(filled, variance / np.where(filled, expected, 1.0) ** 2, 0.0), length)
+        self.tile_first.append(self.tile_first[-1] + length)
+        self.tile_filled.append(bins.size)
+        self.tile_pieces.append(len(self.piece_component))
+        self.rows += sorted(touched)
+        self.tile_rows.append(len(self.rows))
+
+    def _add_piece(self, number: int, template: Template, bins: Indices, length: int, touched: set[int]) -> bool:
+        moves = list(_moves(template, bins))
+        centre = template.nominal.ravel()[bins]
+        if not moves and not centre.any():
+            return False
+        self.piece_component.append(number)
+        self.piece_offset.append(self.nominal.add(centre, length))
+        for name, odd, even in moves:
+            self.move_parameter.append(self.indices[name])
+            self.move_offset.append(self.odd.add(odd, length))
+            self.even.add(even, length)
+            touched.add(self.indices[name])
+        self.piece_moves.append(len(self.move_parameter))
+        return True
+
+
+def lay_out(
+    templates: TemplateSet, inverse_variance: Floats, indices: Mapping[str, int], template_statistics: bool
+) -> Layout:
+    """Flatten the templates.
+
+    inverse_variance : (parameters,) of the constraints, 0 where free.
+    indices : parameter name -> index.
+    template_statistics : False takes the templates as exact.
+
+    Raises InputError for a bin whose total expectation is negative, and when no bin expects anything.
+    """
+    totals = [_totals(templates, category) for category in templates.categories]
+    _refuse_negative(templates.categories, totals)
+    growing, first_bin = _Growing(templates, indices), 0
+    for category, total in zip(templates.categories, totals, strict=True):
+        active = np.flatnonzero((total.expected > 0) | (total.reach > 0))
+        for bins in np.array_split(active, max(1, -(-active.size // TILE))):
+            if bins.size:
+                growing.add_tile(category, bins, first_bin, total)
+        first_bin += total.expected.size
+    if not growing.lane_bin:
+        raise InputError(Problem("no bin of any category expects an event", where="templates"))
+
+    lane_bin = _whole(growing.lane_bin)
+    bin_lane = np.full(first_bin, -1, dtype=np.int64)
+    bin_lane[lane_bin[lane_bin >= 0]] = np.flatnonzero(lane_bin >= 0)
+    inverse_injected = np.zeros(len(indices))
+    for parameter in templates.parameters:
+        inverse_injected[indices[parameter.name]] = 1.0 / parameter.injected
+    scales = [[indices[name] for name in component.scales_with] for component in templates.components]
+    arrays = Arrays(
+        inverse_injected=inverse_injected,
+        inverse_variance=inverse_variance,
+        component_first=_whole(np.cumsum([0, *map(len, scales)])),
+        component_scales=_whole([index for part in scales for index in part]),
+        tile_first=_whole(growing.tile_first),
+        tile_filled=_whole(growing.tile_filled),
+        tile_pieces=_whole(growing.tile_pieces),
+        tile_rows=_whole(growing.tile_rows),
+        rows=_whole(growing.rows),
+        piece_component=_whole(growing.piece_component),
+        piece_offset=_whole(growing.piece_offset),
+        piece_moves=_whole(growing.piece_moves),
+        move_parameter=_whole(growing.move_parameter),
+        move_offset=_whole(growing.move_offset),
+        nominal=growing.nominal.array(),
+        odd=growing.odd.array(),
+        even=growing.even.array(),
+        floor=growing.floor.array(),
+        template_variance=growing.template_variance.array() * float(template_statistics),
+    )
+    return Layout(arrays, lane_bin, bin_lane)
+
+
+def bin_name(category: Category, index: int) -> str:
+    """A bin in words, e.g. "category Dst0_mu, bin [2, 5]"; `index` counts the category's bins in C order."""
+    place = [int(i) for i in np.unravel_index(index, category.shape)]
+    return f"category {category.name}, bin {place}"
+
+
+def _totals(templates: TemplateSet, category: Category) -> _Totals:
+    size = int(np.prod(category.shape))
+    totals = _Totals(np.zeros(size), np.zeros(size), np.zeros(size))
+    for component in templates.components:
+        template = templates.templates.get((category.name, component.name))
+        if template is None:
+            continue
+        totals.expected[:] += template.nominal.ravel()
+        totals.variance[:] += template.variance.ravel()
+        for _, odd, even in _moves(template, np.arange(size)):
+            totals.reach[:] += np.abs(odd) + np.abs(even)
+    return totals
+
+
+def _refuse_negative(categories: Sequence[Category], totals: Iterable[_Totals]) -> None:
+    problems = [
+        Problem(
+            "the components together expect a negative number of events",
+            where=bin_name(category, int(index)),
+            got=f"{total.expected[index]:g}",
+            wanted="zero or more",
+            remedy="Merge it with a neighbour, or generate more events.",
+        )
+        for category, total in zip(categories, totals, strict=True)
+        for index in np.flatnonzero(total.expected < 0)
+    ]
+    if problems:
+        raise InputError(*problems)
+
+
+def _moves(template: Template, bins: Indices) -> Iterator[tuple[str, Floats, Floats]]:
+    """Nuisance, odd and even part of its shift in these bins, for the nuisances that do something there."""
+    centre = template.nominal.ravel()[bins]
+    for name, plus in template.plus.items():
+        up, down = plus.ravel()[bins], template.minus[name].ravel()[bins]
+        odd, even = 0.5 * (up - down), 0.5 * (up + down) - centre
+        if odd.any() or even.any():
+            yield name, odd, even
+
+
+def _whole(values: Sequence[int] | Indices) -> Indices:
+    return np.array(values, dtype=np.int64)
