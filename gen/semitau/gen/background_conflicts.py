@@ -37,6 +37,7 @@ def background_conflicts(sections: Sections) -> Iterator[Conflict]:
         yield from _missing_laws(place, background, categories)
         yield from _empty_axes(place, background, categories)
         yield from _correlations(place, background)
+        yield from _shared_trees(place, background)
         yield from _files(place, background, sections.folder)
 
 
@@ -104,6 +105,19 @@ def _correlations(place: Place, background: Background) -> Iterator[Conflict]:
             what, wanted = "is not positive definite", "a smallest eigenvalue above 0"
             remedy = "Make the correlations smaller, or give those of the pairs left out."
             yield Conflict((*place, "correlation"), what, f"smallest eigenvalue {lowest:.3g}", wanted, remedy)
+
+
+def _shared_trees(place: Place, background: Background) -> Iterator[Conflict]:
+    """A smooth column is drawn by itself, so it cannot keep its correlation with others of its tree."""
+    for observable, law in background.shape.items():
+        if not (isinstance(law, Column) and law.smooth):
+            continue
+        for name, other in background.shape.items():
+            if name != observable and isinstance(other, Column) and (other.file, other.tree) == (law.file, law.tree):
+                what = f"would lose its correlation with {name}, which comes from the same tree"
+                where = (*place, "shape", observable, "smooth")
+                yield Conflict(where, what, remedy="Leave smooth out, or use another tree.")
+                break
 
 
 def _files(place: Place, background: Background, folder: Path | None) -> Iterator[Conflict]:

@@ -157,6 +157,13 @@ class Background(Table):
         """As in core.templates.Component."""
         return "background"
 
+    @property
+    def events_in(self) -> dict[str, int]:
+        """Drawn events of each category that expects any: an even share, the first ones take what is left over."""
+        filled = [name for name, expected in self.expected.items() if expected]
+        share, left = divmod(self.events, len(filled)) if filled else (0, 0)
+        return {name: share + (i < left) for i, name in enumerate(filled)}
+
     def overrides(self, category: str, charm: str) -> tuple[str, ...]:
         """Keys of `shape_in` that apply to a category and its charm hadron, the stronger first."""
         return tuple(key for key in (category, charm) if key in self.shape_in)

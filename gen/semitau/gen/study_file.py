@@ -15,12 +15,11 @@ from semitau.core.errors import InputError, Problem
 from .study import CONFLICTS, StudyConfig
 from .study_conflicts import conflicts
 from .study_faults import conflict
-from .study_sections import SECTIONS, Conflict, Place, Sections
+from .study_places import key_of
+from .study_sections import SECTIONS, Conflict, Sections
 from .toml_lines import TomlLines
 
 MOST_BYTES = 4_000_000
-# The keys that name an element of an array of tables, in places such as mode[D_tau].events.
-_NAMES = ("component", "name")
 
 
 def read_study(path: Path | str) -> StudyConfig:
@@ -157,24 +156,10 @@ def _problems(found: Iterable[Conflict], data: Mapping[str, Any], lines: TomlLin
     placed = [(lines.line(item.place), item) for item in dict.fromkeys(found)]
     placed.sort(key=lambda pair: pair[0])
     return [
-        Problem(item.what, f"{path}:{line}" + _key(item.place, data), item.got, item.wanted, item.remedy)
+        Problem(item.what, f"{path}:{line}{_after_colon(key_of(item.place, data))}", item.got, item.wanted, item.remedy)
         for line, item in placed
     ]
 
 
-def _key(place: Place, data: object) -> str:
-    """ ": mode[D_tau].events" """
-    text = ""
-    for part in place:
-        if isinstance(part, int):
-            element = data[part] if isinstance(data, list) and part < len(data) else None
-            name = next(
-                (element[k] for k in _NAMES if isinstance(element, dict) and isinstance(element.get(k), str)), ""
-            )
-            text += f"[{name or part + 1}]"
-            data = element
-        else:
-            plain = re.fullmatch(r"[A-Za-z0-9_-]+", part)
-            text += ("." if text else "") + (part if plain else f'"{part}"')
-            data = data.get(part) if isinstance(data, dict) else None
-    return f": {text}" if text else ""
+def _after_colon(key: str) -> str:
+    return f": {key}" if key else ""

@@ -82,9 +82,11 @@ class Power(Table):
         low = self.range[0]
         if low < self.origin:
             raise broken("must stay right of the origin", f"from {self.origin:g}", got=f"range from {low:g}")
-        if low == self.origin and self.exponent <= -1:
+        if low == self.origin and self.exponent < -0.99:
             raise broken(
-                "has no area", "exponent above -1, or a range that starts above the origin", got=f"{self.exponent:g}"
+                "has all its area at the origin",
+                "exponent from -0.99, or a range that starts above the origin",
+                got=f"{self.exponent:g}",
             )
         return self
 
@@ -201,3 +203,5 @@ Law = Annotated[
     | Column,
     Field(discriminator="law"),
 ]
+
+FormulaLaw = Exponential | Gaussian | DoubleGaussian | Power | Threshold | EndPoint | PhaseSpace | Uniform | Polynomial
