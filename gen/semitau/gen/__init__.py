@@ -11,11 +11,13 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from .decay import Decay as Decay
     from .decay import WilsonCoefficients as WilsonCoefficients
+    from .event_weights import weights as weights
     from .form_factor_set import form_factor_sets as form_factor_sets
     from .form_factor_set import form_factors as form_factors
     from .rates import differential_rate as differential_rate
     from .rates import observables as observables
     from .rates import ratio as ratio
+    from .simulation import simulate as simulate
 
 _HOME = {
     "Decay": "decay",
@@ -25,6 +27,8 @@ _HOME = {
     "form_factors": "form_factor_set",
     "observables": "rates",
     "ratio": "rates",
+    "simulate": "simulation",
+    "weights": "event_weights",
 }
 
 __all__ = [
@@ -35,6 +39,8 @@ __all__ = [
     "form_factors",
     "observables",
     "ratio",
+    "simulate",
+    "weights",
 ]
 
 

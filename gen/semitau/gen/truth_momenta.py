@@ -208,10 +208,30 @@ def _cascade(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.
 
 
 @njit(forceinline=True, cache=True, error_model="numpy")
-def w_frame_boost(x: Floats, i: int, parent_mass: float, charm_energy: float) -> tuple[float, float]:
-    """(gamma, gamma beta) of the W* in the B frame."""
+def from_w_frame(
+    x: Floats, i: int, table: ChannelTable, px: float, py: float, pz: float, energy: float
+) -> tuple[float, float, float, float]:
+    """(px, py, pz, E) in the turned B frame of a vector in the W* rest frame of lane i."""
     root = np.sqrt(x[row.Q2 + i])
-    return (parent_mass - charm_energy) / root, x[_W_MOMENTUM + i] / root
+    gamma, gamma_beta = (table.parent_mass - _charm_energy(x, i, table)) / root, x[_W_MOMENTUM + i] / root
+    turned = _turn(x, i, px, py, gamma * pz + gamma_beta * energy)
+    return turned[0], turned[1], turned[2], gamma * energy + gamma_beta * pz
+
+
+@njit(forceinline=True, cache=True, error_model="numpy")
+def from_tau_frame(
+    x: Floats, i: int, table: ChannelTable, side: float, up: float, along: float, energy: float
+) -> tuple[float, float, float, float]:
+    """(px, py, pz, E) in the turned B frame of a vector on x', y', z' of the tau rest frame of lane i."""
+    c = x[row.COS_THETA + i]
+    s = np.sqrt((1.0 - c) * (1.0 + c))
+    scale = 0.5 / (np.sqrt(x[row.Q2 + i]) * TAU_MASS)
+    gamma, gamma_beta = (x[row.Q2 + i] + TAU_MASS**2) * scale, (x[row.Q2 + i] - TAU_MASS**2) * scale
+    forward = gamma * along + gamma_beta * energy
+    # theta-hat = (c, 0, -s), phi-hat = y, n = (s, 0, c)
+    return from_w_frame(
+        x, i, table, s * forward + c * side, up, c * forward - s * side, gamma * energy + gamma_beta * along
+    )
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
@@ -219,32 +239,12 @@ def _lepton(x: Floats, table: ChannelTable) -> None:
     """The light lepton; the tau rows are cleared."""
     mass2 = table.lepton_mass**2
     for i in range(LANES):
-        root, c = np.sqrt(x[row.Q2 + i]), x[row.COS_THETA + i]
-        energy, momentum = 0.5 * (x[row.Q2 + i] + mass2) / root, 0.5 * (x[row.Q2 + i] - mass2) / root
-        gamma, gamma_beta = w_frame_boost(x, i, table.parent_mass, _charm_energy(x, i, table))
-        along = momentum * c
-        lepton = _turn(x, i, momentum * np.sqrt((1.0 - c) * (1.0 + c)), 0.0, gamma * along + gamma_beta * energy)
-        x[row.LEPTON_PX + i], x[row.LEPTON_PY + i], x[row.LEPTON_PZ + i] = lepton[0], lepton[1], lepton[2]
-        x[row.LEPTON_E + i] = gamma * energy + gamma_beta * along
+        scale, c = 0.5 / np.sqrt(x[row.Q2 + i]), x[row.COS_THETA + i]
+        own, momentum = (x[row.Q2 + i] + mass2) * scale, (x[row.Q2 + i] - mass2) * scale
+        across = momentum * np.sqrt((1.0 - c) * (1.0 + c))
+        px, py, pz, energy = from_w_frame(x, i, table, across, 0.0, momentum * c, own)
+        x[row.LEPTON_PX + i], x[row.LEPTON_PY + i], x[row.LEPTON_PZ + i], x[row.LEPTON_E + i] = px, py, pz, energy
         x[row.TAU_PX + i] = x[row.TAU_PY + i] = x[row.TAU_PZ + i] = x[row.TAU_E + i] = 0.0
-
-
-@njit(forceinline=True, cache=True, error_model="numpy")
-def from_tau_frame(
-    x: Floats, i: int, table: ChannelTable, side: float, up: float, along: float, energy: float
-) -> tuple[float, float, float, float]:
-    """(px, py, pz, E) in the turned B frame of a vector on x', y', z' of the tau rest frame."""
-    root, c = np.sqrt(x[row.Q2 + i]), x[row.COS_THETA + i]
-    s = np.sqrt((1.0 - c) * (1.0 + c))
-    scale = 0.5 / (root * TAU_MASS)
-    tau_gamma, tau_gamma_beta = (x[row.Q2 + i] + TAU_MASS**2) * scale, (x[row.Q2 + i] - TAU_MASS**2) * scale
-    forward = tau_gamma * along + tau_gamma_beta * energy
-    w_energy = tau_gamma * energy + tau_gamma_beta * along
-    # theta-hat = (c, 0, -s), phi-hat = y, n = (s, 0, c)
-    w_z = c * forward - s * side
-    gamma, gamma_beta = w_frame_boost(x, i, table.parent_mass, _charm_energy(x, i, table))
-    px, py, pz = _turn(x, i, s * forward + c * side, up, gamma * w_z + gamma_beta * w_energy)
-    return px, py, pz, gamma * w_energy + gamma_beta * w_z
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
