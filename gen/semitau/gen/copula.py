@@ -16,8 +16,14 @@ from semitau.core.streams import event_key, uniform
 
 Floats = npt.NDArray[np.float64]
 
-_ROOT_HALF = math.sqrt(0.5)
 _ONE = np.uint64(1)
+_LANES = 256
+
+# The normal distribution function, tabulated with its derivative; cubic Hermite pieces are good to 2e-11 everywhere.
+_REACH, _STEPS = 9.0, 128.0  # steps for each unit
+_NODES = np.arange(-_REACH, _REACH + 1.5 / _STEPS, 1.0 / _STEPS)
+_VALUES = np.array([0.5 * math.erfc(-z / math.sqrt(2.0)) for z in _NODES])
+_SLOPES = np.exp(-0.5 * _NODES**2) / (math.sqrt(2.0 * math.pi) * _STEPS)
 
 
 def correlated_uniforms(
@@ -35,15 +41,33 @@ def correlated_uniforms(
     return out
 
 
+@njit(forceinline=True, cache=True, error_model="numpy")
+def normal_distribution(z: float) -> float:
+    """Chance that a standard normal number is below z; absolute error below 2e-11, 0 and 1 beyond ±9."""
+    position = (min(max(z, -_REACH), _REACH) + _REACH) * _STEPS
+    k = np.int64(position)
+    t = position - k
+    low, high = _VALUES[k], _VALUES[k + 1]
+    bend = high - low
+    left, right = _SLOPES[k] - bend, bend - _SLOPES[k + 1]
+    return low + t * (bend + (1.0 - t) * (left * (1.0 - t) + right * t))  # type: ignore[no-any-return]
+
+
 @njit(cache=True, nogil=True, error_model="numpy")
 def _fill(stream: np.uint64, first_event: np.uint64, draws: npt.NDArray[np.uint64], root: Floats, out: Floats) -> None:
-    count = draws.shape[0]
-    normals = np.empty(count)
-    for i in range(out.shape[1]):
-        key = event_key(stream, first_event + np.uint64(i))
+    count, n = out.shape
+    normals = np.empty((count, _LANES))
+    total = np.empty(_LANES)
+    for start in range(0, n, _LANES):
+        lanes = min(_LANES, n - start)
         for j in range(count):
-            normals[j], _ = normal_pair(uniform(key, draws[j]), uniform(key, draws[j] + _ONE))
-            total = 0.0
+            first, second = draws[j], draws[j] + _ONE
+            for i in range(_LANES):
+                key = event_key(stream, first_event + np.uint64(start + i))
+                normals[j, i], _ = normal_pair(uniform(key, first), uniform(key, second))
+            total[:] = 0.0
             for m in range(j + 1):
-                total += root[j, m] * normals[m]
-            out[j, i] = 0.5 * math.erfc(-_ROOT_HALF * total)
+                for i in range(_LANES):
+                    total[i] += root[j, m] * normals[m, i]
+            for i in range(lanes):
+                out[j, start + i] = normal_distribution(total[i])

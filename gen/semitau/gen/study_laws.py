@@ -83,11 +83,8 @@ class Power(Table):
         if low < self.origin:
             raise broken("must stay right of the origin", f"from {self.origin:g}", got=f"range from {low:g}")
         if low == self.origin and self.exponent < -0.99:
-            raise broken(
-                "has all its area at the origin",
-                "exponent from -0.99, or a range that starts above the origin",
-                got=f"{self.exponent:g}",
-            )
+            wanted = "an exponent from -0.99, or a range that starts above the origin"
+            raise broken("has all its area at the origin", wanted, got=f"{self.exponent:g}")
         return self
 
 
