@@ -181,6 +181,11 @@ def _toy_ratio(name: str, label: str, injected: float, error: float, shift: int)
             for level, k in ((0.683, 1), (0.954, 2))
         ),
         pulls=PullHistogram(edges=tuple(edges.tolist()), counts=tuple(counts.tolist()), outside=0),
+        judgement="unbiased",
+        significance=0.5,
+        excluded=0.06,
+        toys_needed=400,
+        covers=True,
         verdict="no bias seen",
     )
 
@@ -212,7 +217,7 @@ def small_results() -> Results:
             valid=True,
             reasons=(),
             minus_log_likelihood=-1234.5,
-            goodness=Goodness(statistic=560.0, degrees_of_freedom=567, p_value=0.57),
+            goodness=Goodness(statistic=560.0, degrees_of_freedom=567, p_value=0.57, toy_p_value=0.55),
             parameters=tuple(
                 Parameter(name=n, label=label, kind=k, injected=i, constraint=c, value=i, error=0.1)
                 for n, label, k, i, c in names
@@ -235,7 +240,8 @@ def small_results() -> Results:
         ),
         linearity=tuple(
             Linearity(
-                ratio=n, label=label, slope=1.002, slope_error=0.01, offset=0.0004, offset_error=0.0006,
+                ratio=n, label=label, slope=1.002, slope_error=0.01,
+                intercept=0.0004, intercept_error=0.0026, p_value=0.4,
                 verdict="straight",
                 points=tuple(
                     LinearityPoint(

@@ -3,6 +3,13 @@
 from __future__ import annotations
 
 from importlib import import_module
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from .report import write_report as write_report
+    from .results import Results as Results
+    from .results import read_results as read_results
+    from .study_run import run_study as run_study
 
 __all__ = ["Results", "read_results", "run_study", "write_report"]
 

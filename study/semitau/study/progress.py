@@ -53,21 +53,21 @@ def bars(console: Console) -> Iterator[Report]:
 @contextmanager
 def sparse_lines(console: Console, clock: Callable[[], float] = time.monotonic) -> Iterator[Report]:
     """A line when a piece of work ends, and every BETWEEN_LINES seconds while it lasts."""
-    started: dict[str, float] = {}
+    started: dict[str, tuple[float, int]] = {}
     spoken: dict[str, float] = {}
     finished: set[str] = set()
 
     def report(label: str, done: int, total: int | None) -> None:
         now = clock()
-        begin = started.setdefault(label, now)
+        begin, already = started.setdefault(label, (now, done))
         if total is not None and done >= total:
             if label not in finished:
                 finished.add(label)
                 console.print(f"{label}: done in {duration(now - begin)}", highlight=False)
         elif now - spoken.setdefault(label, begin) >= BETWEEN_LINES:
             spoken[label] = now
-            if total and done:
-                left = (now - begin) * (total - done) / done
+            if total and done > already:
+                left = (now - begin) * (total - done) / (done - already)
                 console.print(f"{label}: {100 * done // total} %, about {duration(left)} left", highlight=False)
             else:
                 console.print(f"{label}: {done} done", highlight=False)

@@ -72,7 +72,7 @@ class Parameter(Part):
 
     name: str = Field(description="Identifier")
     label: str = Field(description="Label for people")
-    kind: Literal["ratio", "yield", "nuisance"] = Field(description="What it is")
+    kind: str = Field(description="ratio, yield or nuisance")
     injected: float = Field(description="Value that the model was made with")
     constraint: float | None = Field(description="Standard deviation of its auxiliary measurement; null if free")
     value: float = Field(description="Fitted value")
@@ -85,6 +85,7 @@ class Goodness(Part):
     statistic: float = Field(description="Twice the log likelihood ratio to the saturated model")
     degrees_of_freedom: int = Field(description="Bins minus free parameters")
     p_value: float | None = Field(description="Chance of a worse fit, from the χ² distribution; null without freedom")
+    toy_p_value: float | None = Field(description="Share of toys with a worse fit; holds for bins with few events, too")
 
 
 class Fit(Part):
@@ -147,6 +148,11 @@ class ToyRatio(Part):
     pull_width_error: float = Field(description="Its standard error")
     coverage: tuple[Coverage, ...] = Field(description="At 68.3 % and 95.4 %")
     pulls: PullHistogram = Field(description="Histogram of the pulls")
+    judgement: str = Field(description="unbiased, biased or undecided: what the toys say of the mean")
+    significance: float | None = Field(description="Bias in standard deviations of its own error; null if undefined")
+    excluded: float | None = Field(description="A bias beyond this share of the fit's error is excluded at 95 %")
+    toys_needed: int = Field(description="Toys that would exclude a bias above a tenth of the error")
+    covers: bool = Field(description="Whether pull width and coverage agree with their nominal values within 3 σ")
     verdict: str = Field(description="The judgement in words")
 
 
@@ -178,8 +184,9 @@ class Linearity(Part):
     points: tuple[LinearityPoint, ...] = Field(description="In the order of the injected values")
     slope: float = Field(description="Slope of the line; 1 is ideal")
     slope_error: float = Field(description="Its standard error")
-    offset: float = Field(description="Fitted minus injected value at the centre of the points; 0 is ideal")
-    offset_error: float = Field(description="Its standard error")
+    intercept: float = Field(description="Where the line meets an injected value of 0; 0 is ideal")
+    intercept_error: float = Field(description="Its standard error")
+    p_value: float | None = Field(description="Chance of points further from the line; null for two points")
     verdict: str = Field(description="The judgement in words")
 
 
@@ -187,8 +194,8 @@ class Verdict(Part):
     """The judgement on the fit."""
 
     status: Literal["sound", "doubtful", "unsound", "undecided"] = Field(
-        description="sound: no sign of bias at the stated power; doubtful: 2 to 4 standard deviations; "
-        "unsound: beyond; undecided: too few toys"
+        description="sound: errors cover and a bias above a tenth of the error is excluded; doubtful: a departure of "
+        "three standard deviations that is small, or not in the mean; unsound: biased; undecided: too few toys"
     )
     sentences: tuple[str, ...] = Field(description="What was found, with its statistical significance")
 

@@ -3,6 +3,10 @@
 from __future__ import annotations
 
 from importlib import import_module
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from .gallery import draw_pictures as draw_pictures
 
 __all__ = ["draw_pictures"]
 

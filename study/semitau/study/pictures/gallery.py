@@ -19,6 +19,7 @@ from .style import RC, component_colours
 from .toy_pulls import toy_pulls
 
 DATA_LABELS = {"expected": "expected events", "pseudo": "pseudo-data", "file": "data"}
+COUNTED = {"expected": "expected events", "pseudo": "events of pseudo-data", "file": "events of data"}
 
 Drawing = tuple[str, str, str, Callable[[], Sheet]]
 
@@ -88,7 +89,7 @@ def _projections(results: Results) -> Iterator[Drawing]:
             if not chosen:
                 continue
             events = counted(sum(chosen[0].data))
-            note = f"{events} events" + (f" with {chosen[0].region}" if enhanced else "") + f", {data_label}"
+            note = f"{events} {COUNTED[results.data.kind]}" + (f" with {chosen[0].region}" if enhanced else "")
             title = f"{category.label}: signal-enhanced" if enhanced else category.label
             caption = (
                 f"Fitted components and {data_label} of {category.label}"

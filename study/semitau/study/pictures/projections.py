@@ -14,7 +14,7 @@ from ..results import ComponentInfo, Projection
 from .sheet import Sheet
 from .style import BAND, INK, PAPER, QUIET, RULE
 
-PANEL, GAP, LEFT, LEGEND = 3.0, 0.72, 0.68, 1.85
+PANEL, GAP, LEFT, LEGEND = 3.0, 0.8, 0.76, 1.85
 UPPER, LOWER, FOOT, HEAD = 2.35, 0.72, 0.5, 0.62
 
 
@@ -37,8 +37,8 @@ def stacked_projections(
         _draw_residuals(lower, projection)
         if number == 0:
             lower.set_ylabel("residual / σ")
-            lower.yaxis.set_label_coords(-0.145, 0.5)
-        upper.yaxis.set_label_coords(-0.145, 0.5)
+            lower.yaxis.set_label_coords(-0.175, 0.5)
+        upper.yaxis.set_label_coords(-0.175, 0.5)
     _draw_legend(sheet, projections, components, colours, data_label)
     return sheet
 

@@ -3,6 +3,10 @@
 from __future__ import annotations
 
 from importlib import import_module
+from typing import TYPE_CHECKING
+
+if TYPE_CHECKING:
+    from .page import write_report as write_report
 
 __all__ = ["write_report"]
 

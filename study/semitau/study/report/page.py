@@ -14,16 +14,10 @@ from ..pictures.gallery import DATA_LABELS
 from ..pictures.sheet import Picture
 from ..progress import duration
 from ..results import Results
+from ..summary import VERDICT_WORDS
 from .inline_svg import inline_svg
 
 HERE = Path(__file__).parent
-
-VERDICT_WORDS = {
-    "sound": "The fit is sound",
-    "doubtful": "The fit is doubtful",
-    "unsound": "The fit is not sound",
-    "undecided": "Not decided: too few toys",
-}
 
 
 def write_report(results: Results, pictures: Sequence[Picture], path: Path) -> None:

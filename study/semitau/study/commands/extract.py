@@ -1,0 +1,41 @@
+"""`semitau extract TEMPLATES`: the fit."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from ..invocation import Invocation, shared_options
+from ..template_options import template_options
+
+
+@click.command()
+@template_options
+@shared_options
+def command(
+    call: Invocation, templates: Path, data: Path | None, expected: bool, fix: tuple[str, ...], exact_templates: bool
+) -> None:
+    """Fit templates to data: ratios, errors, correlations.
+
+    TEMPLATES is a template file from anybody's simulation (docs/template_file.md). What is fitted: the file of --data,
+    else the data in TEMPLATES, else the expected events.
+    """
+    from ..fit_parts import fit_part, ratio_parts
+    from ..fitting import choose_data, described, fit_or_fail, open_model
+    from ..summary import goodness_line, parameter_table, ratio_table
+
+    model = open_model(templates, not exact_templates, fix)
+    observed, source = choose_data(model, data, expected)
+    result = fit_or_fail(model, observed)
+    from semitau.fit.decomposition import budget
+
+    ratios, fit = ratio_parts(model, result, budget(model, result)), fit_part(model, result)
+    call.terminal.show(described(source), "", ratio_table(ratios), "", goodness_line(fit), parameter_table(fit))
+    call.terminal.result(
+        {
+            "data": source.model_dump(mode="json"),
+            "ratios": [ratio.model_dump(mode="json") for ratio in ratios],
+            "fit": fit.model_dump(mode="json"),
+        }
+    )

@@ -1,0 +1,109 @@
+"""Results of the fit package as parts of `results.json`."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+
+import numpy as np
+from semitau.core.templates import TemplateSet
+from semitau.fit.decomposition import Budget as FitBudget
+from semitau.fit.model import Model
+from semitau.fit.result import FitResult
+from semitau.fit.toys import ToyResults
+
+from .results import Budget, BudgetRow, ComponentInfo, Fit, Goodness, Named, Parameter, RatioResult
+
+SOURCE_LABELS = {
+    "statistical": "finite data",
+    "template statistics": "finite templates",
+    "yields": "constrained yields",
+    "ratios": "constrained ratios",
+}
+
+
+def fit_part(model: Model, result: FitResult, toys: ToyResults | None = None) -> Fit:
+    """Parameters with values, errors and correlations, and whether to trust them.
+
+    toys : at the injected ratios, if there are any; a p-value from them holds for bins with few events, too.
+    """
+    free = [index for index, parameter in enumerate(model.parameters) if parameter.fixed is None]
+    finite = bool(np.isfinite(result.errors).all())
+    goodness = result.goodness
+    return Fit(
+        valid=result.valid,
+        reasons=tuple(map(str, result.reasons)),
+        minus_log_likelihood=result.minus_log_likelihood,
+        goodness=Goodness(
+            statistic=goodness.statistic,
+            degrees_of_freedom=goodness.degrees_of_freedom,
+            p_value=goodness.p_value,
+            toy_p_value=None if toys is None or not toys.valid.any() else toys.share_above(goodness.statistic),
+        ),
+        parameters=tuple(
+            Parameter(
+                name=model.parameters[index].name,
+                label=model.parameters[index].label,
+                kind=model.parameters[index].kind,
+                injected=model.parameters[index].injected,
+                constraint=model.parameters[index].constraint,
+                value=float(result.values[index]),
+                error=float(result.errors[index]) if finite else 0.0,
+            )
+            for index in free
+        ),
+        correlation=tuple(map(tuple, result.correlations[np.ix_(free, free)].tolist())) if finite else (),
+    )
+
+
+def ratio_parts(model: Model, result: FitResult, budgets: Mapping[str, FitBudget]) -> tuple[RatioResult, ...]:
+    """Each fitted ratio beside its injected value, with its error split where there is a budget."""
+    found = []
+    for name in model.ratios:
+        parameter = model.parameters[model.index(name)]
+        value, error = result.value(name), result.error(name)
+        if parameter.fixed is not None or not error > 0:
+            continue
+        split = budgets.get(name)
+        found.append(
+            RatioResult(
+                name=name,
+                label=parameter.label,
+                injected=parameter.injected,
+                value=value,
+                error=error,
+                pull=(value - parameter.injected) / error,
+                statistical=None if split is None else split.rows["statistical"],
+                template_statistics=None if split is None else split.rows["template statistics"],
+                systematic=None if split is None else split.systematic,
+            )
+        )
+    return tuple(found)
+
+
+def budget_parts(budgets: Mapping[str, FitBudget]) -> tuple[Budget, ...]:
+    """The uncertainty of each ratio by source."""
+    return tuple(
+        Budget(
+            ratio=name,
+            rows=tuple(
+                BudgetRow(source=source, label=SOURCE_LABELS.get(source, source), error=error)
+                for source, error in split.rows.items()
+            ),
+            total=split.total,
+        )
+        for name, split in budgets.items()
+    )
+
+
+def category_parts(templates: TemplateSet) -> tuple[Named, ...]:
+    """Names and labels of the categories."""
+    return tuple(Named(name=category.name, label=category.label) for category in templates.categories)
+
+
+STACKING = ("background", "feed-down", "normalisation", "signal")
+
+
+def component_parts(templates: TemplateSet) -> tuple[ComponentInfo, ...]:
+    """Components in stacking order: backgrounds below, signals on top."""
+    ordered = sorted(templates.components, key=lambda component: STACKING.index(component.role))
+    return tuple(ComponentInfo(name=c.name, label=c.label, role=c.role, scales_with=c.scales_with) for c in ordered)

@@ -1,0 +1,90 @@
+"""A template file opened for fitting: its model, and the data to fit."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+
+from semitau.core.errors import InputError, Problem, RunError
+from semitau.core.template_file import read_templates
+from semitau.fit.data import Data
+from semitau.fit.model import Model
+from semitau.fit.newton import maximise
+from semitau.fit.result import FitResult
+
+from .numbers import counted
+from .results import DataSource
+
+
+def open_model(path: Path, template_statistics: bool = True, fixed: Sequence[str] = ()) -> Model:
+    """The model of a template file from anybody.
+
+    fixed : "NAME=VALUE" of parameters to hold.
+
+    Raises
+    ------
+    InputError : the file is missing, not a template file, of another version, or holds what no template may hold; or
+        `fixed` names no parameter.
+    """
+    templates = read_templates(path)
+    return Model(templates, template_statistics=template_statistics, fixed=dict(map(_holding, fixed)))
+
+
+def choose_data(model: Model, data_file: Path | None, expected: bool = False) -> tuple[Data, DataSource]:
+    """What to fit: `data_file`, else the data in the template file, else (or with `expected`) the expected events."""
+    if data_file is not None:
+        data = model.data(data_file)
+        return data, DataSource(kind="file", description=f"data of {data_file.name}", events=_events(data))
+    if model.templates.data and not expected:
+        data = model.data(model.templates)
+        return data, DataSource(kind="pseudo", description="data stored with the templates", events=_events(data))
+    data = model.expected_data()
+    return data, DataSource(kind="expected", description="expected events", events=_events(data))
+
+
+def fit_or_fail(model: Model, data: Data) -> FitResult:
+    """The fit to the data.
+
+    Raises
+    ------
+    RunError : it did not converge; the problems say why and what to do.
+    """
+    result = maximise(model, data)
+    if not result.valid:
+        raise RunError(*(result.reasons or (Problem("the fit failed"),)))
+    return result
+
+
+def described(source: DataSource) -> str:
+    """In one line, e.g. "Data: expected events (14 321 events)"."""
+    return f"Data: {source.description} ({counted(source.events)} events)"
+
+
+def read_factors(text: str) -> tuple[float, ...]:
+    """Numbers between commas, at least two, or none at all. Raises InputError for anything else."""
+    parts = [part for part in text.split(",") if part.strip()]
+    try:
+        factors = tuple(map(float, parts))
+        if len(factors) == 1:
+            raise ValueError
+    except ValueError:
+        raise InputError(
+            Problem("not a list of multiples", where="--factors", got=repr(text), wanted='numbers, e.g. "0.8,1,1.2"')
+        ) from None
+    return factors
+
+
+def _holding(text: str) -> tuple[str, float]:
+    name, sign, value = text.partition("=")
+    try:
+        if not sign:
+            raise ValueError
+        return name.strip(), float(value)
+    except ValueError:
+        raise InputError(
+            Problem("not a parameter and its value", where="--fix", got=repr(text), wanted="NAME=NUMBER, e.g. R_D=0.3")
+        ) from None
+
+
+def _events(data: Data) -> float:
+    return float(data.counts.sum())

@@ -1,0 +1,206 @@
+"""A whole study: study file -> templates -> data -> fit -> budget -> toys -> linearity -> results, pictures, report."""
+
+from __future__ import annotations
+
+import resource
+import sys
+import time
+from collections.abc import Callable, Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass
+from datetime import UTC, datetime
+from pathlib import Path
+
+from semitau.core.engine import checked_workers
+from semitau.core.errors import InputError
+from semitau.core.whole_files import write_whole
+from semitau.fit.data import Data
+from semitau.fit.decomposition import budget
+from semitau.fit.model import Model
+from semitau.fit.straightness import linearity
+from semitau.fit.toys import run_toys
+from semitau.gen.study import StudyConfig
+from semitau.gen.study_file import read_study
+
+from .fit_parts import budget_parts, category_parts, component_parts, fit_part, ratio_parts
+from .fitting import fit_or_fail
+from .pictures import draw_pictures
+from .projecting import projections
+from .report import write_report
+from .results import DataSource, Results, StageTime, StudyIdentity, Timing, read_results
+from .study_folder import StudyFolder, claimed_folder, study_key, versions
+from .study_templates import study_templates
+from .toy_file import write_toys
+from .toy_parts import linearity_parts, overall_verdict, toys_part
+from .worth_a_look import worth_a_look
+
+Report = Callable[[str, int, int | None], None]
+
+
+@dataclass(frozen=True)
+class StudyRun:
+    """results : everything that was found. folder : where it lies. reused : whether the results were there already."""
+
+    results: Results
+    folder: StudyFolder
+    reused: bool
+
+
+class Stopwatch:
+    """Wall-clock time of the stages of a run."""
+
+    def __init__(self) -> None:
+        self.started = datetime.now(UTC).replace(microsecond=0)
+        self._start = time.perf_counter()
+        self.stages: list[StageTime] = []
+
+    @contextmanager
+    def stage(self, name: str) -> Iterator[None]:
+        """Time what happens inside, under this name."""
+        start = time.perf_counter()
+        yield
+        self.stages.append(StageTime(stage=name, seconds=round(time.perf_counter() - start, 3), reused=False))
+
+    def reused(self) -> None:
+        """The last stage took what was stored."""
+        self.stages[-1] = self.stages[-1].model_copy(update={"reused": True})
+
+    def timing(self, workers: int) -> Timing:
+        """Times so far, with the largest memory of the process."""
+        # Linux counts in kB, macOS in bytes.
+        unit = 1e6 if sys.platform == "darwin" else 1e3
+        return Timing(
+            started=self.started.isoformat().replace("+00:00", "Z"),
+            stages=tuple(self.stages),
+            total=round(time.perf_counter() - self._start, 3),
+            workers=workers,
+            peak_memory=round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / unit, 1),
+        )
+
+
+def open_study(path: Path, seed: int | None = None) -> StudyConfig:
+    """The study in a file, with another seed if one is given. Raises InputError with every problem."""
+    study = read_study(path)
+    if seed is None:
+        return study
+    return study.model_copy(update={"study": study.study.model_copy(update={"seed": seed})})
+
+
+def run_study(
+    path: Path | str,
+    *,
+    output: Path | None = None,
+    seed: int | None = None,
+    workers: int | None = None,
+    report: Report | None = None,
+    again: bool = False,
+) -> StudyRun:
+    """Run the study in the file `path`; same file and seed, same results, for any number of workers.
+
+    output, seed : instead of those in the file. workers : threads, None for all cores.
+    report : called as report(label, done, total). again : make everything anew, whatever is stored.
+
+    Stored templates and results that were made from the same study, seed, code and files are taken as they are.
+
+    Raises
+    ------
+    InputError : the study file, a file that it names or the output folder is not what it should be.
+    RunError : the fit failed, or something could not be written. Files that were whole before stay so.
+    """
+    study = open_study(Path(path), seed)
+    folder = claimed_folder(output or Path(study.study.output), study.study.name)
+    key = study_key(study)
+    stored = None if again else _stored_results(folder.results, key)
+    if stored is not None and _pictures_are_fresh(folder):
+        return StudyRun(stored, folder, reused=True)
+    results = stored or _found(study, folder, key, checked_workers(workers), report, again)
+    pictures = draw_pictures(results, folder.pictures, report)
+    write_report(results, pictures, folder.report)
+    return StudyRun(results, folder, reused=stored is not None)
+
+
+def _found(
+    study: StudyConfig, folder: StudyFolder, key: str, workers: int, report: Report | None, again: bool
+) -> Results:
+    """Everything from templates to results.json."""
+    watch = Stopwatch()
+    write_whole(folder.study_file, study.text)
+    with watch.stage("templates"):
+        made = study_templates(study, folder.templates, workers, report, again)
+    if made.reused:
+        watch.reused()
+    with watch.stage("fit"):
+        model = Model(made.templates, template_statistics=study.fit.template_statistics)
+        data, source = _data(study, model)
+        fitted = fit_or_fail(model, data)
+        split = budget(model, fitted)
+    with watch.stage("toys"):
+        toys = run_toys(model, study.toys.number, study.study.seed, workers, report)
+    lines = None
+    if study.toys.linearity is not None:
+        plan = study.toys.linearity
+        with watch.stage("linearity"):
+            progress = None if report is None else _one_bar(report, len(plan.factors))
+            lines = linearity(model, plan.factors, plan.number, study.study.seed, workers, progress)
+    write_toys(folder.toys, toys, dict(zip(lines.factors, lines.points, strict=True)) if lines is not None else {})
+    labels = {parameter.name: parameter.label for parameter in model.parameters}
+    fit, ratios, toy_part = fit_part(model, fitted, toys), ratio_parts(model, fitted, split), toys_part(toys, labels)
+    line_parts = linearity_parts(lines, labels) if lines is not None else ()
+    results = Results(
+        study=StudyIdentity(name=study.study.name, seed=study.study.seed, hash=study.digest, key=key, text=study.text),
+        versions=versions(),
+        data=source,
+        ratios=ratios,
+        verdict=overall_verdict(toy_part, line_parts, lines.lines if lines is not None else {}),
+        fit=fit,
+        budget=budget_parts(split),
+        toys=toy_part,
+        linearity=line_parts,
+        categories=category_parts(made.templates),
+        components=component_parts(made.templates),
+        projections=projections(model, fitted, data),
+        cut_flow=made.cut_flow,
+        warnings=worth_a_look(fit, ratios, source, made.cut_flow, fitted.certificate.protected_bins),
+        timing=watch.timing(workers),
+    )
+    write_whole(folder.results, results.text())
+    return results
+
+
+def _data(study: StudyConfig, model: Model) -> tuple[Data, DataSource]:
+    """What the study wants fitted, and what that is in words."""
+    wanted = study.fit.data
+    if wanted.kind == "file" and wanted.file is not None:
+        data, description = model.data(study.beside(wanted.file)), f"data of {wanted.file}"
+    elif wanted.kind == "pseudo":
+        data, description = model.data(model.templates), "pseudo-data from events that the templates do not know"
+    else:
+        data, description = model.expected_data(), "expected events"
+    return data, DataSource(kind=wanted.kind, description=description, events=float(data.counts.sum()))
+
+
+def _one_bar(report: Report, points: int) -> Callable[[str, int, int], None]:
+    """One bar for the toys of all points, which report each on its own."""
+    seen: dict[str, int] = {}
+
+    def under_one_name(label: str, done: int, total: int) -> None:
+        seen[label] = done
+        report("linearity", sum(seen.values()), total * points)
+
+    return under_one_name
+
+
+def _stored_results(path: Path, key: str) -> Results | None:
+    """Results that are whole and were made with this key."""
+    if not path.exists():
+        return None
+    try:
+        results = read_results(path)
+    except InputError:
+        return None  # cut short or of another version: they are made again
+    return results if results.study.key == key else None
+
+
+def _pictures_are_fresh(folder: StudyFolder) -> bool:
+    """Whether the report, which is written last, is newer than the results."""
+    return folder.report.exists() and folder.report.stat().st_mtime_ns >= folder.results.stat().st_mtime_ns

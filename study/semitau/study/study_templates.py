@@ -1,0 +1,116 @@
+"""The templates of a study: taken from its folder if they still fit, built and stored otherwise."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, replace
+from pathlib import Path
+from typing import Any
+
+from semitau.core.errors import InputError
+from semitau.core.template_file import read_templates, write_templates
+from semitau.core.templates import TemplateSet
+from semitau.gen.build import build_templates
+from semitau.gen.cut_flow import CutFlow
+from semitau.gen.study import StudyConfig
+
+from .results import CutFlowComponent
+from .study_folder import study_key, versions
+
+Report = Callable[[str, int, int | None], None]
+
+
+@dataclass(frozen=True)
+class StudyTemplates:
+    """templates : with data, if the study asks for pseudo-data. reused : whether they were there already."""
+
+    templates: TemplateSet
+    cut_flow: tuple[CutFlowComponent, ...]
+    reused: bool
+
+
+def study_templates(
+    study: StudyConfig, path: Path, workers: int | None = None, report: Report | None = None, again: bool = False
+) -> StudyTemplates:
+    """Templates of the study, from `path` if they were made from the same study, seed, code and files.
+
+    again : build in any case.
+
+    Raises
+    ------
+    InputError : the study cannot be built, e.g. a cut removes everything.
+    RunError : the file cannot be written.
+    """
+    key = study_key(study)
+    if not again:
+        stored = _stored(path, key)
+        if stored is not None:
+            return stored
+    if report is not None:
+        report("templates", 0, None)  # the clock starts now, not at the first result
+    build = build_templates(study, workers, None if report is None else _under("templates", report))
+    flow = _cut_flow_parts(build.cut_flow, build.templates)
+    templates = replace(
+        build.templates,
+        provenance={
+            **build.templates.provenance,
+            "versions": versions(),
+            "key": key,
+            "cut_flow": [part.model_dump(mode="json") for part in flow],
+        },
+    )
+    if study.fit.data.kind == "pseudo":
+        templates = replace(templates, data=_pseudo_data(study, workers, report))
+    write_templates(templates, path)
+    return StudyTemplates(templates, flow, reused=False)
+
+
+def _stored(path: Path, key: str) -> StudyTemplates | None:
+    """What is stored, if it is whole and made with this key."""
+    if not path.exists():
+        return None
+    try:
+        templates = read_templates(path)
+    except InputError:
+        return None  # cut short or of another version: it is made again
+    if templates.provenance.get("key") != key:
+        return None
+    stored: Any = templates.provenance.get("cut_flow", [])
+    return StudyTemplates(templates, tuple(CutFlowComponent.model_validate(part) for part in stored), reused=True)
+
+
+def _under(label: str, report: Report) -> Report:
+    """The report of a stage that names its parts, under one name."""
+    return lambda _, done, total: report(label, done, total)
+
+
+def _cut_flow_parts(flow: CutFlow, templates: TemplateSet) -> tuple[CutFlowComponent, ...]:
+    labels = {component.name: component.label for component in templates.components}
+    return tuple(
+        CutFlowComponent.model_validate(
+            {
+                "component": name,
+                "label": labels.get(name, name),
+                "steps": [
+                    {
+                        "name": step,
+                        "events": float(flow.events[s, c]),
+                        "efficiency": _share(float(flow.events[s, c]), float(flow.events[max(s - 1, 0), c])),
+                    }
+                    for s, step in enumerate(flow.steps)
+                ],
+                "purity": float(flow.purity[-1, c]),
+            }
+        )
+        for c, name in enumerate(flow.components)
+    )
+
+
+def _share(part: float, whole: float) -> float:
+    return part / whole if whole > 0 else 0.0
+
+
+def _pseudo_data(study: StudyConfig, workers: int | None, report: Report | None) -> Mapping[str, Any]:
+    from semitau.gen.pseudo_data import pseudo_data
+
+    return pseudo_data(study, workers, None if report is None else _under("pseudo-data", report))

@@ -1,0 +1,166 @@
+"""What a person sees in the terminal: ratios beside injected values, budget, toys, verdict."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Sequence
+
+from rich import box
+from rich.console import Group, RenderableType
+from rich.table import Table
+from rich.text import Text
+
+from .numbers import counted, digits_for, percent, signed, with_error
+from .results import Budget, CutFlowComponent, Fit, Linearity, RatioResult, Results, Toys, Verdict
+
+VERDICT_COLOURS = {"sound": "green", "doubtful": "yellow", "unsound": "red", "undecided": "yellow"}
+
+VERDICT_WORDS = {
+    "sound": "The fit is sound",
+    "doubtful": "The fit is doubtful",
+    "unsound": "The fit is not sound",
+    "undecided": "Not decided: too few toys",
+}
+
+
+def summary(results: Results, report: str) -> RenderableType:
+    """The whole study in one screen. report : where the report lies."""
+    parts: list[RenderableType] = [
+        Text(results.study.name, style="bold"),
+        Text(results.statement, style="dim"),
+        ratio_table(results.ratios),
+    ]
+    if results.fit.goodness is not None and results.data.kind != "expected":
+        parts.append(goodness_line(results.fit))
+    if results.budget:
+        parts.append(budget_table(results.budget, results.ratios))
+    if results.toys is not None:
+        parts.append(toy_table(results.toys))
+    if results.linearity:
+        parts.append(linearity_table(results.linearity))
+    parts.append(verdict_text(results.verdict))
+    parts.extend(Text(f"Look at this: {warning}", style="yellow") for warning in results.warnings)
+    parts.append(Text(f"Report: {report}"))
+    return Group(*(line for part in parts for line in ((part, "") if isinstance(part, Table) else (part,))))
+
+
+def ratio_table(ratios: Sequence[RatioResult]) -> Table:
+    """Fitted ratios beside the injected ones, errors split by kind."""
+    table = _table("", "fitted", "injected", "pull", "statistical", "templates", "systematic")
+    for ratio in ratios:
+        places = digits_for(ratio.error) + 1
+        table.add_row(
+            ratio.label,
+            with_error(ratio.value, ratio.error),
+            signed(ratio.injected, digits_for(ratio.error)),
+            signed(ratio.pull, 2, plus=True),
+            *(_part(part, places) for part in (ratio.statistical, ratio.template_statistics, ratio.systematic)),
+        )
+    return table
+
+
+def goodness_line(fit: Fit) -> Text:
+    """Goodness of fit in one line."""
+    goodness = fit.goodness
+    if goodness is None:
+        return Text("Goodness of fit: not known")
+    p_value = "–" if goodness.p_value is None else signed(goodness.p_value, 3)
+    from_toys = "" if goodness.toy_p_value is None else f" ({signed(goodness.toy_p_value, 3)} from the toys)"
+    freedom = counted(goodness.degrees_of_freedom)
+    return Text(
+        f"Goodness of fit: {goodness.statistic:.1f} for {freedom} degrees of freedom, p = {p_value}{from_toys}\n"
+    )
+
+
+def parameter_table(fit: Fit) -> Table:
+    """Every fitted parameter."""
+    table = _table("Parameter", "fitted", "made with", "constraint")
+    for parameter in fit.parameters:
+        if not parameter.error > 0:
+            continue
+        places = digits_for(parameter.error)
+        constraint = "free" if parameter.constraint is None else f"± {parameter.constraint:.2f}"
+        table.add_row(
+            parameter.label,
+            with_error(parameter.value, parameter.error),
+            signed(parameter.injected, places),
+            constraint,
+        )
+    return table
+
+
+def budget_table(budgets: Sequence[Budget], ratios: Sequence[RatioResult]) -> Table:
+    """Error of each ratio by source, with its share of the ratio."""
+    labels = {ratio.name: ratio.label for ratio in ratios}
+    values = {ratio.name: abs(ratio.value) for ratio in ratios}
+    table = _table("Uncertainty from", *(cell for budget in budgets for cell in (labels[budget.ratio], "")))
+    sources = {row.source: row.label for budget in budgets for row in budget.rows}
+    for source, label in sources.items():
+        table.add_row(label, *_budget_cells(budgets, values, source))
+    table.add_section()
+    table.add_row("total", *_budget_cells(budgets, values, None), style="bold")
+    return table
+
+
+def toy_table(toys: Toys) -> Table:
+    """Bias, pulls and coverage."""
+    levels = [coverage.level for coverage in toys.ratios[0].coverage] if toys.ratios else []
+    table = _table("", "pull mean", "pull width", *(f"{percent(level)} covers" for level in levels))
+    table.caption = f"{counted(toys.number)} toys, {counted(toys.failures)} failed"
+    for ratio in toys.ratios:
+        table.add_row(
+            ratio.label,
+            with_error(ratio.pull_mean, ratio.pull_mean_error),
+            with_error(ratio.pull_width, ratio.pull_width_error),
+            *(f"{signed(100 * c.fraction, 1)} ± {percent((c.high - c.low) / 2)}" for c in ratio.coverage),
+        )
+    return table
+
+
+def linearity_table(lines: Iterable[Linearity]) -> Table:
+    """Slope and offset of fitted against injected ratio."""
+    table = _table("Linearity", "slope", "intercept")
+    for line in lines:
+        table.add_row(
+            line.label, with_error(line.slope, line.slope_error), with_error(line.intercept, line.intercept_error)
+        )
+    return table
+
+
+def verdict_text(verdict: Verdict) -> RenderableType:
+    """The judgement, its headline in colour."""
+    headline = Text(f"{VERDICT_WORDS[verdict.status]}.", style=f"bold {VERDICT_COLOURS[verdict.status]}")
+    # A grid keeps the indent of sentences that take several lines.
+    sentences = Table.grid(padding=(0, 1))
+    for sentence in verdict.sentences:
+        sentences.add_row("  •", Text(sentence))
+    return Group(headline, sentences, "")
+
+
+def cut_flow_table(flow: Sequence[CutFlowComponent]) -> Table:
+    """Expected events after each step, and the purity of the selected sample."""
+    steps = [step.name for step in flow[0].steps] if flow else []
+    table = _table("Component", *steps, "purity")
+    for component in flow:
+        table.add_row(component.label, *(counted(step.events) for step in component.steps), percent(component.purity))
+    return table
+
+
+def _table(*headings: str) -> Table:
+    table = Table(box=box.SIMPLE_HEAD, pad_edge=False, show_edge=False, header_style="bold", caption_justify="left")
+    for number, heading in enumerate(headings):
+        table.add_column(heading, justify="right" if number else "left", no_wrap=True)
+    return table
+
+
+def _part(part: float | None, places: int) -> str:
+    return "–" if part is None else signed(part, places)
+
+
+def _budget_cells(budgets: Sequence[Budget], values: dict[str, float], source: str | None) -> Iterable[str]:
+    for budget in budgets:
+        error = budget.total if source is None else {row.source: row.error for row in budget.rows}.get(source)
+        if error is None:
+            yield from ("–", "")
+        else:
+            yield signed(error, digits_for(budget.total) + 1)
+            yield percent(error / values[budget.ratio]) if values[budget.ratio] else ""

@@ -1,0 +1,75 @@
+"""results.json: whole round trip, refusal of what is not ours, and docs that do not drift."""
+
+from __future__ import annotations
+
+import json
+import re
+from pathlib import Path
+
+import pytest
+from pydantic import BaseModel, ValidationError
+from semitau.core.errors import InputError
+from semitau.study.results import Results, read_results
+
+DOCS = Path(__file__).parents[2] / "docs" / "results.md"
+
+
+def test_round_trip(results: Results, tmp_path: Path) -> None:
+    path = tmp_path / "results.json"
+    path.write_text(results.text())
+    assert read_results(path) == results
+    assert read_results(path).text() == results.text()
+
+
+def test_infinite_numbers_are_refused(results: Results) -> None:
+    document = json.loads(results.text())
+    document["ratios"][0]["value"] = float("nan")
+    with pytest.raises(ValidationError, match="finite"):
+        Results.model_validate(document)
+
+
+@pytest.mark.parametrize(
+    ("content", "message"),
+    [
+        ("", "not a whole JSON file"),
+        ('{"format": "semitau results", "vers', "not a whole JSON file"),
+        ("[1, 2]", "not results of a study"),
+        ('{"format": "something else"}', "not results of a study"),
+        ('{"format": "semitau results", "version": 2}', r"another version \(got 2, allowed 1\)"),
+        ('{"format": "semitau results", "version": 1}', "study: Field required"),
+    ],
+)
+def test_bad_files_are_refused_with_advice(content: str, message: str, tmp_path: Path) -> None:
+    path = tmp_path / "results.json"
+    path.write_text(content)
+    with pytest.raises(InputError, match=message) as caught:
+        read_results(path)
+    assert "Run `semitau study` again" in str(caught.value)
+    assert "results.json" in str(caught.value)
+
+
+def test_missing_file(tmp_path: Path) -> None:
+    with pytest.raises(InputError, match=r"results.json: there is no such file"):
+        read_results(tmp_path / "results.json")
+    with pytest.raises(InputError, match="this is a folder"):
+        read_results(tmp_path)
+
+
+def models(model: type[BaseModel], seen: dict[str, type[BaseModel]]) -> dict[str, type[BaseModel]]:
+    if model.__name__ not in seen:
+        seen[model.__name__] = model
+        for field in model.model_fields.values():
+            for part in re.findall(r"semitau\.study\.results\.(\w+)", str(field.annotation)):
+                import semitau.study.results as home
+
+                models(getattr(home, part), seen)
+    return seen
+
+
+def test_docs_explain_every_field() -> None:
+    text = DOCS.read_text()
+    for name, model in models(Results, {}).items():
+        section = re.search(rf"^### {name}\n(.*?)(?=^### |^## |\Z)", text, flags=re.M | re.S)
+        assert section is not None, f"docs/results.md has no section {name}"
+        rows = dict(re.findall(r"^\| `(\w+)` \| .*? \| (.*?) \|$", section[1], flags=re.M))
+        assert rows == {field: info.description for field, info in model.model_fields.items()}, name
