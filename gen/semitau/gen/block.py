@@ -46,10 +46,10 @@ SCRATCH_END = TRUTH_ROWS + 24
 (
     BOOST_GAMMA, BOOST_X, BOOST_Y, BOOST_Z,
     TRACK1_PX, TRACK1_PY, TRACK1_PZ, TRACK2_PX, TRACK2_PY, TRACK2_PZ, TRACK3_PX, TRACK3_PY, TRACK3_PZ,
-    LAB_LEPTON_PX, LAB_LEPTON_PY, LAB_LEPTON_PZ,
+    LAB_LEPTON_PX, LAB_LEPTON_PY, LAB_LEPTON_PZ, LAB_LEPTON_E,
     FLAVOUR,
-) = (LANES * row for row in range(SCRATCH_END, SCRATCH_END + 17))  # fmt: skip
-FOUND_END = SCRATCH_END + 17
+) = (LANES * row for row in range(SCRATCH_END, SCRATCH_END + 18))  # fmt: skip
+FOUND_END = SCRATCH_END + 18
 
 # Rows of events whose D and lepton were found. MEASURED_*: sums of smeared momenta at the nominal momentum scale.
 # TAG_*: true momentum of the signal B in the centre-of-mass frame; TAG_SHIFT_*: what the nominal resolution adds to it.
