@@ -212,6 +212,9 @@ def test_ratio_published_with_the_same_parameters() -> None:
     assert mean_ratio("D*", "CLN-2012") == pytest.approx(known.value, abs=2 * known.last_digit)
     # Its error, 0.003, is nearly all from R0(1) = 1.14(7).
     assert form_factor_error("D*", "CLN-2012") == pytest.approx(known.error, abs=0.001)
+    for family, key in (("D", "R_D_BGL-2021"), ("D*", "R_Dst_BGL-2021")):
+        lattice = PUBLISHED[key]
+        assert mean_ratio(family, "BGL-2021") == pytest.approx(lattice.value, abs=lattice.error / 5)
 
 
 @pytest.mark.parametrize(
@@ -223,7 +226,7 @@ def test_ratio_published_by_others(family: str, name: str) -> None:
     assert mean_ratio(family, name) == pytest.approx(known.value, abs=2 * error)
 
 
-@pytest.mark.parametrize("name", ["BCL-2021", "CLN-2012", "CLN-2021"])
+@pytest.mark.parametrize("name", ["BCL-2021", "BGL-2021", "CLN-2012", "CLN-2021"])
 def test_polarisation_of_d(name: str) -> None:
     known = PUBLISHED["P_tau_D"]
     found = gen.observables(gen.Decay("B0", "D-", "tau", name)).tau_polarisation

@@ -134,14 +134,19 @@ class Decay:
         return ORBITAL_STATES.get(self.family)
 
     @property
-    def model(self) -> FormFactors:
-        """The form factors of this transition."""
+    def form_factor_set(self) -> FormFactorSet:
+        """The set that `form_factors` names or is."""
         chosen = self.form_factors
         if not isinstance(chosen, FormFactorSet):
             raise InputError(
                 Problem("form_factors must be the name of a set or a FormFactorSet", got=type(chosen).__name__)
             )
-        return chosen[self.transition]
+        return chosen
+
+    @property
+    def model(self) -> FormFactors:
+        """The form factors of this transition."""
+        return self.form_factor_set[self.transition]
 
     @property
     def couplings(self) -> WilsonCoefficients:

@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 from semitau.core.errors import InputError, Problem
 
-from . import bcl, cln
+from . import bcl, bgl, cln
 from .form_factor_values import PseudoscalarFormFactors, VectorFormFactors
 from .kinematics import Floats
 
@@ -24,6 +24,8 @@ _FUNCTIONS: Mapping[tuple[str, str], Function] = {
     ("CLN", "D"): cln.pseudoscalar,
     ("CLN", "Dst"): cln.vector,
     ("BCL", "D"): bcl.pseudoscalar,
+    ("BGL", "D"): bgl.pseudoscalar,
+    ("BGL", "Dst"): bgl.vector,
 }
 
 
@@ -32,7 +34,7 @@ class FormFactors:
     """Form factors of one transition.
 
     transition : "D", "Dst" or "Dss" (the orbitally excited states).
-    parametrisation : "CLN", "BCL" or "Isgur-Wise".
+    parametrisation : "CLN", "BCL", "BGL" or "Isgur-Wise".
     names, values, errors : parameters, in one order. correlation : their correlation matrix, row by row.
     source : where the numbers come from.
     """
