@@ -41,14 +41,17 @@ def mix(z: np.uint64) -> np.uint64:
 
 @njit(forceinline=True, cache=True, error_model="numpy")
 def event_key(stream: np.uint64, event: np.uint64) -> np.uint64:
-    """Key of one event of a stream; different events of one stream never share a key. Both arguments are uint64."""
-    return mix(stream + (event + _ONE) * _STEP)
+    """Key of one event of a stream; different events of one stream never share a key.
+
+    The casts cost nothing and make plain whole numbers safe: int64 mixed with uint64 would become floating point.
+    """
+    return mix(np.uint64(stream) + (np.uint64(event) + _ONE) * _STEP)
 
 
 @njit(forceinline=True, cache=True, error_model="numpy")
 def uniform(key: np.uint64, draw: np.uint64) -> float:
-    """Uniform number in [0, 1) with 53 bits for an event key and a draw number (uint64)."""
-    return np.int64(mix(key + (draw + _ONE) * _STEP) >> _TO_53_BITS) * _2_TO_MINUS_53
+    """Uniform number in [0, 1) with 53 bits for an event key and a draw number."""
+    return np.int64(mix(np.uint64(key) + (np.uint64(draw) + _ONE) * _STEP) >> _TO_53_BITS) * _2_TO_MINUS_53
 
 
 @njit(cache=True, nogil=True, error_model="numpy")
