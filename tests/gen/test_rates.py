@@ -22,6 +22,12 @@ STRENGTH = (FERMI_COUPLING * ELECTROWEAK_CORRECTION * VCB) ** 2
 COUPLINGS = {"SM": {}, "all": {"VL": 0.1 + 0.2j, "VR": 0.3 - 0.1j, "SL": -0.4 + 0.3j, "SR": 0.5, "T": -0.2 + 0.15j}}
 
 
+def test_every_reference_has_a_source() -> None:
+    for name, known in PUBLISHED.items():
+        assert known.source, name
+        assert known.recipe, name
+
+
 def q2_inside(decay: gen.Decay, number: int = 7) -> np.ndarray:
     low, high = decay.q2_range
     return low + (high - low) * np.linspace(0.02, 0.98, number)
@@ -286,6 +292,8 @@ def test_bad_decays() -> None:
         gen.Decay("B0", "D+", "tau")
     with pytest.raises(InputError, match=r"no such Wilson coefficient .*got CT.*VL, VR, SL, SR, T"):
         gen.Decay("B0", "D-", "tau", wilson={"CT": 0.1})
+    with pytest.raises(InputError, match=r"must be a mapping of names to numbers .*got list"):
+        gen.Decay("B0", "D-", "tau", wilson=[0.1])  # type: ignore[arg-type]
     with pytest.raises(InputError, match="must be a finite number"):
         gen.Decay("B0", "D-", "tau", wilson={"T": float("nan")})
     with pytest.raises(InputError, match="does not describe"):
@@ -304,3 +312,4 @@ def test_decays_are_values() -> None:
     assert first == same
     assert hash(first) == hash(same)
     assert first != gen.Decay("B0", "D*-", "tau")
+    assert str(first) == "B0 -> D*- tau nu"

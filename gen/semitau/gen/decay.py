@@ -45,6 +45,9 @@ class WilsonCoefficients:
         if isinstance(given, WilsonCoefficients):
             return given
         names = [field.name for field in fields(cls)]
+        if given is not None and not isinstance(given, Mapping):
+            rule, allowed = "Wilson coefficients must be a mapping of names to numbers", ", ".join(names)
+            raise InputError(Problem(rule, got=type(given).__name__, wanted=allowed))
         unknown = [name for name in given or () if name not in names]
         if unknown:
             raise InputError(*(Problem("no such Wilson coefficient", got=n, wanted=", ".join(names)) for n in unknown))
@@ -117,6 +120,9 @@ class Decay:
             problems.append(Problem("the EOM tensor model is singular at small q2", remedy='Take tensor="LO".'))
         if problems:
             raise InputError(*problems)
+
+    def __str__(self) -> str:
+        return f"{self.parent} -> {self.charm} {self.lepton} nu"
 
     @property
     def family(self) -> str:
