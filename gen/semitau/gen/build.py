@@ -3,40 +3,24 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Mapping
 from dataclasses import dataclass
-from functools import partial
 from importlib.metadata import version
 
 import numpy as np
 import numpy.typing as npt
-from semitau.core import engine
 from semitau.core.templates import Template, TemplateSet
 
 from .binning import cut_names
-from .chunk_tasks import (
-    Bench,
-    Filled,
-    Task,
-    background_stream,
-    background_tasks,
-    channel_columns,
-    channel_stream,
-    channel_tasks,
-    make_bench,
-)
-from .component_plan import ChannelPlan, plan_channels
-from .cut_flow import BEFORE_CATEGORIES, CutFlow, step_names
+from .chunk_tasks import make_bench
+from .component_parts import Report, component_parts, run_parts
+from .component_sums import ComponentSums
+from .cut_flow import CutFlow, step_names
 from .fit_components import components_and_parameters, template_categories, template_nuisances
-from .shapes import ShapeSampler
 from .study import StudyConfig
-from .study_components import Background
-from .variations import Side, background_factors, check_efficiencies
+from .variations import check_efficiencies
 
 Floats = npt.NDArray[np.float64]
-Report = Callable[[str, int, int | None], None]
-"""Called as report(what, done, total) from the calling thread."""
-
 NEGLIGIBLE = 1e-6
 """A variation that changes no bin of a template by this share is left out of it."""
 
@@ -50,22 +34,6 @@ class Build:
     cut_flow: CutFlow
     events: int
     timing: Mapping[str, float]
-
-
-@dataclass(frozen=True, eq=False)
-class Part:
-    """One source of a component: a decay chain, or a background in one category.
-
-    weight : expected events that each generated one counts. columns : sides in the histogram after the nominal column.
-    factors : sides that are constant weights by category. tasks : makes its chunks.
-    """
-
-    component: str
-    weight: float
-    events: int
-    columns: Sequence[Side]
-    factors: Mapping[Side, Floats]
-    tasks: Callable[[], Iterator[Task]]
 
 
 def build_templates(study: StudyConfig, workers: int | None = None, report: Report | None = None) -> Build:
@@ -82,22 +50,13 @@ def build_templates(study: StudyConfig, workers: int | None = None, report: Repo
     start = time.perf_counter()
     check_efficiencies(study)
     bench = make_bench(study, variations=True)
-    parts = [*_channel_parts(study, bench), *_background_parts(study, bench)]
     components, parameters = components_and_parameters(study)
     sums = {component.name: ComponentSums(bench) for component in components}
-    total, done, seconds = sum(part.events for part in parts), 0, 0.0
-    tasks = (task for part in parts for task in part.tasks())
-    results = engine.run(tasks, workers)
-    for part in parts:
-        whole = PartSums(bench, 1 + len(part.columns))
-        while whole.events < part.events:
-            filled = next(results)
-            whole.add(filled)
-            done += filled.events
-            seconds += filled.seconds
-            if report is not None:
-                report(part.component, done, total)
+    events, seconds = 0, 0.0
+    for part, whole in run_parts(component_parts(study, bench, "templates"), bench, workers, report):
         sums[part.component].add(part, whole)
+        events += whole.events
+        seconds += whole.seconds
     flow = _cut_flow(study, sums)
     flow.check()
     templates = TemplateSet(
@@ -108,7 +67,7 @@ def build_templates(study: StudyConfig, workers: int | None = None, report: Repo
         templates=_templates(study, sums),
         provenance=provenance(study),
     )
-    return Build(templates, flow, done, {"wall": time.perf_counter() - start, "kernels": seconds})
+    return Build(templates, flow, events, {"wall": time.perf_counter() - start, "kernels": seconds})
 
 
 def provenance(study: StudyConfig) -> dict[str, object]:
@@ -120,92 +79,6 @@ def provenance(study: StudyConfig) -> dict[str, object]:
         "seed": study.study.seed,
         "versions": {"semitau": version("semitau"), "numpy": np.__version__},
     }
-
-
-def _channel_parts(study: StudyConfig, bench: Bench) -> Iterator[Part]:
-    for plan in plan_channels(study):
-        yield Part(
-            component=plan.component,
-            weight=plan.weight,
-            events=plan.events,
-            columns=channel_columns(plan, bench),
-            factors=plan.variations.factors,
-            tasks=partial(_tasks_of_channel, study, bench, plan),
-        )
-
-
-def _tasks_of_channel(study: StudyConfig, bench: Bench, plan: ChannelPlan) -> Iterator[Task]:
-    return channel_tasks(plan, bench, channel_stream(study, "templates", plan), plan.events)
-
-
-def _background_parts(study: StudyConfig, bench: Bench) -> Iterator[Part]:
-    for background in study.backgrounds:
-        sampler = ShapeSampler(background, study)
-        for category, share in background.events_in.items():
-            events = max(share, 1)
-            yield Part(
-                component=background.name,
-                weight=background.expected[category] / events,
-                events=events,
-                columns=(),
-                factors=background_factors(study, background.misidentified),
-                tasks=partial(_tasks_of_background, study, bench, background, sampler, category, events),
-            )
-
-
-def _tasks_of_background(
-    study: StudyConfig, bench: Bench, background: Background, sampler: ShapeSampler, category: str, events: int
-) -> Iterator[Task]:
-    stream = background_stream(study, "templates", background, category)
-    return background_tasks(sampler, background, bench, category, stream, events)
-
-
-class PartSums:
-    """Chunks of one part added up, in their order."""
-
-    def __init__(self, bench: Bench, columns: int) -> None:
-        self.events = 0
-        self.found = np.zeros(len(BEFORE_CATEGORIES) - 1, dtype=np.int64)
-        self.flow = np.zeros(bench.shape, dtype=np.int64)
-        self.histogram = np.zeros((bench.bins, columns))
-
-    def add(self, filled: Filled) -> None:
-        self.events += filled.events
-        self.found += filled.found
-        self.flow += filled.flow
-        self.histogram += filled.histogram
-
-
-class ComponentSums:
-    """Weighted sums of the parts of one component, over all bins of all categories."""
-
-    def __init__(self, bench: Bench) -> None:
-        self.bench = bench
-        steps = len(BEFORE_CATEGORIES) + bench.shape[0]
-        self.nominal = np.zeros(bench.bins)
-        self.variance = np.zeros(bench.bins)
-        self.sides: dict[Side, Floats] = {}
-        self.expected = np.zeros(steps)
-        self.generated = np.zeros(steps, dtype=np.int64)
-        self.by_category = np.zeros((steps, bench.shape[1]))
-        sizes = [int(np.prod(category.shape)) for category in bench.categories]
-        self._category_of_bin = np.repeat(np.arange(len(sizes)), sizes)
-
-    def add(self, part: Part, whole: PartSums) -> None:
-        nominal = part.weight * whole.histogram[:, 0]
-        columns = {side: part.weight * whole.histogram[:, 1 + k] for k, side in enumerate(part.columns)}
-        columns |= {side: nominal * factors[self._category_of_bin] for side, factors in part.factors.items()}
-        # A side that did not act so far has the nominal contents, and one that does not act here goes on with them.
-        for side in columns:
-            self.sides.setdefault(side, self.nominal.copy())
-        for side, contents in self.sides.items():
-            contents += columns.get(side, nominal)
-        self.nominal += nominal
-        self.variance += part.weight**2 * whole.histogram[:, 0]
-        generated = np.concatenate([[whole.events], whole.found, whole.flow.sum(axis=1)])
-        self.generated += generated
-        self.expected += part.weight * generated
-        self.by_category[len(BEFORE_CATEGORIES) :] += part.weight * whole.flow
 
 
 def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:

@@ -9,7 +9,6 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 from semitau.core.constants import MASS
-from semitau.core.streams import stream_key
 
 from .binning import ROW_OF, Axes, Cuts, category_code, make_axes, make_cuts
 from .candidates import Scenario, Windows
@@ -135,16 +134,6 @@ def background_tasks(
         return Filled(np.full(FOUND_STEPS, n, dtype=np.int64), flow, histogram, n, time.thread_time() - start)
 
     return _chunks(task, events)
-
-
-def channel_stream(study: StudyConfig, purpose: str, plan: ChannelPlan) -> np.uint64:
-    """Random stream of a channel; purpose : "templates", "pseudo-data", ..."""
-    return stream_key(study.study.seed, purpose, plan.mode, plan.channel.name)
-
-
-def background_stream(study: StudyConfig, purpose: str, background: Background, category: str) -> np.uint64:
-    """Random stream of a background in a category."""
-    return stream_key(study.study.seed, purpose, background.name, category)
 
 
 def _chunks(task: Callable[[int, int], Filled], events: int) -> Iterator[Task]:

@@ -25,7 +25,7 @@ class ChannelPlan:
 
     component : name of the template component (a mode's, or a part of it by parent if ratios are separate).
     expected : decays of this chain in the data, times tag and charm efficiency; acceptance is still to come.
-    events : decays to generate; each counts expected / events.
+    events : decays to generate.
     """
 
     component: str
@@ -34,10 +34,6 @@ class ChannelPlan:
     expected: float
     events: int
     variations: ChannelVariations
-
-    @property
-    def weight(self) -> float:
-        return self.expected / self.events
 
 
 def split_by_parent(study: StudyConfig, mode: Mode) -> bool:
