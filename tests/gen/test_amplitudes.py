@@ -83,6 +83,11 @@ def brute(p: dirac.Point, operators: list[np.ndarray]) -> np.ndarray:
     return np.array([dirac.squared(p, operators), *(dirac.squared(p, operators, axis) for axis in p.axes)])
 
 
+def assert_same(ours: np.ndarray, expected: np.ndarray) -> None:
+    """Spin along an axis may nearly cancel in the brute force: rounding is relative to the spin sum, the first entry."""
+    np.testing.assert_allclose(ours, expected, rtol=PRECISION, atol=1e-11 * expected[0])
+
+
 def points(decay: Decay) -> Iterator[tuple[float, float, float]]:
     rng = np.random.default_rng(SEED)
     low, high = decay.q2_range
@@ -123,7 +128,7 @@ def test_pseudoscalar(coupling: str, lepton: str) -> None:
         ours = (q2 - decay.m_lepton**2) * spin_components(density(by_helicity({"0": entries["0"]})))
         p = dirac.point(decay.m_parent, decay.m_charm, decay.m_lepton, q2, theta, phi)
         currents = dirac.pseudoscalar_currents(p, f_plus, f_zero, f_T, BOTTOM_MASS - CHARM_MASS)
-        np.testing.assert_allclose(ours, brute(p, operators(currents, decay.couplings)), rtol=PRECISION, atol=1e-12)
+        assert_same(ours, brute(p, operators(currents, decay.couplings)))
 
 
 @pytest.mark.parametrize("lepton", ["tau", "mu"])
@@ -158,7 +163,7 @@ def test_vector(coupling: str, lepton: str, final: str) -> None:
             "photon": dirac.photon_polarisations(p.charm, momentum) if final == "photon" else None,
         }[final]
         currents = dirac.vector_currents(p, polarisation, quarks=BOTTOM_MASS + CHARM_MASS, **numbers)
-        np.testing.assert_allclose(ours, brute(p, operators(currents, decay.couplings)), rtol=PRECISION, atol=1e-12)
+        assert_same(ours, brute(p, operators(currents, decay.couplings)))
 
 
 def heavy_quark_pseudoscalar(M: float, m: float, q2: np.ndarray) -> PseudoscalarFormFactors:
@@ -210,7 +215,7 @@ def test_heavy_quark_limit(family: str, coupling: str) -> None:
             dirac.Currents(x.vector, x.axial, x.scalar * minus, x.pseudoscalar * plus, x.tensor) for x in currents
         ]
         expected = universal**2 * brute(p, operators(scaled, c))
-        np.testing.assert_allclose(ours, expected, rtol=PRECISION, atol=1e-12)
+        assert_same(ours, expected)
 
 
 def test_tensor_models_agree_in_the_heavy_quark_limit(monkeypatch: pytest.MonkeyPatch) -> None:
