@@ -30,6 +30,10 @@ def weights(events: ak.Array, decay: Decay, *, drawn_from: Decay | None = None) 
     and tau counts: the tau decay is integrated over its neutrinos, photons over helicities, D** over their decay.
     InputError if the events do not fit. Source: `amplitudes.py` and `spin_algebra.py`, as in the sampling.
     """
+    if not isinstance(events, ak.Array):
+        raise InputError(Problem("not an array of events", where="events", got=type(events).__name__))
+    if not isinstance(decay, Decay):
+        raise InputError(Problem("not a decay", where="decay", got=type(decay).__name__, wanted="gen.Decay"))
     source = drawn_from if drawn_from is not None else decay_of(events)
     if source is None:
         raise InputError(
@@ -53,6 +57,10 @@ def weights(events: ak.Array, decay: Decay, *, drawn_from: Decay | None = None) 
         raise InputError(
             Problem("fields are missing", where="events", got=", ".join(events.fields), wanted=", ".join(needed))
         )
+
+    if any(ak.any(ak.is_none(events[name].E)) for name in needed):
+        remedy = "Drop them with ak.drop_none."
+        raise InputError(Problem("some records are missing", where="events", remedy=remedy))
 
     angles = decay_angles(
         _momentum(events, "B"),
