@@ -84,7 +84,7 @@ def brute(p: dirac.Point, operators: list[np.ndarray]) -> np.ndarray:
 
 
 def assert_same(ours: np.ndarray, expected: np.ndarray) -> None:
-    """Spin along an axis may nearly cancel in the brute force: rounding is relative to the spin sum, the first entry."""
+    """Spin along an axis may nearly cancel in the brute force: rounding is relative to the first entry, the sum."""
     np.testing.assert_allclose(ours, expected, rtol=PRECISION, atol=1e-11 * expected[0])
 
 
