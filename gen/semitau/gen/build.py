@@ -5,7 +5,6 @@ from __future__ import annotations
 import time
 from collections.abc import Mapping
 from dataclasses import dataclass
-from importlib.metadata import version
 
 import numpy as np
 import numpy.typing as npt
@@ -17,6 +16,7 @@ from .component_parts import Report, component_parts, run_parts
 from .component_sums import ComponentSums
 from .cut_flow import CutFlow, step_names
 from .fit_components import components_and_parameters, template_categories, template_nuisances
+from .provenance import provenance
 from .study import StudyConfig
 from .variations import check_efficiencies
 
@@ -68,17 +68,6 @@ def build_templates(study: StudyConfig, workers: int | None = None, report: Repo
         provenance=provenance(study),
     )
     return Build(templates, flow, events, {"wall": time.perf_counter() - start, "kernels": seconds})
-
-
-def provenance(study: StudyConfig) -> dict[str, object]:
-    """Where templates come from, as the template file keeps it."""
-    return {
-        "study": study.text,
-        "study_name": study.study.name,
-        "study_sha256": study.digest,
-        "seed": study.study.seed,
-        "versions": {"semitau": version("semitau"), "numpy": np.__version__},
-    }
 
 
 def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:

@@ -5,6 +5,7 @@ from __future__ import annotations
 import time
 from collections.abc import Callable, Iterator, Mapping
 from dataclasses import dataclass
+from functools import partial
 
 import numpy as np
 import numpy.typing as npt
@@ -112,7 +113,7 @@ def channel_tasks(plan: ChannelPlan, bench: Bench, stream: np.uint64, events: in
         )  # fmt: skip
         return Filled(found, flow, histogram, n, time.thread_time() - start)
 
-    return _chunks(task, events)
+    return (partial(task, first, n) for first, n in chunks(events))
 
 
 def background_tasks(
@@ -133,12 +134,13 @@ def background_tasks(
         fill_drawn(np.stack([values[name] for name in drawn]), rows, code, cuts, bench.axes, flow, histogram)
         return Filled(np.full(FOUND_STEPS, n, dtype=np.int64), flow, histogram, n, time.thread_time() - start)
 
-    return _chunks(task, events)
+    return (partial(task, first, n) for first, n in chunks(events))
 
 
-def _chunks(task: Callable[[int, int], Filled], events: int) -> Iterator[Task]:
+def chunks(events: int) -> Iterator[tuple[int, int]]:
+    """First event and number of events of each chunk."""
     for first in range(0, events, CHUNK_EVENTS):
-        yield lambda first=first: task(first, min(CHUNK_EVENTS, events - first))  # type: ignore[misc]
+        yield first, min(CHUNK_EVENTS, events - first)
 
 
 def _no_weights() -> VariationTable:
