@@ -20,10 +20,10 @@ from semitau.fit.model import Model
 from semitau.fit.straightness import linearity
 from semitau.fit.toys import run_toys
 from semitau.gen.study import StudyConfig
-from semitau.gen.study_file import read_study
 
 from .fit_parts import budget_parts, category_parts, component_parts, fit_part, ratio_parts
 from .fitting import fit_or_fail
+from .opening import open_study
 from .pictures import draw_pictures
 from .projecting import projections
 from .report import write_report
@@ -76,14 +76,6 @@ class Stopwatch:
             workers=workers,
             peak_memory=round(resource.getrusage(resource.RUSAGE_SELF).ru_maxrss / unit, 1),
         )
-
-
-def open_study(path: Path, seed: int | None = None) -> StudyConfig:
-    """The study in a file, with another seed if one is given. Raises InputError with every problem."""
-    study = read_study(path)
-    if seed is None:
-        return study
-    return study.model_copy(update={"study": study.study.model_copy(update={"seed": seed})})
 
 
 def run_study(

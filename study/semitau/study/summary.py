@@ -45,7 +45,7 @@ def summary(results: Results, report: str) -> RenderableType:
 
 def ratio_table(ratios: Sequence[RatioResult]) -> Table:
     """Fitted ratios beside the injected ones, errors split by kind."""
-    table = _table("", "fitted", "injected", "pull", "statistical", "templates", "systematic")
+    table = plain_table("", "fitted", "injected", "pull", "statistical", "templates", "systematic")
     for ratio in ratios:
         places = digits_for(ratio.error) + 1
         table.add_row(
@@ -73,7 +73,7 @@ def goodness_line(fit: Fit) -> Text:
 
 def parameter_table(fit: Fit) -> Table:
     """Every fitted parameter."""
-    table = _table("Parameter", "fitted", "made with", "constraint")
+    table = plain_table("Parameter", "fitted", "made with", "constraint")
     for parameter in fit.parameters:
         if not parameter.error > 0:
             continue
@@ -92,7 +92,7 @@ def budget_table(budgets: Sequence[Budget], ratios: Sequence[RatioResult]) -> Ta
     """Error of each ratio by source, with its share of the ratio."""
     labels = {ratio.name: ratio.label for ratio in ratios}
     values = {ratio.name: abs(ratio.value) for ratio in ratios}
-    table = _table("Uncertainty from", *(cell for budget in budgets for cell in (labels[budget.ratio], "")))
+    table = plain_table("Uncertainty from", *(cell for budget in budgets for cell in (labels[budget.ratio], "")))
     sources = {row.source: row.label for budget in budgets for row in budget.rows}
     for source, label in sources.items():
         table.add_row(label, *_budget_cells(budgets, values, source))
@@ -104,7 +104,7 @@ def budget_table(budgets: Sequence[Budget], ratios: Sequence[RatioResult]) -> Ta
 def toy_table(toys: Toys) -> Table:
     """Bias, pulls and coverage."""
     levels = [coverage.level for coverage in toys.ratios[0].coverage] if toys.ratios else []
-    table = _table("", "pull mean", "pull width", *(f"{percent(level)} covers" for level in levels))
+    table = plain_table("", "pull mean", "pull width", *(f"{percent(level)} covers" for level in levels))
     table.caption = f"{counted(toys.number)} toys, {counted(toys.failures)} failed"
     for ratio in toys.ratios:
         table.add_row(
@@ -118,7 +118,7 @@ def toy_table(toys: Toys) -> Table:
 
 def linearity_table(lines: Iterable[Linearity]) -> Table:
     """Slope and offset of fitted against injected ratio."""
-    table = _table("Linearity", "slope", "intercept")
+    table = plain_table("Linearity", "slope", "intercept")
     for line in lines:
         table.add_row(
             line.label, with_error(line.slope, line.slope_error), with_error(line.intercept, line.intercept_error)
@@ -137,15 +137,22 @@ def verdict_text(verdict: Verdict) -> RenderableType:
 
 
 def cut_flow_table(flow: Sequence[CutFlowComponent]) -> Table:
-    """Expected events after each step, and the purity of the selected sample."""
-    steps = [step.name for step in flow[0].steps] if flow else []
-    table = _table("Component", *steps, "purity")
+    """What the selection leaves of each component; every step stands in the JSON and in the report."""
+    table = plain_table("Component", flow[0].steps[0].name if flow else "", "selected", "efficiency", "purity")
     for component in flow:
-        table.add_row(component.label, *(counted(step.events) for step in component.steps), percent(component.purity))
+        first, last = component.steps[0].events, component.steps[-1].events
+        table.add_row(
+            component.label,
+            counted(first),
+            counted(last),
+            percent(last / first) if first else "–",
+            percent(component.purity),
+        )
     return table
 
 
-def _table(*headings: str) -> Table:
+def plain_table(*headings: str) -> Table:
+    """An empty table with these headings, numbers to the right."""
     table = Table(box=box.SIMPLE_HEAD, pad_edge=False, show_edge=False, header_style="bold", caption_justify="left")
     for number, heading in enumerate(headings):
         table.add_column(heading, justify="right" if number else "left", no_wrap=True)

@@ -22,8 +22,8 @@ def command(call: Invocation, file: Path, output: Path | None, again: bool) -> N
     """
     from semitau.core.whole_files import write_whole
 
+    from ..opening import open_study
     from ..study_folder import claimed_folder
-    from ..study_run import open_study
     from ..study_templates import study_templates
     from ..summary import cut_flow_table
 

@@ -1,0 +1,27 @@
+"""`semitau check FILE`: is the study file good, and what will it make?"""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import click
+
+from ..invocation import Invocation, shared_options
+
+
+@click.command()
+@click.argument("file", type=click.Path(path_type=Path))
+@shared_options
+def command(call: Invocation, file: Path) -> None:
+    """Read a study file and say what it will make.
+
+    Every problem of FILE is told at once, with line, key, value and remedy. If there is none: components with generated
+    and expected events, categories, variations, and rough time, memory and disk.
+    """
+    from ..opening import open_study
+    from ..outline_summary import outline_tables
+    from ..study_outline import study_outline
+
+    outline = study_outline(open_study(file, call.seed), call.workers)
+    call.terminal.show(*outline_tables(outline, call.workers))
+    call.terminal.result(outline.document())

@@ -1,0 +1,82 @@
+"""Likelihood curves of the ratios, and the region of two of them."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from matplotlib import rc_context
+from matplotlib.axes import Axes
+from numpy.typing import NDArray
+
+from .sheet import Sheet
+from .style import INK, QUIET, RC, RULE, ratio_colour
+
+PANEL, GAP, LEFT = 3.3, 0.85, 0.75
+
+
+@dataclass(frozen=True)
+class Curve:
+    """−2 ln L above its minimum against one ratio: (points,) arrays; low, high: ends of the 68.3 % interval."""
+
+    label: str
+    points: NDArray[np.float64]
+    heights: NDArray[np.float64]
+    low: float
+    high: float
+
+
+@dataclass(frozen=True)
+class Plane:
+    """−2 ln L above its minimum over two ratios, (first points, second points), with the best and the injected values.
+
+    levels : confidence in words -> height.
+    """
+
+    labels: tuple[str, str]
+    first: NDArray[np.float64]
+    second: NDArray[np.float64]
+    heights: NDArray[np.float64]
+    best: tuple[float, float]
+    injected: tuple[float, float]
+    levels: Mapping[str, float]
+
+
+def likelihood(curves: Sequence[Curve], plane: Plane | None) -> Sheet:
+    """A sheet with one panel a curve, and the region at the right."""
+    panels = len(curves) + (plane is not None)
+    width = LEFT + panels * PANEL + (panels - 1) * GAP + 0.3
+    with rc_context(RC):
+        sheet = Sheet(width, 4.1, "Likelihood", "all other parameters fitted at each point")
+        for number, curve in enumerate(curves):
+            axes = sheet.axes(LEFT + number * (PANEL + GAP), 0.5, PANEL, 2.9)
+            _draw_curve(axes, curve, ratio_colour(number))
+            if number == 0:
+                axes.set_ylabel("−2 ln L above the minimum")
+        if plane is not None:
+            _draw_plane(sheet.axes(LEFT + len(curves) * (PANEL + GAP), 0.5, PANEL, 2.9), plane)
+    return sheet
+
+
+def _draw_curve(axes: Axes, curve: Curve, colour: str) -> None:
+    for level in (1.0, 4.0):
+        axes.axhline(level, color=RULE, linewidth=0.7, linestyle=(0, (3, 3)))
+    axes.axvspan(curve.low, curve.high, color=colour, alpha=0.15, linewidth=0)
+    axes.plot(curve.points, curve.heights, color=colour, linewidth=1.4)
+    axes.set_xlim(curve.points[0], curve.points[-1])
+    axes.set_ylim(0, min(9.0, 1.02 * float(np.nanmax(curve.heights))))
+    axes.set_xlabel(curve.label)
+
+
+def _draw_plane(axes: Axes, plane: Plane) -> None:
+    names, heights = zip(*sorted(plane.levels.items(), key=lambda level: level[1]), strict=True)
+    drawn = axes.contour(
+        plane.first, plane.second, plane.heights.T, levels=list(heights), colors=[INK, QUIET], linewidths=[1.4, 1.0]
+    )
+    axes.clabel(drawn, fmt=dict(zip(heights, names, strict=True)), fontsize=7)
+    axes.plot(*plane.best, marker="+", color=INK, markersize=8, linestyle="", label="fitted")
+    axes.plot(*plane.injected, marker="x", color=ratio_colour(0), markersize=6, linestyle="", label="made with")
+    axes.set_xlabel(plane.labels[0])
+    axes.set_ylabel(plane.labels[1])
+    axes.legend(loc="upper right", borderaxespad=0, handlelength=1)

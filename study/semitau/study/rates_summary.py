@@ -1,0 +1,68 @@
+"""Rates of a study as tables for people and as a document."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import fields
+
+from rich.console import RenderableType
+from rich.text import Text
+from semitau.gen.rates import Observables
+from semitau.gen.rates_table import RatesTable
+
+from .numbers import digits_for, signed, with_error
+from .summary import plain_table
+
+
+def rates_tables(rates: RatesTable, sets: Mapping[str, str]) -> list[RenderableType]:
+    """One table of the decays, one of the ratios, and what they were computed with."""
+    table = plain_table("Decay", "BF (%)", "P", "F_L", "A_FB", "⟨q²⟩ (GeV²)")
+    for mode in rates.modes:
+        value, error = mode.values, mode.errors
+        table.add_row(
+            f"{mode.decay.parent} → {mode.decay.charm} {mode.decay.lepton} ν",
+            _shown(100 * value.branching_fraction, 100 * error.branching_fraction),
+            _shown(value.tau_polarisation, error.tau_polarisation),
+            _shown(value.longitudinal_fraction, error.longitudinal_fraction),
+            _shown(value.forward_backward, error.forward_backward),
+            _shown(value.mean_q2, error.mean_q2),
+        )
+    ratios = plain_table("Ratio of τ to the mean of e and μ", "")
+    for ratio in rates.ratios:
+        ratios.add_row(f"{ratio.parent} → {ratio.charm}", _shown(ratio.value, ratio.error))
+    used = ", ".join(f"{name}: {chosen}" for name, chosen in sets.items())
+    note = (
+        "BF: branching fraction; P: lepton polarisation in the W* rest frame; F_L: longitudinal fraction; A_FB > 0: "
+        f"lepton away from the charm hadron. Errors are those of the form factors alone ({used})."
+    )
+    return [table, "", ratios, "", Text(note, style="dim")]
+
+
+def rates_document(rates: RatesTable, sets: Mapping[str, str]) -> dict[str, object]:
+    """The same as plain numbers; widths in GeV."""
+    return {
+        "form_factors": dict(sets),
+        "modes": [
+            {
+                "parent": mode.decay.parent,
+                "charm": mode.decay.charm,
+                "lepton": mode.decay.lepton,
+                "values": {field.name: getattr(mode.values, field.name) for field in fields(Observables)},
+                "errors": {field.name: getattr(mode.errors, field.name) for field in fields(Observables)},
+            }
+            for mode in rates.modes
+        ],
+        "ratios": [
+            {"parent": ratio.parent, "charm": ratio.charm, "value": ratio.value, "error": ratio.error}
+            for ratio in rates.ratios
+        ],
+    }
+
+
+DECIMALS = 4
+"""Decimals shown at most: what the form factors move less than that has no error to show."""
+
+
+def _shown(value: float, error: float) -> str:
+    places = digits_for(error)
+    return with_error(value, error) if places <= DECIMALS and error > 0 else signed(value, DECIMALS)
