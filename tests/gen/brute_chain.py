@@ -1,4 +1,4 @@
-"""Densities of whole chains by Dirac matrices (dirac.py): B -> X l nu with D* -> D pi, D gamma and tau -> l nu nu, pi nu.
+"""Densities of whole chains by Dirac matrices (dirac.py): B -> X l nu, D* -> D pi or D gamma, tau -> l nu nu or pi nu.
 
 Shares no formula with semitau beyond the form factors. Vectors are arrays (E, px, py, pz), in any frame.
 """
