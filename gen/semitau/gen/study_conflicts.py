@@ -79,7 +79,7 @@ def _modes(sections: Sections) -> Iterator[Conflict]:
 
 def _ratios(sections: Sections) -> Iterator[Conflict]:
     """There is a ratio to measure, and each has its denominator."""
-    if "mode" not in sections.whole:
+    if "mode" not in sections.whole or not sections.modes:
         return
     if not any(mode.scales_with for mode in sections.modes.values()):
         remedy = 'Give the tau mode of D or D* scales_with = "R_D" or "R_Dst".'

@@ -5,9 +5,10 @@ from __future__ import annotations
 import types
 import typing
 from collections.abc import Mapping, Sequence
-from typing import Annotated, Any, get_args, get_origin
+from typing import Annotated, Any, NamedTuple, get_args, get_origin
 
 from pydantic import BaseModel
+from pydantic.fields import FieldInfo
 from pydantic_core import ErrorDetails
 
 from .study_rules import RULE, shown, suggestion
@@ -42,21 +43,20 @@ def conflict(model: type[BaseModel], data: object, error: ErrorDetails) -> Confl
 
     model : the model that rejected `data`; error : as from ValidationError.errors().
     """
-    place, value = _in_file(data, error["loc"])
+    place, value, annotation = _spot(model, data, error["loc"])
     context: Mapping[str, Any] = error.get("ctx") or {}
     kind = error["type"]
     if kind == RULE:
         got = shown(value) if context["got"] is None else context["got"]
         return Conflict(place, context["what"], got, context["wanted"], context["remedy"])
     if kind == "extra_forbidden":
-        table = place[:-1]
-        keys = _keys(_annotation(model, error["loc"][:-1]))
-        return Conflict((*table, place[-1]), "unknown key", "", ", ".join(keys), suggestion(place[-1], keys))
+        keys = list(_fields(_spot(model, data, error["loc"][:-1]).annotation))
+        return Conflict(place, "unknown key", "", ", ".join(keys), suggestion(place[-1], keys))
     if kind == "missing":
-        return _missing(model, place, error["loc"])
+        return _missing(place, _spot(model, data, error["loc"][:-1]).annotation)
     if kind in ("union_tag_not_found", "union_tag_invalid"):
         key = str(context["discriminator"]).strip("'")
-        tags = _tags(_annotation(model, error["loc"]), key)
+        tags = _tags(annotation, key)
         if kind == "union_tag_not_found":
             if not isinstance(value, Mapping):
                 return Conflict(place, "must be a table", shown(value), remedy=f"Write {{ {key} = ..., ... }}.")
@@ -64,7 +64,7 @@ def conflict(model: type[BaseModel], data: object, error: ErrorDetails) -> Confl
         given = value[key] if isinstance(value, Mapping) and key in value else context.get("tag")
         return Conflict((*place, key), f"is no {key}", shown(given), ", ".join(tags), suggestion(given, tags))
     if kind == "literal_error":
-        allowed = _words(_annotation(model, error["loc"]))
+        allowed = _words(annotation)
         near = suggestion(value, allowed)
         return Conflict(place, "is not known here", shown(value), ", ".join(allowed), near)
     if kind in ("too_short", "too_long"):
@@ -76,16 +76,13 @@ def conflict(model: type[BaseModel], data: object, error: ErrorDetails) -> Confl
     return Conflict(place, _TYPES.get(kind, error["msg"]), shown(value))
 
 
-def _missing(model: type[BaseModel], place: Place, loc: Sequence[str | int]) -> Conflict:
-    key = loc[-1]
+def _missing(place: Place, table: Any) -> Conflict:
+    key = place[-1]
     if isinstance(key, int):
-        return Conflict(place[:-1] if place and place[-1] == key else place, "has too few values", f"{key}")
-    description = ""
-    table = _annotation(model, loc[:-1])
-    if isinstance(table, type) and issubclass(table, BaseModel):
-        fields = {info.alias or name: info for name, info in table.model_fields.items()}
-        description = (fields[key].description or "") if key in fields else ""
-    return Conflict(place[:-1], f"lacks the key {key}", remedy=f"Add {key}{f': {description}' if description else ''}.")
+        return Conflict(place[:-1], "has too few values", str(key))
+    info = _fields(table).get(key)
+    meaning = f": {info.description}" if info and info.description else ""
+    return Conflict(place[:-1], f"lacks the key {key}", remedy=f"Add {key}{meaning}.")
 
 
 def _length(place: Place, value: object, context: Mapping[str, Any]) -> Conflict:
@@ -95,50 +92,47 @@ def _length(place: Place, value: object, context: Mapping[str, Any]) -> Conflict
     return Conflict(place, f"takes at most {context['max_length']}", str(length))
 
 
-def _in_file(data: object, loc: Sequence[str | int]) -> tuple[Place, object]:
-    """Place in the file and value there: `loc` without what pydantic adds (tags of unions, "[key]")."""
-    place: list[str | int] = []
+class _Spot(NamedTuple):
+    """Where an error is: place in the file, value found there, type that the models give to it (None if unclear)."""
+
+    place: Place
+    value: object
+    annotation: Any
+
+
+def _spot(model: type[BaseModel], data: object, loc: Sequence[str | int]) -> _Spot:
+    """The spot of `loc`, which has more parts than the file: tags of unions, and "[key]" after a key that is wrong."""
+    place: Place = ()
+    annotation: Any = model
     for i, part in enumerate(loc):
-        last = i == len(loc) - 1
-        if isinstance(data, Mapping):
-            if part in data:
-                data = data[part]
-            elif not last or part == "[key]" or part in data.values():
-                continue  # the tag of a union
-            else:
-                return (*place, part), None
-        elif isinstance(data, Sequence) and not isinstance(data, str) and isinstance(part, int):
-            if part >= len(data):
-                return (*place, part), None
-            data = data[part]
-        else:
-            continue
-        place.append(part)
-    return tuple(place), data
-
-
-def _annotation(annotation: Any, loc: Sequence[str | int]) -> Any:
-    """The type that the models give to what stands at `loc`; None if it cannot be told."""
-    annotation = _bare(annotation)
-    for part in loc:
-        if part == "[key]":
-            continue
+        annotation = _bare(annotation)
         origin = get_origin(annotation)
+        if origin in (typing.Union, types.UnionType):
+            annotation = _chosen(annotation, part)
+            continue
+        if origin is dict and loc[i + 1 :] == ("[key]",):
+            return _Spot((*place, part), part, _bare(get_args(annotation)[0]))
+        if not (isinstance(data, list | tuple) and isinstance(part, str)):  # a table that was written as a list
+            place += (part,)
+            data = _within(data, part)
         if isinstance(annotation, type) and issubclass(annotation, BaseModel):
-            fields = {info.alias or name: info for name, info in annotation.model_fields.items()}
-            if part not in fields:
-                return None
-            annotation = fields[str(part)].annotation
+            info = _fields(annotation).get(str(part))
+            annotation = info.annotation if info else None
         elif origin is tuple:
             annotation = get_args(annotation)[0]
         elif origin is dict:
             annotation = get_args(annotation)[1]
-        elif origin in (typing.Union, types.UnionType):
-            annotation = _chosen(annotation, part)
         else:
-            return None
-        annotation = _bare(annotation)
-    return annotation
+            annotation = None
+    return _Spot(place, data, _bare(annotation))
+
+
+def _within(data: object, part: str | int) -> object:
+    if isinstance(data, Mapping):
+        return data.get(part)
+    if isinstance(data, Sequence) and isinstance(part, int) and part < len(data):
+        return data[part]
+    return None
 
 
 def _chosen(union: Any, tag: str | int) -> Any:
@@ -163,10 +157,11 @@ def _bare(annotation: Any) -> Any:
             return annotation
 
 
-def _keys(table: Any) -> list[str]:
+def _fields(table: Any) -> dict[str, FieldInfo]:
+    """Fields of a model by their name in the file; none for anything else."""
     if isinstance(table, type) and issubclass(table, BaseModel):
-        return [info.alias or name for name, info in table.model_fields.items()]
-    return []
+        return {info.alias or name: info for name, info in table.model_fields.items()}
+    return {}
 
 
 def _words(annotation: Any) -> list[str]:

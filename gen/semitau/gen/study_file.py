@@ -31,7 +31,7 @@ def read_study(path: Path | str) -> StudyConfig:
     path = Path(path)
     text = _text(path)
     data = _tables(text, path)
-    study, found = _checked(data, path.parent)
+    study, found = checked(data, path.parent)
     if study is None:
         lines = TomlLines(text)
         raise InputError(*_problems(found, data, lines, path))
@@ -89,7 +89,11 @@ def _lower(message: str) -> str:
     return message[:1].lower() + message[1:]
 
 
-def _checked(data: Mapping[str, Any], folder: Path) -> tuple[StudyConfig | None, list[Conflict]]:
+def checked(data: Mapping[str, Any], folder: Path) -> tuple[StudyConfig | None, list[Conflict]]:
+    """The study in tables as read from TOML, or None and all that is wrong with them.
+
+    folder : where files that the study names are looked for.
+    """
     try:
         return StudyConfig.model_validate(data, context={"folder": folder}), []
     except ValidationError as error:

@@ -50,7 +50,7 @@ def suggestion(given: object, known: Iterable[str]) -> str:
     if not isinstance(given, str):
         return ""
     folded = {word.casefold(): word for word in known}
-    near = get_close_matches(given.casefold(), folded, n=1, cutoff=0.6)
+    near = get_close_matches(given.casefold(), folded, n=1, cutoff=0.5)
     return f'Did you mean "{folded[near[0]]}"?' if near else ""
 
 
