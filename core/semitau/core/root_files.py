@@ -117,8 +117,16 @@ def histogram_of(stored_object: Any, where: str) -> RootHistogram:
     all_bins = np.asarray(stored_object.values(flow=True), dtype=np.float64)
     inside = (slice(1, -1),) * all_bins.ndim
     contents = np.ascontiguousarray(all_bins[inside])
-    weighted = len(stored_object.member("fSumw2")) > 0
-    variances = np.ascontiguousarray(stored_object.variances(flow=False), np.float64) if weighted else np.abs(contents)
+    # Not the object's own variances: those hide negative and NaN squared weights behind zeros.
+    squares = np.asarray(stored_object.member("fSumw2"), dtype=np.float64)
+    weighted = len(squares) > 0
+    if len(squares) not in (0, all_bins.size):
+        raise InputError(
+            Problem("squared weights and bins differ in number", where, str(len(squares)), str(all_bins.size))
+        )
+    # ROOT runs through the first axis fastest.
+    in_bins = squares.reshape(all_bins.shape[::-1]).T[inside] if weighted else np.abs(contents)
+    variances = np.ascontiguousarray(in_bins)
     for what, values in (("contents", contents), ("squared weights", variances)):
         if not np.isfinite(values).all():
             place = np.argwhere(~np.isfinite(values))[0].tolist()

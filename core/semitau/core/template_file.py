@@ -38,7 +38,8 @@ def write_templates(templates: TemplateSet, path: Path | str) -> None:
     """
     meta = describe(templates)
     memory = _Memory()  # many small writes: a file would be slower, and whole_files would see fewer of the failures
-    with uproot.recreate(memory, compression=uproot.ZSTD(1)) as directory:
+    # The moments that ROOT keeps beside the bins may overflow where the bins do not; nobody reads them.
+    with np.errstate(over="ignore", invalid="ignore"), uproot.recreate(memory, compression=uproot.ZSTD(1)) as directory:
         directory["meta"] = meta
         for category in templates.categories:
             weighted, plain = _empty(category, bh.storage.Weight()), _empty(category, bh.storage.Double())

@@ -147,7 +147,8 @@ def _check_version(text: str, where: str) -> None:
 def _translated(detail: Any, where: str) -> Problem:
     key = "".join(f"[{part}]" if isinstance(part, int) else f".{part}" for part in detail["loc"])
     got = "" if detail["type"] == "missing" else repr(detail["input"])
-    return Problem(detail["msg"].lower(), f"{where}{key}", got=got if len(got) <= 60 else got[:57] + "...")
+    message = detail["msg"]
+    return Problem(message[0].lower() + message[1:], f"{where}{key}", got=got if len(got) <= 60 else got[:57] + "...")
 
 
 def _category(category: _Category) -> Category:
