@@ -1,9 +1,14 @@
-"""Model problems for the fit, from one bin to real size. Contents are invented; answers come from outside the project."""
+"""Model problems for the fit, one bin to real size. Contents are invented; answers come from outside the project."""
 
 from __future__ import annotations
 
+import os
+
 import numpy as np
 from semitau.core.templates import Category, Component, Nuisance, Observable, ScaleParameter, Template, TemplateSet
+
+SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
+"""Of everything random in these tests; statistical ones state how often another seed may fail."""
 
 
 def axes(name: str, *bins: int) -> Category:
@@ -41,10 +46,13 @@ def linear(scale: float = 1.0) -> TemplateSet:
     )
 
 
-def small(*, sparse: bool = False, with_variance: bool = True) -> TemplateSet:
-    """Two categories, two ratios that multiply light yields, a constrained background, three nuisances."""
+def small(*, factor: float = 1.0, sparse: bool = False, variance: float = 1.0) -> TemplateSet:
+    """Two categories, two ratios that multiply light yields, a constrained background, three nuisances.
+
+    factor : of all expected events; variance : of the templates, times their usual one.
+    """
     rng = np.random.default_rng(4)
-    factor = 0.04 if sparse else 1.0
+    factor *= 0.04 if sparse else 1.0
     categories = (axes("D0", 9), axes("Dst", 4, 3))
     components = (
         Component("D_tau", "D tau", "signal", ("R_D", "yield_D_light")),
@@ -89,7 +97,7 @@ def small(*, sparse: bool = False, with_variance: bool = True) -> TemplateSet:
                 minus[nuisance.name] = (nominal * (1 - 0.8 * tilt + 0.5 * tilt**2)).reshape(category.shape)
             templates[category.name, component.name] = Template(
                 nominal.reshape(category.shape),
-                (with_variance * nominal * (0.08 if component.name != "other" else 0.3)).reshape(category.shape),
+                (variance * nominal * (0.08 if component.name != "other" else 0.3)).reshape(category.shape),
                 plus,
                 minus,
             )

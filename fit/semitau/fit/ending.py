@@ -7,7 +7,7 @@ from typing import NamedTuple
 
 from semitau.core.errors import Problem
 
-CONVERGED, FLAT, NO_MINIMUM, STALLED, TOO_LONG, NOT_FINITE = range(6)
+CONVERGED, FLAT, NO_MINIMUM, STALLED, TOO_LONG, NOT_FINITE, RUNAWAY = range(7)
 
 
 class Ending(NamedTuple):
@@ -39,6 +39,10 @@ _TEXTS = {
     TOO_LONG: (
         "the fit did not reach a minimum",
         "A parameter may run away: look for one that no data constrain, and fix or constrain it.",
+    ),
+    RUNAWAY: (
+        "a free parameter has run to where all its bins expect nothing",
+        "The data hold too few events for it: fix or constrain it, or merge its component with another.",
     ),
     NOT_FINITE: (
         "the likelihood or its derivatives are not finite",

@@ -26,7 +26,7 @@ from semitau.core.elementary import log
 from semitau.core.templates import Floats
 
 from .interpolation import bend, positive
-from .layout import Arrays
+from .layout import Arrays, Indices
 from .vectors import dot
 
 VALUE, FISHER, EXACT = 0, 1, 2
@@ -41,6 +41,7 @@ class Workspace(NamedTuple):
     lanes: Floats  # (5, lanes of a tile): plain sum, first derivative, weight, product, -ln L
     scales: Floats  # (components,)
     bends: Floats  # (parameters, 3)
+    protected: Indices  # (1,): bins below their floor in the last evaluation
 
 
 def workspace(arrays: Arrays) -> Workspace:
@@ -54,7 +55,23 @@ def workspace(arrays: Arrays) -> Workspace:
         np.zeros((5, lanes)),
         np.zeros(arrays.component_first.size - 1),
         np.zeros((parameters, 3)),
+        np.zeros(1, dtype=np.int64),
     )
+
+
+@njit(forceinline=True, cache=True, error_model="numpy")
+def deviance(n: float, mu: float) -> float:
+    """μ - n + n ln(n/μ), accurate to its own last digits: n and μ cancel down to the square of their distance.
+
+    ln(n/μ) = 2 artanh(r) with r = (n - μ)/(n + μ), which gives (n - μ) r + 2n (artanh(r) - r); the series for small r.
+    """
+    total = n + mu
+    r = (n - mu) / total if total > 0.0 else 0.0
+    t = r * r
+    series = t * r * (1 / 3 + t * (1 / 5 + t * (1 / 7 + t * (1 / 9 + t * (1 / 11 + t * (1 / 13 + t * (1 / 15)))))))
+    near = (n - mu) * r + 2.0 * n * series
+    far = mu - n + n * log(n / mu if n > 0.0 else 1.0)
+    return near if t < 0.01 else far
 
 
 @njit(forceinline=True, cache=True, error_model="numpy")
@@ -65,10 +82,9 @@ def bin_terms(mu: float, n: float, centre: float, variance: float) -> tuple[floa
     # Both are the positive root; the first has no cancellation where b > 0. Without counts it is max(0, -b).
     gamma = 2.0 * n * variance / (b + root) if b > 0.0 else 0.5 * (root - b)
     seen = n > 0.0
-    expected = gamma * mu
-    surprise = n * log(n / expected if seen else 1.0)
-    pull = gamma - centre
-    value = expected - n + surprise + (0.5 * pull * pull / variance if variance > 0.0 else 0.0)
+    # (γ - γ₀)/v = n/γ - μ at the root: of both ways to the difference the one that loses fewer digits.
+    pull = variance * (n / gamma - mu) if seen and mu * variance < 1.0 else gamma - centre
+    value = deviance(n, gamma * mu) + (0.5 * pull * pull / variance if variance > 0.0 else 0.0)
     first = gamma - n / mu
     second = n / (mu * mu) - (gamma * variance / root if root > 0.0 else 0.0)
     return value, first, second, gamma
@@ -103,6 +119,7 @@ def evaluate(
     """
     parameters = x.shape[0]
     value = 0.0
+    work.protected[0] = 0
     for p in range(parameters):
         pull = x[p] - centres[p]
         value += 0.5 * pull * pull * arrays.inverse_variance[p]
@@ -183,6 +200,10 @@ def sum_bins(arrays: Arrays, tile: int, counts: Floats, gamma_centres: Floats, m
         derivative[i] = d * slope
         exact = second * slope * slope + d * curvature
         weight[i] = exact if mode == EXACT else slope * slope / (mu + mu * mu * variance[i])
+    below = 0
+    for i in range(filled):
+        below += plain[i] < floor[i]
+    work.protected[0] += below
     derivative[filled:length] = 0.0
     weight[filled:length] = 0.0
     total = 0.0
@@ -234,6 +255,20 @@ def add_curvature(arrays: Arrays, tile: int, x: Floats, hessian: Floats, work: W
             for j in range(begin, end):
                 p = arrays.component_scales[j]  # scale parameters come before nuisances: p < k
                 hessian[k, p] += scale_of(arrays, component, x, p, -1) * arrays.inverse_injected[p] * shift
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def has_hold(arrays: Arrays, parameter: int, x: Floats, work: Workspace) -> bool:
+    """Whether a parameter changes any bin that is above its floor, at the parameters of the last evaluation."""
+    for tile in range(arrays.tile_filled.shape[0]):
+        for j in range(arrays.tile_rows[tile], arrays.tile_rows[tile + 1]):
+            if arrays.rows[j] == parameter:
+                sum_pieces(arrays, tile, x, FISHER, work)
+                for i in range(arrays.tile_filled[tile]):
+                    above = work.lanes[0, i] >= arrays.floor[arrays.tile_first[tile] + i]
+                    if above and work.rows[parameter, i] != 0.0:
+                        return True
+    return False
 
 
 @njit(cache=True, nogil=True, error_model="numpy")

@@ -19,15 +19,18 @@ from semitau.core.templates import Floats
 
 from .algebra import factorise, solve
 from .data import Data, Source
-from .ending import CONVERGED, FLAT, NO_MINIMUM, NOT_FINITE, STALLED, TOO_LONG, Ending
+from .ending import CONVERGED, FLAT, NO_MINIMUM, NOT_FINITE, RUNAWAY, STALLED, TOO_LONG, Ending
 from .layout import Arrays, Indices
-from .likelihood import EXACT, FISHER, Workspace, evaluate, workspace
+from .likelihood import EXACT, FISHER, Workspace, evaluate, has_hold, workspace
 from .model import Model
 from .result import FitResult, assemble
 
 STEPS_AT_MOST = 200
 DISTANCE = 1e-12
 """Estimated distance to the minimum, in -ln L, at which a fit is done; that is about 1e-6 of an error."""
+
+ROUNDING = 1e-8
+"""Distance below which -ln L of many events is too coarse to judge a step by; the gradient is not, so it is taken."""
 
 _RIDGES = (1e-7, 1e-4, 1e-1)
 
@@ -88,7 +91,8 @@ def minimise(
             distance += 0.5 * s.gradient[free[i]] * s.step[i]
         if distance < DISTANCE and was_exact:
             if mode == EXACT:
-                return Ending(CONVERGED, value, distance, step, evaluations)
+                status = CONVERGED if _all_held(arrays, free, x, s.work) else RUNAWAY
+                return Ending(status, value, distance, step, evaluations)
             return Ending(FLAT if flat else NO_MINIMUM, value, distance, step, evaluations)
 
         next_mode = EXACT if distance < 1.0 else FISHER
@@ -103,8 +107,8 @@ def minimise(
                 arrays, x_free, counts, gamma_centres, centres, next_mode, s.trial_gradient, s.trial_hessian, s.work
             )
             evaluations += 1
-            # Rounding of the sum over bins must not look like a rise.
-            if trial <= value - 1e-4 * length * 2.0 * distance + 1e-13 * (1.0 + abs(value)):
+            enough = value - 1e-4 * length * 2.0 * distance + 1e-13 * (1.0 + abs(value))
+            if trial <= enough or (distance < ROUNDING and trial < value + ROUNDING):
                 accepted = True
                 break
             length *= 0.5
@@ -116,6 +120,16 @@ def minimise(
         value = trial
         mode = next_mode
     return Ending(TOO_LONG, value, distance, STEPS_AT_MOST, evaluations)
+
+
+@njit(cache=True, nogil=True, error_model="numpy")
+def _all_held(arrays: Arrays, free: Indices, x: Floats, work: Workspace) -> bool:
+    """Whether every free parameter without constraint still changes a bin that is not under the protection."""
+    if work.protected[0] > 0:
+        for p in free:
+            if arrays.inverse_variance[p] == 0.0 and not has_hold(arrays, p, x, work):
+                return False
+    return True
 
 
 def maximise(

@@ -79,15 +79,15 @@ class ToyResults:
 
     def fitted(self, name: str) -> Floats:
         """(valid toys,) fitted values of a parameter."""
-        return self.values[self.valid, self._index(name)]
+        return self._column(self.values, name)
 
     def fit_errors(self, name: str) -> Floats:
         """(valid toys,) errors that the fits gave."""
-        return self.errors[self.valid, self._index(name)]
+        return self._column(self.errors, name)
 
     def pulls(self, name: str) -> Floats:
         """(valid toys,) (fitted - injected)/error."""
-        return (self.fitted(name) - self.injected[self._index(name)]) / self.fit_errors(name)
+        return (self.fitted(name) - float(self.injected[self._index(name)])) / self.fit_errors(name)
 
     def summary(self, name: str) -> Summary:
         """Bias, pull mean and width, coverage and failures of a parameter."""
@@ -105,6 +105,10 @@ class ToyResults:
     def share_above(self, statistic: float) -> float:
         """Share of valid toys with a larger goodness-of-fit statistic: a p-value for bins with any number of events."""
         return float(np.mean(self.statistics[self.valid] > statistic))
+
+    def _column(self, table: Floats, name: str) -> Floats:
+        column: Floats = table[self.valid, self._index(name)]
+        return column
 
     def _index(self, name: str) -> int:
         if name not in self.names:
