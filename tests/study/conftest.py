@@ -4,9 +4,13 @@ from __future__ import annotations
 
 import math
 import os
+import re
+from collections.abc import Callable, Mapping
+from pathlib import Path
 
 import numpy as np
 import pytest
+from semitau.core.template_file import write_templates
 from semitau.core.templates import (
     Category,
     Component,
@@ -42,6 +46,7 @@ from semitau.study.results import (
     Toys,
     Verdict,
 )
+from semitau.study.study_run import run_study
 
 SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 
@@ -289,3 +294,53 @@ def templates() -> TemplateSet:
 @pytest.fixture(scope="session")
 def results() -> Results:
     return small_results()
+
+
+MARLOW = (Path(__file__).parents[2] / "configs" / "marlow_small.toml").read_text()
+
+
+def mini_text(changes: Mapping[str, str] | None = None) -> str:
+    """The small Marlow study with a fiftieth of its events, few bins and few toys; `changes`: text -> text put in its place."""
+    text = re.sub(r"^events = ([\d_]+)", lambda found: f"events = {int(found[1]) // 50}", MARLOW, flags=re.M)
+    text = re.sub(r"^number = \d+", "number = 60", text, flags=re.M)
+    text = re.sub(r"^(linearity = .*number = )\d+", r"\g<1>40", text, flags=re.M)
+    text = re.sub(r"^mm2 = \[.*\]$", "mm2 = [-2.0, 0.2, 1.0, 3.0, 9.0]", text, flags=re.M)
+    text = re.sub(r"^el = \[.*\]$", "el = [0.2, 0.9, 1.5, 2.6]", text, flags=re.M)
+    text = re.sub(r'^output = ".*"', 'output = "out"', text, flags=re.M)
+    for old, new in (changes or {}).items():
+        assert old in text, old
+        text = text.replace(old, new)
+    return text
+
+
+WriteStudy = Callable[..., Path]
+
+
+@pytest.fixture
+def mini(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> WriteStudy:
+    """Writes a quick study, with changes if any, into a folder of its own, which is the current one."""
+    monkeypatch.chdir(tmp_path)
+
+    def write(changes: Mapping[str, str] | None = None) -> Path:
+        path = tmp_path / "mini.toml"
+        path.write_text(mini_text(changes))
+        return path
+
+    return write
+
+
+@pytest.fixture(scope="session")
+def template_file(templates: TemplateSet, tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """The small template set as a file, not to be changed."""
+    path = tmp_path_factory.mktemp("templates") / "templates.root"
+    write_templates(templates, path)
+    return path
+
+
+@pytest.fixture(scope="session")
+def finished(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """Folder of a quick study that has run to its end, not to be changed."""
+    folder = tmp_path_factory.mktemp("finished")
+    (folder / "mini.toml").write_text(mini_text())
+    run_study(folder / "mini.toml", output=folder / "out", workers=2)
+    return folder / "out"

@@ -20,3 +20,19 @@ def open_study(path: Path, seed: int | None = None) -> StudyConfig:
         return study
     section = study.study.model_copy(update={"seed": seed})
     return study.model_copy(update={"study": section})
+
+
+def thinned(study: StudyConfig, share: float) -> StudyConfig:
+    """The study with this share of its generated events, at least one for each component; expectations stay."""
+    if share == 1.0:
+        return study
+
+    def fewer(events: int) -> dict[str, int]:
+        return {"events": max(1, round(share * events))}
+
+    return study.model_copy(
+        update={
+            "modes": tuple(mode.model_copy(update=fewer(mode.events)) for mode in study.modes),
+            "backgrounds": tuple(back.model_copy(update=fewer(back.events)) for back in study.backgrounds),
+        }
+    )
