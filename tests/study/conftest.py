@@ -300,7 +300,7 @@ MARLOW = (Path(__file__).parents[2] / "configs" / "marlow_small.toml").read_text
 
 
 def mini_text(changes: Mapping[str, str] | None = None) -> str:
-    """The small Marlow study with a fiftieth of its events, few bins and few toys; `changes`: text -> text put in its place."""
+    """The small Marlow study with a fiftieth of its events, few bins and toys; `changes`: text -> text in its place."""
     text = re.sub(r"^events = ([\d_]+)", lambda found: f"events = {int(found[1]) // 50}", MARLOW, flags=re.M)
     text = re.sub(r"^number = \d+", "number = 60", text, flags=re.M)
     text = re.sub(r"^(linearity = .*number = )\d+", r"\g<1>40", text, flags=re.M)

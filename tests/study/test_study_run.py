@@ -142,14 +142,15 @@ def test_named_files_are_found_wherever_they_stand() -> None:
     assert list(named_files(document)) == ["x.root", "y.root", "z.root"]
 
 
-def test_report_command_draws_the_same_again(finished: Path, tmp_path: Path) -> None:
-    shutil.copytree(finished, tmp_path / "out")
-    shutil.rmtree(tmp_path / "out" / "pictures")
-    (tmp_path / "out" / "report.html").unlink()
-    assert main(["report", str(tmp_path / "out"), "--quiet"]) == 0
-    assert (tmp_path / "out" / "report.html").read_bytes() == (finished / "report.html").read_bytes()
-    for picture in (finished / "pictures").iterdir():
-        assert (tmp_path / "out" / "pictures" / picture.name).read_bytes() == picture.read_bytes()
+def test_report_command_draws_from_results_alone(results: Results, tmp_path: Path) -> None:
+    few = results.model_copy(update={"projections": (), "linearity": ()})
+    (tmp_path / "results.json").write_text(few.text())
+    contents = []
+    for _ in range(2):
+        assert main(["report", str(tmp_path), "--quiet"]) == 0
+        contents.append({path.name: path.read_bytes() for path in tmp_path.rglob("*") if path.is_file()})
+    assert set(contents[0]) >= {"report.html", "budget.svg", "toy_pulls.png", "correlations.svg"}
+    assert contents[0] == contents[1]
 
 
 @pytest.mark.usefixtures("no_pictures")
