@@ -242,6 +242,13 @@ def test_bad_arguments(change: dict[str, object], message: str) -> None:
         gen.simulate(**arguments)
 
 
+def test_mass_point_below_threshold() -> None:
+    with pytest.raises(InputError, match=r"D1'\(2430\)- is too light to decay \(got 2\.14 GeV, allowed at least 2\.14"):
+        gen.simulate(gen.Decay("B0", "D1'(2430)-", "mu", charm_mass=2.14), 10, 1)
+    events = gen.simulate(gen.Decay("B0", "D1'(2430)-", "mu", charm_mass=2.2), 10, 1)
+    np.testing.assert_allclose(invariant(events.Dss), 2.2)
+
+
 def test_all_problems_at_once() -> None:
     with pytest.raises(InputError) as caught:
         gen.simulate(gen.Decay("B+", "D0", "tau"), -1, 1, tau_to="k", charm_to="D0 pi0", frame="x")

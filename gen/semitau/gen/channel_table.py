@@ -11,6 +11,7 @@ from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
+from semitau.core.errors import InputError, Problem
 
 from .alias import interval_table
 from .amplitudes import HelicityAmplitudes, helicity_amplitudes
@@ -64,8 +65,9 @@ class ChannelTable(NamedTuple):
 
 
 def channel_table(channel: Channel) -> ChannelTable:
-    """Table of a decay chain, about a millisecond to make."""
+    """Table of a decay chain, about a millisecond to make. InputError if a particle is too light for its decay."""
     decay = channel.decay
+    _check_thresholds(channel)
     photon = channel.soft == "photon"
     if channel.bachelor == "none":
         chain = VECTOR if channel.vector else GROUND
@@ -96,6 +98,21 @@ def channel_table(channel: Channel) -> ChannelTable:
         amplitudes=complex_columns(amplitudes) if needs_complex(amplitudes) else real_columns(amplitudes),
         visible_table=interval_table(lambda s: energy_density(visible_mass, s), VISIBLE_INTERVALS),
     )
+
+
+def _check_thresholds(channel: Channel) -> None:
+    """A mass point of a broad state may lie where it cannot decay."""
+    below = channel.m_vector or channel.m_ground
+    parts = channel.m_bachelor + below if channel.bachelor != "none" else channel.m_ground + channel.m_soft
+    if channel.decay.m_charm < parts:
+        raise InputError(
+            Problem(
+                f"the {channel.decay.charm} is too light to decay",
+                where=channel.name,
+                got=f"{channel.decay.m_charm} GeV",
+                wanted=f"at least {parts:.5f} GeV",
+            )
+        )
 
 
 def q2_of_position(decay: Decay, t: Floats) -> Floats:

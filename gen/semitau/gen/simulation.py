@@ -57,6 +57,9 @@ def simulate(
     Fields that a decay does not have are left out; in a sample that mixes D** -> D* pi and D pi, Dst and soft are None
     where there is no D*. The records carry the decay (see `weights`).
 
+    The D* keeps its spin correlations, also in D* -> D gamma. A D** has its nominal mass (another one: `charm_mass` of
+    the decay) and decays isotropically, the spin of its tau being exact for the summed D** spin.
+
     InputError tells what is wrong with the arguments.
     Source: shared amplitudes (`amplitudes.py`), exact conditional sampling (`truth.py`).
     """
