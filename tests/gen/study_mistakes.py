@@ -339,7 +339,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
     "half of the tags": (
         "[detector.tracks]",
         '[detector.tag]\nefficiency = { "B+" = 0.01 }\n[detector.tracks]',
-        "detector.tag.efficiency: lacks the key B0. Add B0.",
+        "detector.tag.efficiency: lacks the key B0. Add B0: neutral B.",
         1,
     ),
     "efficiency above one": (
@@ -383,7 +383,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
     "law without range": (
         'mm2 = { law = "uniform", range = [-1.0, 9.0] }',
         'mm2 = { law = "uniform" }',
-        "background[fakes].shape.mm2: lacks the key range. Add range.",
+        "background[fakes].shape.mm2: lacks the key range. Add range: limits within which it is drawn.",
     ),
     "key of another law": (
         'law = "uniform", ',

@@ -188,3 +188,17 @@ def _from_histogram(
         return from_density(log_density, edges, contents)
     nodes = np.unique(np.concatenate([edges, np.clip(breaks, edges[0], edges[-1])]))
     return from_density(lambda x: log_density(x) + factor(x), nodes)
+
+
+def samplers(study: StudyConfig) -> tuple[ShapeSampler, ...]:
+    """A sampler for every background of a study. Raises InputError with the problems of all of them."""
+    ready: list[ShapeSampler] = []
+    problems: list[Problem] = []
+    for background in study.backgrounds:
+        try:
+            ready.append(ShapeSampler(background, study))
+        except InputError as error:
+            problems += error.problems
+    if problems:
+        raise InputError(*problems)
+    return tuple(ready)

@@ -14,10 +14,10 @@ MOST_BINS = 10_000
 
 
 class Cut(Table):
-    """Limits on an observable; min included, max excluded."""
+    """A cut: limits on an observable. [selection] is a table of cuts by observable; delta_m cuts D* categories only."""
 
-    min: Value | None = None
-    max: Value | None = None
+    min: Value | None = Field(default=None, description="lowest value that is kept")
+    max: Value | None = Field(default=None, description="values from here on are dropped")
 
     @property
     def text(self) -> str:
@@ -42,10 +42,12 @@ class Axis(ShortTable):
 
     short_schema: ClassVar[dict[str, Any]] = {"type": "array", "items": {"type": "number"}, "minItems": 2}
 
-    given: tuple[Value, ...] | None = Field(default=None, alias="edges", min_length=2, max_length=MOST_BINS + 1)
-    min: Value | None = None
-    max: Value | None = None
-    bins: Annotated[Count, Field(le=MOST_BINS)] | None = None
+    given: tuple[Value, ...] | None = Field(
+        default=None, alias="edges", min_length=2, max_length=MOST_BINS + 1, description="increasing"
+    )
+    min: Value | None = Field(default=None, description="first edge")
+    max: Value | None = Field(default=None, description="last edge")
+    bins: Annotated[Count, Field(le=MOST_BINS)] | None = Field(default=None, description="number of bins")
 
     @model_validator(mode="before")
     @classmethod
@@ -83,7 +85,9 @@ class CategoryTable(Table):
     charm: Annotated[tuple[CharmHadron, ...], Field(min_length=1), Distinct] = Field(
         description="reconstructed charm hadrons"
     )
-    leptons: Annotated[tuple[LightLepton, ...], Field(min_length=1), Distinct] = Field(default=("e", "mu"))
+    leptons: Annotated[tuple[LightLepton, ...], Field(min_length=1), Distinct] = Field(
+        default=("e", "mu"), description="reconstructed leptons"
+    )
     observables: Annotated[dict[ObservableKey, Axis], Field(min_length=1, max_length=3), ByObservable] = Field(
         description="one to three axes, in order"
     )

@@ -36,7 +36,7 @@ class Yield(ShortTable):
 
     short_schema: ClassVar[dict[str, Any]] = {"enum": ["free", "fixed"]}
 
-    kind: Literal["free", "fixed", "gaussian"] = "gaussian"
+    kind: Literal["free", "fixed", "gaussian"] = Field(default="gaussian", description="rather written short")
     uncertainty: Positive | None = Field(default=None, description="relative, one standard deviation")
 
     @model_validator(mode="before")
@@ -66,11 +66,17 @@ class Mode(Table):
     another without a ratio scales with the other's yield besides its own.
     """
 
-    component: Identifier
+    component: Identifier = Field(description="name of its templates")
     label: Text | None = Field(default=None, description="in pictures and tables; the component's name if left out")
-    parents: Annotated[tuple[Parent, ...], Field(min_length=1), Distinct] = Field(default=("B+", "B0"))
-    charm: Annotated[tuple[CharmFamily, ...], Field(min_length=1), Distinct]
-    leptons: Annotated[tuple[Lepton, ...], Field(min_length=1), Distinct]
+    parents: Annotated[tuple[Parent, ...], Field(min_length=1), Distinct] = Field(
+        default=("B+", "B0"), description="decaying mesons"
+    )
+    charm: Annotated[tuple[CharmFamily, ...], Field(min_length=1), Distinct] = Field(
+        description="charm hadrons of the B decay"
+    )
+    leptons: Annotated[tuple[Lepton, ...], Field(min_length=1), Distinct] = Field(
+        description="of the B decay; tau goes on to e and mu"
+    )
     scales_with: RatioName | None = Field(default=None, description="the ratio that the fit measures with this mode")
     follows: Identifier | None = Field(default=None, description="component whose yield this one scales with")
     yield_: Yield | None = Field(
@@ -130,11 +136,11 @@ class Background(Table):
     hadrons before identification, which is multiplied by the detector's misidentification table and normalised again.
     """
 
-    component: Identifier
+    component: Identifier = Field(description="name of its templates")
     label: Text | None = Field(default=None, description="in pictures and tables; the component's name if left out")
     events: Count = Field(description="drawn events, shared evenly between its categories")
-    yield_: Yield = Field(default=Yield(kind="free"), alias="yield")
-    misidentified: Flag = False
+    yield_: Yield = Field(default=Yield(kind="free"), alias="yield", description="all categories move together")
+    misidentified: Flag = Field(default=False, description="stands for hadrons taken for leptons")
     expected: Annotated[dict[str, NotNegative], Field(min_length=1)] = Field(description="events by category")
     shape: Shape = Field(description="law of each observable")
     shape_in: dict[str, Shape] = Field(default={}, description="laws that differ, by category or charm hadron")

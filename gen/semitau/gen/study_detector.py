@@ -79,8 +79,8 @@ def _flat(value: float) -> Curve:
 class PerParent(Table):
     """A probability for each B species: { "B+" = ..., B0 = ... }."""
 
-    charged: Fraction = Field(alias="B+")
-    neutral: Fraction = Field(alias="B0")
+    charged: Fraction = Field(alias="B+", description="charged B")
+    neutral: Fraction = Field(alias="B0", description="neutral B")
 
     def __getitem__(self, parent: Parent | str) -> float:
         return {"B+": self.charged, "B0": self.neutral}[parent]
@@ -89,8 +89,8 @@ class PerParent(Table):
 class PerCharm(Table):
     """A probability for each ground-state D: { D0 = ..., "D+" = ... }."""
 
-    neutral: Fraction = Field(alias="D0")
-    charged: Fraction = Field(alias="D+")
+    neutral: Fraction = Field(alias="D0", description="neutral D")
+    charged: Fraction = Field(alias="D+", description="charged D")
 
     def __getitem__(self, charm: CharmHadron | str) -> float:
         return {"D0": self.neutral, "D+": self.charged}[charm]
@@ -203,12 +203,12 @@ class ResidualEnergy(Table):
 
 
 class Detector(Table):
-    """The detector of a lepton collider."""
+    """The detector of a lepton collider. Every key has a default of the size usual at the Υ(4S) (common practice)."""
 
-    tag: Tag = Tag()
-    tracks: Tracks = Tracks()
-    photons: Photons = Photons()
-    soft_pion: SoftPion = SoftPion()
-    lepton_id: LeptonIdentification = LeptonIdentification()
-    charm: Charm = Charm()
-    residual_energy: ResidualEnergy = ResidualEnergy()
+    tag: Tag = Field(default=Tag(), description="the other B")
+    tracks: Tracks = Field(default=Tracks(), description="charged particles")
+    photons: Photons = Field(default=Photons(), description="photons, resolution of soft neutral pions")
+    soft_pion: SoftPion = Field(default=SoftPion(), description="slow pions of D*, random ones")
+    lepton_id: LeptonIdentification = Field(default=LeptonIdentification(), description="lepton identification")
+    charm: Charm = Field(default=Charm(), description="reconstruction of the D")
+    residual_energy: ResidualEnergy = Field(default=ResidualEnergy(), description="left-over calorimeter energy")

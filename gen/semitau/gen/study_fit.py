@@ -18,8 +18,8 @@ class FitData(ShortTable):
 
     short_schema: ClassVar[dict[str, Any]] = {"enum": ["expected", "pseudo"]}
 
-    kind: Literal["expected", "pseudo", "file"] = "file"
-    file: Text | None = None
+    kind: Literal["expected", "pseudo", "file"] = Field(default="file", description="rather written short")
+    file: Text | None = Field(default=None, description="ROOT file, beside the study file unless absolute")
 
     @model_validator(mode="before")
     @classmethod
@@ -39,7 +39,7 @@ class FitData(ShortTable):
 
 
 class FitSection(Table):
-    """[fit]."""
+    """What is fitted, and how."""
 
     ratios: Literal["isospin", "separate"] = Field(
         default="isospin", description='"separate": R_D and R_Dst for B⁺ and B⁰ on their own'
@@ -51,8 +51,10 @@ class FitSection(Table):
     )
 
 
-class Linearity(Table):
-    """Toys at several injected ratios."""
+class Linearity(ShortTable):
+    """Toys at several injected ratios. In the file: a table, or false."""
+
+    short_schema: ClassVar[dict[str, Any]] = {"const": False}
 
     factors: Annotated[tuple[Positive, ...], Field(min_length=2), Increasing] = Field(
         default=(0.8, 1.0, 1.2, 1.4), description="of all injected ratios at once"
@@ -61,9 +63,9 @@ class Linearity(Table):
 
 
 class Toys(Table):
-    """[toys]."""
+    """Pseudo-experiments that try the fit."""
 
-    number: Count = 2000
+    number: Count = Field(default=2000, description="toys at the injected ratios")
     linearity: Annotated[Linearity | None, BeforeValidator(lambda given: None if given is False else given)] = Field(
         default=Linearity(), description="false switches it off"
     )

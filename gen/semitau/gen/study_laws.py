@@ -30,17 +30,17 @@ class Exponential(Table):
     """exp(−x/scale); a negative scale rises."""
 
     law: Literal["exponential"]
-    scale: Annotated[Value, _NotZero]
-    range: Range
+    scale: Annotated[Value, _NotZero] = Field(description="length over which it falls by e")
+    range: Range = Field(description="limits within which it is drawn")
 
 
 class Gaussian(Table):
     """Gaussian of `mean` and `sigma`."""
 
     law: Literal["gaussian"]
-    mean: Value
-    sigma: Annotated[Value, Field(gt=0)]
-    range: Range
+    mean: Value = Field(description="of the Gaussian, or of the core")
+    sigma: Annotated[Value, Field(gt=0)] = Field(description="standard deviation before the cut to the range")
+    range: Range = Field(description="limits within which it is drawn")
 
     @model_validator(mode="after")
     def _met(self) -> Gaussian:
@@ -55,12 +55,12 @@ class DoubleGaussian(Table):
     """
 
     law: Literal["double_gaussian"]
-    mean: Value
-    sigma: Annotated[Value, Field(gt=0)]
-    wide_sigma: Annotated[Value, Field(gt=0)]
-    wide_fraction: Fraction
+    mean: Value = Field(description="of the Gaussian, or of the core")
+    sigma: Annotated[Value, Field(gt=0)] = Field(description="standard deviation before the cut to the range")
+    wide_sigma: Annotated[Value, Field(gt=0)] = Field(description="standard deviation of the wide Gaussian")
+    wide_fraction: Fraction = Field(description="share of the wide Gaussian")
     wide_mean: Value | None = Field(default=None, description="mean of the wide Gaussian; that of the core if left out")
-    range: Range
+    range: Range = Field(description="limits within which it is drawn")
 
     @model_validator(mode="after")
     def _met(self) -> DoubleGaussian:
@@ -73,9 +73,9 @@ class Power(Table):
     """(x − origin)^exponent, truncated to a range right of the origin."""
 
     law: Literal["power"]
-    exponent: Number
-    origin: Value = 0.0
-    range: Range
+    exponent: Number = Field(description="negative ones fall")
+    origin: Value = Field(default=0.0, description="where the power is zero or infinite")
+    range: Range = Field(description="limits within which it is drawn")
 
     @model_validator(mode="after")
     def _right_of_origin(self) -> Power:
@@ -92,10 +92,10 @@ class Threshold(Table):
     """Rise from a threshold and exponential fall: (x − threshold)^power · exp(−(x − threshold)/scale)."""
 
     law: Literal["threshold"]
-    threshold: Value
-    power: NotNegative = 0.5
-    scale: Annotated[Value, Field(gt=0)]
-    range: Range
+    threshold: Value = Field(description="nothing lies below")
+    power: NotNegative = Field(default=0.5, description="of the rise")
+    scale: Annotated[Value, Field(gt=0)] = Field(description="length over which it falls by e")
+    range: Range = Field(description="limits within which it is drawn")
 
     @model_validator(mode="after")
     def _past_threshold(self) -> Threshold:
@@ -108,10 +108,10 @@ class EndPoint(Table):
     """Kinematic limit from below: x · (1 − x²/end²)^power · exp(−curvature · (1 − x²/end²)), 0 ≤ x ≤ end."""
 
     law: Literal["end_point"]
-    end: Annotated[Value, Field(gt=0)]
-    power: NotNegative = 0.5
-    curvature: Annotated[Number, Field(ge=-500, le=500)] = 0.0
-    range: Range
+    end: Annotated[Value, Field(gt=0)] = Field(description="nothing lies above")
+    power: NotNegative = Field(default=0.5, description="of the fall towards the end")
+    curvature: Annotated[Number, Field(ge=-500, le=500)] = Field(default=0.0, description="of the exponential")
+    range: Range = Field(description="limits within which it is drawn")
 
     @model_validator(mode="after")
     def _within_limit(self) -> EndPoint:
@@ -124,16 +124,16 @@ class PhaseSpace(Table):
     """Phase space between two kinematic limits: (x − low)^rise · (high − x)^fall over [low, high] = range."""
 
     law: Literal["phase_space"]
-    rise: NotNegative = 0.5
-    fall: NotNegative = 0.5
-    range: Range
+    rise: NotNegative = Field(default=0.5, description="power at the lower limit")
+    fall: NotNegative = Field(default=0.5, description="power at the upper limit")
+    range: Range = Field(description="limits within which it is drawn")
 
 
 class Uniform(Table):
     """The same everywhere in the range."""
 
     law: Literal["uniform"]
-    range: Range
+    range: Range = Field(description="limits within which it is drawn")
 
 
 def _lowest(coefficients: tuple[float, ...], limits: tuple[float, float]) -> tuple[float, float]:
@@ -151,8 +151,10 @@ class Polynomial(Table):
     """coefficients[0] + coefficients[1]·x + coefficients[2]·x² + ..., nowhere negative in the range."""
 
     law: Literal["polynomial"]
-    coefficients: Annotated[tuple[Number, ...], Field(min_length=1, max_length=12), _Some]
-    range: Range
+    coefficients: Annotated[tuple[Number, ...], Field(min_length=1, max_length=12), _Some] = Field(
+        description="of the powers of x in the observable's unit, from the constant on"
+    )
+    range: Range = Field(description="limits within which it is drawn")
 
     @model_validator(mode="after")
     def _positive(self) -> Polynomial:
@@ -182,7 +184,7 @@ class Column(Table):
     file: Text = Field(description="ROOT file, beside the study file unless absolute")
     tree: Text = Field(description="TTree or RNTuple within the file")
     branch: Text = Field(description="a column of numbers, one an entry")
-    smooth: Flag = False
+    smooth: Flag = Field(default=False, description="draw between the values instead of at them")
     range: Range | None = Field(default=None, description="entries outside are left out; all are taken if left out")
 
 

@@ -10,9 +10,9 @@ from .study_rules import Fraction, Positive, PositiveEnergy, Seed, Table, Text, 
 
 
 class StudySection(Table):
-    """[study]: name and seed."""
+    """What is studied, and where the results go."""
 
-    name: Text
+    name: Text = Field(description="title of the report")
     seed: Seed = Field(description="every random number of the study follows from it")
     output: Text = Field(description="folder for everything that is made, from where the command runs")
 
@@ -24,9 +24,11 @@ def _available(kind: Any) -> Any:
 
 
 class Experiment(Table):
-    """[experiment]: the machine. Beams along z, the first beam towards +z."""
+    """The machine. Beams along z, the first beam towards +z."""
 
-    kind: Annotated[Literal["lepton-collider"], BeforeValidator(_available)]
+    kind: Annotated[Literal["lepton-collider"], BeforeValidator(_available)] = Field(
+        description="e⁺e⁻ at the Υ(4S), the other B reconstructed in full"
+    )
     beam_energies: Annotated[
         tuple[PositiveEnergy, PositiveEnergy],
         rule(
@@ -41,8 +43,8 @@ class Experiment(Table):
 
 
 class FormFactors(Table):
-    """[form_factors]: the parameter set for each charm family."""
+    """The parameter set for each charm family; `semitau rates` shows what a set gives."""
 
-    D: Text = "BCL-2021"
-    Dst: Text = "CLN-2021"
-    Dss: Text = "IW-1998"
+    D: Text = Field(default="BCL-2021", description="B → D")
+    Dst: Text = Field(default="CLN-2021", description="B → D*")
+    Dss: Text = Field(default="IW-1998", description="B → D** (the four orbitally excited states)")

@@ -164,16 +164,30 @@ Number = Annotated[float, _strict]
 Positive = Annotated[float, _strict, Field(gt=0)]
 NotNegative = Annotated[float, _strict, Field(ge=0)]
 Fraction = Annotated[float, _strict, Field(ge=0, le=1)]
-Count = Annotated[int, BeforeValidator(_whole), Field(strict=True, gt=0)]
+Count = Annotated[
+    int,
+    BeforeValidator(_whole),
+    Field(strict=True, gt=0),
+    WithJsonSchema({"type": "integer", "exclusiveMinimum": 0}),
+]
 Seed = Annotated[int, Field(strict=True, ge=0, lt=2**63)]
 Energy = Annotated[float, _energy, _energy_schema, _strict]
 # Where an observable is named as a key.
-ObservableKey = Annotated[str, AfterValidator(_known_observable)]
+ObservableKey = Annotated[
+    str, AfterValidator(_known_observable), WithJsonSchema({"type": "string", "enum": list(OBSERVABLES)})
+]
 # In the unit of the observable it belongs to.
 Value = Annotated[
     float,
     BeforeValidator(_by_dimension),
-    WithJsonSchema({"anyOf": [{"type": "number", "description": "in the unit of the observable"}, {"type": "string"}]}),
+    WithJsonSchema(
+        {
+            "anyOf": [
+                {"type": "number", "description": "the observable's unit"},
+                {"type": "string", "description": "with a unit"},
+            ]
+        }
+    ),
     _strict,
 ]
 Angle = Annotated[float, _angle, _angle_schema, _strict]

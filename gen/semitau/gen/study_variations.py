@@ -21,7 +21,7 @@ class _Named(Table):
 
     default_group: ClassVar[str]
 
-    name: Identifier
+    name: Identifier = Field(description="name of the nuisance parameter")
     label: Text | None = Field(default=None, description="in pictures and tables; the name if left out")
     group: Text | None = Field(default=None, description="row of the budget; by kind if left out")
 
@@ -60,11 +60,11 @@ class ComponentFraction(_Named):
     default_group: ClassVar[str] = "D** composition"
 
     kind: Literal["fraction"]
-    charm: CharmFamily
+    charm: CharmFamily = Field(description="whose share changes")
     components: tuple[Identifier, ...] | None = Field(
         default=None, description="modes it acts on; all with this and other charm if left out"
     )
-    relative: _Relative
+    relative: _Relative = Field(description="one standard deviation")
 
 
 class SoftPionEfficiency(_Named):
@@ -73,8 +73,8 @@ class SoftPionEfficiency(_Named):
     default_group: ClassVar[str] = "detector"
 
     kind: Literal["soft_pion_efficiency"]
-    particle: SoftKind
-    relative: _Relative
+    particle: SoftKind = Field(description="charged or neutral pion, or photon")
+    relative: _Relative = Field(description="one standard deviation")
 
 
 class LeptonIdentificationEfficiency(_Named):
@@ -83,8 +83,8 @@ class LeptonIdentificationEfficiency(_Named):
     default_group: ClassVar[str] = "detector"
 
     kind: Literal["lepton_identification"]
-    lepton: LightLepton
-    relative: _Relative
+    lepton: LightLepton = Field(description="true lepton")
+    relative: _Relative = Field(description="one standard deviation")
 
 
 class Misidentification(_Named):
@@ -94,7 +94,7 @@ class Misidentification(_Named):
 
     kind: Literal["misidentification"]
     lepton: LightLepton = Field(description="what the hadron is taken for")
-    relative: _Relative
+    relative: _Relative = Field(description="one standard deviation")
 
 
 class TagResolution(_Named):
@@ -103,7 +103,7 @@ class TagResolution(_Named):
     default_group: ClassVar[str] = "detector"
 
     kind: Literal["tag_resolution"]
-    relative: _Relative
+    relative: _Relative = Field(description="one standard deviation")
 
 
 class MomentumScale(_Named):
@@ -112,7 +112,7 @@ class MomentumScale(_Named):
     default_group: ClassVar[str] = "detector"
 
     kind: Literal["momentum_scale"]
-    relative: Annotated[Positive, Field(lt=0.1)]
+    relative: Annotated[Positive, Field(lt=0.1)] = Field(description="one standard deviation")
 
 
 Variation = Annotated[
