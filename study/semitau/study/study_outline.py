@@ -7,6 +7,7 @@ from dataclasses import asdict, dataclass
 
 import numpy as np
 from semitau.gen.component_plan import plan_channels
+from semitau.gen.shapes import samplers
 from semitau.gen.study import StudyConfig
 from semitau.gen.study_components import Yield
 from semitau.gen.variations import check_efficiencies, scenarios
@@ -72,6 +73,7 @@ def study_outline(study: StudyConfig, workers: int) -> StudyOutline:
     InputError : nothing is expected of a component, or a variation passes its limits.
     """
     check_efficiencies(study)
+    samplers(study)  # reads the files of backgrounds, which may be foreign or damaged
     components = (*_mode_outlines(study), *_background_outlines(study))
     categories = tuple(
         (category.label, " × ".join(f"{name} ({len(edges) - 1})" for name, edges in category.axes.items()), bins)
