@@ -37,7 +37,7 @@ def choose_data(model: Model, data_file: Path | None, expected: bool = False) ->
         return data, DataSource(kind="file", description=f"data of {data_file.name}", events=_events(data))
     if model.templates.data and not expected:
         data = model.data(model.templates)
-        return data, DataSource(kind="pseudo", description="data stored with the templates", events=_events(data))
+        return data, DataSource(kind="file", description="data stored with the templates", events=_events(data))
     data = model.expected_data()
     return data, DataSource(kind="expected", description="expected events", events=_events(data))
 
