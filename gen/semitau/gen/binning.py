@@ -11,7 +11,7 @@ from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 
 from .block import CATEGORY, DELTA_M, E_RES, EL, MM2, P_CHARM, P_LEPTON, Q2_MEASURED
 from .study_categories import StudyCategory
@@ -116,7 +116,7 @@ def make_axes(categories: Sequence[StudyCategory]) -> Axes:
     )  # fmt: skip
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _bin_on_axis(value: float, axes: Axes, code: int, k: int) -> int:
     """Bin of a value on an axis, -1 if it is outside (or not a number): edges[b] <= value < edges[b + 1]."""
     start, bins = axes.first_edge[code, k], axes.bins[code, k]
@@ -132,7 +132,7 @@ def _bin_on_axis(value: float, axes: Axes, code: int, k: int) -> int:
     return b
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def place(y: Floats, events: int, cuts: Cuts, axes: Axes, flow: Integers, bins: Integers) -> None:
     """Fill bins (events,) with each candidate's bin number, -1 for those that are cut, outside or no candidate.
 
@@ -166,7 +166,7 @@ def place(y: Floats, events: int, cuts: Cuts, axes: Axes, flow: Integers, bins: 
             flow[steps + 1, category] += 1
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def count(bins: Integers, events: int, column: int, histogram: Floats) -> None:
     """Add 1 to histogram[bin, column] for each event that has a bin."""
     for i in range(events):

@@ -11,7 +11,7 @@ from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.constants import mass
 
 from . import block as row
@@ -56,7 +56,7 @@ class Windows(NamedTuple):
     charged_mu_max: float
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def reconstruct(y: Floats, chain: Chain, beams: Beams, scenario: Scenario, windows: Windows) -> None:
     """Fill the observables and CATEGORY of the block in one scenario.
 
@@ -67,7 +67,7 @@ def reconstruct(y: Floats, chain: Chain, beams: Beams, scenario: Scenario, windo
     form_observables(y, beams, scenario)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def choose_charm(y: Floats, chain: Chain, scale: float, windows: Windows) -> None:
     """A D* if a soft candidate puts delta_m into its window (the one nearest to the known value), else the D alone.
 
@@ -149,7 +149,7 @@ def choose_charm(y: Floats, chain: Chain, scale: float, windows: Windows) -> Non
         y[row.E_RES + i] = y[row.LEFT_OVER + i] + soft_neutral * unused * y[row.LAB_SOFT_E + i]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def form_observables(y: Floats, beams: Beams, scenario: Scenario) -> None:
     """MM2, Q2_MEASURED, EL, P_LEPTON and P_CHARM from tag, charm and lepton, all as measured."""
     half = 0.5 * beams.energy

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.constants import mass
 from semitau.core.elementary import sincos_turns
 from semitau.core.streams import uniform
@@ -48,7 +48,7 @@ def pair_mass_quantiles(parent: float) -> Floats:
     return np.interp(np.linspace(0.0, 1.0, _QUANTILES + 1), cumulative / cumulative[-1], m)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def decay_to_two(x: Floats, keys: Keys, parent: float) -> None:
     """Fill TRACK1 (kaon) and TRACK2 (pion) in the laboratory from the D in the LAB_D rows."""
     p = np.sqrt((parent**2 - (KAON + PION) ** 2) * (parent**2 - (KAON - PION) ** 2)) / (2.0 * parent)
@@ -75,7 +75,7 @@ def decay_to_two(x: Floats, keys: Keys, parent: float) -> None:
         x[row.TRACK3_PZ + i] = 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def decay_to_three(x: Floats, keys: Keys, parent: float, quantiles: Floats) -> None:
     """Fill TRACK1 (kaon), TRACK2 and TRACK3 (pions) in the laboratory from the D in the LAB_D rows.
 

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.streams import event_key
 
 from .binning import Axes, Cuts, count, place
@@ -26,7 +26,7 @@ FOUND_STEPS = 3
 """Steps that `fill_chunk` counts before there is a category: charm seen, lepton seen, lepton identified."""
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def fill_chunk(
     stream: np.uint64, first: int, events: int, table: ChannelTable, chain: Chain, detector: Detector,
     quantiles: Floats, variations: VariationTable, soft_factors: Floats, scenarios: Floats, windows: Windows,
@@ -75,7 +75,7 @@ def fill_chunk(
     )  # fmt: skip
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def fill_block(
     y: Floats, keys: Keys, events: int, chain: Chain, detector: Detector, variations: VariationTable,
     soft_factors: Floats, scenarios: Floats, windows: Windows, cuts: Cuts, axes: Axes, bins: Integers, weights: Floats,
@@ -100,7 +100,7 @@ def fill_block(
         fill_weights(bins, events, weights, weight_columns, histogram)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def fill_weights(bins: Integers, events: int, weights: Floats, columns: int, histogram: Floats) -> None:
     """histogram[bin, 1 + v] += weights[event, v] for each event that has a bin."""
     for i in range(events):
@@ -109,7 +109,7 @@ def fill_weights(bins: Integers, events: int, weights: Floats, columns: int, his
                 histogram[bins[i], 1 + v] += weights[i, v]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def fill_soft(y: Floats, bins: Integers, events: int, factors: Floats, column: int, histogram: Floats) -> None:
     """Weights of a changed soft efficiency e' = f e: f if the particle was found, (1 - e')/(1 - e) if it was lost."""
     for i in range(events):
@@ -121,7 +121,7 @@ def fill_soft(y: Floats, bins: Integers, events: int, factors: Floats, column: i
                 histogram[bins[i], column + s] += factors[s] if found else lost
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def fill_drawn(
     values: Floats, rows: Integers, code: int, cuts: Cuts, axes: Axes, flow: Integers, histogram: Floats
 ) -> None:

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 from semitau.core.elementary import normal_pair, sincos_turns
 from semitau.core.streams import uniform
 
@@ -20,7 +20,7 @@ Floats = npt.NDArray[np.float64]
 Keys = npt.NDArray[np.uint64]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def draw_pair(x: Floats, keys: Keys, beams: Beams, parent_mass: float) -> None:
     """Fill BOOST_*: gamma and gamma*beta of the signal B in the centre-of-mass frame, with the beam-energy spread."""
     for i in range(LANES):
@@ -45,7 +45,7 @@ def draw_pair(x: Floats, keys: Keys, beams: Beams, parent_mass: float) -> None:
         x[BOOST_Z + i] = np.sqrt(square) * cosine
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def boosted(
     px: float, py: float, pz: float, e: float, gamma: float, ux: float, uy: float, uz: float
 ) -> tuple[float, float, float, float]:
@@ -55,13 +55,13 @@ def boosted(
     return px + k * ux, py + k * uy, pz + k * uz, gamma * e + along
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def boosted_along_z(pz: float, e: float, beta: float, gamma: float) -> tuple[float, float]:
     """(pz, e) seen from a frame in which its own frame moves along +z."""
     return gamma * (pz + beta * e), gamma * (e + beta * pz)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def to_laboratory(x: Floats, source: int, target: int, beams: Beams) -> None:
     """Boost a four-momentum from the rest frame of the signal B through the centre-of-mass frame to the laboratory.
 

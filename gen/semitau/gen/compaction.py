@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 
 from .block import BOOST_GAMMA, D_PX, FLAVOUR, LANES, PION_E, Q2, SOFT_PX
 
@@ -22,7 +22,7 @@ _KEPT = np.array(
 )
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def move(
     x: Floats, keys: Keys, numbers: Keys, lanes: Keys, first: int, count: int,
     y: Floats, y_keys: Keys, y_numbers: Keys, filled: int,

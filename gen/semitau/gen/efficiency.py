@@ -11,7 +11,7 @@ from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 
 Floats = npt.NDArray[np.float64]
 
@@ -42,7 +42,7 @@ def scaled(efficiency: Efficiency, factor: float) -> Efficiency:
     return Efficiency(efficiency.first * factor, efficiency.knots, efficiency.bends * factor)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def evaluate(efficiency: Efficiency, momentum: Floats, out: Floats) -> None:
     """Fill out (n,) with the efficiency at momentum (n,)."""
     n = out.shape[0]

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.streams import uniform
 
 from . import block as row
@@ -33,7 +33,7 @@ _CHANCE = row.SCRATCH_8
 _OTHER_CHANCE = row.SCRATCH_9
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def find(x: Floats, keys: Keys, chain: Chain, detector: Detector, quantiles: Floats) -> None:
     """From the truth rows to the laboratory: fill BOOST_*, TRACK*, LAB_LEPTON_*, FLAVOUR and the rows named above.
 
@@ -51,7 +51,7 @@ def find(x: Floats, keys: Keys, chain: Chain, detector: Detector, quantiles: Flo
     identify_lepton(x, keys, chain.muon, detector.leptons)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def see_charm(x: Floats, keys: Keys, charged_d: int, tracks: Tracks) -> None:
     """CHARM_SEEN: all charged daughters of the D within acceptance and seen by the tracking."""
     momentum = x[_MOMENTUM : _MOMENTUM + LANES]
@@ -79,7 +79,7 @@ def see_charm(x: Floats, keys: Keys, charged_d: int, tracks: Tracks) -> None:
             x[CHARM_SEEN + i] *= 1.0 if uniform(keys[i], TRACK3_SEEN) < x[_CHANCE + i] else 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def see_lepton(x: Floats, keys: Keys, tracks: Tracks) -> None:
     """LEPTON_SEEN_TOO: the charm was seen and the lepton made a track. Leaves its momentum for `identify_lepton`."""
     for i in range(LANES):
@@ -91,7 +91,7 @@ def see_lepton(x: Floats, keys: Keys, tracks: Tracks) -> None:
         x[LEPTON_SEEN_TOO + i] *= 1.0 if uniform(keys[i], LEPTON_SEEN) < x[_CHANCE + i] else 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def identify_lepton(x: Floats, keys: Keys, muon: int, leptons: Leptons) -> None:
     """IDENTIFIED and FLAVOUR: one draw decides between the right name, the wrong one, and none."""
     momentum = x[_MOMENTUM : _MOMENTUM + LANES]
@@ -110,7 +110,7 @@ def identify_lepton(x: Floats, keys: Keys, muon: int, leptons: Leptons) -> None:
         x[row.FLAVOUR + i] = true if u < x[_CHANCE + i] else other
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def list_found(x: Floats, events: int, counts: Counts, lanes: Keys) -> int:
     """List the lanes (below `events`) that were found in `lanes` (256,), and count the steps on the way.
 

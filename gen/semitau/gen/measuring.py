@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.constants import mass
 from semitau.core.elementary import log, normal_pair, sincos_turns
 from semitau.core.streams import uniform
@@ -47,7 +47,7 @@ _INSIDE = row.SCRATCH_2
 NEUTRAL_PION_MASS = mass("pi0")
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def measure(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     """From the rows kept by `find` to the MEASURED_*, TAG_*, SOFT_*, EXTRA, LEFT_OVER and RANDOM_* rows."""
     measure_charm(y, keys, chain.charged_d, detector.tracks)
@@ -59,7 +59,7 @@ def measure(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     draw_random_soft(y, keys, chain.charged_d, detector.soft)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def measure_charm(y: Floats, keys: Keys, charged_d: int, tracks: Tracks) -> None:
     """MEASURED_D: sum of the smeared tracks. Its energy is later set by the known mass of the D."""
     for i in range(LANES):
@@ -82,7 +82,7 @@ def measure_charm(y: Floats, keys: Keys, charged_d: int, tracks: Tracks) -> None
             y[row.MEASURED_D_PZ + i] += pz
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def measure_lepton(y: Floats, keys: Keys, tracks: Tracks) -> None:
     """MEASURED_LEPTON: the smeared track."""
     for i in range(LANES):
@@ -99,7 +99,7 @@ def measure_lepton(y: Floats, keys: Keys, tracks: Tracks) -> None:
         y[row.MEASURED_LEPTON_PZ + i] = pz
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def measure_tag(y: Floats, keys: Keys, parent_mass: float, charged_parent: int, tag: Tag) -> None:
     """TAG_*: true momentum of the signal B (the tag flies against it), its shift, and whether the tag is what it seems.
 
@@ -124,7 +124,7 @@ def measure_tag(y: Floats, keys: Keys, parent_mass: float, charged_parent: int, 
         y[row.TAG_CHARGED + i] = charge + swapped * (1.0 - 2.0 * charge)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def add_noise(y: Floats, keys: Keys, residual: Residual) -> None:
     """LEFT_OVER: calorimeter noise and what a wrong tag leaves, both exponential."""
     for i in range(LANES):
@@ -134,7 +134,7 @@ def add_noise(y: Floats, keys: Keys, residual: Residual) -> None:
         y[row.LEFT_OVER + i] = noise + wrong * y[row.TAG_WRONG + i]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def measure_soft(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     """SOFT_EFFICIENCY, SOFT_FOUND, MEASURED_SOFT, and in LEFT_OVER the energy of a neutral one that was lost.
 
@@ -185,7 +185,7 @@ def measure_soft(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> Non
         y[row.LEFT_OVER + i] += (1.0 - found) * inside * leaves * e
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def measure_pion(y: Floats, keys: Keys, kind: int, detector: Detector) -> None:
     """The pion of a D**: EXTRA if it is charged and seen; if it is neutral it may leave its energy in LEFT_OVER."""
     for i in range(LANES):
@@ -210,7 +210,7 @@ def measure_pion(y: Floats, keys: Keys, kind: int, detector: Detector) -> None:
             y[row.LEFT_OVER + i] += inside * leaves * y[row.LAB_PION_E + i]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def draw_random_soft(y: Floats, keys: Keys, charged_d: int, soft: SoftParticles) -> None:
     """RANDOM_*: a random soft candidate, by the charge that the tag asks for.
 

@@ -7,7 +7,7 @@ from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.streams import event_key
 
 from . import block as row
@@ -93,7 +93,7 @@ def event_recorder(
     return record
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _record(
     stream: np.uint64, first: int, events: int, table: ChannelTable, chain: Chain, detector: Detector,
     quantiles: Floats, scenario: Scenario, windows: Windows, cuts: Cuts, axes: Axes, flow: Integers,

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
+from semitau.core.compiled import inlined
 from semitau.core.elementary import normal_pair
 from semitau.core.streams import uniform
 
@@ -14,7 +14,7 @@ _TINY = 1e-300
 _LEAST_ENERGY_FACTOR = 0.05
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def in_track_acceptance(px: float, py: float, pz: float, tracks: Tracks) -> float:
     """1.0 if transverse momentum and polar angle are within the limits, else 0.0."""
     across = px * px + py * py
@@ -25,7 +25,7 @@ def in_track_acceptance(px: float, py: float, pz: float, tracks: Tracks) -> floa
     return 1.0 if inside else 0.0
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def in_photon_acceptance(px: float, py: float, pz: float, photons: Photons) -> float:
     """1.0 if the polar angle is within the limits, else 0.0."""
     p = np.sqrt(px * px + py * py + pz * pz)
@@ -33,7 +33,7 @@ def in_photon_acceptance(px: float, py: float, pz: float, photons: Photons) -> f
     return 1.0 if inside else 0.0
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def polar_cosine_inside(px: float, py: float, pz: float, tracks: Tracks) -> float:
     """1.0 if the polar angle is within the limits of the tracks, whatever the transverse momentum, else 0.0."""
     p = np.sqrt(px * px + py * py + pz * pz)
@@ -41,7 +41,7 @@ def polar_cosine_inside(px: float, py: float, pz: float, tracks: Tracks) -> floa
     return 1.0 if inside else 0.0
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def smeared_track(
     px: float, py: float, pz: float, key: np.uint64, draw: np.uint64, tracks: Tracks
 ) -> tuple[float, float, float]:
@@ -64,7 +64,7 @@ def smeared_track(
     return turned * (px - azimuth * py), turned * (py + azimuth * px), factor * across * (pz - polar * across) / level
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def smeared_photon(
     px: float, py: float, pz: float, e: float, key: np.uint64, draw: np.uint64, photons: Photons
 ) -> tuple[float, float, float]:

@@ -1,0 +1,82 @@
+"""The cache of compiled code: a change anywhere in what a kernel imports makes it stale. Nothing is statistical."""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+from pathlib import Path
+
+import pytest
+from semitau.core import compiled
+
+FILES = {
+    "rows.py": "FIRST = {first}\n",
+    "lane.py": "from semitau.core.compiled import inlined\n\n\n@inlined\ndef shifted(x):\n    return x + {shift}\n",
+    "loop.py": "from semitau.core.compiled import kernel\n\nfrom . import rows as row\nfrom .lane import shifted\n\n\n"
+    "@kernel\ndef total(n):\n    sum = row.FIRST\n    for i in range(n):\n        sum += shifted(i)\n    return sum\n",
+}
+PROGRAM = "from made.loop import total; print(total(3), len(total.stats.cache_hits))"
+
+
+def write(folder: Path, first: int, shift: int) -> None:
+    (folder / "made").mkdir(exist_ok=True)
+    (folder / "made" / "__init__.py").write_text("")
+    for name, text in FILES.items():
+        path = folder / "made" / name
+        text = text.format(first=first, shift=shift)
+        if not path.exists() or path.read_text() != text:
+            path.write_text(text)
+
+
+def run(folder: Path) -> list[int]:
+    """Value of the kernel, and how many of its signatures came from the cache, in a fresh interpreter."""
+    done = subprocess.run([sys.executable, "-c", PROGRAM], cwd=folder, capture_output=True, text=True, check=True)
+    return [int(word) for word in done.stdout.split()]
+
+
+def test_changes_of_imported_files_are_seen(tmp_path: Path) -> None:
+    """numba alone would answer 6 each time: the file of the kernel itself never changes."""
+    write(tmp_path, first=0, shift=1)
+    assert run(tmp_path) == [6, 0]
+    assert run(tmp_path) == [6, 1]
+    write(tmp_path, first=0, shift=2)
+    assert run(tmp_path) == [9, 0]
+    write(tmp_path, first=100, shift=2)
+    assert run(tmp_path) == [109, 0]
+    assert run(tmp_path) == [109, 1]
+
+
+@pytest.mark.parametrize("change", ["rows.py", "lane.py", "loop.py"])
+def test_digest_covers_all_that_is_imported(tmp_path: Path, change: str) -> None:
+    write(tmp_path, first=0, shift=1)
+    loop, other = tmp_path / "made" / "loop.py", tmp_path / "made" / "other.py"
+    other.write_text("nothing to do with it\n")
+    before = compiled.source_digest(str(loop))
+    for cached in (compiled.source_digest, compiled._contents, compiled._imported):
+        cached.cache_clear()
+    other.write_text("still nothing\n")
+    assert compiled.source_digest(str(loop)) == before
+    for cached in (compiled.source_digest, compiled._contents, compiled._imported):
+        cached.cache_clear()
+    path = tmp_path / "made" / change
+    path.write_text(path.read_text() + "\n# changed\n")
+    assert compiled.source_digest(str(loop)) != before
+
+
+def test_digest_crosses_packages() -> None:
+    """A kernel of the response depends on the random streams in core and on the rows of the block."""
+    from semitau.gen import measuring
+
+    files = {path.name for path in _closure(Path(measuring.__file__))}
+    assert {"measuring.py", "streams.py", "elementary.py", "block.py", "constants.py", "response_draws.py"} <= files
+    assert "build.py" not in files
+
+
+def _closure(path: Path) -> set[Path]:
+    found, waiting = set(), [path]
+    while waiting:
+        here = waiting.pop()
+        if here not in found:
+            found.add(here)
+            waiting += compiled._imported(here)
+    return found
