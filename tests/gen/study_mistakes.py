@@ -76,6 +76,22 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         'charm = "D*+"',
         'category[2].charm: must be a list (got "D*+"). Write ["D*+"].',
     ),
+    "one table for a list of tables": (
+        '[[variation]]\nname = "R0"\nkind = "form_factor"\nset = "Dst"\nparameter = "R0(1)"\n\n[[variation]]',
+        "[variation]",
+        (
+            'variation: must be a list (got { name = "muon_id", kind = "lepton_identification", lepton = "mu", '
+            "relative ...). Write [[variation]] instead of [variation]."
+        ),
+    ),
+    "list of tables for one table": (
+        "[selection]\np_lepton",
+        "[[selection]]\np_lepton",
+        (
+            'selection: must be a table (got [{ p_lepton = { min = "300 MeV" }, q2 = { min = 4.0 } }]). '
+            "Write [selection] instead of [[selection]]."
+        ),
+    ),
     "number for a table": ("q2 = { min = 4.0 }", "q2 = 4.0", "selection.q2: must be a table (got 4.0)"),
     "hadron collider": (
         '"lepton-collider"',

@@ -71,9 +71,19 @@ def conflict(model: type[BaseModel], data: object, error: ErrorDetails) -> Confl
         return _length(place, value, context)
     if kind in _LIMITS:
         return Conflict(place, _LIMITS[kind][0].format(**context), shown(value))
+    return Conflict(place, _TYPES.get(kind, error["msg"]), shown(value), remedy=_other_brackets(place, value, kind))
+
+
+def _other_brackets(place: Place, value: object, kind: str) -> str:
+    """Advice where a list stands for a single thing, or the other way round."""
+    header = ".".join(str(part) for part in place if isinstance(part, str))
     if kind == "tuple_type" and isinstance(value, str):
-        return Conflict(place, "must be a list", shown(value), remedy=f"Write [{shown(value)}].")
-    return Conflict(place, _TYPES.get(kind, error["msg"]), shown(value))
+        return f"Write [{shown(value)}]."
+    if kind == "tuple_type" and isinstance(value, Mapping):
+        return f"Write [[{header}]] instead of [{header}]."
+    if _TYPES.get(kind) == "must be a table" and isinstance(value, list) and value and isinstance(value[0], Mapping):
+        return f"Write [{header}] instead of [[{header}]]."
+    return ""
 
 
 def _missing(place: Place, table: Any) -> Conflict:

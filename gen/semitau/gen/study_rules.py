@@ -42,7 +42,7 @@ def shown(value: object) -> str:
         text = "[" + ", ".join(map(shown, value)) + "]"
     else:
         text = str(value)
-    return text if len(text) <= 80 else text[:77] + "..."
+    return text if len(text) <= 80 else text[:77].rstrip(" =,") + " ..."
 
 
 def suggestion(given: object, known: Iterable[str]) -> str:
