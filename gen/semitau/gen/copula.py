@@ -10,7 +10,7 @@ import math
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 from semitau.core.elementary import normal_pair
 from semitau.core.streams import event_key, uniform
 
@@ -41,7 +41,7 @@ def correlated_uniforms(
     return out
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def normal_distribution(z: float) -> float:
     """Chance that a standard normal number is below z; absolute error below 2e-11, 0 and 1 beyond ±9."""
     position = (min(max(z, -_REACH), _REACH) + _REACH) * _STEPS
@@ -53,7 +53,7 @@ def normal_distribution(z: float) -> float:
     return low + t * (bend + (1.0 - t) * (left * (1.0 - t) + right * t))  # type: ignore[no-any-return]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _fill(stream: np.uint64, first_event: np.uint64, draws: npt.NDArray[np.uint64], root: Floats, out: Floats) -> None:
     count, n = out.shape
     normals = np.empty((count, _LANES))

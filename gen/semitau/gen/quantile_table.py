@@ -11,7 +11,7 @@ from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 
 Floats = npt.NDArray[np.float64]
 
@@ -111,7 +111,7 @@ def _guide(cumulative: Floats) -> npt.NDArray[np.int64]:
     return np.clip(first, 0, steps - 1).astype(np.int64)
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _interval(cumulative: Floats, guide: npt.NDArray[np.int64], u: float) -> int:
     k = guide[np.int64(u * guide.shape[0])]
     while cumulative[k + 1] <= u:
@@ -119,7 +119,7 @@ def _interval(cumulative: Floats, guide: npt.NDArray[np.int64], u: float) -> int
     return k  # type: ignore[no-any-return]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _fill(
     nodes: Floats, cumulative: Floats, left: Floats, guide: npt.NDArray[np.int64], u: Floats, out: Floats
 ) -> None:
@@ -135,7 +135,7 @@ def _fill(
         out[i] = nodes[k] + (nodes[k + 1] - nodes[k]) * min(t, 1.0)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _find(cumulative: Floats, guide: npt.NDArray[np.int64], u: Floats, out: npt.NDArray[np.int64]) -> None:
     for i in range(u.shape[0]):
         out[i] = _interval(cumulative, guide, min(u[i], _LAST))
