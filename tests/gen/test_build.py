@@ -214,12 +214,13 @@ def test_soft_efficiency_weights_are_events_of_the_other_efficiency(sign: int) -
         expect_alike(whole[:, 0], events, anew[:, 0], events)
 
 
-@pytest.mark.parametrize(("name", "change"), [("tag_width", 0.2), ("scale", 0.01)])
+@pytest.mark.parametrize(("name", "change"), [("tag_width", 0.8), ("scale", 0.01)])
 def test_shifted_scenarios_are_other_detectors(name: str, change: float) -> None:
     """Tag: a detector with the other widths, independent events. Either: plus and minus move bins oppositely.
 
     What the momentum scale does to single events is in test_reconstruction.py."""
-    made, events = seeded(), 200_000
+    kind = "tag_resolution" if name == "tag_width" else "momentum_scale"
+    made, events = seeded(variation=[{"name": name, "kind": kind, "relative": change}]), 200_000
     chain = channel("B+", "D", "mu")
     bench, chosen = make_bench(made, variations=True), one_channel(made, chain)
     whole = histogram(bench, chosen, events, "drawn")

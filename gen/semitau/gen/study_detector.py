@@ -101,7 +101,7 @@ class Tag(Table):
 
     efficiency: PerParent = Field(
         default=PerParent.model_validate({"B+": 0.0035, "B0": 0.0022}),
-        description="chance that a pair has a tag, by B species",
+        description="chance that a B is reconstructed as a tag, by B species",
     )
     momentum_resolution: PositiveEnergy = Field(
         default=0.022, description="each component of the tag momentum, centre-of-mass frame, right tags"
