@@ -7,6 +7,7 @@ read with linear interpolation. A common factor drops out of every angular densi
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
@@ -96,7 +97,7 @@ def channel_table(channel: Channel) -> ChannelTable:
         visible_span=energy_high - energy_low,
         q2_table=q2_table(decay),
         amplitudes=complex_columns(amplitudes) if needs_complex(amplitudes) else real_columns(amplitudes),
-        visible_table=interval_table(lambda s: energy_density(visible_mass, s), VISIBLE_INTERVALS),
+        visible_table=visible_table(visible_mass),
     )
 
 
@@ -121,6 +122,7 @@ def q2_of_position(decay: Decay, t: Floats) -> Floats:
     return low + (high - low) * t * t * (3.0 - 2.0 * t)
 
 
+@lru_cache(maxsize=64)  # chains of one decay follow each other
 def regular_amplitudes(decay: Decay) -> HelicityAmplitudes:
     """Amplitudes times sqrt(q²) at the nodes, with a copy of the last node behind it; shape (514,) each."""
     t = np.minimum(np.arange(Q2_INTERVALS + 2) / Q2_INTERVALS, 1.0)
@@ -148,6 +150,7 @@ def complex_columns(amplitudes: HelicityAmplitudes) -> Floats:
     return np.ascontiguousarray(np.stack(values, axis=-1)).view(np.float64)
 
 
+@lru_cache(maxsize=64)
 def q2_table(decay: Decay) -> Floats:
     """(512, 3) table for `draw_position` of d Gamma / dt."""
 
@@ -165,3 +168,9 @@ def q2_table(decay: Decay) -> Floats:
         return result
 
     return interval_table(density, Q2_INTERVALS)
+
+
+@lru_cache(maxsize=8)
+def visible_table(mass: float) -> Floats:
+    """(256, 3) table for `draw_position` of the spectrum of a tau daughter of this mass."""
+    return interval_table(lambda s: energy_density(mass, s), VISIBLE_INTERVALS)

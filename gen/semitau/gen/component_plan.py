@@ -81,10 +81,11 @@ def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
         name: family_shares([(c, e) for c, e, other in zip(chains, expected, names, strict=True) if other == name])
         for name in dict.fromkeys(names)
     }
+    leptons = [category.lepton for category in study.categories]
     plans = []
     for name, chain, n_expected, n in zip(names, chains, expected, events, strict=True):
         if n_expected > 0.0:
-            variations = channel_variations(study, mode.name, chain, shares[name])
+            variations = channel_variations(study, mode.name, chain, shares[name], leptons)
             plans.append(ChannelPlan(name, mode.name, chain, float(n_expected), int(n), variations))
     return plans
 

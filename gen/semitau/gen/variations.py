@@ -7,7 +7,7 @@ random numbers. Plus and minus sides are at one standard deviation.
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -68,16 +68,16 @@ def scenarios(study: StudyConfig) -> dict[Side, Scenario]:
 
 
 def channel_variations(
-    study: StudyConfig, mode: str, channel: Channel, shares: Mapping[str, float]
+    study: StudyConfig, mode: str, channel: Channel, shares: Mapping[str, float], leptons: Sequence[str]
 ) -> ChannelVariations:
     """Variations of one channel of a mode.
 
-    shares : of the component's expected decays, by charm family; they sum to 1.
+    shares : of the component's expected decays, by charm family; they sum to 1. leptons : of the study's categories.
     """
     decays: dict[Side, Decay] = {}
     soft: dict[Side, float] = {}
     factors: dict[Side, Floats] = {}
-    leptons = np.array([category.lepton for category in study.categories])
+    is_lepton = {name: np.array([lepton == name for lepton in leptons]) for name in ("e", "mu")}
     for variation in study.variations:
         for sign in SIGNS:
             side = variation.name, sign
@@ -95,7 +95,7 @@ def channel_variations(
                     rest = (1.0 - share * change) / (1.0 - share)
                     factors[side] = np.full(len(leptons), change if channel.family == variation.charm else rest)
             elif isinstance(variation, LeptonIdentificationEfficiency) and channel.seen_lepton == variation.lepton:
-                factors[side] = np.where(leptons == variation.lepton, change, 1.0)
+                factors[side] = np.where(is_lepton[variation.lepton], change, 1.0)
     return ChannelVariations(decays, soft, factors)
 
 
