@@ -1,0 +1,141 @@
+"""Fits per second, against general-purpose minimisers with numerical derivatives on the same compiled likelihood."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Callable
+from dataclasses import dataclass
+from functools import partial
+from statistics import median
+
+import numpy as np
+from numpy.typing import NDArray
+from semitau.core.templates import TemplateSet
+from semitau.fit import Data, Model, maximise, run_toys
+from semitau.fit.algebra import inverse_diagonal
+from semitau.fit.likelihood import VALUE, evaluate
+from semitau.fit.newton import minimise, scratch
+
+from .figures import Figure
+from .timing import interleaved
+
+Floats = NDArray[np.float64]
+FITS_EACH = 20
+"""Our fits of each data set: one alone is too short for the clock."""
+
+
+class DataSet:
+    """One data set to fit, for every minimiser; all begin at the injected values."""
+
+    def __init__(self, model: Model, data: Data, errors: Floats) -> None:
+        self.model, self.data, self.errors = model, data, errors
+        self.counts, self.gammas = model.lanes(data.counts, 0.0), model.lanes(data.gamma_centres, 1.0)
+        self.scratch = scratch(model.layout.arrays)
+        self.calls = 0
+
+    def value(self, scaled: Floats) -> float:
+        """-ln L; free parameters in units of their expected errors, which is as kind as it gets to a minimiser."""
+        self.calls += 1
+        x, s = self.model.start.copy(), self.scratch
+        x[self.model.free] += np.asarray(scaled) * self.errors
+        arrays, centres = self.model.layout.arrays, self.data.centres
+        return float(evaluate(arrays, x, self.counts, self.gammas, centres, VALUE, s.gradient, s.hessian, s.work))
+
+    def ours(self) -> float:
+        """Minimum and errors, as the loop over toys gets them."""
+        x, s, free = self.model.start.copy(), self.scratch, self.model.free
+        ending = minimise(self.model.layout.arrays, free, self.counts, self.gammas, self.data.centres, x, s)
+        inverse_diagonal(s.lower, s.scale, free.size, s.step, np.zeros(free.size))
+        return float(ending.value)
+
+    def door(self) -> float:
+        """The same through the public function: data checked, covariance, eigenvalues, goodness of fit."""
+        return maximise(self.model, self.data).minus_log_likelihood
+
+    def migrad(self) -> float:
+        """Minimum and errors of iminuit, to the same depth: distance below 1e-6 in -ln L."""
+        from iminuit import Minuit
+
+        minuit = Minuit(self.value, np.zeros(self.model.free.size))
+        minuit.errordef, minuit.tol = Minuit.LIKELIHOOD, 1e-3
+        minuit.errors[:] = 1.0
+        minuit.migrad().hesse()
+        return float(minuit.fval)
+
+    def bfgs(self) -> float:
+        """Minimum of scipy; its inverse Hessian is a rough one, so there are no errors."""
+        from scipy.optimize import minimize
+
+        return float(minimize(self.value, np.zeros(self.model.free.size), method="BFGS").fun)
+
+
+@dataclass(frozen=True)
+class Race:
+    """What the minimisers took: seconds of processor and value for each data set."""
+
+    seconds: dict[str, list[float]]
+    values: dict[str, list[float]]
+    calls: dict[str, list[int]]
+
+    def time(self, name: str) -> float:
+        return median(self.seconds[name])
+
+    def excess(self, name: str) -> float:
+        """Largest distance of a minimum to ours, in -ln L."""
+        return max(abs(a - b) for a, b in zip(self.values[name], self.values["ours"], strict=True))
+
+
+def race(model: Model, data_sets: int) -> Race:
+    """All minimisers fit the same Poisson data sets, in turns."""
+    errors = maximise(model, model.expected_data()).errors[model.free]
+    random = np.random.default_rng(1)
+    kinds: dict[str, tuple[Callable[[DataSet], float], int]] = {
+        "ours": (DataSet.ours, FITS_EACH),
+        "door": (DataSet.door, FITS_EACH),
+        "migrad": (DataSet.migrad, 1),
+        "bfgs": (DataSet.bfgs, 1),
+    }
+    found = Race({}, {}, {})
+    for _ in range(data_sets):
+        data_set = DataSet(model, model.data(random.poisson(model.expected_counts())), errors)
+        for name, (fit, times) in kinds.items():
+            fit(data_set)  # compiled, and in the cache
+            data_set.calls = 0
+            start = time.process_time()
+            for _ in range(times):
+                value = fit(data_set)
+            found.seconds.setdefault(name, []).append((time.process_time() - start) / times)
+            found.values.setdefault(name, []).append(value)
+            found.calls.setdefault(name, []).append(data_set.calls)
+    return found
+
+
+def fit_figures(templates: TemplateSet, data_sets: int) -> list[Figure]:
+    """Fits per second of processor time, and what others take for the same."""
+    model = Model(templates)
+    found = race(model, data_sets)
+    ours = found.time("ours")
+    model_size = f"{len(model.free)} free parameters, {model.bins} bins; medians of {data_sets} Poisson data sets"
+
+    def note(name: str) -> str:
+        evaluations, seconds = median(found.calls[name]), found.time(name)
+        depth = f"minima within {found.excess(name):.0e} of ours in -ln L"
+        return f"{evaluations:.0f} evaluations of the same compiled likelihood, {1e3 * seconds:.1f} ms; {depth}"
+
+    return [
+        Figure("fits: minimum and errors, as toys do", 1 / ours, "/s/core", note=model_size),
+        Figure("fits through fit.maximise, with all checks", 1 / found.time("door"), "/s/core"),
+        Figure("  over MIGRAD and HESSE", found.time("migrad") / ours, "times", 200, "at least", note("migrad")),
+        Figure("  over BFGS, which gives no errors", found.time("bfgs") / ours, "times", note=note("bfgs")),
+    ]
+
+
+def toy_figures(templates: TemplateSet, number: int, repetitions: int) -> list[Figure]:
+    """Drawing and fitting toys, one and two workers in turns."""
+    model = Model(templates)
+    timings = interleaved({str(n): partial(run_toys, model, number, 1, n) for n in (1, 2)}, repetitions)
+    return [
+        Figure(f"{number} toys, two workers", timings["2"].wall, "s", 20),
+        Figure("  two workers over one", timings["1"].wall / timings["2"].wall, "times", 1.7, "at least"),
+        Figure("  toys drawn and fitted", number / timings["1"].cpu, "/s/core"),
+    ]
