@@ -279,7 +279,7 @@ def test_found_events_are_packed_in_order() -> None:
 def test_track_resolution() -> None:
     """Pulls of transverse momentum, polar angle and azimuth are standard normal numbers, independent of each other."""
     generator, pulls = np.random.default_rng(SEED), []
-    for k in range(BLOCKS):
+    for k in range(5 * BLOCKS):
         x = at_rest()
         p = isotropic(generator, generator.uniform(0.2, 3.0, LANES), 0.0)
         p = np.where(np.hypot(p[0], p[1]) / p[3] > 0.2, p, np.array([[0.8], [0.6], [1.0], [np.sqrt(2.0)]]))
@@ -293,8 +293,9 @@ def test_track_resolution() -> None:
         pulls.append([(np.hypot(q[0], q[1]) / pt - 1.0) / sigma, polar / 0.0012, turn / 0.0012])
     for pull in np.concatenate(pulls, axis=1):
         assert stats.kstest(pull, stats.norm.cdf).pvalue > UNLIKELY
+        expect_width(pull, 1.0)
     correlation = np.corrcoef(np.concatenate(pulls, axis=1)) - np.eye(3)
-    assert np.abs(correlation).max() < SIGMAS / np.sqrt(BLOCKS * LANES)
+    assert np.abs(correlation).max() < SIGMAS / np.sqrt(5 * BLOCKS * LANES)
 
 
 def soft_block(generator: np.random.Generator, mass: float) -> tuple[np.ndarray, np.ndarray]:
