@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import sys
 from collections.abc import Sequence
 from difflib import get_close_matches
@@ -81,5 +82,8 @@ def group() -> None:
 
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run `semitau` with `arguments` (default: those of the process) and return its exit status."""
+    # Before numpy is loaded. Our own threads use the cores, and the matrices of a fit are small: eigenvalues of 30 x 30
+    # take 20 times longer when the threads of the linear algebra wait for a busy core.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     given = list(sys.argv[1:] if arguments is None else arguments)
     return exit_status(lambda: group.main(given, prog_name="semitau", standalone_mode=False))
