@@ -419,7 +419,7 @@ def test_pion_of_an_excited_charm() -> None:
 @pytest.mark.parametrize("charged", [0, 1])
 def test_tag(charged: int) -> None:
     """12% wrong tags, 30% of them with the other charge; each component of the momentum with its width."""
-    wrong, swapped, shifts = [], [], []
+    wrong, swapped, shifts, energies = [], [], [], []
     for k in range(BLOCKS):
         x = new_block()
         draw_pair(x, keys(SEED, k), BEAMS, MASS["B+"])
@@ -427,6 +427,7 @@ def test_tag(charged: int) -> None:
         wrong.append(values(x, row.TAG_WRONG).copy())
         swapped.append(values(x, row.TAG_CHARGED) != charged)
         shifts.append(values(x, row.TAG_SHIFT_X, row.TAG_SHIFT_Y, row.TAG_SHIFT_Z))
+        energies.append(values(x, row.BOOST_GAMMA).copy())
         momentum = values(x, row.TAG_PX, row.TAG_PY, row.TAG_PZ)
         expected = MASS["B+"] ** 2 * (values(x, row.BOOST_GAMMA) ** 2 - 1.0)
         np.testing.assert_allclose((momentum**2).sum(axis=0), expected, rtol=1e-9)
@@ -437,6 +438,9 @@ def test_tag(charged: int) -> None:
     for component in shift:
         assert stats.kstest(component[~bad], stats.norm(0, 0.022).cdf).pvalue > UNLIKELY
         assert stats.kstest(component[bad], stats.norm(0, 0.16).cdf).pvalue > UNLIKELY
+    # The components do not know each other, nor the collision energy that shares a pair of numbers with one of them.
+    together = np.concatenate([shift, [np.concatenate(energies)]])[:, ~bad]
+    assert np.abs(np.corrcoef(together) - np.eye(4)).max() < SIGMAS / np.sqrt((~bad).sum())
 
 
 def test_residual_energy() -> None:
