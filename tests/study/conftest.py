@@ -54,8 +54,12 @@ MM2 = Observable("mm2", "missing mass squared", "GeV²", (-2, -0.5, -0.2, 0, 0.2
 EL = Observable("el", "lepton energy in the B frame", "GeV", (0.2, 0.6, 0.9, 1.2, 1.5, 1.8, 2.5))
 CATEGORIES = tuple(
     Category(f"{name}_{lepton}", f"{charm} {letter}", (MM2, EL))
-    for name, charm in (("D0", "D⁰"), ("Dp", "D⁺"), ("Dst0", "D*⁰"), ("Dstp", "D*⁺"))
-    for lepton, letter in (("e", "e"), ("mu", "μ"))
+    for name, charm, lepton, letter in (
+        ("D0", "D⁰", "e", "e"),
+        ("Dp", "D⁺", "mu", "μ"),
+        ("Dst0", "D*⁰", "e", "e"),
+        ("Dstp", "D*⁺", "mu", "μ"),
+    )
 )
 PARAMETERS = (
     ScaleParameter("R_D", "R(D)", "ratio", 0.299),
@@ -117,7 +121,7 @@ def _template(component: str, starred: bool, neutral_share: float) -> Template:
 
 
 def small_templates(data_seed: int | None = SEED) -> TemplateSet:
-    """Eight categories, seven components; data from a Poisson draw, or none."""
+    """Four categories, seven components; data from a Poisson draw, or none."""
     templates = {
         (category.name, component.name): _template(
             component.name, category.name.startswith("Dst"), 1.0 if "0" in category.name else 0.6

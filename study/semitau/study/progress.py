@@ -66,9 +66,11 @@ def sparse_lines(console: Console, clock: Callable[[], float] = time.monotonic) 
                 console.print(f"{label}: done in {duration(now - begin)}", highlight=False)
         elif now - spoken.setdefault(label, begin) >= BETWEEN_LINES:
             spoken[label] = now
-            if total and done > already:
-                left = (now - begin) * (total - done) / (done - already)
-                console.print(f"{label}: {100 * done // total} %, about {duration(left)} left", highlight=False)
+            if total:
+                # The first steps may compile code: an estimate from less than a twentieth would frighten.
+                told = done - already > total / 20
+                left = f", about {duration((now - begin) * (total - done) / (done - already))} left" if told else ""
+                console.print(f"{label}: {100 * done // total} %{left}", highlight=False)
             else:
                 console.print(f"{label}: {done} done", highlight=False)
 

@@ -10,7 +10,8 @@ from ..results import Budget
 from .sheet import Sheet
 from .style import QUIET, RULE, ratio_colour
 
-ROW = 0.42
+BAR, BETWEEN = 0.165, 0.1
+"""Inches: thickness of a bar, and the gap between two sources."""
 
 
 def budget_bars(budgets: Sequence[Budget], values: Mapping[str, float], labels: Mapping[str, str]) -> Sheet:
@@ -27,10 +28,11 @@ def budget_bars(budgets: Sequence[Budget], values: Mapping[str, float], labels: 
     rows = ["total", *sources]
     totals = {budget.ratio: 100 * budget.total / abs(values[budget.ratio]) for budget in budgets}
     margin = 0.4 + 0.068 * max(len(named.get(row, "total")) for row in rows)
-    height = ROW * len(rows)
+    row = BAR * len(budgets) + BETWEEN
+    height = row * len(rows)
     sheet = Sheet(margin + 5.6, height + 1.2, "Uncertainty by source", "in per cent of the fitted ratio")
     axes = sheet.axes(margin, 0.5, 5.0, height)
-    thickness = 0.78 / len(budgets)
+    thickness = BAR / row
     for number, budget in enumerate(budgets):
         lengths = np.array([totals[budget.ratio], *(share[budget.ratio].get(source, 0.0) for source in sources)])
         offsets = np.arange(len(rows)) + (number - (len(budgets) - 1) / 2) * thickness

@@ -10,10 +10,8 @@ from matplotlib import rc_context
 from matplotlib.axes import Axes
 from numpy.typing import NDArray
 
-from .sheet import Sheet
+from .sheet import Panels, Sheet
 from .style import INK, QUIET, RC, RULE, ratio_colour
-
-PANEL, GAP, LEFT = 3.3, 0.85, 0.75
 
 
 @dataclass(frozen=True)
@@ -45,17 +43,17 @@ class Plane:
 
 def likelihood(curves: Sequence[Curve], plane: Plane | None) -> Sheet:
     """A sheet with one panel a curve, and the region at the right."""
-    panels = len(curves) + (plane is not None)
-    width = LEFT + panels * PANEL + (panels - 1) * GAP + 0.3
+    count = len(curves) + (plane is not None)
+    panels = Panels(count=count, columns=3, width=3.2, height=2.9, left=0.85, foot=0.5, head=0.2)
     with rc_context(RC):
-        sheet = Sheet(width, 4.1, "Likelihood", "all other parameters fitted at each point")
+        sheet = Sheet(*panels.sheet_size, "Likelihood", "all other parameters fitted at each point")
         for number, curve in enumerate(curves):
-            axes = sheet.axes(LEFT + number * (PANEL + GAP), 0.5, PANEL, 2.9)
+            axes = sheet.axes(*panels.corner(number), panels.width, panels.height)
             _draw_curve(axes, curve, ratio_colour(number))
             if number == 0:
                 axes.set_ylabel("−2 ln L above the minimum")
         if plane is not None:
-            _draw_plane(sheet.axes(LEFT + len(curves) * (PANEL + GAP), 0.5, PANEL, 2.9), plane)
+            _draw_plane(sheet.axes(*panels.corner(len(curves)), panels.width, panels.height), plane)
     return sheet
 
 

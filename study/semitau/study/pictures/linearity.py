@@ -9,28 +9,27 @@ from matplotlib.axes import Axes
 
 from ..numbers import counted, with_error
 from ..results import Linearity
-from .sheet import Sheet
+from .sheet import Panels, Sheet
 from .style import BAND, INK, QUIET, ratio_colour
 
-PANEL, GAP, LEFT = 3.7, 0.85, 0.75
+LOWER, BETWEEN = 0.85, 0.12
 
 
 def linearity(ratios: Sequence[Linearity]) -> Sheet:
     """A sheet with one panel a ratio: means above, bias in units of the fit error below."""
-    count = len(ratios)
+    panels = Panels(count=len(ratios), columns=2, width=3.65, height=3.27, left=0.8, foot=0.5, head=0.5)
     toys = ratios[0].points[0].toys + ratios[0].points[0].failures
-    note = f"{counted(toys)} toys at each point"
-    sheet = Sheet(LEFT + count * PANEL + (count - 1) * GAP + 0.25, 4.8, "Linearity", note)
+    sheet = Sheet(*panels.sheet_size, "Linearity", f"{counted(toys)} toys at each point")
     for number, ratio in enumerate(ratios):
-        left = LEFT + number * (PANEL + GAP)
-        lower = sheet.axes(left, 0.5, PANEL, 0.85)
-        upper = sheet.axes(left, 1.47, PANEL, 2.3, sharex=lower)
+        left, bottom = panels.corner(number)
+        lower = sheet.axes(left, bottom, panels.width, LOWER)
+        raised = LOWER + BETWEEN
+        upper = sheet.axes(left, bottom + raised, panels.width, panels.height - raised, sharex=lower)
         _draw_means(upper, ratio, ratio_colour(number))
         _draw_bias(lower, ratio, ratio_colour(number))
-        if number == 0:
-            lower.set_ylabel("bias / σ")
-            lower.yaxis.set_label_coords(-0.135, 0.5)
-        upper.yaxis.set_label_coords(-0.135, 0.5)
+        lower.set_ylabel("bias / σ")
+        for axes in (lower, upper):
+            axes.yaxis.set_label_coords(-0.15, 0.5)
     return sheet
 
 

@@ -16,6 +16,7 @@ from semitau.core.whole_files import write_whole
 from .style import QUIET, RC
 
 PIXELS_PER_INCH = 160
+HEADING, RIGHT_MARGIN = 0.5, 0.25
 
 
 @dataclass(frozen=True)
@@ -26,6 +27,39 @@ class Picture:
     title: str
     caption: str
     svg: str
+
+
+@dataclass(frozen=True)
+class Panels:
+    """Places of equal panels in rows of at most `columns`, all in inches.
+
+    width, height : of a panel. left, foot : room at its left and below it for labels. head : room above it.
+    """
+
+    count: int
+    columns: int
+    width: float
+    height: float
+    left: float
+    foot: float
+    head: float
+
+    @property
+    def sheet_size(self) -> tuple[float, float]:
+        """Width and height of the sheet, with a heading and a margin at the right."""
+        rows = -(-self.count // self.columns)
+        across = min(self.count, self.columns)
+        return (
+            across * (self.left + self.width) + RIGHT_MARGIN,
+            rows * (self.foot + self.height + self.head) + HEADING,
+        )
+
+    def corner(self, number: int) -> tuple[float, float]:
+        """Lower left corner of the panel `number`; the first one is at the upper left."""
+        row, column = divmod(number, self.columns)
+        height = self.sheet_size[1] - HEADING
+        pitch = self.foot + self.height + self.head
+        return self.left + column * (self.left + self.width), height - (row + 1) * pitch + self.foot
 
 
 class Sheet:

@@ -9,23 +9,20 @@ from matplotlib.axes import Axes
 
 from ..numbers import counted, with_error
 from ..results import ToyRatio, Toys
-from .sheet import Sheet
+from .sheet import Panels, Sheet
 from .style import INK, QUIET, ratio_colour
-
-PANEL, GAP, LEFT = 3.7, 0.75, 0.7
 
 
 def toy_pulls(toys: Toys) -> Sheet:
     """A sheet with one panel a ratio."""
-    count = len(toys.ratios)
+    panels = Panels(count=len(toys.ratios), columns=2, width=3.7, height=2.5, left=0.72, foot=0.5, head=0.68)
     valid = toys.number - toys.failures
     note = f"{counted(valid)} toys fitted, {counted(toys.failures)} failed"
-    sheet = Sheet(LEFT + count * PANEL + (count - 1) * GAP + 0.25, 4.15, "Pulls of the toys", note)
+    sheet = Sheet(*panels.sheet_size, "Pulls of the toys", note)
     for number, ratio in enumerate(toys.ratios):
-        axes = sheet.axes(LEFT + number * (PANEL + GAP), 0.5, PANEL, 2.5)
+        axes = sheet.axes(*panels.corner(number), panels.width, panels.height)
         _draw(axes, ratio, ratio_colour(number))
-        if number == 0:
-            axes.set_ylabel("toys per bin")
+        axes.set_ylabel("toys per bin")
     return sheet
 
 
