@@ -257,6 +257,10 @@ def test_charges_must_balance() -> None:
     _, seen = recorded(chain, bench(**wrong), 20_000)
     assert set(seen["category"]) == {category_code("D0", "mu")}
     assert abs(len(seen["mm2"]) - 0.2 * 20_000) < SIGMAS * np.sqrt(20_000 * 0.2 * 0.8)
+    # A slow pion that is found, but does not fit the tag, is a charged particle too many.
+    _, seen = recorded(chain, bench(**(wrong | {"detector__soft_pion": PERFECT["detector__soft_pion"]})), 20_000)
+    assert set(seen["category"]) == {category_code("D*+", "mu")}
+    assert abs(len(seen["mm2"]) - 0.8 * 20_000) < SIGMAS * np.sqrt(20_000 * 0.2 * 0.8)
 
 
 def test_a_charged_pion_left_over_vetoes() -> None:
