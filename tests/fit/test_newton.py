@@ -206,11 +206,16 @@ def test_fixed_parameters() -> None:
         assert result.error("R0") == 0.0
         assert result.correlation("R_D", "R_Dst") == 0.0
     np.testing.assert_array_equal(by_model.values, by_call.values)
-    free = maximise(Model(templates), n)
+
+
+def test_errors_with_fixed_parameters() -> None:
+    """Held at their fitted values, they leave the conditional covariance of a Gaussian (Schur complement)."""
+    model = Model(problems.small())
+    free = maximise(model, model.expected_data())
+    held = maximise(model, model.expected_data(), fixed=("R_D", "R0"))
     index = [i for i, name in enumerate(free.names) if name not in ("R_D", "R0")]
-    # Conditional covariance of a Gaussian (Schur complement) at the same point holds only to the curvature's change.
     precision = np.linalg.inv(free.covariance)[np.ix_(index, index)]
-    np.testing.assert_allclose(by_model.errors[index], np.sqrt(np.diag(np.linalg.inv(precision))), rtol=0.1)
+    np.testing.assert_allclose(held.covariance[np.ix_(index, index)], np.linalg.inv(precision), rtol=1e-6, atol=1e-12)
 
 
 def test_constraint_can_be_replaced() -> None:

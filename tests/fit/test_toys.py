@@ -4,6 +4,8 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
+from numba import njit
+from numpy.typing import NDArray
 from scipy.stats import binomtest, chisquare, kstest, norm, poisson
 from semitau.core.errors import InputError
 from semitau.core.streams import event_key, stream_key
@@ -18,6 +20,14 @@ from .test_newton import twins
 
 def key(stream: np.uint64, i: int) -> np.uint64:
     return np.uint64(event_key(stream, np.uint64(i)))
+
+
+@njit
+def many(mean: float, stream: np.uint64, n: int) -> NDArray[np.float64]:
+    out = np.empty(n)
+    for i in range(n):
+        out[i] = draw(mean, event_key(stream, np.uint64(i)), np.uint64(2))
+    return out
 
 
 @pytest.fixture(scope="module")
@@ -40,7 +50,7 @@ def test_same_bits_for_any_number_of_workers(model: Model) -> None:
 def test_poisson_numbers(mean: float) -> None:
     """χ² against scipy's probabilities; fails by chance once in 1e5 seeds."""
     stream = stream_key(problems.SEED, "poisson test")
-    numbers = np.array([draw(mean, key(stream, i), np.uint64(2)) for i in range(20000)])
+    numbers = many(mean, stream, 400_000)
     edges = np.unique(poisson.ppf(np.linspace(0.01, 0.99, 25), mean))  # every class, ends included, is well filled
     expected = np.diff(np.concatenate([[0.0], poisson.cdf(edges, mean), [1.0]])) * numbers.size
     observed = np.bincount(np.searchsorted(edges, numbers), minlength=edges.size + 1)
@@ -52,9 +62,9 @@ def test_poisson_far_out() -> None:
     """Means of 0 and a million: nothing, and the first two moments within five of their errors (1e-6)."""
     stream = stream_key(problems.SEED, "poisson test")
     assert draw(0.0, key(stream, 0), np.uint64(2)) == 0.0
-    numbers = np.array([draw(1e6, key(stream, i), np.uint64(2)) for i in range(5000)])
-    assert abs(numbers.mean() - 1e6) < 5 * 1e3 / np.sqrt(5000)
-    assert abs(numbers.var() / 1e6 - 1) < 5 * np.sqrt(2 / 5000)
+    numbers = many(1e6, stream, 100_000)
+    assert abs(numbers.mean() - 1e6) < 5 * 1e3 / np.sqrt(100_000)
+    assert abs(numbers.var() / 1e6 - 1) < 5 * np.sqrt(2 / 100_000)
 
 
 def test_log_factorial() -> None:
@@ -66,7 +76,7 @@ def test_log_factorial() -> None:
 
 
 def test_auxiliary_measurements_fluctuate(model: Model) -> None:
-    """Pooled over toys, all centres are normal with their widths. Each of three checks fails once in 1e5 seeds."""
+    """Pooled over toys, all centres are normal with their widths. Each of five checks fails once in 1e5 seeds."""
     arrays, truth = model.layout.arrays, model.values({"R_D": 0.4, "R0": 0.5})
     means = np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
     stream = stream_key(problems.SEED, "draw test")
@@ -82,6 +92,8 @@ def test_auxiliary_measurements_fluctuate(model: Model) -> None:
         np.testing.assert_array_equal(centre[~constrained], truth[~constrained])
     assert kstest(np.concatenate(gammas), norm.cdf).pvalue > 1e-5
     assert kstest(np.concatenate(centres), norm.cdf).pvalue > 1e-5
+    for pulls in (np.concatenate(gammas), np.concatenate(centres)):
+        assert abs(pulls.var() - 1) < 4.5 * np.sqrt(2 / pulls.size)
     assert abs(np.concatenate(counts).var() - 1) < 4.5 * np.sqrt(2.5 / np.concatenate(counts).size)
     assert len({tuple(row) for row in np.round(gammas, 9)}) == 400
 
