@@ -265,7 +265,7 @@ class Timing(Part):
 
     started: str = Field(description="Date and time, UTC, ISO 8601")
     stages: tuple[StageTime, ...] = Field(description="In order")
-    total: float = Field(ge=0, description="Seconds of wall-clock time")
+    total: float = Field(ge=0, description="Seconds of wall-clock time until results.json is written")
     workers: int = Field(description="Worker threads")
     peak_memory: float = Field(description="Largest resident memory, MB")
 

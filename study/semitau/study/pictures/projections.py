@@ -14,8 +14,11 @@ from ..results import ComponentInfo, Projection
 from .sheet import Sheet
 from .style import BAND, INK, PAPER, QUIET, RULE
 
-PANEL, GAP, LEFT, LEGEND = 3.0, 0.8, 0.76, 1.85
+GAP, LEFT, LEGEND = 0.8, 0.76, 1.85
 UPPER, LOWER, FOOT, HEAD = 2.35, 0.72, 0.5, 0.62
+LEGEND_ROWS = 0.45
+WIDE, NARROW = 3.0, 2.6
+"""Width of a panel: up to two stand beside the legend, three stand under it and are narrower, to be read in print."""
 
 
 def stacked_projections(
@@ -27,19 +30,23 @@ def stacked_projections(
     data_label: str,
 ) -> Sheet:
     """A sheet with one panel a projection (all of one category), and one legend for them all."""
-    width = LEFT + len(projections) * PANEL + (len(projections) - 1) * GAP + LEGEND
-    sheet = Sheet(width, FOOT + LOWER + 0.1 + UPPER + HEAD, heading, note)
+    count = len(projections)
+    beside = count <= 2
+    panel = WIDE if beside else NARROW
+    width = LEFT + count * panel + (count - 1) * GAP + (LEGEND if beside else 0.15)
+    height = FOOT + LOWER + 0.1 + UPPER + HEAD + (0 if beside else LEGEND_ROWS)
+    sheet = Sheet(width, height, heading, note)
     for number, projection in enumerate(projections):
-        left = LEFT + number * (PANEL + GAP)
-        lower = sheet.axes(left, FOOT, PANEL, LOWER)
-        upper = sheet.axes(left, FOOT + LOWER + 0.1, PANEL, UPPER, sharex=lower)
+        left = LEFT + number * (panel + GAP)
+        lower = sheet.axes(left, FOOT, panel, LOWER)
+        upper = sheet.axes(left, FOOT + LOWER + 0.1, panel, UPPER, sharex=lower)
         _draw_stack(upper, projection, colours)
         _draw_residuals(lower, projection)
         if number == 0:
             lower.set_ylabel("residual / σ")
-            lower.yaxis.set_label_coords(-0.175, 0.5)
-        upper.yaxis.set_label_coords(-0.175, 0.5)
-    _draw_legend(sheet, projections, components, colours, data_label)
+        for axes in (lower, upper):
+            axes.yaxis.set_label_coords(-0.53 / panel, 0.5)
+    _draw_legend(sheet, projections, components, colours, data_label, beside)
     return sheet
 
 
@@ -121,6 +128,7 @@ def _draw_legend(
     components: Sequence[ComponentInfo],
     colours: Mapping[str, str],
     data_label: str,
+    beside: bool,
 ) -> None:
     shown = {component.component for projection in projections for component in projection.components}
     data = Line2D([], [], color=INK, marker="o", markersize=3.5, linewidth=0.9)
@@ -131,13 +139,18 @@ def _draw_legend(
         for component in reversed(components)
         if component.name in shown
     ]
+    # To the right of the panels, or in two rows under the heading.
+    left = sheet.width - LEGEND + 0.12 if beside else LEFT
+    columns = 1 if beside else -(-len(entries) // 2)
     sheet.figure.legend(
         [handle for handle, _ in entries],
         [label for _, label in entries],
         loc="upper left",
-        bbox_to_anchor=((sheet.width - LEGEND + 0.12) / sheet.width, (sheet.height - HEAD + 0.08) / sheet.height),
+        bbox_to_anchor=(left / sheet.width, (sheet.height - HEAD + 0.08) / sheet.height),
+        ncols=columns,
         borderaxespad=0,
         handlelength=1.3,
         handleheight=0.9,
         labelspacing=0.55,
+        columnspacing=1.6,
     )
