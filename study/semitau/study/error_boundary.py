@@ -60,13 +60,6 @@ def exit_status(work: Callable[[], object]) -> int:
         return 1
 
 
-def show_warnings(problems: tuple[Problem, ...]) -> None:
-    """Print problems that do not stop the work, on stderr."""
-    for problem in problems:
-        click.secho("warning: ", nl=False, fg="yellow", bold=True, err=True)
-        click.echo(str(problem), err=True)
-
-
 def _tell(*problems: Problem) -> None:
     for problem in problems:
         click.secho("semitau: ", nl=False, fg="red", bold=True, err=True)
