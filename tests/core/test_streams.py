@@ -39,7 +39,7 @@ def test_array_equals_single_draws() -> None:
     stream = stream_key(SEED, "test")
     whole = uniforms(stream, 0, 1000, 7)
     np.testing.assert_array_equal(whole[300:400], uniforms(stream, 300, 100, 7))
-    single = [uniform(event_key(stream, np.uint64(event)), np.uint64(7)) for event in range(5)]
+    single = [uniform(np.uint64(event_key(stream, event)), 7) for event in range(5)]
     np.testing.assert_array_equal(whole[:5], single)
 
 

@@ -2,8 +2,7 @@
 
 The mathematical library's calls stop the compiler from vectorising a loop, and may round differently from machine to
 machine; these are plain arithmetic, so a loop over 256 lanes becomes SIMD code and gives the same bits everywhere
-(no fused or reordered arithmetic is asked for). `error_model="numpy"` is needed in helpers as well as in kernels: the
-default checks divisors for zero, and that branch stops vectorisation. Accuracy: a few units in the last place.
+(no fused or reordered arithmetic is asked for). Accuracy: a few units in the last place.
 
 Polynomials are truncated Taylor series on reduced arguments, long enough that the remainder is below 1e-17.
 """
@@ -13,7 +12,8 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from numba import njit
+
+from .compiled import inlined
 
 _HALF_PI = 0.5 * math.pi
 _LN2_HIGH = float.fromhex("0x1.62e42fefa0000p-1")  # ln 2 cut to 37 bits: exact when multiplied by an exponent
@@ -30,7 +30,7 @@ _ARTANH = tuple(1.0 / (2 * k + 1) for k in range(9, 0, -1))  # of (artanh s - s)
 _EXP = tuple(1.0 / math.factorial(k) for k in range(12, -1, -1))
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _polynomial(coefficients: tuple[float, ...], z: float) -> float:
     """Horner's scheme; unrolled by the compiler, since the coefficients are constants."""
     value = 0.0
@@ -39,7 +39,7 @@ def _polynomial(coefficients: tuple[float, ...], z: float) -> float:
     return value
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def sincos_turns(u: float) -> tuple[float, float]:
     """(sin 2πu, cos 2πu) for u in [0, 1]; absolute error below 3e-16."""
     quarter = np.floor(4.0 * u + 0.5)
@@ -55,7 +55,7 @@ def sincos_turns(u: float) -> tuple[float, float]:
     return sine, cosine
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def log(x: float) -> float:
     """Natural logarithm of a positive normal number; relative error below 3e-16."""
     bits = np.float64(x).view(np.int64)
@@ -67,10 +67,10 @@ def log(x: float) -> float:
     # ln m = 2 artanh s, |s| <= 0.1716; 2s = f - s f makes the leading term exact
     tail = 2.0 * s * z * _polynomial(_ARTANH, z)
     e = np.float64(exponent)
-    return e * _LN2_HIGH + (f + (e * _LN2_LOW + (tail - s * f)))
+    return e * _LN2_HIGH + (f + (e * _LN2_LOW + (tail - s * f)))  # type: ignore[no-any-return]
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def exp(x: float) -> float:
     """Exponential for -700 < x < 700 (clipped there); relative error below 5e-16."""
     x = -700.0 if x < -700.0 else x
@@ -78,10 +78,10 @@ def exp(x: float) -> float:
     k = np.floor(x * _LOG2_E + 0.5)
     r = (x - k * _LN2_HIGH) - k * _LN2_LOW  # |r| <= ln2/2
     scale = np.int64((np.int64(k) << _MANTISSA_BITS) + _ONE_BITS).view(np.float64)
-    return _polynomial(_EXP, r) * scale
+    return _polynomial(_EXP, r) * scale  # type: ignore[no-any-return]
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def normal_pair(u1: float, u2: float) -> tuple[float, float]:
     """Two independent standard normal numbers from two uniforms in [0, 1) (Box and Muller, 1958)."""
     radius = np.sqrt(-2.0 * log(1.0 - u1))

@@ -13,8 +13,8 @@ import hashlib
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
 
+from .compiled import inlined, kernel
 from .errors import InputError, Problem
 
 _MASK = (1 << 64) - 1
@@ -31,7 +31,7 @@ _TO_53_BITS = np.uint64(11)
 _2_TO_MINUS_53 = 2.0**-53
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def mix(z: np.uint64) -> np.uint64:
     """SplitMix64 finaliser: a bijection of 64-bit integers whose output bits look independent."""
     z = (z ^ (z >> _SHIFT_1)) * _FACTOR_1
@@ -39,22 +39,22 @@ def mix(z: np.uint64) -> np.uint64:
     return z ^ (z >> _SHIFT_3)
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def event_key(stream: np.uint64, event: np.uint64) -> np.uint64:
     """Key of one event of a stream; different events of one stream never share a key.
 
     The casts cost nothing and make plain whole numbers safe: int64 mixed with uint64 would become floating point.
     """
-    return mix(np.uint64(stream) + (np.uint64(event) + _ONE) * _STEP)
+    return mix(np.uint64(stream) + (np.uint64(event) + _ONE) * _STEP)  # type: ignore[no-any-return]
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def uniform(key: np.uint64, draw: np.uint64) -> float:
     """Uniform number in [0, 1) with 53 bits for an event key and a draw number."""
     return np.int64(mix(np.uint64(key) + (np.uint64(draw) + _ONE) * _STEP) >> _TO_53_BITS) * _2_TO_MINUS_53
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _fill_uniforms(stream: np.uint64, first_event: np.uint64, draw: np.uint64, out: npt.NDArray[np.float64]) -> None:
     for i in range(out.shape[0]):
         out[i] = uniform(event_key(stream, first_event + np.uint64(i)), draw)

@@ -10,7 +10,7 @@ from collections.abc import Callable
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined
 
 Floats = npt.NDArray[np.float64]
 
@@ -48,7 +48,7 @@ def alias_table(weights: Floats) -> Floats:
     return np.column_stack([stay, other])
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def draw_position(table: Floats, u_interval: float, u_inside: float, u_side: float) -> float:
     """A position between 0 and the number of intervals, from an `interval_table` and three uniforms."""
     scaled = u_interval * table.shape[0]

@@ -5,7 +5,7 @@ from __future__ import annotations
 import awkward as ak
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.constants import MASS
 from semitau.core.errors import InputError, Problem
 
@@ -121,7 +121,7 @@ def _densities(
     return result
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _fill_densities(values: Floats, amplitudes: npt.NDArray[np.complex128], result: Floats) -> None:
     for i in range(result.size):
         v, a = values[:, i], amplitudes[:, i]

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.elementary import sincos_turns
 from semitau.core.streams import event_key, uniform
 
@@ -30,7 +30,7 @@ _FIRST_DRAW = np.uint64(draw.NEUTRINO_FIRST)
 _ONE, _TWO, _THREE = np.uint64(1), np.uint64(2), np.uint64(3)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def fill_neutrinos(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     """Fill the NU rows above, directly after `draw_decays` with the same arguments (it reads its scratch rows)."""
     mass2 = table.lepton_mass**2
@@ -43,7 +43,7 @@ def fill_neutrinos(x: Floats, table: ChannelTable, stream: np.uint64, first_even
         _tau_neutrinos(x, table, stream, first_event)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _tau_neutrinos(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     mass = table.visible_mass
     for i in range(LANES):
@@ -64,7 +64,7 @@ def _tau_neutrinos(x: Floats, table: ChannelTable, stream: np.uint64, first_even
         x[NU_TAU_PX + i], x[NU_TAU_PY + i], x[NU_TAU_PZ + i], x[NU_TAU_E + i] = px, py, pz, e
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _pair(
     key: np.uint64, energy: float, lx: float, ly: float, lz: float, sx: float, sy: float, sz: float
 ) -> tuple[tuple[float, float, float, float], tuple[float, float, float, float]]:

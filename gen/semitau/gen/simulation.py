@@ -5,7 +5,7 @@ from __future__ import annotations
 import awkward as ak
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.constants import BRANCHING_FRACTION, MASS
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import stream_key, uniforms
@@ -132,7 +132,7 @@ def _uncharged(name: str) -> str:
     return " ".join(name.replace("-", "+").split())
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _collect(
     table: ChannelTable, stream: np.uint64, picks: Words, number: int, first_rows: Words, x: Floats, found: Floats
 ) -> None:

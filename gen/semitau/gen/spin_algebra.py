@@ -12,24 +12,24 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from numba import njit
+from semitau.core.compiled import inlined
 
 _ROOT_HALF = float(np.sqrt(0.5))
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def square(z: Any) -> float:
     """|z|² of a real or complex number."""
     return z.real * z.real + z.imag * z.imag  # type: ignore[no-any-return]
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def lepton_terms(x: float, jp: Any, jm: Any, j0: Any, jt: Any, s: Any, tp: Any, tm: Any, t0: Any) -> tuple[Any, ...]:
     """(a_+, a_-, a_0, b_+, b_-, b_0, t): without and with a flip of the lepton helicity; x = m_lepton / sqrt(q²)."""
     return jp + x * tp, jm + x * tm, j0 + x * t0, x * jp + tp, x * jm + tm, x * j0 + t0, x * jt + s
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def helicity_states(
     cos_theta: float, ap: Any, am: Any, a0: Any, bp: Any, bm: Any, b0: Any, t: Any
 ) -> tuple[Any, Any, Any, Any, Any, Any]:
@@ -46,7 +46,7 @@ def helicity_states(
     )
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def spin_density(
     incoherent: float,
     coherent: float,
@@ -79,7 +79,7 @@ def spin_density(
     return plus + minus, 2.0 * mixed.real, 2.0 * mixed.imag, plus - minus
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def chain_density(
     x: float,
     incoherent: float,
@@ -102,4 +102,4 @@ def chain_density(
     """
     states = helicity_states(cos_theta, *lepton_terms(x, *amplitudes))
     trace, px, py, pz = spin_density(incoherent, coherent, cos_v, cos_chi, sin_chi, *states)
-    return even * trace + (odd_x * px + odd_y * py + odd_z * pz)
+    return even * trace + (odd_x * px + odd_y * py + odd_z * pz)  # type: ignore[no-any-return]

@@ -11,7 +11,7 @@ from typing import Any
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined
 from semitau.core.constants import MASS
 
 Floats = npt.NDArray[np.float64]
@@ -24,7 +24,7 @@ def energy_range(mass: float) -> tuple[float, float]:
     return mass, (TAU_MASS**2 + mass**2) / (2.0 * TAU_MASS)
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def emission(energy: Any, mass: float) -> tuple[Any, Any, Any]:
     """(|l|, A, B) at an energy (GeV, number or array) of the charged lepton of this mass."""
     momentum = np.sqrt((energy - mass) * (energy + mass))

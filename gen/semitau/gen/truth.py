@@ -21,7 +21,7 @@ from typing import Any
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 from semitau.core.elementary import sincos_turns
 from semitau.core.streams import event_key, uniform
 
@@ -39,7 +39,7 @@ Floats = npt.NDArray[np.float64]
 _FIRST_AMPLITUDE = row.SCRATCH_6
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def draw_decays(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     """Fill the truth rows of a block with 256 decays of one chain, B at rest.
 
@@ -63,7 +63,7 @@ def draw_decays(x: Floats, table: ChannelTable, stream: np.uint64, first_event: 
     fill_momenta(x, table, stream, first_event)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _draw_intervals(x: Floats, stream: np.uint64, first_event: np.uint64) -> None:
     for i in range(LANES):
         key = event_key(stream, first_event + np.uint64(i))
@@ -75,7 +75,7 @@ def _draw_intervals(x: Floats, stream: np.uint64, first_event: np.uint64) -> Non
         x[row.SCRATCH_5 + i] = uniform(key, draw.VISIBLE_SIDE)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _look_up(x: Floats, q2_table: Floats, visible_table: Floats, amplitudes: Floats) -> None:
     """row.NODE, row.VISIBLE_E (as a position in its table) and the amplitudes: gathers, so scalar code."""
     columns = amplitudes.shape[1]
@@ -100,14 +100,14 @@ def _look_up(x: Floats, q2_table: Floats, visible_table: Floats, amplitudes: Flo
                 x[_FIRST_AMPLITUDE + column * LANES + i] = low + f * (amplitudes[k + 1, column] - low)
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _real_amplitudes(x: Floats, i: int) -> tuple[float, ...]:
     """J_+, J_-, J_0, J_t, S, T_+, T_-, T_0 of lane i."""
     a = _FIRST_AMPLITUDE + i
     return x[a], x[a + LANES], x[a + 2 * LANES], x[a + 3 * LANES], 0.0, 0.0, 0.0, 0.0
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _complex_amplitudes(x: Floats, i: int) -> tuple[complex, ...]:
     a = _FIRST_AMPLITUDE + i
     return (
@@ -122,7 +122,7 @@ def _complex_amplitudes(x: Floats, i: int) -> tuple[complex, ...]:
     )
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _cosine(u1: float, u2: float, u3: float, u_term: float, sin2: float, cos2: float) -> float:
     """From the density sin2 * (1 - c²) + cos2 * c²."""
     a, b, c = 2.0 * u1 - 1.0, 2.0 * u2 - 1.0, 2.0 * u3 - 1.0
@@ -132,7 +132,7 @@ def _cosine(u1: float, u2: float, u3: float, u_term: float, sin2: float, cos2: f
     return median if u_term * (2.0 * sin2 + cos2) < 2.0 * sin2 else largest
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _lane_angles(
     x: Floats, i: int, key: np.uint64, x_lepton: float, incoherent: float, coherent: float, J: Any
 ) -> None:
@@ -195,14 +195,14 @@ def _lane_angles(
     x[row.SIN_CHI + i] = turned_sin
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _fill_q2(x: Floats, table: ChannelTable) -> None:
     for i in range(LANES):
         t = x[row.NODE + i] * (1.0 / Q2_INTERVALS)
         x[row.Q2 + i] = table.q2_min + table.q2_span * (t * t * (3.0 - 2.0 * t))
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _draw_angles(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     _fill_q2(x, table)
     for i in range(LANES):
@@ -211,7 +211,7 @@ def _draw_angles(x: Floats, table: ChannelTable, stream: np.uint64, first_event:
         _lane_angles(x, i, key, x_lepton, table.incoherent, table.coherent, _real_amplitudes(x, i))
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _draw_angles_complex(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     _fill_q2(x, table)
     for i in range(LANES):
@@ -220,7 +220,7 @@ def _draw_angles_complex(x: Floats, table: ChannelTable, stream: np.uint64, firs
         _lane_angles(x, i, key, x_lepton, table.incoherent, table.coherent, _complex_amplitudes(x, i))
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _lane_polarisation(x: Floats, i: int, table: ChannelTable, J: Any) -> None:
     states = helicity_states(x[row.COS_THETA + i], *lepton_terms(table.lepton_mass / np.sqrt(x[row.Q2 + i]), *J))
     trace, px, py, pz = spin_density(
@@ -231,19 +231,19 @@ def _lane_polarisation(x: Floats, i: int, table: ChannelTable, J: Any) -> None:
     x[row.POLARISATION_Z + i] = pz / trace
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _polarise(x: Floats, table: ChannelTable) -> None:
     for i in range(LANES):
         _lane_polarisation(x, i, table, _real_amplitudes(x, i))
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _polarise_complex(x: Floats, table: ChannelTable) -> None:
     for i in range(LANES):
         _lane_polarisation(x, i, table, _complex_amplitudes(x, i))
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _draw_visible(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     """Energy and direction of the tau's charged daughter in the tau rest frame."""
     mass, to_pion = table.visible_mass, table.to_pion > 0.0

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 from semitau.core.elementary import sincos_turns
 from semitau.core.streams import event_key, uniform
 
@@ -22,7 +22,7 @@ Floats = npt.NDArray[np.float64]
 _W_MOMENTUM = row.SCRATCH_9  # |p| of the W* and of the charm hadron in the B frame
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def fill_momenta(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     """Fill the momentum rows of a block whose angles are drawn; the scratch rows are overwritten."""
     _draw_rotation(x, stream, first_event)
@@ -39,7 +39,7 @@ def fill_momenta(x: Floats, table: ChannelTable, stream: np.uint64, first_event:
         _lepton(x, table)
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def rotation(u_cos: float, u_azimuth: float, u_spin: float) -> tuple[float, ...]:
     """Row-major 3x3 matrix, uniform over all rotations: about z, then tilt about y, then about z."""
     c = 2.0 * u_cos - 1.0
@@ -53,7 +53,7 @@ def rotation(u_cos: float, u_azimuth: float, u_spin: float) -> tuple[float, ...]
     )  # fmt: skip
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _draw_rotation(x: Floats, stream: np.uint64, first_event: np.uint64) -> None:
     for i in range(LANES):
         key = event_key(stream, first_event + np.uint64(i))
@@ -65,7 +65,7 @@ def _draw_rotation(x: Floats, stream: np.uint64, first_event: np.uint64) -> None
         x[row.SCRATCH_6 + i], x[row.SCRATCH_7 + i], x[row.SCRATCH_8 + i] = r[6], r[7], r[8]
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _turn(x: Floats, i: int, px: float, py: float, pz: float) -> tuple[float, float, float]:
     """Apply the rotation of lane i."""
     return (
@@ -75,14 +75,14 @@ def _turn(x: Floats, i: int, px: float, py: float, pz: float) -> tuple[float, fl
     )
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def two_body_momentum(mass: float, one: float, other: float) -> float:
     """|p| of the products in the rest frame of a particle of `mass` (GeV)."""
     product = (mass - one - other) * (mass + one + other) * (mass - one + other) * (mass + one - other)
     return np.sqrt(max(product, 0.0)) / (2.0 * mass)  # type: ignore[no-any-return]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _fill_w_momentum(x: Floats, parent: float, charm: float) -> None:
     end, other_end = (parent - charm) ** 2, (parent + charm) ** 2
     for i in range(LANES):
@@ -90,13 +90,13 @@ def _fill_w_momentum(x: Floats, parent: float, charm: float) -> None:
         x[_W_MOMENTUM + i] = np.sqrt(max(product, 0.0)) / (2.0 * parent)
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _charm_energy(x: Floats, i: int, table: ChannelTable) -> float:
     p = x[_W_MOMENTUM + i]
     return np.sqrt(p * p + table.charm_mass * table.charm_mass)  # type: ignore[no-any-return]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _charm_is_d(x: Floats, table: ChannelTable) -> None:
     for i in range(LANES):
         px, py, pz = _turn(x, i, 0.0, 0.0, -x[_W_MOMENTUM + i])
@@ -105,19 +105,19 @@ def _charm_is_d(x: Floats, table: ChannelTable) -> None:
     _clear_pion(x)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _clear_soft(x: Floats) -> None:
     for i in range(LANES):
         x[row.SOFT_PX + i] = x[row.SOFT_PY + i] = x[row.SOFT_PZ + i] = x[row.SOFT_E + i] = 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _clear_pion(x: Floats) -> None:
     for i in range(LANES):
         x[row.PION_PX + i] = x[row.PION_PY + i] = x[row.PION_PZ + i] = x[row.PION_E + i] = 0.0
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _daughter_direction(x: Floats, i: int) -> tuple[float, float, float]:
     """Of the D (or D* of a D**) in the charm rest frame, axes of the unturned event."""
     v = x[row.COS_V + i]
@@ -125,7 +125,7 @@ def _daughter_direction(x: Floats, i: int) -> tuple[float, float, float]:
     return s * x[row.COS_CHI + i], -s * x[row.SIN_CHI + i], -v
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _two_body(x: Floats, table: ChannelTable) -> None:
     """Charm -> D soft, or D** -> D pion."""
     light = table.soft_mass if table.chain == VECTOR else table.pion_mass
@@ -152,21 +152,21 @@ def _two_body(x: Floats, table: ChannelTable) -> None:
         _copy_light_to_pion(x)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _copy_light_to_soft(x: Floats) -> None:
     for i in range(LANES):
         x[row.SOFT_PX + i], x[row.SOFT_PY + i] = x[row.SCRATCH_10 + i], x[row.SCRATCH_11 + i]
         x[row.SOFT_PZ + i], x[row.SOFT_E + i] = x[row.SCRATCH_12 + i], x[row.SCRATCH_13 + i]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _copy_light_to_pion(x: Floats) -> None:
     for i in range(LANES):
         x[row.PION_PX + i], x[row.PION_PY + i] = x[row.SCRATCH_10 + i], x[row.SCRATCH_11 + i]
         x[row.PION_PZ + i], x[row.PION_E + i] = x[row.SCRATCH_12 + i], x[row.SCRATCH_13 + i]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _cascade(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     """D** -> D* pion along the drawn direction, D* -> D soft isotropic."""
     outer = two_body_momentum(table.charm_mass, table.vector_mass, table.pion_mass)
@@ -207,7 +207,7 @@ def _cascade(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.
         x[row.SOFT_E + i] = gamma * energy - gamma_beta * pz
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def from_w_frame(
     x: Floats, i: int, table: ChannelTable, px: float, py: float, pz: float, energy: float
 ) -> tuple[float, float, float, float]:
@@ -218,7 +218,7 @@ def from_w_frame(
     return turned[0], turned[1], turned[2], gamma * energy + gamma_beta * pz
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def from_tau_frame(
     x: Floats, i: int, table: ChannelTable, side: float, up: float, along: float, energy: float
 ) -> tuple[float, float, float, float]:
@@ -229,12 +229,13 @@ def from_tau_frame(
     gamma, gamma_beta = (x[row.Q2 + i] + TAU_MASS**2) * scale, (x[row.Q2 + i] - TAU_MASS**2) * scale
     forward = gamma * along + gamma_beta * energy
     # theta-hat = (c, 0, -s), phi-hat = y, n = (s, 0, c)
-    return from_w_frame(
+    px, py, pz, boosted = from_w_frame(
         x, i, table, s * forward + c * side, up, c * forward - s * side, gamma * energy + gamma_beta * along
     )
+    return px, py, pz, boosted
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _lepton(x: Floats, table: ChannelTable) -> None:
     """The light lepton; the tau rows are cleared."""
     mass2 = table.lepton_mass**2
@@ -247,7 +248,7 @@ def _lepton(x: Floats, table: ChannelTable) -> None:
         x[row.TAU_PX + i] = x[row.TAU_PY + i] = x[row.TAU_PZ + i] = x[row.TAU_E + i] = 0.0
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _tau_and_daughter(x: Floats, table: ChannelTable) -> None:
     mass = table.visible_mass
     for i in range(LANES):

@@ -12,7 +12,7 @@ from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 from semitau.core.errors import InputError, Problem
 
 from . import block as row
@@ -94,7 +94,7 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
     )
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def variation_weights(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
     """Weights of the first n lanes of a block (n <= LANES).
 
@@ -110,7 +110,7 @@ def variation_weights(x: Floats, table: VariationTable, out: Floats, n: int) -> 
         _weights_complex(x, table, out, n)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _analyse(x: Floats, table: VariationTable) -> None:
     """Coefficients of the polarisation in the tau decay, relative to 1: into the polarisation rows."""
     if table.has_tau:
@@ -125,12 +125,12 @@ def _analyse(x: Floats, table: VariationTable) -> None:
             x[row.POLARISATION_X + i] = x[row.POLARISATION_Y + i] = x[row.POLARISATION_Z + i] = 0.0
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _between(columns: Floats, low: int, high: int, f: float) -> float:
     return columns[low] + f * (columns[high] - columns[low])  # type: ignore[no-any-return]
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _real(columns: Floats, a: int, b: int, f: float) -> tuple[float, ...]:
     """The eight amplitudes of one variation between the nodes whose J_+ stand at a and b."""
     return (
@@ -145,12 +145,12 @@ def _real(columns: Floats, a: int, b: int, f: float) -> tuple[float, ...]:
     )
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _pair(columns: Floats, a: int, b: int, f: float) -> complex:
-    return _between(columns, a, b, f) + 1j * _between(columns, a + WIDTH, b + WIDTH, f)
+    return _between(columns, a, b, f) + 1j * _between(columns, a + WIDTH, b + WIDTH, f)  # type: ignore[no-any-return]
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def _complex(columns: Floats, a: int, b: int, f: float) -> tuple[complex, ...]:
     return (
         _pair(columns, a, b, f),
@@ -164,7 +164,7 @@ def _complex(columns: Floats, a: int, b: int, f: float) -> tuple[complex, ...]:
     )
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _weights_real(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
     """Densities of the drawn decay and the variations go one after the other into the scratch rows."""
     incoherent, coherent, columns, groups = table.incoherent, table.coherent, table.columns, table.groups
@@ -190,7 +190,7 @@ def _weights_real(x: Floats, table: VariationTable, out: Floats, n: int) -> None
             out[i, j] = x[row.SCRATCH_0 + 1 + j] * scale
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _weights_complex(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
     incoherent, coherent, columns, groups = table.incoherent, table.coherent, table.columns, table.groups
     lepton_mass, width = table.lepton_mass, table.width
