@@ -46,7 +46,7 @@ def folder(tmp_path_factory: pytest.TempPathFactory) -> Path:
 
 
 def test_events_are_those_of_the_templates(folder: Path) -> None:
-    """Filled into histograms by numpy, the selected candidates give the nominal templates."""
+    """Filled into histograms by numpy, the selected candidates give the nominal templates and their variances."""
     entries, trees, meta = written(folder)
     candidates = trees["candidates"]
     assert entries == {name: len(columns["event"]) for name, columns in trees.items()}
@@ -62,6 +62,8 @@ def test_events_are_those_of_the_templates(folder: Path) -> None:
         assert filled.sum() == pytest.approx(template.nominal.sum(), rel=1e-12)
         # Written as float32, an event on an edge may change its bin; none of these does.
         np.testing.assert_allclose(filled, template.nominal, rtol=1e-9)
+        squares, _ = np.histogramdd(sample, edges, weights=candidates["weight"][chosen] ** 2)
+        np.testing.assert_allclose(squares, template.variance, rtol=1e-9)
 
 
 def test_truth_holds_the_decays(folder: Path) -> None:
