@@ -29,7 +29,9 @@ def test_two_commands() -> None:
 def test_commands_exist() -> None:
     named = set(re.findall(r"^(?:\.venv/bin/)?semitau (\w+)", "\n".join(blocks("sh")), flags=re.M))
     assert named, "the README shows no semitau command"
-    shown = subprocess.run([sys.executable, "-m", "semitau.study", "--help"], capture_output=True, text=True, check=True)
+    shown = subprocess.run(
+        [sys.executable, "-m", "semitau.study", "--help"], capture_output=True, text=True, check=True
+    )
     for name in named:
         assert re.search(rf"^\s+{name}\b", shown.stdout, flags=re.M), f"semitau {name} is not a command"
 
