@@ -11,7 +11,7 @@ from .binning import Axes, Cuts, count, place
 from .block import CATEGORY, LANES, ROWS, SOFT_EFFICIENCY, SOFT_FOUND
 from .candidates import Scenario, Windows, reconstruct
 from .channel_table import ChannelTable
-from .compaction import move
+from .compaction import drop_unbinned, move
 from .detector import Chain, Detector
 from .finding import find, list_found
 from .measuring import measure
@@ -96,17 +96,17 @@ def fill_block(
     if soft_columns > 0:
         fill_soft(y, bins, events, soft_factors, 1 + weight_columns, histogram)
     if weight_columns > 0:
-        variation_weights(y, variations, weights, events)
-        fill_weights(bins, events, weights, weight_columns, histogram)
+        binned = drop_unbinned(y, events, bins)
+        variation_weights(y, variations, weights, binned)
+        fill_weights(bins, binned, weights, weight_columns, histogram)
 
 
 @kernel
 def fill_weights(bins: Integers, events: int, weights: Floats, columns: int, histogram: Floats) -> None:
-    """histogram[bin, 1 + v] += weights[event, v] for each event that has a bin."""
+    """histogram[bin, 1 + v] += weights[event, v] for events that all have a bin."""
     for i in range(events):
-        if bins[i] >= 0:
-            for v in range(columns):
-                histogram[bins[i], 1 + v] += weights[i, v]
+        for v in range(columns):
+            histogram[bins[i], 1 + v] += weights[i, v]
 
 
 @kernel

@@ -10,11 +10,13 @@ from .block import BOOST_GAMMA, D_PX, FLAVOUR, LANES, PION_E, Q2, SOFT_PX
 
 Floats = npt.NDArray[np.float64]
 Keys = npt.NDArray[np.uint64]
+Integers = npt.NDArray[np.int64]
 
+_DECAY = np.array(range(Q2, D_PX, LANES), dtype=np.uint64)
 # What later stages read: variables of the decay (for weights), the slow particles, and what `find` made.
 _KEPT = np.array(
     [
-        *range(Q2, D_PX, LANES),
+        *_DECAY,
         *range(SOFT_PX, PION_E + LANES, LANES),
         *range(BOOST_GAMMA, FLAVOUR + LANES, LANES),
     ],
@@ -37,3 +39,22 @@ def move(
     for row in _KEPT:
         for k in range(n):
             y[row + place + k] = x[row + lanes[start + k]]
+
+
+@kernel
+def drop_unbinned(y: Floats, events: int, bins: Integers) -> int:
+    """Keep, in place and in order, the lanes with a bin: their entries in `bins` and the variables of the decay.
+
+    Returns how many there are. Other rows are left as they are.
+    """
+    lanes = np.empty(LANES, dtype=np.uint64)
+    kept = np.uint64(0)
+    for i in range(np.uint64(events)):
+        lanes[kept] = i
+        kept += np.uint64(1 if bins[i] >= 0 else 0)
+    for k in range(kept):
+        bins[k] = bins[lanes[k]]
+    for row in _DECAY:
+        for k in range(kept):
+            y[row + k] = y[row + lanes[k]]
+    return int(kept)
