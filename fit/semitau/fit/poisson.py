@@ -67,4 +67,4 @@ def log_factorial(k: float) -> float:
     inverse = 1.0 / k
     square = inverse * inverse
     series = inverse * (1.0 / 12.0 - square * (1.0 / 360.0 - square * (1.0 / 1260.0 - square / 1680.0)))
-    return (k + 0.5) * log(k) - k + _HALF_LOG_2_PI + series
+    return float((k + 0.5) * log(k) - k + _HALF_LOG_2_PI + series)
