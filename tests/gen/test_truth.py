@@ -391,6 +391,18 @@ def test_antineutrino_of_the_tau_decay(charm: str) -> None:
     assert stats.kstest(cosine, lambda c: (c + 1 + (c * c - 1) / 2) / 2).pvalue > UNLIKELY
 
 
+@pytest.mark.parametrize("charm", ["D1(2420)-", "D2*(2460)-", "D0*(2300)-", "D1'(2430)-"])
+def test_excited_states(charm: str) -> None:
+    """Asymmetry and tau polarisation from the angles of the momenta, against the integrals of test_rates.py."""
+    decay = gen.Decay("B0", charm, "tau")
+    events = gen.simulate(decay, EVENTS, SEED, tau_to="pi")
+    a = decay_angles(*(four(events, name) for name in ("B", "Dss", "tau")), None, four(events, "lepton"))
+    expected = gen.observables(decay)
+    check_mean(np.sign(a.cos_theta), expected.forward_backward)
+    check_mean(a.visible_z, expected.tau_polarisation / 3)
+    check_mean(a.q2, expected.mean_q2)
+
+
 def test_blocks_do_not_matter() -> None:
     """An event is the same bits wherever its block starts, and whatever was in the block before."""
     table = channel_table(next(chains_of(gen.Decay("B0", "D*-", "tau"), ("mu",))))
