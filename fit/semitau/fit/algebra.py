@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.templates import Floats
 
 from .layout import Indices
@@ -12,7 +12,7 @@ SINGULAR = 1e-10
 """A pivot of a matrix with unit diagonal below which a direction counts as flat: 1 - R² of a parameter on others."""
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def factorise(matrix: Floats, free: Indices, ridge: float, scale: Floats, lower: Floats) -> bool:
     """Cholesky factor of the free rows and columns, scaled to unit diagonal: S(matrix)S + ridge = lower lowerᵀ.
 
@@ -42,7 +42,7 @@ def factorise(matrix: Floats, free: Indices, ridge: float, scale: Floats, lower:
     return True
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def solve(lower: Floats, scale: Floats, free: Indices, vector: Floats, out: Floats) -> None:
     """out = (matrix)⁻¹ vector[free] from the factor of `factorise`; out has one entry for each free parameter."""
     n = free.shape[0]
@@ -60,7 +60,7 @@ def solve(lower: Floats, scale: Floats, free: Indices, vector: Floats, out: Floa
         out[i] *= scale[i]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def inverse_diagonal(lower: Floats, scale: Floats, n: int, scratch: Floats, out: Floats) -> None:
     """Diagonal of the inverse matrix from the factor of `factorise`: variances from a Hessian. scratch : (n,)."""
     for column in range(n):

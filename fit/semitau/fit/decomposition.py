@@ -22,7 +22,7 @@ from dataclasses import dataclass
 from types import MappingProxyType
 
 import numpy as np
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.errors import Problem, RunError
 from semitau.core.templates import Floats
 
@@ -120,7 +120,7 @@ def information(model: Model, values: Floats) -> tuple[Floats, Floats]:
     return parts
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _information(arrays: Arrays, x: Floats, of_templates: bool, work: Workspace, gradient: Floats, out: Floats) -> None:
     for p in range(x.shape[0]):
         work.bends[p, 0], work.bends[p, 1], work.bends[p, 2] = bend(x[p])

@@ -22,15 +22,15 @@ that joins C² and stays above zero, so that the likelihood is defined and smoot
 from __future__ import annotations
 
 import numpy as np
-from numba import njit
 from numpy.typing import ArrayLike
+from semitau.core.compiled import inlined
 from semitau.core.templates import Floats
 
 FLOOR = 0.01
 """Part of a bin's reference expectation below which the protection sets in."""
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def bend(theta: float) -> tuple[float, float, float]:
     """The even part of the interpolation at θ: value, first and second derivative."""
     if theta >= 1.0:
@@ -45,7 +45,7 @@ def bend(theta: float) -> tuple[float, float, float]:
     )
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def positive(nu: float, floor: float) -> tuple[float, float, float]:
     """Expected events from the plain sum ν: (μ, dμ/dν, d²μ/dν²); μ = ν for ν >= floor, 0 < μ < floor below."""
     y = 1.0 - nu / floor

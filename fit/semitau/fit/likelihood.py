@@ -21,7 +21,7 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
+from semitau.core.compiled import inlined, kernel
 from semitau.core.elementary import log
 from semitau.core.templates import Floats
 
@@ -59,7 +59,7 @@ def workspace(arrays: Arrays) -> Workspace:
     )
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def deviance(n: float, mu: float) -> float:
     """μ - n + n ln(n/μ), accurate to its own last digits: n and μ cancel down to the square of their distance.
 
@@ -74,7 +74,7 @@ def deviance(n: float, mu: float) -> float:
     return near if t < 0.01 else far
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def bin_terms(mu: float, n: float, centre: float, variance: float) -> tuple[float, float, float, float]:
     """One bin with γ profiled: -ln L from the saturated model, its first and second derivative in μ, and γ."""
     b = mu * variance - centre
@@ -90,7 +90,7 @@ def bin_terms(mu: float, n: float, centre: float, variance: float) -> tuple[floa
     return value, first, second, gamma
 
 
-@njit(forceinline=True, cache=True, error_model="numpy")
+@inlined
 def scale_of(arrays: Arrays, component: int, x: Floats, skip: int, skip_too: int) -> float:
     """Product of a component's scale parameters over their injected values, without up to two of them."""
     product = 1.0
@@ -101,7 +101,7 @@ def scale_of(arrays: Arrays, component: int, x: Floats, skip: int, skip_too: int
     return product
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def evaluate(
     arrays: Arrays,
     x: Floats,
@@ -144,7 +144,7 @@ def evaluate(
     return value
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def sum_pieces(arrays: Arrays, tile: int, x: Floats, mode: int, work: Workspace) -> None:
     """The plain sum of the tile's lanes and its derivatives."""
     length = arrays.tile_first[tile + 1] - arrays.tile_first[tile]
@@ -185,7 +185,7 @@ def sum_pieces(arrays: Arrays, tile: int, x: Floats, mode: int, work: Workspace)
                     row[i] += factor * contents[i]
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def sum_bins(arrays: Arrays, tile: int, counts: Floats, gamma_centres: Floats, mode: int, work: Workspace) -> float:
     """-ln L of the tile's bins; leaves first derivative and weight with respect to the plain sum in the workspace."""
     first = arrays.tile_first[tile]
@@ -212,7 +212,7 @@ def sum_bins(arrays: Arrays, tile: int, counts: Floats, gamma_centres: Floats, m
     return total
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def add_outer_products(arrays: Arrays, tile: int, gradient: Floats, hessian: Floats, work: Workspace) -> None:
     length = arrays.tile_first[tile + 1] - arrays.tile_first[tile]
     stride = work.rows.shape[1]
@@ -229,7 +229,7 @@ def add_outer_products(arrays: Arrays, tile: int, gradient: Floats, hessian: Flo
             hessian[p, q] += dot(product, 0, work.rows, q * stride, length)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def add_curvature(arrays: Arrays, tile: int, x: Floats, hessian: Floats, work: Workspace) -> None:
     """First derivative in the expectation times the expectation's second derivatives; lower triangle only."""
     length = arrays.tile_first[tile + 1] - arrays.tile_first[tile]
@@ -257,7 +257,7 @@ def add_curvature(arrays: Arrays, tile: int, x: Floats, hessian: Floats, work: W
                 hessian[k, p] += scale_of(arrays, component, x, p, -1) * arrays.inverse_injected[p] * shift
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def has_hold(arrays: Arrays, parameter: int, x: Floats, work: Workspace) -> bool:
     """Whether a parameter changes any bin that is above its floor, at the parameters of the last evaluation."""
     for tile in range(arrays.tile_filled.shape[0]):
@@ -271,7 +271,7 @@ def has_hold(arrays: Arrays, parameter: int, x: Floats, work: Workspace) -> bool
     return False
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def expectations(arrays: Arrays, x: Floats, work: Workspace, plain: Floats, out: Floats) -> None:
     """Fill (lanes,) arrays with the plain sums and the protected expectations at the parameters x."""
     for p in range(x.shape[0]):

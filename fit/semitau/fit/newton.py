@@ -12,8 +12,8 @@ from __future__ import annotations
 from typing import NamedTuple
 
 import numpy as np
-from numba import njit
 from numpy.typing import ArrayLike
+from semitau.core.compiled import kernel
 from semitau.core.errors import InputError, Problem
 from semitau.core.templates import Floats
 
@@ -57,7 +57,7 @@ def scratch(arrays: Arrays) -> Scratch:
     )
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def minimise(
     arrays: Arrays, free: Indices, counts: Floats, gamma_centres: Floats, centres: Floats, x: Floats, s: Scratch
 ) -> Ending:
@@ -122,7 +122,7 @@ def minimise(
     return Ending(TOO_LONG, value, distance, STEPS_AT_MOST, evaluations)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _all_held(arrays: Arrays, free: Indices, x: Floats, work: Workspace) -> bool:
     """Whether every free parameter without constraint still changes a bin that is not under the protection."""
     if work.protected[0] > 0:

@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 
 import numpy as np
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.elementary import exp, log
 from semitau.core.streams import uniform
 
@@ -15,7 +15,7 @@ _HALF_LOG_2_PI = 0.5 * math.log(2.0 * math.pi)
 _LOG_FACTORIALS = np.array([math.lgamma(k + 1.0) for k in range(16)])
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def poisson(mean: float, key: np.uint64, first_draw: np.uint64) -> float:
     """A Poisson number of the given mean, from the draws first_draw, first_draw + 1, ... of an event key.
 
@@ -25,7 +25,7 @@ def poisson(mean: float, key: np.uint64, first_draw: np.uint64) -> float:
     if not mean > 0.0:
         return 0.0
     if mean < 10.0:
-        return _inverted(mean, uniform(key, first_draw))
+        return float(_inverted(mean, uniform(key, first_draw)))
     b = 0.931 + 2.53 * np.sqrt(mean)
     a = -0.059 + 0.02483 * b
     inverse_alpha = 1.1239 + 1.1328 / (b - 3.4)
@@ -47,7 +47,7 @@ def poisson(mean: float, key: np.uint64, first_draw: np.uint64) -> float:
             return float(k)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _inverted(mean: float, u: float) -> float:
     k = 0.0
     term = exp(-mean)
@@ -59,7 +59,7 @@ def _inverted(mean: float, u: float) -> float:
     return k
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def log_factorial(k: float) -> float:
     """ln k! for a whole number k >= 0, by table and Stirling's series; relative error below 1e-13."""
     if k < 16.0:

@@ -14,8 +14,8 @@ from dataclasses import dataclass
 from functools import partial
 
 import numpy as np
-from numba import njit
 from numpy.typing import ArrayLike, NDArray
+from semitau.core.compiled import kernel
 from semitau.core.elementary import normal_pair
 from semitau.core.engine import run
 from semitau.core.errors import InputError, Problem
@@ -176,7 +176,7 @@ def _padded_means(model: Model, truth: Floats) -> Floats:
     return np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def draw_toy(
     arrays: Arrays, toy: np.uint64, truth: Floats, means: Floats, counts: Floats, gammas: Floats, centres: Floats
 ) -> None:
@@ -196,7 +196,7 @@ def draw_toy(
             centres[p] += normal / np.sqrt(arrays.inverse_variance[p])
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def _fit_toys(
     arrays: Arrays,
     free: Indices,
