@@ -65,10 +65,10 @@ def test_digest_covers_all_that_is_imported(tmp_path: Path, change: str) -> None
 
 def test_digest_crosses_packages() -> None:
     """A kernel of the response depends on the random streams in core and on the rows of the block."""
-    from semitau.gen import measuring
+    from semitau.gen.response import measuring
 
     files = {path.name for path in _closure(Path(measuring.__file__))}
-    assert {"measuring.py", "streams.py", "elementary.py", "block.py", "constants.py", "response_draws.py"} <= files
+    assert {"measuring.py", "streams.py", "elementary.py", "block.py", "constants.py", "draw_numbers.py"} <= files
     assert "build.py" not in files
 
 

@@ -8,16 +8,16 @@ import numpy as np
 from semitau.core.streams import event_key, stream_key
 from semitau.gen import block as row
 from semitau.gen.block import LANES, new_block
-from semitau.gen.chains import Channel, channels
-from semitau.gen.channel_table import channel_table
-from semitau.gen.chunk_tasks import Bench
-from semitau.gen.compaction import move
-from semitau.gen.component_plan import ChannelPlan
-from semitau.gen.detector_setup import kernel_chain
-from semitau.gen.finding import find, list_found
-from semitau.gen.measuring import measure
-from semitau.gen.truth import draw_decays
-from semitau.gen.variations import ChannelVariations
+from semitau.gen.decays.chains import Channel, channels
+from semitau.gen.response.compaction import move
+from semitau.gen.response.finding import find, list_found
+from semitau.gen.response.measuring import measure
+from semitau.gen.response.setup import kernel_chain
+from semitau.gen.templates.chunk_tasks import Bench
+from semitau.gen.templates.component_plan import ChannelPlan
+from semitau.gen.templates.variations import ChannelVariations
+from semitau.gen.truth.channel_table import channel_table
+from semitau.gen.truth.drawing import draw_decays
 
 NO_VARIATIONS = ChannelVariations({}, {}, {})
 

@@ -8,8 +8,8 @@ from __future__ import annotations
 import numpy as np
 from semitau.core.constants import BOTTOM_MASS, CHARM_MASS, MASS
 from semitau.gen import Decay
-from semitau.gen.form_factor_values import VectorFormFactors
-from semitau.gen.tensor_form_factors import pseudoscalar_tensor, vector_tensor
+from semitau.gen.decays.form_factor_values import VectorFormFactors
+from semitau.gen.decays.tensor_form_factors import pseudoscalar_tensor, vector_tensor
 
 from . import dirac
 from .dirac import GAMMA, LEFT, METRIC, ONE, RIGHT, bar, boost, dot, slash

@@ -5,7 +5,7 @@ from __future__ import annotations
 import tomllib
 from typing import Any
 
-from semitau.gen.study import StudyConfig
+from semitau.gen.study_file.study import StudyConfig
 
 TEXT = """\
 [study]

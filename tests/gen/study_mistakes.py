@@ -15,7 +15,7 @@ LAWS = (
 )
 SETS = ", ".join(
     path.stem
-    for path in sorted((ROOT / "gen/semitau/gen/form_factor_sets").glob("*.toml"))
+    for path in sorted((ROOT / "gen/semitau/gen/decays/form_factor_sets").glob("*.toml"))
     if "Dst" in tomllib.loads(path.read_text(encoding="utf-8"))
 )
 OBSERVABLES = "mm2, q2, el, p_lepton, p_charm, e_res, delta_m"

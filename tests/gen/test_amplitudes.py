@@ -12,8 +12,8 @@ from collections.abc import Iterator
 import numpy as np
 import pytest
 from semitau.core.constants import BOTTOM_MASS, CHARM_MASS
-from semitau.gen import tensor_form_factors
-from semitau.gen.amplitudes import (
+from semitau.gen.decays import tensor_form_factors
+from semitau.gen.decays.amplitudes import (
     HelicityAmplitudes,
     LeptonAmplitudes,
     helicity_amplitudes,
@@ -21,9 +21,9 @@ from semitau.gen.amplitudes import (
     pseudoscalar_amplitudes,
     vector_amplitudes,
 )
-from semitau.gen.decay import FAMILIES, Decay, WilsonCoefficients, charm_name
-from semitau.gen.form_factor_values import PseudoscalarFormFactors, VectorFormFactors, longitudinal
-from semitau.gen.tensor_form_factors import (
+from semitau.gen.decays.decay import FAMILIES, Decay, WilsonCoefficients, charm_name
+from semitau.gen.decays.form_factor_values import PseudoscalarFormFactors, VectorFormFactors, longitudinal
+from semitau.gen.decays.tensor_form_factors import (
     TENSOR_MODELS,
     VectorTensorFormFactors,
     pseudoscalar_tensor,
@@ -48,7 +48,7 @@ Table = dict[str, tuple[complex, complex]]
 
 
 def table(k: LeptonAmplitudes, index: int, theta: float) -> Table:
-    """K- and K+ for each charm helicity: the table in the docstring of semitau.gen.amplitudes, without the factor N."""
+    """K- and K+ for each charm helicity: the table in the docstring of decays.amplitudes, without the factor N."""
     s, c = np.sin(theta), np.cos(theta)
     return {
         "+": (k.a_plus[index] * (1 - c) / np.sqrt(2), -k.b_plus[index] * s / np.sqrt(2)),

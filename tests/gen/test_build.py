@@ -17,11 +17,13 @@ from scipy import stats
 from semitau.core.errors import InputError
 from semitau.core.streams import stream_key
 from semitau.core.templates import TemplateSet
-from semitau.gen import build as build_module
-from semitau.gen.build import Build, build_templates
-from semitau.gen.chains import Channel
-from semitau.gen.chunk_tasks import NOMINAL, Bench, channel_columns, channel_tasks, make_bench
-from semitau.gen.component_plan import (
+from semitau.gen.decays.chains import Channel
+from semitau.gen.decays.rates import ratio
+from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.templates import build as build_module
+from semitau.gen.templates.build import Build, build_templates
+from semitau.gen.templates.chunk_tasks import NOMINAL, Bench, channel_columns, channel_tasks, make_bench
+from semitau.gen.templates.component_plan import (
     LEAST_EVENTS,
     ChannelPlan,
     expected_decays,
@@ -29,11 +31,9 @@ from semitau.gen.component_plan import (
     predicted_ratio,
     shared_out,
 )
-from semitau.gen.fit_components import components_and_parameters
-from semitau.gen.pseudo_data import pseudo_data
-from semitau.gen.rates import ratio
-from semitau.gen.study import StudyConfig
-from semitau.gen.variations import varied_set
+from semitau.gen.templates.fit_components import components_and_parameters
+from semitau.gen.templates.pseudo_data import pseudo_data
+from semitau.gen.templates.variations import varied_set
 
 from .blocks import channel, plan
 from .marlow_study import study
@@ -362,7 +362,7 @@ def test_a_failing_task_stops_the_build(monkeypatch: pytest.MonkeyPatch) -> None
     def broken(*_: object) -> None:
         raise RuntimeError("out of coffee")
 
-    monkeypatch.setattr("semitau.gen.chunk_tasks.fill_chunk", broken)
+    monkeypatch.setattr("semitau.gen.templates.chunk_tasks.fill_chunk", broken)
     assert build_module.NEGLIGIBLE > 0.0
     with pytest.raises(RuntimeError, match="out of coffee"):
         build_templates(seeded(), workers=2)

@@ -8,9 +8,9 @@ import pytest
 from semitau import gen
 from semitau.core.constants import BRANCHING_FRACTION, LIFETIME, MASS
 from semitau.core.errors import InputError
-from semitau.gen.chains import Channel, channels
-from semitau.gen.decay import FAMILIES
-from semitau.gen.orbital_states import ORBITAL_STATES
+from semitau.gen.decays.chains import Channel, channels
+from semitau.gen.decays.decay import FAMILIES
+from semitau.gen.decays.orbital_states import ORBITAL_STATES
 
 ALL = channels(["B+", "B0"], FAMILIES, ["e", "mu", "tau"])
 TAU = BRANCHING_FRACTION["tau"]

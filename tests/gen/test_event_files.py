@@ -12,9 +12,9 @@ import pytest
 import uproot
 import vector
 from semitau.core.errors import InputError, RunError
-from semitau.gen.build import build_templates
-from semitau.gen.event_files import generate
-from semitau.gen.study import StudyConfig
+from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.templates.build import build_templates
+from semitau.gen.templates.event_files import generate
 
 from .marlow_study import study
 

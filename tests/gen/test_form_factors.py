@@ -7,7 +7,7 @@ import pytest
 from semitau import gen
 from semitau.core.constants import MASS
 from semitau.core.errors import InputError
-from semitau.gen.form_factor_values import PseudoscalarFormFactors, VectorFormFactors
+from semitau.gen.decays.form_factor_values import PseudoscalarFormFactors, VectorFormFactors
 
 from .reference import load
 

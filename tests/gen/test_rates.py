@@ -8,11 +8,11 @@ import pytest
 from semitau import gen
 from semitau.core.constants import ELECTROWEAK_CORRECTION, FERMI_COUPLING, HBAR, LIFETIME, VCB
 from semitau.core.errors import InputError
-from semitau.gen.amplitudes import helicity_amplitudes
-from semitau.gen.decay import FAMILIES, charm_name
-from semitau.gen.form_factor_values import VectorFormFactors
-from semitau.gen.rates import differential_rates
-from semitau.gen.tensor_form_factors import pseudoscalar_tensor, vector_tensor
+from semitau.gen.decays.amplitudes import helicity_amplitudes
+from semitau.gen.decays.decay import FAMILIES, charm_name
+from semitau.gen.decays.form_factor_values import VectorFormFactors
+from semitau.gen.decays.rates import differential_rates
+from semitau.gen.decays.tensor_form_factors import pseudoscalar_tensor, vector_tensor
 
 from . import dirac
 from .reference import load

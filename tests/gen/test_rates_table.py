@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 from semitau import gen
 from semitau.core.errors import InputError
-from semitau.gen.form_factor_set import FormFactorSet
-from semitau.gen.rates_table import rates_table
+from semitau.gen.decays.form_factor_set import FormFactorSet
+from semitau.gen.decays.rates_table import rates_table
 
 SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 

@@ -15,13 +15,13 @@ import vector
 from semitau.core.constants import MASS
 from semitau.core.streams import stream_key
 from semitau.gen import block as row
-from semitau.gen.binning import category_code
 from semitau.gen.block import LANES
-from semitau.gen.candidates import Scenario, Windows, reconstruct
-from semitau.gen.chains import Channel
-from semitau.gen.chunk_tasks import Bench, make_bench
-from semitau.gen.detector_setup import kernel_chain
-from semitau.gen.recording import CANDIDATE_ROWS, TRUTH_ROWS, event_recorder
+from semitau.gen.decays.chains import Channel
+from semitau.gen.response.candidates import Scenario, Windows, reconstruct
+from semitau.gen.response.recording import CANDIDATE_ROWS, TRUTH_ROWS, event_recorder
+from semitau.gen.response.setup import kernel_chain
+from semitau.gen.templates.binning import category_code
+from semitau.gen.templates.chunk_tasks import Bench, make_bench
 
 from .blocks import channel, measured, plan, values
 from .marlow_study import PERFECT, study

@@ -14,13 +14,13 @@ import vector
 from scipy import integrate, stats
 from semitau.core.constants import MASS
 from semitau.gen import block as row
-from semitau.gen import detector as kinds
 from semitau.gen.block import LANES, new_block
-from semitau.gen.charm_decay import LAB_D, decay_to_three, decay_to_two, pair_mass_quantiles
-from semitau.gen.collider import draw_pair, to_laboratory
-from semitau.gen.compaction import move
-from semitau.gen.efficiency import constant, evaluate, piecewise_linear, scaled
-from semitau.gen.finding import (
+from semitau.gen.response import detector as kinds
+from semitau.gen.response.charm_decay import LAB_D, decay_to_three, decay_to_two, pair_mass_quantiles
+from semitau.gen.response.collider import draw_pair, to_laboratory
+from semitau.gen.response.compaction import move
+from semitau.gen.response.efficiency import constant, evaluate, piecewise_linear, scaled
+from semitau.gen.response.finding import (
     CHARM_SEEN,
     IDENTIFIED,
     LEPTON_SEEN_TOO,
@@ -29,7 +29,7 @@ from semitau.gen.finding import (
     see_charm,
     see_lepton,
 )
-from semitau.gen.measuring import (
+from semitau.gen.response.measuring import (
     add_noise,
     draw_random_soft,
     measure_charm,

@@ -15,14 +15,14 @@ from scipy import integrate, stats
 from semitau import gen
 from semitau.core.constants import MASS
 from semitau.core.streams import stream_key, uniforms
-from semitau.gen import truth
-from semitau.gen.alias import alias_table, draw_position, interval_table
 from semitau.gen.block import LANES, NODE, Q2, VISIBLE_E, new_block
-from semitau.gen.chains import chains_of
-from semitau.gen.channel_table import Q2_INTERVALS, channel_table
-from semitau.gen.tau_decay import emission, energy_range
-from semitau.gen.truth import draw_decays
-from semitau.gen.truth_momenta import rotation
+from semitau.gen.decays.chains import chains_of
+from semitau.gen.truth import drawing as truth
+from semitau.gen.truth.alias import alias_table, draw_position, interval_table
+from semitau.gen.truth.channel_table import Q2_INTERVALS, channel_table
+from semitau.gen.truth.drawing import draw_decays
+from semitau.gen.truth.momenta import rotation
+from semitau.gen.truth.tau_decay import emission, energy_range
 
 SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 UNLIKELY = 1e-5

@@ -7,10 +7,10 @@ import numpy as np
 import pytest
 from semitau.core.errors import InputError
 from semitau.gen import block as row
-from semitau.gen.binning import ROW_OF, category_code, count, cut_names, make_axes, make_cuts, place
 from semitau.gen.block import LANES, new_block
-from semitau.gen.cut_flow import CutFlow, step_names
-from semitau.gen.study_categories import StudyCategory
+from semitau.gen.study_file.categories import StudyCategory
+from semitau.gen.templates.binning import ROW_OF, category_code, count, cut_names, make_axes, make_cuts, place
+from semitau.gen.templates.cut_flow import CutFlow, step_names
 
 from .blocks import put, values
 from .marlow_study import study

@@ -21,13 +21,13 @@ from pydantic import TypeAdapter
 from scipy import integrate, special, stats
 from semitau.core.errors import InputError
 from semitau.core.streams import stream_key, uniforms
-from semitau.gen.copula import correlated_uniforms, normal_distribution
-from semitau.gen.quantile_table import from_sorted, rows
-from semitau.gen.shape_density import table
-from semitau.gen.shapes import ShapeSampler
-from semitau.gen.study import StudyConfig
-from semitau.gen.study_file import read_study
-from semitau.gen.study_laws import Law
+from semitau.gen.shapes.copula import correlated_uniforms, normal_distribution
+from semitau.gen.shapes.density import table
+from semitau.gen.shapes.quantile_table import from_sorted, rows
+from semitau.gen.shapes.sampler import ShapeSampler
+from semitau.gen.study_file.laws import Law
+from semitau.gen.study_file.reader import read_study
+from semitau.gen.study_file.study import StudyConfig
 from skhep_testdata import data_path
 
 from .small_study import TEXT

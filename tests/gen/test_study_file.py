@@ -17,8 +17,8 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 from pydantic import ValidationError
 from semitau.core.errors import InputError
-from semitau.gen.study import StudyConfig, json_schema
-from semitau.gen.study_file import checked, read_study
+from semitau.gen.study_file.reader import checked, read_study
+from semitau.gen.study_file.study import StudyConfig, json_schema
 
 from .small_study import TEXT
 from .study_mistakes import MISTAKES
@@ -130,7 +130,7 @@ def test_shipped_studies(name: str, least: float, most: float) -> None:
 
 def test_reading_a_study_imports_nothing_heavy() -> None:
     code = (
-        "import sys; from semitau.gen.study_file import read_study; read_study(sys.argv[1]);"
+        "import sys; from semitau.gen.study_file.reader import read_study; read_study(sys.argv[1]);"
         "print([m for m in ('numba', 'scipy', 'awkward', 'uproot', 'matplotlib') if m in sys.modules])"
     )
     run = subprocess.run(

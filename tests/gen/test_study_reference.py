@@ -8,10 +8,10 @@ from pathlib import Path
 
 import pytest
 from semitau.core.errors import InputError
-from semitau.gen.shapes import samplers
-from semitau.gen.study import json_schema
-from semitau.gen.study_file import read_study
-from semitau.gen.study_reference import models_in_reference, reference
+from semitau.gen.shapes.sampler import samplers
+from semitau.gen.study_file.reader import read_study
+from semitau.gen.study_file.reference import models_in_reference, reference
+from semitau.gen.study_file.study import json_schema
 
 from .small_study import TEXT
 
@@ -21,7 +21,7 @@ DOCS = Path(__file__).parents[2] / "docs" / "study_file.md"
 def test_document_is_up_to_date() -> None:
     written = DOCS.read_text(encoding="utf-8")
     assert written.endswith(reference()), (
-        "put the output of python -m semitau.gen.study_reference below the introduction"
+        "put the output of python -m semitau.gen.study_file.reference below the introduction"
     )
 
 

@@ -22,14 +22,14 @@ from scipy import integrate, stats
 from semitau import gen
 from semitau.core.constants import MASS
 from semitau.core.streams import stream_key
-from semitau.gen import truth
-from semitau.gen.amplitudes import helicity_amplitudes
 from semitau.gen.block import LANES, POLARISATION_X, ROWS, SCRATCH_0, SCRATCH_END, new_block
-from semitau.gen.chains import chains_of
-from semitau.gen.channel_table import channel_table
-from semitau.gen.decay_angles import DecayAngles, decay_angles
-from semitau.gen.kinematics import kallen
-from semitau.gen.truth import draw_decays
+from semitau.gen.decays.amplitudes import helicity_amplitudes
+from semitau.gen.decays.chains import chains_of
+from semitau.gen.truth import drawing as truth
+from semitau.gen.truth.channel_table import channel_table
+from semitau.gen.truth.decay_angles import DecayAngles, decay_angles
+from semitau.gen.truth.drawing import draw_decays
+from semitau.gen.truth.kinematics import kallen
 
 from . import brute_chain
 

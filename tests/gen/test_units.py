@@ -7,7 +7,7 @@ import math
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from semitau.gen.units import UNITS, UnitError, quantity
+from semitau.gen.study_file.units import UNITS, UnitError, quantity
 
 
 @pytest.mark.parametrize(

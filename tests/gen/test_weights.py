@@ -17,11 +17,11 @@ from semitau import gen
 from semitau.core.errors import InputError
 from semitau.core.streams import stream_key
 from semitau.gen.block import LANES, new_block
-from semitau.gen.chains import chains_of
-from semitau.gen.channel_table import channel_table
-from semitau.gen.decay_record import decay_of
-from semitau.gen.truth import draw_decays
-from semitau.gen.variation_weights import variation_table, variation_weights
+from semitau.gen.decays.chains import chains_of
+from semitau.gen.truth.channel_table import channel_table
+from semitau.gen.truth.decay_record import decay_of
+from semitau.gen.truth.drawing import draw_decays
+from semitau.gen.truth.variation_weights import variation_table, variation_weights
 
 from . import brute_chain, dirac
 

@@ -17,8 +17,8 @@ from typing import Any
 
 from numba import njit
 
-# Lines such as "from .block import ...", "from . import block as row", "from semitau.core.streams import ...".
-_IMPORT = re.compile(r"^from (\.|\.\w+|semitau\.\w+(?:\.\w+)?) import (.*)$", re.MULTILINE)
+# Lines such as "from .block import ...", "from .. import block as row", "from semitau.core.streams import ...".
+_IMPORT = re.compile(r"^from (\.+[\w.]*|semitau[\w.]*) import (.*)$", re.MULTILINE)
 
 
 def kernel(function: Callable[..., Any]) -> Any:
@@ -70,14 +70,16 @@ def _imported(path: Path) -> tuple[Path, ...]:
     """Files of this program that a file imports."""
     found = []
     for source, names in _IMPORT.findall(_contents(path)):
+        module = source.lstrip(".")
         if source.startswith("."):
-            folder, modules = path.parent, [source[1:]]
+            home = path.parents[len(source) - len(module) - 1]
         else:
-            package, _, module = source.removeprefix("semitau.").partition(".")
-            folder, modules = _package(package), [module]
-        if modules == [""]:
-            modules = re.findall(r"\w+", names)
-        found += [place for module in modules if (place := folder / f"{module}.py").is_file()]
+            package, _, module = module.removeprefix("semitau").lstrip(".").partition(".")
+            home = _package(package)
+        place = home.joinpath(*module.split(".")) if module else home
+        # what is imported is a module itself, or names that may be modules of the package
+        candidates = [place.with_suffix(".py"), *(place / f"{name}.py" for name in re.findall(r"\w+", names))]
+        found += [candidate for candidate in candidates if candidate.is_file()]
     return tuple(found)
 
 

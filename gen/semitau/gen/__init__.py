@@ -9,26 +9,26 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
-    from .decay import Decay as Decay
-    from .decay import WilsonCoefficients as WilsonCoefficients
-    from .event_weights import weights as weights
-    from .form_factor_set import form_factor_sets as form_factor_sets
-    from .form_factor_set import form_factors as form_factors
-    from .rates import differential_rate as differential_rate
-    from .rates import observables as observables
-    from .rates import ratio as ratio
-    from .simulation import simulate as simulate
+    from .decays.decay import Decay as Decay
+    from .decays.decay import WilsonCoefficients as WilsonCoefficients
+    from .decays.form_factor_set import form_factor_sets as form_factor_sets
+    from .decays.form_factor_set import form_factors as form_factors
+    from .decays.rates import differential_rate as differential_rate
+    from .decays.rates import observables as observables
+    from .decays.rates import ratio as ratio
+    from .truth.event_weights import weights as weights
+    from .truth.simulation import simulate as simulate
 
 _HOME = {
-    "Decay": "decay",
-    "WilsonCoefficients": "decay",
-    "differential_rate": "rates",
-    "form_factor_sets": "form_factor_set",
-    "form_factors": "form_factor_set",
-    "observables": "rates",
-    "ratio": "rates",
-    "simulate": "simulation",
-    "weights": "event_weights",
+    "Decay": "decays.decay",
+    "WilsonCoefficients": "decays.decay",
+    "differential_rate": "decays.rates",
+    "form_factor_sets": "decays.form_factor_set",
+    "form_factors": "decays.form_factor_set",
+    "observables": "decays.rates",
+    "ratio": "decays.rates",
+    "simulate": "truth.simulation",
+    "weights": "truth.event_weights",
 }
 
 __all__ = [

@@ -4,8 +4,8 @@ from __future__ import annotations
 
 from pathlib import Path
 
-from semitau.gen.study import StudyConfig
-from semitau.gen.study_file import read_study
+from semitau.gen.study_file.reader import read_study
+from semitau.gen.study_file.study import StudyConfig
 
 
 def open_study(path: Path, seed: int | None = None) -> StudyConfig:

@@ -7,8 +7,8 @@ from dataclasses import fields
 
 from rich.console import RenderableType
 from rich.text import Text
-from semitau.gen.rates import Observables
-from semitau.gen.rates_table import RatesTable
+from semitau.gen.decays.rates import Observables
+from semitau.gen.decays.rates_table import RatesTable
 
 from .numbers import digits_for, signed, with_error
 from .summary import plain_table

@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING
 from semitau.core.errors import InputError, Problem
 
 if TYPE_CHECKING:
-    from semitau.gen.study import StudyConfig
+    from semitau.gen.study_file.study import StudyConfig
 
 LIBRARIES = ("numpy", "scipy", "numba")
 """Libraries whose version may move a last digit."""

@@ -6,11 +6,11 @@ from collections import Counter
 from dataclasses import asdict, dataclass
 
 import numpy as np
-from semitau.gen.component_plan import plan_channels
-from semitau.gen.shapes import samplers
-from semitau.gen.study import StudyConfig
-from semitau.gen.study_components import Yield
-from semitau.gen.variations import check_efficiencies, scenarios
+from semitau.gen.shapes.sampler import samplers
+from semitau.gen.study_file.components import Yield
+from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.templates.component_plan import plan_channels
+from semitau.gen.templates.variations import check_efficiencies, scenarios
 
 DECAYS_PER_SECOND = 8e5
 """Generated decays per second and core through templates with about ten variations, on one core of a 2024 server. Each

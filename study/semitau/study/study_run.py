@@ -19,7 +19,7 @@ from semitau.fit.decomposition import budget
 from semitau.fit.model import Model
 from semitau.fit.straightness import linearity
 from semitau.fit.toys import run_toys
-from semitau.gen.study import StudyConfig
+from semitau.gen.study_file.study import StudyConfig
 
 from .fit_parts import budget_parts, category_parts, component_parts, fit_part, ratio_parts
 from .fitting import fit_or_fail

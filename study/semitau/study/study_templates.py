@@ -10,9 +10,9 @@ from typing import Any
 from semitau.core.errors import InputError
 from semitau.core.template_file import read_templates, write_templates
 from semitau.core.templates import TemplateSet
-from semitau.gen.build import build_templates
-from semitau.gen.cut_flow import CutFlow
-from semitau.gen.study import StudyConfig
+from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.templates.build import build_templates
+from semitau.gen.templates.cut_flow import CutFlow
 
 from .results import CutFlowComponent
 from .study_folder import study_key, versions
@@ -111,6 +111,6 @@ def _share(part: float, whole: float) -> float:
 
 
 def _pseudo_data(study: StudyConfig, workers: int | None, report: Report | None) -> Mapping[str, Any]:
-    from semitau.gen.pseudo_data import pseudo_data
+    from semitau.gen.templates.pseudo_data import pseudo_data
 
     return pseudo_data(study, workers, None if report is None else _under("pseudo-data", report))

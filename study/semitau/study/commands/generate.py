@@ -38,7 +38,7 @@ def command(call: Invocation, file: Path, output: Path | None, format_: str, com
     included; these are the events that templates are made from. The text `meta` in the file explains the columns.
     """
     from semitau.core.whole_files import write_whole
-    from semitau.gen.event_files import generate
+    from semitau.gen.templates.event_files import generate
 
     from ..numbers import counted
     from ..opening import open_study, thinned

@@ -18,7 +18,7 @@ def command(call: Invocation, file: Path) -> None:
     For every decay of the modes of FILE, with the errors from the covariance of its form factors; |V_cb| and lifetimes
     are taken as exact. Nothing is drawn: --seed and --workers change nothing.
     """
-    from semitau.gen.rates_table import rates_table
+    from semitau.gen.decays.rates_table import rates_table
 
     from ..opening import open_study
     from ..rates_summary import rates_document, rates_tables

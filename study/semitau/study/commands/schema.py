@@ -23,7 +23,7 @@ def command(call: Invocation, results: bool, output: Path | None) -> None:
 
         schema = dict(Results.model_json_schema())
     else:
-        from semitau.gen.study import json_schema
+        from semitau.gen.study_file.study import json_schema
 
         schema = dict(json_schema())
     text = json.dumps(schema, indent=2, ensure_ascii=False) + "\n"

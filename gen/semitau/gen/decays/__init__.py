@@ -1,0 +1,1 @@
+"""Couplings, form factors, amplitudes, rates and decay chains."""

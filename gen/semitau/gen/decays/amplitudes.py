@@ -1,0 +1,178 @@
+"""Helicity amplitudes of B -> X_c l nu: the one formula that rates, sampling and weights share.
+
+Conventions. B rest frame with +z along the W* (so the charmed meson flies along -z); theta is the polar angle of the
+lepton in the W* rest frame, cos(theta) = +1 along the W* flight, opposite to the charmed meson; theta_V is the angle of
+the D in the D* rest frame to the D* flight; chi = phi(lepton) - phi(D). With x = m_lepton / sqrt(q2),
+N = sqrt(q2 - m_lepton^2) and
+
+    a = J + x T,   b = x J + T  for each charm helicity,   t = x J_t + S,
+
+the amplitude for lepton helicity -1/2 is N K- and for +1/2 it is N K+, where
+
+    charm helicity   K-                       K+                      d
+    +                a_+ (1-cos th)/sqrt 2    -b_+ sin th / sqrt 2    + sin th_V / sqrt 2
+    -                a_- (1+cos th)/sqrt 2    +b_- sin th / sqrt 2    - sin th_V / sqrt 2
+    0                -a_0 sin th              t + b_0 cos th          cos th_V
+
+B -> D has helicity 0 only. B -> D* -> D pi: sqrt(3) N sum e^{i lambda chi} d K, coherent. For D**, whose decay is taken
+as isotropic, the helicities add incoherently. |amplitude|^2 is in units where
+
+    d Gamma / d q2 d cos(theta) = G_F^2 V_cb^2 / (32 pi^3 M^2) |p| (1 - m_lepton^2/q2) sum |amplitude|^2.
+
+Checked point by point against products of explicit Dirac matrices (tests/gen/test_amplitudes.py).
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass, fields
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+from semitau.core.constants import BOTTOM_MASS, CHARM_MASS
+
+from ..truth.kinematics import Floats, kallen
+from .decay import Decay
+from .form_factor_values import PseudoscalarFormFactors, VectorFormFactors
+from .orbital_amplitudes import orbital_currents
+from .tensor_form_factors import VectorTensorFormFactors, pseudoscalar_tensor, vector_tensor
+
+Complexes = NDArray[np.complex128]
+
+
+@dataclass(frozen=True)
+class HelicityAmplitudes:
+    """Amplitudes of the hadron current, each complex128 of the shape of q2, in GeV.
+
+    J : vector and axial current for charm helicity +, -, 0 and timelike. S : scalar. T : tensor.
+    Without complex couplings all imaginary parts are zero.
+    """
+
+    J_plus: Complexes
+    J_minus: Complexes
+    J_zero: Complexes
+    J_t: Complexes
+    S: Complexes
+    T_plus: Complexes
+    T_minus: Complexes
+    T_zero: Complexes
+
+    def with_lepton(self, x: ArrayLike) -> LeptonAmplitudes:
+        """Combinations for a lepton of x = m_lepton / sqrt(q2)."""
+        x = np.asarray(x, dtype=np.float64)
+        return LeptonAmplitudes(
+            a_plus=self.J_plus + x * self.T_plus,
+            a_minus=self.J_minus + x * self.T_minus,
+            a_zero=self.J_zero + x * self.T_zero,
+            b_plus=x * self.J_plus + self.T_plus,
+            b_minus=x * self.J_minus + self.T_minus,
+            b_zero=x * self.J_zero + self.T_zero,
+            t=x * self.J_t + self.S,
+        )
+
+
+@dataclass(frozen=True)
+class LeptonAmplitudes:
+    """a (lepton helicity -1/2) and b, t (+1/2) of the table above; complex128 of the shape of q2, GeV."""
+
+    a_plus: Complexes
+    a_minus: Complexes
+    a_zero: Complexes
+    b_plus: Complexes
+    b_minus: Complexes
+    b_zero: Complexes
+    t: Complexes
+
+
+def helicity_amplitudes(decay: Decay, q2: ArrayLike) -> HelicityAmplitudes:
+    """Amplitudes of the hadron current at q2 (GeV2, any shape, 0 < q2 <= (M-m)^2)."""
+    q2 = np.asarray(q2, dtype=np.float64)
+    if decay.orbital is not None:
+        return _orbital(decay, q2)
+    values = decay.model(decay.m_parent, decay.m_charm, q2)
+    if isinstance(values, VectorFormFactors):
+        tensor = vector_tensor(decay.tensor, values, decay.m_parent, decay.m_charm, q2)
+        return vector_amplitudes(decay, q2, values, tensor)
+    f_T = pseudoscalar_tensor(decay.tensor, values, decay.m_parent, decay.m_charm, q2)
+    return pseudoscalar_amplitudes(decay, q2, values, f_T)
+
+
+def lepton_amplitudes(decay: Decay, q2: ArrayLike) -> LeptonAmplitudes:
+    """Amplitudes for both lepton helicities at q2 (GeV2, any shape)."""
+    q2 = np.asarray(q2, dtype=np.float64)
+    return helicity_amplitudes(decay, q2).with_lepton(decay.m_lepton / np.sqrt(q2))
+
+
+def _amplitudes(q2: Floats, **given: ArrayLike) -> HelicityAmplitudes:
+    """The given amplitudes as complex arrays, the others zero."""
+    names = (field.name for field in fields(HelicityAmplitudes))
+    return HelicityAmplitudes(
+        **{name: np.asarray(given.get(name, np.zeros(q2.shape)), dtype=np.complex128) for name in names}
+    )
+
+
+def pseudoscalar_amplitudes(
+    decay: Decay, q2: Floats, values: PseudoscalarFormFactors, f_T: Floats
+) -> HelicityAmplitudes:
+    """B -> D from given form factors; masses and couplings of `decay`."""
+    M, m, c = decay.m_parent, decay.m_charm, decay.couplings
+    size, gap = np.sqrt(kallen(M, m, q2)), M**2 - m**2
+    vector = 1.0 + c.VL + c.VR
+    return _amplitudes(
+        q2,
+        J_zero=-0.5 * vector * size / np.sqrt(q2) * values.f_plus,
+        J_t=0.5 * vector * gap / np.sqrt(q2) * values.f_zero,
+        S=0.5 * (c.SL + c.SR) * gap * values.f_zero / (BOTTOM_MASS - CHARM_MASS),
+        T_zero=-2.0 * c.T * size * f_T / (M + m),
+    )
+
+
+def vector_amplitudes(
+    decay: Decay, q2: Floats, values: VectorFormFactors, tensor: VectorTensorFormFactors
+) -> HelicityAmplitudes:
+    """B -> D* from given form factors; masses and couplings of `decay`."""
+    M, m, c = decay.m_parent, decay.m_charm, decay.couplings
+    square = kallen(M, m, q2)
+    size, root, gap = np.sqrt(square), np.sqrt(q2), M**2 - m**2
+    axial, vector = 1.0 + c.VL - c.VR, 1.0 + c.VL + c.VR
+    transverse, parity = axial * (M + m) * values.A1, vector * size * values.V / (M + m)
+    T_even, T_odd = gap * tensor.T2, size * tensor.T1
+    return _amplitudes(
+        q2,
+        J_plus=0.5 * (transverse - parity),
+        J_minus=0.5 * (transverse + parity),
+        J_zero=0.5 * axial * values.F1 / root,
+        J_t=-0.5 * axial * size / root * values.A0,
+        S=-0.5 * (c.SR - c.SL) * size * values.A0 / (BOTTOM_MASS + CHARM_MASS),
+        T_plus=-2.0 * c.T * (T_even + T_odd) / root,
+        T_minus=-2.0 * c.T * (T_even - T_odd) / root,
+        T_zero=-(c.T / m) * ((M**2 + 3.0 * m**2 - q2) * tensor.T2 - square * tensor.T3 / gap),
+    )
+
+
+def _orbital(decay: Decay, q2: Floats) -> HelicityAmplitudes:
+    """B -> D**. Scalar and tensor currents follow from the equations of motion, exact at leading order in 1/m."""
+    currents = orbital_currents(decay, q2)
+    M, m, c = decay.m_parent, decay.m_charm, decay.couplings
+    root, total, difference = np.sqrt(q2), M + m, M - m
+    axial, vector = 1.0 + c.VL - c.VR, 1.0 + c.VL + c.VR
+    timelike = -0.5 * currents.timelike  # the helicity table has J_t and J_0 of opposite sign
+    drag = np.sqrt(kallen(M, m, q2)) * currents.timelike
+    # The current that carries the polarisation vector of the charmed meson is the vector one in 1+ states, the axial
+    # one in 0+ and 2+; the other one has the epsilon tensor.
+    if currents.natural_is_vector:
+        even, odd, scalar = vector, axial, (c.SL + c.SR) / (BOTTOM_MASS - CHARM_MASS)
+        tensor, with_even, with_odd = -c.T, total, difference
+    else:
+        even, odd, scalar = axial, vector, (c.SR - c.SL) / (BOTTOM_MASS + CHARM_MASS)
+        tensor, with_even, with_odd = c.T, difference, total
+    return _amplitudes(
+        q2,
+        J_plus=0.5 * (even * currents.transverse - odd * currents.parity),
+        J_minus=0.5 * (even * currents.transverse + odd * currents.parity),
+        J_zero=0.5 * even * currents.longitudinal,
+        J_t=even * timelike,
+        S=scalar * root * timelike,
+        T_plus=-2.0 * tensor * (with_even * currents.transverse + with_odd * currents.parity) / root,
+        T_minus=-2.0 * tensor * (with_even * currents.transverse - with_odd * currents.parity) / root,
+        T_zero=-2.0 * tensor * (with_even * currents.longitudinal - drag / with_odd) / root,
+    )

@@ -1,0 +1,1 @@
+"""Detector response and reconstruction, on blocks of events."""

@@ -1,0 +1,133 @@
+"""Whole events instead of histograms: truth and candidates of a run of decays, for event files and for tests."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core.compiled import kernel
+from semitau.core.streams import event_key
+
+from .. import block as row
+from ..block import LANES, ROWS
+from ..templates.binning import ROW_OF, Axes, Cuts, place
+from ..templates.chunk import FOUND_STEPS
+from ..templates.chunk_tasks import NOMINAL, Bench
+from ..templates.component_plan import ChannelPlan
+from ..truth.channel_table import ChannelTable, channel_table
+from ..truth.drawing import draw_decays
+from .candidates import Scenario, Windows, reconstruct
+from .compaction import move
+from .detector import Chain, Detector
+from .finding import find, list_found
+from .measuring import measure
+from .setup import kernel_chain
+
+Floats = npt.NDArray[np.float64]
+Integers = npt.NDArray[np.int64]
+Keys = npt.NDArray[np.uint64]
+
+
+def _momentum(name: str, first: int) -> dict[str, int]:
+    return {f"{name}_{axis}": first + k * LANES for k, axis in enumerate(("px", "py", "pz", "E"))}
+
+
+TRUTH_ROWS = {
+    "q2": row.Q2,
+    "cos_theta": row.COS_THETA,
+    "cos_theta_V": row.COS_V,
+    "cos_chi": row.COS_CHI,
+    "sin_chi": row.SIN_CHI,
+    **_momentum("D", row.D_PX),
+    **_momentum("soft", row.SOFT_PX),
+    **_momentum("pion", row.PION_PX),
+    **_momentum("tau", row.TAU_PX),
+    **_momentum("lepton", row.LEPTON_PX),
+}
+"""Column of the truth -> row of the block. Momenta in GeV in the rest frame of the B, zero for absent particles."""
+
+CANDIDATE_ROWS = {**ROW_OF, "category": row.CATEGORY, "soft_found": row.SOFT_FOUND, "tag_wrong": row.TAG_WRONG}
+"""Column of the candidates -> row of the block."""
+
+_TRUTH = np.array(list(TRUTH_ROWS.values()), dtype=np.int64)
+_CANDIDATE = np.array(list(CANDIDATE_ROWS.values()), dtype=np.int64)
+
+
+@dataclass(frozen=True, eq=False)
+class Events:
+    """Decays and their candidates.
+
+    truth (columns of TRUTH_ROWS, n). candidates (columns of CANDIDATE_ROWS, m): all with a category, whether or not
+    the study has it. number (m,) : which decay each belongs to. selected (m,) : 1 if it is in a template, else 0.
+    """
+
+    first: int
+    truth: Floats
+    candidates: Floats
+    number: Integers
+    selected: Integers
+
+
+def event_recorder(
+    plan: ChannelPlan, bench: Bench, stream: np.uint64, scenario: Scenario = NOMINAL
+) -> Callable[[int, int], Events]:
+    """A function of (first, n) that gives the decays first ... first + n - 1 of a channel's stream.
+
+    They are the events that `chunk.fill_chunk` makes of the same stream, in this scenario.
+    """
+    table, chain = channel_table(plan.channel), kernel_chain(plan.channel)
+
+    def record(first: int, n: int) -> Events:
+        truth = np.empty((len(_TRUTH), n))
+        candidates = np.empty((len(_CANDIDATE), n))
+        number, selected = np.empty(n, dtype=np.int64), np.empty(n, dtype=np.int64)
+        flow = np.zeros(bench.shape, dtype=np.int64)
+        m = _record(
+            stream, first, n, table, chain, bench.detector, bench.quantiles, scenario, bench.windows, bench.cuts,
+            bench.axes, flow, truth, candidates, number, selected,
+        )  # fmt: skip
+        return Events(first, truth, candidates[:, :m], number[:m], selected[:m])
+
+    return record
+
+
+@kernel
+def _record(
+    stream: np.uint64, first: int, events: int, table: ChannelTable, chain: Chain, detector: Detector,
+    quantiles: Floats, scenario: Scenario, windows: Windows, cuts: Cuts, axes: Axes, flow: Integers,
+    truth: Floats, candidates: Floats, number: Integers, selected: Integers,
+) -> int:  # fmt: skip
+    """As `fill_chunk`, but block by block without packing across blocks; returns how many candidates there are."""
+    x, y = np.zeros(ROWS * LANES), np.zeros(ROWS * LANES)
+    keys, y_keys = np.zeros(LANES, dtype=np.uint64), np.zeros(LANES, dtype=np.uint64)
+    numbers, y_numbers = np.zeros(LANES, dtype=np.uint64), np.zeros(LANES, dtype=np.uint64)
+    lanes = np.zeros(LANES, dtype=np.uint64)
+    bins = np.zeros(LANES, dtype=np.int64)
+    found = np.zeros(FOUND_STEPS, dtype=np.int64)
+    total = 0
+    for begin in range(0, events, LANES):
+        here = min(LANES, events - begin)
+        first_event = np.uint64(first + begin)
+        for i in range(LANES):
+            numbers[i] = first_event + np.uint64(i)
+            keys[i] = event_key(stream, numbers[i])
+        draw_decays(x, table, stream, first_event)
+        for k in range(_TRUTH.shape[0]):
+            for i in range(here):
+                truth[k, begin + i] = x[_TRUTH[k] + i]
+        find(x, keys, chain, detector, quantiles)
+        passed = list_found(x, here, found, lanes)
+        move(x, keys, numbers, lanes, 0, passed, y, y_keys, y_numbers, 0)
+        measure(y, y_keys, chain, detector)
+        reconstruct(y, chain, detector.beams, scenario, windows)
+        place(y, passed, cuts, axes, flow, bins)
+        for i in range(passed):
+            if y[row.CATEGORY + i] >= 0.0:
+                for k in range(_CANDIDATE.shape[0]):
+                    candidates[k, total] = y[_CANDIDATE[k] + i]
+                number[total] = np.int64(y_numbers[i])
+                selected[total] = 1 if bins[i] >= 0 else 0
+                total += 1
+    return total

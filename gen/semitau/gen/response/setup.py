@@ -1,0 +1,100 @@
+"""The study's machine and detector in the form that compiled kernels take."""
+
+from __future__ import annotations
+
+import numpy as np
+from semitau.core.constants import MASS
+
+from ..decays.chains import Channel
+from ..study_file.detector import Curve
+from ..study_file.study import StudyConfig
+from . import detector as kernel
+from .candidates import Windows
+from .efficiency import Efficiency, piecewise_linear
+
+_SOFT = {
+    "none": kernel.NO_PARTICLE,
+    "charged_pion": kernel.CHARGED_PION,
+    "neutral_pion": kernel.NEUTRAL_PION,
+    "photon": kernel.PHOTON,
+}
+_BACHELOR = {"none": kernel.NO_PARTICLE, "charged": kernel.CHARGED_PION, "neutral": kernel.NEUTRAL_PION}
+
+
+def kernel_detector(study: StudyConfig) -> kernel.Detector:
+    """Everything that the response kernels need to know of the experiment."""
+    d = study.detector
+    soft = d.soft_pion
+    return kernel.Detector(
+        beams=kernel.beams(*study.experiment.beam_energies, study.experiment.energy_spread),
+        tag=kernel.Tag(
+            d.tag.momentum_resolution,
+            d.tag.wrong_momentum_resolution,
+            d.tag.wrong_fraction,
+            d.tag.wrong_charge_fraction,
+        ),
+        tracks=kernel.Tracks(
+            *d.tracks.momentum_resolution,
+            d.tracks.angle_resolution,
+            *_cosines(d.tracks.polar_acceptance),
+            d.tracks.minimum_transverse_momentum,
+            _curve(d.tracks.efficiency),
+        ),
+        photons=kernel.Photons(
+            *d.photons.energy_resolution, d.photons.angle_resolution, *_cosines(d.photons.polar_acceptance)
+        ),
+        leptons=kernel.Leptons(
+            _curve(d.lepton_id.e), _curve(d.lepton_id.mu), _curve(d.lepton_id.e_as_mu), _curve(d.lepton_id.mu_as_e)
+        ),
+        soft=kernel.SoftParticles(
+            _curve(soft.charged),
+            _curve(soft.neutral),
+            _curve(d.photons.efficiency),
+            soft.random.charged,
+            soft.random.neutral,
+            soft.random.photon,
+            *soft.random_window,
+        ),
+        residual=kernel.Residual(
+            d.residual_energy.clean_fraction,
+            d.residual_energy.noise_mean,
+            d.residual_energy.wrong_tag_mean,
+            d.residual_energy.lost_neutral_probability,
+        ),
+    )
+
+
+def kernel_chain(channel: Channel) -> kernel.Chain:
+    """What the response needs to know of a decay chain."""
+    return kernel.Chain(
+        parent_mass=MASS[channel.parent],
+        d_mass=channel.m_ground,
+        dst0_mass=MASS["D*0"],
+        dstp_mass=MASS["D*+"],
+        charged_parent=int(channel.parent == "B+"),
+        charged_d=int(channel.ground == "D+"),
+        muon=int(channel.seen_lepton == "mu"),
+        soft=_SOFT[channel.soft],
+        pion=_BACHELOR[channel.bachelor],
+    )
+
+
+def delta_m_windows(study: StudyConfig) -> Windows:
+    """The delta_m cuts of the D* categories; those of [selection] where the study lacks a category."""
+    given = {(c.charm, c.lepton): c.cuts.get("delta_m") for c in study.categories}
+    limits = []
+    for charm in ("D*0", "D*+"):
+        for lepton in ("e", "mu"):
+            cut = given.get((charm, lepton), study.selection.get("delta_m"))
+            limits.append(-np.inf if cut is None or cut.min is None else cut.min)
+            limits.append(np.inf if cut is None or cut.max is None else cut.max)
+    return Windows(*map(float, limits))
+
+
+def _curve(curve: Curve) -> Efficiency:
+    return piecewise_linear(curve.momentum, curve.value)
+
+
+def _cosines(angles: tuple[float, float]) -> tuple[float, float]:
+    """Limits of the cosine, increasing, for limits of the polar angle."""
+    return float(np.cos(angles[1])), float(np.cos(angles[0]))

@@ -1,0 +1,1 @@
+"""Backgrounds by shape."""

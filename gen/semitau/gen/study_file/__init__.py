@@ -1,0 +1,1 @@
+"""The study file: reading, checking, its models."""

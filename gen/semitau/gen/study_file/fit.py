@@ -1,0 +1,71 @@
+"""[fit] and [toys]: what is fitted, and how often."""
+
+from __future__ import annotations
+
+from typing import Annotated, Any, ClassVar, Literal
+
+from pydantic import BeforeValidator, Field, model_validator
+
+from .names import RatioName
+from .rules import Count, Flag, Increasing, Positive, ShortTable, Table, Text, broken, suggestion
+
+
+class FitData(ShortTable):
+    """What is fitted: "expected", "pseudo" (independent events), or { file = "data.root" }.
+
+    The file holds histograms <category>/data with the axes of the study.
+    """
+
+    short_schema: ClassVar[dict[str, Any]] = {"enum": ["expected", "pseudo"]}
+
+    kind: Literal["expected", "pseudo", "file"] = Field(default="file", description="rather written short")
+    file: Text | None = Field(default=None, description="ROOT file, beside the study file unless absolute")
+
+    @model_validator(mode="before")
+    @classmethod
+    def _from_word(cls, given: Any) -> Any:
+        if isinstance(given, FitData | dict):
+            return given
+        if given in ("expected", "pseudo"):
+            return {"kind": given}
+        near = suggestion(given, ("expected", "pseudo"))
+        raise broken("is no data", '"expected", "pseudo" or { file = "data.root" }', near)
+
+    @model_validator(mode="after")
+    def _complete(self) -> FitData:
+        if (self.kind == "file") != (self.file is not None):
+            raise broken("is no data", '"expected", "pseudo" or { file = "data.root" }')
+        return self
+
+
+class FitSection(Table):
+    """What is fitted, and how."""
+
+    ratios: Literal["isospin", "separate"] = Field(
+        default="isospin", description='"separate": R_D and R_Dst for B⁺ and B⁰ on their own'
+    )
+    template_statistics: Flag = Field(default=True, description="finite template statistics in the likelihood")
+    data: FitData = Field(default=FitData(kind="expected"), description="what is fitted")
+    injected: dict[RatioName, Positive] = Field(
+        default={}, description="ratios that templates are made with; those of the form factors if left out"
+    )
+
+
+class Linearity(ShortTable):
+    """Toys at several injected ratios. In the file: a table, or false."""
+
+    short_schema: ClassVar[dict[str, Any]] = {"const": False}
+
+    factors: Annotated[tuple[Positive, ...], Field(min_length=2), Increasing] = Field(
+        default=(0.8, 1.0, 1.2, 1.4), description="of all injected ratios at once"
+    )
+    number: Count = Field(default=500, description="toys at each")
+
+
+class Toys(Table):
+    """Pseudo-experiments that try the fit."""
+
+    number: Count = Field(default=2000, description="toys at the injected ratios")
+    linearity: Annotated[Linearity | None, BeforeValidator(lambda given: None if given is False else given)] = Field(
+        default=Linearity(), description="false switches it off"
+    )

@@ -1,0 +1,113 @@
+"""Which variations of a study act on anything, and if not, why."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+
+from ..decays.form_factor_set import FormFactors, form_factor_sets, form_factors
+from .components import Mode
+from .names import FORM_FACTORS_OF
+from .rules import shown, suggestion
+from .sections import Conflict, Sections
+from .variations import (
+    ComponentFraction,
+    FormFactor,
+    FormFactorDirection,
+    LeptonIdentificationEfficiency,
+    Misidentification,
+    SoftPionEfficiency,
+)
+
+# Parameters that only normalise all form factors of their decay; templates and ratios do not know them (physics: the
+# normalisation of the rate is a yield of the fit).
+NORMALISATIONS = {"h(1)", "V1(1)", "tau(1)", "zeta(1)"}
+
+
+def idle_variations(sections: Sections) -> Iterator[Conflict]:
+    """Variations that would change no template; only those that can be judged with the tables that are sound."""
+    modes = list(sections.modes.values())
+    leptons = {category.lepton for category in sections.categories.values()}
+    for i, variation in sections.variations.items():
+        place = ("variation", i)
+        match variation:
+            case FormFactor() | FormFactorDirection():
+                if "mode" in sections.whole and not any(_described(mode, variation.set) for mode in modes):
+                    what = "acts on nothing: no mode has these form factors"
+                    yield Conflict((*place, "set"), what, shown(variation.set), remedy="Remove the variation.")
+                else:
+                    yield from _form_factor(sections, place, variation)
+            case ComponentFraction():
+                yield from _fraction(sections, place, variation)
+            case SoftPionEfficiency():
+                if "mode" in sections.whole and all(mode.charm == ("D",) for mode in modes):
+                    what = "acts on nothing: no mode has a D*"
+                    yield Conflict(place, what, remedy="Remove the variation.")
+            case LeptonIdentificationEfficiency():
+                if "category" in sections.whole and variation.lepton not in leptons:
+                    what = "acts on nothing: no category has this lepton"
+                    yield Conflict((*place, "lepton"), what, shown(variation.lepton), ", ".join(sorted(leptons)))
+            case Misidentification():
+                taken = {
+                    sections.categories[name].lepton
+                    for background in sections.backgrounds.values()
+                    if background.misidentified
+                    for name, expected in background.expected.items()
+                    if expected and name in sections.categories
+                }
+                if {"category", "background"} <= sections.whole and variation.lepton not in taken:
+                    what = "acts on nothing: no background with misidentified = true in a category of this lepton"
+                    yield Conflict((*place, "lepton"), what, shown(variation.lepton))
+
+
+def _described(mode: Mode, transition: str) -> bool:
+    return any(FORM_FACTORS_OF[charm] == transition for charm in mode.charm)
+
+
+def _members(sections: Sections, transition: str) -> FormFactors | None:
+    if sections.form_factors is None:
+        return None
+    name = getattr(sections.form_factors, transition)
+    if name not in form_factor_sets() or transition not in form_factors(name).transitions:
+        return None
+    return form_factors(name)[transition]
+
+
+def _form_factor(
+    sections: Sections, place: tuple[str, int], variation: FormFactor | FormFactorDirection
+) -> Iterator[Conflict]:
+    known = _members(sections, variation.set)
+    if known is None:
+        return
+    idle = "acts on nothing: the fit's yields take up the normalisation of a rate"
+    if isinstance(variation, FormFactor):
+        given, allowed = variation.parameter, [name for name in known.names if name not in NORMALISATIONS]
+        if given in NORMALISATIONS and given in known.names:
+            yield Conflict((*place, "parameter"), idle, shown(given), ", ".join(allowed))
+        elif given not in known.names:
+            near = suggestion(given, allowed)
+            what = "is no parameter of the set"
+            yield Conflict((*place, "parameter"), what, shown(given), ", ".join(allowed), near)
+        return
+    directions = known.directions
+    if variation.direction > len(directions):
+        what = "is no direction of the set"
+        yield Conflict((*place, "direction"), what, str(variation.direction), f"1 to {len(directions)}")
+        return
+    moved = {name for name, shift in zip(known.names, directions[variation.direction - 1], strict=True) if shift != 0}
+    if moved <= NORMALISATIONS:
+        yield Conflict((*place, "direction"), idle, f"{variation.direction}, along {', '.join(sorted(moved))}")
+
+
+def _fraction(sections: Sections, place: tuple[str, int], variation: ComponentFraction) -> Iterator[Conflict]:
+    by_name = {mode.name: mode for mode in sections.modes.values()}
+    mixed = [mode for mode in by_name.values() if variation.charm in mode.charm and len(mode.charm) > 1]
+    for k, name in enumerate(variation.components or ()):
+        where = (*place, "components", k)
+        if name not in sections.components or (name not in by_name and "mode" in sections.whole):
+            yield Conflict(where, "is no mode", shown(name), ", ".join(by_name), suggestion(name, by_name))
+        elif name in by_name and by_name[name] not in mixed:
+            wanted = ", ".join(mode.name for mode in mixed)
+            yield Conflict(where, f"does not mix {variation.charm} with other charm", shown(name), wanted)
+    if variation.components is None and not mixed and "mode" in sections.whole:
+        what = "acts on nothing: no mode mixes it with other charm"
+        yield Conflict((*place, "charm"), what, shown(variation.charm))

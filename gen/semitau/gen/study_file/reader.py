@@ -1,0 +1,169 @@
+"""Study files: read, checked whole, every problem told at once with file, line, key, value and remedy."""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from collections.abc import Iterable, Mapping
+from pathlib import Path
+from typing import Any
+
+from pydantic import TypeAdapter, ValidationError
+from pydantic_core import ErrorDetails
+from semitau.core.errors import InputError, Problem
+
+from .conflicts import conflicts
+from .faults import conflict
+from .places import key_of
+from .sections import SECTIONS, Conflict, Sections
+from .study import CONFLICTS, StudyConfig
+from .toml_lines import TomlLines
+
+MOST_BYTES = 4_000_000
+
+
+def read_study(path: Path | str) -> StudyConfig:
+    """The study in a TOML file, with its text and path.
+
+    Raises InputError with every problem found: a file that cannot be read or is no TOML, unknown or missing keys, wrong
+    types and units, broken rules within and between tables, files that the study names but that are not there.
+    """
+    path = Path(path)
+    text = _text(path)
+    data = _tables(text, path)
+    study, found = checked(data, path.parent)
+    if study is None:
+        lines = TomlLines(text)
+        raise InputError(*_problems(found, data, lines, path))
+    return study.read_from(path, text)
+
+
+def _text(path: Path) -> str:
+    try:
+        content = path.read_bytes()
+    except FileNotFoundError:
+        raise InputError(Problem("there is no such file", str(path))) from None
+    except IsADirectoryError:
+        raise InputError(Problem("is a folder", str(path), remedy="Name the study file in it.")) from None
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or str(error)
+        raise InputError(Problem("cannot be read", str(path), got=reason)) from None
+    if len(content) > MOST_BYTES:
+        problem = Problem(
+            "is too large for a study file", str(path), f"{len(content)} bytes", f"up to {MOST_BYTES} bytes"
+        )
+        raise InputError(problem)
+    try:
+        # universal newlines, as TOML asks; a byte-order mark, which some editors write, is no harm
+        return content.decode("utf-8-sig").replace("\r\n", "\n")
+    except UnicodeDecodeError as error:
+        line = content[: error.start].count(b"\n") + 1
+        remedy = "Save the file as UTF-8 text."
+        raise InputError(Problem("is no UTF-8 text", f"{path}:{line}", remedy=remedy)) from None
+
+
+def _tables(text: str, path: Path) -> dict[str, Any]:
+    try:
+        return tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        message, place = _syntax(str(error), text)
+        raise InputError(Problem(f"is no TOML: {message}", f"{path}:{place}")) from None
+    except RecursionError:
+        raise InputError(Problem("is no TOML: nested too deeply", str(path))) from None
+    except ValueError as error:  # such as a date that does not exist, or a number of too many digits
+        raise InputError(Problem(f"is no TOML: {_lower(str(error))}", str(path))) from None
+
+
+def _syntax(message: str, text: str) -> tuple[str, str]:
+    """Message and "line:column" of a syntax error."""
+    match = re.fullmatch(r"(.*?)\s*\(at (?:line (\d+), column (\d+)|end of document)\)", message, re.DOTALL)
+    if match is None:
+        return _lower(message), "1:1"
+    last = text.rstrip().rfind("\n")
+    end = (text.rstrip().count("\n") + 1, len(text.rstrip()) - last)
+    line, column = (match[2], match[3]) if match[2] else end
+    return _lower(match[1]) + ("" if match[2] else " at the end of the file"), f"{line}:{column}"
+
+
+def _lower(message: str) -> str:
+    return message[:1].lower() + message[1:]
+
+
+def checked(data: Mapping[str, Any], folder: Path) -> tuple[StudyConfig | None, list[Conflict]]:
+    """The study in tables as read from TOML, or None and all that is wrong with them.
+
+    folder : where files that the study names are looked for.
+    """
+    try:
+        return StudyConfig.model_validate(data, context={"folder": folder}), []
+    except ValidationError as error:
+        found: list[Conflict] = []
+        for item in error.errors(include_url=False):
+            if item["type"] == CONFLICTS:
+                found += item["ctx"]["conflicts"]
+            elif not _miscounted(item):
+                found.append(conflict(StudyConfig, data, item))
+        if not any(item["type"] == CONFLICTS for item in error.errors(include_url=False)):
+            found += conflicts(_sound_sections(data, folder))
+        return None, found
+
+
+def _miscounted(item: ErrorDetails) -> bool:
+    """True for "too short" of a list that is long enough but for elements with problems of their own."""
+    given = item["input"]
+    return item["type"] == "too_short" and isinstance(given, list | dict) and len(given) >= item["ctx"]["min_length"]
+
+
+def _sound_sections(data: Mapping[str, Any], folder: Path) -> Sections:
+    """The tables that can be understood although others cannot."""
+    sound: dict[str, dict[int, Any]] = {}
+    whole = set()
+    for key in SECTIONS:
+        tables = data.get(key, [])
+        field = next(info for info in StudyConfig.model_fields.values() if info.alias == key)
+        checked: TypeAdapter[Any] = TypeAdapter(field.annotation or Any)
+        sound[key] = {}
+        for i, table in enumerate(tables if isinstance(tables, list) else []):
+            if (element := _sound(checked, [table])) is not None:
+                sound[key][i] = element[0]
+        if isinstance(tables, list) and len(sound[key]) == len(tables):
+            whole.add(key)
+    named = [table.get("component") for key in ("mode", "background") for table in _list_of_tables(data.get(key))]
+    single = {
+        name: _sound(TypeAdapter(StudyConfig.model_fields[name].rebuild_annotation()), data.get(name, {}))
+        for name in ("selection", "detector", "form_factors", "fit")
+    }
+    return Sections(
+        modes=sound["mode"],
+        backgrounds=sound["background"],
+        category_tables=sound["category"],
+        variations=sound["variation"],
+        whole=frozenset(whole),
+        components=frozenset(name for name in named if isinstance(name, str)),
+        folder=folder,
+        **single,
+    )
+
+
+def _sound(adapter: TypeAdapter[Any], data: object) -> Any:
+    try:
+        return adapter.validate_python(data)
+    except ValidationError:
+        return None
+
+
+def _list_of_tables(data: object) -> list[Mapping[str, Any]]:
+    return [table for table in data if isinstance(table, Mapping)] if isinstance(data, list) else []
+
+
+def _problems(found: Iterable[Conflict], data: Mapping[str, Any], lines: TomlLines, path: Path) -> list[Problem]:
+    placed = [(lines.line(item.place), item) for item in dict.fromkeys(found)]
+    placed.sort(key=lambda pair: pair[0])
+    return [
+        Problem(item.what, f"{path}:{line}{_after_colon(key_of(item.place, data))}", item.got, item.wanted, item.remedy)
+        for line, item in placed
+    ]
+
+
+def _after_colon(key: str) -> str:
+    return f": {key}" if key else ""

@@ -1,0 +1,130 @@
+"""The study: everything that one study file says, checked, as frozen models.
+
+`study_file.read_study` makes it from a file. Names are those of the file; `modes`, `backgrounds` and `variations` stand
+for the tables [[mode]], [[background]] and [[variation]]; `categories` are the [[category]] tables written out.
+"""
+
+from __future__ import annotations
+
+import hashlib
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Any
+
+from pydantic import Field, PrivateAttr, ValidationInfo, model_validator
+from pydantic_core import PydanticCustomError
+
+from .categories import CategoryTable, Cuts, StudyCategory, written_out
+from .components import Background, Mode
+from .conflicts import conflicts
+from .detector import Detector
+from .fit import FitSection, Toys
+from .machine import Experiment, FormFactors, StudySection
+from .names import OBSERVABLES
+from .rules import Table
+from .sections import SECTIONS, Sections
+from .variations import Variation
+
+CONFLICTS = "semitau_conflicts"
+
+
+class StudyConfig(Table):
+    """A whole study. `text`, `path` and `digest` tell the file it came from."""
+
+    study: StudySection
+    experiment: Experiment
+    form_factors: FormFactors = FormFactors()
+    modes: tuple[Mode, ...] = Field(alias="mode", min_length=1)
+    backgrounds: tuple[Background, ...] = Field(default=(), alias="background")
+    detector: Detector = Detector()
+    selection: Cuts = Field(default={}, description="cuts by observable; delta_m acts on D* categories only")
+    category_tables: tuple[CategoryTable, ...] = Field(alias="category", min_length=1)
+    variations: tuple[Variation, ...] = Field(default=(), alias="variation")
+    fit: FitSection = FitSection()
+    toys: Toys = Toys()
+
+    _text: str = PrivateAttr(default="")
+    _path: Path = PrivateAttr(default=Path("study.toml"))
+
+    @model_validator(mode="after")
+    def _agree(self, info: ValidationInfo) -> StudyConfig:
+        found = conflicts(self.sections(folder=(info.context or {}).get("folder")))
+        if found:
+            text = "; ".join(conflict.what for conflict in found)
+            raise PydanticCustomError(CONFLICTS, "{text}", {"text": text, "conflicts": found})
+        return self
+
+    def sections(self, folder: Path | None = None) -> Sections:
+        """The study as study_conflicts looks at it."""
+        return Sections(
+            modes=dict(enumerate(self.modes)),
+            backgrounds=dict(enumerate(self.backgrounds)),
+            category_tables=dict(enumerate(self.category_tables)),
+            variations=dict(enumerate(self.variations)),
+            selection=self.selection,
+            detector=self.detector,
+            form_factors=self.form_factors,
+            fit=self.fit,
+            whole=frozenset(SECTIONS),
+            components=frozenset((*(mode.name for mode in self.modes), *(item.name for item in self.backgrounds))),
+            folder=folder,
+        )
+
+    @property
+    def text(self) -> str:
+        """The study file as it was read; "" if the study was made otherwise."""
+        return self._text
+
+    @property
+    def path(self) -> Path:
+        """The study file."""
+        return self._path
+
+    @property
+    def digest(self) -> str:
+        """SHA-256 of `text`, hexadecimal."""
+        return hashlib.sha256(self._text.encode()).hexdigest()
+
+    def read_from(self, path: Path, text: str) -> StudyConfig:
+        """The same study with the file it came from."""
+        study = self.model_copy()
+        study._path, study._text = path, text
+        return study
+
+    def beside(self, file: str) -> Path:
+        """Path of a file that the study names: from the study file's folder unless absolute."""
+        return self._path.parent / Path(file)
+
+    @property
+    def categories(self) -> tuple[StudyCategory, ...]:
+        """All categories, in the file's order."""
+        return written_out(self.category_tables, self.selection)
+
+    def category(self, name: str) -> StudyCategory:
+        """The category of that name; KeyError if there is none."""
+        return {category.name: category for category in self.categories}[name]
+
+    def component(self, name: str) -> Mode | Background:
+        """The component of that name; KeyError if there is none."""
+        components: dict[str, Mode | Background] = {mode.name: mode for mode in self.modes}
+        return (components | {background.name: background for background in self.backgrounds})[name]
+
+    def followed_by(self, mode: Mode) -> Mode | None:
+        """The mode whose yield scales `mode`: what it `follows`, or the light mode of the same charm for a ratio."""
+        if mode.follows:
+            return next((other for other in self.modes if other.name == mode.follows), None)
+        if mode.scales_with is None:
+            return None
+        light = [m for m in self.modes if set(m.charm) == set(mode.charm) and "tau" not in m.leptons]
+        return light[0] if len(light) == 1 else None
+
+    @property
+    def observables(self) -> tuple[str, ...]:
+        """All observables on any axis, in the order of `study_names.OBSERVABLES`."""
+        used = {name for category in self.categories for name in category.axes}
+        return tuple(name for name in OBSERVABLES if name in used)
+
+
+def json_schema() -> Mapping[str, Any]:
+    """JSON schema of study files, for editors."""
+    return StudyConfig.model_json_schema(by_alias=True)

@@ -1,0 +1,128 @@
+"""The [[variation]] tables: named changes of the templates that become nuisance parameters of the fit.
+
+Each has a plus and a minus side at one standard deviation. `relative` is a relative change: 0.05 means ±5%.
+"""
+
+from __future__ import annotations
+
+from typing import Annotated, ClassVar, Literal
+
+from pydantic import Field
+
+from .names import CharmFamily, LightLepton, SoftKind
+from .rules import Count, Identifier, Positive, Table, Text
+
+FormFactorGroup = Literal["D", "Dst", "Dss"]
+_Relative = Annotated[Positive, Field(lt=1)]
+
+
+class _Named(Table):
+    """What every variation has."""
+
+    default_group: ClassVar[str]
+
+    name: Identifier = Field(description="name of the nuisance parameter")
+    label: Text | None = Field(default=None, description="in pictures and tables; the name if left out")
+    group: Text | None = Field(default=None, description="row of the budget; by kind if left out")
+
+    @property
+    def budget_group(self) -> str:
+        """Row of the uncertainty budget."""
+        return self.group or self.default_group
+
+
+class FormFactor(_Named):
+    """One parameter of a form-factor set, others kept."""
+
+    default_group: ClassVar[str] = "form factors"
+
+    kind: Literal["form_factor"]
+    set: FormFactorGroup = Field(description="which entry of [form_factors]")
+    parameter: Text = Field(description="as the set names it, e.g. R0(1)")
+    shift: Positive | None = Field(
+        default=None, description="in the parameter's unit; the set's uncertainty if left out"
+    )
+
+
+class FormFactorDirection(_Named):
+    """A principal direction of a set's covariance, one standard deviation along it; 1 is the widest."""
+
+    default_group: ClassVar[str] = "form factors"
+
+    kind: Literal["form_factor_direction"]
+    set: FormFactorGroup = Field(description="which entry of [form_factors]")
+    direction: Count = Field(description="counted from 1, in falling order of variance")
+
+
+class ComponentFraction(_Named):
+    """The share of one charm hadron within components that mix several; the total of each component stays."""
+
+    default_group: ClassVar[str] = "D** composition"
+
+    kind: Literal["fraction"]
+    charm: CharmFamily = Field(description="whose share changes")
+    components: tuple[Identifier, ...] | None = Field(
+        default=None, description="modes it acts on; all with this and other charm if left out"
+    )
+    relative: _Relative = Field(description="one standard deviation")
+
+
+class SoftPionEfficiency(_Named):
+    """Efficiency of the soft pion or photon of a D*."""
+
+    default_group: ClassVar[str] = "detector"
+
+    kind: Literal["soft_pion_efficiency"]
+    particle: SoftKind = Field(description="charged or neutral pion, or photon")
+    relative: _Relative = Field(description="one standard deviation")
+
+
+class LeptonIdentificationEfficiency(_Named):
+    """Identification efficiency of true leptons."""
+
+    default_group: ClassVar[str] = "detector"
+
+    kind: Literal["lepton_identification"]
+    lepton: LightLepton = Field(description="true lepton")
+    relative: _Relative = Field(description="one standard deviation")
+
+
+class Misidentification(_Named):
+    """Rate at which hadrons pass for a lepton: acts on the backgrounds with misidentified = true."""
+
+    default_group: ClassVar[str] = "detector"
+
+    kind: Literal["misidentification"]
+    lepton: LightLepton = Field(description="what the hadron is taken for")
+    relative: _Relative = Field(description="one standard deviation")
+
+
+class TagResolution(_Named):
+    """Width of the tag momentum, right and wrong tags alike."""
+
+    default_group: ClassVar[str] = "detector"
+
+    kind: Literal["tag_resolution"]
+    relative: _Relative = Field(description="one standard deviation")
+
+
+class MomentumScale(_Named):
+    """Scale of all charged-track momenta."""
+
+    default_group: ClassVar[str] = "detector"
+
+    kind: Literal["momentum_scale"]
+    relative: Annotated[Positive, Field(lt=0.1)] = Field(description="one standard deviation")
+
+
+Variation = Annotated[
+    FormFactor
+    | FormFactorDirection
+    | ComponentFraction
+    | SoftPionEfficiency
+    | LeptonIdentificationEfficiency
+    | Misidentification
+    | TagResolution
+    | MomentumScale,
+    Field(discriminator="kind"),
+]

@@ -1,0 +1,1 @@
+"""From events to templates: selection, filling, variations, pseudo-data, event files."""

@@ -1,0 +1,106 @@
+"""Templates of a study: every component generated, reconstructed, selected and filled with all its variations."""
+
+from __future__ import annotations
+
+import time
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core.templates import Template, TemplateSet
+
+from ..study_file.study import StudyConfig
+from .binning import cut_names
+from .chunk_tasks import make_bench
+from .component_parts import Report, component_parts, run_parts
+from .component_sums import ComponentSums
+from .cut_flow import CutFlow, step_names
+from .fit_components import components_and_parameters, template_categories, template_nuisances
+from .provenance import provenance
+from .variations import check_efficiencies
+
+Floats = npt.NDArray[np.float64]
+NEGLIGIBLE = 1e-6
+"""A variation that changes no bin of a template by this share is left out of it."""
+
+
+@dataclass(frozen=True, eq=False)
+class Build:
+    """Templates, the cut flow behind them, generated events, and timing: seconds of "wall" clock and of "kernels"
+    (threads added up)."""
+
+    templates: TemplateSet
+    cut_flow: CutFlow
+    events: int
+    timing: Mapping[str, float]
+
+
+def build_templates(study: StudyConfig, workers: int | None = None, report: Report | None = None) -> Build:
+    """Templates of all components in all categories, with all variations.
+
+    workers : threads, None for all cores; the result is the same to the last bit for any number.
+    report : called with the component at work, done and all generated events.
+
+    Raises
+    ------
+    InputError : a cut removes everything, a component has no events, a variation passes its limits, a file of a
+        background is not what it should be.
+    """
+    start = time.perf_counter()
+    check_efficiencies(study)
+    bench = make_bench(study, variations=True)
+    components, parameters = components_and_parameters(study)
+    sums = {component.name: ComponentSums(bench) for component in components}
+    events, seconds = 0, 0.0
+    for part, whole in run_parts(component_parts(study, bench, "templates"), bench, workers, report):
+        sums[part.component].add(part, whole)
+        events += whole.events
+        seconds += whole.seconds
+    flow = _cut_flow(study, sums)
+    flow.check()
+    templates = TemplateSet(
+        categories=template_categories(study),
+        components=components,
+        parameters=parameters,
+        nuisances=template_nuisances(study),
+        templates=_templates(study, sums),
+        provenance=provenance(study),
+    )
+    return Build(templates, flow, events, {"wall": time.perf_counter() - start, "kernels": seconds})
+
+
+def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:
+    return CutFlow(
+        steps=step_names(cut_names(study.categories)),
+        components=tuple(sums),
+        categories=tuple(category.name for category in study.categories),
+        events=np.stack([part.expected for part in sums.values()], axis=-1),
+        generated=np.stack([part.generated for part in sums.values()], axis=-1),
+        by_category=np.stack([part.by_category for part in sums.values()], axis=-1),
+    )
+
+
+def _templates(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> dict[tuple[str, str], Template]:
+    templates = {}
+    first = 0
+    for category in study.categories:
+        size = int(np.prod(category.shape))
+        here = slice(first, first + size)
+        first += size
+        for name, component in sums.items():
+            nominal = component.nominal[here]
+            sides = {side: contents[here] for side, contents in component.sides.items()}
+            acting = {variation for (variation, _), contents in sides.items() if _differs(contents, nominal)}
+            if nominal.any() or acting:
+                templates[category.name, name] = Template(
+                    nominal.reshape(category.shape),
+                    component.variance[here].reshape(category.shape),
+                    {v: sides[v, 1].reshape(category.shape) for v, sign in sides if sign == 1 and v in acting},
+                    {v: sides[v, -1].reshape(category.shape) for v, sign in sides if sign == -1 and v in acting},
+                )
+    return templates
+
+
+def _differs(contents: Floats, nominal: Floats) -> bool:
+    return bool(np.any(np.abs(contents - nominal) > NEGLIGIBLE * np.abs(nominal)))

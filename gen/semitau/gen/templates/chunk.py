@@ -1,0 +1,144 @@
+"""One task of the build: a run of decays of one chain, from random numbers to histograms of all variations."""
+
+from __future__ import annotations
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core.compiled import kernel
+from semitau.core.streams import event_key
+
+from ..block import CATEGORY, LANES, ROWS, SOFT_EFFICIENCY, SOFT_FOUND
+from ..response.candidates import Scenario, Windows, reconstruct
+from ..response.compaction import drop_unbinned, move
+from ..response.detector import Chain, Detector
+from ..response.finding import find, list_found
+from ..response.measuring import measure
+from ..truth.channel_table import ChannelTable
+from ..truth.drawing import draw_decays
+from ..truth.variation_weights import VariationTable, variation_weights
+from .binning import Axes, Cuts, count, place
+
+Floats = npt.NDArray[np.float64]
+Integers = npt.NDArray[np.int64]
+Keys = npt.NDArray[np.uint64]
+
+FOUND_STEPS = 3
+"""Steps that `fill_chunk` counts before there is a category: charm seen, lepton seen, lepton identified."""
+
+
+@kernel
+def fill_chunk(
+    stream: np.uint64, first: int, events: int, table: ChannelTable, chain: Chain, detector: Detector,
+    quantiles: Floats, variations: VariationTable, soft_factors: Floats, scenarios: Floats, windows: Windows,
+    cuts: Cuts, axes: Axes, found: Integers, flow: Integers, histogram: Floats,
+) -> None:  # fmt: skip
+    """Generate, reconstruct, select and fill `events` decays with numbers from `first` on.
+
+    stream : the chain's random stream. quantiles : for D+ -> K pi pi. soft_factors (s,) : on the soft efficiency.
+    scenarios (r, 2) : factors on tag width and track momenta; the first is the nominal one.
+    found (3,), flow (2 + cuts, categories) : grow by the nominal numbers of events, see `list_found` and `place`.
+    histogram (bins, 1 + variations + s + r - 1) : grows by 1 an event in column 0, by the weights of the form-factor
+        variations and of the soft efficiencies, and by 1 for each further scenario where it puts the event.
+    """
+    x, y = np.zeros(ROWS * LANES), np.zeros(ROWS * LANES)
+    keys, y_keys = np.zeros(LANES, dtype=np.uint64), np.zeros(LANES, dtype=np.uint64)
+    numbers, y_numbers = np.zeros(LANES, dtype=np.uint64), np.zeros(LANES, dtype=np.uint64)
+    lanes = np.zeros(LANES, dtype=np.uint64)
+    bins = np.zeros(LANES, dtype=np.int64)
+    weights = np.zeros((LANES, max(variations.variations, 1)))
+    lost_flow = np.zeros_like(flow)
+    filled = 0
+    for begin in range(0, events, LANES):
+        here = min(LANES, events - begin)
+        first_event = np.uint64(first + begin)
+        for i in range(LANES):
+            numbers[i] = first_event + np.uint64(i)
+            keys[i] = event_key(stream, numbers[i])
+        draw_decays(x, table, stream, first_event)
+        find(x, keys, chain, detector, quantiles)
+        passed = list_found(x, here, found, lanes)
+        done = 0
+        while done < passed:
+            take = min(passed - done, LANES - filled)
+            move(x, keys, numbers, lanes, done, take, y, y_keys, y_numbers, filled)
+            done += take
+            filled += take
+            if filled == LANES:
+                fill_block(
+                    y, y_keys, LANES, chain, detector, variations, soft_factors, scenarios, windows, cuts, axes, bins,
+                    weights, flow, lost_flow, histogram,
+                )  # fmt: skip
+                filled = 0
+    fill_block(
+        y, y_keys, filled, chain, detector, variations, soft_factors, scenarios, windows, cuts, axes, bins, weights,
+        flow, lost_flow, histogram,
+    )  # fmt: skip
+
+
+@kernel
+def fill_block(
+    y: Floats, keys: Keys, events: int, chain: Chain, detector: Detector, variations: VariationTable,
+    soft_factors: Floats, scenarios: Floats, windows: Windows, cuts: Cuts, axes: Axes, bins: Integers, weights: Floats,
+    flow: Integers, lost_flow: Integers, histogram: Floats,
+) -> None:  # fmt: skip
+    """The part of `fill_chunk` behind compaction: `events` found decays in one block."""
+    measure(y, keys, chain, detector)
+    weight_columns = variations.variations
+    soft_columns = soft_factors.shape[0]
+    for s in range(1, scenarios.shape[0]):
+        scenario = Scenario(scenarios[s, 0], scenarios[s, 1])
+        reconstruct(y, chain, detector.beams, scenario, windows)
+        place(y, events, cuts, axes, lost_flow, bins)
+        count(bins, events, weight_columns + soft_columns + s, histogram)
+    reconstruct(y, chain, detector.beams, Scenario(scenarios[0, 0], scenarios[0, 1]), windows)
+    place(y, events, cuts, axes, flow, bins)
+    count(bins, events, 0, histogram)
+    if soft_columns > 0:
+        fill_soft(y, bins, events, soft_factors, 1 + weight_columns, histogram)
+    if weight_columns > 0:
+        binned = drop_unbinned(y, events, bins)
+        variation_weights(y, variations, weights, binned)
+        fill_weights(bins, binned, weights, weight_columns, histogram)
+
+
+@kernel
+def fill_weights(bins: Integers, events: int, weights: Floats, columns: int, histogram: Floats) -> None:
+    """histogram[bin, 1 + v] += weights[event, v] for events that all have a bin."""
+    for i in range(events):
+        for v in range(columns):
+            histogram[bins[i], 1 + v] += weights[i, v]
+
+
+@kernel
+def fill_soft(y: Floats, bins: Integers, events: int, factors: Floats, column: int, histogram: Floats) -> None:
+    """Weights of a changed soft efficiency e' = f e: f if the particle was found, (1 - e')/(1 - e) if it was lost."""
+    for i in range(events):
+        if bins[i] >= 0:
+            efficiency = y[SOFT_EFFICIENCY + i]
+            found = y[SOFT_FOUND + i] == 1.0
+            for s in range(factors.shape[0]):
+                lost = (1.0 - factors[s] * efficiency) / (1.0 - efficiency) if efficiency < 1.0 else 0.0
+                histogram[bins[i], column + s] += factors[s] if found else lost
+
+
+@kernel
+def fill_drawn(
+    values: Floats, rows: Integers, code: int, cuts: Cuts, axes: Axes, flow: Integers, histogram: Floats
+) -> None:
+    """Select and fill events whose observables were drawn from shapes.
+
+    values (observables, events) : rows (observables,) says where each belongs in a block. code : their category.
+    flow, histogram (bins, 1) : as in `fill_chunk`.
+    """
+    y = np.zeros(ROWS * LANES)
+    bins = np.zeros(LANES, dtype=np.int64)
+    for i in range(LANES):
+        y[CATEGORY + i] = code
+    events = values.shape[1]
+    for begin in range(0, events, LANES):
+        here = min(LANES, events - begin)
+        for k in range(rows.shape[0]):
+            for i in range(here):
+                y[rows[k] + i] = values[k, begin + i]
+        place(y, here, cuts, axes, flow, bins)
+        count(bins, here, 0, histogram)

@@ -1,0 +1,126 @@
+"""The sources of all components of a study, decay chains and backgrounds in categories, and how they are run."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterator, Mapping, Sequence
+from contextlib import closing
+from dataclasses import dataclass
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core import engine
+from semitau.core.streams import stream_key
+
+from ..shapes.sampler import ShapeSampler
+from ..study_file.components import Background
+from ..study_file.study import StudyConfig
+from .chunk_tasks import Bench, Filled, Task, background_tasks, channel_columns, channel_tasks
+from .component_plan import ChannelPlan, plan_channels
+from .cut_flow import BEFORE_CATEGORIES
+from .variations import Side, background_factors
+
+Floats = npt.NDArray[np.float64]
+Report = Callable[[str, int, int | None], None]
+"""Called as report(what, done, total) from the calling thread."""
+
+
+@dataclass(frozen=True, eq=False)
+class Part:
+    """One source of a component: a decay chain, or a background in one category.
+
+    expected : decays or background events in the data, before detector and selection. events : how many are generated.
+    columns : sides in the histogram after the nominal column. factors : sides that are constant weights by category.
+    tasks : makes the chunks of a run of events.
+    """
+
+    component: str
+    expected: float
+    events: int
+    columns: Sequence[Side]
+    factors: Mapping[Side, Floats]
+    tasks: Callable[[int], Iterator[Task]]
+
+    @property
+    def weight(self) -> float:
+        """Expected events that each generated one counts."""
+        return self.expected / self.events
+
+
+class PartSums:
+    """Chunks of one part added up, in their order."""
+
+    def __init__(self, bench: Bench, columns: int) -> None:
+        self.events = 0
+        self.seconds = 0.0
+        self.found = np.zeros(len(BEFORE_CATEGORIES) - 1, dtype=np.int64)
+        self.flow = np.zeros(bench.shape, dtype=np.int64)
+        self.histogram = np.zeros((bench.bins, columns))
+
+    def add(self, filled: Filled) -> None:
+        """One more chunk."""
+        self.events += filled.events
+        self.seconds += filled.seconds
+        self.found += filled.found
+        self.flow += filled.flow
+        self.histogram += filled.histogram
+
+
+def component_parts(study: StudyConfig, bench: Bench, *purpose: str | int) -> list[Part]:
+    """All parts in the order of the study file: modes, then backgrounds.
+
+    purpose : names the random streams; other words give statistically independent events.
+    """
+    seed = study.study.seed
+    parts = [
+        _channel_part(plan, bench, stream_key(seed, *purpose, plan.mode, plan.channel.name))
+        for plan in plan_channels(study)
+    ]
+    for background in study.backgrounds:
+        sampler = ShapeSampler(background, study)
+        parts += [
+            _background_part(study, bench, background, sampler, name, stream_key(seed, *purpose, background.name, name))
+            for name in sampler.categories
+        ]
+    return parts
+
+
+def run_parts(
+    parts: Sequence[Part], bench: Bench, workers: int | None = None, report: Report | None = None
+) -> Iterator[tuple[Part, PartSums]]:
+    """Generate the events of all parts; iterates over parts and their sums in order, whatever the workers."""
+    total, done = sum(part.events for part in parts), 0
+    tasks = (task for part in parts for task in part.tasks(part.events))
+    with closing(engine.run(tasks, workers)) as results:  # type: ignore[type-var]
+        for part in parts:
+            sums = PartSums(bench, 1 + len(part.columns))
+            while sums.events < part.events:
+                filled = next(results)
+                sums.add(filled)
+                done += filled.events
+                if report is not None:
+                    report(part.component, done, total)
+            yield part, sums
+
+
+def _channel_part(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Part:
+    return Part(
+        component=plan.component,
+        expected=plan.expected,
+        events=plan.events,
+        columns=channel_columns(plan, bench),
+        factors=plan.variations.factors,
+        tasks=lambda events: channel_tasks(plan, bench, stream, events),
+    )
+
+
+def _background_part(
+    study: StudyConfig, bench: Bench, background: Background, sampler: ShapeSampler, category: str, stream: np.uint64
+) -> Part:
+    return Part(
+        component=background.name,
+        expected=background.expected[category],
+        events=max(background.events_in[category], 1),
+        columns=(),
+        factors=background_factors(study, background.misidentified),
+        tasks=lambda events: background_tasks(sampler, background, bench, category, stream, events),
+    )

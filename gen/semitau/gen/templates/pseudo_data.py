@@ -1,0 +1,50 @@
+"""Pseudo-data: a data set of the study from events that the templates do not know."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import replace
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core.streams import stream_key
+
+from ..study_file.study import StudyConfig
+from .chunk_tasks import make_bench
+from .component_parts import Part, Report, component_parts, run_parts
+
+Floats = npt.NDArray[np.float64]
+
+
+def pseudo_data(
+    study: StudyConfig,
+    workers: int | None = None,
+    report: Report | None = None,
+    *,
+    replica: int = 0,
+    factors: Mapping[str, float] | None = None,
+) -> dict[str, Floats]:
+    """Observed counts by category, each in the shape of its axes: whole numbers, as float64.
+
+    Every decay chain and background gets a Poisson number of events about its expectation; each of them is generated,
+    passes the detector or not, and counts one. The random streams are not those of the templates.
+
+    replica : another number is another, independent data set. factors : on the expectation of components (by name), to
+    inject other ratios or yields than the templates have.
+    """
+    bench = make_bench(study, variations=False)
+    parts = component_parts(study, bench, "pseudo-data", replica)
+    counts = np.random.default_rng(int(stream_key(study.study.seed, "pseudo-data counts", replica)))
+    drawn = [_with_counts(part, counts, (factors or {}).get(part.component, 1.0)) for part in parts]
+    observed = np.zeros(bench.bins)
+    for _, sums in run_parts([part for part in drawn if part.events > 0], bench, workers, report):
+        observed += sums.histogram[:, 0]
+    ends = np.cumsum([int(np.prod(category.shape)) for category in bench.categories])
+    return {
+        category.name: contents.reshape(category.shape)
+        for category, contents in zip(bench.categories, np.split(observed, ends[:-1]), strict=True)
+    }
+
+
+def _with_counts(part: Part, counts: np.random.Generator, factor: float) -> Part:
+    return replace(part, events=int(counts.poisson(part.expected * factor)))

@@ -1,0 +1,150 @@
+"""What each [[variation]] of a study does to one decay chain: weights, constant factors, or another scenario.
+
+Form factors and the soft-particle efficiency weigh every event; D** fractions, identification and misidentification are
+constant factors of a chain in a category; resolution and momentum scale reconstruct the same events anew, from the same
+random numbers. Plus and minus sides are at one standard deviation.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core.errors import InputError, Problem
+
+from ..decays.chains import Channel
+from ..decays.decay import Decay
+from ..decays.form_factor_set import FormFactorSet, form_factors
+from ..response.candidates import Scenario
+from ..study_file.detector import Curve
+from ..study_file.names import FORM_FACTORS_OF
+from ..study_file.study import StudyConfig
+from ..study_file.variations import (
+    ComponentFraction,
+    FormFactor,
+    FormFactorDirection,
+    LeptonIdentificationEfficiency,
+    Misidentification,
+    MomentumScale,
+    SoftPionEfficiency,
+    TagResolution,
+)
+
+Floats = npt.NDArray[np.float64]
+Side = tuple[str, int]
+"""Name of a variation, and +1 or -1."""
+
+SIGNS = (1, -1)
+_SOFT_KIND = {"charged": "charged_pion", "neutral": "neutral_pion", "photon": "photon"}
+
+
+@dataclass(frozen=True)
+class ChannelVariations:
+    """How the variations act on a channel; those that do not act on it are absent.
+
+    decays : the channel's decay with other form factors, to weigh events with (shape only).
+    soft : factors on the efficiency of its soft particle.
+    factors : (categories,) constant weights by category, in the study's order.
+    """
+
+    decays: Mapping[Side, Decay]
+    soft: Mapping[Side, float]
+    factors: Mapping[Side, Floats]
+
+
+def scenarios(study: StudyConfig) -> dict[Side, Scenario]:
+    """The reconstructions besides the nominal one."""
+    found: dict[Side, Scenario] = {}
+    for variation in study.variations:
+        for sign in SIGNS:
+            factor = 1.0 + sign * getattr(variation, "relative", 0.0)
+            if isinstance(variation, TagResolution):
+                found[variation.name, sign] = Scenario(tag_width=factor, momentum=1.0)
+            elif isinstance(variation, MomentumScale):
+                found[variation.name, sign] = Scenario(tag_width=1.0, momentum=factor)
+    return found
+
+
+def channel_variations(
+    study: StudyConfig, mode: str, channel: Channel, shares: Mapping[str, float], leptons: Sequence[str]
+) -> ChannelVariations:
+    """Variations of one channel of a mode.
+
+    shares : of the component's expected decays, by charm family; they sum to 1. leptons : of the study's categories.
+    """
+    decays: dict[Side, Decay] = {}
+    soft: dict[Side, float] = {}
+    factors: dict[Side, Floats] = {}
+    is_lepton = {name: np.array([lepton == name for lepton in leptons]) for name in ("e", "mu")}
+    for variation in study.variations:
+        for sign in SIGNS:
+            side = variation.name, sign
+            change = 1.0 + sign * getattr(variation, "relative", 0.0)
+            if isinstance(variation, FormFactor | FormFactorDirection):
+                if variation.set == FORM_FACTORS_OF[channel.family]:
+                    decays[side] = replace(channel.decay, form_factors=varied_set(study, variation, sign))
+            elif isinstance(variation, SoftPionEfficiency):
+                if _SOFT_KIND[variation.particle] == channel.soft:
+                    soft[side] = change
+            elif isinstance(variation, ComponentFraction):
+                share = shares.get(variation.charm, 0.0)
+                acts = variation.components is None or mode in variation.components
+                if acts and 0.0 < share < 1.0:
+                    rest = (1.0 - share * change) / (1.0 - share)
+                    factors[side] = np.full(len(leptons), change if channel.family == variation.charm else rest)
+            elif isinstance(variation, LeptonIdentificationEfficiency) and channel.seen_lepton == variation.lepton:
+                factors[side] = np.where(is_lepton[variation.lepton], change, 1.0)
+    return ChannelVariations(decays, soft, factors)
+
+
+def background_factors(study: StudyConfig, misidentified: bool) -> dict[Side, Floats]:
+    """Constant weights by category of a background: the misidentification rates, if it is made of such leptons."""
+    leptons = np.array([category.lepton for category in study.categories])
+    return {
+        (variation.name, sign): np.where(leptons == variation.lepton, 1.0 + sign * variation.relative, 1.0)
+        for variation in study.variations
+        if misidentified and isinstance(variation, Misidentification)
+        for sign in SIGNS
+    }
+
+
+def varied_set(study: StudyConfig, variation: FormFactor | FormFactorDirection, sign: int) -> FormFactorSet:
+    """The study's form-factor set of that transition, moved by one standard deviation."""
+    nominal = form_factors(getattr(study.form_factors, variation.set))
+    if isinstance(variation, FormFactorDirection):
+        return nominal.along(variation.direction - 1, float(sign), variation.set)
+    member = nominal[variation.set]
+    shift = variation.shift
+    if shift is None:
+        shift = dict(zip(member.names, member.errors, strict=True))[variation.parameter]
+    return nominal.shifted({variation.parameter: sign * shift}, variation.set)
+
+
+def check_efficiencies(study: StudyConfig) -> None:
+    """No varied efficiency may pass 1, nor a share of a component. Raises InputError that lists all that do."""
+    soft, lepton = study.detector.soft_pion, study.detector.lepton_id
+    curves: dict[str, Curve] = {
+        "charged": soft.charged,
+        "neutral": soft.neutral,
+        "photon": study.detector.photons.efficiency,
+        "e": lepton.e,
+        "mu": lepton.mu,
+    }
+    problems = []
+    for variation in study.variations:
+        if isinstance(variation, SoftPionEfficiency | LeptonIdentificationEfficiency):
+            what = variation.particle if isinstance(variation, SoftPionEfficiency) else variation.lepton
+            most = max(curves[what].value)
+            if most * (1.0 + variation.relative) > 1.0:
+                problems.append(
+                    Problem(
+                        "the varied efficiency passes 1",
+                        where=f"variation {variation.name}",
+                        got=f"{most:g} × {1 + variation.relative:g}",
+                        wanted=f"relative up to {1 / most - 1:.3g}",
+                    )
+                )
+    if problems:
+        raise InputError(*problems)

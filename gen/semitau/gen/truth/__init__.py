@@ -1,0 +1,1 @@
+"""Truth: drawing decays, simulated records, weights."""

@@ -1,0 +1,176 @@
+"""What the truth kernel needs of one decay chain: numbers and tables, ready for compiled loops.
+
+q² runs over a position t in [0, 1], q² = q²_min + (q²_max - q²_min) t² (3 - 2t), which tames both end points.
+Amplitudes are tabulated at Q2_INTERVALS + 1 nodes in t, times sqrt(q²) (then none of them diverges at small q²), and
+read with linear interpolation. A common factor drops out of every angular density.
+"""
+
+from __future__ import annotations
+
+from functools import lru_cache
+from typing import NamedTuple
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core.errors import InputError, Problem
+
+from ..decays.amplitudes import HelicityAmplitudes, helicity_amplitudes
+from ..decays.chains import Channel
+from ..decays.decay import Decay
+from .alias import interval_table
+from .tau_decay import energy_density, energy_range
+
+Floats = npt.NDArray[np.float64]
+
+Q2_INTERVALS = 512
+VISIBLE_INTERVALS = 256
+
+# Values of ChannelTable.chain.
+GROUND = 0  # the charm hadron of the B decay is the D that is seen
+VECTOR = 1  # D* -> D soft
+ORBITAL_GROUND = 2  # D** -> D pion
+ORBITAL_VECTOR = 3  # D** -> D* pion, D* -> D soft
+
+
+class ChannelTable(NamedTuple):
+    """Constants and tables of one fully specified decay chain. Masses in GeV, q² in GeV².
+
+    incoherent, coherent : how the charm helicities add, see `spin_density`.
+    has_tau : 1 if the lepton of the B decay is a tau that decays, else 0.
+    to_pion : 1 for tau -> pi nu, else 0. visible_mass, visible_span : lowest energy and range of the tau's daughter.
+    vector_mass, d_mass, soft_mass, pion_mass : of the D*, D, soft particle of the D*, pion of the D**; 0 if absent.
+    q2_table (512, 3), visible_table (256, 3) : for `draw_position`.
+    amplitudes (514, 4 or 16) : at the nodes and once more at the last; columns J_+, J_-, J_0, J_t if all is real, else
+        real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0.
+    """
+
+    parent_mass: float
+    charm_mass: float
+    lepton_mass: float
+    q2_min: float
+    q2_span: float
+    incoherent: float
+    coherent: float
+    chain: int
+    vector_mass: float
+    d_mass: float
+    soft_mass: float
+    pion_mass: float
+    has_tau: int
+    to_pion: float
+    visible_mass: float
+    visible_span: float
+    q2_table: Floats
+    amplitudes: Floats
+    visible_table: Floats
+
+
+def channel_table(channel: Channel) -> ChannelTable:
+    """Table of a decay chain, about a millisecond to make. InputError if a particle is too light for its decay."""
+    decay = channel.decay
+    _check_thresholds(channel)
+    photon = channel.soft == "photon"
+    if channel.bachelor == "none":
+        chain = VECTOR if channel.vector else GROUND
+    else:
+        chain = ORBITAL_VECTOR if channel.vector else ORBITAL_GROUND
+    low, high = decay.q2_range
+    visible_mass = channel.m_seen_lepton if channel.tau_to else 0.0
+    amplitudes = regular_amplitudes(decay)
+    energy_low, energy_high = energy_range(visible_mass)
+    return ChannelTable(
+        parent_mass=decay.m_parent,
+        charm_mass=decay.m_charm,
+        lepton_mass=decay.m_lepton,
+        q2_min=low,
+        q2_span=high - low,
+        incoherent=(0.5 if photon else 0.0) if chain == VECTOR else 1.0,
+        coherent=(-0.5 if photon else 1.0) if chain == VECTOR else 0.0,
+        chain=chain,
+        vector_mass=channel.m_vector,
+        d_mass=channel.m_ground,
+        soft_mass=channel.m_soft,
+        pion_mass=channel.m_bachelor,
+        has_tau=int(channel.tau_to is not None),
+        to_pion=float(channel.tau_to == "pi"),
+        visible_mass=visible_mass,
+        visible_span=energy_high - energy_low,
+        q2_table=q2_table(decay),
+        amplitudes=complex_columns(amplitudes) if needs_complex(amplitudes) else real_columns(amplitudes),
+        visible_table=visible_table(visible_mass),
+    )
+
+
+def _check_thresholds(channel: Channel) -> None:
+    """A mass point of a broad state may lie where it cannot decay."""
+    below = channel.m_vector or channel.m_ground
+    parts = channel.m_bachelor + below if channel.bachelor != "none" else channel.m_ground + channel.m_soft
+    if channel.decay.m_charm < parts:
+        raise InputError(
+            Problem(
+                f"the {channel.decay.charm} is too light to decay",
+                where=channel.name,
+                got=f"{channel.decay.m_charm} GeV",
+                wanted=f"at least {parts:.5f} GeV",
+            )
+        )
+
+
+def q2_of_position(decay: Decay, t: Floats) -> Floats:
+    """q² in GeV² at positions t in [0, 1] of the tables."""
+    low, high = decay.q2_range
+    return low + (high - low) * t * t * (3.0 - 2.0 * t)
+
+
+@lru_cache(maxsize=64)  # chains of one decay follow each other
+def regular_amplitudes(decay: Decay) -> HelicityAmplitudes:
+    """Amplitudes times sqrt(q²) at the nodes, with a copy of the last node behind it; shape (514,) each."""
+    t = np.minimum(np.arange(Q2_INTERVALS + 2) / Q2_INTERVALS, 1.0)
+    q2 = q2_of_position(decay, t)
+    values = helicity_amplitudes(decay, q2)
+    return HelicityAmplitudes(**{name: value * np.sqrt(q2) for name, value in vars(values).items()})
+
+
+def needs_complex(amplitudes: HelicityAmplitudes) -> bool:
+    """Whether there is more than a real vector and axial current, i.e. more than the standard model or real VL, VR."""
+    values = vars(amplitudes)
+    return any(np.any(value.imag) or (name[0] != "J" and np.any(value)) for name, value in values.items())
+
+
+def real_columns(amplitudes: HelicityAmplitudes) -> Floats:
+    """(nodes, 4): J_+, J_-, J_0, J_t."""
+    a = amplitudes
+    return np.ascontiguousarray(np.stack([a.J_plus, a.J_minus, a.J_zero, a.J_t], axis=-1).real)
+
+
+def complex_columns(amplitudes: HelicityAmplitudes) -> Floats:
+    """(nodes, 16): real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0."""
+    a = amplitudes
+    values = [a.J_plus, a.J_minus, a.J_zero, a.J_t, a.S, a.T_plus, a.T_minus, a.T_zero]
+    return np.ascontiguousarray(np.stack(values, axis=-1)).view(np.float64)
+
+
+@lru_cache(maxsize=64)
+def q2_table(decay: Decay) -> Floats:
+    """(512, 3) table for `draw_position` of d Gamma / dt."""
+
+    def density(t: Floats) -> Floats:
+        q2 = q2_of_position(decay, t)
+        x = decay.m_lepton / np.sqrt(q2)
+        values = helicity_amplitudes(decay, q2).with_lepton(x)
+        a, b = (np.abs([getattr(values, f"{k}_{h}") for h in ("plus", "minus", "zero")]) ** 2 for k in "ab")
+        total = (4.0 / 3.0) * a.sum(axis=0) + (2.0 / 3.0) * b.sum(axis=0) + 2.0 * np.abs(values.t) ** 2
+        # |p| (1 - x²) N² dq²/dt; q²_max - q² without cancellation
+        M, m = decay.m_parent, decay.m_charm
+        to_end = (decay.q2_range[1] - decay.q2_range[0]) * (1.0 - t) ** 2 * (1.0 + 2.0 * t)
+        momentum = np.sqrt(to_end * ((M + m) ** 2 - q2))
+        result: Floats = momentum * (1.0 - x * x) ** 2 * q2 * total * t * (1.0 - t)
+        return result
+
+    return interval_table(density, Q2_INTERVALS)
+
+
+@lru_cache(maxsize=8)
+def visible_table(mass: float) -> Floats:
+    """(256, 3) table for `draw_position` of the spectrum of a tau daughter of this mass."""
+    return interval_table(lambda s: energy_density(mass, s), VISIBLE_INTERVALS)

@@ -1,0 +1,131 @@
+"""Weights that turn events of one decay into another with other form factors or couplings, from the momenta alone."""
+
+from __future__ import annotations
+
+import awkward as ak
+import numpy as np
+import numpy.typing as npt
+from semitau.core.compiled import kernel
+from semitau.core.constants import MASS
+from semitau.core.errors import InputError, Problem
+
+from ..decays.amplitudes import helicity_amplitudes
+from ..decays.decay import Decay
+from .decay_angles import DecayAngles, decay_angles, invariant_mass
+from .decay_record import decay_of
+from .spin_algebra import chain_density
+from .tau_decay import emission
+
+Floats = npt.NDArray[np.float64]
+
+
+def weights(events: ak.Array, decay: Decay, *, drawn_from: Decay | None = None) -> Floats:
+    """|M|² of `decay` over |M|² of the decay that the events were drawn from, for each event.
+
+    events : records as `simulate` returns them, in any frame, of any number and order.
+    decay : same particles as the events, other form factors or Wilson coefficients.
+    drawn_from : what the events were drawn from; needed only if the records do not say so.
+
+    Returns (n,) float64, not normalised: the mean over unweighted events is Γ(decay) / Γ(drawn from). The spin of D*
+    and tau counts: the tau decay is integrated over its neutrinos, photons over helicities, D** over their decay.
+    InputError if the events do not fit. Source: `amplitudes.py` and `spin_algebra.py`, as in the sampling.
+    """
+    if not isinstance(events, ak.Array):
+        raise InputError(Problem("not an array of events", where="events", got=type(events).__name__))
+    if not isinstance(decay, Decay):
+        raise InputError(Problem("not a decay", where="decay", got=type(decay).__name__, wanted="gen.Decay"))
+    source = drawn_from if drawn_from is not None else decay_of(events)
+    if source is None:
+        raise InputError(
+            Problem(
+                "the events do not say which decay they were drawn from",
+                where="events",
+                remedy="Pass drawn_from=..., or weight the records before you take fields out of them or join samples.",
+            )
+        )
+    for name in ("parent", "charm", "lepton", "charm_mass"):
+        old, new = getattr(source, name), getattr(decay, name)
+        if old != new:
+            raise InputError(
+                Problem(f"events cannot be weighted to another {name}", where="decay", got=repr(new), wanted=repr(old))
+            )
+    has_vector, has_tau = source.family == "D*", source.lepton == "tau"
+    charm_field = "D" if source.family == "D" else "Dst" if has_vector else "Dss"
+    needed = ["B", charm_field, "lepton", *(["soft", "D"] if has_vector else []), *(["tau"] if has_tau else [])]
+    missing = [name for name in needed if name not in events.fields]
+    if missing:
+        raise InputError(
+            Problem("fields are missing", where="events", got=", ".join(events.fields), wanted=", ".join(needed))
+        )
+
+    if any(ak.any(ak.is_none(events[name].E)) for name in needed):
+        remedy = "Drop them with ak.drop_none."
+        raise InputError(Problem("some records are missing", where="events", remedy=remedy))
+
+    angles = decay_angles(
+        _momentum(events, "B"),
+        _momentum(events, charm_field),
+        _momentum(events, "tau" if has_tau else "lepton"),
+        _momentum(events, "D") if has_vector else None,
+        _momentum(events, "lepton") if has_tau else None,
+    )
+    power = _analysing_power(events, angles) if has_tau else np.zeros(angles.q2.size)
+    photon = invariant_mass(_momentum(events, "soft")) < _PHOTON_BELOW if has_vector else np.zeros(angles.q2.size, bool)
+    old, new = (_densities(model, angles, power, has_vector, photon) for model in (source, decay))
+    ratio: Floats = new / old
+    return ratio
+
+
+_PHOTON_BELOW = 0.05
+"""GeV: between the photon, massless up to rounding, and the pions."""
+
+
+def _momentum(events: ak.Array, name: str) -> Floats:
+    """(4, n) px, py, pz, E."""
+    return np.stack([ak.to_numpy(events[name][part], allow_missing=False) for part in ("px", "py", "pz", "E")])
+
+
+def _analysing_power(events: ak.Array, angles: DecayAngles) -> Floats:
+    """Coefficient of n.P in the tau decay, relative to the part without P."""
+    if "nu_lepton" not in events.fields:
+        return np.ones(angles.q2.size)
+    typical = np.median(invariant_mass(_momentum(events, "lepton"))) if angles.q2.size else 0.0
+    mass = MASS["e"] if typical < 0.5 * MASS["mu"] else MASS["mu"]
+    # rounding may put an energy below the mass
+    _, even, odd = emission(np.maximum(angles.visible_energy, mass), mass)
+    return np.asarray(-odd / even)
+
+
+def _densities(
+    decay: Decay, angles: DecayAngles, power: Floats, has_vector: bool, photon: npt.NDArray[np.bool_]
+) -> Floats:
+    amplitudes = np.stack(list(vars(helicity_amplitudes(decay, angles.q2)).values()))
+    coherent = np.where(photon, -0.5, 1.0) if has_vector else np.zeros(photon.size)
+    incoherent = np.where(photon, 0.5, 0.0) if has_vector else np.ones(photon.size)
+    values = np.stack(
+        [
+            decay.m_lepton / np.sqrt(angles.q2),
+            incoherent,
+            coherent,
+            angles.cos_theta,
+            angles.cos_v,
+            angles.cos_chi,
+            angles.sin_chi,
+            power * angles.visible_x,
+            power * angles.visible_y,
+            power * angles.visible_z,
+        ]
+    )
+    result = np.empty(photon.size)
+    _fill_densities(values, amplitudes, result)
+    return result
+
+
+@kernel
+def _fill_densities(values: Floats, amplitudes: npt.NDArray[np.complex128], result: Floats) -> None:
+    for i in range(result.size):
+        v, a = values[:, i], amplitudes[:, i]
+        result[i] = chain_density(
+            v[0], v[1], v[2], v[3], v[4], v[5], v[6], 1.0, v[7], v[8], v[9],
+            (a[0], a[1], a[2], a[3], a[4], a[5], a[6], a[7]),
+        )  # fmt: skip
