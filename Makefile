@@ -27,4 +27,4 @@ benchmarks: $(VENV)/.installed  ## speeds and ratios, in one run
 	$(BIN)/python -m benchmarks
 
 clean:
-	rm -rf $(VENV) out .pytest_cache .mypy_cache .ruff_cache
+	rm -rf $(VENV) out .numba_cache .pytest_cache .mypy_cache .ruff_cache

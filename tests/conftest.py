@@ -1,0 +1,11 @@
+"""Set before any test module is imported."""
+
+from __future__ import annotations
+
+import os
+from pathlib import Path
+
+# Two processes that compile one function at the same moment can spoil each other's entry in numba's cache on disk, so
+# each process of a parallel run keeps a cache of its own.
+if worker := os.environ.get("PYTEST_XDIST_WORKER"):
+    os.environ["NUMBA_CACHE_DIR"] = str(Path(__file__).parents[1] / ".numba_cache" / worker)
