@@ -10,9 +10,9 @@ from pathlib import Path
 
 from semitau.core.engine import available_cores
 from semitau.core.whole_files import write_whole
-from semitau.gen.build import build_templates
-from semitau.gen.study import StudyConfig
-from semitau.gen.study_file import read_study
+from semitau.gen.study_file.reader import read_study
+from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.templates.build import build_templates
 
 from .decays import chains_of, decay_figures, scaling_figure
 from .figures import Figure, table

@@ -7,15 +7,15 @@ from dataclasses import dataclass, replace
 from functools import partial
 
 import numpy as np
-from numba import njit
+from semitau.core.compiled import kernel
 from semitau.core.engine import run
 from semitau.core.streams import stream_key
 from semitau.gen.block import LANES, new_block
-from semitau.gen.channel_table import ChannelTable, channel_table
-from semitau.gen.chunk_tasks import Task, channel_tasks, make_bench
-from semitau.gen.component_plan import ChannelPlan, plan_channels
-from semitau.gen.study import StudyConfig
-from semitau.gen.truth import draw_decays
+from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.templates.chunk_tasks import Task, channel_tasks, make_bench
+from semitau.gen.templates.component_plan import ChannelPlan, plan_channels
+from semitau.gen.truth.channel_table import ChannelTable, channel_table
+from semitau.gen.truth.drawing import draw_decays
 
 from .figures import Figure
 from .random_numbers import Counts, kind
@@ -26,7 +26,7 @@ NUMPY_BUFFER = 65_536
 """Numbers in one call: a buffer that stays in the cache, which is numpy's best case."""
 
 
-@njit(cache=True, nogil=True, error_model="numpy")
+@kernel
 def truth_only(x: np.ndarray, table: ChannelTable, stream: np.uint64, events: int) -> None:
     """Draw decays of one chain, block after block, and forget them."""
     for first in range(0, events, LANES):

@@ -14,8 +14,8 @@ from .figures import Figure
 
 _PEAK = """
 import resource, sys
-from semitau.gen.build import build_templates
-from semitau.gen.study_file import read_study
+from semitau.gen.templates.build import build_templates
+from semitau.gen.study_file.reader import read_study
 build = build_templates(read_study(sys.argv[1]), workers=2)
 print(build.events, resource.getrusage(resource.RUSAGE_SELF).ru_maxrss * 1024)
 """

@@ -16,7 +16,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 if TYPE_CHECKING:
-    from semitau.gen.chains import Channel
+    from semitau.gen.decays.chains import Channel
 
 Counts = dict[str, list[float]]
 
@@ -46,10 +46,10 @@ def _count(study_file: str, most_kinds: int) -> Counts:
         return plain(key, draw)
 
     vars(streams)["uniform"] = counting  # before the kernels import it
-    from semitau.gen import chunk, component_plan
     from semitau.gen.block import LANES
-    from semitau.gen.chunk_tasks import channel_tasks, make_bench
-    from semitau.gen.study_file import read_study
+    from semitau.gen.study_file.reader import read_study
+    from semitau.gen.templates import chunk, component_plan
+    from semitau.gen.templates.chunk_tasks import channel_tasks, make_bench
 
     stages = {"draw_decays": 0, "find": 0, "measure": 0}
 
