@@ -61,6 +61,7 @@ MASS: Mapping[str, float] = MappingProxyType(
         "pi+": 0.13957039,
         "pi0": 0.1349768,
         "rho+": 0.77511,
+        "eta": 0.547862,
         "gamma": 0.0,
         "e": 0.00051099895,
         "mu": 0.1056583755,

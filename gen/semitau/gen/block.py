@@ -18,18 +18,22 @@ LANES = 256
 # against the charm flight. COS_CHI, SIN_CHI: azimuth between the two decay planes.
 # VISIBLE_E: energy of the charged daughter of the tau in the tau rest frame; VISIBLE_X, _Y, _Z: its unit direction on
 # the axes (theta-hat, phi-hat, n) of the tau in the W* frame. POLARISATION: of the tau on these axes. All these are
-# unset in channels without a tau. SOFT: pion or photon of the D*. PION: pion of a D**. TAU: the tau. LEPTON: the
-# charged lepton (daughter) that is seen. Particles that a channel does not have are zero rows.
+# unset in channels without a tau. SOFT: pion or photon of the D*. PION: pion of a D** (or eta). PION2: its second pion.
+# TAU: the tau. LEPTON: the charged lepton (daughter) that is seen. Particles that a channel does not have are zero rows.
+# CHARM_MASS: of the charm hadron of the B decay. MASS_POINT: which of the amplitude tables of a broad state an event
+# takes. LIGHT_MASS: what recoils against the D or D* in its decay, a particle or a pair of pions.
 (
     Q2, NODE, COS_THETA, COS_V, COS_CHI, SIN_CHI,
     VISIBLE_E, VISIBLE_X, VISIBLE_Y, VISIBLE_Z, POLARISATION_X, POLARISATION_Y, POLARISATION_Z,
     D_PX, D_PY, D_PZ, D_E,
     SOFT_PX, SOFT_PY, SOFT_PZ, SOFT_E,
     PION_PX, PION_PY, PION_PZ, PION_E,
+    PION2_PX, PION2_PY, PION2_PZ, PION2_E,
     TAU_PX, TAU_PY, TAU_PZ, TAU_E,
     LEPTON_PX, LEPTON_PY, LEPTON_PZ, LEPTON_E,
-) = (LANES * row for row in range(33))  # fmt: skip
-TRUTH_ROWS = 33
+    CHARM_MASS, MASS_POINT, LIGHT_MASS,
+) = (LANES * row for row in range(40))  # fmt: skip
+TRUTH_ROWS = 40
 
 # Rows that a truth kernel may scribble on; free for later stages afterwards.
 (

@@ -47,6 +47,9 @@ RANDOM_AZIMUTH = np.uint64(99)
 
 WRONG_TAG_ENERGY = np.uint64(100)
 
+PION2_SEEN = np.uint64(101)
+PION2_LEFT_OVER = np.uint64(102)
+
 ONE = np.uint64(1)
 TWO = np.uint64(2)
 THREE = np.uint64(3)

@@ -45,4 +45,12 @@ FLIGHT_AZIMUTH = np.uint64(28)
 
 CHAIN = np.uint64(29)  # which decay chain, where a sample mixes them
 
+CHARM_MASS_INTERVAL = np.uint64(30)  # mass of a broad charm state, then its table
+CHARM_MASS_INSIDE = np.uint64(31)
+CHARM_MASS_SIDE = np.uint64(32)
+CHARM_MASS_POINT = np.uint64(33)
+PION_PAIR_MASS = np.uint64(34)  # of a state that gives two pions
+PION_PAIR_COS = np.uint64(35)
+PION_PAIR_AZIMUTH = np.uint64(36)
+
 NEUTRINO_FIRST = 192  # three draws for each try
