@@ -17,7 +17,7 @@ PION_MASS = {"none": 0.0, "charged": MASS["pi+"], "neutral": MASS["pi0"]}
 SOFT_MASS = {"none": 0.0, "charged_pion": MASS["pi+"], "neutral_pion": MASS["pi0"], "photon": 0.0}
 
 # Species of the D* -> (species of the D, kind of soft particle, branching fraction).
-_VECTOR_DECAYS = {
+VECTOR_DECAYS = {
     "D*+": tuple(
         (ground, soft, BRANCHING_FRACTION["D*+"][mode])
         for ground, soft, mode in (
@@ -206,7 +206,7 @@ def _hadron_chains(
         yield bachelor, "", "none", "D" + charge, share
         return
     vector = "D*" + charge
-    for ground, soft, fraction in _VECTOR_DECAYS[vector]:
+    for ground, soft, fraction in VECTOR_DECAYS[vector]:
         yield bachelor, vector, soft, ground, share * fraction
 
 
