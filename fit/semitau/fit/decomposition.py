@@ -26,9 +26,10 @@ from semitau.core.compiled import kernel
 from semitau.core.errors import Problem, RunError
 from semitau.core.templates import Floats
 
+from .expectation import FISHER, Workspace, scale_of, sum_pieces, workspace
 from .interpolation import bend, positive
 from .layout import Arrays
-from .likelihood import FISHER, Workspace, add_outer_products, scale_of, sum_pieces, workspace
+from .likelihood import add_outer_products
 from .model import Model
 from .result import FitResult
 
