@@ -17,11 +17,12 @@ import uproot
 from .errors import InputError, Problem
 from .root_files import RootHistogram, histogram_of, open_root
 from .template_meta import Description, describe, understand
-from .templates import Category, Floats, Template, TemplateSet
+from .templates import ONE, Category, Floats, Template, TemplateSet
 from .whole_files import write_whole
 
 Histogram = bh.Histogram[Any]
 SIDES = ("plus", "minus")
+QUADRATIC, MOMENTS = "quadratic", "moments"
 SHOWN_PROBLEMS = 20
 """A wrong edge is wrong in every histogram: after so many problems the rest is only counted."""
 
@@ -78,6 +79,12 @@ def _histograms(template: Template, weighted: Histogram, plain: Histogram) -> It
     for side in SIDES:
         for name, contents in getattr(template, side).items():
             yield f"{side}/{name}", _filled(plain, contents)
+    for (first, second), contents in template.quadratic.items():
+        yield f"{QUADRATIC}/{first}/{second}", _filled(plain, contents)
+    if template.moments is not None:
+        size = len(template.moments)
+        axes = [bh.axis.Regular(size, 0.0, size), bh.axis.Regular(size, 0.0, size)]
+        yield f"{QUADRATIC}/{MOMENTS}", _filled(bh.Histogram(*axes, storage=bh.storage.Double()), template.moments)
 
 
 def _filled(empty: Histogram, contents: Floats) -> Histogram:
@@ -112,6 +119,7 @@ def read_templates(path: Path | str) -> TemplateSet:
                 templates,
                 data,
                 description.provenance,
+                description.coefficients,
             )
         except InputError as error:
             problems = [problem.inside(str(path)) for problem in error.problems]
@@ -175,6 +183,7 @@ class _Reader:
         """All templates and data of an open file."""
         components = {component.name for component in description.components}
         nuisances = {nuisance.name for nuisance in description.nuisances}
+        pieces = (ONE, *(coefficient.name for coefficient in description.coefficients))
         found: dict[tuple[str, str], dict[str, str]] = {}
         data: dict[str, Floats] = {}
         for name, kind in directory.iterclassnames(recursive=True, cycle=False):
@@ -193,8 +202,16 @@ class _Reader:
                     found.setdefault((category, component), {})[f"{side}/{nuisance}"] = name
                 case [_, _, "plus" | "minus", nuisance]:
                     self.wrong("unknown nuisance", name, repr(nuisance), ", ".join(sorted(nuisances)) or "none")
+                case [category, component, "quadratic", a, b] if a in pieces and b in pieces:
+                    found.setdefault((category, component), {})[f"{QUADRATIC}/{a}/{b}"] = name
+                case [_, _, "quadratic", a, b]:
+                    unknown = a if a not in pieces else b
+                    self.wrong("unknown coefficient", name, repr(unknown), ", ".join(pieces))
+                case [category, component, "quadratic", "moments"]:
+                    found.setdefault((category, component), {})[f"{QUADRATIC}/{MOMENTS}"] = name
                 case _:
-                    self.wrong("unknown object", name, kind, "nominal, plus/<nuisance>, minus/<nuisance>, data")
+                    allowed = "nominal, plus/<nuisance>, minus/<nuisance>, quadratic/<a>/<b>, quadratic/moments, data"
+                    self.wrong("unknown object", name, kind, allowed)
         templates = {key: self.template(directory, key, names) for key, names in found.items()}
         return {key: template for key, template in templates.items() if template is not None}, data
 
@@ -202,6 +219,10 @@ class _Reader:
         category, where = self.categories[key[0]], "/".join(key)
         if "nominal" not in names:
             self.wrong("variations without a nominal histogram", where, remedy=f"Add {where}/nominal.")
+            return None
+        matrix = names.pop(f"{QUADRATIC}/{MOMENTS}", None)
+        moments = None if matrix is None else self.matrix(directory, matrix)
+        if matrix is not None and moments is None:
             return None
         read = {part: self.histogram(directory, name, category) for part, name in names.items()}
         nominal = read["nominal"]
@@ -218,10 +239,27 @@ class _Reader:
             for side in SIDES
         }
         try:
-            return Template(nominal.contents, nominal.variances, sides["plus"], sides["minus"])
+            pieces = {
+                (part.split("/")[1], part.split("/")[2]): histogram.contents
+                for part, histogram in read.items()
+                if histogram is not None and part.startswith(f"{QUADRATIC}/")
+            }
+            return Template(nominal.contents, nominal.variances, sides["plus"], sides["minus"], pieces, moments)
         except InputError as error:
             self.problems += [problem.inside(f"{self.path}: {where}") for problem in error.problems]
             return None
+
+    def matrix(self, directory: Any, name: str) -> Floats | None:
+        """A histogram of two axes as a matrix; its edges mean nothing."""
+        try:
+            histogram = histogram_of(directory[name], f"{self.path}: {name}")
+        except InputError as error:
+            self.problems += error.problems
+            return None
+        if len(histogram.edges) != 2:
+            self.wrong("wrong number of axes", name, str(len(histogram.edges)), "2")
+            return None
+        return histogram.contents
 
     def counts(self, directory: Any, category: Category, data: dict[str, Floats], whole_counts: bool) -> None:
         name = f"{category.name}/data"

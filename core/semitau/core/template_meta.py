@@ -10,11 +10,14 @@ from typing import Any, Literal, TypeVar
 from pydantic import BaseModel, ConfigDict, Field, FiniteFloat, ValidationError
 
 from .errors import InputError, Problem
-from .templates import Category, Component, Nuisance, Observable, ScaleParameter, TemplateSet
+from .templates import Category, Coefficient, Component, Nuisance, Observable, ScaleParameter, TemplateSet
 
 FORMAT = "semitau templates"
 MAJOR, MINOR = 1, 0
 """A reader refuses another major version. A higher minor one only adds keys, which an older reader passes over."""
+
+WITH_COEFFICIENTS = 1
+"""Minor version of files with quadratic pieces, which a reader of 1.0 would not know; files without stay 1.0."""
 
 S = TypeVar("S")
 T = TypeVar("T")
@@ -50,6 +53,14 @@ class _Parameter(_Part):
     kind: str
     injected: FiniteFloat
     constraint: FiniteFloat | None = None
+    rate: list[tuple[str, str, FiniteFloat]] = Field(default_factory=list)
+
+
+class _Coefficient(_Part):
+    name: str
+    label: str
+    value: FiniteFloat
+    limit: FiniteFloat
 
 
 class _Nuisance(_Part):
@@ -67,6 +78,7 @@ class _Meta(_Part):
     parameters: list[_Parameter]
     nuisances: list[_Nuisance]
     provenance: dict[str, Any] = Field(default_factory=dict)
+    coefficients: list[_Coefficient] = Field(default_factory=list)
 
 
 @dataclass(frozen=True)
@@ -78,19 +90,22 @@ class Description:
     parameters: tuple[ScaleParameter, ...]
     nuisances: tuple[Nuisance, ...]
     provenance: dict[str, object]
+    coefficients: tuple[Coefficient, ...] = ()
 
 
 def describe(templates: TemplateSet) -> str:
     """The JSON text of a template set. Raises InputError if the provenance holds other than plain JSON values."""
-    meta = {
+    meta: dict[str, object] = {
         "format": FORMAT,
-        "version": f"{MAJOR}.{MINOR}",
+        "version": f"{MAJOR}.{WITH_COEFFICIENTS if templates.coefficients else MINOR}",
         "categories": [asdict(category) for category in templates.categories],
         "components": [asdict(component) for component in templates.components],
-        "parameters": [asdict(parameter) for parameter in templates.parameters],
+        "parameters": [_without_empty(asdict(parameter), "rate") for parameter in templates.parameters],
         "nuisances": [asdict(nuisance) | {"constraint": "unit Gaussian"} for nuisance in templates.nuisances],
         "provenance": dict(templates.provenance),
     }
+    if templates.coefficients:
+        meta["coefficients"] = [asdict(coefficient) for coefficient in templates.coefficients]
     try:
         return json.dumps(meta, allow_nan=False)
     except (TypeError, ValueError) as error:
@@ -99,6 +114,10 @@ def describe(templates: TemplateSet) -> str:
                 f"the provenance cannot be stored: {error}", wanted="text, finite numbers, lists and tables of these"
             )
         ) from error
+
+
+def _without_empty(table: dict[str, object], key: str) -> dict[str, object]:
+    return {name: value for name, value in table.items() if name != key or value}
 
 
 def understand(text: str, where: str) -> Description:
@@ -113,11 +132,14 @@ def understand(text: str, where: str) -> Description:
     components = _made(
         meta.components, lambda c: Component(c.name, c.label, c.role, tuple(c.scales_with)), where, problems
     )
-    parameters = _made(meta.parameters, lambda p: ScaleParameter(**p.model_dump()), where, problems)
+    parameters = _made(
+        meta.parameters, lambda p: ScaleParameter(**(p.model_dump() | {"rate": tuple(p.rate)})), where, problems
+    )
+    coefficients = _made(meta.coefficients, lambda c: Coefficient(**c.model_dump()), where, problems)
     nuisances = _made(meta.nuisances, lambda n: Nuisance(n.name, n.label, n.group), where, problems)
     if problems:
         raise InputError(*problems)
-    return Description(categories, components, parameters, nuisances, meta.provenance)
+    return Description(categories, components, parameters, nuisances, meta.provenance, coefficients)
 
 
 def _check_version(text: str, where: str) -> None:

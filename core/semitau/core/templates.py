@@ -21,8 +21,16 @@ Floats = NDArray[np.float64]
 
 ROLES = ("signal", "normalisation", "feed-down", "background")
 KINDS = ("ratio", "yield")
-RESERVED = {"component": "data", "category": "meta"}
+RESERVED = {"component": "data", "category": "meta", "coefficient": "one"}
 """Names that the template file uses for itself."""
+
+ONE = "one"
+"""Stands in a pair of coefficients for the constant 1."""
+
+Pair = tuple[str, str]
+
+SAME_AT_MOST = 1e-6
+"""Relative rounding that other programs' sums of quadratic pieces may have."""
 
 
 @dataclass(frozen=True)
@@ -107,6 +115,8 @@ class ScaleParameter:
 
     kind : "ratio" (value is the ratio itself) or "yield" (value relative to the expectation; injected 1).
     constraint : standard deviation of a Gaussian auxiliary measurement of the value; None if free.
+    rate : a ratio as a quadratic form in the set's coefficients: (a, b, piece) with value = sum of c_a c_b piece, see
+        quadratic.py; empty if it does not follow them.
     """
 
     name: str
@@ -114,6 +124,7 @@ class ScaleParameter:
     kind: str
     injected: float
     constraint: float | None = None
+    rate: tuple[tuple[str, str, float], ...] = ()
 
     def __post_init__(self) -> None:
         _refuse(self._problems())
@@ -127,6 +138,9 @@ class ScaleParameter:
         for what, value in (("injected value", self.injected), ("constraint", self.constraint)):
             if value is not None and not (isfinite(value) and value > 0):
                 yield Problem(f"{what} must be positive and finite", where, got=str(value))
+        for a, b, piece in self.rate:
+            if not isfinite(piece):
+                yield Problem("a piece of the rate is not finite", f"{where}: {a}, {b}", got=str(piece))
 
 
 @dataclass(frozen=True)
@@ -141,12 +155,45 @@ class Nuisance:
         _refuse(_name_problems("nuisance", self.name))
 
 
+@dataclass(frozen=True)
+class Coefficient:
+    """A real number that templates are quadratic functions of, e.g. the real part of a Wilson coefficient.
+
+    value : where the nominal templates are made. limit : largest size at which the templates are to be used.
+    """
+
+    name: str
+    label: str
+    value: float
+    limit: float
+
+    def __post_init__(self) -> None:
+        _refuse(self._problems())
+
+    def _problems(self) -> Iterator[Problem]:
+        where = f"coefficient {self.name}"
+        yield from _name_problems("coefficient", self.name)
+        if self.name == "moments":
+            yield Problem("the template file keeps this name for itself: no coefficient can have it", got="'moments'")
+        if not (isfinite(self.limit) and self.limit > 0):
+            yield Problem("a limit must be positive and finite", where, got=str(self.limit))
+        elif not abs(self.value) <= self.limit:
+            yield Problem(
+                "the value is beyond its limit", where, got=str(self.value), wanted=f"±{self.limit:g} at most"
+            )
+
+
 @dataclass(frozen=True, eq=False)
 class Template:
     """Expected events of one component in one category.
 
     nominal, variance : (bins of the category's axes) float64, events and events squared (finite generated sample).
     plus, minus : nuisance name -> array of the same shape; the same keys in both; absent where it does not act.
+    quadratic : (a, b) -> piece of the same shape; expected events at coefficients c are the sum of c_a c_b piece, see
+        quadratic.py. Pieces that are zero may be left out; empty if the template does not follow coefficients.
+    moments : (pairs, pairs), pairs as `quadratic.pairs_of` has them: the sum over all generated events of the template
+        of the products of their two contributions to the pieces, so that c_a c_b moments c_a c_b is the sum of squared
+        weights at c. None if not known.
 
     Contents may be negative (weights may be), but not NaN or infinite; variances may be neither.
     """
@@ -155,20 +202,27 @@ class Template:
     variance: Floats
     plus: Mapping[str, Floats] = field(default_factory=lambda: MappingProxyType({}))
     minus: Mapping[str, Floats] = field(default_factory=lambda: MappingProxyType({}))
+    quadratic: Mapping[Pair, Floats] = field(default_factory=lambda: MappingProxyType({}))
+    moments: Floats | None = None
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "nominal", _read_only(self.nominal))
         object.__setattr__(self, "variance", _read_only(self.variance))
         object.__setattr__(self, "plus", _read_only_mapping(self.plus))
         object.__setattr__(self, "minus", _read_only_mapping(self.minus))
+        pieces = {(str(a), str(b)): _read_only(piece) for (a, b), piece in self.quadratic.items()}
+        object.__setattr__(self, "quadratic", MappingProxyType(pieces))
+        object.__setattr__(self, "moments", None if self.moments is None else _read_only(self.moments))
         _refuse(self._problems())
 
     def __reduce__(self) -> tuple[object, ...]:  # mapping proxies do not pickle
-        return Template, (self.nominal, self.variance, dict(self.plus), dict(self.minus))
+        pieces = dict(self.quadratic), self.moments
+        return Template, (self.nominal, self.variance, dict(self.plus), dict(self.minus), *pieces)
 
     def _problems(self) -> Iterator[Problem]:
         sides = {f"{side}/{name}": values for side in ("plus", "minus") for name, values in getattr(self, side).items()}
-        for where, values in {"nominal": self.nominal, "variance": self.variance, **sides}.items():
+        pieces = {f"quadratic/{a}/{b}": values for (a, b), values in self.quadratic.items()}
+        for where, values in {"nominal": self.nominal, "variance": self.variance, **sides, **pieces}.items():
             if values.shape != self.nominal.shape:
                 yield Problem("shape differs from the nominal", where, str(values.shape), str(self.nominal.shape))
             yield from _bin_problems(where, "not finite", values, ~np.isfinite(values))
@@ -178,6 +232,16 @@ class Template:
             yield Problem(
                 "one side of a variation is missing", f"{missing}/{name}", remedy=f"Add it beside {there}/{name}."
             )
+        if self.moments is not None:
+            where, shape = "quadratic/moments", self.moments.shape
+            if not self.quadratic:
+                yield Problem("moments without pieces", where, remedy="Add quadratic/<a>/<b>, or leave them out.")
+            if len(shape) != 2 or shape[0] != shape[1]:
+                yield Problem("not a square matrix", where, got=str(shape))
+            elif not np.isfinite(self.moments).all():
+                yield Problem("not finite", where)
+            elif not np.allclose(self.moments, self.moments.T, rtol=1e-6, atol=1e-6 * np.abs(self.moments).max()):
+                yield Problem("not symmetric", where)
 
 
 @dataclass(frozen=True, eq=False)
@@ -187,6 +251,7 @@ class TemplateSet:
     templates : (category name, component name) -> Template; a pair that is absent contributes nothing.
     data : category name -> observed counts, if any.
     provenance : plain JSON values: study text, seed, versions, hash of the study file.
+    coefficients : real numbers that templates and ratios are quadratic functions of, in the order of their pairs.
     """
 
     categories: tuple[Category, ...]
@@ -196,9 +261,10 @@ class TemplateSet:
     templates: Mapping[tuple[str, str], Template]
     data: Mapping[str, Floats] = field(default_factory=lambda: MappingProxyType({}))
     provenance: Mapping[str, object] = field(default_factory=lambda: MappingProxyType({}))
+    coefficients: tuple[Coefficient, ...] = ()
 
     def __post_init__(self) -> None:
-        for name in ("categories", "components", "parameters", "nuisances"):
+        for name in ("categories", "components", "parameters", "nuisances", "coefficients"):
             object.__setattr__(self, name, tuple(getattr(self, name)))
         object.__setattr__(self, "templates", MappingProxyType(dict(self.templates)))
         object.__setattr__(self, "data", _read_only_mapping(self.data))
@@ -207,7 +273,8 @@ class TemplateSet:
 
     def __reduce__(self) -> tuple[object, ...]:
         mappings = dict(self.templates), dict(self.data), dict(self.provenance)
-        return TemplateSet, (self.categories, self.components, self.parameters, self.nuisances, *mappings)
+        named = self.categories, self.components, self.parameters, self.nuisances
+        return TemplateSet, (*named, *mappings, self.coefficients)
 
     def with_data(self, data: Mapping[str, ArrayLike]) -> TemplateSet:
         """The same templates with these observed counts: category name -> array of the category's shape."""
@@ -222,7 +289,11 @@ class TemplateSet:
         yield from _repeated("component", (component.name for component in self.components))
         # Both kinds are parameters of one fit, so they share one set of names.
         parameters = [parameter.name for parameter in self.parameters]
-        yield from _repeated("parameter", [*parameters, *(nuisance.name for nuisance in self.nuisances)])
+        coefficients = [coefficient.name for coefficient in self.coefficients]
+        yield from _repeated("parameter", [*parameters, *coefficients, *(nuisance.name for nuisance in self.nuisances)])
+        for parameter in self.parameters:
+            pieces = {(a, b): piece for a, b, piece in parameter.rate}
+            yield from self._quadratic_problems(f"parameter {parameter.name}", pieces, np.array(parameter.injected))
         for component in self.components:
             yield from _unknown("parameter", component.scales_with, parameters, f"component {component.name}")
         shapes = {category.name: category.shape for category in self.categories}
@@ -233,6 +304,12 @@ class TemplateSet:
             yield from _unknown("category", [category], shapes, where)
             yield from _unknown("component", [name], components, where)
             yield from _unknown("nuisance", template.plus, nuisances, where)
+            yield from self._quadratic_problems(where, template.quadratic, template.nominal)
+            size = (len(self.coefficients) + 1) * (len(self.coefficients) + 2) // 2
+            if template.moments is not None and template.moments.shape != (size, size):
+                yield Problem(
+                    "wrong size", f"{where}/quadratic/moments", str(template.moments.shape), f"({size}, {size})"
+                )
             if template.nominal.shape != shapes.get(category, template.nominal.shape):
                 yield Problem("shape differs from the axes", where, str(template.nominal.shape), str(shapes[category]))
         for category, counts in self.data.items():
@@ -242,6 +319,34 @@ class TemplateSet:
                 yield Problem("shape differs from the axes", where, str(counts.shape), str(shapes[category]))
             yield from _bin_problems(where, "not finite", counts, ~np.isfinite(counts))
             yield from _bin_problems(where, "negative count", counts, counts < 0)
+
+    def _quadratic_problems(self, where: str, pieces: Mapping[Pair, ArrayLike], injected: Floats) -> Iterator[Problem]:
+        """Pairs are of known coefficients in their order, and the pieces add up to what is injected."""
+        if not pieces:
+            return
+        values = {ONE: 1.0, **{known.name: known.value for known in self.coefficients}}
+        order = {name: place for place, name in enumerate(values)}
+        total, size = np.zeros(injected.shape), np.zeros(injected.shape)
+        for (a, b), piece in pieces.items():
+            yield from _unknown("coefficient", [name for name in (a, b) if name != ONE], values, f"{where}: {a}/{b}")
+            if a not in order or b not in order or np.shape(piece) != injected.shape:
+                return
+            if order[a] > order[b]:
+                yield Problem("coefficients in the wrong order", f"{where}: {a}/{b}", wanted=f"{b}/{a}")
+            with np.errstate(over="ignore", invalid="ignore"):
+                total += values[a] * values[b] * np.asarray(piece)
+                size += np.abs(values[a] * values[b] * np.asarray(piece))
+        with np.errstate(over="ignore", invalid="ignore"):
+            apart = np.abs(total - injected) > SAME_AT_MOST * (size + np.abs(injected))
+        if apart.any():
+            place = tuple(np.argwhere(apart)[0].tolist())
+            yield Problem(
+                "the pieces do not add up to what is injected",
+                where + (f" bin {list(place)}" if place else ""),
+                got=f"{total[place]:g}",
+                wanted=f"{injected[place]:g}",
+                remedy="Sum c_a c_b piece at the values of the coefficients.",
+            )
 
 
 def _refuse(problems: Iterable[Problem]) -> None:
