@@ -73,7 +73,7 @@ class Decay:
     lepton : "e", "mu" or "tau".
     form_factors : name of a shipped set or a `FormFactorSet`; None takes the default of the transition.
     wilson : couplings beyond the standard model for this lepton, as a mapping or `WilsonCoefficients`.
-    tensor : model of the tensor form factors of D and D*, "LO" or "EOM"; see `tensor_form_factors`.
+    tensor : model of the tensor form factors of D and D*, "LO", "EOM" or "HQE"; see `tensor_form_factors`.
     charm_mass : mass of the charmed meson in GeV where it is not the nominal one (mass points of a broad state).
 
     InputError lists everything that is wrong. Equal decays compare and hash equal.
@@ -118,6 +118,9 @@ class Decay:
             problems.append(Problem("the charmed meson is too heavy", got=f"{self.m_charm} GeV", wanted=limit))
         if self.tensor == "EOM" and self.couplings.T != 0.0 and self.lepton != "tau":
             problems.append(Problem("the EOM tensor model is singular at small q2", remedy='Take tensor="LO".'))
+        if self.tensor == "HQE" and self.orbital is None and self.model.parametrisation != "HQE":
+            rule, remedy = "the HQE tensor model needs form factors of that kind", 'Choose a set such as "HQE-2021".'
+            problems.append(Problem(rule, got=f"{self.form_factor_set.name}", remedy=remedy))
         if problems:
             raise InputError(*problems)
 

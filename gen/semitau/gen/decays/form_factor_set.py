@@ -1,29 +1,32 @@
-"""Shipped form-factor sets: parameters with their covariance, shifts of them, and the functions they stand for."""
+"""Form-factor sets, shipped and brought: parameters with covariance, shifts of them, the functions they stand for."""
 
 from __future__ import annotations
 
-import tomllib
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, replace
 from functools import lru_cache
 from importlib.resources import files
-from typing import Any
+from pathlib import Path
 
 import numpy as np
 from semitau.core.errors import InputError, Problem
 
 from ..truth.kinematics import Floats
-from . import bcl, bgl, cln
+from . import bcl, bgl, cln, heavy_quark
+from .form_factor_file import Member, read_members, toml_members
+from .form_factor_parameters import SHARED, TRANSITIONS
 from .form_factor_values import PseudoscalarFormFactors, VectorFormFactors
 
 Values = PseudoscalarFormFactors | VectorFormFactors
 Function = Callable[[Mapping[str, float], float, float, Floats], Values]
 
-TRANSITIONS = {"D": "B -> D", "Dst": "B -> D*", "Dss": "B -> D**"}
 _FUNCTIONS: Mapping[tuple[str, str], Function] = {
     ("CLN", "D"): cln.pseudoscalar,
     ("CLN", "Dst"): cln.vector,
     ("BCL", "D"): bcl.pseudoscalar,
+    ("BCL", "Dst"): bcl.vector,
+    ("HQE", "D"): heavy_quark.pseudoscalar,
+    ("HQE", "Dst"): heavy_quark.vector,
     ("BGL", "D"): bgl.pseudoscalar,
     ("BGL", "Dst"): bgl.vector,
 }
@@ -34,7 +37,7 @@ class FormFactors:
     """Form factors of one transition.
 
     transition : "D", "Dst" or "Dss" (the orbitally excited states).
-    parametrisation : "CLN", "BCL", "BGL" or "Isgur-Wise".
+    parametrisation : "CLN", "BCL", "BGL", "HQE" (heavy-quark expansion) or "Isgur-Wise".
     names, values, errors : parameters, in one order. correlation : their correlation matrix, row by row.
     source : where the numbers come from.
     """
@@ -119,10 +122,14 @@ def _directions(correlation: tuple[tuple[float, ...], ...]) -> tuple[tuple[float
 
 @dataclass(frozen=True)
 class FormFactorSet:
-    """A named set: form factors of one or more transitions."""
+    """A named set: form factors of one or more transitions.
+
+    shared : B -> D and B -> D* have one set of parameters (and equal numbers), so that a shift moves both.
+    """
 
     name: str
     members: tuple[FormFactors, ...]
+    shared: bool = False
 
     @property
     def transitions(self) -> tuple[str, ...]:
@@ -158,13 +165,17 @@ class FormFactorSet:
     def shifted(self, shifts: Mapping[str, float], transition: str | None = None) -> FormFactorSet:
         """The same with numbers added to parameters of one transition.
 
-        transition : may be left out if only one transition of the set has all these parameters.
+        transition : may be left out if only one transition of the set has all these parameters, or if they share them.
         """
+        if self.shared:
+            return replace(self, members=tuple(member.shifted(shifts) for member in self.members))
         chosen = self._pick([m.transition for m in self.members if set(shifts) <= set(m.names)], transition)
         return self._with(self[chosen].shifted(shifts))
 
     def along(self, direction: int, n_sigma: float, transition: str | None = None) -> FormFactorSet:
         """The same, moved along a direction of the covariance of one transition; see `FormFactors.directions`."""
+        if self.shared:
+            return replace(self, members=tuple(member.along(direction, n_sigma) for member in self.members))
         return self._with(self[self._pick(list(self.transitions), transition)].along(direction, n_sigma))
 
     def _pick(self, fitting: list[str], transition: str | None) -> str:
@@ -200,26 +211,43 @@ def form_factors(name: str) -> FormFactorSet:
     """The shipped set of this name: values, covariance, source and the functions. InputError if there is none."""
     if name not in form_factor_sets():
         raise InputError(Problem("no such form-factor set", got=str(name), wanted=", ".join(form_factor_sets())))
-    text = (files(__package__) / "form_factor_sets" / f"{name}.toml").read_text(encoding="utf-8")
-    tables = tomllib.loads(text)
-    return FormFactorSet(name, tuple(_read(transition, table) for transition, table in tables.items()))
+    place = files(__package__) / "form_factor_sets" / f"{name}.toml"
+    return _assembled(name, toml_members(place.read_text(encoding="utf-8"), str(place)))
 
 
-def _read(transition: str, table: dict[str, Any]) -> FormFactors:
-    names = tuple(table["values"])
-    correlation = np.eye(len(names))
-    for first, second, value in table["correlations"]:
-        i, j = names.index(first), names.index(second)
-        correlation[i, j] = correlation[j, i] = value
-    return FormFactors(
-        transition=transition,
-        parametrisation=table["parametrisation"],
-        names=names,
-        values=tuple(map(float, table["values"].values())),
-        errors=tuple(float(table["errors"][name]) for name in names),
-        correlation=tuple(map(tuple, correlation.tolist())),
-        source=table["source"],
-    )
+def read_form_factors(
+    path: Path | str, parametrisation: str | None = None, transition: str | None = None
+) -> FormFactorSet:
+    """The set in a TOML or CSV file of one's own; see `form_factor_file` for the format.
+
+    parametrisation, transition : of a CSV file, which does not say: "BCL", "D".
+
+    Raises InputError with all that is wrong: no such file, parameters missing or unknown, a covariance that is not
+    symmetric or not positive definite, with the numbers.
+    """
+    path = Path(path)
+    return _assembled(str(path), read_members(path, parametrisation, transition))
+
+
+def _assembled(name: str, members: list[Member]) -> FormFactorSet:
+    found = []
+    for table, parametrisation, names, values, covariance, source in members:
+        errors = np.sqrt(np.diag(covariance))
+        scale = np.outer(errors, errors)
+        correlation = np.divide(covariance, scale, out=np.eye(len(names)), where=scale > 0.0)
+        for transition in ("D", "Dst") if table == SHARED else (table,):
+            found.append(
+                FormFactors(
+                    transition=transition,
+                    parametrisation=parametrisation,
+                    names=names,
+                    values=tuple(values.tolist()),
+                    errors=tuple(errors.tolist()),
+                    correlation=tuple(map(tuple, correlation.tolist())),
+                    source=source,
+                )
+            )
+    return FormFactorSet(name, tuple(found), shared=any(member[0] == SHARED for member in members))
 
 
 def _sets_describing(transition: str) -> list[str]:

@@ -33,7 +33,7 @@ def decay_from_data(data: Mapping[str, Any]) -> Decay:
         FormFactors(**{name: _tuples(value) for name, value in member.items()})
         for member in data["form_factors"]["members"]
     ]
-    sets = FormFactorSet(data["form_factors"]["name"], tuple(members))
+    sets = FormFactorSet(data["form_factors"]["name"], tuple(members), data["form_factors"].get("shared", False))
     return Decay(**{**data, "wilson": wilson, "form_factors": sets})
 
 
