@@ -40,8 +40,8 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         "[selection]",
         "[seletion]\nel = { min = 1 }\n[selection]",
         (
-            "seletion: unknown key (allowed study, experiment, form_factors, mode, background, detector, selection, "
-            'category, variation, fit, toys). Did you mean "selection"?'
+            "seletion: unknown key (allowed study, experiment, form_factors, wilson, quadratic, mode, background, "
+            'detector, selection, category, variation, fit, toys). Did you mean "selection"?'
         ),
     ),
     "missing key": (
@@ -631,6 +631,73 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
             'Did you mean "expected"?'
         ),
         1,
+    ),
+    "coefficient of words": (
+        "[selection]",
+        '[wilson]\nSR = "large"\n[selection]',
+        'wilson.SR: is no coefficient (got "large", allowed a number or [real, imaginary] of size up to 4)',
+        1,
+    ),
+    "coefficient of three numbers": (
+        "[selection]",
+        "[wilson]\nVL = [1, 2, 3]\n[selection]",
+        "wilson.VL: is no coefficient (got [1, 2, 3], allowed a number or [real, imaginary] of size up to 2)",
+        1,
+    ),
+    "coefficient that is no number": (
+        "[selection]",
+        "[wilson]\nVL = [0.1, nan]\n[selection]",
+        "wilson.VL: is no coefficient (got [0.1, nan], allowed a number or [real, imaginary] of size up to 2)",
+        1,
+    ),
+    "coefficient too large": (
+        "[selection]",
+        "[wilson]\nT = [0.8, -0.8]\n[selection]",
+        (
+            "wilson.T: is larger than any such coefficient can be (got [0.8, -0.8], allowed a number or "
+            "[real, imaginary] of size up to 1)"
+        ),
+        1,
+    ),
+    "unknown coefficient": (
+        "[selection]",
+        "[wilson]\nS = 0.1\n[selection]",
+        'wilson.S: unknown key (allowed VL, VR, SL, SR, T, tensor). Did you mean "SR"?',
+        1,
+    ),
+    "no current left": (
+        "[selection]",
+        "[wilson]\nVL = -1.0\n[selection]",
+        (
+            "wilson: cancels the current of the Standard Model (got 1 + VL + VR = 0+0j, 1 + VL - VR = 0+0j, allowed "
+            "another VL or VR)"
+        ),
+    ),
+    "quadratic in nothing": (
+        "[selection]",
+        "[quadratic]\ncoefficients = []\n[selection]",
+        "quadratic.coefficients: needs at least 1 (got 0)",
+        1,
+    ),
+    "quadratic in the same twice": (
+        "[selection]",
+        '[quadratic]\ncoefficients = ["T", "T"]\n[selection]',
+        'quadratic.coefficients: must not name anything twice (got ["T", "T"])',
+        1,
+    ),
+    "quadratic in a word": (
+        "[selection]",
+        '[quadratic]\ncoefficients = ["Im_S"]\n[selection]',
+        (
+            'quadratic.coefficients[1]: is not known here (got "Im_S", allowed VL, VR, SL, SR, T, Im_VL, Im_VR, '
+            'Im_SL, Im_SR, Im_T). Did you mean "Im_SR"?'
+        ),
+        1,
+    ),
+    "variation named as a coefficient": (
+        'name = "R0"',
+        'name = "SR"',
+        'variation[SR].name: is a name that the fit keeps for itself (got "SR"). Rename it.',
     ),
     "no toys": ("[selection]", "[toys]\nnumber = 0\n[selection]", "toys.number: must be above 0 (got 0)", 1),
 }

@@ -7,6 +7,7 @@ from dataclasses import fields
 
 from rich.console import RenderableType
 from rich.text import Text
+from semitau.gen.decays.decay import WilsonCoefficients
 from semitau.gen.decays.rates import Observables
 from semitau.gen.decays.rates_table import RatesTable
 
@@ -14,7 +15,9 @@ from .numbers import digits_for, signed, with_error
 from .summary import plain_table
 
 
-def rates_tables(rates: RatesTable, sets: Mapping[str, str]) -> list[RenderableType]:
+def rates_tables(
+    rates: RatesTable, sets: Mapping[str, str], couplings: WilsonCoefficients, tensor: str
+) -> list[RenderableType]:
     """One table of the decays, one of the ratios, and what they were computed with."""
     table = plain_table("Decay", "BF (%)", "P", "F_L", "A_FB", "⟨q²⟩ (GeV²)")
     for mode in rates.modes:
@@ -35,13 +38,21 @@ def rates_tables(rates: RatesTable, sets: Mapping[str, str]) -> list[RenderableT
         "BF: branching fraction; P: lepton polarisation in the W* rest frame; F_L: longitudinal fraction; A_FB > 0: "
         f"lepton away from the charm hadron. Errors are those of the form factors alone ({used})."
     )
-    return [table, "", ratios, "", Text(note, style="dim")]
+    beyond = {name: value for name, value in _couplings(couplings).items() if any(value)}
+    lines: list[RenderableType] = [table, "", ratios, "", Text(note, style="dim")]
+    if beyond:
+        given = ", ".join(f"C_{name} = {_complex(*value)}" for name, value in beyond.items())
+        lines.append(Text(f"Couplings of the τ beyond the Standard Model: {given}; tensor form factors: {tensor}."))
+    return lines
 
 
-def rates_document(rates: RatesTable, sets: Mapping[str, str]) -> dict[str, object]:
-    """The same as plain numbers; widths in GeV."""
+def rates_document(
+    rates: RatesTable, sets: Mapping[str, str], couplings: WilsonCoefficients, tensor: str
+) -> dict[str, object]:
+    """The same as plain numbers; widths in GeV, couplings as [real, imaginary]."""
     return {
         "form_factors": dict(sets),
+        "wilson": {name: list(value) for name, value in _couplings(couplings).items()} | {"tensor": tensor},
         "modes": [
             {
                 "parent": mode.decay.parent,
@@ -57,6 +68,15 @@ def rates_document(rates: RatesTable, sets: Mapping[str, str]) -> dict[str, obje
             for ratio in rates.ratios
         ],
     }
+
+
+def _couplings(couplings: WilsonCoefficients) -> dict[str, tuple[float, float]]:
+    values = {field.name: complex(getattr(couplings, field.name)) for field in fields(couplings)}
+    return {name: (value.real, value.imag) for name, value in values.items()}
+
+
+def _complex(real: float, imaginary: float) -> str:
+    return f"{real:g} {'+' if imaginary > 0 else '−'} {abs(imaginary):g}i" if imaginary else f"{real:g}"
 
 
 DECIMALS = 4

@@ -14,17 +14,21 @@ from ..decays.form_factor_set import form_factor_sets, form_factors
 from .background_conflicts import background_conflicts
 from .categories import written_out
 from .idle_variations import idle_variations
-from .names import CHARM_OF_RATIO, FORM_FACTORS_OF, RATIOS
+from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, RATIOS
 from .rules import shown, suggestion
 from .sections import Conflict, Place, Sections, missing_file
+from .wilson import Wilson
 
 RESERVED = {"data", "meta"}  # names within a template file
 MOST_BINS = 100_000
+LEAST_CURRENT = 1e-3  # below, decays with a tau have no rate to draw from, or that of the scalar and tensor alone
 
 
 def conflicts(sections: Sections) -> list[Conflict]:
     """Everything that is wrong between the tables."""
-    checks = (_names, _modes, _ratios, _categories, background_conflicts, _form_factors, idle_variations, _fit)
+    checks = (
+        _names, _modes, _ratios, _categories, background_conflicts, _form_factors, _couplings, idle_variations, _fit,
+    )  # fmt: skip
     return [conflict for check in checks for conflict in check(sections)]
 
 
@@ -41,7 +45,7 @@ def _names(sections: Sections) -> Iterator[Conflict]:
         seen.add((kind, name))
         if kind == "component" and name in RESERVED:
             yield Conflict(place, "is a name that template files keep for themselves", shown(name), remedy="Rename it.")
-        if kind == "variation" and (name in RATIOS or name.startswith("yield_")):
+        if kind == "variation" and (name in (*RATIOS, *COEFFICIENTS) or name.startswith("yield_")):
             yield Conflict(place, "is a name that the fit keeps for itself", shown(name), remedy="Rename it.")
 
 
@@ -149,6 +153,21 @@ def _form_factors(sections: Sections) -> Iterator[Conflict]:
         if name not in known:
             what = "is no form-factor set" if name not in form_factor_sets() else "does not describe this decay"
             yield Conflict(("form_factors", transition), what, shown(name), ", ".join(known), suggestion(name, known))
+
+
+def _couplings(sections: Sections) -> Iterator[Conflict]:
+    """Couplings act on a mode with a tau, leave it a rate, and are no function of what does nothing."""
+    if "mode" in sections.whole and not any("tau" in mode.leptons for mode in sections.modes.values()):
+        remedy = "Remove the table, or add a mode with a tau."
+        if sections.wilson is not None and sections.wilson != Wilson():
+            yield Conflict(("wilson",), "acts on nothing: no mode has a tau", remedy=remedy)
+        if sections.quadratic is not None:
+            yield Conflict(("quadratic",), "acts on nothing: no mode has a tau", remedy=remedy)
+    if sections.wilson is not None:
+        left = 1.0 + sections.wilson.VL
+        if max(abs(left + sections.wilson.VR), abs(left - sections.wilson.VR)) < LEAST_CURRENT:
+            got = f"1 + VL + VR = {left + sections.wilson.VR:g}, 1 + VL - VR = {left - sections.wilson.VR:g}"
+            yield Conflict(("wilson",), "cancels the current of the Standard Model", got, "another VL or VR")
 
 
 def _fit(sections: Sections) -> Iterator[Conflict]:

@@ -32,10 +32,13 @@ CharmFamily = Literal["D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430
 CharmHadron = Literal["D0", "D+", "D*0", "D*+"]
 SoftKind = Literal["charged", "neutral", "photon"]
 RatioName = Literal["R_D", "R_Dst"]
+# Real and imaginary parts of Wilson coefficients, as parameters of templates.
+CoefficientName = Literal["VL", "VR", "SL", "SR", "T", "Im_VL", "Im_VR", "Im_SL", "Im_SR", "Im_T"]
 
 PARENTS: tuple[str, ...] = get_args(Parent)
 LEPTONS: tuple[str, ...] = get_args(Lepton)
 RATIOS: tuple[str, ...] = get_args(RatioName)
+COEFFICIENTS: tuple[str, ...] = get_args(CoefficientName)
 CHARM_FAMILIES: tuple[str, ...] = get_args(CharmFamily)
 CHARM_HADRONS: tuple[str, ...] = get_args(CharmHadron)
 

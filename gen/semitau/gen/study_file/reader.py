@@ -18,6 +18,7 @@ from .places import key_of
 from .sections import SECTIONS, Conflict, Sections
 from .study import CONFLICTS, StudyConfig
 from .toml_lines import TomlLines
+from .wilson import Quadratic
 
 MOST_BYTES = 4_000_000
 
@@ -131,8 +132,9 @@ def _sound_sections(data: Mapping[str, Any], folder: Path) -> Sections:
     named = [table.get("component") for key in ("mode", "background") for table in _list_of_tables(data.get(key))]
     single = {
         name: _sound(TypeAdapter(StudyConfig.model_fields[name].rebuild_annotation()), data.get(name, {}))
-        for name in ("selection", "detector", "form_factors", "fit")
+        for name in ("selection", "detector", "form_factors", "fit", "wilson")
     }
+    single["quadratic"] = _sound(TypeAdapter(Quadratic), data["quadratic"]) if "quadratic" in data else None
     return Sections(
         modes=sound["mode"],
         backgrounds=sound["background"],

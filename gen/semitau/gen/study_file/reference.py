@@ -18,6 +18,8 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[study]": ("StudySection",),
     "[experiment]": ("Experiment",),
     "[form_factors]": ("FormFactors",),
+    "[wilson]": ("Wilson",),
+    "[quadratic]": ("Quadratic",),
     "[[mode]]": ("Mode",),
     "[[background]]": ("Background",),
     "Laws of a background": (

@@ -14,6 +14,7 @@ from .fit import FitSection
 from .machine import FormFactors
 from .rules import shown
 from .variations import Variation
+from .wilson import Quadratic, Wilson
 
 Place = tuple[str | int, ...]
 SECTIONS = ("mode", "background", "category", "variation")
@@ -49,6 +50,8 @@ class Sections:
     whole: frozenset[str]
     components: frozenset[str]
     folder: Path | None = None
+    wilson: Wilson | None = None
+    quadratic: Quadratic | None = None
 
     @property
     def categories(self) -> dict[str, StudyCategory]:

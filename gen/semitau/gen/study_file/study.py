@@ -24,6 +24,7 @@ from .names import OBSERVABLES
 from .rules import Table
 from .sections import SECTIONS, Sections
 from .variations import Variation
+from .wilson import Quadratic, Wilson
 
 CONFLICTS = "semitau_conflicts"
 
@@ -34,6 +35,8 @@ class StudyConfig(Table):
     study: StudySection
     experiment: Experiment
     form_factors: FormFactors = FormFactors()
+    wilson: Wilson = Wilson()
+    quadratic: Quadratic | None = Field(default=None, description="templates as functions of [wilson]")
     modes: tuple[Mode, ...] = Field(alias="mode", min_length=1)
     backgrounds: tuple[Background, ...] = Field(default=(), alias="background")
     detector: Detector = Detector()
@@ -64,6 +67,8 @@ class StudyConfig(Table):
             selection=self.selection,
             detector=self.detector,
             form_factors=self.form_factors,
+            wilson=self.wilson,
+            quadratic=self.quadratic,
             fit=self.fit,
             whole=frozenset(SECTIONS),
             components=frozenset((*(mode.name for mode in self.modes), *(item.name for item in self.backgrounds))),

@@ -9,7 +9,7 @@ import numpy as np
 from semitau.core.errors import InputError, Problem
 
 from ..decays.chains import Channel, channels, semileptonic_branching_fraction
-from ..decays.decay import Decay, charm_name
+from ..decays.decay import Decay, WilsonCoefficients, charm_name
 from ..study_file.components import Mode
 from ..study_file.names import CHARM_OF_RATIO, FORM_FACTORS_OF
 from ..study_file.study import StudyConfig
@@ -63,7 +63,10 @@ def plan_channels(study: StudyConfig) -> tuple[ChannelPlan, ...]:
 
 def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     sets = {name: getattr(study.form_factors, name) for name in ("D", "Dst", "Dss")}
-    chains = channels(mode.parents, mode.charm, mode.leptons, form_factors=sets)
+    chains = channels(
+        mode.parents, mode.charm, mode.leptons,
+        form_factors=sets, wilson=study.wilson.couplings, tensor=study.wilson.tensor,
+    )  # fmt: skip
     expected = np.array([expected_decays(study, chain) for chain in chains])
     expected *= np.array([injected_factor(study, mode, chain.parent) for chain in chains])
     if not expected.sum() > 0.0:
@@ -131,15 +134,22 @@ def shared_out(events: int, expected: Sequence[float] | np.ndarray) -> list[int]
     return [max(int(n), LEAST_EVENTS) if share > 0.0 else 0 for n, share in zip(whole, shares, strict=True)]
 
 
-def predicted_ratio(study: StudyConfig, name: str, parents: Sequence[str]) -> float:
-    """R_D or R_Dst from the study's form factors: tau over the mean of e and mu, for this mix of tagged parents."""
+def predicted_ratio(
+    study: StudyConfig, name: str, parents: Sequence[str], couplings: WilsonCoefficients | None = None
+) -> float:
+    """R_D or R_Dst from the study's form factors: tau over the mean of e and mu, for this mix of tagged parents.
+
+    couplings : of the tau, those of the study if left out.
+    """
+    of_tau = study.wilson.couplings if couplings is None else couplings
     family = CHARM_OF_RATIO[name]
     chosen = getattr(study.form_factors, FORM_FACTORS_OF[family])
     sums = {"e": 0.0, "mu": 0.0, "tau": 0.0}
     for parent in parents:
         tagged = parent_pairs(study, parent) * study.detector.tag.efficiency[parent]
         for lepton in sums:
-            decay = Decay(parent, charm_name(parent, family), lepton, chosen)
+            wilson, tensor = (of_tau, study.wilson.tensor) if lepton == "tau" else (None, "LO")
+            decay = Decay(parent, charm_name(parent, family), lepton, chosen, wilson, tensor)
             sums[lepton] += tagged * semileptonic_branching_fraction(decay)
     return 2.0 * sums["tau"] / (sums["e"] + sums["mu"])
 

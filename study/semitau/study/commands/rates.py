@@ -27,6 +27,7 @@ def command(call: Invocation, file: Path) -> None:
     sets = {name: getattr(study.form_factors, name) for name in ("D", "Dst", "Dss")}
     charms = list(dict.fromkeys(charm for mode in study.modes for charm in mode.charm))
     parents = list(dict.fromkeys(parent for mode in study.modes for parent in mode.parents))
-    rates = rates_table(charms, parents=parents, form_factors=sets)
-    call.terminal.show(*rates_tables(rates, sets))
-    call.terminal.result(rates_document(rates, sets))
+    couplings, tensor = study.wilson.couplings, study.wilson.tensor
+    rates = rates_table(charms, parents=parents, form_factors=sets, wilson=couplings, tensor=tensor)
+    call.terminal.show(*rates_tables(rates, sets, couplings, tensor))
+    call.terminal.result(rates_document(rates, sets, couplings, tensor))

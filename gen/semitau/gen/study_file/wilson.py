@@ -1,0 +1,77 @@
+"""[wilson] and [quadratic]: couplings beyond the Standard Model, and templates as functions of them."""
+
+from __future__ import annotations
+
+from math import hypot, isfinite
+from typing import Annotated, Any, Literal
+
+from pydantic import BeforeValidator, Field, PlainSerializer, WithJsonSchema
+
+from ..decays.coefficients import LARGEST
+from ..decays.decay import WilsonCoefficients
+from .names import CoefficientName
+from .rules import Distinct, Table, broken
+
+
+def _number(given: Any) -> bool:
+    return isinstance(given, int | float) and not isinstance(given, bool) and isfinite(given)
+
+
+def _within(largest: float) -> BeforeValidator:
+    """A complex number no larger than the range in which it makes sense."""
+    wanted = f"a number or [real, imaginary] of size up to {largest:g}"
+
+    def check(given: Any) -> complex:
+        if isinstance(given, complex):
+            given = [given.real, given.imag]
+        parts = given if isinstance(given, list | tuple) else [given, 0.0]
+        if len(parts) != 2 or not all(map(_number, parts)):
+            raise broken("is no coefficient", wanted)
+        if hypot(*parts) > largest:
+            raise broken("is larger than any such coefficient can be", wanted)
+        return complex(*parts)
+
+    return BeforeValidator(check)
+
+
+_SHORT = WithJsonSchema(
+    {"anyOf": [{"type": "number"}, {"type": "array", "prefixItems": [{"type": "number"}, {"type": "number"}]}]}
+)
+_WRITTEN = PlainSerializer(lambda value: [value.real, value.imag] if value.imag else value.real)
+Current = Annotated[complex, _within(LARGEST["VL"]), _SHORT, _WRITTEN]
+Scalar = Annotated[complex, _within(LARGEST["SL"]), _SHORT, _WRITTEN]
+Tensor = Annotated[complex, _within(LARGEST["T"]), _SHORT, _WRITTEN]
+
+
+class Wilson(Table):
+    """Couplings beyond the Standard Model at the b mass scale, of the modes with a tau; docs/physics.md defines them.
+
+    Each is a number, or [real, imaginary]. They act on rates, on the decays that are generated, and on the ratios that
+    the templates are made with.
+    """
+
+    VL: Current = Field(default=0.0, description="left-handed vector current, beside the Standard Model's 1")
+    VR: Current = Field(default=0.0, description="right-handed vector current")
+    SL: Scalar = Field(default=0.0, description="left-handed scalar current")
+    SR: Scalar = Field(default=0.0, description="right-handed scalar current")
+    T: Tensor = Field(default=0.0, description="tensor current")
+    tensor: Literal["LO", "EOM"] = Field(
+        default="LO", description="tensor form factors: heavy-quark limit, or equations of motion"
+    )
+
+    @property
+    def couplings(self) -> WilsonCoefficients:
+        """As the decays of the tau take them."""
+        return WilsonCoefficients(*(complex(getattr(self, name)) for name in ("VL", "VR", "SL", "SR", "T")))
+
+
+class Quadratic(Table):
+    """Templates of the modes with a tau as exact quadratic functions of chosen real coefficients.
+
+    From the one sample that [wilson] draws; a fit then takes any point or floats them (docs/statistics.md). `SR` is the
+    real part of a coefficient, `Im_SR` its imaginary part.
+    """
+
+    coefficients: Annotated[tuple[CoefficientName, ...], Field(min_length=1), Distinct] = Field(
+        description="real and imaginary parts that templates are functions of"
+    )
