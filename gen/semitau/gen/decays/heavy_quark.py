@@ -56,7 +56,7 @@ class Subleading:
 class HeavyQuarkFormFactors:
     """h_i(w)/xi(w), arrays of the shape of w. D: plus, minus, T. D*: V, A1, A2, A3, T1, T2, T3.
 
-    Conventions: <D*|c sigma^mn b|B> = -sqrt(Mm) eps^mnrs [T1 e*_r (v+v')_s + T2 e*_r (v-v')_s + T3 (e*.v) v_r v'_s].
+    Tensor: <D*|c sigma^mn b|B> = -sqrt(Mm) eps^mnrs [T1 e*_r (v+v')_s + T2 e*_r (v-v')_s + T3 (e*.v)(v+v')_r (v-v')_s].
     """
 
     plus: Floats
@@ -142,7 +142,7 @@ def vector(parameters: Mapping[str, float], parent_mass: float, charm_mass: floa
         F1=longitudinal(parent_mass, charm_mass, q2, A1, A2),
         T1=scale * ((1.0 + r) * h.T1 - (1.0 - r) * h.T2),
         T2=scale * 2.0 * r * ((step + 2.0) / (1.0 + r) * h.T1 - step / (1.0 - r) * h.T2),
-        T3=scale * ((1.0 - r) * h.T1 - (1.0 + r) * h.T2 - 0.5 * (1.0 - r * r) * h.T3),
+        T3=scale * ((1.0 - r) * h.T1 - (1.0 + r) * h.T2 + (1.0 - r * r) * h.T3),
     )
 
 
