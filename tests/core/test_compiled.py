@@ -28,9 +28,9 @@ def write(folder: Path, first: int, shift: int) -> None:
             path.write_text(text)
 
 
-def run(folder: Path) -> list[int]:
+def run(folder: Path, program: str = PROGRAM) -> list[int]:
     """Value of the kernel, and how many of its signatures came from the cache, in a fresh interpreter."""
-    done = subprocess.run([sys.executable, "-c", PROGRAM], cwd=folder, capture_output=True, text=True, check=True)
+    done = subprocess.run([sys.executable, "-c", program], cwd=folder, capture_output=True, text=True, check=True)
     return [int(word) for word in done.stdout.split()]
 
 
@@ -44,6 +44,24 @@ def test_changes_of_imported_files_are_seen(tmp_path: Path) -> None:
     write(tmp_path, first=100, shift=2)
     assert run(tmp_path) == [109, 0]
     assert run(tmp_path) == [109, 1]
+
+
+def test_an_index_that_cannot_be_read_is_made_anew(tmp_path: Path) -> None:
+    """As after an upgrade in which the type of an argument moved to another file, or a run that was killed."""
+    types = "from typing import NamedTuple\n\n\nclass Table(NamedTuple):\n    x: float\n"
+    loop = "from semitau.core.compiled import kernel\n\n\n@kernel\ndef total(table):\n    return int(table.x)\n"
+    (tmp_path / "made").mkdir()
+    for name, text in {"__init__.py": "", "old.py": types, "loop.py": loop}.items():
+        (tmp_path / "made" / name).write_text(text)
+    program = (
+        "from made.{} import Table; from made.loop import total; print(total(Table(3.0)), len(total.stats.cache_hits))"
+    )
+    assert run(tmp_path, program.format("old")) == [3, 0]
+    (tmp_path / "made" / "old.py").rename(tmp_path / "made" / "new.py")
+    assert run(tmp_path, program.format("new")) == [3, 0]
+    for index in tmp_path.rglob("*.nbi"):
+        index.write_bytes(index.read_bytes()[:40])
+    assert run(tmp_path, program.format("new")) == [3, 0]
 
 
 @pytest.mark.parametrize("change", ["rows.py", "lane.py", "loop.py"])

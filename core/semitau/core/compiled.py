@@ -38,7 +38,21 @@ def _stamped(dispatcher: Any, function: Callable[..., Any]) -> Any:
     index = getattr(getattr(dispatcher, "_cache", None), "_cache_file", None)
     if index is not None and hasattr(index, "_source_stamp"):
         index._source_stamp = (index._source_stamp, source_digest(function.__code__.co_filename))
+        index._load_index = _or_empty(index._load_index)
     return dispatcher
+
+
+def _or_empty(load: Callable[[], dict[Any, Any]]) -> Callable[[], dict[Any, Any]]:
+    """An index that cannot be read counts as empty: one of an older version may name argument types that have moved
+    since, one of a killed process may have been cut off."""
+
+    def loaded() -> dict[Any, Any]:
+        try:
+            return load()
+        except Exception:
+            return {}
+
+    return loaded
 
 
 @cache
