@@ -17,9 +17,9 @@ from semitau.core.constants import MASS
 from semitau.core.streams import stream_key, uniforms
 from semitau.gen.block import LANES, NODE, Q2, VISIBLE_E, new_block
 from semitau.gen.decays.chains import chains_of
-from semitau.gen.truth import drawing as truth
 from semitau.gen.truth.alias import alias_table, draw_position, interval_table
 from semitau.gen.truth.channel_table import Q2_INTERVALS, channel_table
+from semitau.gen.truth.cosines import even_cosine
 from semitau.gen.truth.drawing import draw_decays
 from semitau.gen.truth.momenta import rotation
 from semitau.gen.truth.tau_decay import emission, energy_range
@@ -70,7 +70,7 @@ def test_no_density(bad: float) -> None:
 def test_cosine(sin2: float, cos2: float) -> None:
     """Distribution function of sin2 (1 - c²) + cos2 c², integrated by hand."""
     draws = zip(*(random(k, 50_000) for k in range(4)), strict=True)
-    c = np.array([truth._cosine(*u, sin2, cos2) for u in draws])
+    c = np.array([even_cosine(*u, sin2, cos2) for u in draws])
     total = 4 / 3 * sin2 + 2 / 3 * cos2
     assert stats.kstest(c, lambda x: (sin2 * (x - x**3 / 3 + 2 / 3) + cos2 * (x**3 + 1) / 3) / total).pvalue > UNLIKELY
 

@@ -22,7 +22,9 @@ class Fraction(NamedTuple):
     error: float
 
 
-def _table(rows: Mapping[str, Mapping[tuple[str, ...], tuple[float, float]]]) -> Mapping[str, Mapping[tuple[str, ...], Fraction]]:
+def _table(
+    rows: Mapping[str, Mapping[tuple[str, ...], tuple[float, float]]],
+) -> Mapping[str, Mapping[tuple[str, ...], Fraction]]:
     return MappingProxyType({k: MappingProxyType({n: Fraction(*v) for n, v in row.items()}) for k, row in rows.items()})
 
 
@@ -86,9 +88,11 @@ TO_LEPTONS = _table(
         },
     }
 )
-"""Charmed meson -> what comes with the lepton pair -> branching fraction; ("tau",) and ("mu",): D_s -> tau nu, mu nu."""
+"""Charmed meson -> what comes with the leptons -> branching fraction; ("tau",) and ("mu",) are D_s -> tau nu, mu nu."""
 
-INCLUSIVE_ELECTRON = MappingProxyType({"D_s+": Fraction(6.33e-2, 0.15e-2), "D0": Fraction(6.49e-2, 0.11e-2), "D+": Fraction(16.07e-2, 0.30e-2)})
+INCLUSIVE_ELECTRON = MappingProxyType(
+    {"D_s+": Fraction(6.33e-2, 0.15e-2), "D0": Fraction(6.49e-2, 0.11e-2), "D+": Fraction(16.07e-2, 0.30e-2)}
+)
 """Of charmed meson -> e X, to see how much the list above leaves out."""
 
 STRANGE_VECTOR_PHOTON = Fraction(0.936, 0.004)

@@ -74,9 +74,21 @@ MEASURED_END = FOUND_END + 34
 (
     MM2, Q2_MEASURED, EL, P_LEPTON, P_CHARM, E_RES, DELTA_M, CATEGORY,
 ) = (LANES * row for row in range(MEASURED_END, MEASURED_END + 8))  # fmt: skip
+SCENARIO_END = MEASURED_END + 8
+
+# --- double charm --------------------------------------------------------------------------------------------------
+# What a B decay to two charmed mesons has beside the D(*) and the lepton, in the rest frame of the B; zero if absent.
+# BESIDE_SOFT: pion or photon of a D_s* or D*. KAON: of B -> D(*) D(*) K. HADRON: what comes with the lepton pair of a
+# charm decay. OTHERS_SEEN: 1 if a charged product of these made a track. OTHERS_LEFT: energy that neutral ones leave.
+(
+    BESIDE_SOFT_PX, BESIDE_SOFT_PY, BESIDE_SOFT_PZ, BESIDE_SOFT_E,
+    KAON_PX, KAON_PY, KAON_PZ, KAON_E, HADRON_PX, HADRON_PY, HADRON_PZ, HADRON_E,
+    OTHERS_SEEN, OTHERS_LEFT,
+) = (LANES * row for row in range(SCENARIO_END, SCENARIO_END + 14))  # fmt: skip
+DOUBLE_CHARM_END = SCENARIO_END + 14
 
 # --- all -----------------------------------------------------------------------------------------------------------
-ROWS = MEASURED_END + 8
+ROWS = DOUBLE_CHARM_END
 
 
 def new_block() -> npt.NDArray[np.float64]:

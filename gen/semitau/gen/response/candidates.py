@@ -16,8 +16,9 @@ from semitau.core.constants import mass
 
 from .. import block as row
 from ..block import LANES
+from ..truth.boost import boosted
 from .charm_decay import PION
-from .collider import boosted, boosted_along_z
+from .collider import boosted_along_z
 from .detector import CHARGED_PION, NEUTRAL_PION, NO_PARTICLE, Beams, Chain
 from .measuring import NEUTRAL_PION_MASS
 

@@ -11,7 +11,7 @@ from semitau.core.streams import uniform
 
 from .. import block as row
 from ..block import LANES
-from .collider import boosted
+from ..truth.boost import boosted
 from .draw_numbers import CHARM_AZIMUTH, CHARM_COS, PAIR_AZIMUTH, PAIR_COS, PAIR_MASS
 
 Floats = npt.NDArray[np.float64]

@@ -13,6 +13,7 @@ from semitau.core.elementary import normal_pair, sincos_turns
 from semitau.core.streams import uniform
 
 from ..block import BOOST_GAMMA, BOOST_X, BOOST_Y, BOOST_Z, LANES
+from ..truth.boost import boosted
 from .detector import Beams
 from .draw_numbers import ENERGY_AND_TAG_X, FLIGHT_AZIMUTH, FLIGHT_COS, ONE, TWO
 
@@ -43,16 +44,6 @@ def draw_pair(x: Floats, keys: Keys, beams: Beams, parent_mass: float) -> None:
         x[BOOST_X + i] = across * c
         x[BOOST_Y + i] = across * s
         x[BOOST_Z + i] = np.sqrt(square) * cosine
-
-
-@inlined
-def boosted(
-    px: float, py: float, pz: float, e: float, gamma: float, ux: float, uy: float, uz: float
-) -> tuple[float, float, float, float]:
-    """The four-momentum seen from a frame in which its own frame moves with gamma and u = gamma*beta."""
-    along = ux * px + uy * py + uz * pz
-    k = e + along / (1.0 + gamma)
-    return px + k * ux, py + k * uy, pz + k * uz, gamma * e + along
 
 
 @inlined

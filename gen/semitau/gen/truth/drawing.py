@@ -3,9 +3,8 @@
 Nothing is rejected and nothing is weighted. The joint density is drawn as a chain of exact conditionals:
 
 - q²: alias table (`alias.py`).
-- cos(theta), and cos(theta_V): the even part is a mixture of sin² and cos² terms. The median of three uniforms on
-  [-1, 1] is distributed as 1 - c², the one of largest modulus as c². An odd part comes from choosing the sign with the
-  odds of the density at c and -c.
+- cos(theta), and cos(theta_V): the even part is a mixture of sin² and cos² terms (`cosines.py`). An odd part comes
+  from choosing the sign with the odds of the density at c and -c.
 - chi: the density is a trigonometric polynomial up to 2 chi. Its values at four angles a quarter turn apart have a sum
   that does not depend on the base angle, so a uniform base angle and a choice among the four are exact.
 - tau daughter: energy from an alias table, direction isotropic, then reversed with the odds of the density at n and -n;
@@ -30,6 +29,7 @@ from ..block import LANES
 from . import draw_numbers as draw
 from .alias import draw_position
 from .channel_table import Q2_INTERVALS, VISIBLE_INTERVALS, ChannelTable
+from .cosines import even_cosine
 from .momenta import fill_momenta
 from .spin_algebra import helicity_states, lepton_terms, spin_density, square
 from .tau_decay import emission
@@ -123,16 +123,6 @@ def _complex_amplitudes(x: Floats, i: int) -> tuple[complex, ...]:
 
 
 @inlined
-def _cosine(u1: float, u2: float, u3: float, u_term: float, sin2: float, cos2: float) -> float:
-    """From the density sin2 * (1 - c²) + cos2 * c²."""
-    a, b, c = 2.0 * u1 - 1.0, 2.0 * u2 - 1.0, 2.0 * u3 - 1.0
-    median = max(min(a, b), min(max(a, b), c))
-    largest = a if abs(a) > abs(b) else b
-    largest = c if abs(c) > abs(largest) else largest
-    return median if u_term * (2.0 * sin2 + cos2) < 2.0 * sin2 else largest
-
-
-@inlined
 def _lane_angles(
     x: Floats, i: int, key: np.uint64, x_lepton: float, incoherent: float, coherent: float, J: Any
 ) -> None:
@@ -141,7 +131,7 @@ def _lane_angles(
     straight = square(ap) + square(am)
     sin2 = 0.5 * straight + square(a0) + 0.5 * (square(bp) + square(bm)) + square(t)
     cos2 = straight + square(b0) + square(t)
-    c = _cosine(
+    c = even_cosine(
         uniform(key, draw.THETA_1),
         uniform(key, draw.THETA_2),
         uniform(key, draw.THETA_3),
@@ -157,7 +147,7 @@ def _lane_angles(
     transverse = square(kp_minus) + square(km_minus) + square(kp_plus) + square(km_plus)
     longitudinal = square(k0_minus) + square(k0_plus)
     flat = incoherent * (transverse + longitudinal)
-    v = _cosine(
+    v = even_cosine(
         uniform(key, draw.V_1),
         uniform(key, draw.V_2),
         uniform(key, draw.V_3),
