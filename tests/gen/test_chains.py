@@ -141,5 +141,5 @@ def test_bad_names() -> None:
         channels(["B0"], ["Ds"], ["mu"])
     with pytest.raises(InputError, match=r"no such lepton .*'nu'.*e, mu, tau"):
         channels(["B0"], ["D"], ["nu"])
-    with pytest.raises(InputError, match=r"no such tau decay .*'rho'.*e, mu, pi"):
-        channels(["B0"], ["D"], ["tau"], tau_to=["rho"])
+    with pytest.raises(InputError, match=r"no such tau decay .*'eta'.*e, mu, pi, rho"):
+        channels(["B0"], ["D"], ["tau"], tau_to=["eta"])

@@ -227,7 +227,10 @@ def test_no_events() -> None:
         ({"n": 2.5}, r"n: the number of events must be a whole number \(got 2\.5"),
         ({"n": True}, "n: the number of events must be a whole number"),
         ({"seed": -3}, r"seed: the seed must be a whole number \(got -3, allowed 0 to"),
-        ({"tau_to": "rho"}, r"tau_to: no such tau decay \(got 'rho', allowed 'e', 'mu', 'pi'\)"),
+        (
+            {"tau_to": "eta"},
+            r"tau_to: no such tau decay \(got 'eta', allowed 'e', 'mu', 'pi', 'rho', 'a1', 'a1_1prong'\)",
+        ),
         ({"tau_to": None}, r"tau_to: no such tau decay \(got None"),
         (
             {"charm_to": "D0 gamma"},

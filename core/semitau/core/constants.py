@@ -94,14 +94,19 @@ LIFETIME: Mapping[str, float] = MappingProxyType({"B0": 1.517, "B+": 1.638, "tau
 
 BRANCHING_FRACTION: Mapping[str, Mapping[str, float]] = MappingProxyType(
     {
-        "tau": MappingProxyType({"e": 0.1782, "mu": 0.1739, "pi": 0.1082}),
+        "tau": MappingProxyType(
+            {"e": 0.1782, "mu": 0.1739, "pi": 0.1082, "rho": 0.2549, "a1": 0.0902, "a1_1prong": 0.0926}
+        ),
         "D*+": MappingProxyType({"D0 pi+": 0.677, "D+ pi0": 0.307, "D+ gamma": 0.016}),
         "D*0": MappingProxyType({"D0 pi0": 0.647, "D0 gamma": 0.353}),
         "D0": MappingProxyType({"K- pi+": 0.0395}),
         "D+": MappingProxyType({"K- pi+ pi+": 0.0938}),
     }
 )
-"""Parent -> final state -> branching fraction; neutrinos are left out of the final states of the tau."""
+"""Parent -> final state -> branching fraction; neutrinos are left out of the final states of the tau.
+
+tau: "rho" is pi- pi0, "a1" pi- pi- pi+, "a1_1prong" pi- pi0 pi0, all without those from kaons.
+"""
 
 
 def untagged(name: str) -> str:

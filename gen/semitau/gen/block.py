@@ -18,8 +18,10 @@ LANES = 256
 # against the charm flight. COS_CHI, SIN_CHI: azimuth between the two decay planes.
 # VISIBLE_E: energy of the charged daughter of the tau in the tau rest frame; VISIBLE_X, _Y, _Z: its unit direction on
 # the axes (theta-hat, phi-hat, n) of the tau in the W* frame. POLARISATION: of the tau on these axes. All these are
-# unset in channels without a tau. SOFT: pion or photon of the D*. PION: pion of a D** (or eta). PION2: its second pion.
-# TAU: the tau. LEPTON: the charged lepton (daughter) that is seen. Particles that a channel does not have are zero rows.
+# unset in channels without a tau. For a tau that gives several pions, VISIBLE_X, _Y, _Z is the polarimeter vector.
+# SOFT: pion or photon of the D*. PION: pion of a D** (or eta). PION2: its second pion. TAU: the tau. LEPTON: the
+# charged lepton (daughter) that is seen. PARTNER1, PARTNER2: other pions of a tau: the pi0 of a rho; of three pions the
+# single charged one or the two of like charge come first. Particles that a channel does not have are zero rows.
 # CHARM_MASS: of the charm hadron of the B decay. MASS_POINT: which of the amplitude tables of a broad state an event
 # takes. LIGHT_MASS: what recoils against the D or D* in its decay, a particle or a pair of pions.
 (
@@ -32,8 +34,10 @@ LANES = 256
     TAU_PX, TAU_PY, TAU_PZ, TAU_E,
     LEPTON_PX, LEPTON_PY, LEPTON_PZ, LEPTON_E,
     CHARM_MASS, MASS_POINT, LIGHT_MASS,
-) = (LANES * row for row in range(40))  # fmt: skip
-TRUTH_ROWS = 40
+    PARTNER1_PX, PARTNER1_PY, PARTNER1_PZ, PARTNER1_E,
+    PARTNER2_PX, PARTNER2_PY, PARTNER2_PZ, PARTNER2_E,
+) = (LANES * row for row in range(48))  # fmt: skip
+TRUTH_ROWS = 48
 
 # Rows that a truth kernel may scribble on; free for later stages afterwards.
 (

@@ -38,7 +38,8 @@ class Channel:
     """One fully specified decay chain of a B+ or B0; charge conjugation is implied.
 
     decay : the semileptonic decay, with its form factors.
-    tau_to : charged particle from the tau: "e", "mu", "pi"; None if the B decay gave no tau.
+    tau_to : decay of the tau: "e", "mu", "pi", "rho" (pi- pi0), "a1" (pi- pi- pi+) or "a1_1prong" (pi- pi0 pi0); None
+        if the B decay gave no tau.
     bachelor : pion of D** -> D(*) pi: "none", "charged" or "neutral".
     vector : species of the D*, "D*+" or "D*0"; "" if there is none.
     soft : particle of the D* decay: "none", "charged_pion", "neutral_pion" or "photon".
@@ -99,7 +100,7 @@ class Channel:
     @property
     def m_seen_lepton(self) -> float:
         """GeV."""
-        return MASS["pi+" if self.seen_lepton == "pi" else self.seen_lepton]
+        return MASS[self.seen_lepton if self.seen_lepton in LEPTONS else "pi+"]
 
     @property
     def name(self) -> str:
@@ -134,7 +135,7 @@ def channels(
     """Every chain from these parents through these charmed mesons and leptons, in that order.
 
     parents : of "B+", "B0". charms : families, of "D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430)".
-    leptons : of "e", "mu", "tau". tau_to : of "e", "mu", "pi"; only these decays of the tau.
+    leptons : of "e", "mu", "tau". tau_to : of "e", "mu", "pi", "rho", "a1", "a1_1prong"; only these decays of the tau.
     form_factors : "D", "Dst", "Dss" -> set; the defaults of `Decay` where left out. wilson, tensor : on the tau only.
 
     Branching fractions: of D and D* from the widths with the shipped |V_cb|; of D** with light leptons from measured

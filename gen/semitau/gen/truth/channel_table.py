@@ -18,6 +18,7 @@ from ..decays.amplitudes import HelicityAmplitudes, helicity_amplitudes
 from ..decays.chains import Channel
 from ..decays.decay import Decay
 from .alias import interval_table
+from .hadronic_currents import HadronTable, hadron_table
 from .tau_decay import energy_density, energy_range
 
 Floats = npt.NDArray[np.float64]
@@ -37,7 +38,8 @@ class ChannelTable(NamedTuple):
 
     incoherent, coherent : how the charm helicities add, see `spin_density`.
     has_tau : 1 if the lepton of the B decay is a tau that decays, else 0.
-    to_pion : 1 for tau -> pi nu, else 0. visible_mass, visible_span : lowest energy and range of the tau's daughter.
+    one_neutrino : 1 for a tau that gives pions, else 0. hadrons : for one that gives several.
+    visible_mass, visible_span : lowest energy and range of the tau's daughter.
     vector_mass, d_mass, soft_mass, pion_mass : of the D*, D, soft particle of the D*, pion of the D**; 0 if absent.
     q2_table (512, 3), visible_table (256, 3) : for `draw_position`.
     amplitudes (514, 4 or 16) : at the nodes and once more at the last; columns J_+, J_-, J_0, J_t if all is real, else
@@ -57,12 +59,13 @@ class ChannelTable(NamedTuple):
     soft_mass: float
     pion_mass: float
     has_tau: int
-    to_pion: float
+    one_neutrino: float
     visible_mass: float
     visible_span: float
     q2_table: Floats
     amplitudes: Floats
     visible_table: Floats
+    hadrons: HadronTable
 
 
 def channel_table(channel: Channel) -> ChannelTable:
@@ -92,12 +95,13 @@ def channel_table(channel: Channel) -> ChannelTable:
         soft_mass=channel.m_soft,
         pion_mass=channel.m_bachelor,
         has_tau=int(channel.tau_to is not None),
-        to_pion=float(channel.tau_to == "pi"),
+        one_neutrino=float(channel.tau_to not in (None, "e", "mu")),
         visible_mass=visible_mass,
         visible_span=energy_high - energy_low,
         q2_table=q2_table(decay),
         amplitudes=complex_columns(amplitudes) if needs_complex(amplitudes) else real_columns(amplitudes),
         visible_table=visible_table(visible_mass),
+        hadrons=hadron_table(channel.tau_to),
     )
 
 

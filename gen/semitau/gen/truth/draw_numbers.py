@@ -53,4 +53,13 @@ PION_PAIR_MASS = np.uint64(34)  # of a state that gives two pions
 PION_PAIR_COS = np.uint64(35)
 PION_PAIR_AZIMUTH = np.uint64(36)
 
+HADRON_1 = np.uint64(40)  # pions of a tau: flight of the neutrino seen from them
+HADRON_2 = np.uint64(41)
+HADRON_3 = np.uint64(42)
+HADRON_TERM = np.uint64(43)
+HADRON_AZIMUTH = np.uint64(44)
+HADRON_SIGN = np.uint64(45)
+HADRON_TURN = np.uint64(46)
+
+DALITZ_FIRST = 192  # three draws for each try; a tau that gives pions has no neutrinos to be drawn
 NEUTRINO_FIRST = 192  # three draws for each try

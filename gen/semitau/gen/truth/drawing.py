@@ -30,6 +30,7 @@ from . import draw_numbers as draw
 from .alias import draw_position
 from .channel_table import Q2_INTERVALS, VISIBLE_INTERVALS, ChannelTable
 from .cosines import even_cosine
+from .hadronic_tau import draw_hadrons
 from .momenta import fill_momenta
 from .spin_algebra import helicity_states, lepton_terms, spin_density, square
 from .tau_decay import emission
@@ -59,7 +60,10 @@ def draw_decays(x: Floats, table: ChannelTable, stream: np.uint64, first_event: 
             _polarise(x, table)
         else:
             _polarise_complex(x, table)
-        _draw_visible(x, table, stream, first_event)
+        if table.hadrons.pions > 0:
+            draw_hadrons(x, table.hadrons, stream, first_event)
+        else:
+            _draw_visible(x, table, stream, first_event)
     fill_momenta(x, table, stream, first_event)
 
 
@@ -236,14 +240,14 @@ def _polarise_complex(x: Floats, table: ChannelTable) -> None:
 @kernel
 def _draw_visible(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     """Energy and direction of the tau's charged daughter in the tau rest frame."""
-    mass, to_pion = table.visible_mass, table.to_pion > 0.0
+    mass, one_neutrino = table.visible_mass, table.one_neutrino > 0.0
     for i in range(LANES):
         key = event_key(stream, first_event + np.uint64(i))
         position = x[row.VISIBLE_E + i] * (1.0 / VISIBLE_INTERVALS)
-        position = 1.0 if to_pion else position
+        position = 1.0 if one_neutrino else position
         energy = mass + table.visible_span * position * position
         _, even, odd = emission(energy, mass)
-        analysing = -1.0 if to_pion else odd / even
+        analysing = -1.0 if one_neutrino else odd / even
         nz = 2.0 * uniform(key, draw.VISIBLE_COS) - 1.0
         sine, cosine = sincos_turns(uniform(key, draw.VISIBLE_AZIMUTH))
         across = np.sqrt((1.0 - nz) * (1.0 + nz))

@@ -13,6 +13,7 @@ from ..decays.amplitudes import helicity_amplitudes
 from ..decays.decay import Decay
 from .decay_angles import DecayAngles, decay_angles, invariant_mass
 from .decay_record import decay_of
+from .polarimeter import PARTNERS, polarimeter
 from .spin_algebra import chain_density
 from .tau_decay import emission
 
@@ -62,12 +63,13 @@ def weights(events: ak.Array, decay: Decay, *, drawn_from: Decay | None = None) 
         remedy = "Drop them with ak.drop_none."
         raise InputError(Problem("some records are missing", where="events", remedy=remedy))
 
+    tau, visible = (_momentum(events, "tau"), _visible(events)) if has_tau else (None, None)
     angles = decay_angles(
         _momentum(events, "B"),
         _momentum(events, charm_field),
-        _momentum(events, "tau" if has_tau else "lepton"),
+        tau if tau is not None else _momentum(events, "lepton"),
         _momentum(events, "D") if has_vector else None,
-        _momentum(events, "lepton") if has_tau else None,
+        visible,
     )
     power = _analysing_power(events, angles) if has_tau else np.zeros(angles.q2.size)
     photon = invariant_mass(_momentum(events, "soft")) < _PHOTON_BELOW if has_vector else np.zeros(angles.q2.size, bool)
@@ -83,6 +85,15 @@ _PHOTON_BELOW = 0.05
 def _momentum(events: ak.Array, name: str) -> Floats:
     """(4, n) px, py, pz, E."""
     return np.stack([ak.to_numpy(events[name][part], allow_missing=False) for part in ("px", "py", "pz", "E")])
+
+
+def _visible(events: ak.Array) -> Floats:
+    """What analyses the spin of the tau: the lepton, or the polarimeter of its pions."""
+    found = next((names for names in PARTNERS.values() if set(names) <= set(events.fields)), ())
+    pions = [_momentum(events, name) for name in ("lepton", *found)]
+    if found == PARTNERS["a1_1prong"]:
+        pions = [*pions[1:], pions[0]]
+    return polarimeter(_momentum(events, "tau"), tuple(pions))
 
 
 def _analysing_power(events: ak.Array, angles: DecayAngles) -> Floats:

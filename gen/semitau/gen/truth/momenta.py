@@ -34,7 +34,10 @@ def fill_momenta(x: Floats, table: ChannelTable, stream: np.uint64, first_event:
     else:
         _two_body(x, table)
     if table.has_tau:
-        _tau_and_daughter(x, table)
+        if table.hadrons.pions > 0:
+            _tau_and_pions(x, table)
+        else:
+            _tau_and_daughter(x, table)
     else:
         _lepton(x, table)
 
@@ -264,3 +267,35 @@ def _tau_and_daughter(x: Floats, table: ChannelTable) -> None:
         )
         px, py, pz, energy = from_tau_frame(x, i, table, side, up, along, own)
         x[row.LEPTON_PX + i], x[row.LEPTON_PY + i], x[row.LEPTON_PZ + i], x[row.LEPTON_E + i] = px, py, pz, energy
+
+
+@kernel
+def _tau_and_pions(x: Floats, table: ChannelTable) -> None:
+    """The LEPTON and PARTNER rows come in the tau rest frame, on the axes x', y', z'."""
+    for i in range(LANES):
+        px, py, pz, energy = from_tau_frame(x, i, table, 0.0, 0.0, 0.0, TAU_MASS)
+        x[row.TAU_PX + i], x[row.TAU_PY + i], x[row.TAU_PZ + i], x[row.TAU_E + i] = px, py, pz, energy
+    for i in range(LANES):
+        px, py, pz, energy = from_tau_frame(
+            x, i, table, x[row.LEPTON_PX + i], x[row.LEPTON_PY + i], x[row.LEPTON_PZ + i], x[row.LEPTON_E + i]
+        )
+        x[row.LEPTON_PX + i], x[row.LEPTON_PY + i], x[row.LEPTON_PZ + i], x[row.LEPTON_E + i] = px, py, pz, energy
+    for i in range(LANES):
+        px, py, pz, energy = from_tau_frame(
+            x, i, table, x[row.PARTNER1_PX + i], x[row.PARTNER1_PY + i], x[row.PARTNER1_PZ + i], x[row.PARTNER1_E + i]
+        )
+        x[row.PARTNER1_PX + i], x[row.PARTNER1_PY + i] = px, py
+        x[row.PARTNER1_PZ + i], x[row.PARTNER1_E + i] = pz, energy
+    if table.hadrons.pions == 3:
+        for i in range(LANES):
+            px, py, pz, energy = from_tau_frame(
+                x,
+                i,
+                table,
+                x[row.PARTNER2_PX + i],
+                x[row.PARTNER2_PY + i],
+                x[row.PARTNER2_PZ + i],
+                x[row.PARTNER2_E + i],
+            )
+            x[row.PARTNER2_PX + i], x[row.PARTNER2_PY + i] = px, py
+            x[row.PARTNER2_PZ + i], x[row.PARTNER2_E + i] = pz, energy

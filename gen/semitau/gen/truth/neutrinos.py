@@ -39,8 +39,21 @@ def fill_neutrinos(x: Floats, table: ChannelTable, stream: np.uint64, first_even
         across = np.sqrt((1.0 - c) * (1.0 + c))
         px, py, pz, e = from_w_frame(x, i, table, -energy * across, 0.0, -energy * c, energy)
         x[NU_PX + i], x[NU_PY + i], x[NU_PZ + i], x[NU_E + i] = px, py, pz, e
-    if table.has_tau:
+    if table.has_tau and table.hadrons.pions > 0:
+        _behind_pions(x)
+    elif table.has_tau:
         _tau_neutrinos(x, table, stream, first_event)
+
+
+@kernel
+def _behind_pions(x: Floats) -> None:
+    """The one neutrino of a tau that gives several pions is what they leave."""
+    for i in range(LANES):
+        x[NU_LEPTON_PX + i] = x[NU_LEPTON_PY + i] = x[NU_LEPTON_PZ + i] = x[NU_LEPTON_E + i] = 0.0
+        x[NU_TAU_PX + i] = x[row.TAU_PX + i] - x[row.LEPTON_PX + i] - x[row.PARTNER1_PX + i] - x[row.PARTNER2_PX + i]
+        x[NU_TAU_PY + i] = x[row.TAU_PY + i] - x[row.LEPTON_PY + i] - x[row.PARTNER1_PY + i] - x[row.PARTNER2_PY + i]
+        x[NU_TAU_PZ + i] = x[row.TAU_PZ + i] - x[row.LEPTON_PZ + i] - x[row.PARTNER1_PZ + i] - x[row.PARTNER2_PZ + i]
+        x[NU_TAU_E + i] = x[row.TAU_E + i] - x[row.LEPTON_E + i] - x[row.PARTNER1_E + i] - x[row.PARTNER2_E + i]
 
 
 @kernel
@@ -50,7 +63,7 @@ def _tau_neutrinos(x: Floats, table: ChannelTable, stream: np.uint64, first_even
         energy = x[row.VISIBLE_E + i]
         momentum = np.sqrt((energy - mass) * (energy + mass))
         lx, ly, lz = momentum * x[row.VISIBLE_X + i], momentum * x[row.VISIBLE_Y + i], momentum * x[row.VISIBLE_Z + i]
-        if table.to_pion > 0.0:
+        if table.one_neutrino > 0.0:
             first = (0.0, 0.0, 0.0, 0.0)
             second = (-lx, -ly, -lz, TAU_MASS - energy)
         else:

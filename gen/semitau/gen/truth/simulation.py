@@ -19,6 +19,7 @@ from . import neutrinos as nu
 from .channel_table import ChannelTable, channel_table
 from .decay_record import PARAMETER, decay_as_data
 from .drawing import draw_decays
+from .polarimeter import PARTNERS
 
 Floats = npt.NDArray[np.float64]
 Words = npt.NDArray[np.int64]
@@ -32,6 +33,8 @@ _ROWS = {
     "pion": row.PION_PX,
     "tau": row.TAU_PX,
     "lepton": row.LEPTON_PX,
+    "partner_1": row.PARTNER1_PX,
+    "partner_2": row.PARTNER2_PX,
     "nu": nu.NU_PX,
     "nu_tau": nu.NU_TAU_PX,
     "nu_lepton": nu.NU_LEPTON_PX,
@@ -45,7 +48,8 @@ def simulate(
 
     decay : what to draw. n : number of events. seed : 0 to 2^64 - 1; event k depends on the seed, the decay, the chain
     and k only, so a longer sample begins with the shorter one.
-    tau_to : "e", "mu" or "pi": charged daughter of the tau; not looked at for light leptons.
+    tau_to : decay of the tau; not looked at for light leptons. "e", "mu"; "pi"; "rho" (pi- pi0); "a1" (pi- pi- pi+);
+        "a1_1prong" (pi- pi0 pi0).
     charm_to : how the charmed meson decays, as "D0 pi+", "D+ pi0", "D+ gamma" (D*+), "D0 pi0", "D0 gamma" (D*0),
         "D*0 pi+", "D0 pi+" and so on (D**, whose D* decays by branching fraction); either charge may be given.
         None draws by branching fraction.
@@ -53,7 +57,9 @@ def simulate(
 
     Returns an awkward array of n records. Each field is a record named Momentum4D with px, py, pz, E in GeV:
     B; Dss and pion (D** only: the state and the pion it gives); Dst and soft (the D* and its pion or photon); D; tau;
-    lepton (charged lepton, or the pion of tau -> pi nu); nu (of the B decay); nu_tau and nu_lepton (of the tau decay).
+    lepton (charged lepton, or the pion of a tau that has its charge); pi0 (rho), pi_second and pi_odd (a1, the pions of
+    the same and of the other charge), pi0_first and pi0_second (a1_1prong); nu (of the B decay); nu_tau and nu_lepton
+    (of the tau decay).
     Fields that a decay does not have are left out; in a sample that mixes D** -> D* pi and D pi, Dst and soft are None
     where there is no D*. The records carry the decay (see `weights`).
 
@@ -186,9 +192,11 @@ def _records(decay: Decay, chains: list[Channel], picks: Words, boson: Floats, f
             fields["Dst"], fields["soft"] = (ak.mask(fields[name], has_vector[picks]) for name in ("Dst", "soft"))
     fields["D"] = _momentum(found["D"])
     names = ["tau", "lepton", "nu", "nu_tau"] if decay.lepton == "tau" else ["lepton", "nu"]
-    if decay.lepton == "tau" and chains[0].tau_to != "pi":
+    if decay.lepton == "tau" and chains[0].tau_to in ("e", "mu"):
         names.append("nu_lepton")
     fields |= {name: _momentum(found[name]) for name in names}
+    for name, partner in zip(PARTNERS.get(str(chains[0].tau_to), ()), ("partner_1", "partner_2"), strict=False):
+        fields[name] = _momentum(found[partner])
     return ak.with_parameter(ak.zip(fields, depth_limit=1), PARAMETER, decay_as_data(decay))
 
 

@@ -49,7 +49,7 @@ class VariationTable(NamedTuple):
     incoherent: float
     coherent: float
     has_tau: int
-    to_pion: float
+    one_neutrino: float
     visible_mass: float
 
 
@@ -89,7 +89,7 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
         incoherent=table.incoherent,
         coherent=table.coherent,
         has_tau=table.has_tau,
-        to_pion=table.to_pion,
+        one_neutrino=table.one_neutrino,
         visible_mass=table.visible_mass,
     )
 
@@ -116,7 +116,7 @@ def _analyse(x: Floats, table: VariationTable) -> None:
     if table.has_tau:
         for i in range(LANES):
             _, even, odd = emission(x[row.VISIBLE_E + i], table.visible_mass)
-            power = 1.0 if table.to_pion > 0.0 else -odd / even
+            power = 1.0 if table.one_neutrino > 0.0 else -odd / even
             x[row.POLARISATION_X + i] = power * x[row.VISIBLE_X + i]
             x[row.POLARISATION_Y + i] = power * x[row.VISIBLE_Y + i]
             x[row.POLARISATION_Z + i] = power * x[row.VISIBLE_Z + i]
