@@ -91,8 +91,9 @@ def test_region_agrees_with_curve(case: tuple[Model, Plain, Array, Minuit]) -> N
 
 
 def test_levels() -> None:
-    """2.30 and 6.18: handbook values of χ² for two parameters (Review of Particle Physics, table on ΔlnL)."""
-    assert [round(level, 2) for level in REGION_LEVELS.values()] == [2.30, 6.18]
+    """1, 2.30, 6.18, 11.83: χ² of two parameters (Review of Particle Physics, table on ΔlnL)."""
+    assert [round(level, 2) for level in REGION_LEVELS.values()] == [1.0, 2.30, 6.18, 11.83]
+    assert chi2.cdf(REGION_LEVELS["39.3%"], 2) == pytest.approx(0.393, abs=1e-3)
     assert chi2.cdf(REGION_LEVELS["68.3%"], 2) == pytest.approx(0.6827, abs=1e-4)
 
 

@@ -11,6 +11,8 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from semitau.core.template_file import read_templates as read_templates
 
+    from .covering import IntervalCoverage as IntervalCoverage
+    from .covering import interval_coverage as interval_coverage
     from .curves import Profile as Profile
     from .curves import Region as Region
     from .curves import profile as profile
@@ -21,6 +23,10 @@ if TYPE_CHECKING:
     from .interpolation import interpolate as interpolate
     from .model import Model as Model
     from .newton import maximise as maximise
+    from .neyman import ToyInterval as ToyInterval
+    from .neyman import toy_interval as toy_interval
+    from .poor_templates import Corrected as Corrected
+    from .poor_templates import correct_for_templates as correct_for_templates
     from .result import FitResult as FitResult
     from .straightness import Linearity as Linearity
     from .straightness import linearity as linearity
@@ -29,40 +35,52 @@ if TYPE_CHECKING:
 
 _HOME = {
     "Budget": ".decomposition",
+    "Corrected": ".poor_templates",
     "Data": ".data",
     "FitResult": ".result",
+    "IntervalCoverage": ".covering",
     "Linearity": ".straightness",
     "Model": ".model",
     "Profile": ".curves",
     "Region": ".curves",
+    "ToyInterval": ".neyman",
     "ToyResults": ".toys",
     "budget": ".decomposition",
+    "correct_for_templates": ".poor_templates",
     "interpolate": ".interpolation",
+    "interval_coverage": ".covering",
     "linearity": ".straightness",
     "maximise": ".newton",
     "profile": ".curves",
     "read_templates": "semitau.core.template_file",
     "region": ".curves",
     "run_toys": ".toys",
+    "toy_interval": ".neyman",
 }
 
 __all__ = [
     "Budget",
+    "Corrected",
     "Data",
     "FitResult",
+    "IntervalCoverage",
     "Linearity",
     "Model",
     "Profile",
     "Region",
+    "ToyInterval",
     "ToyResults",
     "budget",
+    "correct_for_templates",
     "interpolate",
+    "interval_coverage",
     "linearity",
     "maximise",
     "profile",
     "read_templates",
     "region",
     "run_toys",
+    "toy_interval",
 ]
 
 

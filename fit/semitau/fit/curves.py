@@ -20,9 +20,17 @@ from .newton import maximise, run
 from .result import FitResult
 
 REGION_LEVELS: Mapping[str, float] = MappingProxyType(
-    {"68.3%": float(chi2.isf(1 - 0.6826894921, 2)), "95.4%": float(chi2.isf(1 - 0.9544997361, 2))}
+    {
+        "39.3%": 1.0,
+        "68.3%": float(chi2.isf(1 - 0.6826894921, 2)),
+        "95.4%": float(chi2.isf(1 - 0.9544997361, 2)),
+        "99.7%": float(chi2.isf(1 - 0.9973002039, 2)),
+    }
 )
-"""Confidence of a region of two parameters -> its -2 ln L above the minimum (2.30 and 6.18)."""
+"""Confidence of a region of two parameters -> its -2 ln L above the minimum (1, 2.30, 6.18 and 11.83).
+
+The first touches the one-standard-deviation interval of each parameter: 1 - exp(-1/2) = 39.3%.
+"""
 
 
 @dataclass(frozen=True, eq=False)
@@ -30,7 +38,8 @@ class Profile:
     """-2 ln L above its minimum, against one parameter, all others fitted at each point.
 
     points, heights : (points,); a height is NaN where the conditional fit failed.
-    value : the maximum-likelihood value; low, high : where the height is 1, a 68.3% interval; NaN if never reached.
+    value : the maximum-likelihood value; low, high : where the height is 1, a 68.3% interval; low_two, high_two : where
+    it is 4, 95.4%; found to 1e-6 of the error, NaN if never reached.
     """
 
     parameter: str
@@ -40,6 +49,8 @@ class Profile:
     low: float
     high: float
     failures: int
+    low_two: float = float("nan")
+    high_two: float = float("nan")
 
 
 @dataclass(frozen=True, eq=False)
@@ -58,7 +69,7 @@ class Region:
     failures: int
 
 
-class _Conditional:
+class Conditional:
     """Fits with some parameters held, each started from where the last one ended."""
 
     def __init__(self, model: Model, data: Source, names: Sequence[str], result: FitResult | None) -> None:
@@ -105,7 +116,7 @@ def profile(
 
     Raises InputError for a parameter that is not there or fixed, RunError when the fit itself fails.
     """
-    conditional = _Conditional(model, data, [name], result)
+    conditional = Conditional(model, data, [name], result)
     value, error = conditional.best.value(name), conditional.best.error(name)
     if points is None:
         grid = value + error * np.linspace(-3.0, 3.0, 41)
@@ -117,8 +128,8 @@ def profile(
         conditional.back()
         for index in side:
             heights[index] = conditional.height(float(grid[index]))
-    low, high = (_crossing(conditional, value, side * error) for side in (-1.0, 1.0))
-    return Profile(name, grid, heights, value, low, high, conditional.failures)
+    ends = [crossing(conditional, value, side * error, level) for level in (1.0, 4.0) for side in (-1.0, 1.0)]
+    return Profile(name, grid, heights, value, ends[0], ends[1], conditional.failures, ends[2], ends[3])
 
 
 def region(
@@ -127,7 +138,7 @@ def region(
     names: tuple[str, str] = ("R_D", "R_Dst"),
     points: int = 41,
     *,
-    span: float = 3.5,
+    span: float = 4.2,
     result: FitResult | None = None,
 ) -> Region:
     """-2 ln L above its minimum over a grid of two parameters.
@@ -140,7 +151,7 @@ def region(
         raise InputError(Problem("a region needs two different parameters", got=str(names)))
     if isinstance(points, bool) or not isinstance(points, int) or points < 2:
         raise InputError(Problem("a grid needs points", where="points", got=repr(points), wanted="2 or more"))
-    conditional = _Conditional(model, data, names, result)
+    conditional = Conditional(model, data, names, result)
     best, steps = conditional.best, np.linspace(-span, span, points)
     first, second = (best.value(name) + best.error(name) * steps for name in names)
     heights = np.empty((points, points))
@@ -152,18 +163,22 @@ def region(
     return Region((names[0], names[1]), first, second, heights, values, REGION_LEVELS, conditional.failures)
 
 
-def _crossing(conditional: _Conditional, value: float, step: float) -> float:
-    """Where the height is 1 on one side of the minimum; NaN if it is not reached within 64 errors or a fit fails."""
+def crossing(conditional: Conditional, value: float, step: float, level: float = 1.0) -> float:
+    """Where the height is `level` on one side of the minimum, to 1e-6 of the step.
+
+    NaN if it is not reached within 64 steps, or if a fit fails.
+    """
     conditional.back()
-    inner, outer, height = value, value + step, conditional.height(value + step)
-    while height < 1.0 and abs(outer - value) < 64.0 * abs(step):
+    inner, outer = value, value + float(np.sqrt(level)) * step
+    height = conditional.height(outer)
+    while height < level and abs(outer - value) < 64.0 * abs(step):
         inner, outer = outer, value + 2.0 * (outer - value)
         height = conditional.height(outer)
-    if not height >= 1.0:
+    if not height >= level:
         return float("nan")
     conditional.back()
     try:
-        return float(brentq(lambda at: conditional.height(at) - 1.0, inner, outer, xtol=1e-6 * abs(step)))
+        return float(brentq(lambda at: conditional.height(at) - level, inner, outer, xtol=1e-6 * abs(step)))
     except (ValueError, RuntimeError):  # a conditional fit failed on the way: no sign change is left
         return float("nan")
 

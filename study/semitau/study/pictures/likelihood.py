@@ -11,7 +11,7 @@ from matplotlib.axes import Axes
 from numpy.typing import NDArray
 
 from .sheet import Panels, Sheet
-from .style import INK, QUIET, RC, RULE, ratio_colour
+from .style import BAND, INK, QUIET, RC, RULE, ratio_colour
 
 
 @dataclass(frozen=True)
@@ -70,7 +70,14 @@ def _draw_curve(axes: Axes, curve: Curve, colour: str) -> None:
 def _draw_plane(axes: Axes, plane: Plane) -> None:
     names, heights = zip(*sorted(plane.levels.items(), key=lambda level: level[1]), strict=True)
     drawn = axes.contour(
-        plane.first, plane.second, plane.heights.T, levels=list(heights), colors=[INK, QUIET], linewidths=[1.4, 1.0]
+        plane.first,
+        plane.second,
+        plane.heights.T,
+        levels=list(heights),
+        # The inner one is for reading off errors; confidence falls off with the ink.
+        colors=[BAND, INK, INK, QUIET],
+        linewidths=[0.9, 1.5, 1.0, 0.8],
+        linestyles=[(0, (3, 2)), "solid", "solid", "solid"],
     )
     axes.clabel(drawn, fmt=dict(zip(heights, names, strict=True)), fontsize=7)
     axes.plot(*plane.best, marker="+", color=INK, markersize=8, linestyle="", label="fitted")
