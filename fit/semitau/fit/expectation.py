@@ -21,7 +21,11 @@ class Workspace(NamedTuple):
 
     rows: Floats  # (parameters, lanes of a tile): derivative of the plain sum with respect to a parameter
     pieces: Floats  # (pieces of a tile, lanes of a tile): contents at the current nuisances, unscaled
-    lanes: Floats  # (5, lanes of a tile): plain sum, first derivative, weight, product, -ln L
+    lanes: Floats  # (9, lanes of a tile): plain sum, first derivative, weight, product, -ln L; then of the templates'
+    # variance: itself, first derivative, mixed one, second one
+    variance_rows: Floats  # (parameters, lanes of a tile): derivative of the templates' variance
+    shares: Floats  # (4, pieces of a tile, lanes of a tile): of a component: contents, first derivative, b, curvature
+    one_bin: Floats  # (3, pieces of a tile): contents, 1/effective counts, centres
     scales: Floats  # (components,)
     bends: Floats  # (parameters, 3)
     protected: Indices  # (1,): bins below their floor in the last evaluation
@@ -35,7 +39,10 @@ def workspace(arrays: Arrays) -> Workspace:
     return Workspace(
         np.zeros((parameters, lanes)),
         np.zeros((max(1, pieces), lanes)),
-        np.zeros((5, lanes)),
+        np.zeros((9, lanes)),
+        np.zeros((parameters, lanes)),
+        np.zeros((4, max(1, pieces), lanes)),
+        np.zeros((3, max(1, pieces))),
         np.zeros(arrays.component_first.size - 1),
         np.zeros((parameters, 3)),
         np.zeros(1, dtype=np.int64),

@@ -23,6 +23,9 @@ Indices = NDArray[np.int64]
 
 TILE = 128
 
+LIGHT, APPROXIMATE, EXACT_BY_COMPONENT = 0, 1, 2
+"""Forms of the likelihood for finite templates (bin_statistics.py)."""
+
 
 class Arrays(NamedTuple):
     """What the compiled functions read. Parameters: scale parameters first, then nuisances."""
@@ -46,6 +49,9 @@ class Arrays(NamedTuple):
     even: Floats
     floor: Floats  # (lanes,) expectation below which the protection sets in
     template_variance: Floats  # (lanes,) squared relative error of the expectation from finite templates
+    variance: Floats  # of each piece, as long as nominal: events squared
+    inverse_effective: Floats  # of each piece: one over the effective counts of its bins; 0 where they are exact
+    form: int  # LIGHT, APPROXIMATE or EXACT_BY_COMPONENT
 
 
 class Layout(NamedTuple):
@@ -93,6 +99,7 @@ class _Growing:
         self.piece_component, self.piece_offset, self.piece_moves = list[int](), list[int](), [0]
         self.move_parameter, self.move_offset = list[int](), list[int]()
         self.nominal, self.odd, self.even = _Padded(), _Padded(), _Padded()
+        self.variance, self.inverse_effective = _Padded(), _Padded()
         self.floor, self.template_variance = _Padded(), _Padded()
 
     def add_tile(self, category: Category, bins: Indices, first_bin: int, totals: _Totals) -> None:
@@ -121,6 +128,11 @@ class _Growing:
             return False
         self.piece_component.append(number)
         self.piece_offset.append(self.nominal.add(centre, length))
+        variance = template.variance.ravel()[bins]
+        self.variance.add(variance, length)
+        # Where positive and negative weights cancel there is no content whose relative error could move with it.
+        filled = centre != 0.0
+        self.inverse_effective.add(np.where(filled, variance / np.where(filled, centre, 1.0) ** 2, 0.0), length)
         for name, odd, even in moves:
             self.move_parameter.append(self.indices[name])
             self.move_offset.append(self.odd.add(odd, length))
@@ -131,13 +143,18 @@ class _Growing:
 
 
 def lay_out(
-    templates: TemplateSet, inverse_variance: Floats, indices: Mapping[str, int], template_statistics: bool
+    templates: TemplateSet,
+    inverse_variance: Floats,
+    indices: Mapping[str, int],
+    template_statistics: bool,
+    form: int = LIGHT,
 ) -> Layout:
     """Flatten the templates.
 
     inverse_variance : (parameters,) of the constraints, 0 where free.
     indices : parameter name -> index.
     template_statistics : False takes the templates as exact.
+    form : of the likelihood for finite templates.
 
     Raises InputError for a bin whose total expectation is negative, and when no bin expects anything.
     """
@@ -180,6 +197,9 @@ def lay_out(
         even=growing.even.array(),
         floor=growing.floor.array(),
         template_variance=growing.template_variance.array() * float(template_statistics),
+        variance=growing.variance.array(),
+        inverse_effective=growing.inverse_effective.array(),
+        form=form if template_statistics else LIGHT,
     )
     return Layout(arrays, lane_bin, bin_lane)
 

@@ -23,6 +23,8 @@ from semitau.core.templates import Floats
 
 from .bin_statistics import bin_terms as bin_terms
 from .bin_statistics import deviance as deviance
+from .component_sums import add_components
+from .effective_sums import add_variance_products, sum_effective_bins
 from .expectation import EXACT as EXACT
 from .expectation import FISHER as FISHER
 from .expectation import VALUE as VALUE
@@ -32,8 +34,8 @@ from .expectation import expectations as expectations
 from .expectation import has_hold as has_hold
 from .expectation import workspace as workspace
 from .interpolation import bend, positive
-from .layout import Arrays
-from .vectors import dot
+from .layout import APPROXIMATE, EXACT_BY_COMPONENT, Arrays
+from .outer_products import add_outer_products as add_outer_products
 
 
 @kernel
@@ -50,7 +52,8 @@ def evaluate(
 ) -> float:
     """-ln L at the parameters x, from the saturated model; fills gradient (p,) and hessian (p, p) as `mode` asks.
 
-    counts, gamma_centres : (lanes,); centres : (p,) auxiliary measurements of the constrained parameters.
+    counts : (lanes,); centres : (p,) auxiliary measurements of the constrained parameters.
+    gamma_centres : (lanes,), or for the exact form with one number a component as long as arrays.nominal.
     """
     parameters = x.shape[0]
     value = 0.0
@@ -67,9 +70,17 @@ def evaluate(
         work.scales[c] = scale_of(arrays, c, x, -1, -1)
     for tile in range(arrays.tile_filled.shape[0]):
         sum_pieces(arrays, tile, x, mode, work)
-        value += sum_bins(arrays, tile, counts, gamma_centres, mode, work)
+        if arrays.form == EXACT_BY_COMPONENT:
+            value += add_components(arrays, tile, x, counts, gamma_centres, mode, gradient, hessian, work)
+            continue
+        if arrays.form == APPROXIMATE:
+            value += sum_effective_bins(arrays, tile, x, counts, gamma_centres, mode, work)
+        else:
+            value += sum_bins(arrays, tile, counts, gamma_centres, mode, work)
         if mode != VALUE:
             add_outer_products(arrays, tile, gradient, hessian, work)
+        if mode != VALUE and arrays.form == APPROXIMATE:
+            add_variance_products(arrays, tile, x, mode, gradient, hessian, work)
         if mode == EXACT:
             add_curvature(arrays, tile, arrays.tile_pieces[tile], arrays.tile_pieces[tile + 1], x, hessian, work)
     if mode != VALUE:
@@ -104,20 +115,3 @@ def sum_bins(arrays: Arrays, tile: int, counts: Floats, gamma_centres: Floats, m
     for i in range(filled):
         total += terms[i]
     return total
-
-
-@kernel
-def add_outer_products(arrays: Arrays, tile: int, gradient: Floats, hessian: Floats, work: Workspace) -> None:
-    length = arrays.tile_first[tile + 1] - arrays.tile_first[tile]
-    stride = work.rows.shape[1]
-    derivative, weight, product = work.lanes[1], work.lanes[2], work.lanes[3]
-    begin, end = arrays.tile_rows[tile], arrays.tile_rows[tile + 1]
-    for j in range(begin, end):
-        p = arrays.rows[j]
-        row = work.rows[p]
-        gradient[p] += dot(derivative, 0, row, 0, length)
-        for i in range(length):
-            product[i] = weight[i] * row[i]
-        for l in range(begin, j + 1):
-            q = arrays.rows[l]
-            hessian[p, q] += dot(product, 0, work.rows, q * stride, length)

@@ -14,10 +14,15 @@ from semitau.core.templates import Floats, TemplateSet
 
 from .data import Data, Source, read_data
 from .interpolation import bend
-from .layout import Indices, Layout, lay_out
+from .layout import APPROXIMATE, EXACT_BY_COMPONENT, LIGHT, Indices, Layout, lay_out
 from .likelihood import expectations, workspace
 
 PARAMETERS_AT_MOST = 512
+
+LIKELIHOODS = {"light": LIGHT, "approximate": APPROXIMATE, "exact": EXACT_BY_COMPONENT}
+"""Names of the forms of the likelihood for finite templates (bin_statistics.py)."""
+
+DEFAULT_LIKELIHOOD = "light"
 
 
 @dataclass(frozen=True)
@@ -45,6 +50,7 @@ class Model:
 
     templates : the template set.
     template_statistics : whether the finite number of generated events counts as an uncertainty.
+    likelihood : its form for finite templates: "light", "approximate" or "exact" (bin_statistics.py).
     fixed : parameter name -> value to hold it at; for a ratio the ratio itself, for a yield relative to the
         expectation, for a nuisance in standard deviations.
     yields : scale parameter name -> standard deviation of its constraint, or None to leave it free; replaces what the
@@ -62,18 +68,21 @@ class Model:
         templates: TemplateSet,
         *,
         template_statistics: bool = True,
+        likelihood: str = DEFAULT_LIKELIHOOD,
         fixed: Mapping[str, float] | None = None,
         yields: Mapping[str, float | None] | None = None,
     ) -> None:
         self.templates = templates
         self.template_statistics = bool(template_statistics)
+        self.likelihood = _known_likelihood(likelihood)
         self.parameters = _parameters(templates, dict(fixed or {}), dict(yields or {}))
         self.names = tuple(parameter.name for parameter in self.parameters)
         self.ratios = tuple(parameter.name for parameter in self.parameters if parameter.kind == "ratio")
         self._indices = {name: index for index, name in enumerate(self.names)}
         constraints = [parameter.constraint for parameter in self.parameters]
         weights = np.array([0.0 if sigma is None else sigma**-2 for sigma in constraints])
-        self.layout: Layout = lay_out(templates, weights, self._indices, self.template_statistics)
+        form = LIKELIHOODS[self.likelihood]
+        self.layout: Layout = lay_out(templates, weights, self._indices, self.template_statistics, form)
         self.free: Indices = np.array([i for i, p in enumerate(self.parameters) if p.fixed is None], dtype=np.int64)
         self.injected = _frozen([parameter.injected for parameter in self.parameters])
         self.start = _frozen([p.injected if p.fixed is None else p.fixed for p in self.parameters])
@@ -231,6 +240,16 @@ def _parameters(
             Problem("too many parameters", "templates", got=str(len(parameters)), wanted=f"up to {PARAMETERS_AT_MOST}")
         )
     return tuple(parameters)
+
+
+def _known_likelihood(name: str) -> str:
+    if name not in LIKELIHOODS:
+        raise InputError(
+            Problem(
+                "there is no such form of the likelihood", "likelihood", got=repr(name), wanted=", ".join(LIKELIHOODS)
+            )
+        )
+    return name
 
 
 def _is_number(value: object) -> bool:

@@ -24,7 +24,7 @@ from semitau.core.templates import Floats
 
 from .algebra import inverse_diagonal
 from .ending import CONVERGED, short_reason
-from .layout import Arrays, Indices
+from .layout import APPROXIMATE, EXACT_BY_COMPONENT, Arrays, Indices
 from .model import Model
 from .newton import Scratch, minimise, scratch
 from .poisson import poisson
@@ -39,6 +39,9 @@ Report = Callable[[str, int, int], None]
 _ZERO, _ONE, _TWO = np.uint64(0), np.uint64(1), np.uint64(2)
 _PARAMETERS = np.uint64(1 << 40)
 """Parameters of a toy have keys from here on, bins from 0."""
+
+_TEMPLATES = np.uint64(1 << 41)
+"""Keys of the templates' own fluctuations, where they are Poisson numbers."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -164,7 +167,8 @@ def _batch(
     values, errors = np.zeros((size, parameters)), np.zeros((size, parameters))
     statuses, steps, statistics = np.zeros(size, np.int64), np.zeros(size, np.int64), np.zeros(size)
     arrays = model.layout.arrays
-    lanes = np.zeros(means.size), np.ones(means.size)
+    exact = arrays.form == EXACT_BY_COMPONENT
+    lanes = np.zeros(means.size), np.ones(arrays.nominal.size if exact else means.size)
     _fit_toys(
         arrays, model.free, stream, np.uint64(first), truth, start, means, *lanes, np.zeros(parameters),
         scratch(arrays), values, errors, statuses, statistics, steps,
@@ -180,14 +184,29 @@ def _padded_means(model: Model, truth: Floats) -> Floats:
 def draw_toy(
     arrays: Arrays, toy: np.uint64, truth: Floats, means: Floats, counts: Floats, gammas: Floats, centres: Floats
 ) -> None:
-    """Fill counts and gammas (lanes,) and centres (parameters,) of the toy with this key."""
+    """Fill counts (lanes,), gammas and centres (parameters,) of the toy with this key.
+
+    gammas : (lanes,), or as long as arrays.nominal for the exact form: each component fluctuates by itself.
+    """
+    each = gammas.shape[0] != means.shape[0]
     for lane in range(means.shape[0]):
         key = event_key(toy, np.uint64(lane))
         counts[lane] = poisson(means[lane], key, _TWO)
+        if each:
+            continue
         gammas[lane] = 1.0
-        if arrays.template_variance[lane] > 0.0:
+        if arrays.template_variance[lane] > 0.0 and arrays.form == APPROXIMATE:
+            effective = 1.0 / arrays.template_variance[lane]
+            gammas[lane] = poisson(effective, event_key(toy, _TEMPLATES + np.uint64(lane)), _ZERO) / effective
+        elif arrays.template_variance[lane] > 0.0:
             normal, _ = normal_pair(uniform(key, _ZERO), uniform(key, _ONE))
             gammas[lane] += np.sqrt(arrays.template_variance[lane]) * normal
+    if each:
+        for i in range(gammas.shape[0]):
+            gammas[i] = 1.0
+            if arrays.inverse_effective[i] > 0.0:
+                effective = 1.0 / arrays.inverse_effective[i]
+                gammas[i] = poisson(effective, event_key(toy, _TEMPLATES + np.uint64(i)), _ZERO) / effective
     for p in range(truth.shape[0]):
         centres[p] = truth[p]
         if arrays.inverse_variance[p] > 0.0:
