@@ -61,6 +61,11 @@ class DoubleCharmChain:
         return "none"
 
     @property
+    def second(self) -> str:
+        """Nor a second one."""
+        return "none"
+
+    @property
     def beside(self) -> str:
         """The class of the B decay: "D_s", "D_s*", "D K" or "D* K"."""
         return class_of((self.partner, self.kaon) if self.kaon else (self.partner,))

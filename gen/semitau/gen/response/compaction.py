@@ -6,7 +6,7 @@ import numpy as np
 import numpy.typing as npt
 from semitau.core.compiled import kernel
 
-from ..block import BOOST_GAMMA, D_PX, FLAVOUR, LANES, PION_E, Q2, SOFT_PX
+from ..block import BOOST_GAMMA, D_PX, FLAVOUR, LANES, OTHERS_LEFT, OTHERS_SEEN, PION_E, Q2, SOFT_PX
 
 Floats = npt.NDArray[np.float64]
 Keys = npt.NDArray[np.uint64]
@@ -19,6 +19,8 @@ _KEPT = np.array(
         *_DECAY,
         *range(SOFT_PX, PION_E + LANES, LANES),
         *range(BOOST_GAMMA, FLAVOUR + LANES, LANES),
+        OTHERS_SEEN,
+        OTHERS_LEFT,
     ],
     dtype=np.uint64,
 )

@@ -101,6 +101,7 @@ class Chain(NamedTuple):
 
     charged_parent, charged_d : 1 or 0. muon : 1 if the charged lepton is a muon, 0 for an electron.
     soft, pion : NO_PARTICLE, CHARGED_PION, NEUTRAL_PION or PHOTON.
+    beside_soft, kaon, hadron : what double charm has besides, numbers of `light_decays.SPECIES` or NO_SPECIES.
     """
 
     parent_mass: float
@@ -112,6 +113,9 @@ class Chain(NamedTuple):
     muon: int
     soft: int
     pion: int
+    beside_soft: int = -1
+    kaon: int = -1
+    hadron: int = -1
 
 
 def beams(electron: float, positron: float, spread: float) -> Beams:

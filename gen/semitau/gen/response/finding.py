@@ -17,6 +17,7 @@ from .collider import draw_pair, to_laboratory
 from .detector import Chain, Detector, Leptons, Tracks
 from .draw_numbers import LEPTON_IDENTIFIED, LEPTON_SEEN, TRACK1_SEEN, TRACK2_SEEN, TRACK3_SEEN
 from .efficiency import evaluate
+from .others import has_others, see_others
 from .tracks import in_track_acceptance
 
 Floats = npt.NDArray[np.float64]
@@ -35,7 +36,7 @@ _OTHER_CHANCE = row.SCRATCH_9
 
 @kernel
 def find(x: Floats, keys: Keys, chain: Chain, detector: Detector, quantiles: Floats) -> None:
-    """From the truth rows to the laboratory: fill BOOST_*, TRACK*, LAB_LEPTON_*, FLAVOUR and the rows named above.
+    """From the truth rows to the laboratory: fill BOOST_*, TRACK*, LAB_LEPTON_*, FLAVOUR, OTHERS_* and the rows named above.
 
     quantiles : of the pair mass in D+ -> K pi pi; unused for a D0.
     """
@@ -49,6 +50,8 @@ def find(x: Floats, keys: Keys, chain: Chain, detector: Detector, quantiles: Flo
     to_laboratory(x, row.LEPTON_PX, row.LAB_LEPTON_PX, detector.beams)
     see_lepton(x, keys, detector.tracks)
     identify_lepton(x, keys, chain.muon, detector.leptons)
+    if has_others(chain):
+        see_others(x, keys, IDENTIFIED, chain, detector)
 
 
 @kernel

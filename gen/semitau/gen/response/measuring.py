@@ -30,6 +30,7 @@ from .detector import (
     Tracks,
 )
 from .efficiency import evaluate
+from .others import add_others, has_others
 from .tracks import (
     in_photon_acceptance,
     in_track_acceptance,
@@ -56,6 +57,8 @@ def measure(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     add_noise(y, keys, detector.residual)
     measure_soft(y, keys, chain, detector)
     measure_pion(y, keys, chain.pion, detector)
+    if has_others(chain):
+        add_others(y)
     draw_random_soft(y, keys, chain.charged_d, detector.soft)
 
 

@@ -16,8 +16,7 @@ from ..templates.binning import ROW_OF, Axes, Cuts, place
 from ..templates.chunk import FOUND_STEPS
 from ..templates.chunk_tasks import NOMINAL, Bench
 from ..templates.component_plan import ChannelPlan
-from ..truth.channel_table import ChannelTable, channel_table
-from ..truth.drawing import draw_decays
+from ..truth.any_drawing import AnyTable, draw, table_of
 from .candidates import Scenario, Windows, reconstruct
 from .compaction import move
 from .detector import Chain, Detector
@@ -77,7 +76,7 @@ def event_recorder(
 
     They are the events that `chunk.fill_chunk` makes of the same stream, in this scenario.
     """
-    table, chain = channel_table(plan.channel), kernel_chain(plan.channel)
+    table, chain = table_of(plan.channel), kernel_chain(plan.channel)
 
     def record(first: int, n: int) -> Events:
         truth = np.empty((len(_TRUTH), n))
@@ -95,7 +94,7 @@ def event_recorder(
 
 @kernel
 def _record(
-    stream: np.uint64, first: int, events: int, table: ChannelTable, chain: Chain, detector: Detector,
+    stream: np.uint64, first: int, events: int, table: AnyTable, chain: Chain, detector: Detector,
     quantiles: Floats, scenario: Scenario, windows: Windows, cuts: Cuts, axes: Axes, flow: Integers,
     truth: Floats, candidates: Floats, number: Integers, selected: Integers,
 ) -> int:  # fmt: skip
@@ -113,7 +112,7 @@ def _record(
         for i in range(LANES):
             numbers[i] = first_event + np.uint64(i)
             keys[i] = event_key(stream, numbers[i])
-        draw_decays(x, table, stream, first_event)
+        draw(x, table, stream, first_event)
         for k in range(_TRUTH.shape[0]):
             for i in range(here):
                 truth[k, begin + i] = x[_TRUTH[k] + i]

@@ -6,11 +6,13 @@ import numpy as np
 from semitau.core.constants import MASS
 
 from ..decays.chains import Channel
+from ..decays.double_charm import DoubleCharmChain
 from ..study_file.detector import Curve
 from ..study_file.study import StudyConfig
 from . import detector as kernel
 from .candidates import Windows
 from .efficiency import Efficiency, piecewise_linear
+from .light_decays import NO_SPECIES, species
 
 _SOFT = {
     "none": kernel.NO_PARTICLE,
@@ -19,6 +21,10 @@ _SOFT = {
     "photon": kernel.PHOTON,
 }
 _BACHELOR = {"none": kernel.NO_PARTICLE, "charged": kernel.CHARGED_PION, "neutral": kernel.NEUTRAL_PION}
+
+
+# A photon takes the place of a neutral pion: both are one object that may leave its energy.
+_BESIDE_SOFT = {"none": "", "charged_pion": "pi+", "neutral": "pi0"}
 
 
 def kernel_detector(study: StudyConfig) -> kernel.Detector:
@@ -64,19 +70,30 @@ def kernel_detector(study: StudyConfig) -> kernel.Detector:
     )
 
 
-def kernel_chain(channel: Channel) -> kernel.Chain:
+def kernel_chain(channel: Channel | DoubleCharmChain) -> kernel.Chain:
     """What the response needs to know of a decay chain."""
+    beside_soft, kaon, hadron = _others(channel)
     return kernel.Chain(
         parent_mass=MASS[channel.parent],
         d_mass=channel.m_ground,
         dst0_mass=MASS["D*0"],
         dstp_mass=MASS["D*+"],
+        beside_soft=beside_soft,
+        kaon=kaon,
+        hadron=hadron,
         charged_parent=int(channel.parent == "B+"),
         charged_d=int(channel.ground == "D+"),
         muon=int(channel.seen_lepton == "mu"),
         soft=_SOFT[channel.soft],
         pion=_BACHELOR[channel.bachelor],
     )
+
+
+def _others(channel: Channel | DoubleCharmChain) -> tuple[int, int, int]:
+    """Species of what double charm has beside charmed meson and lepton."""
+    if isinstance(channel, DoubleCharmChain):
+        return species(_BESIDE_SOFT[channel.beside_soft]), species(channel.kaon), species(channel.hadron)
+    return NO_SPECIES, NO_SPECIES, NO_SPECIES
 
 
 def delta_m_windows(study: StudyConfig) -> Windows:

@@ -13,8 +13,7 @@ from ..response.compaction import drop_unbinned, move
 from ..response.detector import Chain, Detector
 from ..response.finding import find, list_found
 from ..response.measuring import measure
-from ..truth.channel_table import ChannelTable
-from ..truth.drawing import draw_decays
+from ..truth.any_drawing import AnyTable, draw
 from ..truth.variation_weights import VariationTable, variation_weights
 from .binning import Axes, Cuts, count, place
 
@@ -28,7 +27,7 @@ FOUND_STEPS = 3
 
 @kernel
 def fill_chunk(
-    stream: np.uint64, first: int, events: int, table: ChannelTable, chain: Chain, detector: Detector,
+    stream: np.uint64, first: int, events: int, table: AnyTable, chain: Chain, detector: Detector,
     quantiles: Floats, variations: VariationTable, soft_factors: Floats, scenarios: Floats, windows: Windows,
     cuts: Cuts, axes: Axes, found: Integers, flow: Integers, histogram: Floats,
 ) -> None:  # fmt: skip
@@ -54,7 +53,7 @@ def fill_chunk(
         for i in range(LANES):
             numbers[i] = first_event + np.uint64(i)
             keys[i] = event_key(stream, numbers[i])
-        draw_decays(x, table, stream, first_event)
+        draw(x, table, stream, first_event)
         find(x, keys, chain, detector, quantiles)
         passed = list_found(x, here, found, lanes)
         done = 0

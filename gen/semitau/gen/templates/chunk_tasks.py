@@ -19,7 +19,7 @@ from ..shapes.sampler import ShapeSampler
 from ..study_file.categories import StudyCategory
 from ..study_file.components import Background
 from ..study_file.study import StudyConfig
-from ..truth.channel_table import channel_table
+from ..truth.any_drawing import table_of
 from ..truth.variation_weights import WIDTH, VariationTable, variation_table
 from .binning import ROW_OF, Axes, Cuts, category_code, make_axes, make_cuts
 from .chunk import FOUND_STEPS, fill_chunk, fill_drawn
@@ -94,7 +94,7 @@ def channel_columns(plan: ChannelPlan, bench: Bench) -> list[Side]:
 
 def channel_tasks(plan: ChannelPlan, bench: Bench, stream: np.uint64, events: int) -> Iterator[Task]:
     """Chunks of one channel, in order. stream : random stream of the channel; events : decays to generate."""
-    table = channel_table(plan.channel)
+    table = table_of(plan.channel)
     decays = list(plan.variations.decays.values()) if bench.variations else []
     weights = variation_table(plan.channel, decays, shape_only=True) if decays else _no_weights()
     soft = np.array(list(plan.variations.soft.values()) if bench.variations else [], dtype=np.float64)
