@@ -16,7 +16,7 @@ LAWS = (
 SETS = ", ".join(
     path.stem
     for path in sorted((ROOT / "gen/semitau/gen/decays/form_factor_sets").glob("*.toml"))
-    if "Dst" in tomllib.loads(path.read_text(encoding="utf-8"))
+    if {"Dst", "D+Dst"} & set(tomllib.loads(path.read_text(encoding="utf-8")))
 )
 OBSERVABLES = "mm2, q2, el, p_lepton, p_charm, e_res, delta_m"
 D0_MODE = 'component = "D_tau"\ncharm = ["D"]\nleptons = ["tau"]\nscales_with = "R_D"\n'
@@ -573,7 +573,8 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         'kind = "form_factor"',
         'kind = "formfactor"',
         (
-            'variation[R0].kind: is no kind (got "formfactor", allowed form_factor, form_factor_direction, fraction, '
+            'variation[R0].kind: is no kind (got "formfactor", allowed form_factor, form_factor_direction, '
+            "form_factor_directions, fraction, "
             "soft_pion_efficiency, lepton_identification, misidentification, tag_resolution, momentum_scale). "
             'Did you mean "form_factor"?'
         ),

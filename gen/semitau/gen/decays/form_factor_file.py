@@ -254,8 +254,8 @@ def covariance_problems(covariance: Floats, names: Sequence[str]) -> Iterator[Pr
     difference = np.abs(covariance - covariance.T)
     limit = SYMMETRY * scale + 1e-300
     if (difference > limit).any():
-        i, j = np.unravel_index(int(np.argmax(difference / np.maximum(scale, 1e-300))), difference.shape)
-        i, j = sorted((int(i), int(j)))
+        worst = int(np.argmax(difference / np.maximum(scale, 1e-300)))
+        i, j = sorted(divmod(worst, len(names)))
         got = f"{covariance[i, j]:g} for {names[i]}, {names[j]} and {covariance[j, i]:g} the other way round"
         yield Problem("is not symmetric", got=got, remedy="Both must be the same number.")
         return

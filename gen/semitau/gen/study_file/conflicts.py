@@ -9,11 +9,14 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 import numpy as np
+from semitau.core.errors import InputError
 
-from ..decays.form_factor_set import form_factor_sets, form_factors
+from ..decays.form_factor_set import form_factor_sets
 from .background_conflicts import background_conflicts
 from .categories import written_out
-from .idle_variations import idle_variations
+from .chosen_sets import chosen_set, sets_describing
+from .idle_variations import idle_variations, nuisance_names
+from .machine import FormFactorSource
 from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, RATIOS
 from .rules import shown, suggestion
 from .sections import Conflict, Place, Sections, missing_file
@@ -37,7 +40,11 @@ def _names(sections: Sections) -> Iterator[Conflict]:
     named: list[tuple[Place, str, str]] = []
     named += [(("mode", i, "component"), mode.name, "component") for i, mode in sections.modes.items()]
     named += [(("background", i, "component"), item.name, "component") for i, item in sections.backgrounds.items()]
-    named += [(("variation", i, "name"), item.name, "variation") for i, item in sections.variations.items()]
+    named += [
+        (("variation", i, "name"), name, "variation")
+        for i, item in sections.variations.items()
+        for name in nuisance_names(sections, item)
+    ]
     seen: set[tuple[str, str]] = set()
     for place, name, kind in named:
         if (kind, name) in seen:
@@ -147,12 +154,25 @@ def _form_factors(sections: Sections) -> Iterator[Conflict]:
     """Sets exist and describe the decay they are chosen for."""
     if sections.form_factors is None:
         return
-    for transition in FORM_FACTORS_OF.values():
-        name = getattr(sections.form_factors, transition)
-        known = [known for known in form_factor_sets() if transition in form_factors(known).transitions]
-        if name not in known:
+    for transition in dict.fromkeys(FORM_FACTORS_OF.values()):
+        source, place = getattr(sections.form_factors, transition), ("form_factors", transition)
+        if source.file is not None:
+            yield from _own_set(sections, source, transition)
+        elif source.name not in (known := sets_describing(transition)):
+            name = source.name
             what = "is no form-factor set" if name not in form_factor_sets() else "does not describe this decay"
-            yield Conflict(("form_factors", transition), what, shown(name), ", ".join(known), suggestion(name, known))
+            yield Conflict(place, what, shown(name), ", ".join(known), suggestion(name, known))
+
+
+def _own_set(sections: Sections, source: FormFactorSource, transition: str) -> Iterator[Conflict]:
+    if sections.folder is None:
+        return
+    try:
+        chosen_set(source, transition, sections.folder)
+    except InputError as error:
+        for problem in error.problems:
+            what = f"{problem.where}: {problem.what}" if problem.where else problem.what
+            yield Conflict(("form_factors", transition, "file"), what, problem.got, problem.wanted, problem.remedy)
 
 
 def _couplings(sections: Sections) -> Iterator[Conflict]:

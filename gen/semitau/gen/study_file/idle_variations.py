@@ -3,8 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from pathlib import Path
 
-from ..decays.form_factor_set import FormFactors, form_factor_sets, form_factors
+from semitau.core.errors import InputError
+
+from ..decays.form_factor_directions import directions
+from ..decays.form_factor_parameters import NORMALISATIONS
+from ..decays.form_factor_set import FormFactorSet
+from .chosen_sets import chosen_set
 from .components import Mode
 from .names import FORM_FACTORS_OF
 from .rules import shown, suggestion
@@ -13,14 +19,13 @@ from .variations import (
     ComponentFraction,
     FormFactor,
     FormFactorDirection,
+    FormFactorDirections,
     LeptonIdentificationEfficiency,
     Misidentification,
     SoftPionEfficiency,
+    Variation,
 )
-
-# Parameters that only normalise all form factors of their decay; templates and ratios do not know them (physics: the
-# normalisation of the rate is a yield of the fit).
-NORMALISATIONS = {"h(1)", "V1(1)", "tau(1)", "zeta(1)"}
+from .written_variations import kept_directions
 
 
 def idle_variations(sections: Sections) -> Iterator[Conflict]:
@@ -30,7 +35,7 @@ def idle_variations(sections: Sections) -> Iterator[Conflict]:
     for i, variation in sections.variations.items():
         place = ("variation", i)
         match variation:
-            case FormFactor() | FormFactorDirection():
+            case FormFactor() | FormFactorDirection() | FormFactorDirections():
                 if "mode" in sections.whole and not any(_described(mode, variation.set) for mode in modes):
                     what = "acts on nothing: no mode has these form factors"
                     yield Conflict((*place, "set"), what, shown(variation.set), remedy="Remove the variation.")
@@ -59,25 +64,39 @@ def idle_variations(sections: Sections) -> Iterator[Conflict]:
                     yield Conflict((*place, "lepton"), what, shown(variation.lepton))
 
 
+def nuisance_names(sections: Sections, variation: Variation) -> list[str]:
+    """Names of the nuisance parameters that a table makes."""
+    if isinstance(variation, FormFactorDirections) and (chosen := _chosen(sections, variation.set)) is not None:
+        return [part.name for part in kept_directions(variation, chosen)]
+    return [variation.name]
+
+
 def _described(mode: Mode, transition: str) -> bool:
     return any(FORM_FACTORS_OF[charm] == transition for charm in mode.charm)
 
 
-def _members(sections: Sections, transition: str) -> FormFactors | None:
+def _chosen(sections: Sections, transition: str) -> FormFactorSet | None:
+    """The study's set; None if it is not sound, which is told elsewhere."""
     if sections.form_factors is None:
         return None
-    name = getattr(sections.form_factors, transition)
-    if name not in form_factor_sets() or transition not in form_factors(name).transitions:
+    source = getattr(sections.form_factors, transition)
+    if source.file is not None and sections.folder is None:
         return None
-    return form_factors(name)[transition]
+    try:
+        return chosen_set(source, transition, sections.folder or Path())
+    except InputError:
+        return None
 
 
 def _form_factor(
-    sections: Sections, place: tuple[str, int], variation: FormFactor | FormFactorDirection
+    sections: Sections, place: tuple[str, int], variation: FormFactor | FormFactorDirection | FormFactorDirections
 ) -> Iterator[Conflict]:
-    known = _members(sections, variation.set)
-    if known is None:
+    chosen = _chosen(sections, variation.set)
+    if chosen is None:
         return
+    known = chosen[variation.set]
+    if chosen.shared:
+        yield from _moved_twice(sections, place, variation)
     idle = "acts on nothing: the fit's yields take up the normalisation of a rate"
     if isinstance(variation, FormFactor):
         given, allowed = variation.parameter, [name for name in known.names if name not in NORMALISATIONS]
@@ -88,14 +107,34 @@ def _form_factor(
             what = "is no parameter of the set"
             yield Conflict((*place, "parameter"), what, shown(given), ", ".join(allowed), near)
         return
-    directions = known.directions
-    if variation.direction > len(directions):
-        what = "is no direction of the set"
-        yield Conflict((*place, "direction"), what, str(variation.direction), f"1 to {len(directions)}")
+    if isinstance(variation, FormFactorDirections):
+        if not kept_directions(variation, chosen):
+            yield Conflict((*place, "set"), "acts on nothing: the set has no covariance", shown(variation.set))
         return
-    moved = {name for name, shift in zip(known.names, directions[variation.direction - 1], strict=True) if shift != 0}
+    shifts = directions(chosen, variation.set, variation.order).shifts
+    if variation.direction > len(shifts):
+        what = "is no direction of the set"
+        yield Conflict((*place, "direction"), what, str(variation.direction), f"1 to {len(shifts)}")
+        return
+    moved = {name for name, shift in zip(known.names, shifts[variation.direction - 1], strict=True) if shift != 0}
     if moved <= NORMALISATIONS:
         yield Conflict((*place, "direction"), idle, f"{variation.direction}, along {', '.join(sorted(moved))}")
+
+
+def _moved_twice(
+    sections: Sections, place: tuple[str, int], variation: FormFactor | FormFactorDirection | FormFactorDirections
+) -> Iterator[Conflict]:
+    """D and D* have the same parameters here: what is varied under one name must not be varied under the other."""
+    if variation.set != "Dst" or sections.form_factors is None:
+        return
+    if sections.form_factors.Dst != sections.form_factors.D:
+        return
+    for other in sections.variations.values():
+        if isinstance(other, FormFactor | FormFactorDirection | FormFactorDirections) and other.set == "D":
+            what = f"moves what {other.name} moves already: D and D* share the parameters of this set"
+            remedy = 'Vary set = "D" alone: it acts on both.'
+            yield Conflict((*place, "set"), what, shown(variation.set), remedy=remedy)
+            return
 
 
 def _fraction(sections: Sections, place: tuple[str, int], variation: ComponentFraction) -> Iterator[Conflict]:

@@ -48,6 +48,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[[variation]]": (
         "FormFactor",
         "FormFactorDirection",
+        "FormFactorDirections",
         "ComponentFraction",
         "SoftPionEfficiency",
         "LeptonIdentificationEfficiency",
@@ -57,7 +58,16 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     ),
     "[fit]": ("FitSection",),
     "[toys]": ("Toys",),
-    "Values with a short form": ("Axis", "Curve", "PerParent", "PerCharm", "Yield", "FitData", "Linearity"),
+    "Values with a short form": (
+        "FormFactorSource",
+        "Axis",
+        "Curve",
+        "PerParent",
+        "PerCharm",
+        "Yield",
+        "FitData",
+        "Linearity",
+    ),
 }
 
 
@@ -104,6 +114,8 @@ def _default(value: Mapping[str, Any]) -> str:
         return "see there"
     if isinstance(default, Mapping):
         default = {key: item for key, item in default.items() if item is not None}
+        if set(default) == {"name"}:
+            return f"`{shown(default['name'])}`"
         if "kind" in default:
             return f"`{shown(default['kind'])}`"
         if default.get("momentum") == [0.0]:

@@ -1,7 +1,8 @@
 """The study: everything that one study file says, checked, as frozen models.
 
-`study_file.read_study` makes it from a file. Names are those of the file; `modes`, `backgrounds` and `variations` stand
-for the tables [[mode]], [[background]] and [[variation]]; `categories` are the [[category]] tables written out.
+`study_file.read_study` makes it from a file. Names are those of the file; `modes` and `backgrounds` stand for the
+tables [[mode]] and [[background]]; `categories` and `variations` are the [[category]] and [[variation]] tables written
+out.
 """
 
 from __future__ import annotations
@@ -14,7 +15,9 @@ from typing import Any
 from pydantic import Field, PrivateAttr, ValidationInfo, model_validator
 from pydantic_core import PydanticCustomError
 
+from ..decays.form_factor_set import FormFactorSet
 from .categories import CategoryTable, Cuts, StudyCategory, written_out
+from .chosen_sets import chosen_set
 from .components import Background, Mode
 from .conflicts import conflicts
 from .detector import Detector
@@ -23,8 +26,9 @@ from .machine import Experiment, FormFactors, StudySection
 from .names import OBSERVABLES
 from .rules import Table
 from .sections import SECTIONS, Sections
-from .variations import Variation
+from .variations import SingleVariation, Variation
 from .wilson import Quadratic, Wilson
+from .written_variations import single_variations
 
 CONFLICTS = "semitau_conflicts"
 
@@ -42,7 +46,7 @@ class StudyConfig(Table):
     detector: Detector = Detector()
     selection: Cuts = Field(default={}, description="cuts by observable; delta_m acts on D* categories only")
     category_tables: tuple[CategoryTable, ...] = Field(alias="category", min_length=1)
-    variations: tuple[Variation, ...] = Field(default=(), alias="variation")
+    variation_tables: tuple[Variation, ...] = Field(default=(), alias="variation")
     fit: FitSection = FitSection()
     toys: Toys = Toys()
 
@@ -63,7 +67,7 @@ class StudyConfig(Table):
             modes=dict(enumerate(self.modes)),
             backgrounds=dict(enumerate(self.backgrounds)),
             category_tables=dict(enumerate(self.category_tables)),
-            variations=dict(enumerate(self.variations)),
+            variations=dict(enumerate(self.variation_tables)),
             selection=self.selection,
             detector=self.detector,
             form_factors=self.form_factors,
@@ -99,6 +103,15 @@ class StudyConfig(Table):
     def beside(self, file: str) -> Path:
         """Path of a file that the study names: from the study file's folder unless absolute."""
         return self._path.parent / Path(file)
+
+    def form_factor_set(self, transition: str) -> FormFactorSet:
+        """The set chosen for "D", "Dst" or "Dss". InputError if its file is not sound (any more)."""
+        return chosen_set(getattr(self.form_factors, transition), transition, self._path.parent)
+
+    @property
+    def variations(self) -> tuple[SingleVariation, ...]:
+        """All variations, one for each nuisance parameter, in the file's order."""
+        return tuple(single_variations(self.variation_tables, self.form_factor_set))
 
     @property
     def categories(self) -> tuple[StudyCategory, ...]:

@@ -45,13 +45,33 @@ class FormFactor(_Named):
 
 
 class FormFactorDirection(_Named):
-    """A principal direction of a set's covariance, one standard deviation along it; 1 is the widest."""
+    """One direction of a set's covariance, one standard deviation along it; 1 is the largest."""
 
     default_group: ClassVar[str] = "form factors"
 
     kind: Literal["form_factor_direction"]
     set: FormFactorGroup = Field(description="which entry of [form_factors]")
-    direction: Count = Field(description="counted from 1, in falling order of variance")
+    direction: Count = Field(description="counted from 1, largest first")
+    order: Literal["variance", "effect"] = Field(default="variance", description="as in form_factor_directions")
+
+
+class FormFactorDirections(_Named):
+    """The directions of a set's covariance that matter: nuisances NAME_1, NAME_2 ..., independent and largest first.
+
+    They act on e, μ, τ and on B⁺, B⁰ together; on D and D* together if the set gives them the same parameters.
+    """
+
+    default_group: ClassVar[str] = "form factors"
+
+    kind: Literal["form_factor_directions"]
+    set: FormFactorGroup = Field(description="which entry of [form_factors]")
+    order: Literal["variance", "effect"] = Field(
+        default="effect",
+        description="effect: independent in what they do to the q² spectra of μ and τ; variance: eigenvectors of the "
+        "correlation matrix",
+    )
+    keep: Annotated[Positive, Field(le=1)] = Field(default=0.99, description="share of the effect or variance to keep")
+    at_most: Count | None = Field(default=None, description="keep no more directions than this")
 
 
 class ComponentFraction(_Named):
@@ -115,9 +135,22 @@ class MomentumScale(_Named):
     relative: Annotated[Positive, Field(lt=0.1)] = Field(description="one standard deviation")
 
 
+SingleVariation = (
+    FormFactor
+    | FormFactorDirection
+    | ComponentFraction
+    | SoftPionEfficiency
+    | LeptonIdentificationEfficiency
+    | Misidentification
+    | TagResolution
+    | MomentumScale
+)
+"""One nuisance parameter each."""
+
 Variation = Annotated[
     FormFactor
     | FormFactorDirection
+    | FormFactorDirections
     | ComponentFraction
     | SoftPionEfficiency
     | LeptonIdentificationEfficiency

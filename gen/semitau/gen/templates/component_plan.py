@@ -62,7 +62,7 @@ def plan_channels(study: StudyConfig) -> tuple[ChannelPlan, ...]:
 
 
 def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
-    sets = {name: getattr(study.form_factors, name) for name in ("D", "Dst", "Dss")}
+    sets = {name: study.form_factor_set(name) for name in ("D", "Dst", "Dss")}
     chains = channels(
         mode.parents, mode.charm, mode.leptons,
         form_factors=sets, wilson=study.wilson.couplings, tensor=study.wilson.tensor,
@@ -143,7 +143,7 @@ def predicted_ratio(
     """
     of_tau = study.wilson.couplings if couplings is None else couplings
     family = CHARM_OF_RATIO[name]
-    chosen = getattr(study.form_factors, FORM_FACTORS_OF[family])
+    chosen = study.form_factor_set(FORM_FACTORS_OF[family])
     sums = {"e": 0.0, "mu": 0.0, "tau": 0.0}
     for parent in parents:
         tagged = parent_pairs(study, parent) * study.detector.tag.efficiency[parent]

@@ -16,7 +16,8 @@ from semitau.core.errors import InputError, Problem
 
 from ..decays.chains import Channel
 from ..decays.decay import Decay
-from ..decays.form_factor_set import FormFactorSet, form_factors
+from ..decays.form_factor_directions import moved
+from ..decays.form_factor_set import FormFactorSet
 from ..response.candidates import Scenario
 from ..study_file.detector import Curve
 from ..study_file.names import FORM_FACTORS_OF
@@ -83,7 +84,7 @@ def channel_variations(
             side = variation.name, sign
             change = 1.0 + sign * getattr(variation, "relative", 0.0)
             if isinstance(variation, FormFactor | FormFactorDirection):
-                if variation.set == FORM_FACTORS_OF[channel.family]:
+                if FORM_FACTORS_OF[channel.family] in moved_transitions(study, variation.set):
                     decays[side] = replace(channel.decay, form_factors=varied_set(study, variation, sign))
             elif isinstance(variation, SoftPionEfficiency):
                 if _SOFT_KIND[variation.particle] == channel.soft:
@@ -110,11 +111,18 @@ def background_factors(study: StudyConfig, misidentified: bool) -> dict[Side, Fl
     }
 
 
+def moved_transitions(study: StudyConfig, transition: str) -> tuple[str, ...]:
+    """What a variation of one entry of [form_factors] moves: both D and D* if they are one set of shared parameters."""
+    both = ("D", "Dst")
+    one_set = transition in both and study.form_factors.Dst == study.form_factors.D
+    return both if one_set and study.form_factor_set(transition).shared else (transition,)
+
+
 def varied_set(study: StudyConfig, variation: FormFactor | FormFactorDirection, sign: int) -> FormFactorSet:
     """The study's form-factor set of that transition, moved by one standard deviation."""
-    nominal = form_factors(getattr(study.form_factors, variation.set))
+    nominal = study.form_factor_set(variation.set)
     if isinstance(variation, FormFactorDirection):
-        return nominal.along(variation.direction - 1, float(sign), variation.set)
+        return moved(nominal, variation.set, variation.order, variation.direction - 1, float(sign))
     member = nominal[variation.set]
     shift = variation.shift
     if shift is None:

@@ -24,10 +24,11 @@ def command(call: Invocation, file: Path) -> None:
     from ..rates_summary import rates_document, rates_tables
 
     study = open_study(file, call.seed)
-    sets = {name: getattr(study.form_factors, name) for name in ("D", "Dst", "Dss")}
+    sets = {name: study.form_factor_set(name) for name in ("D", "Dst", "Dss")}
+    names = {name: str(getattr(study.form_factors, name)) for name in sets}
     charms = list(dict.fromkeys(charm for mode in study.modes for charm in mode.charm))
     parents = list(dict.fromkeys(parent for mode in study.modes for parent in mode.parents))
     couplings, tensor = study.wilson.couplings, study.wilson.tensor
     rates = rates_table(charms, parents=parents, form_factors=sets, wilson=couplings, tensor=tensor)
-    call.terminal.show(*rates_tables(rates, sets, couplings, tensor))
-    call.terminal.result(rates_document(rates, sets, couplings, tensor))
+    call.terminal.show(*rates_tables(rates, names, couplings, tensor))
+    call.terminal.result(rates_document(rates, names, couplings, tensor))
