@@ -20,11 +20,16 @@ if TYPE_CHECKING:
     from .data import Data as Data
     from .decomposition import Budget as Budget
     from .decomposition import budget as budget
+    from .fit_quality import Quality as Quality
+    from .fit_quality import quality as quality
     from .interpolation import interpolate as interpolate
     from .model import Model as Model
     from .newton import maximise as maximise
     from .neyman import ToyInterval as ToyInterval
     from .neyman import toy_interval as toy_interval
+    from .nuisances import NuisanceShift as NuisanceShift
+    from .nuisances import held_in_turn as held_in_turn
+    from .nuisances import nuisance_shifts as nuisance_shifts
     from .poor_templates import Corrected as Corrected
     from .poor_templates import correct_for_templates as correct_for_templates
     from .result import FitResult as FitResult
@@ -41,17 +46,22 @@ _HOME = {
     "IntervalCoverage": ".covering",
     "Linearity": ".straightness",
     "Model": ".model",
+    "NuisanceShift": ".nuisances",
     "Profile": ".curves",
+    "Quality": ".fit_quality",
     "Region": ".curves",
     "ToyInterval": ".neyman",
     "ToyResults": ".toys",
     "budget": ".decomposition",
     "correct_for_templates": ".poor_templates",
+    "held_in_turn": ".nuisances",
     "interpolate": ".interpolation",
     "interval_coverage": ".covering",
     "linearity": ".straightness",
     "maximise": ".newton",
+    "nuisance_shifts": ".nuisances",
     "profile": ".curves",
+    "quality": ".fit_quality",
     "read_templates": "semitau.core.template_file",
     "region": ".curves",
     "run_toys": ".toys",
@@ -66,17 +76,22 @@ __all__ = [
     "IntervalCoverage",
     "Linearity",
     "Model",
+    "NuisanceShift",
     "Profile",
+    "Quality",
     "Region",
     "ToyInterval",
     "ToyResults",
     "budget",
     "correct_for_templates",
+    "held_in_turn",
     "interpolate",
     "interval_coverage",
     "linearity",
     "maximise",
+    "nuisance_shifts",
     "profile",
+    "quality",
     "read_templates",
     "region",
     "run_toys",
