@@ -11,7 +11,7 @@ from collections.abc import Iterator
 
 import numpy as np
 import pytest
-from semitau.core.constants import BOTTOM_MASS, CHARM_MASS
+from semitau.core.constants import BOTTOM_MASS, CHARM_MASS, mass
 from semitau.gen.decays import tensor_form_factors
 from semitau.gen.decays.amplitudes import (
     HelicityAmplitudes,
@@ -193,7 +193,8 @@ def heavy_quark_amplitudes(decay: Decay, q2: float) -> HelicityAmplitudes:
 def test_heavy_quark_limit(family: str, coupling: str) -> None:
     """Signs of V/A and T/(V-A), and all of D**, from the trace formalism of the heavy-quark limit."""
     c = COUPLINGS[coupling]
-    decay = Decay("B0", charm_name("B0", family), "tau", wilson=c)
+    charm = charm_name("B0", family)
+    decay = Decay("B0", charm, "tau", wilson=c, charm_mass=mass(charm))
     for q2, theta, phi in points(decay):
         if decay.orbital is None:
             k = heavy_quark_amplitudes(decay, q2).with_lepton(decay.m_lepton / np.sqrt(q2))

@@ -28,8 +28,10 @@ def chain_pieces(channel: Channel) -> list[tuple[str, list[str]]]:
 
 def test_one_of_each() -> None:
     assert len({channel.name for channel in ALL}) == len(ALL)
-    # D: 1 chain; D*+: 3, D*0: 2; with a bachelor both charges of D* occur: 5; D2* in addition to two Dpi.
+    # D: 1 chain; D*+: 3, D*0: 2; with a bachelor both charges of D* occur: 5; D2* in addition to two Dpi, D1 to three
+    # Dpipi.
     per_family = {"D": {"B+": 1, "B0": 1}, "D*": {"B+": 2, "B0": 3}, "D2*(2460)": {"B+": 7, "B0": 7}}
+    per_family["D1(2420)"] = {"B+": 8, "B0": 8}
     for family in FAMILIES:
         expected = per_family.get(family, {"B+": 2, "B0": 2} if family.startswith("D0*") else {"B+": 5, "B0": 5})
         for parent, number in expected.items():
@@ -66,7 +68,8 @@ def test_sums_over_chains() -> None:
         sums[channel.parent, channel.family, channel.lepton] += channel.branching_fraction
     for (parent, family, lepton), total in sums.items():
         if family in ORBITAL_STATES:
-            light = ORBITAL_STATES[family].light_branching_fraction * LIFETIME[parent] / LIFETIME["B+"]
+            state = ORBITAL_STATES[family]
+            light = state.light_branching_fraction * (1 + state.to_two_pions) * LIFETIME[parent] / LIFETIME["B+"]
             charm = family + ("0" if parent == "B+" else "-")
             expected = light * (gen.ratio(parent, charm) if lepton == "tau" else 1.0)
         else:
@@ -82,7 +85,8 @@ def test_isospin_of_the_bachelor() -> None:
         for parent in ("B+", "B0"):
             kinds: dict[str, float] = defaultdict(float)
             for channel in ALL:
-                if (channel.family, channel.parent, channel.lepton) == (family, parent, "mu"):
+                found = channel.family, channel.parent, channel.lepton, channel.second
+                if found == (family, parent, "mu", "none"):
                     kinds[channel.bachelor] += channel.branching_fraction
             assert kinds["charged"] == pytest.approx(2 * kinds["neutral"], rel=1e-12)
 

@@ -6,7 +6,7 @@ import mpmath
 import numpy as np
 import pytest
 from semitau import gen
-from semitau.core.constants import ELECTROWEAK_CORRECTION, FERMI_COUPLING, HBAR, LIFETIME, VCB
+from semitau.core.constants import ELECTROWEAK_CORRECTION, FERMI_COUPLING, HBAR, LIFETIME, VCB, mass
 from semitau.core.errors import InputError
 from semitau.gen.decays.amplitudes import helicity_amplitudes
 from semitau.gen.decays.decay import FAMILIES, charm_name
@@ -72,7 +72,8 @@ def test_massless_vector_textbook() -> None:
 @pytest.mark.parametrize("lepton", ["mu", "tau"])
 def test_standard_model_closed_form(family: str, lepton: str) -> None:
     """(1 + x^2/2) sum H^2 + (3/2) x^2 H_t^2, the textbook form (Z. Phys. C 46 (1990) 93)."""
-    decay = gen.Decay("B+", charm_name("B+", family), lepton)
+    charm = charm_name("B+", family)
+    decay = gen.Decay("B+", charm, lepton, charm_mass=mass(charm))
     q2 = q2_inside(decay)
     M, m, _, w = masses(decay, q2)
     k = helicity_amplitudes(decay, q2)

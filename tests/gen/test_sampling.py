@@ -121,6 +121,8 @@ def test_q2(parent: str, charm: str, lepton: str) -> None:
     # a grid that is fine at both end points, where the rate turns on sharply
     grid = low + (high - low) * (1 - np.cos(np.pi * np.linspace(0, 1, 20_001))) / 2
     assert stats.kstest(q2, cumulative(lambda x: gen.differential_rate(decay, x), grid)).pvalue > UNLIKELY
+    if decay.charm_mass is None:  # tables at many masses
+        return
     t = node / Q2_INTERVALS
     np.testing.assert_allclose(q2, low + (high - low) * t * t * (3 - 2 * t), rtol=1e-12)
 

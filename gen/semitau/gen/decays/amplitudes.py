@@ -83,11 +83,15 @@ class LeptonAmplitudes:
     t: Complexes
 
 
-def helicity_amplitudes(decay: Decay, q2: ArrayLike) -> HelicityAmplitudes:
-    """Amplitudes of the hadron current at q2 (GeV2, any shape, 0 < q2 <= (M-m)^2)."""
+def helicity_amplitudes(decay: Decay, q2: ArrayLike, charm_mass: ArrayLike | None = None) -> HelicityAmplitudes:
+    """Amplitudes of the hadron current at q2 (GeV2, any shape, 0 < q2 <= (M-m)^2).
+
+    charm_mass : GeV, of the shape of q2 or one that broadcasts to it, for a D** or a continuum; the decay's own if left
+        out.
+    """
     q2 = np.asarray(q2, dtype=np.float64)
     if decay.orbital is not None:
-        return _orbital(decay, q2)
+        return _orbital(decay, q2, np.asarray(decay.m_charm if charm_mass is None else charm_mass, dtype=np.float64))
     values = decay.model(decay.m_parent, decay.m_charm, q2)
     if isinstance(values, VectorFormFactors):
         tensor = vector_tensor(decay.tensor, values, decay.m_parent, decay.m_charm, q2)
@@ -96,10 +100,10 @@ def helicity_amplitudes(decay: Decay, q2: ArrayLike) -> HelicityAmplitudes:
     return pseudoscalar_amplitudes(decay, q2, values, f_T)
 
 
-def lepton_amplitudes(decay: Decay, q2: ArrayLike) -> LeptonAmplitudes:
-    """Amplitudes for both lepton helicities at q2 (GeV2, any shape)."""
+def lepton_amplitudes(decay: Decay, q2: ArrayLike, charm_mass: ArrayLike | None = None) -> LeptonAmplitudes:
+    """Amplitudes for both lepton helicities at q2 (GeV2, any shape); charm_mass as in `helicity_amplitudes`."""
     q2 = np.asarray(q2, dtype=np.float64)
-    return helicity_amplitudes(decay, q2).with_lepton(decay.m_lepton / np.sqrt(q2))
+    return helicity_amplitudes(decay, q2, charm_mass).with_lepton(decay.m_lepton / np.sqrt(q2))
 
 
 def _amplitudes(q2: Floats, **given: ArrayLike) -> HelicityAmplitudes:
@@ -149,10 +153,10 @@ def vector_amplitudes(
     )
 
 
-def _orbital(decay: Decay, q2: Floats) -> HelicityAmplitudes:
+def _orbital(decay: Decay, q2: Floats, m: Floats) -> HelicityAmplitudes:
     """B -> D**. Scalar and tensor currents follow from the equations of motion, exact at leading order in 1/m."""
-    currents = orbital_currents(decay, q2)
-    M, m, c = decay.m_parent, decay.m_charm, decay.couplings
+    currents = orbital_currents(decay, q2, m)
+    M, c = decay.m_parent, decay.couplings
     root, total, difference = np.sqrt(q2), M + m, M - m
     axial, vector = 1.0 + c.VL - c.VR, 1.0 + c.VL + c.VR
     timelike = -0.5 * currents.timelike  # the helicity table has J_t and J_0 of opposite sign

@@ -8,12 +8,12 @@ from dataclasses import dataclass
 from semitau.core.constants import BRANCHING_FRACTION, LIFETIME, MASS
 from semitau.core.errors import InputError, Problem
 
-from .decay import DEFAULT_SETS, FAMILIES, LEPTONS, PARENTS, Decay, WilsonCoefficients, charm_name
+from .decay import CHARMS, DEFAULT_SETS, LEPTONS, PARENTS, Decay, WilsonCoefficients, charm_name
 from .form_factor_set import FormFactorSet
-from .orbital_states import CHARGED_PION_SHARE, OrbitalState
+from .orbital_states import CHARGED_PION_SHARE, ETA_NEUTRAL_SHARE, PION_PAIR_SHARES, CharmState
 from .rates import observables, ratio
 
-PION_MASS = {"none": 0.0, "charged": MASS["pi+"], "neutral": MASS["pi0"]}
+PION_MASS = {"none": 0.0, "charged": MASS["pi+"], "neutral": MASS["pi0"], "eta": MASS["eta"]}
 SOFT_MASS = {"none": 0.0, "charged_pion": MASS["pi+"], "neutral_pion": MASS["pi0"], "photon": 0.0}
 
 # Species of the D* -> (species of the D, kind of soft particle, branching fraction).
@@ -40,11 +40,12 @@ class Channel:
     decay : the semileptonic decay, with its form factors.
     tau_to : decay of the tau: "e", "mu", "pi", "rho" (pi- pi0), "a1" (pi- pi- pi+) or "a1_1prong" (pi- pi0 pi0); None
         if the B decay gave no tau.
-    bachelor : pion of D** -> D(*) pi: "none", "charged" or "neutral".
+    bachelor : light meson beside the D(*) of a D** or a continuum: "none", "charged" or "neutral" (pions), "eta".
     vector : species of the D*, "D*+" or "D*0"; "" if there is none.
     soft : particle of the D* decay: "none", "charged_pion", "neutral_pion" or "photon".
     ground : species of the D at the end, "D0" or "D+".
     branching_fraction : of the whole chain for one B of this kind, up to the D, whose own decay is not part of it.
+    second : second pion of a D** or a continuum, as `bachelor`.
 
     Species leave charge conjugation out: a B+ or B0 gives the conjugate of `vector` and `ground`. So a neutral species
     with the lepton looks like a charged B, a charged species like a neutral one.
@@ -57,6 +58,7 @@ class Channel:
     soft: str
     ground: str
     branching_fraction: float
+    second: str = "none"
 
     @property
     def parent(self) -> str:
@@ -98,6 +100,11 @@ class Channel:
         return PION_MASS[self.bachelor]
 
     @property
+    def m_second(self) -> float:
+        """GeV; 0 if there is none."""
+        return PION_MASS[self.second]
+
+    @property
     def m_seen_lepton(self) -> float:
         """GeV."""
         return MASS[self.seen_lepton if self.seen_lepton in LEPTONS else "pi+"]
@@ -110,12 +117,20 @@ class Channel:
             text += f", tau -> {self.tau_to}"
         vector, ground = _conjugate(self.vector), _conjugate(self.ground)
         if self.bachelor != "none":
-            pion = "pi0" if self.bachelor == "neutral" else "pi-" if self.parent == "B0" else "pi+"
-            text += f", {self.decay.charm} -> {vector or ground} {pion}"
+            text += f", {self.decay.charm} -> {vector or ground} {self.light_mesons}"
         if self.vector:
             soft = {"charged_pion": "pi-", "neutral_pion": "pi0", "photon": "gamma"}[self.soft]
             text += f", {vector} -> {ground} {soft}"
         return text
+
+    @property
+    def light_mesons(self) -> str:
+        """What goes with the D(*) of a D** or a continuum, with the charges of a B+ or B0; "" if nothing does."""
+        if (self.bachelor, self.second) == ("charged", "charged"):
+            return "pi+ pi-"
+        charged = "pi-" if self.parent == "B0" else "pi+"
+        words = {"none": "", "charged": charged, "neutral": "pi0", "eta": "eta"}
+        return f"{words[self.bachelor]} {words[self.second]}".strip()
 
 
 def _conjugate(species: str) -> str:
@@ -134,17 +149,19 @@ def channels(
 ) -> tuple[Channel, ...]:
     """Every chain from these parents through these charmed mesons and leptons, in that order.
 
-    parents : of "B+", "B0". charms : families, of "D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430)".
+    parents : of "B+", "B0". charms : families, of "D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430)",
+        and the continua "(D pi)", "(D* pi)", "(D pi pi)", "(D* pi pi)", "(D eta)", "(D* eta)".
     leptons : of "e", "mu", "tau". tau_to : of "e", "mu", "pi", "rho", "a1", "a1_1prong"; only these decays of the tau.
     form_factors : "D", "Dst", "Dss" -> set; the defaults of `Decay` where left out. wilson, tensor : on the tau only.
 
-    Branching fractions: of D and D* from the widths with the shipped |V_cb|; of D** with light leptons from measured
-    averages, with a tau these times the ratio at leading order; of tau and D* from the particle data tables.
+    Branching fractions: of D and D* from the widths with the shipped |V_cb|; of D** and continua with light
+    leptons from measured averages, with a tau these times the ratio of the form factors; of tau and D* from the
+    particle data tables.
     InputError lists names that are unknown.
     """
     parents, charms, leptons, tau_to = tuple(parents), tuple(charms), tuple(leptons), tuple(tau_to)
     _check("parent", parents, PARENTS)
-    _check("charmed meson", charms, FAMILIES)
+    _check("charmed meson", charms, CHARMS)
     _check("lepton", leptons, LEPTONS)
     _check("tau decay", tau_to, tuple(BRANCHING_FRACTION["tau"]))
     found: list[Channel] = []
@@ -160,11 +177,11 @@ def channels(
 
 
 def semileptonic_branching_fraction(decay: Decay) -> float:
-    """Of B -> X_c l nu; for D** of the part that ends in D(*) pi."""
+    """Of B -> X_c l nu; for D** of the part that ends in D(*) pi or D pi pi."""
     state = decay.orbital
     if state is None:
         return observables(decay).branching_fraction
-    light = state.light_branching_fraction * decay.lifetime / LIFETIME["B+"]
+    light = state.light_branching_fraction * (1.0 + state.to_two_pions) * decay.lifetime / LIFETIME["B+"]
     if decay.lepton != "tau":
         return light
     return light * ratio(decay.parent, decay.charm, decay.form_factors, decay.couplings, decay.tensor)
@@ -178,37 +195,51 @@ def chains_of(decay: Decay, tau_to: tuple[str, ...]) -> Iterator[Channel]:
     else:
         leptonic = [(None, 1.0)]
     for tau, tau_fraction in leptonic:
-        for bachelor, vector, soft, ground, fraction in _charm_chains(decay):
-            yield Channel(decay, tau, bachelor, vector, soft, ground, start * tau_fraction * fraction)
+        for bachelor, second, vector, soft, ground, fraction in _charm_chains(decay):
+            yield Channel(decay, tau, bachelor, vector, soft, ground, start * tau_fraction * fraction, second)
 
 
-def _charm_chains(decay: Decay) -> Iterator[tuple[str, str, str, str, float]]:
-    """Bachelor, D*, soft particle, D, share of the chain."""
+def _charm_chains(decay: Decay) -> Iterator[tuple[str, str, str, str, str, float]]:
+    """Bachelor, second pion, D*, soft particle, D, share of the chain."""
     charge = "+" if decay.parent == "B0" else "0"
     if decay.orbital is None:
-        yield from _hadron_chains("none", "D*" in decay.charm, charge, 1.0)
-        return
-    yield from _orbital_chains(decay.orbital, charge)
+        parts = [("none", "none", "D*" in decay.charm, charge, 1.0)]
+    else:
+        parts = [part for part in _light_mesons(decay.orbital, charge) if part[-1] > 0.0]
+    for bachelor, second, is_vector, daughter_charge, share in parts:
+        for vector, soft, ground, fraction in _hadron_chains(is_vector, daughter_charge):
+            yield bachelor, second, vector, soft, ground, share * fraction
 
 
-def _orbital_chains(state: OrbitalState, charge: str) -> Iterator[tuple[str, str, str, str, float]]:
+def _light_mesons(state: CharmState, charge: str) -> Iterator[tuple[str, str, bool, str, float]]:
+    """Bachelor, second pion, whether the rest is a D*, charge of the rest, share."""
     other = "0" if charge == "+" else "+"
-    pions = (("charged", other, CHARGED_PION_SHARE), ("neutral", charge, 1.0 - CHARGED_PION_SHARE))
-    for is_vector, share in ((True, state.to_vector), (False, 1.0 - state.to_vector)):
-        for bachelor, daughter_charge, isospin in pions:
-            if share > 0.0:
-                yield from _hadron_chains(bachelor, is_vector, daughter_charge, share * isospin)
+    total = 1.0 + state.to_two_pions
+    for is_vector, share in ((True, state.to_vector / total), (False, (1.0 - state.to_vector) / total)):
+        if state.light == "pi":
+            yield "charged", "none", is_vector, other, share * CHARGED_PION_SHARE
+            yield "neutral", "none", is_vector, charge, share * (1.0 - CHARGED_PION_SHARE)
+        elif state.light == "eta":
+            yield "eta", "none", is_vector, charge, share * ETA_NEUTRAL_SHARE
+        else:
+            yield from _pion_pairs(is_vector, charge, share)
+    yield from _pion_pairs(False, charge, state.to_two_pions / total)
 
 
-def _hadron_chains(
-    bachelor: str, is_vector: bool, charge: str, share: float
-) -> Iterator[tuple[str, str, str, str, float]]:
+def _pion_pairs(is_vector: bool, charge: str, share: float) -> Iterator[tuple[str, str, bool, str, float]]:
+    other = "0" if charge == "+" else "+"
+    for (first, second), isospin in PION_PAIR_SHARES.items():
+        yield first, second, is_vector, charge if first == second else other, share * isospin
+
+
+def _hadron_chains(is_vector: bool, charge: str) -> Iterator[tuple[str, str, str, float]]:
+    """D*, soft particle, D, share."""
     if not is_vector:
-        yield bachelor, "", "none", "D" + charge, share
+        yield "", "none", "D" + charge, 1.0
         return
     vector = "D*" + charge
     for ground, soft, fraction in VECTOR_DECAYS[vector]:
-        yield bachelor, vector, soft, ground, share * fraction
+        yield vector, soft, ground, fraction
 
 
 def _check(what: str, given: tuple[str, ...], allowed: tuple[str, ...]) -> None:

@@ -9,12 +9,13 @@ from semitau.core.constants import LIFETIME, MASS, mass
 from semitau.core.errors import InputError, Problem
 
 from .form_factor_set import FormFactors, FormFactorSet, form_factors
-from .orbital_states import ORBITAL_STATES, OrbitalState
+from .orbital_states import CHARM_STATES, CONTINUA, ORBITAL_STATES, CharmState
 from .tensor_form_factors import TENSOR_MODELS
 
 PARENTS = ("B+", "B0")
 LEPTONS = ("e", "mu", "tau")
 FAMILIES = ("D", "D*", *ORBITAL_STATES)
+CHARMS = (*FAMILIES, *CONTINUA)
 DEFAULT_SETS: Mapping[str, str] = {"D": "BCL-2021", "Dst": "CLN-2021", "Dss": "IW-1998"}
 
 
@@ -69,12 +70,13 @@ class Decay:
     """A decay B -> charm lepton nu. Charge conjugation is implied and bars are left out.
 
     parent, charm : ("B0", "D-"), ("B0", "D*-"), ("B+", "D0"), ("B+", "D*0"), ("B0", "D1(2420)-"), ("B+", "D0*(2300)0")
-        and so on.
+        and so on, or a continuum, ("B0", "(D* pi)-"), whose charge is that of the whole.
     lepton : "e", "mu" or "tau".
     form_factors : name of a shipped set or a `FormFactorSet`; None takes the default of the transition.
     wilson : couplings beyond the standard model for this lepton, as a mapping or `WilsonCoefficients`.
     tensor : model of the tensor form factors of D and D*, "LO", "EOM" or "HQE"; see `tensor_form_factors`.
-    charm_mass : mass of the charmed meson in GeV where it is not the nominal one (mass points of a broad state).
+    charm_mass : mass of the charmed meson in GeV where it is not the nominal one; None for a broad state or a
+        continuum, whose mass has a distribution (`line_shapes.py`).
 
     InputError lists everything that is wrong. Equal decays compare and hash equal.
     """
@@ -92,7 +94,7 @@ class Decay:
         if self.parent not in PARENTS:
             problems.append(Problem("no such parent", got=repr(self.parent), wanted=", ".join(PARENTS)))
         else:
-            charms = [charm_name(self.parent, family) for family in FAMILIES]
+            charms = [charm_name(self.parent, family) for family in CHARMS]
             if self.charm not in charms:
                 problems.append(
                     Problem(f"{self.parent} has no such charmed meson", got=repr(self.charm), wanted=", ".join(charms))
@@ -107,8 +109,11 @@ class Decay:
         chosen = DEFAULT_SETS[self.transition] if self.form_factors is None else self.form_factors
         object.__setattr__(self, "form_factors", form_factors(chosen) if isinstance(chosen, str) else chosen)
         _ = self.model  # the set must describe the transition
-        nominal = mass(self.charm)
-        object.__setattr__(self, "charm_mass", nominal if self.charm_mass is None else float(self.charm_mass))
+        state = self.orbital
+        if self.charm_mass is not None:
+            object.__setattr__(self, "charm_mass", float(self.charm_mass))
+        elif state is None or not state.broad:
+            object.__setattr__(self, "charm_mass", mass(self.charm))
         self._check_physics()
 
     def _check_physics(self) -> None:
@@ -138,9 +143,9 @@ class Decay:
         return {"D": "D", "D*": "Dst"}.get(self.family, "Dss")
 
     @property
-    def orbital(self) -> OrbitalState | None:
-        """Quantum numbers of a D**, None for D and D*."""
-        return ORBITAL_STATES.get(self.family)
+    def orbital(self) -> CharmState | None:
+        """Quantum numbers of a D** or a continuum, None for D and D*."""
+        return CHARM_STATES.get(self.family)
 
     @property
     def form_factor_set(self) -> FormFactorSet:
@@ -168,8 +173,10 @@ class Decay:
 
     @property
     def m_charm(self) -> float:
-        """GeV."""
-        return mass(self.charm) if self.charm_mass is None else self.charm_mass
+        """GeV; nominal or typical mass of a broad state."""
+        if self.charm_mass is not None:
+            return self.charm_mass
+        return mass(self.charm) if self.orbital is None else self.orbital.mass
 
     @property
     def m_lepton(self) -> float:
@@ -178,8 +185,10 @@ class Decay:
 
     @property
     def q2_range(self) -> tuple[float, float]:
-        """Smallest and largest q2, GeV2."""
-        return self.m_lepton**2, (self.m_parent - self.m_charm) ** 2
+        """Smallest and largest q2, GeV2; of a broad state that of its lowest mass."""
+        state = self.orbital
+        lowest = self.m_charm if self.charm_mass is not None or state is None else state.threshold
+        return self.m_lepton**2, (self.m_parent - lowest) ** 2
 
     @property
     def lifetime(self) -> float:

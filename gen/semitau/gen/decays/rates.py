@@ -14,9 +14,13 @@ from ..truth.kinematics import Floats, kallen
 from .amplitudes import LeptonAmplitudes, lepton_amplitudes
 from .decay import Decay, WilsonCoefficients
 from .form_factor_set import FormFactorSet
+from .line_shapes import has_line_shape, mass_at, mass_density, mass_slope
 
 NODES = 96
 """Gauss-Legendre nodes of the q2 integral: exact to 1e-13 for mu and tau, to 3e-8 for e (turn-on above m_e^2)."""
+
+MASS_NODES = 64
+"""Gauss-Legendre nodes of the integral over the mass of a broad state."""
 
 
 @dataclass(frozen=True)
@@ -63,13 +67,29 @@ def differential_rate(decay: Decay, q2: ArrayLike) -> Floats:
 def differential_rates(decay: Decay, q2: ArrayLike) -> DifferentialRates:
     """d Gamma / d q2 by lepton helicity, with its longitudinal part and its forward-backward difference."""
     q2 = np.asarray(q2, dtype=np.float64)
-    low, high = decay.q2_range
+    if not has_line_shape(decay):
+        return _at_mass(decay, q2, np.asarray(decay.m_charm))
+    masses, weights = mass_nodes(decay)
+    parts = _at_mass(decay, q2[..., None], masses)
+    return DifferentialRates(**{name: value @ weights for name, value in vars(parts).items()})
+
+
+def mass_nodes(decay: Decay) -> tuple[Floats, Floats]:
+    """Masses (GeV) of a broad state and their weights, so that sums are integrals over rho(m) dm; (n,) each."""
+    y, weights = _nodes(MASS_NODES)
+    masses = mass_at(decay, y)
+    return masses, weights * mass_slope(decay, y) * mass_density(decay, masses)
+
+
+def _at_mass(decay: Decay, q2: Floats, m: Floats) -> DifferentialRates:
+    """Differential rates with this mass of the charmed meson, GeV; m broadcasts to q2 or the other way round."""
+    low, high = decay.m_lepton**2, (decay.m_parent - m) ** 2
     inside = (q2 > low) & (q2 < high)
     safe = np.where(inside, q2, 0.5 * (low + high))
-    amplitudes = lepton_amplitudes(decay, safe)
+    amplitudes = lepton_amplitudes(decay, safe, m)
     M, square = decay.m_parent, safe - decay.m_lepton**2
     coupling = (FERMI_COUPLING * ELECTROWEAK_CORRECTION * VCB) ** 2 / (32.0 * np.pi**3 * M**2)
-    momentum = np.sqrt(kallen(M, decay.m_charm, safe)) / (2.0 * M)
+    momentum = np.sqrt(kallen(M, m, safe)) / (2.0 * M)
     factor = np.where(inside, coupling * momentum * square**2 / safe, 0.0)
     return _angular_integrals(amplitudes, factor)
 
@@ -111,21 +131,40 @@ def _nodes(number: int) -> tuple[Floats, Floats]:
     return 0.5 * (points + 1.0), 0.5 * weights
 
 
+def widths_at(decay: Decay, masses: Floats) -> Floats:
+    """Width in GeV at each of these masses (n,) of the charmed meson, GeV."""
+    t, weights = _nodes(NODES)
+    m = masses[:, None]
+    low, high = decay.m_lepton**2, (decay.m_parent - m) ** 2
+    q2 = low + (high - low) * t * t * (3.0 - 2.0 * t)
+    widths: Floats = (_at_mass(decay, q2, m).total * (6.0 * (high - low) * t * (1.0 - t))) @ weights
+    return widths
+
+
 @lru_cache(maxsize=1024)
 def observables(decay: Decay) -> Observables:
     """Width, branching fraction, polarisations, asymmetry and mean q2 of a decay by quadrature; see `Observables`."""
     t, weights = _nodes(NODES)
-    q2 = q2_of(decay, t)
-    parts = differential_rates(decay, q2)
-    weights = weights * q2_slope(decay, t)
-    rate = float(weights @ parts.total)
+    if has_line_shape(decay):
+        masses, mass_weights = (column[:, None] for column in mass_nodes(decay))
+    else:
+        masses, mass_weights = np.array(decay.m_charm), np.array(1.0)
+    low, high = decay.m_lepton**2, (decay.m_parent - masses) ** 2
+    q2 = low + (high - low) * t * t * (3.0 - 2.0 * t)
+    parts = _at_mass(decay, q2, masses)
+    flat = (weights * (6.0 * (high - low) * t * (1.0 - t)) * mass_weights).ravel()
+
+    def integral(of: Floats) -> float:
+        return float(flat @ of.ravel())
+
+    rate = integral(parts.total)
     return Observables(
         rate=rate,
         branching_fraction=rate * decay.lifetime / HBAR,
-        tau_polarisation=float(weights @ (parts.positive - parts.negative)) / rate,
-        longitudinal_fraction=float(weights @ parts.longitudinal) / rate,
-        forward_backward=float(weights @ parts.forward_minus_backward) / rate,
-        mean_q2=float(weights @ (parts.total * q2)) / rate,
+        tau_polarisation=integral(parts.positive - parts.negative) / rate,
+        longitudinal_fraction=integral(parts.longitudinal) / rate,
+        forward_backward=integral(parts.forward_minus_backward) / rate,
+        mean_q2=integral(parts.total * q2) / rate,
     )
 
 

@@ -9,7 +9,7 @@ import numpy as np
 from .efficiency import Efficiency
 
 NO_PARTICLE, CHARGED_PION, NEUTRAL_PION, PHOTON = range(4)
-"""Kinds of the soft particle of a D* and of the pion of a D**."""
+"""Kinds of the soft particle of a D* and of the light mesons of a D**."""
 
 
 class Beams(NamedTuple):
@@ -100,7 +100,7 @@ class Chain(NamedTuple):
     """What the response needs to know of a channel: masses in GeV and the kinds of its particles.
 
     charged_parent, charged_d : 1 or 0. muon : 1 if the charged lepton is a muon, 0 for an electron.
-    soft, pion : NO_PARTICLE, CHARGED_PION, NEUTRAL_PION or PHOTON.
+    soft, pion, pion2 : NO_PARTICLE, CHARGED_PION, NEUTRAL_PION (also an eta, as one object) or PHOTON.
     beside_soft, kaon, hadron : what double charm has besides, numbers of `light_decays.SPECIES` or NO_SPECIES.
     """
 
@@ -113,6 +113,7 @@ class Chain(NamedTuple):
     muon: int
     soft: int
     pion: int
+    pion2: int = NO_PARTICLE
     beside_soft: int = -1
     kaon: int = -1
     hadron: int = -1

@@ -57,6 +57,7 @@ def measure(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     add_noise(y, keys, detector.residual)
     measure_soft(y, keys, chain, detector)
     measure_pion(y, keys, chain.pion, detector)
+    see_light_meson(y, keys, chain.pion2, row.PION2_PX, draws.PION2_SEEN, draws.PION2_LEFT_OVER, detector)
     if has_others(chain):
         add_others(y)
     draw_random_soft(y, keys, chain.charged_d, detector.soft)
@@ -190,12 +191,23 @@ def measure_soft(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> Non
 
 @kernel
 def measure_pion(y: Floats, keys: Keys, kind: int, detector: Detector) -> None:
-    """The pion of a D**: EXTRA if it is charged and seen; if it is neutral it may leave its energy in LEFT_OVER."""
+    """The (first) light meson of a D**: EXTRA, and in LEFT_OVER the energy of a neutral one."""
     for i in range(LANES):
         y[row.EXTRA + i] = 0.0
+    see_light_meson(y, keys, kind, row.PION_PX, draws.PION_SEEN, draws.PION_LEFT_OVER, detector)
+
+
+@kernel
+def see_light_meson(
+    y: Floats, keys: Keys, kind: int, first: int, seen: np.uint64, left_over: np.uint64, detector: Detector
+) -> None:
+    """EXTRA becomes 1 if it is charged and seen; if it is neutral it may leave its energy in LEFT_OVER.
+
+    first : of the four rows of its momentum. seen, left_over : numbers of its draws.
+    """
     if kind == NO_PARTICLE:
         return
-    to_laboratory(y, row.PION_PX, row.LAB_PION_PX, detector.beams)
+    to_laboratory(y, first, row.LAB_PION_PX, detector.beams)
     if kind == CHARGED_PION:
         for i in range(LANES):
             px, py, pz = y[row.LAB_PION_PX + i], y[row.LAB_PION_PY + i], y[row.LAB_PION_PZ + i]
@@ -203,13 +215,14 @@ def measure_pion(y: Floats, keys: Keys, kind: int, detector: Detector) -> None:
             y[_INSIDE + i] = in_track_acceptance(px, py, pz, detector.tracks)
         evaluate(detector.tracks.efficiency, y[_MOMENTUM : _MOMENTUM + LANES], y[_CHANCE : _CHANCE + LANES])
         for i in range(LANES):
-            y[row.EXTRA + i] = y[_INSIDE + i] if uniform(keys[i], draws.PION_SEEN) < y[_CHANCE + i] else 0.0
+            found = y[_INSIDE + i] if uniform(keys[i], seen) < y[_CHANCE + i] else 0.0
+            y[row.EXTRA + i] = max(y[row.EXTRA + i], found)
     if kind == NEUTRAL_PION:
         for i in range(LANES):
             inside = in_photon_acceptance(
                 y[row.LAB_PION_PX + i], y[row.LAB_PION_PY + i], y[row.LAB_PION_PZ + i], detector.photons
             )
-            leaves = 1.0 if uniform(keys[i], draws.PION_LEFT_OVER) < detector.residual.lost_neutral else 0.0
+            leaves = 1.0 if uniform(keys[i], left_over) < detector.residual.lost_neutral else 0.0
             y[row.LEFT_OVER + i] += inside * leaves * y[row.LAB_PION_E + i]
 
 

@@ -42,6 +42,7 @@ TRUTH_ROWS = {
     **_momentum("D", row.D_PX),
     **_momentum("soft", row.SOFT_PX),
     **_momentum("pion", row.PION_PX),
+    **_momentum("second_pion", row.PION2_PX),
     **_momentum("tau", row.TAU_PX),
     **_momentum("lepton", row.LEPTON_PX),
 }

@@ -20,7 +20,12 @@ _SOFT = {
     "neutral_pion": kernel.NEUTRAL_PION,
     "photon": kernel.PHOTON,
 }
-_BACHELOR = {"none": kernel.NO_PARTICLE, "charged": kernel.CHARGED_PION, "neutral": kernel.NEUTRAL_PION}
+_BACHELOR = {
+    "none": kernel.NO_PARTICLE,
+    "charged": kernel.CHARGED_PION,
+    "neutral": kernel.NEUTRAL_PION,
+    "eta": kernel.NEUTRAL_PION,
+}
 
 
 # A photon takes the place of a neutral pion: both are one object that may leave its energy.
@@ -86,6 +91,7 @@ def kernel_chain(channel: Channel | DoubleCharmChain) -> kernel.Chain:
         muon=int(channel.seen_lepton == "mu"),
         soft=_SOFT[channel.soft],
         pion=_BACHELOR[channel.bachelor],
+        pion2=_BACHELOR[channel.second],
     )
 
 

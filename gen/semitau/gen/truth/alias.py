@@ -51,9 +51,17 @@ def alias_table(weights: Floats) -> Floats:
 @inlined
 def draw_position(table: Floats, u_interval: float, u_inside: float, u_side: float) -> float:
     """A position between 0 and the number of intervals, from an `interval_table` and three uniforms."""
-    scaled = u_interval * table.shape[0]
+    return draw_position_in(table, 0, table.shape[0], u_interval, u_inside, u_side)  # type: ignore[no-any-return]
+
+
+@inlined
+def draw_position_in(
+    table: Floats, first: int, intervals: int, u_interval: float, u_inside: float, u_side: float
+) -> float:
+    """The same from the one of several tables, one behind the other, that begins at row `first`."""
+    scaled = u_interval * intervals
     k = np.int64(scaled)
-    k = k if scaled - k < table[k, 0] else np.int64(table[k, 1])
-    left = table[k, 2]
+    k = k if scaled - k < table[first + k, 0] else np.int64(table[first + k, 1])
+    left = table[first + k, 2]
     y = u_inside if u_side < left + (1.0 - 2.0 * left) * u_inside else 1.0 - u_inside
     return k + y

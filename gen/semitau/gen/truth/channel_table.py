@@ -1,13 +1,14 @@
 """What the truth kernel needs of one decay chain: numbers and tables, ready for compiled loops.
 
 q² runs over a position t in [0, 1], q² = q²_min + (q²_max - q²_min) t² (3 - 2t), which tames both end points.
-Amplitudes are tabulated at Q2_INTERVALS + 1 nodes in t, times sqrt(q²) (then none of them diverges at small q²), and
-read with linear interpolation. A common factor drops out of every angular density.
+Amplitudes are tabulated at nodes in t, Q2_INTERVALS + 1 of them, times sqrt(q²) (then none of them diverges at small
+q²), and read with linear interpolation. A common factor drops out of every angular density. A broad state has tables of
+BROAD_INTERVALS at each mass point, one behind the other.
 """
 
 from __future__ import annotations
 
-from functools import lru_cache
+from functools import lru_cache, partial
 from typing import NamedTuple
 
 import numpy as np
@@ -17,14 +18,20 @@ from semitau.core.errors import InputError, Problem
 from ..decays.amplitudes import HelicityAmplitudes, helicity_amplitudes
 from ..decays.chains import Channel
 from ..decays.decay import Decay
+from ..decays.line_shapes import has_line_shape, mass_density
 from .alias import interval_table
+from .charm_masses import MassTable, mass_table, point_masses
 from .hadronic_currents import HadronTable, hadron_table
 from .tau_decay import energy_density, energy_range
 
 Floats = npt.NDArray[np.float64]
 
 Q2_INTERVALS = 512
+BROAD_INTERVALS = 128
 VISIBLE_INTERVALS = 256
+
+_ABOVE_THRESHOLD = 1e-6
+"""GeV: where the line shape at the first mass point is taken, which is zero there."""
 
 # Values of ChannelTable.chain.
 GROUND = 0  # the charm hadron of the B decay is the D that is seen
@@ -41,9 +48,10 @@ class ChannelTable(NamedTuple):
     one_neutrino : 1 for a tau that gives pions, else 0. hadrons : for one that gives several.
     visible_mass, visible_span : lowest energy and range of the tau's daughter.
     vector_mass, d_mass, soft_mass, pion_mass : of the D*, D, soft particle of the D*, pion of the D**; 0 if absent.
-    q2_table (512, 3), visible_table (256, 3) : for `draw_position`.
-    amplitudes (514, 4 or 16) : at the nodes and once more at the last; columns J_+, J_-, J_0, J_t if all is real, else
-        real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0.
+    intervals : of q² at each mass point. masses : of what has no fixed mass.
+    q2_table (points * intervals, 3), visible_table (256, 3) : for `draw_position`.
+    amplitudes (points * (intervals + 2), 4 or 16) : at the nodes and once more at the last; columns J_+, J_-, J_0, J_t
+        if all is real, else real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0.
     """
 
     parent_mass: float
@@ -62,6 +70,8 @@ class ChannelTable(NamedTuple):
     one_neutrino: float
     visible_mass: float
     visible_span: float
+    intervals: int
+    masses: MassTable
     q2_table: Floats
     amplitudes: Floats
     visible_table: Floats
@@ -98,6 +108,8 @@ def channel_table(channel: Channel) -> ChannelTable:
         one_neutrino=float(channel.tau_to not in (None, "e", "mu")),
         visible_mass=visible_mass,
         visible_span=energy_high - energy_low,
+        intervals=q2_intervals(decay),
+        masses=mass_table(channel),
         q2_table=q2_table(decay),
         amplitudes=complex_columns(amplitudes) if needs_complex(amplitudes) else real_columns(amplitudes),
         visible_table=visible_table(visible_mass),
@@ -108,8 +120,9 @@ def channel_table(channel: Channel) -> ChannelTable:
 def _check_thresholds(channel: Channel) -> None:
     """A mass point of a broad state may lie where it cannot decay."""
     below = channel.m_vector or channel.m_ground
-    parts = channel.m_bachelor + below if channel.bachelor != "none" else channel.m_ground + channel.m_soft
-    if channel.decay.m_charm < parts:
+    light = channel.m_bachelor + channel.m_second
+    parts = light + below if channel.bachelor != "none" else channel.m_ground + channel.m_soft
+    if not has_line_shape(channel.decay) and channel.decay.m_charm < parts:
         raise InputError(
             Problem(
                 f"the {channel.decay.charm} is too light to decay",
@@ -120,19 +133,32 @@ def _check_thresholds(channel: Channel) -> None:
         )
 
 
-def q2_of_position(decay: Decay, t: Floats) -> Floats:
-    """q² in GeV² at positions t in [0, 1] of the tables."""
-    low, high = decay.q2_range
-    return low + (high - low) * t * t * (3.0 - 2.0 * t)
+def q2_intervals(decay: Decay) -> int:
+    """Intervals of q² in the tables of a decay, at each mass point."""
+    return BROAD_INTERVALS if has_line_shape(decay) else Q2_INTERVALS
+
+
+def q2_of_position(decay: Decay, t: Floats, masses: Floats) -> Floats:
+    """q² in GeV² at positions t in [0, 1] of the tables; masses : of the charm hadron, GeV."""
+    low, high = decay.m_lepton**2, (decay.m_parent - masses) ** 2
+    q2: Floats = low + (high - low) * t * t * (3.0 - 2.0 * t)
+    return q2
 
 
 @lru_cache(maxsize=64)  # chains of one decay follow each other
 def regular_amplitudes(decay: Decay) -> HelicityAmplitudes:
-    """Amplitudes times sqrt(q²) at the nodes, with a copy of the last node behind it; shape (514,) each."""
-    t = np.minimum(np.arange(Q2_INTERVALS + 2) / Q2_INTERVALS, 1.0)
-    q2 = q2_of_position(decay, t)
-    values = helicity_amplitudes(decay, q2)
-    return HelicityAmplitudes(**{name: value * np.sqrt(q2) for name, value in vars(values).items()})
+    """Amplitudes times sqrt(q²) at the nodes of each mass point, with a copy of the last node behind it; one axis.
+
+    Those of a broad state are scaled by the root of its line shape, which a variation may change.
+    """
+    intervals, masses = q2_intervals(decay), point_masses(decay)[:, None]
+    t = np.minimum(np.arange(intervals + 2) / intervals, 1.0)
+    q2 = q2_of_position(decay, t, masses)
+    values = helicity_amplitudes(decay, q2, masses)
+    factor = np.sqrt(q2)
+    if has_line_shape(decay):
+        factor = factor * np.sqrt(mass_density(decay, np.maximum(masses, masses[0] + _ABOVE_THRESHOLD)))
+    return HelicityAmplitudes(**{name: (value * factor).ravel() for name, value in vars(values).items()})
 
 
 def needs_complex(amplitudes: HelicityAmplitudes) -> bool:
@@ -156,22 +182,27 @@ def complex_columns(amplitudes: HelicityAmplitudes) -> Floats:
 
 @lru_cache(maxsize=64)
 def q2_table(decay: Decay) -> Floats:
-    """(512, 3) table for `draw_position` of d Gamma / dt."""
+    """(points * intervals, 3) tables for `draw_position` of d Gamma / dt, one for each mass point."""
+    intervals = q2_intervals(decay)
+    return np.concatenate(
+        [interval_table(partial(_rate_density, decay, float(mass)), intervals) for mass in point_masses(decay)]
+    )
 
-    def density(t: Floats) -> Floats:
-        q2 = q2_of_position(decay, t)
-        x = decay.m_lepton / np.sqrt(q2)
-        values = helicity_amplitudes(decay, q2).with_lepton(x)
-        a, b = (np.abs([getattr(values, f"{k}_{h}") for h in ("plus", "minus", "zero")]) ** 2 for k in "ab")
-        total = (4.0 / 3.0) * a.sum(axis=0) + (2.0 / 3.0) * b.sum(axis=0) + 2.0 * np.abs(values.t) ** 2
-        # |p| (1 - x²) N² dq²/dt; q²_max - q² without cancellation
-        M, m = decay.m_parent, decay.m_charm
-        to_end = (decay.q2_range[1] - decay.q2_range[0]) * (1.0 - t) ** 2 * (1.0 + 2.0 * t)
-        momentum = np.sqrt(to_end * ((M + m) ** 2 - q2))
-        result: Floats = momentum * (1.0 - x * x) ** 2 * q2 * total * t * (1.0 - t)
-        return result
 
-    return interval_table(density, Q2_INTERVALS)
+def _rate_density(decay: Decay, mass: float, t: Floats) -> Floats:
+    """d Gamma / dt up to a factor, for this mass of the charm hadron in GeV."""
+    q2 = q2_of_position(decay, t, np.asarray(mass))
+    x = decay.m_lepton / np.sqrt(q2)
+    values = helicity_amplitudes(decay, q2, mass).with_lepton(x)
+    a, b = (np.abs([getattr(values, f"{k}_{h}") for h in ("plus", "minus", "zero")]) ** 2 for k in "ab")
+    total = (4.0 / 3.0) * a.sum(axis=0) + (2.0 / 3.0) * b.sum(axis=0) + 2.0 * np.abs(values.t) ** 2
+    # |p| (1 - x²) N² dq²/dt; q²_max - q² without cancellation
+    M = decay.m_parent
+    span = (M - mass) ** 2 - decay.m_lepton**2
+    to_end = span * (1.0 - t) ** 2 * (1.0 + 2.0 * t)
+    momentum = np.sqrt(to_end * ((M + mass) ** 2 - q2))
+    result: Floats = momentum * (1.0 - x * x) ** 2 * q2 * total * t * (1.0 - t)
+    return result
 
 
 @lru_cache(maxsize=8)

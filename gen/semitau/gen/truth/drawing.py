@@ -2,6 +2,7 @@
 
 Nothing is rejected and nothing is weighted. The joint density is drawn as a chain of exact conditionals:
 
+- mass of a broad charm state, and of a pair of pions: `charm_masses.py`.
 - q²: alias table (`alias.py`).
 - cos(theta), and cos(theta_V): the even part is a mixture of sin² and cos² terms (`cosines.py`). An odd part comes
   from choosing the sign with the odds of the density at c and -c.
@@ -27,8 +28,9 @@ from semitau.core.streams import event_key, uniform
 from .. import block as row
 from ..block import LANES
 from . import draw_numbers as draw
-from .alias import draw_position
-from .channel_table import Q2_INTERVALS, VISIBLE_INTERVALS, ChannelTable
+from .alias import draw_position, draw_position_in
+from .channel_table import BROAD_INTERVALS, Q2_INTERVALS, VECTOR, VISIBLE_INTERVALS, ChannelTable
+from .charm_masses import draw_masses
 from .cosines import even_cosine
 from .hadronic_tau import draw_hadrons
 from .momenta import fill_momenta
@@ -48,8 +50,10 @@ def draw_decays(x: Floats, table: ChannelTable, stream: np.uint64, first_event: 
     stream : from `core.streams.stream_key`; first_event : uint64 number of the first event.
     Events depend on (stream, event number) and the table only. Draws 0 to 24 of `truth_draws` are used.
     """
+    light_mass = table.soft_mass if table.chain == VECTOR else table.pion_mass
+    draw_masses(x, table.masses, table.charm_mass, light_mass, stream, first_event)
     _draw_intervals(x, stream, first_event)
-    _look_up(x, table.q2_table, table.visible_table, table.amplitudes)
+    _look_up(x, table.intervals, table.q2_table, table.visible_table, table.amplitudes)
     real = table.amplitudes.shape[1] == 4
     if real:
         _draw_angles(x, table, stream, first_event)
@@ -80,14 +84,17 @@ def _draw_intervals(x: Floats, stream: np.uint64, first_event: np.uint64) -> Non
 
 
 @kernel
-def _look_up(x: Floats, q2_table: Floats, visible_table: Floats, amplitudes: Floats) -> None:
+def _look_up(x: Floats, intervals: int, q2_table: Floats, visible_table: Floats, amplitudes: Floats) -> None:
     """row.NODE, row.VISIBLE_E (as a position in its table) and the amplitudes: gathers, so scalar code."""
     columns = amplitudes.shape[1]
     for i in range(LANES):
         x[row.VISIBLE_E + i] = draw_position(
             visible_table, x[row.SCRATCH_3 + i], x[row.SCRATCH_4 + i], x[row.SCRATCH_5 + i]
         )
-        x[row.NODE + i] = draw_position(q2_table, x[row.SCRATCH_0 + i], x[row.SCRATCH_1 + i], x[row.SCRATCH_2 + i])
+        point = int(x[row.MASS_POINT + i])
+        x[row.NODE + i] = point * (intervals + 2) + draw_position_in(
+            q2_table, point * intervals, intervals, x[row.SCRATCH_0 + i], x[row.SCRATCH_1 + i], x[row.SCRATCH_2 + i]
+        )
     if columns == 4:
         for i in range(LANES):
             k = int(x[row.NODE + i])
@@ -191,9 +198,16 @@ def _lane_angles(
 
 @kernel
 def _fill_q2(x: Floats, table: ChannelTable) -> None:
+    if table.masses.points == 1:
+        for i in range(LANES):
+            t = x[row.NODE + i] * (1.0 / Q2_INTERVALS)
+            x[row.Q2 + i] = table.q2_min + table.q2_span * (t * t * (3.0 - 2.0 * t))
+        return
+    stride = table.intervals + 2.0
     for i in range(LANES):
-        t = x[row.NODE + i] * (1.0 / Q2_INTERVALS)
-        x[row.Q2 + i] = table.q2_min + table.q2_span * (t * t * (3.0 - 2.0 * t))
+        t = (x[row.NODE + i] - stride * x[row.MASS_POINT + i]) * (1.0 / BROAD_INTERVALS)
+        end = table.parent_mass - x[row.CHARM_MASS + i]
+        x[row.Q2 + i] = table.q2_min + (end * end - table.q2_min) * (t * t * (3.0 - 2.0 * t))
 
 
 @kernel

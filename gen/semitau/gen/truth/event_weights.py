@@ -11,6 +11,7 @@ from semitau.core.errors import InputError, Problem
 
 from ..decays.amplitudes import helicity_amplitudes
 from ..decays.decay import Decay
+from ..decays.line_shapes import has_line_shape, mass_density
 from .decay_angles import DecayAngles, decay_angles, invariant_mass
 from .decay_record import decay_of
 from .polarimeter import PARTNERS, polarimeter
@@ -73,7 +74,8 @@ def weights(events: ak.Array, decay: Decay, *, drawn_from: Decay | None = None) 
     )
     power = _analysing_power(events, angles) if has_tau else np.zeros(angles.q2.size)
     photon = invariant_mass(_momentum(events, "soft")) < _PHOTON_BELOW if has_vector else np.zeros(angles.q2.size, bool)
-    old, new = (_densities(model, angles, power, has_vector, photon) for model in (source, decay))
+    masses = invariant_mass(_momentum(events, "Dss")) if has_line_shape(source) else None
+    old, new = (_densities(model, angles, power, has_vector, photon, masses) for model in (source, decay))
     ratio: Floats = new / old
     return ratio
 
@@ -108,9 +110,17 @@ def _analysing_power(events: ak.Array, angles: DecayAngles) -> Floats:
 
 
 def _densities(
-    decay: Decay, angles: DecayAngles, power: Floats, has_vector: bool, photon: npt.NDArray[np.bool_]
+    decay: Decay,
+    angles: DecayAngles,
+    power: Floats,
+    has_vector: bool,
+    photon: npt.NDArray[np.bool_],
+    masses: Floats | None,
 ) -> Floats:
-    amplitudes = np.stack(list(vars(helicity_amplitudes(decay, angles.q2)).values()))
+    """masses : (n,) GeV of the charm, where a line shape gives it; its density is then part of the result."""
+    amplitudes = np.stack(list(vars(helicity_amplitudes(decay, angles.q2, masses)).values()))
+    if masses is not None:
+        amplitudes = amplitudes * np.sqrt(mass_density(decay, masses))
     coherent = np.where(photon, -0.5, 1.0) if has_vector else np.zeros(photon.size)
     incoherent = np.where(photon, 0.5, 0.0) if has_vector else np.ones(photon.size)
     values = np.stack(

@@ -8,13 +8,13 @@ from numpy.typing import NDArray
 Floats = NDArray[np.float64]
 
 
-def kallen(parent_mass: float, charm_mass: float, q2: Floats) -> Floats:
+def kallen(parent_mass: float, charm_mass: float | Floats, q2: Floats) -> Floats:
     """(M2 - m2 - q2)^2 - 4 m2 q2 as a product, so that it goes to zero without cancellation; 0 beyond the end point."""
     product = ((parent_mass - charm_mass) ** 2 - q2) * ((parent_mass + charm_mass) ** 2 - q2)
     return np.maximum(product, 0.0)
 
 
-def recoil(parent_mass: float, charm_mass: float, q2: Floats) -> Floats:
+def recoil(parent_mass: float, charm_mass: float | Floats, q2: Floats) -> Floats:
     """w - 1, with w the product of the four-velocities."""
     return ((parent_mass - charm_mass) ** 2 - q2) / (2.0 * parent_mass * charm_mass)
 

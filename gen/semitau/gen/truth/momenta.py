@@ -15,6 +15,7 @@ from .. import block as row
 from ..block import LANES
 from . import draw_numbers as draw
 from .channel_table import GROUND, ORBITAL_VECTOR, VECTOR, ChannelTable
+from .pion_pair import split_pair
 from .tau_decay import TAU_MASS
 
 Floats = npt.NDArray[np.float64]
@@ -26,13 +27,17 @@ _W_MOMENTUM = row.SCRATCH_9  # |p| of the W* and of the charm hadron in the B fr
 def fill_momenta(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
     """Fill the momentum rows of a block whose angles are drawn; the scratch rows are overwritten."""
     _draw_rotation(x, stream, first_event)
-    _fill_w_momentum(x, table.parent_mass, table.charm_mass)
+    _fill_w_momentum(x, table.parent_mass)
     if table.chain == GROUND:
         _charm_is_d(x, table)
     elif table.chain == ORBITAL_VECTOR:
         _cascade(x, table, stream, first_event)
     else:
         _two_body(x, table)
+    if table.masses.pair == 1:
+        split_pair(x, table.masses.first_pion, table.masses.second_pion, stream, first_event)
+    else:
+        _clear_second_pion(x)
     if table.has_tau:
         if table.hadrons.pions > 0:
             _tau_and_pions(x, table)
@@ -86,24 +91,25 @@ def two_body_momentum(mass: float, one: float, other: float) -> float:
 
 
 @kernel
-def _fill_w_momentum(x: Floats, parent: float, charm: float) -> None:
-    end, other_end = (parent - charm) ** 2, (parent + charm) ** 2
+def _fill_w_momentum(x: Floats, parent: float) -> None:
     for i in range(LANES):
+        charm = x[row.CHARM_MASS + i]
+        end, other_end = (parent - charm) ** 2, (parent + charm) ** 2
         product = (end - x[row.Q2 + i]) * (other_end - x[row.Q2 + i])
         x[_W_MOMENTUM + i] = np.sqrt(max(product, 0.0)) / (2.0 * parent)
 
 
 @inlined
-def _charm_energy(x: Floats, i: int, table: ChannelTable) -> float:
-    p = x[_W_MOMENTUM + i]
-    return np.sqrt(p * p + table.charm_mass * table.charm_mass)  # type: ignore[no-any-return]
+def _charm_energy(x: Floats, i: int) -> float:
+    p, m = x[_W_MOMENTUM + i], x[row.CHARM_MASS + i]
+    return np.sqrt(p * p + m * m)  # type: ignore[no-any-return]
 
 
 @kernel
 def _charm_is_d(x: Floats, table: ChannelTable) -> None:
     for i in range(LANES):
         px, py, pz = _turn(x, i, 0.0, 0.0, -x[_W_MOMENTUM + i])
-        x[row.D_PX + i], x[row.D_PY + i], x[row.D_PZ + i], x[row.D_E + i] = px, py, pz, _charm_energy(x, i, table)
+        x[row.D_PX + i], x[row.D_PY + i], x[row.D_PZ + i], x[row.D_E + i] = px, py, pz, _charm_energy(x, i)
     _clear_soft(x)
     _clear_pion(x)
 
@@ -120,6 +126,12 @@ def _clear_pion(x: Floats) -> None:
         x[row.PION_PX + i] = x[row.PION_PY + i] = x[row.PION_PZ + i] = x[row.PION_E + i] = 0.0
 
 
+@kernel
+def _clear_second_pion(x: Floats) -> None:
+    for i in range(LANES):
+        x[row.PION2_PX + i] = x[row.PION2_PY + i] = x[row.PION2_PZ + i] = x[row.PION2_E + i] = 0.0
+
+
 @inlined
 def _daughter_direction(x: Floats, i: int) -> tuple[float, float, float]:
     """Of the D (or D* of a D**) in the charm rest frame, axes of the unturned event."""
@@ -130,18 +142,18 @@ def _daughter_direction(x: Floats, i: int) -> tuple[float, float, float]:
 
 @kernel
 def _two_body(x: Floats, table: ChannelTable) -> None:
-    """Charm -> D soft, or D** -> D pion."""
-    light = table.soft_mass if table.chain == VECTOR else table.pion_mass
-    momentum = two_body_momentum(table.charm_mass, table.d_mass, light)
-    d_energy, light_energy = np.sqrt(momentum**2 + table.d_mass**2), np.sqrt(momentum**2 + light**2)
+    """Charm -> D soft, or D** -> D pion (or pair of pions)."""
     if table.chain == VECTOR:
         _clear_pion(x)
     else:
         _clear_soft(x)
     for i in range(LANES):
         nx, ny, nz = _daughter_direction(x, i)
-        gamma_beta = x[_W_MOMENTUM + i] / table.charm_mass
-        gamma = _charm_energy(x, i, table) / table.charm_mass
+        mass, light = x[row.CHARM_MASS + i], x[row.LIGHT_MASS + i]
+        momentum = two_body_momentum(mass, table.d_mass, light)
+        d_energy, light_energy = np.sqrt(momentum**2 + table.d_mass**2), np.sqrt(momentum**2 + light**2)
+        gamma_beta = x[_W_MOMENTUM + i] / mass
+        gamma = _charm_energy(x, i) / mass
         px, py, along = momentum * nx, momentum * ny, momentum * nz
         d = _turn(x, i, px, py, gamma * along - gamma_beta * d_energy)
         x[row.D_PX + i], x[row.D_PY + i], x[row.D_PZ + i] = d[0], d[1], d[2]
@@ -171,20 +183,19 @@ def _copy_light_to_pion(x: Floats) -> None:
 
 @kernel
 def _cascade(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
-    """D** -> D* pion along the drawn direction, D* -> D soft isotropic."""
-    outer = two_body_momentum(table.charm_mass, table.vector_mass, table.pion_mass)
-    pion_energy = np.sqrt(outer**2 + table.pion_mass**2)
-    vector_gamma, vector_gamma_beta = (
-        np.sqrt(outer**2 + table.vector_mass**2) / table.vector_mass,
-        outer / table.vector_mass,
-    )
+    """D** -> D* pion (or pair of pions) along the drawn direction, D* -> D soft isotropic."""
     inner = two_body_momentum(table.vector_mass, table.d_mass, table.soft_mass)
     d_energy, soft_energy = np.sqrt(inner**2 + table.d_mass**2), np.sqrt(inner**2 + table.soft_mass**2)
     for i in range(LANES):
         key = event_key(stream, first_event + np.uint64(i))
         nx, ny, nz = _daughter_direction(x, i)
-        gamma_beta = x[_W_MOMENTUM + i] / table.charm_mass
-        gamma = _charm_energy(x, i, table) / table.charm_mass
+        mass, light = x[row.CHARM_MASS + i], x[row.LIGHT_MASS + i]
+        outer = two_body_momentum(mass, table.vector_mass, light)
+        pion_energy = np.sqrt(outer**2 + light**2)
+        vector_gamma = np.sqrt(outer**2 + table.vector_mass**2) / table.vector_mass
+        vector_gamma_beta = outer / table.vector_mass
+        gamma_beta = x[_W_MOMENTUM + i] / mass
+        gamma = _charm_energy(x, i) / mass
         pion = _turn(x, i, -outer * nx, -outer * ny, -gamma * outer * nz - gamma_beta * pion_energy)
         x[row.PION_PX + i], x[row.PION_PY + i], x[row.PION_PZ + i] = pion[0], pion[1], pion[2]
         x[row.PION_E + i] = gamma * pion_energy + gamma_beta * outer * nz
@@ -216,7 +227,7 @@ def from_w_frame(
 ) -> tuple[float, float, float, float]:
     """(px, py, pz, E) in the turned B frame of a vector in the W* rest frame of lane i."""
     root = np.sqrt(x[row.Q2 + i])
-    gamma, gamma_beta = (table.parent_mass - _charm_energy(x, i, table)) / root, x[_W_MOMENTUM + i] / root
+    gamma, gamma_beta = (table.parent_mass - _charm_energy(x, i)) / root, x[_W_MOMENTUM + i] / root
     turned = _turn(x, i, px, py, gamma * pz + gamma_beta * energy)
     return turned[0], turned[1], turned[2], gamma * energy + gamma_beta * pz
 

@@ -31,6 +31,7 @@ _ROWS = {
     "D": row.D_PX,
     "soft": row.SOFT_PX,
     "pion": row.PION_PX,
+    "second_pion": row.PION2_PX,
     "tau": row.TAU_PX,
     "lepton": row.LEPTON_PX,
     "partner_1": row.PARTNER1_PX,
@@ -56,15 +57,17 @@ def simulate(
     frame : "B" for the B at rest, "Upsilon" for the rest frame of an Upsilon(4S) that decays to a pair of B mesons.
 
     Returns an awkward array of n records. Each field is a record named Momentum4D with px, py, pz, E in GeV:
-    B; Dss and pion (D** only: the state and the pion it gives); Dst and soft (the D* and its pion or photon); D; tau;
+    B; Dss and pion (D** and continua only: all their particles, and the pion or eta beside the D or D*); second_pion
+    (None where there is none); Dst and soft (the D* and its pion or photon); D; tau;
     lepton (charged lepton, or the pion of a tau that has its charge); pi0 (rho), pi_second and pi_odd (a1, the pions of
     the same and of the other charge), pi0_first and pi0_second (a1_1prong); nu (of the B decay); nu_tau and nu_lepton
     (of the tau decay).
     Fields that a decay does not have are left out; in a sample that mixes D** -> D* pi and D pi, Dst and soft are None
     where there is no D*. The records carry the decay (see `weights`).
 
-    The D* keeps its spin correlations, also in D* -> D gamma. A D** has its nominal mass (another one: `charm_mass` of
-    the decay) and decays isotropically, the spin of its tau being exact for the summed D** spin.
+    The D* keeps its spin correlations, also in D* -> D gamma. A narrow D** has its nominal mass, a broad one or a
+    continuum that of its line shape (`charm_mass` of the decay fixes it). They decay isotropically, the spin of the tau
+    being exact for the summed D** spin.
 
     InputError tells what is wrong with the arguments.
     Source: shared amplitudes (`amplitudes.py`), exact conditional sampling (`truth.py`).
@@ -127,7 +130,7 @@ def _chosen_chains(decay: Decay, n: int, tau_to: str, charm_to: str | None, fram
 def _charm_decay(chain: Channel) -> str:
     """First decay of the charmed meson with positive charges, e.g. "D0 pi+"; "" for a D."""
     if chain.bachelor != "none":
-        return f"{chain.vector or chain.ground} {'pi0' if chain.bachelor == 'neutral' else 'pi+'}"
+        return f"{chain.vector or chain.ground} {chain.light_mesons}"
     return f"{chain.ground} {_SOFT[chain.soft]}" if chain.vector else ""
 
 
@@ -184,8 +187,12 @@ def _records(decay: Decay, chains: list[Channel], picks: Words, boson: Floats, f
     fields = {"B": _momentum(boson)}
     if decay.orbital is not None:
         # SOFT rows are zero where there is no D*.
-        fields["Dss"] = _momentum(found["D"] + found["soft"] + found["pion"])
+        has_second = np.array([chain.second != "none" for chain in chains])
+        fields["Dss"] = _momentum(found["D"] + found["soft"] + found["pion"] + found["second_pion"])
         fields["pion"] = _momentum(found["pion"])
+        if has_second.any():
+            second = _momentum(found["second_pion"])
+            fields["second_pion"] = second if has_second.all() else ak.mask(second, has_second[picks])
     if has_vector.any():
         fields["Dst"], fields["soft"] = _momentum(found["D"] + found["soft"]), _momentum(found["soft"])
         if not has_vector.all():

@@ -63,8 +63,8 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
     wrong = [
         Problem("a variation must be of the same decay", got=f"{d.parent} -> {d.charm} {d.lepton}")
         for d in decays
-        if (d.parent, d.charm, d.lepton, d.m_charm)
-        != (channel.parent, channel.decay.charm, channel.lepton, channel.decay.m_charm)
+        if (d.parent, d.charm, d.lepton, d.charm_mass)
+        != (channel.parent, channel.decay.charm, channel.lepton, channel.decay.charm_mass)
     ]
     if wrong or not decays:
         raise InputError(*(wrong or [Problem("no variation is given", where=channel.name)]))
