@@ -30,28 +30,29 @@ def read_study(path: Path | str) -> StudyConfig:
     types and units, broken rules within and between tables, files that the study names but that are not there.
     """
     path = Path(path)
-    text = _text(path)
-    data = _tables(text, path)
+    text = text_of(path)
+    data = tables_of(text, path)
     study, found = checked(data, path.parent)
     if study is None:
         lines = TomlLines(text)
-        raise InputError(*_problems(found, data, lines, path))
+        raise InputError(*problems_at(found, data, lines, path))
     return study.read_from(path, text)
 
 
-def _text(path: Path) -> str:
+def text_of(path: Path) -> str:
+    """The text of a TOML file. InputError if it cannot be read, is too large or no UTF-8."""
     try:
         content = path.read_bytes()
     except FileNotFoundError:
         raise InputError(Problem("there is no such file", str(path))) from None
     except IsADirectoryError:
-        raise InputError(Problem("is a folder", str(path), remedy="Name the study file in it.")) from None
+        raise InputError(Problem("is a folder", str(path), remedy="Name the file in it.")) from None
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or str(error)
         raise InputError(Problem("cannot be read", str(path), got=reason)) from None
     if len(content) > MOST_BYTES:
         problem = Problem(
-            "is too large for a study file", str(path), f"{len(content)} bytes", f"up to {MOST_BYTES} bytes"
+            "is too large for such a file", str(path), f"{len(content)} bytes", f"up to {MOST_BYTES} bytes"
         )
         raise InputError(problem)
     try:
@@ -63,7 +64,8 @@ def _text(path: Path) -> str:
         raise InputError(Problem("is no UTF-8 text", f"{path}:{line}", remedy=remedy)) from None
 
 
-def _tables(text: str, path: Path) -> dict[str, Any]:
+def tables_of(text: str, path: Path) -> dict[str, Any]:
+    """Text of a TOML file as nested tables. InputError with line and column if it is no TOML."""
     try:
         return tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
@@ -158,7 +160,8 @@ def _list_of_tables(data: object) -> list[Mapping[str, Any]]:
     return [table for table in data if isinstance(table, Mapping)] if isinstance(data, list) else []
 
 
-def _problems(found: Iterable[Conflict], data: Mapping[str, Any], lines: TomlLines, path: Path) -> list[Problem]:
+def problems_at(found: Iterable[Conflict], data: Mapping[str, Any], lines: TomlLines, path: Path) -> list[Problem]:
+    """What is wrong as problems with file, line and key, in the order of the file."""
     placed = [(lines.line(item.place), item) for item in dict.fromkeys(found)]
     placed.sort(key=lambda pair: pair[0])
     return [
