@@ -220,10 +220,10 @@ def test_empty_file_lacks_everything(tmp_path: Path) -> None:
     ("make", "message"),
     [
         (lambda path: None, "there is no such file"),
-        (lambda path: path.mkdir(), "is a folder. Name the study file in it."),
+        (lambda path: path.mkdir(), "is a folder. Name the file in it."),
         (lambda path: path.write_bytes(b"root\x00\x00\xff\xfe"), ":1: is no UTF-8 text. Save the file as UTF-8 text."),
         (lambda path: path.write_bytes(b"# a\n# \xe9\n"), ":2: is no UTF-8 text. Save the file as UTF-8 text."),
-        (lambda path: path.write_bytes(b"#" * 5_000_000), "is too large for a study file"),
+        (lambda path: path.write_bytes(b"#" * 5_000_000), "is too large"),
         (lambda path: path.write_text("a = " + "[" * 5000), "is no TOML: nested too deeply"),
         (lambda path: path.write_text("a = 2026-02-31"), "is no TOML"),
         (lambda path: path.write_text("a = " + "9" * 5000), "is no TOML"),

@@ -51,9 +51,7 @@ def text_of(path: Path) -> str:
         reason = getattr(error, "strerror", None) or str(error)
         raise InputError(Problem("cannot be read", str(path), got=reason)) from None
     if len(content) > MOST_BYTES:
-        problem = Problem(
-            "is too large for such a file", str(path), f"{len(content)} bytes", f"up to {MOST_BYTES} bytes"
-        )
+        problem = Problem("is too large", str(path), f"{len(content)} bytes", f"up to {MOST_BYTES} bytes")
         raise InputError(problem)
     try:
         # universal newlines, as TOML asks; a byte-order mark, which some editors write, is no harm
