@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
-from semitau.core.templates import Template, TemplateSet
+from semitau.core.quadratic import Reweighting, pairs_of
+from semitau.core.templates import Pair, Template, TemplateSet
 
 from ..study_file.study import StudyConfig
 from .binning import cut_names
@@ -16,7 +17,7 @@ from .chunk_tasks import make_bench
 from .component_parts import Report, component_parts, run_parts
 from .component_sums import ComponentSums
 from .cut_flow import CutFlow, step_names
-from .fit_components import components_and_parameters, template_categories, template_nuisances
+from .fit_components import components_and_parameters, template_categories, template_coefficients, template_nuisances
 from .provenance import provenance
 from .variations import check_efficiencies
 
@@ -28,12 +29,13 @@ NEGLIGIBLE = 1e-6
 @dataclass(frozen=True, eq=False)
 class Build:
     """Templates, the cut flow behind them, generated events, and timing: seconds of "wall" clock and of "kernels"
-    (threads added up)."""
+    (threads added up); effective events of every variation made by weights."""
 
     templates: TemplateSet
     cut_flow: CutFlow
     events: int
     timing: Mapping[str, float]
+    reweightings: tuple[Reweighting, ...] = ()
 
 
 def build_templates(study: StudyConfig, workers: int | None = None, report: Report | None = None) -> Build:
@@ -66,8 +68,11 @@ def build_templates(study: StudyConfig, workers: int | None = None, report: Repo
         nuisances=template_nuisances(study),
         templates=_templates(study, sums),
         provenance=provenance(study),
+        coefficients=template_coefficients(study),
     )
-    return Build(templates, flow, events, {"wall": time.perf_counter() - start, "kernels": seconds})
+    reweightings = tuple(found for name, part in sums.items() for found in part.reweightings(name))
+    timing = {"wall": time.perf_counter() - start, "kernels": seconds}
+    return Build(templates, flow, events, timing, reweightings)
 
 
 def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:
@@ -84,7 +89,8 @@ def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:
 def _templates(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> dict[tuple[str, str], Template]:
     templates = {}
     first = 0
-    for category in study.categories:
+    pairs = pairs_of(study.quadratic.coefficients) if study.quadratic is not None else ()
+    for place, category in enumerate(study.categories):
         size = int(np.prod(category.shape))
         here = slice(first, first + size)
         first += size
@@ -98,8 +104,19 @@ def _templates(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> dict[tu
                     component.variance[here].reshape(category.shape),
                     {v: sides[v, 1].reshape(category.shape) for v, sign in sides if sign == 1 and v in acting},
                     {v: sides[v, -1].reshape(category.shape) for v, sign in sides if sign == -1 and v in acting},
+                    *_quadratic(component, pairs, here, place, category.shape),
                 )
     return templates
+
+
+def _quadratic(
+    component: ComponentSums, pairs: Sequence[Pair], here: slice, place: int, shape: tuple[int, ...]
+) -> tuple[dict[Pair, Floats], Floats | None]:
+    """Quadratic pieces and moments of a component in one category; none where it does not follow coefficients."""
+    if not (pairs and component.follows and component.nominal[here].any()):
+        return {}, None
+    pieces = component.pieces[here].T.reshape(-1, *shape)
+    return {pair: piece for pair, piece in zip(pairs, pieces, strict=True) if piece.any()}, component.moments[place]
 
 
 def _differs(contents: Floats, nominal: Floats) -> bool:

@@ -11,6 +11,7 @@ import numpy as np
 import numpy.typing as npt
 from semitau.core.constants import MASS
 
+from ..decays.operators import Operators
 from ..response.candidates import Scenario, Windows
 from ..response.charm_decay import pair_mass_quantiles
 from ..response.detector import Detector
@@ -20,9 +21,10 @@ from ..study_file.categories import StudyCategory
 from ..study_file.components import Background
 from ..study_file.study import StudyConfig
 from ..truth.any_drawing import table_of
+from ..truth.bilinear_pieces import PieceTable, no_pieces, piece_table
 from ..truth.variation_weights import WIDTH, VariationTable, variation_table
 from .binning import ROW_OF, Axes, Cuts, category_code, make_axes, make_cuts
-from .chunk import FOUND_STEPS, fill_chunk, fill_drawn
+from .chunk import FOUND_STEPS, Sums, fill_chunk, fill_drawn
 from .component_plan import ChannelPlan
 from .variations import Side, scenarios
 
@@ -35,13 +37,16 @@ NOMINAL = Scenario(tag_width=1.0, momentum=1.0)
 
 @dataclass(frozen=True, eq=False)
 class Filled:
-    """What a chunk leaves: see `fill_chunk` for found, flow and histogram; seconds : time of its thread."""
+    """What a chunk leaves. events : generated. seconds : time of its thread."""
 
-    found: Integers
-    flow: Integers
-    histogram: Floats
+    sums: Sums
     events: int
     seconds: float
+
+    @property
+    def histogram(self) -> Floats:
+        """(bins, columns) of `sums`."""
+        return self.sums.histogram
 
 
 Task = Callable[[], Filled]
@@ -53,6 +58,7 @@ class Bench:
 
     categories : of the study. shape : steps of `place`, categories. bins : of all categories together.
     scenarios : reconstructions besides the nominal one. variations : whether columns beyond the nominal one are filled.
+    quadratic : parts of coefficients that the templates of modes with a tau are functions of.
     """
 
     categories: tuple[StudyCategory, ...]
@@ -65,6 +71,23 @@ class Bench:
     axes: Axes
     scenarios: Mapping[Side, Scenario]
     variations: bool
+    quadratic: tuple[str, ...]
+
+    @property
+    def category_of_bin(self) -> Integers:
+        """(bins,) place of the category that each bin belongs to."""
+        return np.repeat(np.arange(len(self.categories)), [int(np.prod(c.shape)) for c in self.categories])
+
+    def sums(self, columns: int, weights: int = 0, pieces: int = 0) -> Sums:
+        """Zeros for what events are added to. columns : of the histogram. weights : of them, those by weights."""
+        return Sums(
+            found=np.zeros(FOUND_STEPS, dtype=np.int64),
+            flow=np.zeros(self.shape, dtype=np.int64),
+            histogram=np.zeros((self.bins, columns)),
+            spread=np.zeros((weights, 2)),
+            pieces=np.zeros((self.bins, pieces)),
+            moments=np.zeros((len(self.categories), pieces, pieces)),
+        )
 
 
 def make_bench(study: StudyConfig, *, variations: bool) -> Bench:
@@ -82,6 +105,7 @@ def make_bench(study: StudyConfig, *, variations: bool) -> Bench:
         axes=make_axes(categories),
         scenarios=scenarios(study) if variations else {},
         variations=variations,
+        quadratic=study.quadratic.coefficients if variations and study.quadratic is not None else (),
     )
 
 
@@ -90,6 +114,13 @@ def channel_columns(plan: ChannelPlan, bench: Bench) -> list[Side]:
     if not bench.variations:
         return []
     return [*plan.variations.decays, *plan.variations.soft, *bench.scenarios]
+
+
+def channel_pieces(plan: ChannelPlan, bench: Bench) -> tuple[PieceTable, Operators] | None:
+    """Table for the bilinear pieces of a channel, if it has a tau and the study asks for them."""
+    if not (bench.quadratic and plan.channel.lepton == "tau"):
+        return None
+    return piece_table(plan.channel, bench.quadratic)
 
 
 def channel_tasks(plan: ChannelPlan, bench: Bench, stream: np.uint64, events: int) -> Iterator[Task]:
@@ -101,17 +132,18 @@ def channel_tasks(plan: ChannelPlan, bench: Bench, stream: np.uint64, events: in
     shifts = np.array([NOMINAL, *bench.scenarios.values()], dtype=np.float64)
     chain = kernel_chain(plan.channel)
     columns = 1 + len(channel_columns(plan, bench))
+    pieces = channel_pieces(plan, bench)
+    taken = no_pieces(weights) if pieces is None else pieces[0]
+    category_of_bin = bench.category_of_bin
 
     def task(first: int, n: int) -> Filled:
         start = time.thread_time()
-        found = np.zeros(FOUND_STEPS, dtype=np.int64)
-        flow = np.zeros(bench.shape, dtype=np.int64)
-        histogram = np.zeros((bench.bins, columns))
+        sums = bench.sums(columns, len(decays) + len(soft), taken.pieces)
         fill_chunk(
-            stream, first, n, table, chain, bench.detector, bench.quantiles, weights, soft, shifts, bench.windows,
-            bench.cuts, bench.axes, found, flow, histogram,
+            stream, first, n, table, chain, bench.detector, bench.quantiles, weights, taken, soft, shifts,
+            bench.windows, bench.cuts, bench.axes, category_of_bin, sums,
         )  # fmt: skip
-        return Filled(found, flow, histogram, n, time.thread_time() - start)
+        return Filled(sums, n, time.thread_time() - start)
 
     return (partial(task, first, n) for first, n in chunks(events))
 
@@ -128,11 +160,11 @@ def background_tasks(
 
     def task(first: int, n: int) -> Filled:
         start = time.thread_time()
-        flow = np.zeros(bench.shape, dtype=np.int64)
-        histogram = np.zeros((bench.bins, 1))
+        sums = bench.sums(1)
+        sums.found[:] = n
         values = sampler.draw(category, stream, first, n)
-        fill_drawn(np.stack([values[name] for name in drawn]), rows, code, cuts, bench.axes, flow, histogram)
-        return Filled(np.full(FOUND_STEPS, n, dtype=np.int64), flow, histogram, n, time.thread_time() - start)
+        fill_drawn(np.stack([values[name] for name in drawn]), rows, code, cuts, bench.axes, sums.flow, sums.histogram)
+        return Filled(sums, n, time.thread_time() - start)
 
     return (partial(task, first, n) for first, n in chunks(events))
 

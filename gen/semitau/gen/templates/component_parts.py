@@ -14,9 +14,8 @@ from semitau.core.streams import stream_key
 from ..shapes.sampler import ShapeSampler
 from ..study_file.components import Background
 from ..study_file.study import StudyConfig
-from .chunk_tasks import Bench, Filled, Task, background_tasks, channel_columns, channel_tasks
+from .chunk_tasks import Bench, Filled, Task, background_tasks, channel_columns, channel_pieces, channel_tasks
 from .component_plan import ChannelPlan, plan_channels
-from .cut_flow import BEFORE_CATEGORIES
 from .variations import Side, background_factors
 
 Floats = npt.NDArray[np.float64]
@@ -31,6 +30,9 @@ class Part:
     expected : decays or background events in the data, before detector and selection. events : how many are generated.
     columns : sides in the histogram after the nominal column. factors : sides that are constant weights by category.
     tasks : makes the chunks of a run of events.
+    weights : how many of the columns, the first ones, are weights of the nominal events.
+    contraction : (pairs, pieces) what the bilinear pieces of the events count in the quadratic ones of the study; None
+        if the part does not follow coefficients.
     """
 
     component: str
@@ -39,6 +41,8 @@ class Part:
     columns: Sequence[Side]
     factors: Mapping[Side, Floats]
     tasks: Callable[[int], Iterator[Task]]
+    weights: int = 0
+    contraction: Floats | None = None
 
     @property
     def weight(self) -> float:
@@ -49,20 +53,23 @@ class Part:
 class PartSums:
     """Chunks of one part added up, in their order."""
 
-    def __init__(self, bench: Bench, columns: int) -> None:
+    def __init__(self, bench: Bench, part: Part) -> None:
         self.events = 0
         self.seconds = 0.0
-        self.found = np.zeros(len(BEFORE_CATEGORIES) - 1, dtype=np.int64)
-        self.flow = np.zeros(bench.shape, dtype=np.int64)
-        self.histogram = np.zeros((bench.bins, columns))
+        pieces = 0 if part.contraction is None else part.contraction.shape[1]
+        self.sums = bench.sums(1 + len(part.columns), part.weights, pieces)
 
     def add(self, filled: Filled) -> None:
         """One more chunk."""
         self.events += filled.events
         self.seconds += filled.seconds
-        self.found += filled.found
-        self.flow += filled.flow
-        self.histogram += filled.histogram
+        for total, part in zip(self.sums, filled.sums, strict=True):
+            np.add(total, part, out=total)
+
+    @property
+    def histogram(self) -> Floats:
+        """(bins, columns) of `sums`."""
+        return self.sums.histogram
 
 
 def component_parts(study: StudyConfig, bench: Bench, *purpose: str | int) -> list[Part]:
@@ -92,7 +99,7 @@ def run_parts(
     tasks = (task for part in parts for task in part.tasks(part.events))
     with closing(engine.run(tasks, workers)) as results:  # type: ignore[type-var]
         for part in parts:
-            sums = PartSums(bench, 1 + len(part.columns))
+            sums = PartSums(bench, part)
             while sums.events < part.events:
                 filled = next(results)
                 sums.add(filled)
@@ -103,6 +110,7 @@ def run_parts(
 
 
 def _channel_part(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Part:
+    pieces = channel_pieces(plan, bench)
     return Part(
         component=plan.component,
         expected=plan.expected,
@@ -110,6 +118,8 @@ def _channel_part(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Part:
         columns=channel_columns(plan, bench),
         factors=plan.variations.factors,
         tasks=lambda events: channel_tasks(plan, bench, stream, events),
+        weights=len(plan.variations.decays) + len(plan.variations.soft) if bench.variations else 0,
+        contraction=None if pieces is None else pieces[1].contraction,
     )
 
 

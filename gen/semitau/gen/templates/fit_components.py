@@ -2,12 +2,13 @@
 
 from __future__ import annotations
 
-from semitau.core.templates import Category, Component, Nuisance, Observable, ScaleParameter
+from semitau.core.templates import Category, Coefficient, Component, Nuisance, Observable, ScaleParameter
 
-from ..study_file.components import Yield
+from ..decays.coefficients import LARGEST, label_of, part_of, quadratic_form, value_of
+from ..study_file.components import Mode, Yield
 from ..study_file.names import OBSERVABLES
 from ..study_file.study import StudyConfig
-from .component_plan import component_name, injected_ratio, split_by_parent
+from .component_plan import component_name, injected_ratio, predicted_ratio, ratio_parents, split_by_parent
 
 _RATIO_LABEL = {"R_D": "R(D)", "R_Dst": "R(D*)"}
 _PARENT_LABEL = {"B+": "B⁺", "B0": "B⁰"}
@@ -34,6 +35,29 @@ def template_nuisances(study: StudyConfig) -> tuple[Nuisance, ...]:
     return tuple(Nuisance(v.name, v.label or v.name, v.budget_group) for v in study.variations)
 
 
+def template_coefficients(study: StudyConfig) -> tuple[Coefficient, ...]:
+    """The real numbers that templates are quadratic functions of."""
+    couplings = study.wilson.couplings
+    return tuple(
+        Coefficient(name, label_of(name), value_of(couplings, name), LARGEST[part_of(name)[0]])
+        for name in (study.quadratic.coefficients if study.quadratic is not None else ())
+    )
+
+
+def _rate(study: StudyConfig, mode: Mode, parent: str) -> tuple[tuple[str, str, float], ...]:
+    """The ratio of a mode as a quadratic form in the coefficients, at the study's couplings the injected one."""
+    if study.quadratic is None:
+        return ()
+    name, parents = str(mode.scales_with), ratio_parents(study, mode, parent)
+    form = quadratic_form(
+        lambda couplings: predicted_ratio(study, name, parents, couplings),
+        study.wilson.couplings,
+        study.quadratic.coefficients,
+    )
+    scale = injected_ratio(study, mode, parent) / predicted_ratio(study, name, parents)
+    return tuple((a, b, piece * scale) for (a, b), piece in form.items())
+
+
 def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...], tuple[ScaleParameter, ...]]:
     """Components in the order of the study file, modes first; parameters: ratios, then yields.
 
@@ -54,7 +78,9 @@ def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...]
                 ratio = mode.scales_with + (_PARENT_SUFFIX[parent] if split else "")
                 ratio_label = _RATIO_LABEL[mode.scales_with] + (f" of {_PARENT_LABEL[parent]}" if split else "")
                 injected = injected_ratio(study, mode, parent)
-                ratios.setdefault(ratio, ScaleParameter(ratio, ratio_label, "ratio", injected))
+                if ratio not in ratios:
+                    rate = _rate(study, mode, parent)
+                    ratios[ratio] = ScaleParameter(ratio, ratio_label, "ratio", injected, None, rate)
                 scales_with.append(ratio)
             followed = study.followed_by(mode)
             if followed is not None and followed.yield_constraint.kind != "fixed":

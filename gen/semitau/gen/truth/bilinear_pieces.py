@@ -1,0 +1,165 @@
+"""What an event's |M|² is made of: its real bilinear pieces in the operators, relative to the |M|² it was drawn from.
+
+With amplitudes M = sum of g_m M_m over at most four operators, |M|² = sum over m, n of g_m* g_n D_mn, where D is a
+Hermitian matrix of the event. Re D_mn and Im D_mn, at most 16 numbers, give its weight for every value of all Wilson
+coefficients. D uses the spin of D* and tau as `spin_algebra.chain_density` does, whose quadratic form it polarises:
+the tau decay is the form W = 1 + odd . sigma on the two lepton helicities.
+"""
+
+from __future__ import annotations
+
+from typing import NamedTuple
+
+import numpy as np
+import numpy.typing as npt
+from semitau.core.compiled import inlined, kernel
+
+from .. import block as row
+from ..decays.chains import Channel
+from ..decays.decay import Decay
+from ..decays.operators import Operators, operators
+from .channel_table import regular_amplitudes
+from .spin_algebra import helicity_states, lepton_terms
+from .variation_weights import VariationTable, _analyse, variation_table
+
+Floats = npt.NDArray[np.float64]
+Integers = npt.NDArray[np.int64]
+
+OPERATORS_AT_MOST = 4
+AMPLITUDES = 8
+_ROOT_HALF = float(np.sqrt(0.5))
+
+
+class PieceTable(NamedTuple):
+    """Amplitudes by operator of one decay chain.
+
+    columns : flat (nodes, operators, 8), J_+, J_-, J_0, J_t, S, T_+, T_-, T_0 times sqrt(q²).
+    operators : 0 if there is nothing to do. imaginary : 1 with imaginary parts. pieces : how many.
+    drawn (pieces,) : what each counts in the density that events were drawn from.
+    chain : what else the kernel needs of the decay chain.
+    """
+
+    columns: Floats
+    operators: int
+    imaginary: int
+    pieces: int
+    drawn: Floats
+    chain: VariationTable
+
+
+def piece_table(channel: Channel, names: tuple[str, ...]) -> tuple[PieceTable, Operators]:
+    """Table for `bilinear_pieces`, and how the named parts of coefficients combine its pieces."""
+    taken = operators(channel.decay, names, _columns)
+    nodes_first = np.ascontiguousarray(np.moveaxis(taken.amplitudes, 0, -2))
+    table = PieceTable(
+        columns=nodes_first.ravel(),
+        operators=taken.number,
+        imaginary=int(taken.imaginary),
+        pieces=len(taken.pieces),
+        drawn=taken.drawn,
+        chain=variation_table(channel, [channel.decay], shape_only=False),
+    )
+    return table, taken
+
+
+def no_pieces(chain: VariationTable) -> PieceTable:
+    """A table that asks for nothing."""
+    return PieceTable(np.zeros(0), 0, 0, 0, np.zeros(0), chain)
+
+
+def _columns(decay: Decay) -> npt.NDArray[np.complex128]:
+    """(..., nodes, 8) amplitudes at the nodes of the tables."""
+    return np.stack(list(vars(regular_amplitudes(decay)).values()), axis=-1)
+
+
+@kernel
+def bilinear_pieces(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
+    """Pieces of the first n lanes of a block over the density drawn from, in the order of `Operators.pieces`.
+
+    x : block as `variation_weights` takes it. out : (>= n, >= pieces).
+    """
+    _analyse(x, table.chain)
+    incoherent, coherent = table.chain.incoherent, table.chain.coherent
+    states = np.zeros((OPERATORS_AT_MOST, 10))
+    for i in range(n):
+        _states(x, i, table, states)
+        px, py, pz = x[row.POLARISATION_X + i], x[row.POLARISATION_Y + i], x[row.POLARISATION_Z + i]
+        place = 0
+        for m in range(table.operators):
+            for k in range(m, table.operators):
+                out[i, place] = _real_part(states[m], states[k], incoherent, coherent, px, py, pz)
+                place += 1
+        if table.imaginary:
+            for m in range(table.operators):
+                for k in range(m + 1, table.operators):
+                    out[i, place] = _imaginary_part(states[m], states[k], incoherent, coherent, px, py, pz)
+                    place += 1
+        density = 0.0
+        for p in range(table.pieces):
+            density += table.drawn[p] * out[i, p]
+        scale = 1.0 / density
+        for p in range(table.pieces):
+            out[i, p] *= scale
+
+
+@inlined
+def _states(x: Floats, i: int, table: PieceTable, states: Floats) -> None:
+    """For each operator K of the three charm helicities and both lepton helicities, real, then the coherent sum M."""
+    k = int(x[row.NODE + i])
+    f = x[row.NODE + i] - k
+    x_lepton = table.chain.lepton_mass / np.sqrt(x[row.Q2 + i])
+    v, cos_chi, sin_chi = x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i]
+    across = _ROOT_HALF * np.sqrt((1.0 - v) * (1.0 + v))
+    real, turned = across * cos_chi, across * sin_chi
+    step = table.operators * AMPLITUDES
+    for o in range(table.operators):
+        a = k * step + o * AMPLITUDES
+        c = table.columns
+        kp_minus, km_minus, k0_minus, kp_plus, km_plus, k0_plus = helicity_states(
+            x[row.COS_THETA + i],
+            *lepton_terms(
+                x_lepton,
+                c[a] + f * (c[a + step] - c[a]),
+                c[a + 1] + f * (c[a + step + 1] - c[a + 1]),
+                c[a + 2] + f * (c[a + step + 2] - c[a + 2]),
+                c[a + 3] + f * (c[a + step + 3] - c[a + 3]),
+                c[a + 4] + f * (c[a + step + 4] - c[a + 4]),
+                c[a + 5] + f * (c[a + step + 5] - c[a + 5]),
+                c[a + 6] + f * (c[a + step + 6] - c[a + 6]),
+                c[a + 7] + f * (c[a + step + 7] - c[a + 7]),
+            ),
+        )
+        s = states[o]
+        s[0], s[1], s[2], s[3], s[4], s[5] = kp_minus, km_minus, k0_minus, kp_plus, km_plus, k0_plus
+        s[6] = real * (kp_minus - km_minus) + v * k0_minus
+        s[7] = turned * (kp_minus + km_minus)
+        s[8] = real * (kp_plus - km_plus) + v * k0_plus
+        s[9] = turned * (kp_plus + km_plus)
+
+
+@inlined
+def _real_part(a: Floats, b: Floats, incoherent: float, coherent: float, px: float, py: float, pz: float) -> float:
+    """Re D of two operators."""
+    minus = a[0] * b[0] + a[1] * b[1] + a[2] * b[2]
+    plus = a[3] * b[3] + a[4] * b[4] + a[5] * b[5]
+    mixed = a[3] * b[0] + a[4] * b[1] + a[5] * b[2] + a[0] * b[3] + a[1] * b[4] + a[2] * b[5]
+    flat = (1.0 - pz) * minus + (1.0 + pz) * plus + px * mixed
+    minus = a[6] * b[6] + a[7] * b[7]
+    plus = a[8] * b[8] + a[9] * b[9]
+    # conj(a_plus) b_minus and conj(a_minus) b_plus
+    up_real, up_imaginary = a[8] * b[6] + a[9] * b[7], a[8] * b[7] - a[9] * b[6]
+    down_real, down_imaginary = a[6] * b[8] + a[7] * b[9], a[6] * b[9] - a[7] * b[8]
+    wave = (1.0 - pz) * minus + (1.0 + pz) * plus + px * (up_real + down_real) + py * (up_imaginary - down_imaginary)
+    return incoherent * flat + coherent * wave  # type: ignore[no-any-return]
+
+
+@inlined
+def _imaginary_part(a: Floats, b: Floats, incoherent: float, coherent: float, px: float, py: float, pz: float) -> float:
+    """Im D of two operators."""
+    mixed = a[0] * b[3] + a[1] * b[4] + a[2] * b[5] - a[3] * b[0] - a[4] * b[1] - a[5] * b[2]
+    minus = a[6] * b[7] - a[7] * b[6]
+    plus = a[8] * b[9] - a[9] * b[8]
+    up_real, up_imaginary = a[8] * b[6] + a[9] * b[7], a[8] * b[7] - a[9] * b[6]
+    down_real, down_imaginary = a[6] * b[8] + a[7] * b[9], a[6] * b[9] - a[7] * b[8]
+    wave = (1.0 - pz) * minus + (1.0 + pz) * plus + px * (up_imaginary + down_imaginary) + py * (down_real - up_real)
+    return incoherent * py * mixed + coherent * wave  # type: ignore[no-any-return]
