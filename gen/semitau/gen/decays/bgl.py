@@ -58,7 +58,7 @@ def vector(parameters: Mapping[str, float], parent_mass: float, charm_mass: floa
     odd = (1.0 + z) ** 2 / np.sqrt(1.0 - z) * spread**-4.0
     phi_g = 16.0 * r**2 * root / np.sqrt(3.0 * CHI_VECTOR) * odd
     phi_F2 = 8.0 * np.sqrt(2.0) * r**2 * root / np.sqrt(CHI_PSEUDOSCALAR) * odd
-    first = parameters["f_0"] * (1.0 - r) / (np.sqrt(2.0) * (1.0 + np.sqrt(r)) ** 2)
+    first = first_longitudinal(parameters)
     axial = _poles(POLES_AXIAL, M, m, z)
     f = _series(parameters, "f", z) / (axial * phi_f)
     g = _series(parameters, "g", z) / (_poles(POLES_VECTOR, M, m, z) * phi_g)
@@ -69,6 +69,12 @@ def vector(parameters: Mapping[str, float], parent_mass: float, charm_mass: floa
     return VectorFormFactors(
         V=isospin * 0.5 * (M + m) * g, A0=isospin * 0.5 * F2, A1=f / (M + m) / isospin, F1=size * F1
     )
+
+
+def first_longitudinal(parameters: Mapping[str, float]) -> float:
+    """F1_0, which follows from F1 = (M - m) f at zero recoil."""
+    r = MASS["D*+"] / MASS["B0"]
+    return float(parameters["f_0"] * (1.0 - r) / (np.sqrt(2.0) * (1.0 + np.sqrt(r)) ** 2))
 
 
 def _scale(parent_mass: float, charm_mass: float) -> float:

@@ -11,17 +11,19 @@ from ..invocation import Invocation, shared_options
 
 @click.command()
 @click.argument("file", type=click.Path(path_type=Path))
+@click.option("--output", type=click.Path(path_type=Path), help="Folder for the picture; without it none is drawn.")
 @shared_options
-def command(call: Invocation, file: Path) -> None:
+def command(call: Invocation, file: Path, output: Path | None) -> None:
     """Rates, ratios, polarisations and asymmetries, without generating.
 
     For every decay of the modes of FILE, with the errors from the covariance of its form factors; |V_cb| and lifetimes
-    are taken as exact. Nothing is drawn: --seed and --workers change nothing.
+    are taken as exact. The relations that hold exactly between form factors are checked. Nothing is drawn at random:
+    --seed and --workers change nothing.
     """
     from semitau.gen.decays.rates_table import rates_table
 
     from ..opening import open_study
-    from ..rates_summary import rates_document, rates_tables
+    from ..rates_summary import drawn_spectra, rates_document, rates_tables
 
     study = open_study(file, call.seed)
     sets = {name: study.form_factor_set(name) for name in ("D", "Dst", "Dss")}
@@ -31,4 +33,8 @@ def command(call: Invocation, file: Path) -> None:
     couplings, tensor = study.wilson.couplings, study.wilson.tensor
     rates = rates_table(charms, parents=parents, form_factors=sets, wilson=couplings, tensor=tensor)
     call.terminal.show(*rates_tables(rates, names, couplings, tensor))
+    if output is not None:
+        caption = "Differential rates in q², with the bands that the form factors leave open."
+        drawn_spectra(rates).save(output, "spectra", "Differential rates", caption)
+        call.terminal.show("", f"Picture: {output / 'spectra.svg'}, {output / 'spectra.png'}")
     call.terminal.result(rates_document(rates, names, couplings, tensor))
