@@ -45,4 +45,5 @@ def outline_tables(outline: StudyOutline, workers: int) -> list[RenderableType]:
         f"Variations: {groups}. {outline.scenarios} of their sides reconstruct the same events anew.",
         f"Data: {outline.data}. Toys: {counted(outline.toys)}. Seed: {outline.seed}. Output: {outline.output}.",
         f"Cost: {cost}.",
+        *(Text(f"Look at this: {warning}", style="yellow") for warning in outline.warnings),
     ]

@@ -12,6 +12,8 @@ from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.component_plan import plan_channels
 from semitau.gen.templates.variations import check_efficiencies, scenarios
 
+from .form_factor_warnings import form_factor_warnings
+
 DECAYS_PER_SECOND = 8e5
 """Generated decays per second and core through templates with about ten variations, on one core of a 2024 server. Each
 further scenario (a variation that reconstructs the same events anew) costs as much again as a fifth of that."""
@@ -59,6 +61,7 @@ class StudyOutline:
     seconds: float
     memory: float
     disk: float
+    warnings: tuple[str, ...]
 
     def document(self) -> dict[str, object]:
         """As plain JSON values."""
@@ -103,6 +106,7 @@ def study_outline(study: StudyConfig, workers: int) -> StudyOutline:
         toys=toys,
         seconds=seconds,
         memory=BYTES_OF_LIBRARIES + workers * BLOCKS_IN_FLIGHT + 16.0 * bins * columns * len(components),
+        warnings=form_factor_warnings(study),
         disk=sets * 8.0 * bins * columns * len(components) + 3 * BYTES_OF_PICTURES * len(categories),
     )
 

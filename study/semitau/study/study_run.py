@@ -23,6 +23,7 @@ from semitau.gen.study_file.study import StudyConfig
 
 from .fit_parts import budget_parts, category_parts, component_parts, fit_part, ratio_parts
 from .fitting import fit_or_fail
+from .form_factor_warnings import form_factor_warnings
 from .opening import open_study
 from .pictures import draw_pictures
 from .projecting import projections
@@ -152,7 +153,10 @@ def _found(
         components=component_parts(made.templates),
         projections=projections(model, fitted, data),
         cut_flow=made.cut_flow,
-        warnings=worth_a_look(fit, ratios, source, made.cut_flow, fitted.certificate.protected_bins),
+        warnings=(
+            *form_factor_warnings(study),
+            *worth_a_look(fit, ratios, source, made.cut_flow, fitted.certificate.protected_bins),
+        ),
         timing=watch.timing(workers),
     )
     write_whole(folder.results, results.text())

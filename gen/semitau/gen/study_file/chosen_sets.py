@@ -29,6 +29,16 @@ def chosen_set(source: FormFactorSource, transition: str, folder: Path) -> FormF
     return _from_file(path, source.parametrisation, transition, stamp)
 
 
+def sound_set(source: FormFactorSource, transition: str, folder: Path | None) -> FormFactorSet | None:
+    """The same, None if something is wrong with it, or if it is a file and there is no folder to look in."""
+    if source.file is not None and folder is None:
+        return None
+    try:
+        return chosen_set(source, transition, folder or Path())
+    except InputError:
+        return None
+
+
 @lru_cache(maxsize=32)
 def _from_file(path: Path, parametrisation: str | None, transition: str, stamp: tuple[int, int]) -> FormFactorSet:
     """stamp : makes a changed file another one."""

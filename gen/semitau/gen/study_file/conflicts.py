@@ -14,7 +14,7 @@ from semitau.core.errors import InputError
 from ..decays.form_factor_set import form_factor_sets
 from .background_conflicts import background_conflicts
 from .categories import written_out
-from .chosen_sets import chosen_set, sets_describing
+from .chosen_sets import chosen_set, sets_describing, sound_set
 from .idle_variations import idle_variations, nuisance_names
 from .machine import FormFactorSource
 from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, RATIOS
@@ -30,7 +30,8 @@ LEAST_CURRENT = 1e-3  # below, decays with a tau have no rate to draw from, or t
 def conflicts(sections: Sections) -> list[Conflict]:
     """Everything that is wrong between the tables."""
     checks = (
-        _names, _modes, _ratios, _categories, background_conflicts, _form_factors, _couplings, idle_variations, _fit,
+        _names, _modes, _ratios, _categories, background_conflicts, _form_factors, _couplings, _tensor_model,
+        idle_variations, _fit,
     )  # fmt: skip
     return [conflict for check in checks for conflict in check(sections)]
 
@@ -162,6 +163,20 @@ def _form_factors(sections: Sections) -> Iterator[Conflict]:
             name = source.name
             what = "is no form-factor set" if name not in form_factor_sets() else "does not describe this decay"
             yield Conflict(place, what, shown(name), ", ".join(known), suggestion(name, known))
+
+
+def _tensor_model(sections: Sections) -> Iterator[Conflict]:
+    """The tensor form factors of a heavy-quark expansion come from sets that are one."""
+    if sections.wilson is None or sections.wilson.tensor != "HQE" or sections.form_factors is None:
+        return
+    used = {FORM_FACTORS_OF[charm] for mode in sections.modes.values() for charm in mode.charm} & {"D", "Dst"}
+    for transition in sorted(used):
+        source = getattr(sections.form_factors, transition)
+        chosen = sound_set(source, transition, sections.folder)
+        if chosen is not None and chosen[transition].parametrisation != "HQE":
+            got = f"{transition} = {shown(str(source))}, a {chosen[transition].parametrisation} set"
+            remedy = f'Choose form_factors.{transition} = "HQE-2021", or another tensor model.'
+            yield Conflict(("wilson", "tensor"), "needs form factors of that expansion", got, remedy=remedy)
 
 
 def _own_set(sections: Sections, source: FormFactorSource, transition: str) -> Iterator[Conflict]:

@@ -3,14 +3,11 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from pathlib import Path
-
-from semitau.core.errors import InputError
 
 from ..decays.form_factor_directions import directions
 from ..decays.form_factor_parameters import NORMALISATIONS
 from ..decays.form_factor_set import FormFactorSet
-from .chosen_sets import chosen_set
+from .chosen_sets import sound_set
 from .components import Mode
 from .names import FORM_FACTORS_OF
 from .rules import shown, suggestion
@@ -79,13 +76,7 @@ def _chosen(sections: Sections, transition: str) -> FormFactorSet | None:
     """The study's set; None if it is not sound, which is told elsewhere."""
     if sections.form_factors is None:
         return None
-    source = getattr(sections.form_factors, transition)
-    if source.file is not None and sections.folder is None:
-        return None
-    try:
-        return chosen_set(source, transition, sections.folder or Path())
-    except InputError:
-        return None
+    return sound_set(getattr(sections.form_factors, transition), transition, sections.folder)
 
 
 def _form_factor(

@@ -55,8 +55,9 @@ class Wilson(Table):
     SL: Scalar = Field(default=0.0, description="left-handed scalar current")
     SR: Scalar = Field(default=0.0, description="right-handed scalar current")
     T: Tensor = Field(default=0.0, description="tensor current")
-    tensor: Literal["LO", "EOM"] = Field(
-        default="LO", description="tensor form factors: heavy-quark limit, or equations of motion"
+    tensor: Literal["LO", "EOM", "HQE"] = Field(
+        default="LO",
+        description="tensor form factors: heavy-quark limit, equations of motion, or those of a heavy-quark expansion",
     )
 
     @property
