@@ -19,7 +19,7 @@ from .rates import differential_rates
 Order = Literal["variance", "effect"]
 
 NODES = 24
-NEGLIGIBLE = 1e-12
+NEGLIGIBLE = 1e-9
 """Share of the effect below which a direction is the normalisation, or rounding."""
 
 
