@@ -11,6 +11,11 @@ from typing import TYPE_CHECKING
 if TYPE_CHECKING:
     from semitau.core.template_file import read_templates as read_templates
 
+    from .combination import Average as Average
+    from .combination import average as average
+    from .compatibility import Prediction as Prediction
+    from .compatibility import Tension as Tension
+    from .compatibility import tension as tension
     from .covering import IntervalCoverage as IntervalCoverage
     from .covering import interval_coverage as interval_coverage
     from .curves import Profile as Profile
@@ -23,6 +28,8 @@ if TYPE_CHECKING:
     from .fit_quality import Quality as Quality
     from .fit_quality import quality as quality
     from .interpolation import interpolate as interpolate
+    from .measurements import Measured as Measured
+    from .measurements import Measurement as Measurement
     from .model import Model as Model
     from .newton import maximise as maximise
     from .neyman import ToyInterval as ToyInterval
@@ -39,19 +46,25 @@ if TYPE_CHECKING:
     from .toys import run_toys as run_toys
 
 _HOME = {
+    "Average": ".combination",
     "Budget": ".decomposition",
     "Corrected": ".poor_templates",
     "Data": ".data",
     "FitResult": ".result",
     "IntervalCoverage": ".covering",
     "Linearity": ".straightness",
+    "Measured": ".measurements",
+    "Measurement": ".measurements",
     "Model": ".model",
     "NuisanceShift": ".nuisances",
+    "Prediction": ".compatibility",
     "Profile": ".curves",
     "Quality": ".fit_quality",
     "Region": ".curves",
+    "Tension": ".compatibility",
     "ToyInterval": ".neyman",
     "ToyResults": ".toys",
+    "average": ".combination",
     "budget": ".decomposition",
     "correct_for_templates": ".poor_templates",
     "held_in_turn": ".nuisances",
@@ -65,23 +78,30 @@ _HOME = {
     "read_templates": "semitau.core.template_file",
     "region": ".curves",
     "run_toys": ".toys",
+    "tension": ".compatibility",
     "toy_interval": ".neyman",
 }
 
 __all__ = [
+    "Average",
     "Budget",
     "Corrected",
     "Data",
     "FitResult",
     "IntervalCoverage",
     "Linearity",
+    "Measured",
+    "Measurement",
     "Model",
     "NuisanceShift",
+    "Prediction",
     "Profile",
     "Quality",
     "Region",
+    "Tension",
     "ToyInterval",
     "ToyResults",
+    "average",
     "budget",
     "correct_for_templates",
     "held_in_turn",
@@ -95,6 +115,7 @@ __all__ = [
     "read_templates",
     "region",
     "run_toys",
+    "tension",
     "toy_interval",
 ]
 
