@@ -26,8 +26,12 @@ OBSERVABLES: dict[str, ObservableName] = {
 Parent = Literal["B+", "B0"]
 Lepton = Literal["e", "mu", "tau"]
 LightLepton = Literal["e", "mu"]
-# Charm families: hadrons without their charge, as in [[mode]]; the charge follows from the parent.
-CharmFamily = Literal["D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430)"]
+# Charm families: hadrons without their charge, as in [[mode]]; the charge follows from the parent. In brackets systems of
+# a D or D* and light mesons without a resonance, whose charge is that of the whole.
+CharmFamily = Literal[
+    "D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430)",
+    "(D pi)", "(D* pi)", "(D pi pi)", "(D* pi pi)", "(D eta)", "(D* eta)",
+]  # fmt: skip
 # Charm hadrons that are reconstructed, as in [[category]].
 CharmHadron = Literal["D0", "D+", "D*0", "D*+"]
 SoftKind = Literal["charged", "neutral", "photon"]
