@@ -20,7 +20,7 @@ from ..decays.decay import Decay
 from ..decays.operators import Operators, operators
 from .channel_table import regular_amplitudes
 from .spin_algebra import helicity_states, lepton_terms
-from .variation_weights import VariationTable, _analyse, variation_table
+from .variation_weights import VariationTable, analyse, variation_table
 
 Floats = npt.NDArray[np.float64]
 Integers = npt.NDArray[np.int64]
@@ -78,7 +78,7 @@ def bilinear_pieces(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
 
     x : block as `variation_weights` takes it. out : (>= n, >= pieces).
     """
-    _analyse(x, table.chain)
+    analyse(x, table.chain)
     incoherent, coherent = table.chain.incoherent, table.chain.coherent
     states = np.zeros((OPERATORS_AT_MOST, 10))
     for i in range(n):

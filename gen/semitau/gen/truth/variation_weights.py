@@ -103,7 +103,7 @@ def variation_weights(x: Floats, table: VariationTable, out: Floats, n: int) -> 
     rows are overwritten.
     out : (>= n, >= variations) float64, C order; out[i, v] is the weight of lane i for variation v.
     """
-    _analyse(x, table)
+    analyse(x, table)
     if table.real:
         _weights_real(x, table, out, n)
     else:
@@ -111,7 +111,7 @@ def variation_weights(x: Floats, table: VariationTable, out: Floats, n: int) -> 
 
 
 @kernel
-def _analyse(x: Floats, table: VariationTable) -> None:
+def analyse(x: Floats, table: VariationTable) -> None:
     """Coefficients of the polarisation in the tau decay, relative to 1: into the polarisation rows."""
     if table.has_tau:
         for i in range(LANES):
