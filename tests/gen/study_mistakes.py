@@ -42,8 +42,8 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         "[selection]",
         "[seletion]\nel = { min = 1 }\n[selection]",
         (
-            "seletion: unknown key (allowed study, experiment, form_factors, wilson, quadratic, mode, background, "
-            'detector, selection, category, variation, fit, toys). Did you mean "selection"?'
+            "seletion: unknown key (allowed study, experiment, form_factors, wilson, quadratic, mode, double_charm, "
+            'background, detector, selection, category, variation, fit, toys). Did you mean "selection"?'
         ),
     ),
     "missing key": (
@@ -576,7 +576,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         'kind = "formfactor"',
         (
             'variation[R0].kind: is no kind (got "formfactor", allowed form_factor, form_factor_direction, '
-            "form_factor_directions, fraction, "
+            "form_factor_directions, fraction, double_charm_share, "
             "soft_pion_efficiency, lepton_identification, misidentification, tag_resolution, momentum_scale). "
             'Did you mean "form_factor"?'
         ),
@@ -701,6 +701,47 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         'name = "R0"',
         'name = "SR"',
         'variation[SR].name: is a name that the fit keeps for itself (got "SR"). Rename it.',
+    ),
+    "two charmed mesons, unknown companion": (
+        "[selection]",
+        '[[double_charm]]\ncomponent = "DD"\nbeside = ["Ds"]\nevents = 10\n[selection]',
+        ('double_charm[DD].beside[1]: is not known here (got "Ds", allowed D_s, D_s*, D K, D* K). Did you mean "D_s"?'),
+        2,
+    ),
+    "two charmed mesons without events": (
+        "[selection]",
+        '[[double_charm]]\ncomponent = "DD"\nbeside = ["D K"]\nleptons = ["tau"]\nevents = 10\n[selection]',
+        (
+            "double_charm[DD]: is a component with no events (got no tau from it). "
+            "A tau comes from D_s alone: add e and mu to leptons, or D_s to beside."
+        ),
+    ),
+    "the same two charmed mesons twice": (
+        "[selection]",
+        (
+            '[[double_charm]]\ncomponent = "DD"\nevents = 10\n[[double_charm]]\ncomponent = "DDK"\nbeside = ["D K"]\n'
+            "events = 10\n[selection]"
+        ),
+        ("double_charm[DDK]: holds a decay that is in DD too (got B+ → D D K with e). Take it out of one of them."),
+        3,
+    ),
+    "two charmed mesons named as a mode": (
+        "[selection]",
+        '[[double_charm]]\ncomponent = "Dss"\nevents = 10\n[selection]',
+        'double_charm[Dss].component: names a component that there is already (got "Dss"). Rename one of them.',
+        1,
+    ),
+    "share of double charm that there is not": (
+        'kind = "form_factor"\nset = "Dst"\nparameter = "R0(1)"',
+        'kind = "double_charm_share"\nsource = "phi"',
+        ('variation[R0].source: acts on nothing: no [[double_charm]] mixes it with others (got "phi")'),
+        1,
+    ),
+    "share of nothing": (
+        'kind = "form_factor"\nset = "Dst"\nparameter = "R0(1)"',
+        'kind = "double_charm_share"',
+        "variation[R0]: does not say what varies (allowed beside or source, one of them)",
+        -2,
     ),
     "no toys": ("[selection]", "[toys]\nnumber = 0\n[selection]", "toys.number: must be above 0 (got 0)", 1),
 }

@@ -33,6 +33,7 @@ def thinned(study: StudyConfig, share: float) -> StudyConfig:
     return study.model_copy(
         update={
             "modes": tuple(mode.model_copy(update=fewer(mode.events)) for mode in study.modes),
+            "double_charms": tuple(item.model_copy(update=fewer(item.events)) for item in study.double_charms),
             "backgrounds": tuple(back.model_copy(update=fewer(back.events)) for back in study.backgrounds),
         }
     )

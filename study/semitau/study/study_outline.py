@@ -7,7 +7,8 @@ from dataclasses import asdict, dataclass
 
 import numpy as np
 from semitau.gen.shapes.sampler import samplers
-from semitau.gen.study_file.components import Yield
+from semitau.gen.study_file.components import Mode, Yield
+from semitau.gen.study_file.double_charm import DoubleCharm
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.component_plan import plan_channels
 from semitau.gen.templates.variations import check_efficiencies, scenarios
@@ -113,6 +114,7 @@ def study_outline(study: StudyConfig, workers: int) -> StudyOutline:
 
 def _mode_outlines(study: StudyConfig) -> tuple[ComponentOutline, ...]:
     plans = plan_channels(study)
+    generated: tuple[Mode | DoubleCharm, ...] = (*study.modes, *study.double_charms)
     return tuple(
         ComponentOutline(
             name=mode.name,
@@ -121,9 +123,9 @@ def _mode_outlines(study: StudyConfig) -> tuple[ComponentOutline, ...]:
             generated=sum(plan.events for plan in mine),
             expected=sum(plan.expected for plan in mine),
             chains=len(mine),
-            yield_="ratio" if mode.scales_with else _movement(mode.yield_constraint),
+            yield_="ratio" if isinstance(mode, Mode) and mode.scales_with else _movement(mode.yield_constraint),
         )
-        for mode in study.modes
+        for mode in generated
         for mine in [[plan for plan in plans if plan.mode == mode.name]]
     )
 

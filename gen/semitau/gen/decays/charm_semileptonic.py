@@ -161,10 +161,13 @@ def q2_of_position(decay: CharmDecay, t: Floats) -> Floats:
     return low + (high - low) * t * t * (3.0 - 2.0 * t)
 
 
+_NODES = np.polynomial.legendre.leggauss(40)
+
+
 @lru_cache(maxsize=64)
 def width(decay: CharmDecay) -> float:
     """Integral of `q2_density` (GeV² times the square of the form factor's unit), to better than 1e-6 of itself."""
-    nodes, weights = np.polynomial.legendre.leggauss(120)
+    nodes, weights = _NODES
     t = 0.5 * (nodes + 1.0)
     low, high = decay.q2_range
     return float(0.5 * weights @ (q2_density(decay, q2_of_position(decay, t)) * (high - low) * 6.0 * t * (1.0 - t)))

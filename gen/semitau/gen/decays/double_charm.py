@@ -14,7 +14,7 @@ from semitau.core.charm_fractions import STRANGE_VECTOR_PHOTON, TO_LEPTONS, TO_T
 from semitau.core.constants import BRANCHING_FRACTION, MASS
 from semitau.core.errors import InputError, Problem
 
-from .chains import SOFT_MASS, VECTOR_DECAYS
+from .chains import SOFT_MASS, VECTOR_DECAYS, Channel
 from .charm_semileptonic import muon_over_electron
 from .decay import DEFAULT_SETS, LEPTONS, PARENTS, Decay, charm_name
 from .form_factor_set import FormFactorSet
@@ -68,7 +68,13 @@ class DoubleCharmChain:
     @property
     def beside(self) -> str:
         """The class of the B decay: "D_s", "D_s*", "D K" or "D* K"."""
-        return class_of((self.partner, self.kaon) if self.kaon else (self.partner,))
+        return class_of(self.entry[2:])
+
+    @property
+    def entry(self) -> tuple[str, ...]:
+        """Where the branching fraction of the B decay stands in TO_TWO_CHARMED: parent, then the key of its table."""
+        beside = (self.partner, self.kaon) if self.kaon else (self.partner,)
+        return (self.parent, self.family, *beside)
 
     @property
     def source(self) -> str:
@@ -135,6 +141,10 @@ class DoubleCharmChain:
             text += f", {self.partner} -> {self.meson} {self.beside_soft}"
         text += f", {self.meson} -> " + (f"{self.hadron} " if self.hadron else "") + self.lepton
         return text + (f", tau -> {self.tau_to}" if self.tau_to else "")
+
+
+AnyChain = Channel | DoubleCharmChain
+"""A decay chain of either kind of component."""
 
 
 def class_of(beside: tuple[str, ...]) -> str:

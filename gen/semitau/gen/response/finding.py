@@ -36,7 +36,7 @@ _OTHER_CHANCE = row.SCRATCH_9
 
 @kernel
 def find(x: Floats, keys: Keys, chain: Chain, detector: Detector, quantiles: Floats) -> None:
-    """From the truth rows to the laboratory: fill BOOST_*, TRACK*, LAB_LEPTON_*, FLAVOUR, OTHERS_* and the rows named above.
+    """From the truth rows to the laboratory: fill BOOST_*, TRACK*, LAB_LEPTON_*, FLAVOUR, and the rows named above.
 
     quantiles : of the pair mass in D+ -> K pi pi; unused for a D0.
     """

@@ -5,8 +5,7 @@ from __future__ import annotations
 import numpy as np
 from semitau.core.constants import MASS
 
-from ..decays.chains import Channel
-from ..decays.double_charm import DoubleCharmChain
+from ..decays.double_charm import AnyChain, DoubleCharmChain
 from ..study_file.detector import Curve
 from ..study_file.study import StudyConfig
 from . import detector as kernel
@@ -75,7 +74,7 @@ def kernel_detector(study: StudyConfig) -> kernel.Detector:
     )
 
 
-def kernel_chain(channel: Channel | DoubleCharmChain) -> kernel.Chain:
+def kernel_chain(channel: AnyChain) -> kernel.Chain:
     """What the response needs to know of a decay chain."""
     beside_soft, kaon, hadron = _others(channel)
     return kernel.Chain(
@@ -95,7 +94,7 @@ def kernel_chain(channel: Channel | DoubleCharmChain) -> kernel.Chain:
     )
 
 
-def _others(channel: Channel | DoubleCharmChain) -> tuple[int, int, int]:
+def _others(channel: AnyChain) -> tuple[int, int, int]:
     """Species of what double charm has beside charmed meson and lepton."""
     if isinstance(channel, DoubleCharmChain):
         return species(_BESIDE_SOFT[channel.beside_soft]), species(channel.kaon), species(channel.hadron)

@@ -15,6 +15,7 @@ from ..decays.form_factor_set import form_factor_sets
 from .background_conflicts import background_conflicts
 from .categories import written_out
 from .chosen_sets import chosen_set, sets_describing, sound_set
+from .double_charm_conflicts import double_charm_conflicts
 from .idle_variations import idle_variations, nuisance_names
 from .machine import FormFactorSource
 from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, RATIOS
@@ -30,8 +31,8 @@ LEAST_CURRENT = 1e-3  # below, decays with a tau have no rate to draw from, or t
 def conflicts(sections: Sections) -> list[Conflict]:
     """Everything that is wrong between the tables."""
     checks = (
-        _names, _modes, _ratios, _categories, background_conflicts, _form_factors, _couplings, _tensor_model,
-        idle_variations, _fit,
+        _names, _modes, _ratios, _categories, double_charm_conflicts, background_conflicts, _form_factors, _couplings,
+        _tensor_model, idle_variations, _fit,
     )  # fmt: skip
     return [conflict for check in checks for conflict in check(sections)]
 
@@ -40,6 +41,7 @@ def _names(sections: Sections) -> Iterator[Conflict]:
     """Each name once; nothing that a template file needs for itself."""
     named: list[tuple[Place, str, str]] = []
     named += [(("mode", i, "component"), mode.name, "component") for i, mode in sections.modes.items()]
+    named += [(("double_charm", i, "component"), item.name, "component") for i, item in sections.double_charms.items()]
     named += [(("background", i, "component"), item.name, "component") for i, item in sections.backgrounds.items()]
     named += [
         (("variation", i, "name"), name, "variation")

@@ -15,7 +15,7 @@ from semitau.core.errors import InputError, Problem
 from .conflicts import conflicts
 from .faults import conflict
 from .places import key_of
-from .sections import SECTIONS, Conflict, Sections
+from .sections import COMPONENTS, SECTIONS, Conflict, Sections
 from .study import CONFLICTS, StudyConfig
 from .toml_lines import TomlLines
 from .wilson import Quadratic
@@ -129,7 +129,7 @@ def _sound_sections(data: Mapping[str, Any], folder: Path) -> Sections:
                 sound[key][i] = element[0]
         if isinstance(tables, list) and len(sound[key]) == len(tables):
             whole.add(key)
-    named = [table.get("component") for key in ("mode", "background") for table in _list_of_tables(data.get(key))]
+    named = [table.get("component") for key in COMPONENTS for table in _list_of_tables(data.get(key))]
     single = {
         name: _sound(TypeAdapter(StudyConfig.model_fields[name].rebuild_annotation()), data.get(name, {}))
         for name in ("selection", "detector", "form_factors", "fit", "wilson")
@@ -137,6 +137,7 @@ def _sound_sections(data: Mapping[str, Any], folder: Path) -> Sections:
     single["quadratic"] = _sound(TypeAdapter(Quadratic), data["quadratic"]) if "quadratic" in data else None
     return Sections(
         modes=sound["mode"],
+        double_charms=sound["double_charm"],
         backgrounds=sound["background"],
         category_tables=sound["category"],
         variations=sound["variation"],

@@ -21,6 +21,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[wilson]": ("Wilson",),
     "[quadratic]": ("Quadratic",),
     "[[mode]]": ("Mode",),
+    "[[double_charm]]": ("DoubleCharm",),
     "[[background]]": ("Background",),
     "Laws of a background": (
         "Exponential",
@@ -50,6 +51,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
         "FormFactorDirection",
         "FormFactorDirections",
         "ComponentFraction",
+        "DoubleCharmShare",
         "SoftPionEfficiency",
         "LeptonIdentificationEfficiency",
         "Misidentification",

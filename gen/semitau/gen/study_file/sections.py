@@ -10,6 +10,7 @@ from typing import NamedTuple
 from .categories import CategoryTable, Cut, StudyCategory, written_out
 from .components import Background, Mode
 from .detector import Detector
+from .double_charm import DoubleCharm
 from .fit import FitSection
 from .machine import FormFactors
 from .rules import shown
@@ -17,7 +18,8 @@ from .variations import Variation
 from .wilson import Quadratic, Wilson
 
 Place = tuple[str | int, ...]
-SECTIONS = ("mode", "background", "category", "variation")
+COMPONENTS = ("mode", "double_charm", "background")
+SECTIONS = (*COMPONENTS, "category", "variation")
 
 
 class Conflict(NamedTuple):
@@ -40,6 +42,7 @@ class Sections:
     """
 
     modes: Mapping[int, Mode]
+    double_charms: Mapping[int, DoubleCharm]
     backgrounds: Mapping[int, Background]
     category_tables: Mapping[int, CategoryTable]
     variations: Mapping[int, Variation]

@@ -21,6 +21,7 @@ from .chosen_sets import chosen_set
 from .components import Background, Mode
 from .conflicts import conflicts
 from .detector import Detector
+from .double_charm import DoubleCharm
 from .fit import FitSection, Toys
 from .machine import Experiment, FormFactors, StudySection
 from .names import OBSERVABLES
@@ -42,6 +43,7 @@ class StudyConfig(Table):
     wilson: Wilson = Wilson()
     quadratic: Quadratic | None = Field(default=None, description="templates as functions of [wilson]")
     modes: tuple[Mode, ...] = Field(alias="mode", min_length=1)
+    double_charms: tuple[DoubleCharm, ...] = Field(default=(), alias="double_charm")
     backgrounds: tuple[Background, ...] = Field(default=(), alias="background")
     detector: Detector = Detector()
     selection: Cuts = Field(default={}, description="cuts by observable; delta_m acts on D* categories only")
@@ -65,6 +67,7 @@ class StudyConfig(Table):
         """The study as study_conflicts looks at it."""
         return Sections(
             modes=dict(enumerate(self.modes)),
+            double_charms=dict(enumerate(self.double_charms)),
             backgrounds=dict(enumerate(self.backgrounds)),
             category_tables=dict(enumerate(self.category_tables)),
             variations=dict(enumerate(self.variation_tables)),
@@ -75,7 +78,7 @@ class StudyConfig(Table):
             quadratic=self.quadratic,
             fit=self.fit,
             whole=frozenset(SECTIONS),
-            components=frozenset((*(mode.name for mode in self.modes), *(item.name for item in self.backgrounds))),
+            components=frozenset(item.name for item in self.components),
             folder=folder,
         )
 
@@ -122,10 +125,14 @@ class StudyConfig(Table):
         """The category of that name; KeyError if there is none."""
         return {category.name: category for category in self.categories}[name]
 
-    def component(self, name: str) -> Mode | Background:
+    def component(self, name: str) -> Mode | DoubleCharm | Background:
         """The component of that name; KeyError if there is none."""
-        components: dict[str, Mode | Background] = {mode.name: mode for mode in self.modes}
-        return (components | {background.name: background for background in self.backgrounds})[name]
+        return {component.name: component for component in self.components}[name]
+
+    @property
+    def components(self) -> tuple[Mode | DoubleCharm | Background, ...]:
+        """All components: modes, double charm, backgrounds, each in the file's order."""
+        return (*self.modes, *self.double_charms, *self.backgrounds)
 
     def followed_by(self, mode: Mode) -> Mode | None:
         """The mode whose yield scales `mode`: what it `follows`, or the light mode of the same charm for a ratio."""

@@ -7,10 +7,11 @@ from __future__ import annotations
 
 from typing import Annotated, ClassVar, Literal
 
-from pydantic import Field
+from pydantic import Field, model_validator
 
+from .double_charm import Beside, Source
 from .names import CharmFamily, LightLepton, SoftKind
-from .rules import Count, Identifier, Positive, Table, Text
+from .rules import Count, Identifier, Positive, Table, Text, broken
 
 FormFactorGroup = Literal["D", "Dst", "Dss"]
 _Relative = Annotated[Positive, Field(lt=1)]
@@ -87,6 +88,30 @@ class ComponentFraction(_Named):
     relative: _Relative = Field(description="one standard deviation")
 
 
+class DoubleCharmShare(_Named):
+    """The share of one part of the [[double_charm]] components: a class of B decays, or a source of leptons.
+
+    The total of each component stays.
+    """
+
+    default_group: ClassVar[str] = "double charm"
+
+    kind: Literal["double_charm_share"]
+    beside: Beside | None = Field(default=None, description="class of B decays, as in [[double_charm]]")
+    source: Source | None = Field(
+        default=None, description="D_s → τν or μν, or the hadron beside lepton and neutrino; instead of beside"
+    )
+    relative: _Relative | None = Field(
+        default=None, description="one standard deviation; that of the branching fractions if left out"
+    )
+
+    @model_validator(mode="after")
+    def _one_part(self) -> DoubleCharmShare:
+        if (self.beside is None) == (self.source is None):
+            raise broken("does not say what varies", "beside or source, one of them", got="")
+        return self
+
+
 class SoftPionEfficiency(_Named):
     """Efficiency of the soft pion or photon of a D*."""
 
@@ -139,6 +164,7 @@ SingleVariation = (
     FormFactor
     | FormFactorDirection
     | ComponentFraction
+    | DoubleCharmShare
     | SoftPionEfficiency
     | LeptonIdentificationEfficiency
     | Misidentification
@@ -152,6 +178,7 @@ Variation = Annotated[
     | FormFactorDirection
     | FormFactorDirections
     | ComponentFraction
+    | DoubleCharmShare
     | SoftPionEfficiency
     | LeptonIdentificationEfficiency
     | Misidentification

@@ -11,6 +11,9 @@ import numpy as np
 import numpy.typing as npt
 from semitau.core.constants import MASS
 
+from ..decays.chains import Channel
+from ..decays.decay import Decay
+from ..decays.double_charm import AnyChain
 from ..decays.operators import Operators
 from ..response.candidates import Scenario, Windows
 from ..response.charm_decay import pair_mass_quantiles
@@ -118,7 +121,7 @@ def channel_columns(plan: ChannelPlan, bench: Bench) -> list[Side]:
 
 def channel_pieces(plan: ChannelPlan, bench: Bench) -> tuple[PieceTable, Operators] | None:
     """Table for the bilinear pieces of a channel, if it has a tau and the study asks for them."""
-    if not (bench.quadratic and plan.channel.lepton == "tau"):
+    if not (bench.quadratic and isinstance(plan.channel, Channel) and plan.channel.lepton == "tau"):
         return None
     return piece_table(plan.channel, bench.quadratic)
 
@@ -127,7 +130,7 @@ def channel_tasks(plan: ChannelPlan, bench: Bench, stream: np.uint64, events: in
     """Chunks of one channel, in order. stream : random stream of the channel; events : decays to generate."""
     table = table_of(plan.channel)
     decays = list(plan.variations.decays.values()) if bench.variations else []
-    weights = variation_table(plan.channel, decays, shape_only=True) if decays else _no_weights()
+    weights = _weights(plan.channel, decays)
     soft = np.array(list(plan.variations.soft.values()) if bench.variations else [], dtype=np.float64)
     shifts = np.array([NOMINAL, *bench.scenarios.values()], dtype=np.float64)
     chain = kernel_chain(plan.channel)
@@ -173,6 +176,12 @@ def chunks(events: int) -> Iterator[tuple[int, int]]:
     """First event and number of events of each chunk."""
     for first in range(0, events, CHUNK_EVENTS):
         yield first, min(CHUNK_EVENTS, events - first)
+
+
+def _weights(channel: AnyChain, decays: list[Decay]) -> VariationTable:
+    if decays and isinstance(channel, Channel):
+        return variation_table(channel, decays, shape_only=True)
+    return _no_weights()
 
 
 def _no_weights() -> VariationTable:

@@ -1,4 +1,4 @@
-"""From the [[mode]] tables to channels with their expected and generated numbers of decays."""
+"""From the [[mode]] and [[double_charm]] tables to channels with their expected and generated numbers of decays."""
 
 from __future__ import annotations
 
@@ -10,9 +10,12 @@ from semitau.core.errors import InputError, Problem
 
 from ..decays.chains import Channel, channels, semileptonic_branching_fraction
 from ..decays.decay import Decay, WilsonCoefficients, charm_name
+from ..decays.double_charm import AnyChain, double_charm_chains
 from ..study_file.components import Mode
+from ..study_file.double_charm import DoubleCharm
 from ..study_file.names import CHARM_OF_RATIO, FORM_FACTORS_OF
 from ..study_file.study import StudyConfig
+from .double_charm_variations import double_charm_variations
 from .variations import ChannelVariations, channel_variations
 
 LEAST_EVENTS = 256
@@ -30,7 +33,7 @@ class ChannelPlan:
 
     component: str
     mode: str
-    channel: Channel
+    channel: AnyChain
     expected: float
     events: int
     variations: ChannelVariations
@@ -54,11 +57,13 @@ def component_name(study: StudyConfig, mode: Mode, parent: str) -> str:
 
 
 def plan_channels(study: StudyConfig) -> tuple[ChannelPlan, ...]:
-    """All chains of all modes, in the order of the study file; those that can never be seen are left out.
+    """All chains of all modes, then of double charm, in the order of the study file; those that can never be seen are
+    left out.
 
-    Raises InputError for a mode of which nothing is expected.
+    Raises InputError for a component of which nothing is expected.
     """
-    return tuple(plan for mode in study.modes for plan in _plan_mode(study, mode))
+    modes = [plan for mode in study.modes for plan in _plan_mode(study, mode)]
+    return (*modes, *(plan for item in study.double_charms for plan in _plan_double_charm(study, item)))
 
 
 def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
@@ -69,14 +74,7 @@ def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     )  # fmt: skip
     expected = np.array([expected_decays(study, chain) for chain in chains])
     expected *= np.array([injected_factor(study, mode, chain.parent) for chain in chains])
-    if not expected.sum() > 0.0:
-        raise InputError(
-            Problem(
-                "a component with no events",
-                where=f"mode {mode.name}",
-                remedy="Raise the tag efficiency, the charm efficiency or b_pairs, or remove the mode.",
-            )
-        )
+    _check_expected(expected, f"mode {mode.name}")
     events = shared_out(mode.events, expected)
     # Shares of the whole component: fraction variations keep its total.
     names = [component_name(study, mode, chain.parent) for chain in chains]
@@ -93,6 +91,27 @@ def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     return plans
 
 
+def _plan_double_charm(study: StudyConfig, item: DoubleCharm) -> list[ChannelPlan]:
+    chains = double_charm_chains(
+        item.parents, item.charm, item.beside, item.leptons, form_factors=study.form_factor_set("Dst")
+    )
+    expected = np.array([expected_decays(study, chain) for chain in chains])
+    _check_expected(expected, f"double_charm {item.name}")
+    whole = [(chain, float(n)) for chain, n in zip(chains, expected, strict=True)]
+    events, variations = shared_out(item.events, expected), double_charm_variations(study, whole)
+    return [
+        ChannelPlan(item.name, item.name, chain, n_expected, n, acting)
+        for (chain, n_expected), n, acting in zip(whole, events, variations, strict=True)
+        if n_expected > 0.0
+    ]
+
+
+def _check_expected(expected: np.ndarray, where: str) -> None:
+    if not expected.sum() > 0.0:
+        remedy = "Raise the tag efficiency, the charm efficiency or b_pairs, or remove it."
+        raise InputError(Problem("a component with no events", where=where, remedy=remedy))
+
+
 def family_shares(chains: Sequence[tuple[Channel, float]]) -> dict[str, float]:
     """Share of each charm family in a list of chains and their expected decays."""
     total = sum(expected for _, expected in chains)
@@ -102,7 +121,7 @@ def family_shares(chains: Sequence[tuple[Channel, float]]) -> dict[str, float]:
     return shares
 
 
-def expected_decays(study: StudyConfig, channel: Channel) -> float:
+def expected_decays(study: StudyConfig, channel: AnyChain) -> float:
     """Decays of a chain beside a tag, whose D goes to a channel that is looked for.
 
     2 * pairs * share of the parent * branching fraction * tag efficiency * charm efficiency: either B of a pair can be

@@ -79,7 +79,7 @@ def generate(
             raise InputError(
                 Problem(f"no such {what} of event files", what, got=repr(given), wanted=", ".join(allowed))
             )
-    names = [mode.name for mode in study.modes] + [background.name for background in study.backgrounds]
+    names = [item.name for item in study.components]
     plans = plan_channels(study)
     total = sum(plan.events for plan in plans) + sum(sum(b.events_in.values()) for b in study.backgrounds)
     entries = dict.fromkeys(TREES, 0)

@@ -59,10 +59,10 @@ def _rate(study: StudyConfig, mode: Mode, parent: str) -> tuple[tuple[str, str, 
 
 
 def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...], tuple[ScaleParameter, ...]]:
-    """Components in the order of the study file, modes first; parameters: ratios, then yields.
+    """Components in the order of the study file: modes, double charm, backgrounds; parameters: ratios, then yields.
 
-    A mode with a ratio scales with the ratio times the yield of its denominator. Other modes and backgrounds have a
-    yield of their own unless it is fixed; a mode that follows another scales with both.
+    A mode with a ratio scales with the ratio times the yield of its denominator. Other components have a yield of
+    their own unless it is fixed; a mode that follows another scales with both.
     """
     components: list[Component] = []
     ratios: dict[str, ScaleParameter] = {}
@@ -90,13 +90,15 @@ def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...]
                 yields[own.name] = own
                 scales_with.append(own.name)
             components.append(Component(name, part_label, mode.role, tuple(scales_with)))
-    for background in study.backgrounds:
-        label = background.label or background.name
-        own = _yield_parameter(background.name, label, background.yield_constraint)
+    for item in study.components:
+        if isinstance(item, Mode):
+            continue
+        label = item.label or item.name
+        own = _yield_parameter(item.name, label, item.yield_constraint)
         if own is not None:
             yields[own.name] = own
         scales = (own.name,) if own is not None else ()
-        components.append(Component(background.name, label, background.role, scales))
+        components.append(Component(item.name, label, item.role, scales))
     return tuple(components), (*ratios.values(), *yields.values())
 
 

@@ -16,6 +16,7 @@ from semitau.core.errors import InputError, Problem
 
 from ..decays.chains import Channel
 from ..decays.decay import Decay
+from ..decays.double_charm import AnyChain
 from ..decays.form_factor_directions import moved
 from ..decays.form_factor_set import FormFactorSet
 from ..response.candidates import Scenario
@@ -29,6 +30,7 @@ from ..study_file.variations import (
     LeptonIdentificationEfficiency,
     Misidentification,
     MomentumScale,
+    SingleVariation,
     SoftPionEfficiency,
     TagResolution,
 )
@@ -60,7 +62,7 @@ def scenarios(study: StudyConfig) -> dict[Side, Scenario]:
     found: dict[Side, Scenario] = {}
     for variation in study.variations:
         for sign in SIGNS:
-            factor = 1.0 + sign * getattr(variation, "relative", 0.0)
+            factor = 1.0 + sign * (getattr(variation, "relative", None) or 0.0)
             if isinstance(variation, TagResolution):
                 found[variation.name, sign] = Scenario(tag_width=factor, momentum=1.0)
             elif isinstance(variation, MomentumScale):
@@ -76,28 +78,39 @@ def channel_variations(
     shares : of the component's expected decays, by charm family; they sum to 1. leptons : of the study's categories.
     """
     decays: dict[Side, Decay] = {}
-    soft: dict[Side, float] = {}
-    factors: dict[Side, Floats] = {}
-    is_lepton = {name: np.array([lepton == name for lepton in leptons]) for name in ("e", "mu")}
+    soft, factors = common_variations(study.variations, channel, leptons)
     for variation in study.variations:
         for sign in SIGNS:
             side = variation.name, sign
-            change = 1.0 + sign * getattr(variation, "relative", 0.0)
+            change = 1.0 + sign * (getattr(variation, "relative", None) or 0.0)
             if isinstance(variation, FormFactor | FormFactorDirection):
                 if FORM_FACTORS_OF[channel.family] in moved_transitions(study, variation.set):
                     decays[side] = replace(channel.decay, form_factors=varied_set(study, variation, sign))
-            elif isinstance(variation, SoftPionEfficiency):
-                if _SOFT_KIND[variation.particle] == channel.soft:
-                    soft[side] = change
             elif isinstance(variation, ComponentFraction):
                 share = shares.get(variation.charm, 0.0)
                 acts = variation.components is None or mode in variation.components
                 if acts and 0.0 < share < 1.0:
                     rest = (1.0 - share * change) / (1.0 - share)
                     factors[side] = np.full(len(leptons), change if channel.family == variation.charm else rest)
-            elif isinstance(variation, LeptonIdentificationEfficiency) and channel.seen_lepton == variation.lepton:
-                factors[side] = np.where(is_lepton[variation.lepton], change, 1.0)
     return ChannelVariations(decays, soft, factors)
+
+
+def common_variations(
+    variations: Sequence[SingleVariation], channel: AnyChain, leptons: Sequence[str]
+) -> tuple[dict[Side, float], dict[Side, Floats]]:
+    """`soft` and `factors` of what acts on any decay chain: soft-particle and identification efficiencies."""
+    soft: dict[Side, float] = {}
+    factors: dict[Side, Floats] = {}
+    for variation in variations:
+        for sign in SIGNS:
+            change = 1.0 + sign * (getattr(variation, "relative", None) or 0.0)
+            if isinstance(variation, SoftPionEfficiency):
+                if _SOFT_KIND[variation.particle] == channel.soft:
+                    soft[variation.name, sign] = change
+            elif isinstance(variation, LeptonIdentificationEfficiency) and channel.seen_lepton == variation.lepton:
+                is_lepton = np.array([lepton == variation.lepton for lepton in leptons])
+                factors[variation.name, sign] = np.where(is_lepton, change, 1.0)
+    return soft, factors
 
 
 def background_factors(study: StudyConfig, misidentified: bool) -> dict[Side, Floats]:

@@ -9,15 +9,13 @@ import numpy as np
 import numpy.typing as npt
 from numba.extending import overload
 
-from ..decays.chains import Channel
-from ..decays.double_charm import DoubleCharmChain
+from ..decays.double_charm import AnyChain, DoubleCharmChain
 from .channel_table import ChannelTable, channel_table
 from .double_charm_drawing import draw_double_charm
 from .double_charm_table import DoubleCharmTable, double_charm_table
 from .drawing import draw_decays
 
 Floats = npt.NDArray[np.float64]
-AnyChain = Channel | DoubleCharmChain
 AnyTable = ChannelTable | DoubleCharmTable
 
 
