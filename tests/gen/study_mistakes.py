@@ -8,9 +8,7 @@ from pathlib import Path
 ROOT = Path(__file__).parents[2]
 
 UNITS_OF_ENERGY = "a number in GeV, or a string with one of GeV, MeV, keV, eV, TeV"
-FAMILIES = (
-    "D, D*, D1(2420), D2*(2460), D0*(2300), D1'(2430), (D pi), (D* pi), (D pi pi), (D* pi pi), (D eta), (D* eta)"
-)
+FAMILIES = "D, D*, D1(2420), D2*(2460), D0*(2300), D1'(2430), (D pi), (D* pi), (D pi pi), (D* pi pi), (D eta), (D* eta)"
 LAWS = (
     "exponential, gaussian, double_gaussian, power, threshold, end_point, phase_space, uniform, polynomial, "
     "histogram, column"
