@@ -26,7 +26,7 @@ def double_charm_variations(study: StudyConfig, whole: Expected) -> Iterator[Cha
     shares = [variation for variation in variations if isinstance(variation, DoubleCharmShare)]
     changes = [(variation, *_change(variation, whole)) for variation in shares]
     for chain, _ in whole:
-        soft, factors = common_variations(variations, chain, leptons)
+        soft, factors = common_variations(study, variations, chain, leptons)
         for variation, share, relative in changes:
             if 0.0 < share < 1.0:
                 for sign in SIGNS:

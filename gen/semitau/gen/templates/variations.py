@@ -78,7 +78,7 @@ def channel_variations(
     shares : of the component's expected decays, by charm family; they sum to 1. leptons : of the study's categories.
     """
     decays: dict[Side, Decay] = {}
-    soft, factors = common_variations(study.variations, channel, leptons)
+    soft, factors = common_variations(study, study.variations, channel, leptons)
     for variation in study.variations:
         for sign in SIGNS:
             side = variation.name, sign
@@ -96,9 +96,12 @@ def channel_variations(
 
 
 def common_variations(
-    variations: Sequence[SingleVariation], channel: AnyChain, leptons: Sequence[str]
+    study: StudyConfig, variations: Sequence[SingleVariation], channel: AnyChain, leptons: Sequence[str]
 ) -> tuple[dict[Side, float], dict[Side, Floats]]:
-    """`soft` and `factors` of what acts on any decay chain: soft-particle and identification efficiencies."""
+    """`soft` and `factors` of what acts on any decay chain: soft-particle and identification efficiencies.
+
+    variations : those of the study.
+    """
     soft: dict[Side, float] = {}
     factors: dict[Side, Floats] = {}
     for variation in variations:
