@@ -81,6 +81,16 @@ class Conditional:
         for name, index in zip(names, self.held, strict=True):
             if not self.best.errors[index] > 0:
                 raise InputError(Problem("a fixed parameter has no likelihood curve", where=f"parameter {name}"))
+            function = model.parameters[index].function
+            if function is not None:
+                raise InputError(
+                    Problem(
+                        "a function of other parameters has no likelihood curve of its own",
+                        where=f"parameter {name}",
+                        got=function,
+                        remedy="Ask for the curve of a parameter that it follows.",
+                    )
+                )
         self.free: Indices = np.array([i for i in model.free if i not in self.held], dtype=np.int64)
         self.failures = 0
         self.back()

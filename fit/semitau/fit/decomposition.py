@@ -75,26 +75,25 @@ def budget_of(model: Model, result: FitResult, name: str) -> Budget:
                 remedy="; ".join(reason.what for reason in result.reasons) or "The parameter was held fixed.",
             )
         )
-    free = np.flatnonzero(result.errors > 0)
-    counts, templates = information(model, result.values)
-    constraints = model.layout.arrays.inverse_variance
-    total = (counts + templates + np.diag(constraints))[np.ix_(free, free)]
+    free = np.array([k for k in model.free if result.errors[k] > 0])
+    place = np.ix_(free, free)
+    # Parameters that are functions of others are taken back to those.
+    through = model.jacobian(result.values)
+    counts, templates = ((through.T @ part @ through)[place] for part in information(model, result.values))
+    known = model.precision(result.values)
+    total = counts + templates + (through.T @ known @ through)[place]
     # Row of the inverse information: what a unit of information about each parameter does to this one.
-    unit = np.zeros(free.size)
-    unit[np.flatnonzero(free == index)] = 1.0
     scale = 1.0 / np.sqrt(np.diag(total))
-    row = scale * np.linalg.solve(total * np.outer(scale, scale), scale * unit)
-    variances = {
-        STATISTICAL: float(row @ counts[np.ix_(free, free)] @ row),
-        TEMPLATES: float(row @ templates[np.ix_(free, free)] @ row),
-    }
+    row = scale * np.linalg.solve(total * np.outer(scale, scale), scale * through[index, free])
+    variances = {STATISTICAL: float(row @ counts @ row), TEMPLATES: float(row @ templates @ row)}
+    reach = through[:, free] @ row  # the same for every parameter, through functions too
     sources: dict[str, float] = {}
-    for place, k in enumerate(free.tolist()):
-        parameter = model.parameters[k]
-        if parameter.constraint is not None:
-            sources[parameter.name] = float(row[place] ** 2 * constraints[k])
-            group = parameter.group + " (nuisances)" * (parameter.group in (STATISTICAL, TEMPLATES))
-            variances[group] = variances.get(group, 0.0) + sources[parameter.name]
+    for members in _sources(model, reach):
+        source = " & ".join(model.names[k] for k in members)
+        sources[source] = float(reach[members] @ known[np.ix_(members, members)] @ reach[members])
+        group = model.parameters[members[0]].group
+        group += " (nuisances)" * (group in (STATISTICAL, TEMPLATES))
+        variances[group] = variances.get(group, 0.0) + sources[source]
     error = result.error(name)
     to_fit = error**2 / sum(variances.values())
     rows = {source: float(np.sqrt(variance * to_fit)) for source, variance in variances.items()}
@@ -107,6 +106,21 @@ def budget_of(model: Model, result: FitResult, name: str) -> Budget:
         systematic=float(np.sqrt(systematic)),
         sources=MappingProxyType({source: float(np.sqrt(part * to_fit)) for source, part in sources.items()}),
     )
+
+
+def _sources(model: Model, reach: Floats) -> list[list[int]]:
+    """Parameters whose auxiliary measurement acts, those that were measured together in one list."""
+    precision = model.layout.arrays.constraints.precision
+    found: list[list[int]] = []
+    for k, parameter in enumerate(model.parameters):
+        if parameter.constraint is None or reach[k] == 0.0:
+            continue
+        home = next((members for members in found if precision[k, members[0]] != 0.0), None)
+        if home is None:
+            found.append([k])
+        else:
+            home.append(k)
+    return found
 
 
 def information(model: Model, values: Floats) -> tuple[Floats, Floats]:

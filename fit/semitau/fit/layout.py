@@ -16,6 +16,8 @@ from numpy.typing import NDArray
 from semitau.core.errors import InputError, Problem
 from semitau.core.templates import Category, Floats, Template, TemplateSet
 
+from .constraints import Constraints
+from .functions import Functions
 from .interpolation import FLOOR
 from .vectors import WIDTH
 
@@ -31,7 +33,10 @@ class Arrays(NamedTuple):
     """What the compiled functions read. Parameters: scale parameters first, then nuisances."""
 
     inverse_injected: Floats  # (parameters,); 0 for nuisances
-    inverse_variance: Floats  # (parameters,) of the Gaussian constraint; 0 without one
+    inverse_variance: Floats  # (parameters,) of the constraint, of the logarithm for log-normal ones; 0 without one
+    constraints: Constraints
+    functions: Functions  # parameters that are set by others
+    mate: Indices  # (parameters,): the parameter that multiplies this one in every component; -1 without one
     component_first: Indices  # (components + 1,) into component_scales
     component_scales: Indices  # parameters whose product scales the component
     tile_first: Indices  # (tiles + 1,) lane
@@ -144,14 +149,15 @@ class _Growing:
 
 def lay_out(
     templates: TemplateSet,
-    inverse_variance: Floats,
+    constraints: Constraints,
+    functions: Functions,
     indices: Mapping[str, int],
     template_statistics: bool,
     form: int = LIGHT,
 ) -> Layout:
     """Flatten the templates.
 
-    inverse_variance : (parameters,) of the constraints, 0 where free.
+    constraints, functions : what is known of the parameters, and which of them follow others.
     indices : parameter name -> index.
     template_statistics : False takes the templates as exact.
     form : of the likelihood for finite templates.
@@ -179,7 +185,10 @@ def lay_out(
     scales = [[indices[name] for name in component.scales_with] for component in templates.components]
     arrays = Arrays(
         inverse_injected=inverse_injected,
-        inverse_variance=inverse_variance,
+        inverse_variance=constraints.inverse_variance,
+        constraints=constraints,
+        functions=functions,
+        mate=_mates(scales, constraints),
         component_first=_whole(np.cumsum([0, *map(len, scales)])),
         component_scales=_whole([index for part in scales for index in part]),
         tile_first=_whole(growing.tile_first),
@@ -202,6 +211,26 @@ def lay_out(
         form=form if template_statistics else LIGHT,
     )
     return Layout(arrays, lane_bin, bin_lane)
+
+
+def _mates(scales: Sequence[Sequence[int]], constraints: Constraints) -> Indices:
+    """For each parameter that nothing but the templates knows, one that multiplies it wherever it appears, or -1.
+
+    A ratio times a yield is the case: the product is what the data measure (newton.py).
+    """
+    size = constraints.law.size
+    where = [{c for c, own in enumerate(scales) if p in own} for p in range(size)]
+    mate = np.full(size, -1, dtype=np.int64)
+    for p in range(size):
+        if any(list(own).count(p) > 1 for own in scales):  # the templates are not linear in it
+            continue
+        known = constraints.inverse_variance[p] > 0 or np.isfinite([constraints.lower[p], constraints.upper[p]]).any()
+        others = [q for q in range(size) if where[p] and where[p] < where[q]]
+        if others and not known:
+            mate[p] = max(others, key=lambda q: len(where[q]))
+    # The mate of another has to stay what it is.
+    mate[mate[mate >= 0]] = -1
+    return mate
 
 
 def bin_name(category: Category, index: int) -> str:

@@ -24,6 +24,7 @@ from semitau.core.templates import Floats
 from .bin_statistics import bin_terms as bin_terms
 from .bin_statistics import deviance as deviance
 from .component_sums import add_components
+from .constraints import add_constraints
 from .effective_sums import add_variance_products, sum_effective_bins
 from .expectation import EXACT as EXACT
 from .expectation import FISHER as FISHER
@@ -33,6 +34,7 @@ from .expectation import add_curvature, scale_of, sum_pieces
 from .expectation import expectations as expectations
 from .expectation import has_hold as has_hold
 from .expectation import workspace as workspace
+from .functions import pull_back, set_functions
 from .interpolation import bend, positive
 from .layout import APPROXIMATE, EXACT_BY_COMPONENT, Arrays
 from .outer_products import add_outer_products as add_outer_products
@@ -52,20 +54,17 @@ def evaluate(
 ) -> float:
     """-ln L at the parameters x, from the saturated model; fills gradient (p,) and hessian (p, p) as `mode` asks.
 
+    Parameters that are functions of others are set in x first; their derivatives go to those that they follow.
+
     counts : (lanes,); centres : (p,) auxiliary measurements of the constrained parameters.
     gamma_centres : (lanes,), or for the exact form with one number a component as long as arrays.nominal.
     """
     parameters = x.shape[0]
-    value = 0.0
     work.protected[0] = 0
+    set_functions(arrays.functions, x)
+    value: float = add_constraints(arrays.constraints, x, centres, mode != VALUE, mode == EXACT, gradient, hessian)
     for p in range(parameters):
-        pull = x[p] - centres[p]
-        value += 0.5 * pull * pull * arrays.inverse_variance[p]
         work.bends[p, 0], work.bends[p, 1], work.bends[p, 2] = bend(x[p])
-        if mode != VALUE:
-            gradient[p] = pull * arrays.inverse_variance[p]
-            hessian[p, :] = 0.0
-            hessian[p, p] = arrays.inverse_variance[p]
     for c in range(work.scales.shape[0]):
         work.scales[c] = scale_of(arrays, c, x, -1, -1)
     for tile in range(arrays.tile_filled.shape[0]):
@@ -87,6 +86,8 @@ def evaluate(
         for p in range(parameters):
             for q in range(p):
                 hessian[q, p] = hessian[p, q]
+        if arrays.functions.parameter.shape[0] > 0:
+            pull_back(arrays.functions, x, mode == EXACT, gradient, hessian)
     return value
 
 

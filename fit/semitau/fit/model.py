@@ -2,18 +2,22 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from difflib import get_close_matches
-from math import isfinite
+from math import inf
 
 import numpy as np
 from numpy.typing import ArrayLike
 from semitau.core.errors import InputError, Problem
 from semitau.core.templates import Floats, TemplateSet
 
+from .constraints import BLOCK, LOG_NORMAL, Constraint, Correlated
+from .constraints import arrays_of as constraint_arrays
 from .data import Data, Source, read_data
+from .functions import arrays_of as function_arrays
+from .functions import jacobian, read_function, set_functions
 from .interpolation import bend
+from .knowledge import Knowledge, refuse, unknown
 from .layout import APPROXIMATE, EXACT_BY_COMPONENT, LIGHT, Indices, Layout, lay_out
 from .likelihood import expectations, workspace
 
@@ -34,6 +38,10 @@ class Parameter:
     injected : the value that the templates were made with; 0 for a nuisance.
     constraint : standard deviation of the Gaussian auxiliary measurement, None if there is none.
     fixed : the value it is held at, None if it is fitted.
+    law : of the constraint: "gaussian", "log-normal", "correlated", "uniform" or "none". For a log-normal one
+        `constraint` is the relative error times the injected value, for a correlated one the error of its own.
+    bounds : the fit keeps it inside.
+    function : the formula that sets it from others, None if it is a parameter of its own.
     """
 
     name: str
@@ -43,6 +51,9 @@ class Parameter:
     injected: float
     constraint: float | None
     fixed: float | None
+    law: str = "none"
+    bounds: tuple[float, float] = (-inf, inf)
+    function: str | None = None
 
 
 class Model:
@@ -55,6 +66,12 @@ class Model:
         expectation, for a nuisance in standard deviations.
     yields : scale parameter name -> standard deviation of its constraint, or None to leave it free; replaces what the
         template set says.
+    constraints : parameter name -> Gaussian, LogNormal or Uniform (constraints.py), or None to leave it free; replaces
+        what the template set says.
+    correlated : constraints of several parameters together, in the place of their own.
+    bounds : parameter name -> (low, high), either None; the fit keeps the parameter inside.
+    functions : parameter name -> formula of other parameters, e.g. {"R_D_B0": "R_D_Bp", "yield_b": "1.1 * yield_a"}
+        (functions.py). Such a parameter is not fitted, but has a value, an error and correlations in the result.
 
     Parameters are the scale parameters (ratios and yields), then the nuisances, in the order of the template set. A
     model does not change once made. Bins are numbered through all categories, in C order of their axes.
@@ -71,22 +88,33 @@ class Model:
         likelihood: str = DEFAULT_LIKELIHOOD,
         fixed: Mapping[str, float] | None = None,
         yields: Mapping[str, float | None] | None = None,
+        constraints: Mapping[str, Constraint | None] | None = None,
+        correlated: Sequence[Correlated] = (),
+        bounds: Mapping[str, tuple[float | None, float | None]] | None = None,
+        functions: Mapping[str, str] | None = None,
     ) -> None:
         self.templates = templates
         self.template_statistics = bool(template_statistics)
         self.likelihood = _known_likelihood(likelihood)
-        self.parameters = _parameters(templates, dict(fixed or {}), dict(yields or {}))
+        known = Knowledge.gather(templates, fixed, yields, constraints, correlated, bounds, functions)
+        self.parameters = _parameters(templates, known)
         self.names = tuple(parameter.name for parameter in self.parameters)
         self.ratios = tuple(parameter.name for parameter in self.parameters if parameter.kind == "ratio")
         self._indices = {name: index for index, name in enumerate(self.names)}
-        constraints = [parameter.constraint for parameter in self.parameters]
-        weights = np.array([0.0 if sigma is None else sigma**-2 for sigma in constraints])
-        form = LIKELIHOODS[self.likelihood]
-        self.layout: Layout = lay_out(templates, weights, self._indices, self.template_statistics, form)
-        self.free: Indices = np.array([i for i, p in enumerate(self.parameters) if p.fixed is None], dtype=np.int64)
-        self.injected = _frozen([parameter.injected for parameter in self.parameters])
-        self.start = _frozen([p.injected if p.fixed is None else p.fixed for p in self.parameters])
-        _refuse(_useless(self))
+        self.layout: Layout = lay_out(
+            templates,
+            constraint_arrays(self._indices, known.single, known.blocks, known.bounds),
+            function_arrays(known.functions, self._indices),
+            self._indices,
+            self.template_statistics,
+            LIKELIHOODS[self.likelihood],
+        )
+        self.free: Indices = np.array(
+            [i for i, p in enumerate(self.parameters) if p.fixed is None and p.function is None], dtype=np.int64
+        )
+        self.injected = self._completed([parameter.injected for parameter in self.parameters])
+        self.start = self._completed([p.injected if p.fixed is None else p.fixed for p in self.parameters])
+        refuse(_useless(self))
 
     @property
     def bins(self) -> int:
@@ -96,11 +124,34 @@ class Model:
     def index(self, name: str) -> int:
         """Place of a parameter in `parameters` and in every array of values. Raises InputError for an unknown name."""
         if name not in self._indices:
-            raise InputError(_unknown("parameter", name, self.names))
+            raise InputError(unknown("parameter", name, self.names))
         return self._indices[name]
 
+    def _completed(self, values: ArrayLike) -> Floats:
+        """With the parameters that are functions of others set; read-only."""
+        array = np.array(values, dtype=np.float64)
+        set_functions(self.layout.arrays.functions, array)
+        array.flags.writeable = False
+        return array
+
+    def jacobian(self, values: Floats) -> Floats:
+        """(parameters, parameters) derivatives of all parameters in the fitted ones, 1 but for functions."""
+        return jacobian(self.layout.arrays.functions, values)
+
+    def precision(self, values: Floats) -> Floats:
+        """(parameters, parameters) inverse covariance of the auxiliary measurements, at these values."""
+        known = self.layout.arrays.constraints
+        log_normal = known.law == LOG_NORMAL
+        width = np.where(log_normal, values, 1.0)
+        own = np.where(known.law == BLOCK, 0.0, known.inverse_variance / width**2)
+        out: Floats = known.precision + np.diag(own)
+        return out
+
     def values(self, changes: Mapping[str, float] | ArrayLike | None = None) -> Floats:
-        """A (parameters,) array: the injected values with changes by name, or a whole array checked for its length."""
+        """A (parameters,) array: the injected values with changes by name, or a whole array checked for its length.
+
+        Parameters that are functions of others follow them.
+        """
         if changes is None:
             return self.injected.copy()
         if isinstance(changes, Mapping):
@@ -115,6 +166,7 @@ class Model:
             )
         if not np.isfinite(values).all():
             raise InputError(Problem("parameter values must be finite", "parameters", got=str(values.tolist())))
+        set_functions(self.layout.arrays.functions, values)
         return values
 
     def expected_counts(self, parameters: Mapping[str, float] | ArrayLike | None = None) -> Floats:
@@ -205,36 +257,21 @@ class Model:
         return int(((plain < arrays.floor) & (self.layout.lane_bin >= 0)).sum())
 
 
-def _parameters(
-    templates: TemplateSet, fixed: dict[str, float], yields: dict[str, float | None]
-) -> tuple[Parameter, ...]:
-    scales = [parameter.name for parameter in templates.parameters]
-    names = [*scales, *(nuisance.name for nuisance in templates.nuisances)]
-    _refuse(
-        [
-            *(_unknown("parameter", name, names) for name in fixed if name not in names),
-            *(_unknown("scale parameter", name, scales) for name in yields if name not in scales),
-            *(
-                Problem("a parameter must be fixed to a finite number", f"fixed: {name}", got=repr(value))
-                for name, value in fixed.items()
-                if not _is_number(value)
-            ),
-            *(
-                Problem("a constraint must be a positive number, or None", f"yields: {name}", got=repr(sigma))
-                for name, sigma in yields.items()
-                if sigma is not None and not (_is_number(sigma) and sigma > 0)
-            ),
-        ]
-    )
+def _parameters(templates: TemplateSet, known: Knowledge) -> tuple[Parameter, ...]:
     parameters = []
-    for scale in templates.parameters:
-        sigma = yields.get(scale.name, scale.constraint)
-        group = "ratios" if scale.kind == "ratio" else "yields"
-        held = fixed.get(scale.name)
-        parameters.append(Parameter(scale.name, scale.label, scale.kind, group, scale.injected, sigma, held))
-    for nuisance in templates.nuisances:
-        held = fixed.get(nuisance.name)
-        parameters.append(Parameter(nuisance.name, nuisance.label, "nuisance", nuisance.group, 0.0, 1.0, held))
+    scales = [
+        (p.name, p.label, p.kind, "ratios" if p.kind == "ratio" else "yields", p.injected) for p in templates.parameters
+    ]
+    nuisances = [(n.name, n.label, "nuisance", n.group, 0.0) for n in templates.nuisances]
+    for name, label, kind, group, injected in [*scales, *nuisances]:
+        law, sigma = known.law_of(name, injected)
+        function = known.functions.get(name)
+        parameters.append(
+            Parameter(
+                name, label, kind, group, injected, sigma, known.fixed.get(name), law,
+                known.range_of(name), None if function is None else function.text,
+            )
+        )  # fmt: skip
     if len(parameters) > PARAMETERS_AT_MOST:
         raise InputError(
             Problem("too many parameters", "templates", got=str(len(parameters)), wanted=f"up to {PARAMETERS_AT_MOST}")
@@ -252,13 +289,12 @@ def _known_likelihood(name: str) -> str:
     return name
 
 
-def _is_number(value: object) -> bool:
-    return isinstance(value, int | float | np.number) and not isinstance(value, bool) and isfinite(value)
-
-
 def _useless(model: Model) -> Iterator[Problem]:
     """A free parameter without constraint that no bin depends on cannot be fitted."""
     used = set(model.layout.arrays.rows.tolist())
+    for parameter in model.parameters:  # what a function of it does, it does
+        if parameter.function is not None and model.index(parameter.name) in used:
+            used |= {model.index(name) for name in read_function(parameter.name, parameter.function).names}
     for index in model.free.tolist():
         parameter = model.parameters[index]
         if index not in used and parameter.constraint is None:
@@ -269,22 +305,3 @@ def _useless(model: Model) -> Iterator[Problem]:
             )
     if model.free.size == 0:
         yield Problem("every parameter is fixed: there is nothing to fit", where="fixed")
-
-
-def _unknown(kind: str, name: object, known: Iterable[str]) -> Problem:
-    known = list(known)
-    close = get_close_matches(str(name), known, n=1)
-    remedy = f"Did you mean {close[0]!r}?" if close else ""
-    return Problem(f"there is no such {kind}", got=repr(name), wanted=", ".join(known) or "none", remedy=remedy)
-
-
-def _refuse(problems: Iterable[Problem]) -> None:
-    found = tuple(problems)
-    if found:
-        raise InputError(*found)
-
-
-def _frozen(values: list[float]) -> Floats:
-    array = np.array(values, dtype=np.float64)
-    array.flags.writeable = False
-    return array

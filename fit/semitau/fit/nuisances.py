@@ -51,7 +51,7 @@ def nuisance_shifts(model: Model, data: Source, result: FitResult) -> tuple[Nuis
     found = []
     for index in model.free.tolist():
         parameter = model.parameters[index]
-        if parameter.constraint is None or parameter.name in ratios:
+        if parameter.constraint is None or parameter.function is not None or parameter.name in ratios:
             continue
         ends = [_moved(model, observed, result, index, side) for side in (-1.0, 1.0)]
         places = [model.index(ratio) for ratio in ratios]
@@ -89,7 +89,7 @@ def held_in_turn(model: Model, result: FitResult, name: str) -> dict[str, float]
     """
     if not result.valid:
         raise RunError(*result.reasons)
-    free = np.flatnonzero(result.errors > 0)
+    free = np.array([index for index in model.free if result.errors[index] > 0])
     rows = np.array([_slope(model, result, int(index)) for index in free])
     mu = model.expected_counts(result.values)
     seen = mu > 0
@@ -97,7 +97,8 @@ def held_in_turn(model: Model, result: FitResult, name: str) -> dict[str, float]
     exact = (rows / mu) @ rows.T
     whole = (rows / (mu + mu**2 * variance)) @ rows.T
     parameters = [model.parameters[index] for index in free]
-    constraints = np.diag([0.0 if p.constraint is None else p.constraint**-2 for p in parameters])
+    through = model.jacobian(result.values)[:, free]
+    constraints = through.T @ model.precision(result.values) @ through
     place = int(np.flatnonzero(free == model.index(name))[0])
     everything = np.ones(free.size, dtype=bool)
     total = _variance(whole + constraints, everything, place)

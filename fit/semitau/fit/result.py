@@ -49,6 +49,8 @@ class Certificate:
     eigenvalues : of the exact Hessian scaled to unit diagonal, increasing; all positive at a minimum.
     steps, evaluations : Newton steps, and evaluations of the likelihood with derivatives.
     flat_directions : combinations of parameters along which the likelihood does not change, name -> coefficient.
+    at_bounds : parameters that -ln L presses against a bound; their errors are those of the curvature there, and an
+        interval of theirs wants the likelihood curve or toys.
     protected_bins : bins whose expectation is held above zero by the protection of interpolation.py; normally 0.
     """
 
@@ -59,6 +61,7 @@ class Certificate:
     evaluations: int
     flat_directions: tuple[Mapping[str, float], ...]
     protected_bins: int
+    at_bounds: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, eq=False)
@@ -113,13 +116,16 @@ def assemble(model: Model, data: Data, free: Indices, x: Floats, ending: Ending,
     eigenvalues, flat = _spectrum(model, hessian, free)
     size = len(model.names)
     covariance, errors = np.zeros((size, size)), np.zeros(size)
+    known, following = model.layout.arrays.constraints, model.layout.arrays.functions.parameter
     positive = bool(eigenvalues.size) and bool(eigenvalues[0] > SINGULAR)
     if positive:
         covariance[np.ix_(free, free)] = _inverse(hessian[np.ix_(free, free)])
-        errors[free] = np.sqrt(np.diag(covariance)[free])
+        through = model.jacobian(x)
+        covariance = through @ covariance @ through.T if following.size else covariance
+        errors = np.sqrt(np.diag(covariance))
     else:
         covariance[np.ix_(free, free)] = np.nan
-        errors[free] = np.nan
+        errors[free] = errors[following] = np.nan
     distance = ending.distance if positive else float("nan")
     certificate = Certificate(
         distance=distance,
@@ -129,6 +135,7 @@ def assemble(model: Model, data: Data, free: Indices, x: Floats, ending: Ending,
         evaluations=ending.evaluations,
         flat_directions=flat,
         protected_bins=model.protected_bins(x),
+        at_bounds=tuple(model.names[i] for i in free if x[i] in (known.lower[i], known.upper[i])),
     )
     why = reasons(ending, flat)
     for array in (x, errors, covariance):

@@ -22,11 +22,11 @@ from semitau.core.errors import InputError, Problem
 from semitau.core.streams import event_key, stream_key, uniform
 from semitau.core.templates import Floats
 
-from .algebra import inverse_diagonal
+from .constraints import BLOCK, GAUSSIAN, LOG_NORMAL
 from .ending import CONVERGED, short_reason
 from .layout import APPROXIMATE, EXACT_BY_COMPONENT, Arrays, Indices
 from .model import Model
-from .newton import Scratch, minimise, scratch
+from .newton import Scratch, errors_at, minimise, scratch
 from .poisson import poisson
 from .pulls import Summary, summarise
 from .verdict import Verdict, judge
@@ -207,12 +207,30 @@ def draw_toy(
             if arrays.inverse_effective[i] > 0.0:
                 effective = 1.0 / arrays.inverse_effective[i]
                 gammas[i] = poisson(effective, event_key(toy, _TEMPLATES + np.uint64(i)), _ZERO) / effective
+    _draw_centres(arrays, toy, truth, centres)
+
+
+@kernel
+def _draw_centres(arrays: Arrays, toy: np.uint64, truth: Floats, centres: Floats) -> None:
+    """Auxiliary measurements of the constrained parameters; the truth itself for the others."""
+    known = arrays.constraints
     for p in range(truth.shape[0]):
-        centres[p] = truth[p]
+        centres[p] = 0.0
         if arrays.inverse_variance[p] > 0.0:
             key = event_key(toy, _PARAMETERS + np.uint64(p))
-            normal, _ = normal_pair(uniform(key, _ZERO), uniform(key, _ONE))
-            centres[p] += normal / np.sqrt(arrays.inverse_variance[p])
+            centres[p], _ = normal_pair(uniform(key, _ZERO), uniform(key, _ONE))
+    for p in range(truth.shape[0] - 1, -1, -1):  # a block mixes the normal numbers of the parameters before
+        if known.law[p] == BLOCK:
+            total = 0.0
+            for q in range(p + 1):
+                total += known.factor[p, q] * centres[q]
+            centres[p] = truth[p] + total
+        elif known.law[p] == LOG_NORMAL:
+            centres[p] = truth[p] * np.exp(centres[p] / np.sqrt(arrays.inverse_variance[p]))
+        elif known.law[p] == GAUSSIAN:
+            centres[p] = truth[p] + centres[p] / np.sqrt(arrays.inverse_variance[p])
+        else:
+            centres[p] = truth[p]
 
 
 @kernel
@@ -234,7 +252,6 @@ def _fit_toys(
     statistics: Floats,
     steps: NDArray[np.int64],
 ) -> None:
-    variances = np.zeros(free.shape[0])
     for i in range(statuses.shape[0]):
         draw_toy(arrays, event_key(stream, first + np.uint64(i)), truth, means, counts, gammas, centres)
         x = values[i]
@@ -243,10 +260,9 @@ def _fit_toys(
         statuses[i] = ending.status
         statistics[i] = 2.0 * ending.value
         steps[i] = ending.steps
+        errors[i, :] = 0.0
         if ending.status == CONVERGED:
-            inverse_diagonal(s.lower, s.scale, free.shape[0], s.step, variances)
-            for j in range(free.shape[0]):
-                errors[i, free[j]] = np.sqrt(variances[j])
+            errors_at(arrays, free, x, s, errors[i])
         else:
             for j in range(free.shape[0]):
                 errors[i, free[j]] = np.nan
