@@ -2,16 +2,28 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 from semitau.core.templates import TemplateSet
 from semitau.fit.decomposition import Budget as FitBudget
 from semitau.fit.model import Model
+from semitau.fit.nuisances import NuisanceShift
 from semitau.fit.result import FitResult
 from semitau.fit.toys import ToyResults
 
-from .results import Budget, BudgetRow, ComponentInfo, Fit, Goodness, Named, Parameter, RatioResult
+from .results import (
+    Budget,
+    BudgetRow,
+    ComponentInfo,
+    Fit,
+    Goodness,
+    Named,
+    NuisanceResult,
+    Parameter,
+    RatioResult,
+    RatioShift,
+)
 
 SOURCE_LABELS = {
     "statistical": "finite data",
@@ -55,8 +67,13 @@ def fit_part(model: Model, result: FitResult, toys: ToyResults | None = None) ->
     )
 
 
-def ratio_parts(model: Model, result: FitResult, budgets: Mapping[str, FitBudget]) -> tuple[RatioResult, ...]:
-    """Each fitted ratio beside its injected value, with its error split where there is a budget."""
+def ratio_parts(
+    model: Model, result: FitResult, budgets: Mapping[str, FitBudget], hidden: bool = False
+) -> tuple[RatioResult, ...]:
+    """Each fitted ratio beside its injected value, with its error split where there is a budget.
+
+    hidden : the values are not the true ones, so that their distance from anything means nothing.
+    """
     found = []
     for name in model.ratios:
         parameter = model.parameters[model.index(name)]
@@ -71,7 +88,7 @@ def ratio_parts(model: Model, result: FitResult, budgets: Mapping[str, FitBudget
                 injected=parameter.injected,
                 value=value,
                 error=error,
-                pull=(value - parameter.injected) / error,
+                pull=None if hidden else (value - parameter.injected) / error,
                 statistical=None if split is None else split.rows["statistical"],
                 template_statistics=None if split is None else split.rows["template statistics"],
                 systematic=None if split is None else split.systematic,
@@ -80,19 +97,49 @@ def ratio_parts(model: Model, result: FitResult, budgets: Mapping[str, FitBudget
     return tuple(found)
 
 
-def budget_parts(budgets: Mapping[str, FitBudget]) -> tuple[Budget, ...]:
-    """The uncertainty of each ratio by source."""
+def budget_parts(
+    budgets: Mapping[str, FitBudget], held: Mapping[str, Mapping[str, float]] | None = None
+) -> tuple[Budget, ...]:
+    """The uncertainty of each ratio by source. held : ratio -> the rows by holding sources in turn."""
+    in_turn = held or {}
     return tuple(
         Budget(
             ratio=name,
             rows=tuple(
-                BudgetRow(source=source, label=SOURCE_LABELS.get(source, source), error=error)
+                BudgetRow(
+                    source=source,
+                    label=SOURCE_LABELS.get(source, source),
+                    error=error,
+                    held=in_turn.get(name, {}).get(source),
+                )
                 for source, error in split.rows.items()
             ),
             total=split.total,
         )
         for name, split in budgets.items()
     )
+
+
+def nuisance_parts(shifts: Sequence[NuisanceShift]) -> tuple[NuisanceResult, ...]:
+    """Pull, constraint and effect of each constrained parameter."""
+    return tuple(
+        NuisanceResult(
+            name=shift.name,
+            label=shift.label,
+            group=SOURCE_LABELS.get(shift.group, shift.group),
+            pull=shift.pull,
+            constraint=shift.constraint,
+            shifts=tuple(
+                RatioShift(ratio=ratio, down=_finite(down), up=_finite(up))
+                for ratio, (down, up) in shift.shifts.items()
+            ),
+        )
+        for shift in shifts
+    )
+
+
+def _finite(value: float) -> float | None:
+    return value if np.isfinite(value) else None
 
 
 def category_parts(templates: TemplateSet) -> tuple[Named, ...]:

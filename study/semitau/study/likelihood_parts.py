@@ -40,6 +40,8 @@ def curve_document(curve: Profile) -> dict[str, object]:
         "value": curve.value,
         "low": _number(curve.low),
         "high": _number(curve.high),
+        "low_two": _number(curve.low_two),
+        "high_two": _number(curve.high_two),
         "points": curve.points.tolist(),
         "heights": _numbers(curve.heights),
         "failures": curve.failures,

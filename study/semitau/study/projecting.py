@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 
 import numpy as np
+from numpy.typing import NDArray
 from semitau.core.templates import Category, Floats, TemplateSet
 from semitau.fit.data import Data
 from semitau.fit.model import Model
@@ -12,6 +13,7 @@ from semitau.fit.result import FitResult
 
 from .fit_parts import component_parts
 from .results import Projection, StackedComponent
+from .signal_share import signal_components
 
 ENHANCING = "mm2"
 """Observable that tells signal (several neutrinos) from normalisation (one); a cut on it enhances the signal."""
@@ -20,8 +22,12 @@ STEP = 0.1
 """Step of the numerical derivative of the expectation, in standard deviations of each parameter."""
 
 
-def projections(model: Model, result: FitResult, data: Data) -> tuple[Projection, ...]:
+def projections(model: Model, result: FitResult, data: Data, withheld: float | None = None) -> tuple[Projection, ...]:
     """One projection for each observable of each category, then one for each in the signal-enhanced region.
+
+    withheld : while ratios are hidden, the expected share of signal above which a bin is not shown, since its counts
+    would tell the ratio. What is left of a projection is its longest row of bins, without the signal components; there
+    is no enhanced region. None shows all.
 
     The region is mm2 above the bin edge where signal over the root of all events is largest, summed over categories
     with the same edges; a category without mm2 has none.
@@ -30,7 +36,7 @@ def projections(model: Model, result: FitResult, data: Data) -> tuple[Projection
     contributions = model.contributions(result.values)
     spread = _spread(model, result)
     order = [component.name for component in component_parts(model.templates)]
-    starts = enhanced_starts(model.templates, contributions)
+    starts = enhanced_starts(model.templates, contributions) if withheld is None else {}
     found = []
     for enhanced in (False, True):
         for category in model.templates.categories:
@@ -43,7 +49,45 @@ def projections(model: Model, result: FitResult, data: Data) -> tuple[Projection
             for axis in range(len(category.observables)):
                 cut = start if enhanced else None
                 found.append(_project(category, axis, cut, counts[category.name], stack, spread[category.name]))
-    return tuple(found)
+    return tuple(found) if withheld is None else tuple(_poor_in_signal(model, found, withheld))
+
+
+def _poor_in_signal(model: Model, found: Sequence[Projection], withheld: float) -> Iterator[Projection]:
+    signal, expected = signal_components(model), model.contributions()
+    categories = {category.name: category for category in model.templates.categories}
+    for projection in found:
+        category = categories[projection.category]
+        axis = [observable.name for observable in category.observables].index(projection.observable)
+        others = tuple(i for i in range(len(category.observables)) if i != axis)
+        of_signal, total = np.zeros(len(projection.data)), np.zeros(len(projection.data))
+        for (name, component), contents in expected.items():
+            if name == category.name:
+                total += contents.sum(axis=others)
+                of_signal += contents.sum(axis=others) if component in signal else 0.0
+        low, high = _longest_run((total > 0) & (of_signal <= withheld * total))
+        if high - low >= 2:  # one bin makes no picture
+            yield projection.model_copy(
+                update={
+                    "edges": projection.edges[low : high + 1],
+                    "data": projection.data[low:high],
+                    "components": tuple(
+                        StackedComponent(component=part.component, counts=part.counts[low:high])
+                        for part in projection.components
+                        if part.component not in signal
+                    ),
+                    "uncertainty": projection.uncertainty[low:high],
+                }
+            )
+
+
+def _longest_run(shown: NDArray[np.bool_]) -> tuple[int, int]:
+    """First and one past the last index of the longest row of True."""
+    best, start = (0, 0), 0
+    for i, yes in enumerate([*shown.tolist(), False]):
+        if not yes:
+            best = max(best, (start, i), key=lambda run: run[1] - run[0])
+            start = i + 1
+    return best
 
 
 def enhanced_starts(templates: TemplateSet, contributions: Mapping[tuple[str, str], Floats]) -> dict[str, int]:

@@ -59,9 +59,9 @@ class RatioResult(Part):
     name: str = Field(description="Identifier, e.g. R_D")
     label: str = Field(description="Label for people")
     injected: float = Field(description="Value that the templates or pseudo-data were made with")
-    value: float = Field(description="Fitted value")
+    value: float = Field(description="Fitted value; hidden if there is `blinding`")
     error: float = Field(description="Symmetric standard error, all sources")
-    pull: float = Field(description="(value - injected) / error")
+    pull: float | None = Field(description="(value - injected) / error; null while the ratio is hidden")
     statistical: float | None = Field(description="Error from the finite data, free yields included")
     template_statistics: float | None = Field(description="Error from the finite generated events")
     systematic: float | None = Field(description="Error from all nuisances and constrained yields")
@@ -104,7 +104,14 @@ class BudgetRow(Part):
 
     source: str = Field(description="statistical, template_statistics, or a group of nuisances")
     label: str = Field(description="Label for people")
-    error: float = Field(ge=0, description="Its part of the error; parts add in quadrature up to correlations")
+    error: float = Field(
+        ge=0, description="Its part of the error; the squares of all parts add up to that of the total"
+    )
+    held: float | None = Field(
+        default=None,
+        ge=0,
+        description="Fall of the error, in quadrature, with the source held; statistical: error with all others held",
+    )
 
 
 class Budget(Part):
@@ -113,6 +120,74 @@ class Budget(Part):
     ratio: str = Field(description="Identifier of the ratio")
     rows: tuple[BudgetRow, ...] = Field(description="Sources")
     total: float = Field(ge=0, description="The whole error")
+
+
+class RatioShift(Part):
+    """What one constrained parameter does to one ratio."""
+
+    ratio: str = Field(description="Identifier of the ratio")
+    down: float | None = Field(description="Change of the ratio with the parameter held one fitted error lower")
+    up: float | None = Field(description="The same one fitted error higher; null if that fit failed")
+
+
+class NuisanceResult(Part):
+    """One constrained parameter: what the fit learned of it, and what it does to the ratios."""
+
+    name: str = Field(description="Identifier")
+    label: str = Field(description="Label for people")
+    group: str = Field(description="Row of the budget")
+    pull: float = Field(description="Fitted value minus auxiliary measurement, over that measurement's error")
+    constraint: float = Field(ge=0, description="Fitted error over that of the auxiliary measurement")
+    shifts: tuple[RatioShift, ...] = Field(description="One entry a ratio")
+
+
+class CategoryQuality(Part):
+    """Goodness of fit of one category."""
+
+    category: str = Field(description="Identifier")
+    label: str = Field(description="Label for people")
+    statistic: float = Field(description="Sum of the contributions of its bins")
+    bins: int = Field(description="Bins that expect something")
+    p_value: float = Field(description="Share of toys with a larger statistic")
+
+
+class ProjectionQuality(Part):
+    """Shape of one projection (Kolmogorov)."""
+
+    category: str = Field(description="Identifier of the category")
+    label: str = Field(description="Label of the category")
+    observable: str = Field(description="Label of the observable")
+    distance: float = Field(description="Largest difference of the cumulated shares of data and fit")
+    p_value: float = Field(description="Share of toys with a larger distance")
+
+
+class BinQuality(Part):
+    """One bin."""
+
+    category: str = Field(description="Label of the category")
+    where: str = Field(description="Its ranges in words")
+    observed: float = Field(description="Counts")
+    expected: float = Field(description="Counts of the fit")
+    significance: float = Field(description="Root of its contribution; positive for an excess")
+
+
+class Quality(Part):
+    """Goodness of fit in parts, each judged by the toys."""
+
+    bins: float = Field(description="Part of the statistic from the bins")
+    constraints: float = Field(description="Part of the statistic from the constraints")
+    categories: tuple[CategoryQuality, ...] = Field(description="One entry a category")
+    projections: tuple[ProjectionQuality, ...] = Field(description="One entry an observable of each category")
+    worst: tuple[BinQuality, ...] = Field(description="Bins with the largest contributions; none rich in hidden signal")
+    worst_p_value: float = Field(description="Share of toys whose worst bin is worse")
+
+
+class Blinding(Part):
+    """How the ratios are hidden."""
+
+    kind: str = Field(description="offset or factor")
+    width: float = Field(description="As in the study file")
+    fingerprint: str = Field(description="Tells whether a passphrase is the same one; says nothing of the offsets")
 
 
 class Coverage(Part):
@@ -270,6 +345,18 @@ class Timing(Part):
     peak_memory: float = Field(description="Largest resident memory, MB")
 
 
+class Reweighting(Part):
+    """How many events are behind what weights make of a component."""
+
+    component: str = Field(description="Identifier of the component")
+    label: str = Field(description="Label for people")
+    source: str = Field(description="Variation, or coefficient")
+    where: str = Field(description="Its worse side; of a coefficient at half its limit")
+    events: float = Field(description="Effective events without it")
+    effective: float = Field(description="Square of the sum of weights over the sum of their squares")
+    share: float = Field(description="The one over the other, at most 1; a warning tells of shares below 0.1")
+
+
 class Results(Part):
     """Everything that a study found."""
 
@@ -284,12 +371,18 @@ class Results(Part):
     verdict: Verdict = Field(description="The judgement on the fit")
     fit: Fit = Field(description="The fit to the data")
     budget: tuple[Budget, ...] = Field(description="Uncertainty by source, one entry a ratio")
+    nuisances: tuple[NuisanceResult, ...] = Field(default=(), description="Constrained parameters, the strongest first")
+    quality: Quality | None = Field(default=None, description="Goodness of fit in parts; null without toys or data")
+    blinding: Blinding | None = Field(default=None, description="How the ratios are hidden; null if they are not")
     toys: Toys | None = Field(description="Toys at the injected ratios; null if none were asked for")
     linearity: tuple[Linearity, ...] = Field(description="One entry a ratio; empty if not asked for")
     categories: tuple[Named, ...] = Field(description="Categories of the fit")
     components: tuple[ComponentInfo, ...] = Field(description="Components in stacking order, from below")
     projections: tuple[Projection, ...] = Field(description="What the pictures show")
     cut_flow: tuple[CutFlowComponent, ...] = Field(description="Selection per component")
+    reweightings: tuple[Reweighting, ...] = Field(
+        default=(), description="Effective events of what is made by weights, one entry a component and source"
+    )
     warnings: tuple[str, ...] = Field(description="What should be looked at")
     timing: Timing = Field(description="What the run cost")
 

@@ -16,19 +16,24 @@ from semitau.core.errors import InputError
 from semitau.core.whole_files import write_whole
 from semitau.fit.data import Data
 from semitau.fit.decomposition import budget
+from semitau.fit.fit_quality import quality
 from semitau.fit.model import Model
+from semitau.fit.nuisances import held_in_turn, nuisance_shifts
 from semitau.fit.straightness import linearity
 from semitau.fit.toys import run_toys
 from semitau.gen.study_file.study import StudyConfig
 
-from .fit_parts import budget_parts, category_parts, component_parts, fit_part, ratio_parts
+from .blinding import WITHHELD, Cover, cover, passphrase
+from .fit_parts import budget_parts, category_parts, component_parts, fit_part, nuisance_parts, ratio_parts
 from .fitting import fit_or_fail
 from .form_factor_warnings import form_factor_warnings
 from .opening import open_study
 from .pictures import draw_pictures
 from .projecting import projections
+from .quality_parts import quality_part
 from .report import write_report
 from .results import DataSource, Results, StageTime, StudyIdentity, Timing, read_results
+from .reweighting_parts import reweighting_warnings
 from .study_folder import StudyFolder, claimed_folder, study_key, versions
 from .study_templates import study_templates
 from .toy_file import write_toys
@@ -103,32 +108,48 @@ def run_study(
     study = open_study(Path(path), seed)
     folder = claimed_folder(output or Path(study.study.output), study.study.name)
     key = study_key(study)
-    stored = None if again else _stored_results(folder.results, key)
+    hiding = _cover(study)
+    stored = None if again else _stored_results(folder.results, key, hiding)
     if stored is not None and _pictures_are_fresh(folder):
         return StudyRun(stored, folder, reused=True)
-    results = stored or _found(study, folder, key, checked_workers(workers), report, again)
+    results = stored or found_results(study, folder, key, checked_workers(workers), report, again, hiding)
     pictures = draw_pictures(results, folder.pictures, report)
     write_report(results, pictures, folder.report)
     return StudyRun(results, folder, reused=stored is not None)
 
 
-def _found(
-    study: StudyConfig, folder: StudyFolder, key: str, workers: int, report: Report | None, again: bool
+def found_results(
+    study: StudyConfig,
+    folder: StudyFolder,
+    key: str,
+    workers: int,
+    report: Report | None,
+    again: bool,
+    hiding: Cover | None,
+    templates: Path | None = None,
 ) -> Results:
-    """Everything from templates to results.json."""
+    """Everything from templates to results.json.
+
+    hiding : what hides the ratios, None to show them. templates : where they lie, if not in the folder.
+    """
     watch = Stopwatch()
     write_whole(folder.study_file, study.text)
     with watch.stage("templates"):
-        made = study_templates(study, folder.templates, workers, report, again)
+        made = study_templates(study, templates or folder.templates, workers, report, again)
     if made.reused:
         watch.reused()
     with watch.stage("fit"):
         model = Model(made.templates, template_statistics=study.fit.template_statistics)
-        data, source = _data(study, model)
+        data, source = fitted_data(study, model)
         fitted = fit_or_fail(model, data)
         split = budget(model, fitted)
+        in_turn = {name: held_in_turn(model, fitted, name) for name in split}
+        shifts = nuisance_shifts(model, data, fitted)
+        # From here on nobody sees more than the hidden values.
+        shown = fitted if hiding is None else hiding.result(model, fitted)
     with watch.stage("toys"):
         toys = run_toys(model, study.toys.number, study.study.seed, workers, report)
+        judged = quality(model, data, fitted, toys) if source.kind != "expected" and toys.valid.any() else None
     lines = None
     if study.toys.linearity is not None:
         plan = study.toys.linearity
@@ -137,7 +158,9 @@ def _found(
             lines = linearity(model, plan.factors, plan.number, study.study.seed, workers, progress)
     write_toys(folder.toys, toys, dict(zip(lines.factors, lines.points, strict=True)) if lines is not None else {})
     labels = {parameter.name: parameter.label for parameter in model.parameters}
-    fit, ratios, toy_part = fit_part(model, fitted, toys), ratio_parts(model, fitted, split), toys_part(toys, labels)
+    ratios = ratio_parts(model, shown, split, hidden=hiding is not None)
+    fit, toy_part = fit_part(model, shown, toys), toys_part(toys, labels)
+    withheld = None if hiding is None else WITHHELD
     line_parts = linearity_parts(lines, labels) if lines is not None else ()
     results = Results(
         study=StudyIdentity(name=study.study.name, seed=study.study.seed, hash=study.digest, key=key, text=study.text),
@@ -146,16 +169,21 @@ def _found(
         ratios=ratios,
         verdict=overall_verdict(toy_part, line_parts, lines.lines if lines is not None else {}),
         fit=fit,
-        budget=budget_parts(split),
+        budget=budget_parts(split, in_turn),
+        nuisances=nuisance_parts(shifts),
+        quality=None if judged is None else quality_part(model, judged, withheld),
+        blinding=None if hiding is None else hiding.part,
         toys=toy_part,
         linearity=line_parts,
         categories=category_parts(made.templates),
         components=component_parts(made.templates),
-        projections=projections(model, fitted, data),
+        projections=projections(model, shown, data, withheld),
         cut_flow=made.cut_flow,
+        reweightings=made.reweightings,
         warnings=(
             *form_factor_warnings(study),
             *worth_a_look(fit, ratios, source, made.cut_flow, fitted.certificate.protected_bins),
+            *reweighting_warnings(made.reweightings),
         ),
         timing=watch.timing(workers),
     )
@@ -163,7 +191,7 @@ def _found(
     return results
 
 
-def _data(study: StudyConfig, model: Model) -> tuple[Data, DataSource]:
+def fitted_data(study: StudyConfig, model: Model) -> tuple[Data, DataSource]:
     """What the study wants fitted, and what that is in words."""
     wanted = study.fit.data
     if wanted.kind == "file" and wanted.file is not None:
@@ -186,15 +214,23 @@ def _one_bar(report: Report, points: int) -> Callable[[str, int, int], None]:
     return under_one_name
 
 
-def _stored_results(path: Path, key: str) -> Results | None:
-    """Results that are whole and were made with this key."""
+def _cover(study: StudyConfig) -> Cover | None:
+    """What hides the ratios of a study; asks for the passphrase if there is anything to hide."""
+    if study.blinding is None or study.fit.data.kind == "expected":
+        return None
+    return cover(study.blinding.kind, study.blinding.width, study.study.name, passphrase())
+
+
+def _stored_results(path: Path, key: str, hiding: Cover | None) -> Results | None:
+    """Results that are whole and were made with this key and hidden by the same passphrase."""
     if not path.exists():
         return None
     try:
         results = read_results(path)
     except InputError:
         return None  # cut short or of another version: they are made again
-    return results if results.study.key == key else None
+    same_cover = results.blinding == (None if hiding is None else hiding.part)
+    return results if results.study.key == key and same_cover else None
 
 
 def _pictures_are_fresh(folder: StudyFolder) -> bool:

@@ -14,7 +14,9 @@ from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import build_templates
 from semitau.gen.templates.cut_flow import CutFlow
 
-from .results import CutFlowComponent
+from .blinding import provenance
+from .results import CutFlowComponent, Reweighting
+from .reweighting_parts import reweighting_parts
 from .study_folder import study_key, versions
 
 Report = Callable[[str, int, int | None], None]
@@ -27,6 +29,7 @@ class StudyTemplates:
     templates: TemplateSet
     cut_flow: tuple[CutFlowComponent, ...]
     reused: bool
+    reweightings: tuple[Reweighting, ...] = ()
 
 
 def study_templates(
@@ -50,19 +53,28 @@ def study_templates(
         report("templates", 0, None)  # the clock starts now, not at the first result
     build = build_templates(study, workers, None if report is None else _under("templates", report))
     flow = _cut_flow_parts(build.cut_flow, build.templates)
+    weighted = reweighting_parts(build.reweightings, build.templates)
     templates = replace(
         build.templates,
         provenance={
             **build.templates.provenance,
             "versions": versions(),
             "key": key,
+            **_blinding(study),
             "cut_flow": [part.model_dump(mode="json") for part in flow],
+            "reweightings": [part.model_dump(mode="json") for part in weighted],
         },
     )
     if study.fit.data.kind == "pseudo":
         templates = replace(templates, data=_pseudo_data(study, workers, report))
     write_templates(templates, path)
-    return StudyTemplates(templates, flow, reused=False)
+    return StudyTemplates(templates, flow, reused=False, reweightings=weighted)
+
+
+def _blinding(study: StudyConfig) -> dict[str, Any]:
+    if study.blinding is None:
+        return {}
+    return {"blinding": provenance(study.blinding.kind, study.blinding.width, study.study.name)}
 
 
 def _stored(path: Path, key: str) -> StudyTemplates | None:
@@ -76,7 +88,13 @@ def _stored(path: Path, key: str) -> StudyTemplates | None:
     if templates.provenance.get("key") != key:
         return None
     stored: Any = templates.provenance.get("cut_flow", [])
-    return StudyTemplates(templates, tuple(CutFlowComponent.model_validate(part) for part in stored), reused=True)
+    weighted: Any = templates.provenance.get("reweightings", [])
+    return StudyTemplates(
+        templates,
+        tuple(CutFlowComponent.model_validate(part) for part in stored),
+        reused=True,
+        reweightings=tuple(Reweighting.model_validate(part) for part in weighted),
+    )
 
 
 def _under(label: str, report: Report) -> Report:

@@ -9,8 +9,19 @@ from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
-from .numbers import counted, digits_for, percent, signed, with_error
-from .results import Budget, CutFlowComponent, Fit, Linearity, RatioResult, Results, Toys, Verdict
+from .numbers import GAP, counted, digits_for, percent, signed, with_error
+from .results import (
+    Blinding,
+    Budget,
+    CutFlowComponent,
+    Fit,
+    Linearity,
+    NuisanceResult,
+    RatioResult,
+    Results,
+    Toys,
+    Verdict,
+)
 
 VERDICT_COLOURS = {"sound": "green", "doubtful": "yellow", "unsound": "red", "undecided": "yellow"}
 
@@ -29,6 +40,8 @@ def summary(results: Results, report: str) -> RenderableType:
         Text(results.statement, style="dim"),
         ratio_table(results.ratios),
     ]
+    if results.blinding is not None:
+        parts.append(hidden_line(results.blinding))
     if results.fit.goodness is not None and results.data.kind != "expected":
         parts.append(goodness_line(results.fit))
     if results.budget:
@@ -52,10 +65,18 @@ def ratio_table(ratios: Sequence[RatioResult]) -> Table:
             ratio.label,
             with_error(ratio.value, ratio.error),
             signed(ratio.injected, digits_for(ratio.error)),
-            signed(ratio.pull, 2, plus=True),
+            "hidden" if ratio.pull is None else signed(ratio.pull, 2, plus=True),
             *(_part(part, places) for part in (ratio.statistical, ratio.template_statistics, ratio.systematic)),
         )
     return table
+
+
+def hidden_line(blinding: Blinding) -> Text:
+    """That the ratios are not what they seem."""
+    return Text(
+        f"The fitted ratios are hidden ({blinding.kind}, passphrase {blinding.fingerprint}): not the true ones.\n",
+        style="yellow",
+    )
 
 
 def goodness_line(fit: Fit) -> Text:
@@ -91,13 +112,30 @@ def parameter_table(fit: Fit) -> Table:
 def budget_table(budgets: Sequence[Budget], ratios: Sequence[RatioResult]) -> Table:
     """Error of each ratio by source, with its share of the ratio."""
     labels = {ratio.name: ratio.label for ratio in ratios}
-    values = {ratio.name: abs(ratio.value) for ratio in ratios}
+    # Hidden ratios are no scale for errors.
+    values = {ratio.name: abs(ratio.injected if ratio.pull is None else ratio.value) for ratio in ratios}
     table = plain_table("Uncertainty from", *(cell for budget in budgets for cell in (labels[budget.ratio], "")))
     sources = {row.source: row.label for budget in budgets for row in budget.rows}
     for source, label in sources.items():
         table.add_row(label, *_budget_cells(budgets, values, source))
     table.add_section()
     table.add_row("total", *_budget_cells(budgets, values, None), style="bold")
+    return table
+
+
+def nuisance_table(nuisances: Sequence[NuisanceResult], ratios: Sequence[RatioResult], most: int = 20) -> Table:
+    """Constrained parameters, the strongest first: pull, constraint, larger shift of each ratio in its errors."""
+    table = plain_table("Nuisance", "pull", "constraint", *(f"shifts {ratio.label}" for ratio in ratios))
+    errors = {ratio.name: ratio.error for ratio in ratios}
+    for nuisance in nuisances[:most]:
+        cells = []
+        for shift in nuisance.shifts:
+            ends = [end for end in (shift.down, shift.up) if end is not None]
+            size = max(ends, key=abs) / errors[shift.ratio] if ends else None
+            cells.append("–" if size is None else f"{signed(size, 2, plus=True)}{GAP}σ")
+        table.add_row(nuisance.label, signed(nuisance.pull, 2, plus=True), signed(nuisance.constraint, 2), *cells)
+    if len(nuisances) > most:
+        table.caption = f"and {len(nuisances) - most} weaker ones"
     return table
 
 

@@ -52,6 +52,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
         "FormFactorDirections",
         "ComponentFraction",
         "DoubleCharmShare",
+        "ProductionRatio",
         "SoftPionEfficiency",
         "LeptonIdentificationEfficiency",
         "Misidentification",
@@ -60,6 +61,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     ),
     "[fit]": ("FitSection",),
     "[toys]": ("Toys",),
+    "[blinding]": ("Blinding",),
     "Values with a short form": (
         "FormFactorSource",
         "Axis",

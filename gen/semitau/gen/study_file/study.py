@@ -16,6 +16,7 @@ from pydantic import Field, PrivateAttr, ValidationInfo, model_validator
 from pydantic_core import PydanticCustomError
 
 from ..decays.form_factor_set import FormFactorSet
+from .blinding import Blinding
 from .categories import CategoryTable, Cuts, StudyCategory, written_out
 from .chosen_sets import chosen_set
 from .components import Background, Mode
@@ -51,6 +52,7 @@ class StudyConfig(Table):
     variation_tables: tuple[Variation, ...] = Field(default=(), alias="variation")
     fit: FitSection = FitSection()
     toys: Toys = Toys()
+    blinding: Blinding | None = Field(default=None, description="hides the ratios; nothing is hidden without it")
 
     _text: str = PrivateAttr(default="")
     _path: Path = PrivateAttr(default=Path("study.toml"))

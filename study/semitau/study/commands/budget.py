@@ -19,24 +19,33 @@ def command(
     """Take the uncertainty of each ratio apart by source.
 
     Sources are the finite data, the finite templates, each group of nuisances and the constrained yields; their squares
-    add up to the square of the whole error.
+    add up to the square of the whole error. "held" is by how much the error falls, in quadrature, when the source alone
+    is held. Then each nuisance: its pull, its error over that of its auxiliary measurement, what it does to the ratios.
     """
     from semitau.fit.decomposition import budget
+    from semitau.fit.nuisances import held_in_turn, nuisance_shifts
 
-    from ..fit_parts import budget_parts, ratio_parts
+    from ..blinding import cover_of
+    from ..fit_parts import budget_parts, nuisance_parts, ratio_parts
     from ..fitting import choose_data, described, fit_or_fail, open_model
-    from ..summary import budget_table
+    from ..summary import budget_table, nuisance_table
 
     model = open_model(templates, not exact_templates, fix)
     observed, source = choose_data(model, data, expected)
+    hiding = cover_of(model.templates, source.kind)
     result = fit_or_fail(model, observed)
     split = budget(model, result)
-    parts, ratios = budget_parts(split), ratio_parts(model, result, split)
-    call.terminal.show(described(source), "", budget_table(parts, ratios))
+    parts = budget_parts(split, {name: held_in_turn(model, result, name) for name in split})
+    nuisances = nuisance_parts(nuisance_shifts(model, observed, result))
+    shown = result if hiding is None else hiding.result(model, result)
+    ratios = ratio_parts(model, shown, split, hidden=hiding is not None)
+    call.terminal.show(described(source), "", budget_table(parts, ratios), "", nuisance_table(nuisances, ratios))
     call.terminal.result(
         {
             "data": source.model_dump(mode="json"),
             "ratios": [ratio.model_dump(mode="json") for ratio in ratios],
+            "blinding": None if hiding is None else hiding.part.model_dump(mode="json"),
+            "nuisances": [part.model_dump(mode="json") for part in nuisances],
             "budget": [part.model_dump(mode="json") for part in parts],
             "parameters": {name: dict(part.sources) for name, part in split.items()},
         }

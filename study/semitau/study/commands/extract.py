@@ -21,20 +21,28 @@ def command(
     TEMPLATES is a template file from anybody's simulation (docs/template_file.md). What is fitted: the file of --data,
     else the data in TEMPLATES, else the expected events.
     """
+    from semitau.fit.decomposition import budget
+
+    from ..blinding import cover_of
     from ..fit_parts import fit_part, ratio_parts
     from ..fitting import choose_data, described, fit_or_fail, open_model
-    from ..summary import goodness_line, parameter_table, ratio_table
+    from ..summary import goodness_line, hidden_line, parameter_table, ratio_table
 
     model = open_model(templates, not exact_templates, fix)
     observed, source = choose_data(model, data, expected)
+    hiding = cover_of(model.templates, source.kind)
     result = fit_or_fail(model, observed)
-    from semitau.fit.decomposition import budget
-
-    ratios, fit = ratio_parts(model, result, budget(model, result)), fit_part(model, result)
-    call.terminal.show(described(source), "", ratio_table(ratios), "", goodness_line(fit), parameter_table(fit))
+    shown = result if hiding is None else hiding.result(model, result)
+    ratios = ratio_parts(model, shown, budget(model, result), hidden=hiding is not None)
+    fit = fit_part(model, shown)
+    call.terminal.show(described(source), "", ratio_table(ratios), "")
+    if hiding is not None:
+        call.terminal.show(hidden_line(hiding.part))
+    call.terminal.show(goodness_line(fit), parameter_table(fit))
     call.terminal.result(
         {
             "data": source.model_dump(mode="json"),
+            "blinding": None if hiding is None else hiding.part.model_dump(mode="json"),
             "ratios": [ratio.model_dump(mode="json") for ratio in ratios],
             "fit": fit.model_dump(mode="json"),
         }

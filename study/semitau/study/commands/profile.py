@@ -28,17 +28,20 @@ def command(
     """Likelihood curves of the ratios and their joint region.
 
     At each point all other parameters are fitted. The interval of a ratio is where −2 ln L is within 1 of its minimum;
-    the region of the first two ratios holds 68.3 % and 95.4 %.
+    the region of the first two ratios holds 39.3, 68.3, 95.4 and 99.7 %.
     """
     import numpy as np
     from semitau.fit.curves import profile, region
 
+    from ..blinding import cover_of
     from ..fitting import choose_data, described, fit_or_fail, open_model
     from ..likelihood_parts import curve_document, curve_table, drawn_curves, region_document
 
     model = open_model(templates, not exact_templates, fix)
     observed, source = choose_data(model, data, expected)
+    hiding = cover_of(model.templates, source.kind)
     best = fit_or_fail(model, observed)
+    shown = best if hiding is None else hiding.result(model, best)
     free = [name for name in model.ratios if best.error(name) > 0]
     curves = []
     plane = None
@@ -51,7 +54,10 @@ def command(
         if len(free) > 1:
             plane = region(model, observed, (free[0], free[1]), points, result=best)
             report("curves", steps, steps)
-    call.terminal.show(described(source), "", curve_table(model, best, curves))
+    if hiding is not None:
+        curves = [hiding.curve(curve) for curve in curves]
+        plane = None if plane is None else hiding.region(plane)
+    call.terminal.show(described(source), "", curve_table(model, shown, curves))
     if output is not None:
         drawn_curves(model, curves, plane).save(
             output, "likelihood", "Likelihood", "Likelihood curves of the ratios and their joint region."
@@ -60,6 +66,7 @@ def command(
     call.terminal.result(
         {
             "data": source.model_dump(mode="json"),
+            "blinding": None if hiding is None else hiding.part.model_dump(mode="json"),
             "curves": [curve_document(curve) for curve in curves],
             "region": None if plane is None else region_document(plane),
         }

@@ -14,10 +14,12 @@ BAR, BETWEEN = 0.165, 0.1
 """Inches: thickness of a bar, and the gap between two sources."""
 
 
-def budget_bars(budgets: Sequence[Budget], values: Mapping[str, float], labels: Mapping[str, str]) -> Sheet:
-    """A sheet with one group of bars a source, the largest first, in per cent of the fitted ratio.
+def budget_bars(
+    budgets: Sequence[Budget], values: Mapping[str, float], labels: Mapping[str, str], scale: str = "fitted"
+) -> Sheet:
+    """A sheet with one group of bars a source, the largest first, in per cent of the ratio.
 
-    values, labels : ratio name -> fitted value, label.
+    values, labels : ratio name -> value, label. scale : which value that is, "fitted" or "injected".
     """
     named = {row.source: row.label for budget in budgets for row in budget.rows}
     share = {
@@ -30,7 +32,7 @@ def budget_bars(budgets: Sequence[Budget], values: Mapping[str, float], labels: 
     margin = 0.4 + 0.068 * max(len(named.get(row, "total")) for row in rows)
     row = BAR * len(budgets) + BETWEEN
     height = row * len(rows)
-    sheet = Sheet(margin + 5.6, height + 1.2, "Uncertainty by source", "in per cent of the fitted ratio")
+    sheet = Sheet(margin + 5.6, height + 1.2, "Uncertainty by source", f"in per cent of the {scale} ratio")
     axes = sheet.axes(margin, 0.5, 5.0, height)
     thickness = BAR / row
     for number, budget in enumerate(budgets):

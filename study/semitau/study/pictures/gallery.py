@@ -13,6 +13,7 @@ from ..results import Results
 from .budget_bars import budget_bars
 from .correlations import correlation_matrix
 from .linearity import linearity
+from .nuisance_strips import nuisance_strips
 from .projections import stacked_projections
 from .sheet import Picture, Sheet
 from .style import RC, component_colours
@@ -46,14 +47,23 @@ def draw_pictures(
 
 
 def _drawings(results: Results) -> Iterator[Drawing]:
-    values = {ratio.name: ratio.value for ratio in results.ratios}
+    # Hidden ratios are no scale for errors.
+    values = {ratio.name: ratio.value if results.blinding is None else ratio.injected for ratio in results.ratios}
+    scale = "fitted" if results.blinding is None else "injected"
     labels = {ratio.name: ratio.label for ratio in results.ratios}
     if results.budget:
         yield (
             "budget",
             "Uncertainty by source",
-            "Error of each ratio from each source, in per cent of the fitted ratio, with the total on top.",
-            partial(budget_bars, results.budget, values, labels),
+            f"Error of each ratio from each source, in per cent of the {scale} ratio, with the total on top.",
+            partial(budget_bars, results.budget, values, labels, scale),
+        )
+    if results.nuisances:
+        yield (
+            "nuisances",
+            "Nuisances",
+            "Fitted value and error of each nuisance on its auxiliary measurement, and how far it moves each ratio.",
+            partial(nuisance_strips, results.nuisances, results.ratios),
         )
     toys = results.toys
     if toys is not None and toys.number > toys.failures:
