@@ -303,5 +303,19 @@ def _useless(model: Model) -> Iterator[Problem]:
                 where=f"parameter {parameter.name}",
                 remedy="Fix it, or leave it out of the template set.",
             )
+    for index in model.free.tolist():
+        if model.parameters[index].kind == "nuisance" and _is_folded(model.templates, model.names[index]):
+            yield Problem(
+                "both sides shift the templates alike, so the fit cannot tell them apart",
+                where=f"nuisance {model.names[index]}",
+                remedy="Keep one side and mirror it (fit.mirrored), or hold the nuisance.",
+            )
     if model.free.size == 0:
         yield Problem("every parameter is fixed: there is nothing to fit", where="fixed")
+
+
+def _is_folded(templates: TemplateSet, name: str) -> bool:
+    """Whether plus and minus are the same everywhere, and not the nominal."""
+    mine = [template for template in templates.templates.values() if name in template.plus]
+    alike = all(np.array_equal(template.plus[name], template.minus[name]) for template in mine)
+    return alike and any(not np.array_equal(template.plus[name], template.nominal) for template in mine)
