@@ -210,6 +210,13 @@ def test_inclusive_rate(parent: str) -> None:
     assert total == pytest.approx(mean, rel=np.hypot(0.0016 / 0.1065, 0.04 * 0.72))
 
 
+def test_width_of_a_continuum_is_its_branching_fraction() -> None:
+    """The strength of the universal function is made for that; measured branching fractions are the source."""
+    for family, state in CONTINUA.items():
+        found = gen.observables(gen.Decay("B+", charm_name("B+", family), "e")).branching_fraction
+        assert found == pytest.approx(state.light_branching_fraction, rel=1e-4)
+
+
 def test_continuum_charges() -> None:
     """Isospin: 2/3 charged pions in (D pi); pairs 1/2 +-, 1/3 +-0, 1/6 00; every chain conserves charge."""
     found = channels(["B+", "B0"], CONTINUA, ["mu"])

@@ -92,6 +92,9 @@ WIDTH: Mapping[str, float] = MappingProxyType(
 
 LIFETIME: Mapping[str, float] = MappingProxyType({"B0": 1.517, "B+": 1.638, "tau": 0.2903, "D0": 0.4103, "D+": 1.033})
 
+MIXING_PROBABILITY = 0.1858
+"""Time-integrated probability chi_d that a B0 decays as its antiparticle."""
+
 BRANCHING_FRACTION: Mapping[str, Mapping[str, float]] = MappingProxyType(
     {
         "tau": MappingProxyType(

@@ -55,7 +55,7 @@ def broad_doublet(
 
 
 def continuum(parameters: Mapping[str, float], parent_mass: float, charm_mass: float | Floats, q2: Floats) -> Floats:
-    """The same for a system of a D(*) and light mesons, 1 at w = 1; `continuum_slope`, -1.5 if the set has none."""
+    """The same for a system of a D(*) and light mesons, over its value at w = 1; `continuum_slope`, or -1.5."""
     return 1.0 + parameters.get("continuum_slope", -1.5) * recoil(parent_mass, charm_mass, q2)
 
 

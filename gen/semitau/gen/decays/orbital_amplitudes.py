@@ -33,7 +33,7 @@ def orbital_currents(decay: Decay, q2: Floats, charm_mass: Floats) -> OrbitalCur
     w, u = step + 1.0, np.sqrt(np.maximum(step, 0.0) * (step + 2.0))
     function = continuum if state.continuum else narrow_doublet if state.narrow else broad_doublet
     f1, f2, f3, f_A = form_factors_over_function(state, parameters, step)
-    scale, root = np.sqrt(M * m) * function(parameters, M, m, q2), np.sqrt(q2)
+    scale, root = np.sqrt(M * m) * state.strength * function(parameters, M, m, q2), np.sqrt(q2)
     natural_is_vector = (state.spin == 1) == (state.parity > 0)
     if state.spin == 0:
         longitudinal = u * (m * f2 + M * f3)

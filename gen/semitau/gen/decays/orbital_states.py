@@ -23,6 +23,8 @@ class CharmState:
     light : what goes with the D or D*: "pi", "pi pi" or "eta".
     continuum : no resonance: its mass follows phase space.
     parity : of the state; a light meson in an S wave takes that of the D(*) to its opposite.
+    strength : of a continuum: its universal function at w = 1, such that the width to an electron gives
+        `light_branching_fraction` with the shipped sets.
     """
 
     family: str
@@ -34,6 +36,7 @@ class CharmState:
     light: str = "pi"
     continuum: bool = False
     parity: int = 1
+    strength: float = 1.0
 
     @property
     def broad(self) -> bool:
@@ -85,12 +88,12 @@ CONTINUA: Mapping[str, CharmState] = MappingProxyType(
     {
         state.family: state
         for state in (
-            CharmState("(D pi)", 0, False, 0.0, 0.0003, continuum=True),
-            CharmState("(D* pi)", 1, False, 1.0, 0.0009, continuum=True),
-            CharmState("(D pi pi)", 0, False, 0.0, 0.0012, light="pi pi", continuum=True, parity=-1),
-            CharmState("(D* pi pi)", 1, False, 1.0, 0.0016, light="pi pi", continuum=True, parity=-1),
-            CharmState("(D eta)", 0, False, 0.0, 0.0059, light="eta", continuum=True),
-            CharmState("(D* eta)", 1, False, 1.0, 0.0059, light="eta", continuum=True),
+            CharmState("(D pi)", 0, False, 0.0, 0.0003, continuum=True, strength=0.58398),
+            CharmState("(D* pi)", 1, False, 1.0, 0.0009, continuum=True, strength=0.94550),
+            CharmState("(D pi pi)", 0, False, 0.0, 0.0012, light="pi pi", continuum=True, parity=-1, strength=0.65028),
+            CharmState("(D* pi pi)", 1, False, 1.0, 0.0016, light="pi pi", continuum=True, parity=-1, strength=0.46537),
+            CharmState("(D eta)", 0, False, 0.0, 0.0059, light="eta", continuum=True, strength=3.48613),
+            CharmState("(D* eta)", 1, False, 1.0, 0.0059, light="eta", continuum=True, strength=3.47891),
         )
     }
 )

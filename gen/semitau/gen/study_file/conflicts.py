@@ -84,9 +84,11 @@ def _modes(sections: Sections) -> Iterator[Conflict]:
                 yield Conflict(("mode", i), f"holds a decay that is in {first} too", text, remedy=remedy)
                 break
         if sections.detector is not None:
-            tag = sections.detector.tag.efficiency
-            if not any(tag[parent] for parent in mode.parents):
+            tag = sections.detector.tag
+            if not any(tag.kept(parent) for parent in mode.parents):
                 remedy = "Raise [detector.tag] efficiency or remove the mode."
+                if tag.flavour == "same" and any(tag.efficiency[parent] for parent in mode.parents):
+                    remedy = "Take another flavour of the tag, or a mode with B0: only B0 mix."
                 got = f"no tag for {' and '.join(mode.parents)}"
                 yield Conflict(("mode", i), "is a component with no events", got, remedy=remedy)
 

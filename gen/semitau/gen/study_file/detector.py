@@ -6,11 +6,12 @@ what differs. Momenta are laboratory momenta in GeV.
 
 from __future__ import annotations
 
-from typing import Annotated, Any, ClassVar
+from typing import Annotated, Any, ClassVar, Literal
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from pydantic import Field, model_validator
+from semitau.core.constants import MIXING_PROBABILITY
 
 from .names import CharmHadron, Parent
 from .rules import (
@@ -111,6 +112,15 @@ class Tag(Table):
     wrong_charge_fraction: Fraction = Field(
         default=0.3, description="of the wrong tags, those with the charge of the other B species"
     )
+    flavour: Literal["any", "opposite", "same"] = Field(
+        default="any", description="of the tag against the lepton's; B⁰ mixing makes it the same for 18.6% of B⁰"
+    )
+
+    def kept(self, parent: str) -> float:
+        """Chance that a B of this kind is reconstructed beside a lepton of the other B with the flavour asked for."""
+        same = MIXING_PROBABILITY if parent == "B0" else 0.0
+        share = {"any": 1.0, "opposite": 1.0 - same, "same": same}[self.flavour]
+        return self.efficiency[parent] * share
 
 
 class Tracks(Table):

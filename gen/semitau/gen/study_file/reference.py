@@ -60,6 +60,8 @@ SECTIONS: dict[str, tuple[str, ...]] = {
         "MomentumScale",
     ),
     "[fit]": ("FitSection",),
+    "[fit.bounds]": ("Bounds",),
+    "[[fit.correlated]]": ("Correlated",),
     "[toys]": ("Toys",),
     "[blinding]": ("Blinding",),
     "Values with a short form": (
@@ -70,6 +72,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
         "PerCharm",
         "Yield",
         "FitData",
+        "Constraint",
         "Linearity",
     ),
 }

@@ -112,6 +112,15 @@ class DoubleCharmShare(_Named):
         return self
 
 
+class ProductionRatio(_Named):
+    """Ratio of B⁺ to B⁰ production at the collider; the number of pairs stays."""
+
+    default_group: ClassVar[str] = "B production"
+
+    kind: Literal["production_ratio"]
+    relative: _Relative = Field(description="one standard deviation")
+
+
 class SoftPionEfficiency(_Named):
     """Efficiency of the soft pion or photon of a D*."""
 
@@ -165,6 +174,7 @@ SingleVariation = (
     | FormFactorDirection
     | ComponentFraction
     | DoubleCharmShare
+    | ProductionRatio
     | SoftPionEfficiency
     | LeptonIdentificationEfficiency
     | Misidentification
@@ -179,6 +189,7 @@ Variation = Annotated[
     | FormFactorDirections
     | ComponentFraction
     | DoubleCharmShare
+    | ProductionRatio
     | SoftPionEfficiency
     | LeptonIdentificationEfficiency
     | Misidentification

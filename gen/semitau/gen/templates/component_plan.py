@@ -132,7 +132,7 @@ def expected_decays(study: StudyConfig, channel: AnyChain) -> float:
         2.0
         * parent_pairs(study, channel.parent)
         * channel.branching_fraction
-        * detector.tag.efficiency[channel.parent]
+        * detector.tag.kept(channel.parent)
         * detector.charm.reconstructed[channel.ground]
     )
 
@@ -165,7 +165,7 @@ def predicted_ratio(
     chosen = study.form_factor_set(FORM_FACTORS_OF[family])
     sums = {"e": 0.0, "mu": 0.0, "tau": 0.0}
     for parent in parents:
-        tagged = parent_pairs(study, parent) * study.detector.tag.efficiency[parent]
+        tagged = parent_pairs(study, parent) * study.detector.tag.kept(parent)
         for lepton in sums:
             wilson, tensor = (of_tau, study.wilson.tensor) if lepton == "tau" else (None, "LO")
             decay = Decay(parent, charm_name(parent, family), lepton, chosen, wilson, tensor)

@@ -30,6 +30,7 @@ from ..study_file.variations import (
     LeptonIdentificationEfficiency,
     Misidentification,
     MomentumScale,
+    ProductionRatio,
     SingleVariation,
     SoftPionEfficiency,
     TagResolution,
@@ -110,6 +111,12 @@ def common_variations(
             if isinstance(variation, SoftPionEfficiency):
                 if _SOFT_KIND[variation.particle] == channel.soft:
                     soft[variation.name, sign] = change
+            elif isinstance(variation, ProductionRatio):
+                charged = study.experiment.charged_fraction
+                moved = charged * change / (charged * change + 1.0 - charged)
+                if 0.0 < charged < 1.0:
+                    factor = moved / charged if channel.parent == "B+" else (1.0 - moved) / (1.0 - charged)
+                    factors[variation.name, sign] = np.full(len(leptons), factor)
             elif isinstance(variation, LeptonIdentificationEfficiency) and channel.seen_lepton == variation.lepton:
                 is_lepton = np.array([lepton == variation.lepton for lepton in leptons])
                 factors[variation.name, sign] = np.where(is_lepton, change, 1.0)
