@@ -206,6 +206,9 @@ def test_common_sources_are_nuisance_parameters() -> None:
     assert found.values == pytest.approx(solution[:2])
     assert found.covariance == pytest.approx(np.linalg.inv(matrix.T @ matrix)[:2, :2])
     assert found.chi2 == pytest.approx(left[0])
+    # A source that is fixed takes its part of the error away: the same weights, on what is left.
+    shift = np.array([m.sources.get("x", {}).get(r, 0.0) for m in SHARED for r in m.ratios])
+    assert found.source_errors("x") == pytest.approx(np.abs(found.weights @ shift))
     alone = average(SHARED, {"x": 0.0, "y": 0.0})
     assert abs(found.value("R_D") - alone.value("R_D")) > 1e-4, "the sources should matter here"
 

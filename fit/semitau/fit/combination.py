@@ -22,7 +22,8 @@ class Average:
 
     values, up, down : (ratios,), errors as positive numbers; equal sides for the linear form.
     covariance, statistical, systematic : (ratios, ratios); the first is the sum of the others. For the likelihood form
-        they are those of a linear average with the widths that the averaged values see.
+        they are those of a linear average with the widths that the averaged values see, stretched such that the
+        symmetric errors are the mean of `up` and `down`.
     weights : (ratios, inputs); each row adds up to 1 over the inputs of its own ratio and to 0 over the others. One
         may be negative where a correlation is strong.
     pulls : (inputs,) residual over its own error, sqrt(C_ii - V_ii); NaN where an input alone makes the average.
@@ -65,6 +66,11 @@ class Average:
     def error(self, ratio: str) -> float:
         """Symmetric error of a ratio."""
         return float(self.errors[self.ratios.index(ratio)])
+
+    def source_errors(self, source: str) -> Floats:
+        """(ratios,) what a common source contributes to the systematic errors."""
+        part = self.weights @ self.inputs.source_covariance(source) @ self.weights.T
+        return np.asarray(np.sqrt(np.maximum(np.diag(part), 0.0)))
 
     def joined_by(self, measurement: Measurement, at: Mapping[str, float]) -> Average:
         """The average with one more measurement, in the same form.
@@ -144,8 +150,14 @@ def _likelihood(given: Inputs, start: Average) -> Average:
     shifts = given.design @ values - given.values
     covariances = given.covariances(shifts)
     here = _linear(given, covariances)
+    # Correlations and kinds from the widths at the best point, the size from the curve itself.
+    stretch = 0.5 * (up + down) / here.errors
+    stretch = np.outer(stretch, stretch)
     return replace(
         here, form="likelihood", values=values, up=up, down=down, chi2=lowest,
+        covariance=here.covariance * stretch,
+        statistical=here.statistical * stretch,
+        systematic=here.systematic * stretch,
         pulls=_pulls(-shifts, covariances.sum(axis=0), given.design @ here.covariance @ given.design.T),
         p_value=_p_value(lowest, here.degrees_of_freedom),
     )  # fmt: skip

@@ -64,6 +64,13 @@ class Inputs:
         widths = self.widths(shifts)
         return np.asarray(widths[:, :, None] * self.correlations * widths[:, None, :])
 
+    def source_covariance(self, source: str) -> Floats:
+        """(inputs, inputs): the part of the systematic covariance that a common source makes, errors symmetrised."""
+        entries = [(owner, ratio) for owner in self.measurements for ratio in owner.ratios]
+        shift = np.array([owner.sources.get(source, {}).get(ratio, 0.0) for owner, ratio in entries])
+        same = np.array([[a is b for b, _ in entries] for a, _ in entries])
+        return np.asarray(np.where(same, 1.0, self.common[source]) * np.outer(shift, shift))
+
 
 def inputs(measurements: Sequence[Measurement], common: Mapping[str, float] | None = None) -> Inputs:
     """Measurements as a vector.

@@ -25,6 +25,7 @@ COMMANDS = {
     "budget": "Take the uncertainty of each ratio apart by source.",
     "final": "Declare a study with hidden ratios final, before it is unblinded.",
     "unblind": "Show the true ratios of a study that was declared final.",
+    "average": "Combine measurements with correlations; compatibility with a prediction.",
     "report": "Draw pictures and report of a study folder again.",
 }
 """Name -> what it does. Kept here, not in the commands, so that the list needs no import; a test compares the two."""

@@ -43,3 +43,8 @@ def counted(number: float) -> str:
 def percent(fraction: float, places: int = 1) -> str:
     """E.g. "4.2 %"."""
     return f"{signed(100 * fraction, places)}{GAP}%"
+
+
+def shortened(name: str, length: int = 28) -> str:
+    """A name cut to a length that fits a table or a picture."""
+    return name if len(name) <= length else name[: length - 1].rstrip() + "…"
