@@ -10,7 +10,7 @@ from semitau.core.errors import InputError
 from semitau.core.templates import Template, TemplateSet
 from semitau.fit import Model, interpolate, maximise
 from semitau.fit.interpolation import positive
-from semitau.fit.shape_and_rate import mirror, mirrored, one_sided, shape_and_rate
+from semitau.fit.shape_and_rate import mirror, mirrored, one_sided, split_shape_and_rate
 
 from . import problems
 
@@ -23,7 +23,7 @@ def totals(templates: TemplateSet, component: str, side: str, name: str) -> floa
 def test_parts_are_what_they_say() -> None:
     """The shape part keeps each total, the rate part each shape, and their product is the variation."""
     whole = problems.small()
-    parts = shape_and_rate(whole, ["lepton_id"])
+    parts = split_shape_and_rate(whole, ["lepton_id"])
     assert [n.name for n in parts.nuisances] == ["slow_pion", "lepton_id_shape", "lepton_id_rate", "R0"]
     for component in ("D_tau", "Dst_tau", "Dst_light"):
         for side in ("plus", "minus"):
@@ -41,7 +41,7 @@ def test_parts_are_what_they_say() -> None:
 
 def test_parts_are_fitted_apart() -> None:
     """Pulled alike they are the whole, to the product of two small shifts; held apart they give two pulls."""
-    whole, parts = Model(problems.small()), Model(shape_and_rate(problems.small(), ["lepton_id"]))
+    whole, parts = Model(problems.small()), Model(split_shape_and_rate(problems.small(), ["lepton_id"]))
     for theta in (-1.0, 0.3):
         one = whole.expected_counts({"lepton_id": theta})
         two = parts.expected_counts({"lepton_id_shape": theta, "lepton_id_rate": theta})
@@ -51,14 +51,14 @@ def test_parts_are_fitted_apart() -> None:
 
 def test_parts_need_a_rate() -> None:
     with pytest.raises(InputError, match="no such nuisance"):
-        shape_and_rate(problems.small(), ["lepton"])
+        split_shape_and_rate(problems.small(), ["lepton"])
     base = problems.small()
     place = ("D0", "D_tau")
     empty = {key: t for key, t in base.templates.items() if key[1] != "D_tau"}
     zero = np.zeros_like(base.templates[place].nominal)
     empty[place] = Template(zero, zero, {"slow_pion": zero + 1}, {"slow_pion": zero})
     with pytest.raises(InputError, match="a total is not positive"):
-        shape_and_rate(replace(base, templates=empty), ["slow_pion"])
+        split_shape_and_rate(replace(base, templates=empty), ["slow_pion"])
 
 
 def test_mirror() -> None:

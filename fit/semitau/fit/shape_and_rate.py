@@ -16,7 +16,7 @@ from semitau.core.templates import Floats, Nuisance, Template, TemplateSet
 SIDES = ("plus", "minus")
 
 
-def shape_and_rate(templates: TemplateSet, names: Iterable[str]) -> TemplateSet:
+def split_shape_and_rate(templates: TemplateSet, names: Iterable[str]) -> TemplateSet:
     """Each named nuisance as two of its own: `<name>_shape` and `<name>_rate`.
 
     The rate part moves a component's total over all categories by the factor that the variation does, and nothing

@@ -20,7 +20,6 @@ from semitau.core.errors import InputError, Problem
 from semitau.core.template_file import read_templates
 from semitau.core.templates import Floats, TemplateSet
 from semitau.core.whole_files import write_whole
-from semitau.fit.model import Model
 from semitau.gen.study_file.study import StudyConfig
 
 from .blinding import Cover, cover, passphrase
@@ -29,6 +28,7 @@ from .pictures import draw_pictures
 from .report import write_report
 from .results import Results, read_results
 from .study_folder import StudyFolder, claimed_folder, code_digest, study_key, versions
+from .study_model import study_model
 from .study_run import Report, StudyRun, fitted_data, found_results
 
 FINAL, UNBLINDING = "final.json", "unblinding.json"
@@ -132,7 +132,7 @@ def _opened(
 def _state(study: StudyConfig, folder: StudyFolder, hiding: Cover) -> dict[str, Any]:
     """Everything that the fitted ratios depend on, as hashes."""
     templates = read_templates(folder.templates)
-    data, _ = fitted_data(study, Model(templates, template_statistics=study.fit.template_statistics))
+    data, _ = fitted_data(study, study_model(study, templates))
     return {
         "study": study.digest,
         "seed": study.study.seed,

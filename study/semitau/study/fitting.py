@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
 from pathlib import Path
 
 from semitau.core.errors import InputError, Problem, RunError
@@ -12,22 +11,20 @@ from semitau.fit.model import Model
 from semitau.fit.newton import maximise
 from semitau.fit.result import FitResult
 
+from .fit_choices import FitChoices
 from .numbers import counted
 from .results import DataSource
 
 
-def open_model(path: Path, template_statistics: bool = True, fixed: Sequence[str] = ()) -> Model:
+def open_model(path: Path, choices: FitChoices | None = None) -> Model:
     """The model of a template file from anybody.
-
-    fixed : "NAME=VALUE" of parameters to hold.
 
     Raises
     ------
     InputError : the file is missing, not a template file, of another version, or holds what no template may hold; or
-        `fixed` names no parameter.
+        a choice names no parameter.
     """
-    templates = read_templates(path)
-    return Model(templates, template_statistics=template_statistics, fixed=dict(map(_holding, fixed)))
+    return (choices or FitChoices()).model(read_templates(path))
 
 
 def choose_data(model: Model, data_file: Path | None, expected: bool = False) -> tuple[Data, DataSource]:
@@ -72,18 +69,6 @@ def read_factors(text: str) -> tuple[float, ...]:
             Problem("not a list of multiples", where="--factors", got=repr(text), wanted='numbers, e.g. "0.8,1,1.2"')
         ) from None
     return factors
-
-
-def _holding(text: str) -> tuple[str, float]:
-    name, sign, value = text.partition("=")
-    try:
-        if not sign:
-            raise ValueError
-        return name.strip(), float(value)
-    except ValueError:
-        raise InputError(
-            Problem("not a parameter and its value", where="--fix", got=repr(text), wanted="NAME=NUMBER, e.g. R_D=0.3")
-        ) from None
 
 
 def _events(data: Data) -> float:

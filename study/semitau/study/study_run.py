@@ -35,6 +35,7 @@ from .report import write_report
 from .results import DataSource, Results, StageTime, StudyIdentity, Timing, read_results
 from .reweighting_parts import reweighting_warnings
 from .study_folder import StudyFolder, claimed_folder, study_key, versions
+from .study_model import study_model
 from .study_templates import study_templates
 from .toy_file import write_toys
 from .toy_parts import linearity_parts, overall_verdict, toys_part
@@ -139,7 +140,7 @@ def found_results(
     if made.reused:
         watch.reused()
     with watch.stage("fit"):
-        model = Model(made.templates, template_statistics=study.fit.template_statistics)
+        model = study_model(study, made.templates)
         data, source = fitted_data(study, model)
         fitted = fit_or_fail(model, data)
         split = budget(model, fitted)

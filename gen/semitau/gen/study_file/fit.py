@@ -6,8 +6,22 @@ from typing import Annotated, Any, ClassVar, Literal
 
 from pydantic import BeforeValidator, Field, model_validator
 
+from .fit_parameters import Bounds, Constraint, Correlated
 from .names import RatioName
-from .rules import Count, Flag, Increasing, Positive, ShortTable, Table, Text, broken, suggestion
+from .rules import (
+    Count,
+    Distinct,
+    Flag,
+    Identifier,
+    Increasing,
+    Number,
+    Positive,
+    ShortTable,
+    Table,
+    Text,
+    broken,
+    suggestion,
+)
 
 
 class FitData(ShortTable):
@@ -45,9 +59,25 @@ class FitSection(Table):
         default="isospin", description='"separate": R_D and R_Dst for B⁺ and B⁰ on their own'
     )
     template_statistics: Flag = Field(default=True, description="finite template statistics in the likelihood")
+    likelihood: Literal["light", "approximate", "exact"] = Field(
+        default="light", description="its form for finite templates (docs/statistics.md)"
+    )
     data: FitData = Field(default=FitData(kind="expected"), description="what is fitted")
     injected: dict[RatioName, Positive] = Field(
         default={}, description="ratios that templates are made with; those of the form factors if left out"
+    )
+    fixed: dict[Identifier, Number] = Field(default={}, description="parameters held, and at which value")
+    functions: dict[Identifier, Text] = Field(
+        default={}, description='parameters that follow others, e.g. R_Dst_B0 = "R_Dst_Bp" or yield_b = "1.1 * yield_a"'
+    )
+    constraints: dict[Identifier, Constraint] = Field(default={}, description="of single parameters")
+    correlated: tuple[Correlated, ...] = Field(default=(), description="parameters measured together")
+    bounds: dict[Identifier, Bounds] = Field(default={}, description="ranges that the fit keeps to")
+    apart: Annotated[tuple[Identifier, ...], Distinct] = Field(
+        default=(), description="variations whose shape and rate become two nuisances, NAME_shape and NAME_rate"
+    )
+    mirrored: dict[Identifier, Literal["plus", "minus"]] = Field(
+        default={}, description="variations of which one side is kept and the other is its mirror image"
     )
 
 

@@ -6,6 +6,7 @@ from pathlib import Path
 
 import click
 
+from ..fit_choices import FitChoices
 from ..invocation import Invocation, shared_options
 from ..template_options import template_options
 
@@ -13,9 +14,7 @@ from ..template_options import template_options
 @click.command()
 @template_options
 @shared_options
-def command(
-    call: Invocation, templates: Path, data: Path | None, expected: bool, fix: tuple[str, ...], exact_templates: bool
-) -> None:
+def command(call: Invocation, templates: Path, data: Path | None, expected: bool, choices: FitChoices) -> None:
     """Fit templates to data: ratios, errors, correlations.
 
     TEMPLATES is a template file from anybody's simulation (docs/template_file.md). What is fitted: the file of --data,
@@ -28,7 +27,7 @@ def command(
     from ..fitting import choose_data, described, fit_or_fail, open_model
     from ..summary import goodness_line, hidden_line, parameter_table, ratio_table
 
-    model = open_model(templates, not exact_templates, fix)
+    model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)
     hiding = cover_of(model.templates, source.kind)
     result = fit_or_fail(model, observed)

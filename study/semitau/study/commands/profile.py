@@ -6,6 +6,7 @@ from pathlib import Path
 
 import click
 
+from ..fit_choices import FitChoices
 from ..invocation import Invocation, shared_options
 from ..template_options import template_options
 
@@ -20,8 +21,7 @@ def command(
     templates: Path,
     data: Path | None,
     expected: bool,
-    fix: tuple[str, ...],
-    exact_templates: bool,
+    choices: FitChoices,
     output: Path | None,
     points: int,
 ) -> None:
@@ -37,7 +37,7 @@ def command(
     from ..fitting import choose_data, described, fit_or_fail, open_model
     from ..likelihood_parts import curve_document, curve_table, drawn_curves, region_document
 
-    model = open_model(templates, not exact_templates, fix)
+    model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)
     hiding = cover_of(model.templates, source.kind)
     best = fit_or_fail(model, observed)

@@ -6,6 +6,7 @@ from pathlib import Path
 
 import click
 
+from ..fit_choices import FitChoices, fit_choices
 from ..invocation import Invocation, shared_options
 
 SEED = 1
@@ -17,8 +18,7 @@ SEED = 1
 @click.option(
     "--factors", default="", metavar="LIST", help='Also fit toys at these multiples of the ratios, e.g. "0.8,1,1.2".'
 )
-@click.option("--fix", multiple=True, metavar="NAME=VALUE", help="Hold a parameter; may be repeated.")
-@click.option("--exact-templates", is_flag=True, help="Take the templates as exact: no finite template statistics.")
+@fit_choices
 @click.option("--output", type=click.Path(path_type=Path, dir_okay=False), help="ROOT file for every toy.")
 @shared_options
 def command(
@@ -26,8 +26,7 @@ def command(
     templates: Path,
     number: int,
     factors: str,
-    fix: tuple[str, ...],
-    exact_templates: bool,
+    choices: FitChoices,
     output: Path | None,
 ) -> None:
     """Bias, pulls and coverage of the fit from pseudo-data sets.
@@ -45,7 +44,7 @@ def command(
 
     seed = SEED if call.seed is None else call.seed
     multiples = read_factors(factors)
-    model = open_model(templates, not exact_templates, fix)
+    model = open_model(templates, choices)
     labels = {parameter.name: parameter.label for parameter in model.parameters}
     with call.terminal.progress() as report:
         toys = run_toys(model, number, seed, call.workers, report)
