@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+import re
 from pathlib import Path
 
 import numpy as np
 import pytest
 from semitau import gen
 from semitau.core.errors import InputError
+from semitau.gen.decays.form_factor_parameters import FIXED
 from semitau.gen.decays.form_factor_set import read_form_factors
 from semitau.gen.study_file.reader import read_study
 from semitau.gen.templates.component_plan import plan_channels, predicted_ratio
@@ -208,3 +210,21 @@ def test_wrong_in_a_study(tables: str, message: str, tmp_path: Path) -> None:
         read_study(chosen(tmp_path, tables))
     said = str(error.value).replace(f"{tmp_path}/", "")
     assert any(line.startswith("study.toml:11: ") and message in line for line in said.splitlines()), said
+
+
+def test_document() -> None:
+    """docs/form_factors.md: every shipped set has a row, and its examples are sound."""
+    text = (Path(__file__).parents[2] / "docs" / "form_factors.md").read_text(encoding="utf-8")
+    for name in gen.form_factor_sets():
+        assert f"| `{name}` |" in text, name
+    for (parametrisation, transition), names in FIXED.items():
+        for name in names:
+            assert f"`{name}`" in text or parametrisation == "BCL", (parametrisation, transition, name)
+
+
+def test_examples_of_the_document(tmp_path: Path) -> None:
+    text = (Path(__file__).parents[2] / "docs" / "form_factors.md").read_text(encoding="utf-8")
+    (own,) = re.findall(r"```toml\n(\[D\]\n.*?)```", text, re.DOTALL)
+    (table,) = re.findall(r"```csv\n(.*?)```", text, re.DOTALL)
+    assert gen.read_form_factors(written(tmp_path, own)).transitions == ("D",)
+    assert gen.read_form_factors(written(tmp_path, table, "my_set.csv"), "CLN", "D").transitions == ("D",)

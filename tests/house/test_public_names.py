@@ -11,7 +11,7 @@ import pytest
 PUBLIC = {
     "gen": {
         "Decay", "WilsonCoefficients", "differential_rate", "form_factor_sets", "form_factors", "observables", "ratio",
-        "simulate", "weights",
+        "read_form_factors", "simulate", "weights",
     },
     "fit": {"Model", "maximise", "profile", "read_templates", "run_toys"},
 }  # fmt: skip

@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from .decays.decay import WilsonCoefficients as WilsonCoefficients
     from .decays.form_factor_set import form_factor_sets as form_factor_sets
     from .decays.form_factor_set import form_factors as form_factors
+    from .decays.form_factor_set import read_form_factors as read_form_factors
     from .decays.rates import differential_rate as differential_rate
     from .decays.rates import observables as observables
     from .decays.rates import ratio as ratio
@@ -27,6 +28,7 @@ _HOME = {
     "form_factors": "decays.form_factor_set",
     "observables": "decays.rates",
     "ratio": "decays.rates",
+    "read_form_factors": "decays.form_factor_set",
     "simulate": "truth.simulation",
     "weights": "truth.event_weights",
 }
@@ -39,6 +41,7 @@ __all__ = [
     "form_factors",
     "observables",
     "ratio",
+    "read_form_factors",
     "simulate",
     "weights",
 ]
