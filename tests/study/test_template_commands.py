@@ -92,8 +92,8 @@ def test_profile_crosses_one_at_its_interval(template_file: Path, tmp_path: Path
         assert all(inside)
         assert len(inside) >= 3
     assert said["region"]["parameters"] == ["R_D", "R_Dst"]
-    # Two parameters at 68.3 and 95.4 %: the quantiles of χ² with two degrees of freedom, -2 ln(1 - p).
-    assert sorted(said["region"]["levels"].values()) == pytest.approx([2.2957, 6.1801], abs=2e-3)
+    # Two parameters at 39.3, 68.3, 95.4, 99.7 %: quantiles of χ² with two degrees of freedom, -2 ln(1 - p).
+    assert sorted(said["region"]["levels"].values()) == pytest.approx([1.0, 2.2957, 6.1801, 11.829], abs=2e-3)
     assert {path.name for path in tmp_path.iterdir()} == {"likelihood.svg", "likelihood.png"}
 
 

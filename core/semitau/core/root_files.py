@@ -26,6 +26,7 @@ class RootHistogram:
         file holds none (`weighted` is then False).
     edges : for each axis its edges, finite and increasing.
     outside : sum of the contents of all underflow and overflow bins.
+    all_contents, all_variances : the same with a flow bin at both ends of each axis. entries : how often it was filled.
     """
 
     contents: Floats
@@ -33,6 +34,9 @@ class RootHistogram:
     edges: tuple[Floats, ...]
     weighted: bool
     outside: float
+    all_contents: Floats
+    all_variances: Floats
+    entries: float
 
 
 @contextmanager
@@ -125,13 +129,23 @@ def histogram_of(stored_object: Any, where: str) -> RootHistogram:
             Problem("squared weights and bins differ in number", where, str(len(squares)), str(all_bins.size))
         )
     # ROOT runs through the first axis fastest.
-    in_bins = squares.reshape(all_bins.shape[::-1]).T[inside] if weighted else np.abs(contents)
-    variances = np.ascontiguousarray(in_bins)
+    all_squares = squares.reshape(all_bins.shape[::-1]).T if weighted else np.abs(all_bins)
+    variances = np.ascontiguousarray(all_squares[inside])
     for what, values in (("contents", contents), ("squared weights", variances)):
         if not np.isfinite(values).all():
             place = np.argwhere(~np.isfinite(values))[0].tolist()
             raise InputError(Problem(f"{what} not finite", f"{where} bin {place}", got=f"{values[tuple(place)]}"))
-    return RootHistogram(contents, variances, edges, weighted, _outside(all_bins, inside))
+    entries = float(stored_object.member("fEntries"))
+    return RootHistogram(
+        contents,
+        variances,
+        edges,
+        weighted,
+        _outside(all_bins, inside),
+        all_bins,
+        np.ascontiguousarray(all_squares),
+        entries,
+    )
 
 
 def _outside(all_bins: Floats, inside: Sequence[slice]) -> float:

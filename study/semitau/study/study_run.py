@@ -10,6 +10,7 @@ from contextlib import contextmanager
 from dataclasses import dataclass
 from datetime import UTC, datetime
 from pathlib import Path
+from typing import Literal
 
 from semitau.core.engine import checked_workers
 from semitau.core.errors import InputError
@@ -195,13 +196,17 @@ def found_results(
 def fitted_data(study: StudyConfig, model: Model) -> tuple[Data, DataSource]:
     """What the study wants fitted, and what that is in words."""
     wanted = study.fit.data
+    kind: Literal["expected", "pseudo", "file"] = "expected"
     if wanted.kind == "file" and wanted.file is not None:
-        data, description = model.data(study.beside(wanted.file)), f"data of {wanted.file}"
+        kind, data, description = "file", model.data(study.beside(wanted.file)), f"data of {wanted.file}"
+    elif wanted.kind == "import" and study.imports is not None and study.imports.data is not None:
+        kind, data, description = "file", model.data(model.templates), f"data of {study.imports.data.file}"
     elif wanted.kind == "pseudo":
-        data, description = model.data(model.templates), "pseudo-data from events that the templates do not know"
+        kind, data = "pseudo", model.data(model.templates)
+        description = "pseudo-data from events that the templates do not know"
     else:
         data, description = model.expected_data(), "expected events"
-    return data, DataSource(kind=wanted.kind, description=description, events=float(data.counts.sum()))
+    return data, DataSource(kind=kind, description=description, events=float(data.counts.sum()))
 
 
 def _one_bar(report: Report, points: int) -> Callable[[str, int, int], None]:

@@ -8,11 +8,13 @@ from pathlib import Path
 from typing import Any
 
 from semitau.core.errors import InputError
+from semitau.core.streams import stream_key
 from semitau.core.template_file import read_templates, write_templates
 from semitau.core.templates import TemplateSet
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import build_templates
 from semitau.gen.templates.cut_flow import CutFlow
+from semitau.gen.templates.imported import imported_data, poisson_of_imports, with_imports
 
 from .blinding import provenance
 from .results import CutFlowComponent, Reweighting
@@ -55,7 +57,7 @@ def study_templates(
     flow = _cut_flow_parts(build.cut_flow, build.templates)
     weighted = reweighting_parts(build.reweightings, build.templates)
     templates = replace(
-        build.templates,
+        with_imports(study, build.templates),
         provenance={
             **build.templates.provenance,
             "versions": versions(),
@@ -66,7 +68,9 @@ def study_templates(
         },
     )
     if study.fit.data.kind == "pseudo":
-        templates = replace(templates, data=_pseudo_data(study, workers, report))
+        templates = templates.with_data(_pseudo_data(study, templates, workers, report))
+    if study.fit.data.kind == "import":
+        templates = templates.with_data(imported_data(study, templates))
     write_templates(templates, path)
     return StudyTemplates(templates, flow, reused=False, reweightings=weighted)
 
@@ -128,7 +132,13 @@ def _share(part: float, whole: float) -> float:
     return part / whole if whole > 0 else 0.0
 
 
-def _pseudo_data(study: StudyConfig, workers: int | None, report: Report | None) -> Mapping[str, Any]:
+def _pseudo_data(
+    study: StudyConfig, templates: TemplateSet, workers: int | None, report: Report | None
+) -> Mapping[str, Any]:
     from semitau.gen.templates.pseudo_data import pseudo_data
 
-    return pseudo_data(study, workers, None if report is None else _under("pseudo-data", report))
+    generated = pseudo_data(study, workers, None if report is None else _under("pseudo-data", report))
+    # Imported components have no events of their own to draw: their counts are about their templates.
+    seed = int(stream_key(study.study.seed, "pseudo-data of imports"))
+    imported = poisson_of_imports(study, templates.templates, seed)
+    return {name: counts + imported.get(name, 0.0) for name, counts in generated.items()}

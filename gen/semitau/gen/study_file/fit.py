@@ -25,14 +25,14 @@ from .rules import (
 
 
 class FitData(ShortTable):
-    """What is fitted: "expected", "pseudo" (independent events), or { file = "data.root" }.
+    """What is fitted: "expected", "pseudo" (independent events), "import" ([import.data]), or { file = "data.root" }.
 
     The file holds histograms <category>/data with the axes of the study.
     """
 
-    short_schema: ClassVar[dict[str, Any]] = {"enum": ["expected", "pseudo"]}
+    short_schema: ClassVar[dict[str, Any]] = {"enum": ["expected", "pseudo", "import"]}
 
-    kind: Literal["expected", "pseudo", "file"] = Field(default="file", description="rather written short")
+    kind: Literal["expected", "pseudo", "import", "file"] = Field(default="file", description="rather written short")
     file: Text | None = Field(default=None, description="ROOT file, beside the study file unless absolute")
 
     @model_validator(mode="before")
@@ -40,15 +40,15 @@ class FitData(ShortTable):
     def _from_word(cls, given: Any) -> Any:
         if isinstance(given, FitData | dict):
             return given
-        if given in ("expected", "pseudo"):
+        if given in ("expected", "pseudo", "import"):
             return {"kind": given}
-        near = suggestion(given, ("expected", "pseudo"))
-        raise broken("is no data", '"expected", "pseudo" or { file = "data.root" }', near)
+        near = suggestion(given, ("expected", "pseudo", "import"))
+        raise broken("is no data", '"expected", "pseudo", "import" or { file = "data.root" }', near)
 
     @model_validator(mode="after")
     def _complete(self) -> FitData:
         if (self.kind == "file") != (self.file is not None):
-            raise broken("is no data", '"expected", "pseudo" or { file = "data.root" }')
+            raise broken("is no data", '"expected", "pseudo", "import" or { file = "data.root" }')
         return self
 
 

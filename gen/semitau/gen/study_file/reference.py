@@ -63,6 +63,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[fit.bounds]": ("Bounds",),
     "[[fit.correlated]]": ("Correlated",),
     "[toys]": ("Toys",),
+    "[import]": ("Imports", "ImportedComponent", "ImportedSides", "ImportedData"),
     "[blinding]": ("Blinding",),
     "Values with a short form": (
         "FormFactorSource",

@@ -8,7 +8,7 @@ out.
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
 from pathlib import Path
 from typing import Any
 
@@ -24,10 +24,11 @@ from .conflicts import conflicts
 from .detector import Detector
 from .double_charm import DoubleCharm
 from .fit import FitSection, Toys
+from .imports import Imports
 from .machine import Experiment, FormFactors, StudySection
 from .names import OBSERVABLES
-from .rules import Table
-from .sections import SECTIONS, Sections
+from .rules import Table, shown
+from .sections import SECTIONS, Conflict, Sections, missing_file
 from .variations import SingleVariation, Variation
 from .wilson import Quadratic, Wilson
 from .written_variations import single_variations
@@ -52,6 +53,7 @@ class StudyConfig(Table):
     variation_tables: tuple[Variation, ...] = Field(default=(), alias="variation")
     fit: FitSection = FitSection()
     toys: Toys = Toys()
+    imports: Imports | None = Field(default=None, alias="import", description="from other simulations")
     blinding: Blinding | None = Field(default=None, description="hides the ratios; nothing is hidden without it")
 
     _text: str = PrivateAttr(default="")
@@ -59,11 +61,26 @@ class StudyConfig(Table):
 
     @model_validator(mode="after")
     def _agree(self, info: ValidationInfo) -> StudyConfig:
-        found = conflicts(self.sections(folder=(info.context or {}).get("folder")))
+        folder = (info.context or {}).get("folder")
+        found = [*conflicts(self.sections(folder=folder)), *self._import_conflicts(folder)]
         if found:
             text = "; ".join(conflict.what for conflict in found)
             raise PydanticCustomError(CONFLICTS, "{text}", {"text": text, "conflicts": found})
         return self
+
+    def _import_conflicts(self, folder: Path | None) -> Iterator[Conflict]:
+        if self.fit.data.kind == "import" and (self.imports is None or self.imports.data is None):
+            yield Conflict(("fit", "data"), "needs [import.data]", shown("import"), remedy="Say where the data are.")
+        if self.imports is None:
+            return
+        own = {item.name for item in self.components}
+        for place, what, got, wanted in self.imports.problems(own, {category.name for category in self.categories}):
+            yield Conflict(place, what, shown(got), wanted, remedy="" if wanted else "Rename or leave out one of them.")
+        if folder is not None:
+            for i, item in enumerate(self.imports.components):
+                yield from missing_file(("import", "component", i, "file"), item.file, folder)
+            if self.imports.data is not None:
+                yield from missing_file(("import", "data", "file"), self.imports.data.file, folder)
 
     def sections(self, folder: Path | None = None) -> Sections:
         """The study as study_conflicts looks at it."""
