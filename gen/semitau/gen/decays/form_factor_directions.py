@@ -18,7 +18,7 @@ from .rates import differential_rates
 
 Order = Literal["variance", "effect"]
 
-NODES = 24
+_POINTS, _WEIGHTS = np.polynomial.legendre.leggauss(24)
 NEGLIGIBLE = 1e-9
 """Share of the effect below which a direction is the normalisation, or rounding."""
 
@@ -102,8 +102,7 @@ def _changes(chosen: FormFactorSet, transition: str, count: int) -> Floats:
 
 def _spectrum(decay: Decay) -> Floats:
     """Shares of the rate in small intervals of q2, longitudinal ones and then transverse ones."""
-    t, weights = np.polynomial.legendre.leggauss(NODES)
-    t, weights = 0.5 * (t + 1.0), 0.5 * weights
+    t, weights = 0.5 * (_POINTS + 1.0), 0.5 * _WEIGHTS
     low, high = decay.q2_range
     q2 = low + (high - low) * t * t * (3.0 - 2.0 * t)
     parts = differential_rates(decay, q2)
