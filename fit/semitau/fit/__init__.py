@@ -16,6 +16,10 @@ if TYPE_CHECKING:
     from .compatibility import Prediction as Prediction
     from .compatibility import Tension as Tension
     from .compatibility import tension as tension
+    from .constraints import Correlated as Correlated
+    from .constraints import Gaussian as Gaussian
+    from .constraints import LogNormal as LogNormal
+    from .constraints import Uniform as Uniform
     from .covering import IntervalCoverage as IntervalCoverage
     from .covering import interval_coverage as interval_coverage
     from .curves import Profile as Profile
@@ -40,6 +44,9 @@ if TYPE_CHECKING:
     from .poor_templates import Corrected as Corrected
     from .poor_templates import correct_for_templates as correct_for_templates
     from .result import FitResult as FitResult
+    from .shape_and_rate import mirrored as mirrored
+    from .shape_and_rate import one_sided as one_sided
+    from .shape_and_rate import split_shape_and_rate as split_shape_and_rate
     from .straightness import Linearity as Linearity
     from .straightness import linearity as linearity
     from .toys import ToyResults as ToyResults
@@ -49,10 +56,13 @@ _HOME = {
     "Average": ".combination",
     "Budget": ".decomposition",
     "Corrected": ".poor_templates",
+    "Correlated": ".constraints",
     "Data": ".data",
     "FitResult": ".result",
+    "Gaussian": ".constraints",
     "IntervalCoverage": ".covering",
     "Linearity": ".straightness",
+    "LogNormal": ".constraints",
     "Measured": ".measurements",
     "Measurement": ".measurements",
     "Model": ".model",
@@ -64,6 +74,7 @@ _HOME = {
     "Tension": ".compatibility",
     "ToyInterval": ".neyman",
     "ToyResults": ".toys",
+    "Uniform": ".constraints",
     "average": ".combination",
     "budget": ".decomposition",
     "correct_for_templates": ".poor_templates",
@@ -72,12 +83,15 @@ _HOME = {
     "interval_coverage": ".covering",
     "linearity": ".straightness",
     "maximise": ".newton",
+    "mirrored": ".shape_and_rate",
     "nuisance_shifts": ".nuisances",
+    "one_sided": ".shape_and_rate",
     "profile": ".curves",
     "quality": ".fit_quality",
     "read_templates": "semitau.core.template_file",
     "region": ".curves",
     "run_toys": ".toys",
+    "split_shape_and_rate": ".shape_and_rate",
     "tension": ".compatibility",
     "toy_interval": ".neyman",
 }
@@ -86,10 +100,13 @@ __all__ = [
     "Average",
     "Budget",
     "Corrected",
+    "Correlated",
     "Data",
     "FitResult",
+    "Gaussian",
     "IntervalCoverage",
     "Linearity",
+    "LogNormal",
     "Measured",
     "Measurement",
     "Model",
@@ -101,6 +118,7 @@ __all__ = [
     "Tension",
     "ToyInterval",
     "ToyResults",
+    "Uniform",
     "average",
     "budget",
     "correct_for_templates",
@@ -109,12 +127,15 @@ __all__ = [
     "interval_coverage",
     "linearity",
     "maximise",
+    "mirrored",
     "nuisance_shifts",
+    "one_sided",
     "profile",
     "quality",
     "read_templates",
     "region",
     "run_toys",
+    "split_shape_and_rate",
     "tension",
     "toy_interval",
 ]
