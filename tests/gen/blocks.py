@@ -62,7 +62,9 @@ def isotropic(generator: np.random.Generator, momentum: float | np.ndarray, mass
 
 def channel(parent: str, charm: str, lepton: str, **kinds: str | None) -> Channel:
     """The one decay chain with these properties, e.g. ground="D0", soft="neutral_pion", bachelor="neutral"."""
-    found = [c for c in channels([parent], [charm], [lepton]) if all(getattr(c, k) == v for k, v in kinds.items())]
+    taus = (str(kinds["tau_to"]),) if kinds.get("tau_to") else ("e", "mu")
+    chains = channels([parent], [charm], [lepton], tau_to=taus)
+    found = [c for c in chains if all(getattr(c, k) == v for k, v in kinds.items())]
     if len(found) != 1:
         raise ValueError(f"{len(found)} chains fit: {[c.name for c in found]}")
     return found[0]

@@ -29,7 +29,7 @@ from .marlow_study import PERFECT, study
 SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 SIGMAS = 5.0
 STREAM = stream_key(SEED, "reconstruction")
-OPEN = Windows(*(-np.inf, np.inf) * 4)
+OPEN = Windows(1, *(-np.inf, np.inf) * 8)
 NOMINAL = Scenario(1.0, 1.0)
 
 

@@ -50,19 +50,23 @@ SCRATCH_END = TRUTH_ROWS + 24
 # --- response ------------------------------------------------------------------------------------------------------
 # Laboratory frame unless said otherwise. BOOST_*: signal B in the centre-of-mass frame, gamma and gamma*beta vector.
 # TRACK*: true momenta of the charged daughters of the D (the third is zero for a D0). LAB_LEPTON: true momentum.
-# FLAVOUR: identified lepton, 0 electron, 1 muon.
+# FLAVOUR: what stands in for the lepton, 0 electron, 1 muon, 2 charged pion, 3 three charged pions. LAB_PARTNER*: true
+# momenta of the PARTNER rows, in channels that have them.
 (
     BOOST_GAMMA, BOOST_X, BOOST_Y, BOOST_Z,
     TRACK1_PX, TRACK1_PY, TRACK1_PZ, TRACK2_PX, TRACK2_PY, TRACK2_PZ, TRACK3_PX, TRACK3_PY, TRACK3_PZ,
     LAB_LEPTON_PX, LAB_LEPTON_PY, LAB_LEPTON_PZ, LAB_LEPTON_E,
     FLAVOUR,
-) = (LANES * row for row in range(SCRATCH_END, SCRATCH_END + 18))  # fmt: skip
-FOUND_END = SCRATCH_END + 18
+    LAB_PARTNER1_PX, LAB_PARTNER1_PY, LAB_PARTNER1_PZ, LAB_PARTNER1_E,
+    LAB_PARTNER2_PX, LAB_PARTNER2_PY, LAB_PARTNER2_PZ, LAB_PARTNER2_E,
+) = (LANES * row for row in range(SCRATCH_END, SCRATCH_END + 26))  # fmt: skip
+FOUND_END = SCRATCH_END + 26
 
 # Rows of events whose D and lepton were found. MEASURED_*: sums of smeared momenta at the nominal momentum scale.
 # TAG_*: true momentum of the signal B in the centre-of-mass frame; TAG_SHIFT_*: what the nominal resolution adds to it.
 # TAG_CHARGED: 1 if the tag looks like a charged B. SOFT_EFFICIENCY: chance that the soft particle is found, 0 where it
 # cannot be; SOFT_FOUND: 1 if it was. EXTRA: 1 if the charged pion of a D** was seen as a track.
+# LEPTON_MASS2: squared mass that goes with MEASURED_LEPTON.
 # RANDOM_*: delta_m of a random soft candidate (0: there is none), its mass, and its direction in the D frame.
 (
     LAB_SOFT_PX, LAB_SOFT_PY, LAB_SOFT_PZ, LAB_SOFT_E, LAB_PION_PX, LAB_PION_PY, LAB_PION_PZ, LAB_PION_E,
@@ -70,11 +74,12 @@ FOUND_END = SCRATCH_END + 18
     MEASURED_SOFT_PX, MEASURED_SOFT_PY, MEASURED_SOFT_PZ,
     TAG_PX, TAG_PY, TAG_PZ, TAG_SHIFT_X, TAG_SHIFT_Y, TAG_SHIFT_Z, TAG_CHARGED, TAG_WRONG,
     SOFT_EFFICIENCY, SOFT_FOUND, EXTRA, LEFT_OVER,
-    RANDOM_DELTA_M, RANDOM_MASS, RANDOM_X, RANDOM_Y, RANDOM_Z,
-) = (LANES * row for row in range(FOUND_END, FOUND_END + 34))  # fmt: skip
-MEASURED_END = FOUND_END + 34
+    RANDOM_DELTA_M, RANDOM_MASS, RANDOM_X, RANDOM_Y, RANDOM_Z, LEPTON_MASS2,
+) = (LANES * row for row in range(FOUND_END, FOUND_END + 35))  # fmt: skip
+MEASURED_END = FOUND_END + 35
 
-# One scenario of the reconstruction. CATEGORY: 2 * charm (D0, D+, D*0, D*+) + FLAVOUR, or -1 if there is no candidate.
+# One scenario of the reconstruction. CATEGORY: 2 * charm (D0, D+, D*0, D*+) + FLAVOUR, and 6 more for pions; -1 if
+# there is no candidate.
 (
     MM2, Q2_MEASURED, EL, P_LEPTON, P_CHARM, E_RES, DELTA_M, CATEGORY,
 ) = (LANES * row for row in range(MEASURED_END, MEASURED_END + 8))  # fmt: skip

@@ -12,7 +12,6 @@ from typing import NamedTuple
 import numpy as np
 import numpy.typing as npt
 from semitau.core.compiled import kernel
-from semitau.core.constants import mass
 
 from .. import block as row
 from ..block import LANES
@@ -24,8 +23,6 @@ from .measuring import NEUTRAL_PION_MASS
 
 Floats = npt.NDArray[np.float64]
 
-ELECTRON_MASS = mass("e")
-MUON_MASS = mass("mu")
 _FAR = 1e9
 
 _CHARM_X, _CHARM_Y, _CHARM_Z, _CHARM_MASS, _USED = (
@@ -45,24 +42,37 @@ class Scenario(NamedTuple):
 
 
 class Windows(NamedTuple):
-    """Limits of delta_m in GeV that a D* candidate must meet, by the charge of the D* and the lepton."""
+    """Limits of delta_m in GeV that a D* candidate must meet, by the charge of the D* and the lepton (or pions).
 
+    pions : 0 if no category has pions.
+    """
+
+    pions: int
     neutral_e_min: float
     neutral_e_max: float
     neutral_mu_min: float
     neutral_mu_max: float
+    neutral_pi_min: float
+    neutral_pi_max: float
+    neutral_3pi_min: float
+    neutral_3pi_max: float
     charged_e_min: float
     charged_e_max: float
     charged_mu_min: float
     charged_mu_max: float
+    charged_pi_min: float
+    charged_pi_max: float
+    charged_3pi_min: float
+    charged_3pi_max: float
 
 
 @kernel
 def reconstruct(y: Floats, chain: Chain, beams: Beams, scenario: Scenario, windows: Windows) -> None:
     """Fill the observables and CATEGORY of the block in one scenario.
 
-    CATEGORY is 2 * charm + lepton with charm in (D0, D+, D*0, D*+) and lepton in (e, mu), or -1: the charges of charm,
-    lepton and tag do not add up, or a charged particle is left over. DELTA_M is 0 without a D*.
+    CATEGORY is 2 * charm + lepton with charm in (D0, D+, D*0, D*+) and lepton in (e, mu), or 8 + 2 * charm + pions with
+    pions in (one, three), or -1: the charges of charm, lepton and tag do not add up, or a charged particle is left.
+    DELTA_M is 0 without a D*.
     """
     choose_charm(y, chain, scenario.momentum, windows)
     form_observables(y, beams, scenario)
@@ -101,6 +111,16 @@ def choose_charm(y: Floats, chain: Chain, scale: float, windows: Windows) -> Non
         muon_high = windows.charged_mu_max if charged else windows.neutral_mu_max
         low = muon_low if muon else electron_low
         high = muon_high if muon else electron_high
+        if windows.pions == 1:
+            three = y[row.FLAVOUR + i] == 3.0
+            pion_low = windows.charged_pi_min if charged else windows.neutral_pi_min
+            pion_high = windows.charged_pi_max if charged else windows.neutral_pi_max
+            three_low = windows.charged_3pi_min if charged else windows.neutral_3pi_min
+            three_high = windows.charged_3pi_max if charged else windows.neutral_3pi_max
+            pion_low = three_low if three else pion_low
+            pion_high = three_high if three else pion_high
+            low = pion_low if y[row.FLAVOUR + i] >= 2.0 else low
+            high = pion_high if y[row.FLAVOUR + i] >= 2.0 else high
 
         sx = soft_scale * y[row.MEASURED_SOFT_PX + i]
         sy = soft_scale * y[row.MEASURED_SOFT_PY + i]
@@ -141,7 +161,9 @@ def choose_charm(y: Floats, chain: Chain, scale: float, windows: Windows) -> Non
         alone = 1.0 if y[row.TAG_CHARGED + i] == 1.0 - charged_d else 0.0
         left = (y[row.EXTRA + i] + soft_charged * unused > 0.0) | (star + alone == 0.0)
         charm = 2.0 + star_charge if star > 0.0 else charged_d
-        y[row.CATEGORY + i] = -1.0 if left else 2.0 * charm + y[row.FLAVOUR + i]
+        flavour = y[row.FLAVOUR + i]
+        flavour = flavour + 6.0 if flavour >= 2.0 else flavour
+        y[row.CATEGORY + i] = -1.0 if left else 2.0 * charm + flavour
         y[_CHARM_X + i] = px + use_true * sx + use_random * rx
         y[_CHARM_Y + i] = py + use_true * sy + use_random * ry
         y[_CHARM_Z + i] = pz + use_true * sz + use_random * rz
@@ -169,9 +191,8 @@ def form_observables(y: Floats, beams: Beams, scenario: Scenario) -> None:
         lx = scale * y[row.MEASURED_LEPTON_PX + i]
         ly = scale * y[row.MEASURED_LEPTON_PY + i]
         lz = scale * y[row.MEASURED_LEPTON_PZ + i]
-        lepton_mass = MUON_MASS if y[row.FLAVOUR + i] == 1.0 else ELECTRON_MASS
         lepton_square = lx * lx + ly * ly + lz * lz
-        le = np.sqrt(lepton_mass * lepton_mass + lepton_square)
+        le = np.sqrt(y[row.LEPTON_MASS2 + i] + lepton_square)
 
         qx, qy, qz, qe = bx - cx, by - cy, bz - cz, be - ce
         y[row.Q2_MEASURED + i] = qe * qe - qx * qx - qy * qy - qz * qz

@@ -6,10 +6,16 @@ from typing import NamedTuple
 
 import numpy as np
 
-from .efficiency import Efficiency
+from .efficiency import Efficiency, constant
 
 NO_PARTICLE, CHARGED_PION, NEUTRAL_PION, PHOTON = range(4)
 """Kinds of the soft particle of a D* and of the light mesons of a D**."""
+
+
+NO_PARTNER, ONE_NEUTRAL, TWO_NEUTRAL, TWO_CHARGED = range(4)
+"""Other pions of a tau, besides the one in the LEPTON rows."""
+
+NEVER = constant(0.0)
 
 
 class Beams(NamedTuple):
@@ -53,12 +59,21 @@ class Photons(NamedTuple):
 
 
 class Leptons(NamedTuple):
-    """Chances against laboratory momentum: a flavour is called by its name, or by that of the other one."""
+    """Chances against laboratory momentum: a flavour is called by its name, or by that of another one.
+
+    hadrons : 0 if no category asks for pions; then nothing is called a pion.
+    """
 
     electron: Efficiency
     muon: Efficiency
     electron_as_muon: Efficiency
     muon_as_electron: Efficiency
+    pion: Efficiency = NEVER
+    pion_as_electron: Efficiency = NEVER
+    pion_as_muon: Efficiency = NEVER
+    electron_as_pion: Efficiency = NEVER
+    muon_as_pion: Efficiency = NEVER
+    hadrons: int = 0
 
 
 class SoftParticles(NamedTuple):
@@ -99,7 +114,8 @@ class Detector(NamedTuple):
 class Chain(NamedTuple):
     """What the response needs to know of a channel: masses in GeV and the kinds of its particles.
 
-    charged_parent, charged_d : 1 or 0. muon : 1 if the charged lepton is a muon, 0 for an electron.
+    charged_parent, charged_d : 1 or 0. muon : 1 if the charged lepton is a muon. tau_pion : 1 if a tau gave pions;
+    partners : which others, NO_PARTNER to TWO_CHARGED.
     soft, pion, pion2 : NO_PARTICLE, CHARGED_PION, NEUTRAL_PION (also an eta, as one object) or PHOTON.
     beside_soft, kaon, hadron : what double charm has besides, numbers of `light_decays.SPECIES` or NO_SPECIES.
     """
@@ -117,6 +133,8 @@ class Chain(NamedTuple):
     beside_soft: int = -1
     kaon: int = -1
     hadron: int = -1
+    tau_pion: int = 0
+    partners: int = NO_PARTNER
 
 
 def beams(electron: float, positron: float, spread: float) -> Beams:

@@ -50,6 +50,13 @@ WRONG_TAG_ENERGY = np.uint64(100)
 PION2_SEEN = np.uint64(101)
 PION2_LEFT_OVER = np.uint64(102)
 
+PARTNER1_SEEN = np.uint64(110)
+PARTNER2_SEEN = np.uint64(111)
+PARTNER1_SMEAR = np.uint64(112)  # two normal pairs each
+PARTNER2_SMEAR = np.uint64(116)
+PARTNER1_LEFT_OVER = np.uint64(120)
+PARTNER2_LEFT_OVER = np.uint64(121)
+
 ONE = np.uint64(1)
 TWO = np.uint64(2)
 THREE = np.uint64(3)

@@ -1,4 +1,4 @@
-"""Which events are found: all tracks of the D and the lepton seen, and the lepton identified as an electron or a muon.
+"""Which events are found: all tracks of the D and the lepton (or pions of a tau) seen, and what these are taken for.
 
 Only true momenta are needed here, so this comes before any smearing, and only the events that pass are smeared.
 """
@@ -18,6 +18,7 @@ from .detector import Chain, Detector, Leptons, Tracks
 from .draw_numbers import LEPTON_IDENTIFIED, LEPTON_SEEN, TRACK1_SEEN, TRACK2_SEEN, TRACK3_SEEN
 from .efficiency import evaluate
 from .others import has_others, see_others
+from .tau_pions import identify_pions, see_pions
 from .tracks import in_track_acceptance
 
 Floats = npt.NDArray[np.float64]
@@ -32,6 +33,7 @@ IDENTIFIED = row.SCRATCH_7
 _MOMENTUM = row.SCRATCH_4
 _CHANCE = row.SCRATCH_8
 _OTHER_CHANCE = row.SCRATCH_9
+_PION_CHANCE = row.SCRATCH_10
 
 
 @kernel
@@ -48,8 +50,14 @@ def find(x: Floats, keys: Keys, chain: Chain, detector: Detector, quantiles: Flo
         decay_to_two(x, keys, chain.d_mass)
     see_charm(x, keys, chain.charged_d, detector.tracks)
     to_laboratory(x, row.LEPTON_PX, row.LAB_LEPTON_PX, detector.beams)
-    see_lepton(x, keys, detector.tracks)
-    identify_lepton(x, keys, chain.muon, detector.leptons)
+    if chain.tau_pion == 1:
+        see_pions(x, keys, chain.partners, detector, CHARM_SEEN, LEPTON_SEEN_TOO, _MOMENTUM)
+        identify_pions(x, keys, detector.leptons, LEPTON_SEEN_TOO, _MOMENTUM, IDENTIFIED)
+    else:
+        see_lepton(x, keys, detector.tracks)
+        identify_lepton(x, keys, chain.muon, detector.leptons)
+        if detector.leptons.hadrons == 1:
+            take_for_pion(x, keys, chain.muon, detector.leptons)
     if has_others(chain):
         see_others(x, keys, IDENTIFIED, chain, detector)
 
@@ -111,6 +119,22 @@ def identify_lepton(x: Floats, keys: Keys, muon: int, leptons: Leptons) -> None:
         named = u < x[_CHANCE + i] + x[_OTHER_CHANCE + i]
         x[IDENTIFIED + i] = x[LEPTON_SEEN_TOO + i] if named else 0.0
         x[row.FLAVOUR + i] = true if u < x[_CHANCE + i] else other
+
+
+@kernel
+def take_for_pion(x: Floats, keys: Keys, muon: int, leptons: Leptons) -> None:
+    """A third name for a lepton, right after `identify_lepton` and with its draw."""
+    chance = x[_PION_CHANCE : _PION_CHANCE + LANES]
+    if muon == 1:
+        evaluate(leptons.muon_as_pion, x[_MOMENTUM : _MOMENTUM + LANES], chance)
+    else:
+        evaluate(leptons.electron_as_pion, x[_MOMENTUM : _MOMENTUM + LANES], chance)
+    for i in range(LANES):
+        u = uniform(keys[i], LEPTON_IDENTIFIED)
+        named = x[_CHANCE + i] + x[_OTHER_CHANCE + i]
+        pion = (u >= named) & (u < named + x[_PION_CHANCE + i])
+        x[IDENTIFIED + i] = x[LEPTON_SEEN_TOO + i] if pion else x[IDENTIFIED + i]
+        x[row.FLAVOUR + i] = 2.0 if pion else x[row.FLAVOUR + i]
 
 
 @kernel

@@ -31,6 +31,7 @@ from .detector import (
 )
 from .efficiency import evaluate
 from .others import add_others, has_others
+from .tau_pions import known_masses, measure_pions
 from .tracks import (
     in_photon_acceptance,
     in_track_acceptance,
@@ -53,8 +54,10 @@ def measure(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     """From the rows kept by `find` to the MEASURED_*, TAG_*, SOFT_*, EXTRA, LEFT_OVER and RANDOM_* rows."""
     measure_charm(y, keys, chain.charged_d, detector.tracks)
     measure_lepton(y, keys, detector.tracks)
+    known_masses(y)
     measure_tag(y, keys, chain.parent_mass, chain.charged_parent, detector.tag)
     add_noise(y, keys, detector.residual)
+    measure_pions(y, keys, chain.partners, detector)
     measure_soft(y, keys, chain, detector)
     measure_pion(y, keys, chain.pion, detector)
     see_light_meson(y, keys, chain.pion2, row.PION2_PX, draws.PION2_SEEN, draws.PION2_LEFT_OVER, detector)

@@ -23,6 +23,7 @@ from .detector import Chain, Detector
 from .finding import find, list_found
 from .measuring import measure
 from .setup import kernel_chain
+from .tau_pions import keep_partners
 
 Floats = npt.NDArray[np.float64]
 Integers = npt.NDArray[np.int64]
@@ -45,6 +46,8 @@ TRUTH_ROWS = {
     **_momentum("second_pion", row.PION2_PX),
     **_momentum("tau", row.TAU_PX),
     **_momentum("lepton", row.LEPTON_PX),
+    **_momentum("partner_1", row.PARTNER1_PX),
+    **_momentum("partner_2", row.PARTNER2_PX),
 }
 """Column of the truth -> row of the block. Momenta in GeV in the rest frame of the B, zero for absent particles."""
 
@@ -120,6 +123,8 @@ def _record(
         find(x, keys, chain, detector, quantiles)
         passed = list_found(x, here, found, lanes)
         move(x, keys, numbers, lanes, 0, passed, y, y_keys, y_numbers, 0)
+        if chain.partners > 0:
+            keep_partners(x, lanes, 0, passed, y, 0)
         measure(y, y_keys, chain, detector)
         reconstruct(y, chain, detector.beams, scenario, windows)
         place(y, passed, cuts, axes, flow, bins)

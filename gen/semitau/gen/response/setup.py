@@ -6,7 +6,9 @@ import numpy as np
 from semitau.core.constants import MASS
 
 from ..decays.double_charm import AnyChain, DoubleCharmChain
+from ..study_file.categories import Cut
 from ..study_file.detector import Curve
+from ..study_file.names import LEPTONS, SEEN_LEPTONS
 from ..study_file.study import StudyConfig
 from . import detector as kernel
 from .candidates import Windows
@@ -25,6 +27,7 @@ _BACHELOR = {
     "neutral": kernel.NEUTRAL_PION,
     "eta": kernel.NEUTRAL_PION,
 }
+_PARTNERS = {"rho": kernel.ONE_NEUTRAL, "a1_1prong": kernel.TWO_NEUTRAL, "a1": kernel.TWO_CHARGED}
 
 
 # A photon takes the place of a neutral pion: both are one object that may leave its energy.
@@ -54,7 +57,16 @@ def kernel_detector(study: StudyConfig) -> kernel.Detector:
             *d.photons.energy_resolution, d.photons.angle_resolution, *_cosines(d.photons.polar_acceptance)
         ),
         leptons=kernel.Leptons(
-            _curve(d.lepton_id.e), _curve(d.lepton_id.mu), _curve(d.lepton_id.e_as_mu), _curve(d.lepton_id.mu_as_e)
+            _curve(d.lepton_id.e),
+            _curve(d.lepton_id.mu),
+            _curve(d.lepton_id.e_as_mu),
+            _curve(d.lepton_id.mu_as_e),
+            _curve(d.lepton_id.pi),
+            _curve(d.lepton_id.hadron_as_e),
+            _curve(d.lepton_id.hadron_as_mu),
+            _curve(d.lepton_id.e_as_pi),
+            _curve(d.lepton_id.mu_as_pi),
+            int(has_pions(study)),
         ),
         soft=kernel.SoftParticles(
             _curve(soft.charged),
@@ -88,6 +100,8 @@ def kernel_chain(channel: AnyChain) -> kernel.Chain:
         charged_parent=int(channel.parent == "B+"),
         charged_d=int(channel.ground == "D+"),
         muon=int(channel.seen_lepton == "mu"),
+        tau_pion=int(channel.seen_lepton not in LEPTONS),
+        partners=_PARTNERS.get(channel.seen_lepton, kernel.NO_PARTNER),
         soft=_SOFT[channel.soft],
         pion=_BACHELOR[channel.bachelor],
         pion2=_BACHELOR[channel.second],
@@ -103,14 +117,19 @@ def _others(channel: AnyChain) -> tuple[int, int, int]:
 
 def delta_m_windows(study: StudyConfig) -> Windows:
     """The delta_m cuts of the D* categories; those of [selection] where the study lacks a category."""
-    given = {(c.charm, c.lepton): c.cuts.get("delta_m") for c in study.categories}
+    given: dict[tuple[str, str], Cut | None] = {(c.charm, c.lepton): c.cuts.get("delta_m") for c in study.categories}
     limits = []
     for charm in ("D*0", "D*+"):
-        for lepton in ("e", "mu"):
+        for lepton in SEEN_LEPTONS:
             cut = given.get((charm, lepton), study.selection.get("delta_m"))
             limits.append(-np.inf if cut is None or cut.min is None else cut.min)
             limits.append(np.inf if cut is None or cut.max is None else cut.max)
-    return Windows(*map(float, limits))
+    return Windows(int(has_pions(study)), *map(float, limits))
+
+
+def has_pions(study: StudyConfig) -> bool:
+    """Whether a category takes pions for the daughters of a tau."""
+    return any(category.lepton not in LEPTONS for category in study.categories)
 
 
 def _curve(curve: Curve) -> Efficiency:

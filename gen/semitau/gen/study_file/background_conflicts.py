@@ -10,7 +10,7 @@ import numpy as np
 from .categories import StudyCategory
 from .components import Background
 from .laws import Column, Histogram
-from .names import CHARM_HADRONS
+from .names import CHARM_HADRONS, LEPTONS
 from .rules import shown, suggestion
 from .sections import Conflict, Place, Sections, missing_file
 
@@ -34,6 +34,11 @@ def background_conflicts(sections: Sections) -> Iterator[Conflict]:
                 if name not in known:
                     near = suggestion(name, known)
                     yield Conflict((*place, "shape_in", name), "is no category or charm hadron", name, "", near)
+        for name, expected in background.expected.items():
+            if background.misidentified and expected and name in categories and categories[name].lepton not in LEPTONS:
+                what = "holds no lepton that a hadron could be taken for"
+                remedy = "Take it out, or give it a background without misidentified."
+                yield Conflict((*place, "expected", name), what, name, remedy=remedy)
         yield from _missing_laws(place, background, categories)
         yield from _empty_axes(place, background, categories)
         yield from _correlations(place, background)

@@ -7,7 +7,7 @@ from typing import Annotated, Any, ClassVar
 
 from pydantic import Field, model_validator
 
-from .names import CHARM_IDENTIFIER, CHARM_LABEL, LEPTON_LABEL, CharmHadron, LightLepton
+from .names import CHARM_IDENTIFIER, CHARM_LABEL, LEPTON_LABEL, CharmHadron, SeenLepton
 from .rules import ByObservable, Count, Distinct, ObservableKey, ShortTable, Table, Value, broken, increasing
 
 MOST_BINS = 10_000
@@ -79,14 +79,16 @@ class Axis(ShortTable):
 class CategoryTable(Table):
     """[[category]]: reconstructed final states that share their axes; one category for each hadron and lepton.
 
-    Categories are named by hadron and lepton: D0_e, D0_mu, Dp_e, Dp_mu, Dst0_e, Dst0_mu, Dstp_e, Dstp_mu.
+    Categories are named by hadron and lepton: D0_e, D0_mu, Dp_e, Dp_mu, Dst0_e, Dst0_mu, Dstp_e, Dstp_mu. A category
+    with a charged pion or three in place of the lepton (D0_pi, D0_3pi ...) is for hadronic decays of the tau, which
+    modes must allow with `tau_to`; el and p_lepton are then energy and momentum of the pion, or of all three together.
     """
 
     charm: Annotated[tuple[CharmHadron, ...], Field(min_length=1), Distinct] = Field(
         description="reconstructed charm hadrons"
     )
-    leptons: Annotated[tuple[LightLepton, ...], Field(min_length=1), Distinct] = Field(
-        default=("e", "mu"), description="reconstructed leptons"
+    leptons: Annotated[tuple[SeenLepton, ...], Field(min_length=1), Distinct] = Field(
+        default=("e", "mu"), description="reconstructed leptons; pi or 3pi: pions that a tau left"
     )
     observables: Annotated[dict[ObservableKey, Axis], Field(min_length=1, max_length=3), ByObservable] = Field(
         description="one to three axes, in order"
@@ -100,7 +102,7 @@ class StudyCategory(Table):
     name: str
     label: str
     charm: CharmHadron
-    lepton: LightLepton
+    lepton: SeenLepton
     axes: dict[str, tuple[float, ...]]
     cuts: dict[str, Cut]
 

@@ -9,7 +9,7 @@ from numpy.typing import NDArray
 from pydantic import Field, model_validator
 
 from .laws import Law
-from .names import CharmFamily, Lepton, Parent, RatioName
+from .names import CharmFamily, Lepton, Parent, RatioName, TauDecay
 from .rules import (
     ByObservable,
     Count,
@@ -58,6 +58,9 @@ class Yield(ShortTable):
 class Mode(Table):
     """A component made by the decay generator.
 
+    `tau_to` says which decays of a tau are followed. With a hadronic one among them, the pions fill the categories
+    that have pions, and through the misidentification tables those of leptons; a π⁰ leaves residual energy.
+
     `charm` names hadrons without their charge; charges follow from the parents, charge conjugates are implied.
     `events` generated decays are shared between all decay chains of the mode by their expected rate.
 
@@ -74,8 +77,9 @@ class Mode(Table):
     charm: Annotated[tuple[CharmFamily, ...], Field(min_length=1), Distinct] = Field(
         description="charm hadrons of the B decay"
     )
-    leptons: Annotated[tuple[Lepton, ...], Field(min_length=1), Distinct] = Field(
-        description="of the B decay; tau goes on to e and mu"
+    leptons: Annotated[tuple[Lepton, ...], Field(min_length=1), Distinct] = Field(description="of the B decay")
+    tau_to: Annotated[tuple[TauDecay, ...], Field(min_length=1), Distinct] = Field(
+        default=("e", "mu"), description="decays of the tau: rho is ππ⁰, a1 three tracks, a1_1prong ππ⁰π⁰"
     )
     scales_with: RatioName | None = Field(default=None, description="the ratio that the fit measures with this mode")
     follows: Identifier | None = Field(default=None, description="component whose yield this one scales with")
@@ -98,6 +102,8 @@ class Mode(Table):
                 'leptons = ["tau"]',
                 got=str(list(self.leptons)),
             )
+        if "tau" not in self.leptons and self.tau_to != ("e", "mu"):
+            raise broken("has tau_to but no tau", remedy="Remove tau_to.", got=str(list(self.tau_to)))
         return self
 
     @property

@@ -18,7 +18,7 @@ from .chosen_sets import chosen_set, sets_describing, sound_set
 from .double_charm_conflicts import double_charm_conflicts
 from .idle_variations import idle_variations, nuisance_names
 from .machine import FormFactorSource
-from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, RATIOS
+from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, LEPTONS, PION_DECAYS, RATIOS
 from .rules import shown, suggestion
 from .sections import Conflict, Place, Sections, missing_file
 from .wilson import Wilson
@@ -31,8 +31,8 @@ LEAST_CURRENT = 1e-3  # below, decays with a tau have no rate to draw from, or t
 def conflicts(sections: Sections) -> list[Conflict]:
     """Everything that is wrong between the tables."""
     checks = (
-        _names, _modes, _ratios, _categories, double_charm_conflicts, background_conflicts, _form_factors, _couplings,
-        _tensor_model, idle_variations, _fit,
+        _names, _modes, _ratios, _categories, _pions, double_charm_conflicts, background_conflicts, _form_factors,
+        _couplings, _tensor_model, idle_variations, _fit,
     )  # fmt: skip
     return [conflict for check in checks for conflict in check(sections)]
 
@@ -153,6 +153,30 @@ def _categories(sections: Sections) -> Iterator[Conflict]:
                 where: Place = (*place, "selection", name) if name in table.selection else ("selection", name)
                 wanted = f"limits that meet the axis from {low:g} to {high:g}"
                 yield Conflict(where, "removes every bin", cut.text, wanted)
+
+
+def _pions(sections: Sections) -> Iterator[Conflict]:
+    """Categories with pions: decays that fill them, and chances of identification that leave room for them."""
+    for i, table in sections.category_tables.items():
+        modes = sections.modes.values()
+        for name, wanted in (("pi", PION_DECAYS), ("3pi", ("a1",))):
+            filled = any("tau" in mode.leptons and set(wanted) & set(mode.tau_to) for mode in modes)
+            if name in table.leptons and "mode" in sections.whole and not filled:
+                what = f"has {name}, but no mode has a tau that goes there"
+                remedy = f"Add {' or '.join(wanted)} to tau_to of a mode."
+                yield Conflict(("category", i, "leptons"), what, shown(list(table.leptons)), remedy=remedy)
+    if sections.detector is None or all(c.lepton in LEPTONS for c in sections.categories.values()):
+        return
+    identification = sections.detector.lepton_id
+    for names in (("e", "e_as_mu", "e_as_pi"), ("mu", "mu_as_e", "mu_as_pi"), ("pi", "hadron_as_e", "hadron_as_mu")):
+        curves = [getattr(identification, name) for name in names]
+        momenta = sorted({p for curve in curves for p in curve.momentum})
+        total = np.sum([curve.at(momenta) for curve in curves], axis=0)
+        if total.max() > 1.0 + 1e-9:
+            what = f"and {', '.join(names[1:])} add up to more than 1"
+            got = f"{total.max():.4g} at {momenta[int(total.argmax())]:g} GeV"
+            remedy = "Lower one of them: they are names for the same particle, where categories have pions."
+            yield Conflict(("detector", "lepton_id", names[0]), what, got, "at most 1 together", remedy)
 
 
 def _form_factors(sections: Sections) -> Iterator[Conflict]:

@@ -188,6 +188,14 @@ class LeptonIdentification(Table):
     hadron_as_mu: Curve = Field(
         default=_curve((0.5, 0.035), (1.0, 0.025), (2.0, 0.015)), description="hadrons called mu"
     )
+    pi: Curve = Field(default=_flat(0.9), description="charged pions called pions, where categories ask for them")
+    e_as_pi: Curve = Field(
+        default=_curve((0.3, 0.06), (0.6, 0.02), (1.0, 0.01)), description="electrons called pions, likewise"
+    )
+    mu_as_pi: Curve = Field(
+        default=_curve((0.5, 0.5), (0.7, 0.3), (0.9, 0.15), (1.2, 0.08), (2.0, 0.06)),
+        description="muons called pions, likewise",
+    )
     e_as_mu: Curve = Field(default=_flat(0.0005), description="electrons called mu")
     mu_as_e: Curve = Field(default=_flat(0.0005), description="muons called e")
 

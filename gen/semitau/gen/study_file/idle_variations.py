@@ -9,7 +9,7 @@ from ..decays.form_factor_parameters import NORMALISATIONS
 from ..decays.form_factor_set import FormFactorSet
 from .chosen_sets import sound_set
 from .components import Mode
-from .names import FORM_FACTORS_OF
+from .names import FORM_FACTORS_OF, PION_DECAYS
 from .rules import shown, suggestion
 from .sections import Conflict, Sections
 from .variations import (
@@ -56,7 +56,9 @@ def idle_variations(sections: Sections) -> Iterator[Conflict]:
                     for name, expected in background.expected.items()
                     if expected and name in sections.categories
                 }
-                if {"category", "background"} <= sections.whole and variation.lepton not in taken:
+                if any("tau" in mode.leptons and set(mode.tau_to) & set(PION_DECAYS) for mode in modes):
+                    taken |= leptons
+                if {"category", "background", "mode"} <= sections.whole and variation.lepton not in taken:
                     what = "acts on nothing: no background with misidentified = true in a category of this lepton"
                     yield Conflict((*place, "lepton"), what, shown(variation.lepton))
 

@@ -26,8 +26,12 @@ OBSERVABLES: dict[str, ObservableName] = {
 Parent = Literal["B+", "B0"]
 Lepton = Literal["e", "mu", "tau"]
 LightLepton = Literal["e", "mu"]
-# Charm families: hadrons without their charge, as in [[mode]]; the charge follows from the parent. In brackets systems of
-# a D or D* and light mesons without a resonance, whose charge is that of the whole.
+# What a category may have: leptons, or a pion or three that stand for a tau.
+SeenLepton = Literal["e", "mu", "pi", "3pi"]
+# Decays of the tau, as in [[mode]].
+TauDecay = Literal["e", "mu", "pi", "rho", "a1", "a1_1prong"]
+# Charm families: hadrons without their charge, as in [[mode]]; the charge follows from the parent. In brackets systems
+# of a D or D* and light mesons without a resonance, whose charge is that of the whole.
 CharmFamily = Literal[
     "D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430)",
     "(D pi)", "(D* pi)", "(D pi pi)", "(D* pi pi)", "(D eta)", "(D* eta)",
@@ -41,6 +45,8 @@ CoefficientName = Literal["VL", "VR", "SL", "SR", "T", "Im_VL", "Im_VR", "Im_SL"
 
 PARENTS: tuple[str, ...] = get_args(Parent)
 LEPTONS: tuple[str, ...] = get_args(Lepton)
+SEEN_LEPTONS: tuple[str, ...] = get_args(SeenLepton)
+PION_DECAYS: tuple[str, ...] = get_args(TauDecay)[2:]
 RATIOS: tuple[str, ...] = get_args(RatioName)
 COEFFICIENTS: tuple[str, ...] = get_args(CoefficientName)
 CHARM_FAMILIES: tuple[str, ...] = get_args(CharmFamily)
@@ -55,4 +61,4 @@ CHARM_OF_RATIO = {"R_D": "D", "R_Dst": "D*"}
 # Parts of category names and labels: D0_e is "D⁰ e".
 CHARM_IDENTIFIER = {"D0": "D0", "D+": "Dp", "D*0": "Dst0", "D*+": "Dstp"}
 CHARM_LABEL = {"D0": "D⁰", "D+": "D⁺", "D*0": "D*⁰", "D*+": "D*⁺"}
-LEPTON_LABEL = {"e": "e", "mu": "μ", "tau": "τ"}
+LEPTON_LABEL = {"e": "e", "mu": "μ", "tau": "τ", "pi": "π", "3pi": "3π"}

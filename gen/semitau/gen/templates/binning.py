@@ -15,7 +15,7 @@ from semitau.core.compiled import inlined, kernel
 
 from ..block import CATEGORY, DELTA_M, E_RES, EL, MM2, P_CHARM, P_LEPTON, Q2_MEASURED
 from ..study_file.categories import StudyCategory
-from ..study_file.names import CHARM_HADRONS
+from ..study_file.names import CHARM_HADRONS, SEEN_LEPTONS
 
 Floats = npt.NDArray[np.float64]
 Integers = npt.NDArray[np.int64]
@@ -31,18 +31,20 @@ ROW_OF = {
 }
 """Observable -> row of the block that holds it."""
 
-CODES = 8
+CODES = 16
 NOT_A_CATEGORY = -1
 _CELLS = 1024
 
 
 def category_code(charm: str, lepton: str) -> int:
-    """The number that the CATEGORY row holds: 2 * (place of charm in D0, D+, D*0, D*+) + (0 for e, 1 for mu)."""
-    return 2 * CHARM_HADRONS.index(charm) + ("e", "mu").index(lepton)
+    """The number that the CATEGORY row holds: 2 * (place of charm in D0, D+, D*0, D*+) + (0 for e, 1 for mu; 8 for a
+    pion, 9 for three)."""
+    place = SEEN_LEPTONS.index(lepton)
+    return 2 * CHARM_HADRONS.index(charm) + place % 2 + 8 * (place // 2)
 
 
 class Cuts(NamedTuple):
-    """cut k keeps low[k, code] <= x[row[k]] < high[k, code]; infinite where it does not apply. Shapes (k,), (k, 8)."""
+    """cut k keeps low[k, code] <= x[row[k]] < high[k, code]; infinite where it does not apply. Shapes (k,), (k, 16)."""
 
     row: Integers
     low: Floats
@@ -50,10 +52,10 @@ class Cuts(NamedTuple):
 
 
 class Axes(NamedTuple):
-    """Axes by category code. Shapes (8, 3) unless said otherwise; a missing axis has bins 0.
+    """Axes by category code. Shapes (16, 3) unless said otherwise; a missing axis has bins 0.
 
-    category (8,) : place among the study's categories, NOT_A_CATEGORY if it is none of them.
-    offset (8,) : number of the first bin. row, bins : observable and number of bins.
+    category (16,) : place among the study's categories, NOT_A_CATEGORY if it is none of them.
+    offset (16,) : number of the first bin. row, bins : observable and number of bins.
     first_edge, edges (n,) : where the bins + 1 edges start in `edges`.
     low, per_unit, first_cell, cells (m,) : 1024 cells of equal width over the axis; the bin at the start of each.
     """

@@ -15,6 +15,7 @@ from ..response.compaction import drop_unbinned, move
 from ..response.detector import Chain, Detector
 from ..response.finding import find, list_found
 from ..response.measuring import measure
+from ..response.tau_pions import keep_partners
 from ..truth.any_drawing import AnyTable, draw
 from ..truth.bilinear_pieces import PieceTable, bilinear_pieces
 from ..truth.variation_weights import VariationTable, variation_weights
@@ -81,6 +82,8 @@ def fill_chunk(
         while done < passed:
             take = min(passed - done, LANES - filled)
             move(x, keys, numbers, lanes, done, take, y, y_keys, y_numbers, filled)
+            if chain.partners > 0:
+                keep_partners(x, lanes, done, take, y, filled)
             done += take
             filled += take
             if filled == LANES:

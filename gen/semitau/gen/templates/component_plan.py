@@ -69,7 +69,7 @@ def plan_channels(study: StudyConfig) -> tuple[ChannelPlan, ...]:
 def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     sets = {name: study.form_factor_set(name) for name in ("D", "Dst", "Dss")}
     chains = channels(
-        mode.parents, mode.charm, mode.leptons,
+        mode.parents, mode.charm, mode.leptons, tau_to=mode.tau_to,
         form_factors=sets, wilson=study.wilson.couplings, tensor=study.wilson.tensor,
     )  # fmt: skip
     expected = np.array([expected_decays(study, chain) for chain in chains])

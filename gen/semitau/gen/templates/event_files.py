@@ -21,7 +21,7 @@ from semitau.core.whole_files import whole_file
 from ..response.recording import CANDIDATE_ROWS, TRUTH_ROWS, Events, event_recorder
 from ..shapes.sampler import ShapeSampler
 from ..study_file.categories import StudyCategory
-from ..study_file.names import CHARM_HADRONS, OBSERVABLES
+from ..study_file.names import CHARM_HADRONS, OBSERVABLES, SEEN_LEPTONS
 from ..study_file.study import StudyConfig
 from .binning import CODES, ROW_OF, category_code
 from .chunk_tasks import chunks, make_bench
@@ -207,7 +207,7 @@ def _selected(category: StudyCategory, drawn: dict[str, npt.NDArray[np.float64]]
 
 def _description(study: StudyConfig, names: list[str], channels: list[str]) -> dict[str, object]:
     """What "meta" says."""
-    codes = {category_code(charm, lepton): f"{charm} {lepton}" for charm in CHARM_HADRONS for lepton in ("e", "mu")}
+    codes = {category_code(charm, lepton): f"{charm} {lepton}" for charm in CHARM_HADRONS for lepton in SEEN_LEPTONS}
     return {
         "what": "invented detector, generated events: no measurement",
         "units": "GeV, GeV²; momenta of truth in the rest frame of the B, of candidates in the laboratory",

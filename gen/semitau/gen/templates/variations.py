@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
+from typing import TypeGuard
 
 import numpy as np
 import numpy.typing as npt
@@ -21,7 +22,7 @@ from ..decays.form_factor_directions import moved
 from ..decays.form_factor_set import FormFactorSet
 from ..response.candidates import Scenario
 from ..study_file.detector import Curve
-from ..study_file.names import FORM_FACTORS_OF
+from ..study_file.names import FORM_FACTORS_OF, LEPTONS
 from ..study_file.study import StudyConfig
 from ..study_file.variations import (
     ComponentFraction,
@@ -117,10 +118,19 @@ def common_variations(
                 if 0.0 < charged < 1.0:
                     factor = moved / charged if channel.parent == "B+" else (1.0 - moved) / (1.0 - charged)
                     factors[variation.name, sign] = np.full(len(leptons), factor)
-            elif isinstance(variation, LeptonIdentificationEfficiency) and channel.seen_lepton == variation.lepton:
+            elif _names_the_lepton(variation, channel):
                 is_lepton = np.array([lepton == variation.lepton for lepton in leptons])
                 factors[variation.name, sign] = np.where(is_lepton, change, 1.0)
     return soft, factors
+
+
+def _names_the_lepton(
+    variation: SingleVariation, channel: AnyChain
+) -> TypeGuard[LeptonIdentificationEfficiency | Misidentification]:
+    """Whether it changes the chance that what a chain leaves is called a lepton: by its name, or a pion of a tau."""
+    if isinstance(variation, Misidentification):
+        return channel.seen_lepton not in LEPTONS
+    return isinstance(variation, LeptonIdentificationEfficiency) and channel.seen_lepton == variation.lepton
 
 
 def background_factors(study: StudyConfig, misidentified: bool) -> dict[Side, Floats]:
