@@ -284,6 +284,12 @@ def test_tensor_interference(charm: str, sign: int) -> None:
     assert np.sign(slope) == sign
 
 
+def test_couplings_that_leave_nothing() -> None:
+    """VR = -1 cancels the vector current, the only one of B -> D."""
+    with pytest.raises(InputError, match=r"B0 -> D- tau nu: has no rate .*cancel"):
+        gen.ratio("B0", "D-", wilson={"VR": -1.0})
+
+
 def test_bad_decays() -> None:
     with pytest.raises(InputError) as caught:
         gen.Decay("B", "D+", "taon", tensor="NLO")

@@ -9,6 +9,7 @@ from functools import lru_cache
 import numpy as np
 from numpy.typing import ArrayLike
 from semitau.core.constants import ELECTROWEAK_CORRECTION, FERMI_COUPLING, HBAR, VCB
+from semitau.core.errors import InputError, Problem
 
 from ..truth.kinematics import Floats, kallen
 from .amplitudes import LeptonAmplitudes, lepton_amplitudes
@@ -143,7 +144,10 @@ def widths_at(decay: Decay, masses: Floats) -> Floats:
 
 @lru_cache(maxsize=1024)
 def observables(decay: Decay) -> Observables:
-    """Width, branching fraction, polarisations, asymmetry and mean q2 of a decay by quadrature; see `Observables`."""
+    """Width, branching fraction, polarisations, asymmetry and mean q2 of a decay by quadrature; see `Observables`.
+
+    InputError if couplings or form factors leave no rate.
+    """
     t, weights = _nodes(NODES)
     if has_line_shape(decay):
         masses, mass_weights = (column[:, None] for column in mass_nodes(decay))
@@ -158,6 +162,9 @@ def observables(decay: Decay) -> Observables:
         return float(flat @ of.ravel())
 
     rate = integral(parts.total)
+    if not 0.0 < rate < np.inf:
+        remedy = "Look at couplings that cancel each other, and at the form factors."
+        raise InputError(Problem("has no rate", str(decay), got=f"{rate:g} GeV", remedy=remedy))
     return Observables(
         rate=rate,
         branching_fraction=rate * decay.lifetime / HBAR,
