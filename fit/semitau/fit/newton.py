@@ -318,8 +318,8 @@ def maximise(
     """Fit a model to data.
 
     data : whatever `Model.data` takes, or `Model.expected_data()`.
-    start : values to start from, by name or as a (parameters,) array; default the injected ones, which are also where
-        a fit begins again that led nowhere from `start`.
+    start : values to start from, by name or as a (parameters,) array; default the injected ones. A fit from elsewhere
+        is compared with one from the injected values, and the deeper minimum counts.
     fixed : names of parameters to hold at their start value, besides those that the model holds.
 
     A fit that finds no minimum does not raise: the result says valid=False and gives its reasons.
@@ -331,13 +331,13 @@ def maximise(
     held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
     x[held] = model.start[held]
     ending, s = run(model, checked, free, x)
-    if ending.status != CONVERGED and start is not None:
-        # From far out, where bins expect nothing, no slope may lead back; the injected values are a safer place.
+    if start is not None:
+        # From far out no slope may lead back, or only to a minimum of its own with negative yields.
         again = model.start.copy()
         still = np.setdiff1d(np.arange(x.size), free)
         again[still] = x[still]
         second, t = run(model, checked, free, again)
-        if second.status == CONVERGED:
+        if second.status == CONVERGED and not (ending.status == CONVERGED and ending.value <= second.value):
             ending, s, x = second, t, again
     return assemble(model, checked, free, x, ending, s.hessian)
 
