@@ -141,11 +141,13 @@ def broken_histograms() -> dict[str, Any]:
     uneven = np.linspace(-2.0, 10.0, 24)
     negative = contents.copy()
     negative[4] = -3000.0
+    many = squares.copy()
+    many[4] = 9e6
     infinite = contents.copy()
     infinite[4] = np.nan
     return {
         "edges": written(contents[:-1], squares[:-1], uneven, 4000.0),
-        "negative": written(negative, squares, FINE, 4000.0),
+        "negative": written(negative, many, FINE, 4000.0),
         "nan": written(infinite, squares, FINE, 4000.0),
         "unsquared": written(contents, None, FINE, 4000.0),
         "twice": written(2.0 * contents, squares, FINE, 4000.0),

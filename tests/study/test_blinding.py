@@ -126,7 +126,7 @@ def test_a_hidden_study_from_end_to_end(blind_study: tuple[Path, Results], capsy
             assert np.any(np.abs(shown - ratio.value) < 1e-5)
             assert not np.any(np.abs(shown - true.value(ratio.name)) < 1e-6 * true.error(ratio.name))
     assert main(["extract", "out/templates.root", "--fix", "R_D=0.3"]) == 2
-    assert "a hidden ratio cannot be held" in capsys.readouterr().err
+    assert "a hidden ratio cannot be held, bounded, constrained or followed" in capsys.readouterr().err
     assert main(["extract", "out/templates.root", "--expected", "--json"]) == 0
     assert json.loads(capsys.readouterr().out)["blinding"] is None
 

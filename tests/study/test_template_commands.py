@@ -97,6 +97,33 @@ def test_profile_crosses_one_at_its_interval(template_file: Path, tmp_path: Path
     assert {path.name for path in tmp_path.iterdir()} == {"likelihood.svg", "likelihood.png"}
 
 
+def test_intervals_of_every_kind(template_file: Path, capsys: Capture) -> None:
+    said = document(["interval", str(template_file), "--toys", "400", "--precision", "0.3"], capsys)
+    for ratio in said["intervals"]:
+        kinds = ratio["intervals"]
+        assert set(kinds) == {"curvature", "likelihood", "likelihood_two", "toys", "corrected"}
+        for kind, ends in kinds.items():
+            assert ends["low"] < ratio["value"] < ends["high"], kind
+            width = 2.0 if kind == "likelihood_two" else 1.0
+            # Many events: all agree, within the toys' errors.
+            slack = 0.15 if kind != "toys" else 0.15 + 4 * ends["low_error"] / ratio["error"]
+            assert ends["high"] - ratio["value"] == pytest.approx(width * ratio["error"], rel=slack), kind
+    assert main(["interval", str(template_file), "--toys", "20", "--precision", "0.001"]) == 2
+    assert "too few toys for the asked precision" in capsys.readouterr().err
+
+
+def test_counts_of_a_file_are_whole(template_file: Path, tmp_path: Path, capsys: Capture) -> None:
+    from semitau.core.template_file import read_templates, write_templates
+
+    templates = read_templates(template_file)
+    half = {name: counts + 0.5 * (name == "D0_e") for name, counts in templates.data.items()}
+    write_templates(templates.with_data(half), tmp_path / "half.root")
+    assert main(["extract", str(tmp_path / "half.root")]) == 2
+    said = capsys.readouterr().err
+    assert "category D0_e, bin [0, 0] and" in said
+    assert "the count is not whole" in said
+
+
 def test_tables_are_for_people(template_file: Path, capsys: Capture) -> None:
     for command, word in (("extract", "Goodness of fit"), ("budget", "finite data"), ("profile", "made with")):
         assert main([command, str(template_file)]) == 0

@@ -86,7 +86,7 @@ def correct_for_templates(model: Model, result: FitResult) -> Corrected:
         )
     if not result.valid:
         raise RunError(*result.reasons)
-    free = np.flatnonzero(result.errors > 0)
+    free = np.array([i for i in model.free if result.errors[i] > 0], dtype=np.int64)
     hessian = np.linalg.inv(_square(result.covariance, free))
     hessian = 0.5 * (hessian + hessian.T)
     moved, x = np.zeros(free.size), result.values.copy()
@@ -123,7 +123,9 @@ def correct_for_templates(model: Model, result: FitResult) -> Corrected:
     covariance[np.ix_(free, free)] = 0.5 * (spread + spread.T)
     errors[free] = np.sqrt(np.diag(spread))
     shift[free] = moved
-    return Corrected(result.names, result.values + shift, errors, covariance, shift, float(1.0 - parts[0]))
+    return Corrected(
+        result.names, model.values(result.values + shift), errors, covariance, shift, float(1.0 - parts[0])
+    )
 
 
 class _Noise:

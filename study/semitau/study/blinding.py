@@ -18,6 +18,7 @@ import os
 import sys
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
+from math import isfinite
 from typing import TYPE_CHECKING, Any
 
 from semitau.core.errors import InputError, Problem, RunError
@@ -27,7 +28,7 @@ from .results import Blinding as BlindingPart
 if TYPE_CHECKING:
     from semitau.core.templates import TemplateSet
     from semitau.fit.curves import Profile, Region
-    from semitau.fit.model import Model
+    from semitau.fit.model import Model, Parameter
     from semitau.fit.result import FitResult
 
 VARIABLE = "SEMITAU_PASSPHRASE"
@@ -69,16 +70,17 @@ class Cover:
 
         Raises
         ------
-        InputError : a ratio is held, which would let a reader find the true one by trying.
+        InputError : a ratio is held, bounded, constrained or followed: one could find the true one by trying.
         RunError : the width is less than five errors of a ratio.
         """
-        held = [name for name in model.ratios if model.parameters[model.index(name)].fixed is not None]
+        held = [p.name for p in model.parameters if p.kind == "ratio" and not _is_free(p)]
+        held += [p.name for p in model.parameters if any(name in (p.function or "") for name in model.ratios)]
         if held:
             raise InputError(
                 Problem(
-                    "a hidden ratio cannot be held",
-                    where=", ".join(held),
-                    remedy="The quality of fits at held values would tell it. Fit the expected events (--expected).",
+                    "a hidden ratio cannot be held, bounded, constrained or followed",
+                    where=", ".join(dict.fromkeys(held)),
+                    remedy="What the fit does then would tell it. Fit the expected events (--expected).",
                 )
             )
         others = [p.name for p in model.parameters if p.fixed is None and p.kind not in ("ratio", "yield", "nuisance")]
@@ -133,6 +135,11 @@ class Cover:
                     remedy="Give a larger width.",
                 )
             )
+
+
+def _is_free(parameter: Parameter) -> bool:
+    unbound = not any(map(isfinite, parameter.bounds))
+    return parameter.fixed is None and parameter.constraint is None and parameter.function is None and unbound
 
 
 def cover(kind: str, width: float, study: str, passphrase: str) -> Cover:

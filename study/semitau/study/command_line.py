@@ -22,6 +22,7 @@ COMMANDS = {
     "extract": "Fit templates to data: ratios, errors, correlations.",
     "toys": "Bias, pulls and coverage of the fit from pseudo-data sets.",
     "profile": "Likelihood curves of the ratios and their joint region.",
+    "interval": "Intervals of the ratios: curvature, likelihood curve, toys, and corrected for poor templates.",
     "budget": "Take the uncertainty of each ratio apart by source.",
     "final": "Declare a study with hidden ratios final, before it is unblinded.",
     "unblind": "Show the true ratios of a study that was declared final.",

@@ -10,6 +10,7 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping
+from dataclasses import fields, is_dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
@@ -18,7 +19,7 @@ import numpy as np
 from semitau.core.engine import checked_workers
 from semitau.core.errors import InputError, Problem
 from semitau.core.template_file import read_templates
-from semitau.core.templates import Floats, TemplateSet
+from semitau.core.templates import Floats, Template, TemplateSet
 from semitau.core.whole_files import write_whole
 from semitau.gen.study_file.study import StudyConfig
 
@@ -148,17 +149,28 @@ def _state(study: StudyConfig, folder: StudyFolder, hiding: Cover) -> dict[str, 
 def templates_digest(templates: TemplateSet) -> str:
     """SHA-256 of everything in a template set that a fit sees: the same for the same contents, whatever the file."""
     digest = hashlib.sha256()
-    for part in (templates.categories, templates.components, templates.parameters, templates.nuisances):
-        digest.update(repr(part).encode())
-    for key in sorted(templates.templates):
-        template = templates.templates[key]
-        digest.update(repr(key).encode())
-        for array in (template.nominal, template.variance):
-            digest.update(_digest(array).encode())
-        for sides in (template.plus, template.minus):
-            for name in sorted(sides):
-                digest.update(f"{name} {_digest(sides[name])}".encode())
+    for field in fields(templates):
+        if field.name not in ("data", "provenance"):
+            _feed(digest, field.name, getattr(templates, field.name))
     return digest.hexdigest()
+
+
+def _feed(digest: Any, name: str, part: object) -> None:
+    """Names and contents of a part, whatever it is made of."""
+    digest.update(f"{name}:".encode())
+    if isinstance(part, np.ndarray):
+        digest.update(_digest(part).encode())
+    elif isinstance(part, Mapping):
+        for key in sorted(part, key=repr):
+            _feed(digest, repr(key), part[key])
+    elif isinstance(part, Template):
+        for field in fields(part):
+            _feed(digest, field.name, getattr(part, field.name))
+    elif isinstance(part, tuple):
+        for number, item in enumerate(part):
+            _feed(digest, str(number), vars(item) if is_dataclass(item) else item)
+    else:
+        digest.update(repr(part).encode())
 
 
 def _digest(array: Floats) -> str:

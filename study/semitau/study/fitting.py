@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from pathlib import Path
 
+import numpy as np
 from semitau.core.errors import InputError, Problem, RunError
 from semitau.core.template_file import read_templates
 from semitau.fit.data import Data
@@ -31,12 +32,36 @@ def choose_data(model: Model, data_file: Path | None, expected: bool = False) ->
     """What to fit: `data_file`, else the data in the template file, else (or with `expected`) the expected events."""
     if data_file is not None:
         data = model.data(data_file)
+        refuse_fractions(model, data, data_file.name)
         return data, DataSource(kind="file", description=f"data of {data_file.name}", events=_events(data))
     if model.templates.data and not expected:
         data = model.data(model.templates)
+        refuse_fractions(model, data, "data stored with the templates")
         return data, DataSource(kind="file", description="data stored with the templates", events=_events(data))
     data = model.expected_data()
     return data, DataSource(kind="expected", description="expected events", events=_events(data))
+
+
+def refuse_fractions(model: Model, data: Data, where: str) -> None:
+    """Counts of a file must be whole: data that were weighted or subtracted from have other errors than the fit's.
+
+    Raises
+    ------
+    InputError : a count is not whole.
+    """
+    for name, counts in model.by_category(data.counts).items():
+        wrong = np.argwhere(counts != np.round(counts))
+        if wrong.size:
+            place = tuple(wrong[0].tolist())
+            raise InputError(
+                Problem(
+                    "the count is not whole",
+                    where=f"{where}: category {name}, bin {list(place)}"
+                    + (f" and {len(wrong) - 1} more" if len(wrong) > 1 else ""),
+                    got=f"{counts[place]:g}",
+                    remedy="Give counts as observed; an expected set is fitted with --expected.",
+                )
+            )
 
 
 def fit_or_fail(model: Model, data: Data) -> FitResult:

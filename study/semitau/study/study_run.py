@@ -26,7 +26,7 @@ from semitau.gen.study_file.study import StudyConfig
 
 from .blinding import WITHHELD, Cover, cover, passphrase
 from .fit_parts import budget_parts, category_parts, component_parts, fit_part, nuisance_parts, ratio_parts
-from .fitting import fit_or_fail
+from .fitting import fit_or_fail, refuse_fractions
 from .form_factor_warnings import form_factor_warnings
 from .opening import open_study
 from .pictures import draw_pictures
@@ -206,6 +206,8 @@ def fitted_data(study: StudyConfig, model: Model) -> tuple[Data, DataSource]:
         description = "pseudo-data from events that the templates do not know"
     else:
         data, description = model.expected_data(), "expected events"
+    if kind == "file":
+        refuse_fractions(model, data, description)
     return data, DataSource(kind=kind, description=description, events=float(data.counts.sum()))
 
 
