@@ -329,4 +329,5 @@ def _turn_all(x: Floats, table: DoubleCharmTable, stream: np.uint64, first_event
     for first in (row.NODE, row.VISIBLE_E, row.VISIBLE_X, row.VISIBLE_Y, row.VISIBLE_Z):
         for i in range(LANES):
             x[first + i] = 0.0
-    _clear(x, row.PION_PX)
+    for first in (row.PION_PX, row.PION2_PX, row.PARTNER1_PX, row.PARTNER2_PX):
+        _clear(x, first)
