@@ -61,8 +61,8 @@ def region_document(region: Region) -> dict[str, object]:
     }
 
 
-def drawn_curves(model: Model, curves: Sequence[Profile], region: Region | None) -> Sheet:
-    """The picture of them all."""
+def drawn_curves(model: Model, curves: Sequence[Profile], region: Region | None, hidden: bool = False) -> Sheet:
+    """The picture of them all. hidden : the ratios are not the true ones."""
     labels = {parameter.name: parameter.label for parameter in model.parameters}
     injected = {parameter.name: parameter.injected for parameter in model.parameters}
     plane = None
@@ -74,7 +74,7 @@ def drawn_curves(model: Model, curves: Sequence[Profile], region: Region | None)
             second=region.second,
             heights=region.heights,
             best=region.values,
-            injected=(injected[first], injected[second]),
+            injected=None if hidden else (injected[first], injected[second]),
             levels=region.levels,
         )
     return likelihood(
@@ -90,6 +90,7 @@ def drawn_curves(model: Model, curves: Sequence[Profile], region: Region | None)
             for curve in curves
         ],
         plane,
+        hidden,
     )
 
 

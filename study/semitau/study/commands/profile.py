@@ -59,7 +59,7 @@ def command(
         plane = None if plane is None else hiding.region(plane)
     call.terminal.show(described(source), "", curve_table(model, shown, curves))
     if output is not None:
-        drawn_curves(model, curves, plane).save(
+        drawn_curves(model, curves, plane, hiding is not None).save(
             output, "likelihood", "Likelihood", "Likelihood curves of the ratios and their joint region."
         )
         call.terminal.show("", f"Picture: {output / 'likelihood.svg'}, {output / 'likelihood.png'}")

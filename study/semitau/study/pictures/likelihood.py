@@ -29,6 +29,7 @@ class Curve:
 class Plane:
     """−2 ln L above its minimum over two ratios, (first points, second points), with the best and the injected values.
 
+    injected : None while the ratios are hidden: the distance would look like a tension and is none.
     levels : confidence in words -> height.
     """
 
@@ -37,16 +38,17 @@ class Plane:
     second: NDArray[np.float64]
     heights: NDArray[np.float64]
     best: tuple[float, float]
-    injected: tuple[float, float]
+    injected: tuple[float, float] | None
     levels: Mapping[str, float]
 
 
-def likelihood(curves: Sequence[Curve], plane: Plane | None) -> Sheet:
-    """A sheet with one panel a curve, and the region at the right."""
+def likelihood(curves: Sequence[Curve], plane: Plane | None, hidden: bool = False) -> Sheet:
+    """A sheet with one panel a curve, and the region at the right. hidden : the ratios are not the true ones."""
     count = len(curves) + (plane is not None)
     panels = Panels(count=count, columns=3, width=3.2, height=2.9, left=0.85, foot=0.5, head=0.2)
+    note = "all other parameters fitted at each point" + ("; the ratios are hidden" if hidden else "")
     with rc_context(RC):
-        sheet = Sheet(*panels.sheet_size, "Likelihood", "all other parameters fitted at each point")
+        sheet = Sheet(*panels.sheet_size, "Likelihood", note)
         for number, curve in enumerate(curves):
             axes = sheet.axes(*panels.corner(number), panels.width, panels.height)
             _draw_curve(axes, curve, ratio_colour(number))
@@ -81,7 +83,8 @@ def _draw_plane(axes: Axes, plane: Plane) -> None:
     )
     axes.clabel(drawn, fmt=dict(zip(heights, names, strict=True)), fontsize=7)
     axes.plot(*plane.best, marker="+", color=INK, markersize=8, linestyle="", label="fitted")
-    axes.plot(*plane.injected, marker="x", color=ratio_colour(0), markersize=6, linestyle="", label="made with")
+    if plane.injected is not None:
+        axes.plot(*plane.injected, marker="x", color=ratio_colour(0), markersize=6, linestyle="", label="made with")
     axes.set_xlabel(plane.labels[0])
     axes.set_ylabel(plane.labels[1])
     axes.legend(loc="upper right", borderaxespad=0, handlelength=1)
