@@ -43,6 +43,8 @@ if TYPE_CHECKING:
     from .nuisances import nuisance_shifts as nuisance_shifts
     from .poor_templates import Corrected as Corrected
     from .poor_templates import correct_for_templates as correct_for_templates
+    from .prospects import Reach as Reach
+    from .prospects import reach as reach
     from .result import FitResult as FitResult
     from .shape_and_rate import mirrored as mirrored
     from .shape_and_rate import one_sided as one_sided
@@ -70,6 +72,7 @@ _HOME = {
     "Prediction": ".compatibility",
     "Profile": ".curves",
     "Quality": ".fit_quality",
+    "Reach": ".prospects",
     "Region": ".curves",
     "Tension": ".compatibility",
     "ToyInterval": ".neyman",
@@ -88,6 +91,7 @@ _HOME = {
     "one_sided": ".shape_and_rate",
     "profile": ".curves",
     "quality": ".fit_quality",
+    "reach": ".prospects",
     "read_templates": "semitau.core.template_file",
     "region": ".curves",
     "run_toys": ".toys",
@@ -114,6 +118,7 @@ __all__ = [
     "Prediction",
     "Profile",
     "Quality",
+    "Reach",
     "Region",
     "Tension",
     "ToyInterval",
@@ -132,6 +137,7 @@ __all__ = [
     "one_sided",
     "profile",
     "quality",
+    "reach",
     "read_templates",
     "region",
     "run_toys",

@@ -163,15 +163,18 @@ def _likelihood(given: Inputs, start: Average) -> Average:
     )  # fmt: skip
 
 
-def lowest_point(height: Callable[[Floats], float], start: Floats) -> tuple[Floats, float]:
+def lowest_point(
+    height: Callable[[Floats], float], start: Floats, *, close: float = 1e-8, flat: float = 1e-12
+) -> tuple[Floats, float]:
     """Where `height` is lowest near `start`, and how low; coordinates are in units of an error.
 
-    Without derivatives, which jump where an asymmetric error stops narrowing.
+    close, flat : precision of the place and of the height. Without derivatives, which jump where an asymmetric error
+    stops narrowing.
     """
     if not len(start):
         return start, height(start)
     corners = np.vstack([start, start + 0.5 * np.eye(len(start))])
-    how = {"xatol": 1e-8, "fatol": 1e-12, "maxiter": 2000, "initial_simplex": corners}
+    how = {"xatol": close, "fatol": flat, "maxiter": 2000, "initial_simplex": corners}
     found = optimize.minimize(height, start, method="Nelder-Mead", options=how)
     if not found.success:
         remedy = "Check the asymmetric errors, or average with the linear form."

@@ -26,6 +26,7 @@ COMMANDS = {
     "budget": "Take the uncertainty of each ratio apart by source.",
     "final": "Declare a study with hidden ratios final, before it is unblinded.",
     "unblind": "Show the true ratios of a study that was declared final.",
+    "reach": "Expected errors and significance against the amount of data.",
     "average": "Combine measurements with correlations; compatibility with a prediction.",
     "report": "Draw pictures and report of a study folder again.",
 }
