@@ -5,7 +5,16 @@ from __future__ import annotations
 import os
 
 import numpy as np
-from semitau.core.templates import Category, Component, Nuisance, Observable, ScaleParameter, Template, TemplateSet
+from semitau.core.templates import (
+    Category,
+    Coefficient,
+    Component,
+    Nuisance,
+    Observable,
+    ScaleParameter,
+    Template,
+    TemplateSet,
+)
 
 SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 """Of everything random in these tests; statistical ones state how often another seed may fail."""
@@ -142,3 +151,58 @@ def real_size(*, events: float = 1.0, seed: int = 1) -> TemplateSet:
     return TemplateSet(
         categories, tuple(Component(n, n, "background", scales[n]) for n in names), parameters, nuisances, templates
     )
+
+
+def following(*, events: float = 1.0, at: tuple[float, float, float] = (0.0, 0.0, 0.0)) -> TemplateSet:
+    """`small` with tau templates that are quadratic functions of three coefficients, and ratios that follow.
+
+    In each bin the weight is |1 + a SR + b T|² + (b Im_T)² with a, b that vary over the bins; R(c) is the same with
+    the mean of the weights over the decays. at : the injected point.
+    """
+    plain = small(factor=events, variance=0.02)
+    names = ("SR", "T", "Im_T")
+    point = dict(zip(("one", *names), (1.0, *at), strict=True))
+    strengths = {"D_tau": (0.9, 0.3), "Dst_tau": (0.12, -2.4)}
+    templates, rates = dict(plain.templates), {}
+    for component, (scalar, tensor) in strengths.items():
+        rates[component] = _weight_pieces(np.array(scalar), np.array(tensor), 0.15)
+        for category in plain.categories:
+            here = plain.templates[category.name, component]
+            x = np.linspace(0.0, 1.0, here.nominal.size).reshape(here.nominal.shape)
+            weights = _weight_pieces(scalar * (0.4 + 1.2 * x), tensor * (1.3 - 0.8 * x), 0.1)
+            pieces = {pair: here.nominal * weight for pair, weight in weights.items()}
+            nominal = sum(point[a] * point[b] * piece for (a, b), piece in pieces.items())
+            grown = nominal / here.nominal
+            templates[category.name, component] = Template(
+                nominal,
+                here.variance * grown,
+                {name: side * grown for name, side in here.plus.items()},
+                {name: side * grown for name, side in here.minus.items()},
+                pieces,
+            )
+    parameters = []
+    for parameter in plain.parameters:
+        form = rates.get({"R_D": "D_tau", "R_Dst": "Dst_tau"}.get(parameter.name, ""))
+        if form is not None:
+            rate = tuple((a, b, float(parameter.injected * piece)) for (a, b), piece in form.items())
+            injected = sum(point[a] * point[b] * piece for a, b, piece in rate)
+            parameter = ScaleParameter(parameter.name, parameter.label, "ratio", injected, None, rate)
+        parameters.append(parameter)
+    coefficients = tuple(Coefficient(name, name, point[name], 4.0 if name == "SR" else 1.0) for name in names)
+    return TemplateSet(
+        plain.categories, plain.components, tuple(parameters), plain.nuisances, templates, coefficients=coefficients
+    )
+
+
+def _weight_pieces(a: np.ndarray, b: np.ndarray, own: float) -> dict[tuple[str, str], np.ndarray]:
+    """|1 + a SR + b T|² + own (SR² + T²) + (1 + own) b² Im_T² by pairs of coefficients."""
+    one = np.ones_like(a)
+    return {
+        ("one", "one"): one,
+        ("one", "SR"): 2.0 * a,
+        ("one", "T"): 2.0 * b,
+        ("SR", "SR"): a * a + own,
+        ("SR", "T"): 2.0 * a * b,
+        ("T", "T"): b * b + own,
+        ("Im_T", "Im_T"): (1.0 + own) * b * b,
+    }

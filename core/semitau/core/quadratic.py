@@ -111,6 +111,21 @@ def reweightings(templates: TemplateSet, values: Mapping[str, float] | None = No
     return tuple(found)
 
 
+def whole_reweightings(templates: TemplateSet, values: Mapping[str, float]) -> tuple[Reweighting, ...]:
+    """The same of each component over all categories; `category` is ""."""
+    sums: dict[str, tuple[float, float, float]] = {}
+    point = checked_point(templates, values)
+    for there in reweightings(templates, values):
+        weights = float(contents_at(templates.templates[there.category, there.component], point).sum())
+        squares = weights**2 / there.effective if there.effective > 0 else 0.0
+        known = sums.get(there.component, (0.0, 0.0, 0.0))
+        sums[there.component] = known[0] + there.events, known[1] + weights, known[2] + squares
+    return tuple(
+        Reweighting("", component, point_text(values), events, weights**2 / squares if squares > 0 else 0.0)
+        for component, (events, weights, squares) in sums.items()
+    )
+
+
 def poor_reweightings(templates: TemplateSet, values: Mapping[str, float] | None = None) -> Iterator[Problem]:
     """A problem for each component whose effective events fall below SHARE_AT_LEAST of what the injected point has."""
     at_home = {(r.category, r.component): r for r in reweightings(templates)}

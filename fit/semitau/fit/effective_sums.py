@@ -66,7 +66,7 @@ def _sum_variances(arrays: Arrays, tile: int, x: Floats, mode: int, work: Worksp
         if mode != VALUE:
             for j in range(arrays.component_first[c], arrays.component_first[c + 1]):
                 p = arrays.component_scales[j]
-                factor = 2.0 * scale * scale_of(arrays, c, x, p, -1) * arrays.inverse_injected[p]
+                factor = 2.0 * scale * scale_of(arrays, c, x, j, -1) * arrays.inverse_injected[p]
                 for i in range(length):
                     work.variance_rows[p, i] += factor * part[i]
 
@@ -115,11 +115,12 @@ def _add_variance_curvature(arrays: Arrays, tile: int, x: Floats, hessian: Float
         shared = 2.0 * dot(work.lanes[6], 0, arrays.variance, arrays.piece_offset[piece], length)
         for j in range(begin, end):
             p = arrays.component_scales[j]
-            first = scale_of(arrays, c, x, p, -1) * arrays.inverse_injected[p]
+            first = scale_of(arrays, c, x, j, -1) * arrays.inverse_injected[p]
             for l in range(begin, j + 1):
                 q = arrays.component_scales[l]
-                other = scale_of(arrays, c, x, q, -1) * arrays.inverse_injected[q]
+                other = scale_of(arrays, c, x, l, -1) * arrays.inverse_injected[q]
                 second = 0.0  # of the scale itself
-                if p != q:
-                    second = scale_of(arrays, c, x, p, q) * arrays.inverse_injected[p] * arrays.inverse_injected[q]
-                hessian[max(p, q), min(p, q)] += shared * (first * other + work.scales[c] * second)
+                if j != l:
+                    second = scale_of(arrays, c, x, j, l) * arrays.inverse_injected[p] * arrays.inverse_injected[q]
+                twice = 2.0 if p == q and j != l else 1.0
+                hessian[max(p, q), min(p, q)] += twice * shared * (first * other + work.scales[c] * second)

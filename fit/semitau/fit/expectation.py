@@ -51,11 +51,14 @@ def workspace(arrays: Arrays) -> Workspace:
 
 @inlined
 def scale_of(arrays: Arrays, component: int, x: Floats, skip: int, skip_too: int) -> float:
-    """Product of a component's scale parameters over their injected values, without up to two of them."""
+    """Product of a component's scale parameters over their injected values, without up to two of them.
+
+    skip, skip_too : places in component_scales, where a parameter may stand twice (the square of a coefficient); or -1.
+    """
     product = 1.0
     for i in range(arrays.component_first[component], arrays.component_first[component + 1]):
-        p = arrays.component_scales[i]
-        if p != skip and p != skip_too:
+        if i != skip and i != skip_too:
+            p = arrays.component_scales[i]
             product *= x[p] * arrays.inverse_injected[p]
     return product
 
@@ -101,7 +104,7 @@ def sum_some_pieces(arrays: Arrays, tile: int, begin: int, end: int, x: Floats, 
         if mode != VALUE:
             for j in range(arrays.component_first[component], arrays.component_first[component + 1]):
                 p = arrays.component_scales[j]
-                factor = scale_of(arrays, component, x, p, -1) * arrays.inverse_injected[p]
+                factor = scale_of(arrays, component, x, j, -1) * arrays.inverse_injected[p]
                 row = work.rows[p]
                 for i in range(length):
                     row[i] += factor * contents[i]
@@ -124,7 +127,7 @@ def add_curvature(arrays: Arrays, tile: int, begin: int, end: int, x: Floats, he
             for j in range(begin, end):
                 for l in range(begin, j):
                     p, q = arrays.component_scales[j], arrays.component_scales[l]
-                    factor = scale_of(arrays, component, x, p, q)
+                    factor = scale_of(arrays, component, x, j, l) * (2.0 if p == q else 1.0)
                     factor *= arrays.inverse_injected[p] * arrays.inverse_injected[q]
                     hessian[max(p, q), min(p, q)] += factor * contents
         for move in range(arrays.piece_moves[piece], arrays.piece_moves[piece + 1]):
@@ -135,7 +138,7 @@ def add_curvature(arrays: Arrays, tile: int, begin: int, end: int, x: Floats, he
             hessian[k, k] += work.scales[component] * work.bends[k, 2] * even
             for j in range(begin, end):
                 p = arrays.component_scales[j]  # scale parameters come before nuisances: p < k
-                hessian[k, p] += scale_of(arrays, component, x, p, -1) * arrays.inverse_injected[p] * shift
+                hessian[k, p] += scale_of(arrays, component, x, j, -1) * arrays.inverse_injected[p] * shift
 
 
 @kernel

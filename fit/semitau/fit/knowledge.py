@@ -35,9 +35,11 @@ class Knowledge:
         correlated: Sequence[Correlated],
         bounds: Mapping[str, tuple[float | None, float | None]] | None,
         functions: Mapping[str, str] | None,
+        coefficients: Mapping[str, float],
     ) -> Knowledge:
-        """The arguments of Model. Raises InputError with every problem."""
+        """The arguments of Model; of the coefficients those that are fitted. Raises InputError with every problem."""
         injected = {p.name: p.injected for p in templates.parameters} | {n.name: 0.0 for n in templates.nuisances}
+        injected |= coefficients
         scales = [p.name for p in templates.parameters]
         fixed, yields, constraints, bounds = (
             dict(fixed or {}),

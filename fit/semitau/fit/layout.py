@@ -19,6 +19,7 @@ from semitau.core.templates import Category, Floats, Template, TemplateSet
 from .constraints import Constraints
 from .functions import Functions
 from .interpolation import FLOOR
+from .scaled_parts import Part, parts_of
 from .vectors import WIDTH
 
 Indices = NDArray[np.int64]
@@ -30,15 +31,15 @@ LIGHT, APPROXIMATE, EXACT_BY_COMPONENT = 0, 1, 2
 
 
 class Arrays(NamedTuple):
-    """What the compiled functions read. Parameters: scale parameters first, then nuisances."""
+    """What the compiled functions read. Parameters: scale parameters first, then coefficients, then nuisances."""
 
-    inverse_injected: Floats  # (parameters,); 0 for nuisances
+    inverse_injected: Floats  # (parameters,); 1 for coefficients, 0 for nuisances
     inverse_variance: Floats  # (parameters,) of the constraint, of the logarithm for log-normal ones; 0 without one
     constraints: Constraints
     functions: Functions  # parameters that are set by others
     mate: Indices  # (parameters,): the parameter that multiplies this one in every component; -1 without one
     component_first: Indices  # (components + 1,) into component_scales
-    component_scales: Indices  # parameters whose product scales the component
+    component_scales: Indices  # parameters whose product scales the component; one may stand twice
     tile_first: Indices  # (tiles + 1,) lane
     tile_filled: Indices  # (tiles,) lanes that hold a bin; they come first
     tile_pieces: Indices  # (tiles + 1,) piece
@@ -96,8 +97,8 @@ class _Padded:
 class _Growing:
     """The arrays under construction, tile by tile."""
 
-    def __init__(self, templates: TemplateSet, indices: Mapping[str, int]) -> None:
-        self.templates, self.indices = templates, indices
+    def __init__(self, parts: Sequence[Part], indices: Mapping[str, int]) -> None:
+        self.parts, self.indices = parts, indices
         self.lane_bin: list[int] = []
         self.tile_first, self.tile_filled, self.tile_pieces = [0], list[int](), [0]
         self.tile_rows, self.rows = [0], list[int]()
@@ -110,10 +111,10 @@ class _Growing:
     def add_tile(self, category: Category, bins: Indices, first_bin: int, totals: _Totals) -> None:
         length = -(-bins.size // WIDTH) * WIDTH
         touched: set[int] = set()
-        for number, component in enumerate(self.templates.components):
-            template = self.templates.templates.get((category.name, component.name))
+        for number, part in enumerate(self.parts):
+            template = part.templates.get(category.name)
             if template is not None and self._add_piece(number, template, bins, length, touched):
-                touched.update(self.indices[name] for name in component.scales_with)
+                touched.update(self.indices[name] for name in part.scales)
         self.lane_bin += [*(first_bin + bins).tolist(), *[-1] * (length - bins.size)]
         expected, variance, reach = (part[bins] for part in totals)
         filled = expected > 0
@@ -129,7 +130,8 @@ class _Growing:
     def _add_piece(self, number: int, template: Template, bins: Indices, length: int, touched: set[int]) -> bool:
         moves = list(_moves(template, bins))
         centre = template.nominal.ravel()[bins]
-        if not moves and not centre.any():
+        of_variance = self.parts[number].of_variance and template.variance.any()
+        if not (moves or centre.any() or of_variance):
             return False
         self.piece_component.append(number)
         self.piece_offset.append(self.nominal.add(centre, length))
@@ -154,6 +156,7 @@ def lay_out(
     indices: Mapping[str, int],
     template_statistics: bool,
     form: int = LIGHT,
+    parts: Sequence[Part] | None = None,
 ) -> Layout:
     """Flatten the templates.
 
@@ -161,12 +164,14 @@ def lay_out(
     indices : parameter name -> index.
     template_statistics : False takes the templates as exact.
     form : of the likelihood for finite templates.
+    parts : what is scaled by products of parameters, one or more to a component; default the components themselves.
 
     Raises InputError for a bin whose total expectation is negative, and when no bin expects anything.
     """
     totals = [_totals(templates, category) for category in templates.categories]
     _refuse_negative(templates.categories, totals)
-    growing, first_bin = _Growing(templates, indices), 0
+    parts = parts_of(templates) if parts is None else parts
+    growing, first_bin = _Growing(parts, indices), 0
     for category, total in zip(templates.categories, totals, strict=True):
         active = np.flatnonzero((total.expected > 0) | (total.reach > 0))
         for bins in np.array_split(active, max(1, -(-active.size // TILE))):
@@ -182,7 +187,10 @@ def lay_out(
     inverse_injected = np.zeros(len(indices))
     for parameter in templates.parameters:
         inverse_injected[indices[parameter.name]] = 1.0 / parameter.injected
-    scales = [[indices[name] for name in component.scales_with] for component in templates.components]
+    for coefficient in templates.coefficients:
+        if coefficient.name in indices:
+            inverse_injected[indices[coefficient.name]] = 1.0
+    scales = [[indices[name] for name in part.scales] for part in parts]
     arrays = Arrays(
         inverse_injected=inverse_injected,
         inverse_variance=constraints.inverse_variance,

@@ -9,8 +9,10 @@ from math import inf
 import numpy as np
 from numpy.typing import ArrayLike
 from semitau.core.errors import InputError, Problem
+from semitau.core.quadratic import contents_at, injected_values
 from semitau.core.templates import Floats, TemplateSet
 
+from .coefficients import floated, followed_rates, set_twice, starting_shifts
 from .constraints import BLOCK, LOG_NORMAL, Constraint, Correlated
 from .constraints import arrays_of as constraint_arrays
 from .data import Data, Source, read_data
@@ -20,6 +22,7 @@ from .interpolation import bend
 from .knowledge import Knowledge, refuse, unknown
 from .layout import APPROXIMATE, EXACT_BY_COMPONENT, LIGHT, Indices, Layout, lay_out
 from .likelihood import expectations, workspace
+from .scaled_parts import growth, parts_of
 
 PARAMETERS_AT_MOST = 512
 
@@ -33,8 +36,8 @@ DEFAULT_LIKELIHOOD = "light"
 class Parameter:
     """One number that the likelihood depends on.
 
-    kind : "ratio", "yield" (relative to the expectation) or "nuisance" (in standard deviations).
-    group : row of the budget that a constraint belongs to: the nuisance's group, "yields" or "ratios".
+    kind : "ratio", "yield" (relative to the expectation), "coefficient" or "nuisance" (in standard deviations).
+    group : row of the budget that a constraint belongs to: the nuisance's group, "yields", "ratios" or "coefficients".
     injected : the value that the templates were made with; 0 for a nuisance.
     constraint : standard deviation of the Gaussian auxiliary measurement, None if there is none.
     fixed : the value it is held at, None if it is fitted.
@@ -72,9 +75,13 @@ class Model:
     bounds : parameter name -> (low, high), either None; the fit keeps the parameter inside.
     functions : parameter name -> formula of other parameters, e.g. {"R_D_B0": "R_D_Bp", "yield_b": "1.1 * yield_a"}
         (functions.py). Such a parameter is not fitted, but has a value, an error and correlations in the result.
+    coefficients : names of the template set's coefficients to fit. Templates and ratios follow them: a ratio that does
+        is a function of them, not a parameter of its own. The other coefficients stay at their injected values, which
+        `core.quadratic.templates_at` puts elsewhere.
 
-    Parameters are the scale parameters (ratios and yields), then the nuisances, in the order of the template set. A
-    model does not change once made. Bins are numbered through all categories, in C order of their axes.
+    Parameters are the scale parameters (ratios and yields), the fitted coefficients, then the nuisances, in the order
+    of the template set. A model does not change once made. Bins are numbered through all categories, in C order of
+    their axes. `ratios` names the parameters of interest: ratios and fitted coefficients.
 
     Raises InputError for names that are not there, values that make no sense, a free parameter that nothing depends
     on, and bins whose total expectation is negative.
@@ -92,14 +99,23 @@ class Model:
         correlated: Sequence[Correlated] = (),
         bounds: Mapping[str, tuple[float | None, float | None]] | None = None,
         functions: Mapping[str, str] | None = None,
+        coefficients: Sequence[str] = (),
     ) -> None:
         self.templates = templates
         self.template_statistics = bool(template_statistics)
         self.likelihood = _known_likelihood(likelihood)
-        known = Knowledge.gather(templates, fixed, yields, constraints, correlated, bounds, functions)
-        self.parameters = _parameters(templates, known)
+        self.coefficients = floated(templates, coefficients, self.likelihood)
+        following = followed_rates(templates, self.coefficients)
+        refuse(set_twice(following, functions or {}))
+        parts = parts_of(templates, self.coefficients, tuple(following))
+        point = {name: value for name, value in injected_values(templates).items() if name in self.coefficients}
+        known = Knowledge.gather(
+            templates, fixed, yields, constraints, correlated, bounds, {**(functions or {}), **following}, point
+        )
+        self.parameters = _parameters(templates, known, self.coefficients)
         self.names = tuple(parameter.name for parameter in self.parameters)
-        self.ratios = tuple(parameter.name for parameter in self.parameters if parameter.kind == "ratio")
+        of_interest = ("ratio", "coefficient")
+        self.ratios = tuple(parameter.name for parameter in self.parameters if parameter.kind in of_interest)
         self._indices = {name: index for index, name in enumerate(self.names)}
         self.layout: Layout = lay_out(
             templates,
@@ -108,12 +124,16 @@ class Model:
             self._indices,
             self.template_statistics,
             LIKELIHOODS[self.likelihood],
+            parts,
         )
         self.free: Indices = np.array(
             [i for i, p in enumerate(self.parameters) if p.fixed is None and p.function is None], dtype=np.int64
         )
         self.injected = self._completed([parameter.injected for parameter in self.parameters])
-        self.start = self._completed([p.injected if p.fixed is None else p.fixed for p in self.parameters])
+        away = starting_shifts(parts, templates, [self.names[i] for i in self.free])
+        self.start = self._completed(
+            [(p.injected if p.fixed is None else p.fixed) + away.get(p.name, 0.0) for p in self.parameters]
+        )
         refuse(_useless(self))
 
     @property
@@ -188,19 +208,21 @@ class Model:
         """
         values = dict(zip(self.names, self.values(parameters).tolist(), strict=True))
         injected = {parameter.name: parameter.injected for parameter in self.parameters}
+        following = followed_rates(self.templates, self.coefficients)
+        point = injected_values(self.templates) | {name: values[name] for name in self.coefficients}
         out = {}
         for component in self.templates.components:
-            scale = float(np.prod([values[name] / injected[name] for name in component.scales_with]))
+            scale = float(np.prod([values[n] / injected[n] for n in component.scales_with if n not in following]))
             for category in self.templates.categories:
                 template = self.templates.templates.get((category.name, component.name))
                 if template is None:
                     continue
-                contents = template.nominal.copy()
+                contents, shifts = contents_at(template, point), np.zeros_like(template.nominal)
                 for name, plus in template.plus.items():
                     minus, theta = template.minus[name], values[name]
-                    contents += 0.5 * (plus - minus) * theta
-                    contents += (0.5 * (plus + minus) - template.nominal) * bend(theta)[0]
-                out[category.name, component.name] = scale * contents
+                    shifts += 0.5 * (plus - minus) * theta
+                    shifts += (0.5 * (plus + minus) - template.nominal) * bend(theta)[0]
+                out[category.name, component.name] = scale * (contents + shifts * growth(template, contents))
         return out
 
     def template_errors(self) -> dict[str, Floats]:
@@ -257,13 +279,16 @@ class Model:
         return int(((plain < arrays.floor) & (self.layout.lane_bin >= 0)).sum())
 
 
-def _parameters(templates: TemplateSet, known: Knowledge) -> tuple[Parameter, ...]:
+def _parameters(templates: TemplateSet, known: Knowledge, fitted: Sequence[str]) -> tuple[Parameter, ...]:
     parameters = []
     scales = [
         (p.name, p.label, p.kind, "ratios" if p.kind == "ratio" else "yields", p.injected) for p in templates.parameters
     ]
     nuisances = [(n.name, n.label, "nuisance", n.group, 0.0) for n in templates.nuisances]
-    for name, label, kind, group, injected in [*scales, *nuisances]:
+    coefficients = [
+        (c.name, c.label, "coefficient", "coefficients", c.value) for c in templates.coefficients if c.name in fitted
+    ]
+    for name, label, kind, group, injected in [*scales, *coefficients, *nuisances]:
         law, sigma = known.law_of(name, injected)
         function = known.functions.get(name)
         parameters.append(

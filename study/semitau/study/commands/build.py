@@ -23,6 +23,7 @@ def command(call: Invocation, file: Path, output: Path | None, again: bool) -> N
     from semitau.core.whole_files import write_whole
 
     from ..opening import open_study
+    from ..reweighting_parts import reweighting_line, reweighting_warnings
     from ..study_folder import claimed_folder
     from ..study_templates import study_templates
     from ..summary import cut_flow_table
@@ -36,11 +37,14 @@ def command(call: Invocation, file: Path, output: Path | None, again: bool) -> N
     with call.terminal.progress() as report:
         made = study_templates(study, target, call.workers, report, again)
     reused = " (they were there already; --again makes them anew)" if made.reused else ""
-    call.terminal.show(cut_flow_table(made.cut_flow), "", f"Templates: {target}{reused}")
+    call.terminal.show(cut_flow_table(made.cut_flow), "", reweighting_line(made.reweightings))
+    call.terminal.show(*(f"Look at this: {warning}" for warning in reweighting_warnings(made.reweightings)))
+    call.terminal.show(f"Templates: {target}{reused}")
     call.terminal.result(
         {
             "templates": str(target),
             "reused": made.reused,
             "cut_flow": [part.model_dump(mode="json") for part in made.cut_flow],
+            "reweightings": [part.model_dump(mode="json") for part in made.reweightings],
         }
     )
