@@ -198,3 +198,48 @@ def test_tensor_model() -> None:
         limit, own = (gen.ratio("B0", charm, "HQE-2021", {"T": 0.1}, model) for model in ("LO", "HQE"))
         assert own == pytest.approx(limit, rel=0.15)
         assert own != limit
+
+
+def ratios(w: float, **changes: float) -> tuple[float, float]:
+    """R1 = h_V/h_A1 and R2 = (h_A3 + r h_A2)/h_A1 with the quark masses of the source."""
+    parameters = {**PARAMETERS, "m_b": 4.71, "m_b-m_c": 3.40, "chi2(1)": 0.0, "chi2_slope": 0.0, "chi3_slope": 0.0}
+    parameters = {**parameters, "eta(1)": 0.0, "eta_slope": 0.0, **changes}
+    step = np.array([w - 1.0])
+    h = over_leading(subleading(parameters, step), step)
+    # To first order in 1/m and alpha_s, as the source has it.
+    R1 = h.V - h.A1 + 1.0
+    R2 = h.A3 + DST / B * h.A2 - h.A1 + 1.0
+    return float(R1[0]), float(R2[0])
+
+
+def test_ratios_at_zero_recoil() -> None:
+    """Phys. Rev. D 95 (2017) 115008, from memory, to the last digit there:
+
+    R1(1) = 1.34 - 0.12 eta, R2(1) = 0.98 - 0.42 eta - 0.54 chi2, R1'(1) = -0.15 + 0.06 eta - 0.12 eta',
+    R2'(1) = 0.01 - 0.54 chi2' + 0.21 eta - 0.42 eta'. The source also expands the 1S mass in alpha_s, which lowers the
+    binding energy by 0.07 GeV in the constants alone: 0.07 (1/2m_c + 1/2m_b) = 0.034 in R1, half of it in its slope.
+    """
+    h = 1e-4
+
+    def both(**changes: float) -> np.ndarray:
+        at, near = (np.array(ratios(w, **changes)) for w in (1.0, 1.0 + h))
+        return np.concatenate([at, (near - at) / h])
+
+    plain = both()
+    np.testing.assert_allclose(plain, [1.34 + 0.034, 0.98, -0.15 - 0.017, 0.01], atol=0.02)
+    for name, expected in (
+        ("eta(1)", [-0.12, -0.42, 0.06, 0.21]),
+        ("eta_slope", [0.0, 0.0, -0.12, -0.42]),
+        ("chi2(1)", [0.0, -0.54, 0.0, 0.0]),
+        ("chi2_slope", [0.0, 0.0, 0.0, -0.54]),
+    ):
+        change = both(**{name: 1.0}) - plain
+        compared = np.abs(expected) > 0
+        np.testing.assert_allclose(change[compared], np.array(expected)[compared], atol=0.008, err_msg=name)
+
+
+def test_hyperfine_pattern() -> None:
+    """chi_3 is the chromomagnetic term within one meson: 3 for spin 0, -1 for spin 1, as in the mass splitting."""
+    parts = subleading({**PARAMETERS, "chi2(1)": 0.0, "chi2_slope": 0.0}, np.array([0.1, 0.4]))
+    np.testing.assert_allclose(parts.L1, -3.0 * parts.L2, rtol=1e-13)
+    np.testing.assert_allclose(parts.L2, -4.0 * PARAMETERS["chi3_slope"] * np.array([0.1, 0.4]), rtol=1e-13)

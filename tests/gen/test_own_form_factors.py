@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import json
 import re
 from pathlib import Path
 
@@ -13,6 +14,7 @@ from semitau.gen.decays.form_factor_parameters import FIXED
 from semitau.gen.decays.form_factor_set import read_form_factors
 from semitau.gen.study_file.reader import read_study
 from semitau.gen.templates.component_plan import plan_channels, predicted_ratio
+from semitau.gen.truth.decay_record import decay_as_data, decay_from_data
 
 from .small_study import TEXT
 
@@ -228,3 +230,12 @@ def test_examples_of_the_document(tmp_path: Path) -> None:
     (table,) = re.findall(r"```csv\n(.*?)```", text, re.DOTALL)
     assert gen.read_form_factors(written(tmp_path, own)).transitions == ("D",)
     assert gen.read_form_factors(written(tmp_path, table, "my_set.csv"), "CLN", "D").transitions == ("D",)
+
+
+def test_events_know_their_set(tmp_path: Path) -> None:
+    """Through the data that events carry, a set of one's own and a shared one come back equal."""
+    own = gen.read_form_factors(written(tmp_path, TOML))
+    for decay in (gen.Decay("B0", "D-", "mu", own), gen.Decay("B0", "D*-", "tau", "HQE-2021", {"T": 0.1}, "HQE")):
+        back = decay_from_data(json.loads(json.dumps(decay_as_data(decay))))
+        assert back == decay
+        assert back.form_factor_set.shared == decay.form_factor_set.shared
