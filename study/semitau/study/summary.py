@@ -109,6 +109,18 @@ def parameter_table(fit: Fit) -> Table:
     return table
 
 
+def held_table(budgets: Sequence[Budget], ratios: Sequence[RatioResult]) -> Table:
+    """By how much the error of each ratio falls, in quadrature, when a source alone is held."""
+    labels = {ratio.name: ratio.label for ratio in ratios}
+    table = plain_table("When held, the error falls by", *(labels[budget.ratio] for budget in budgets))
+    sources = {row.source: row.label for budget in budgets for row in budget.rows if row.source != "statistical"}
+    for source, label in sources.items():
+        held = [{row.source: row.held for row in budget.rows}.get(source) for budget in budgets]
+        places = [digits_for(budget.total) + 1 for budget in budgets]
+        table.add_row(label, *(_part(part, place) for part, place in zip(held, places, strict=True)))
+    return table
+
+
 def budget_table(budgets: Sequence[Budget], ratios: Sequence[RatioResult]) -> Table:
     """Error of each ratio by source, with its share of the ratio."""
     labels = {ratio.name: ratio.label for ratio in ratios}

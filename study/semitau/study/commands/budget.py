@@ -18,8 +18,8 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     """Take the uncertainty of each ratio apart by source.
 
     Sources are the finite data, the finite templates, each group of nuisances and the constrained yields; their squares
-    add up to the square of the whole error. "held" is by how much the error falls, in quadrature, when the source alone
-    is held. Then each nuisance: its pull, its error over that of its auxiliary measurement, what it does to the ratios.
+    add up to the square of the whole error. Then by how much the error falls, in quadrature, when one source alone is
+    held, and each nuisance: its pull, its error over that of its auxiliary measurement, what it does to the ratios.
     """
     from semitau.fit.decomposition import budget
     from semitau.fit.nuisances import held_in_turn, nuisance_shifts
@@ -27,7 +27,7 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     from ..blinding import cover_of
     from ..fit_parts import budget_parts, nuisance_parts, ratio_parts
     from ..fitting import choose_data, described, fit_or_fail, open_model
-    from ..summary import budget_table, nuisance_table
+    from ..summary import budget_table, held_table, nuisance_table
 
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)
@@ -38,7 +38,15 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     nuisances = nuisance_parts(nuisance_shifts(model, observed, result))
     shown = result if hiding is None else hiding.result(model, result)
     ratios = ratio_parts(model, shown, split, hidden=hiding is not None)
-    call.terminal.show(described(source), "", budget_table(parts, ratios), "", nuisance_table(nuisances, ratios))
+    call.terminal.show(
+        described(source),
+        "",
+        budget_table(parts, ratios),
+        "",
+        held_table(parts, ratios),
+        "",
+        nuisance_table(nuisances, ratios),
+    )
     call.terminal.result(
         {
             "data": source.model_dump(mode="json"),
