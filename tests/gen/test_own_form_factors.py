@@ -10,6 +10,7 @@ import numpy as np
 import pytest
 from semitau import gen
 from semitau.core.errors import InputError
+from semitau.gen.decays import form_factor_set
 from semitau.gen.decays.form_factor_parameters import FIXED
 from semitau.gen.decays.form_factor_set import read_form_factors
 from semitau.gen.study_file.reader import read_study
@@ -18,6 +19,7 @@ from semitau.gen.truth.decay_record import decay_as_data, decay_from_data
 
 from .small_study import TEXT
 
+FOLDER = Path(form_factor_set.__file__).parent / "form_factor_sets"
 TOML = """\
 [D]
 parametrisation = "CLN"
@@ -230,6 +232,13 @@ def test_examples_of_the_document(tmp_path: Path) -> None:
     (table,) = re.findall(r"```csv\n(.*?)```", text, re.DOTALL)
     assert gen.read_form_factors(written(tmp_path, own)).transitions == ("D",)
     assert gen.read_form_factors(written(tmp_path, table, "my_set.csv"), "CLN", "D").transitions == ("D",)
+
+
+def test_quark_masses(tmp_path: Path) -> None:
+    """Masses of an expansion must be masses; a shift of several standard deviations still is one."""
+    shipped = (FOLDER / "HQE-2021.toml").read_text(encoding="utf-8")
+    said = problems(written(tmp_path, shipped.replace("m_b-m_c = 3.3984", "m_b-m_c = 4.9")))
+    assert "has quark masses out of range (got m_b = 4.7481, m_c = -0.1519 GeV, allowed m_b from 4 to 5.2" in said
 
 
 def test_events_know_their_set(tmp_path: Path) -> None:

@@ -27,7 +27,7 @@ from semitau.core.errors import InputError, Problem
 
 from ..study_file.toml_lines import TomlLines
 from ..truth.kinematics import Floats
-from .form_factor_parameters import SHARED, TRANSITIONS, parameter_problems, parametrisations
+from .form_factor_parameters import SHARED, TRANSITIONS, parameter_problems, parametrisations, value_problems
 
 MOST_BYTES = 1_000_000
 MOST_PARAMETERS = 60
@@ -232,6 +232,9 @@ def _checked(
             return None
     for problem in parameter_problems(parametrisation, _transitions(name)[0], names):
         here.add(problem, "values")
+    if values is not None and not here.problems:
+        for problem in value_problems(parametrisation, dict(zip(names, values.tolist(), strict=True))):
+            here.add(problem, "values")
     if len(names) > MOST_PARAMETERS:
         here.add(Problem("has too many parameters", got=str(len(names)), wanted=f"up to {MOST_PARAMETERS}"), "values")
     if covariance is not None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 
 from semitau.core.errors import Problem
 
@@ -79,6 +79,16 @@ def parameter_problems(parametrisation: str, transition: str, names: Sequence[st
         )
     if unknown:
         yield Problem(f"has parameters that {what} does not know", got=", ".join(unknown), wanted=wanted)
+
+
+def value_problems(parametrisation: str, values: Mapping[str, float]) -> Iterator[Problem]:
+    """Quark masses that no heavy-quark expansion can be made with."""
+    if parametrisation != "HQE":
+        return
+    bottom, charm = values["m_b"], values["m_b"] - values["m_b-m_c"]
+    if not (4.0 < bottom < 5.2 and 0.8 < charm < 2.2):
+        got = f"m_b = {bottom:g}, m_c = {charm:g} GeV"
+        yield Problem("has quark masses out of range", got=got, wanted="m_b from 4 to 5.2, m_c from 0.8 to 2.2 GeV")
 
 
 def _order(name: str, stem: str) -> int:
