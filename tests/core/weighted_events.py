@@ -32,8 +32,8 @@ class World:
 
     def weights(self, point: tuple[float, float]) -> np.ndarray:
         """Expected events of each event at a point."""
-        density = [np.abs(np.array([1.0, *at]) @ self.parts) ** 2 for at in (point, self.base)]
-        return self.scale * density[0] / density[1]
+        there, home = (np.abs(np.array([1.0, *at]) @ self.parts) ** 2 for at in (point, self.base))
+        return np.asarray(self.scale * there / home)
 
     def histogram(self, weights: np.ndarray) -> np.ndarray:
         return np.asarray(np.histogram(self.x, EDGES, weights=weights)[0])

@@ -11,7 +11,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import ArrayLike
 from semitau.core.errors import InputError, Problem
-from semitau.core.templates import Floats, Nuisance, Template, TemplateSet
+from semitau.core.templates import Floats, Nuisance, TemplateSet
 
 SIDES = ("plus", "minus")
 
@@ -57,7 +57,7 @@ def split_shape_and_rate(templates: TemplateSet, names: Iterable[str]) -> Templa
                 whole, rate = sides[side].pop(name), rates[component, side, name]
                 sides[side][f"{name}_shape"] = whole / rate
                 sides[side][f"{name}_rate"] = template.nominal * rate
-        changed[category, component] = Template(template.nominal, template.variance, sides["plus"], sides["minus"])
+        changed[category, component] = replace(template, plus=sides["plus"], minus=sides["minus"])
     return replace(templates, nuisances=tuple(nuisances), templates=changed)
 
 
@@ -86,7 +86,7 @@ def mirrored(templates: TemplateSet, keep: Mapping[str, str]) -> TemplateSet:
             if name in template.plus:
                 other = "minus" if side == "plus" else "plus"
                 sides[other][name] = mirror(template.nominal, sides[side][name])
-        changed[place] = Template(template.nominal, template.variance, sides["plus"], sides["minus"])
+        changed[place] = replace(template, plus=sides["plus"], minus=sides["minus"])
     return replace(templates, templates=changed)
 
 

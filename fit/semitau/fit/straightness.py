@@ -83,6 +83,15 @@ def linearity(
         raise InputError(
             Problem("linearity needs different injected values", "factors", str(list(factors)), "two or more above 0")
         )
+    if model.coefficients:
+        raise InputError(
+            Problem(
+                "ratios that follow coefficients have no multiples",
+                "linearity",
+                got=", ".join(model.coefficients),
+                remedy="Hold the coefficients at a point instead.",
+            )
+        )
     free = [name for name in model.ratios if model.parameters[model.index(name)].fixed is None]
     if not free:
         raise InputError(Problem("no ratio is free: there is no linearity to test", "linearity"))

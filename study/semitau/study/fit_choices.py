@@ -20,6 +20,8 @@ if TYPE_CHECKING:
 class FitChoices:
     """Options as they were given, e.g. fix = ("R_D=0.3",)."""
 
+    at: tuple[str, ...] = ()
+    free: tuple[str, ...] = ()
     fix: tuple[str, ...] = ()
     exact_templates: bool = False
     likelihood: str = "light"
@@ -31,22 +33,35 @@ class FitChoices:
 
     def model(self, templates: TemplateSet) -> Model:
         """The model. Raises InputError for options that make no sense, or name no parameter."""
+        from semitau.core.quadratic import templates_at
         from semitau.fit.model import Model
         from semitau.fit.shape_and_rate import mirrored, split_shape_and_rate
 
+        point = dict(_value(text, "--at", "NAME=NUMBER, e.g. SR=0.3") for text in self.at)
+        templates = templates_at(templates, point) if point else templates
         kept = dict(_pair(text, "--mirror", "NAME=plus or NAME=minus") for text in self.mirror)
         return Model(
             split_shape_and_rate(mirrored(templates, kept), self.apart),
             template_statistics=not self.exact_templates,
             likelihood=self.likelihood,
-            fixed=dict(_holding(text) for text in self.fix),
+            fixed=dict(_value(text, "--fix", "NAME=NUMBER, e.g. R_D=0.3") for text in self.fix),
             constraints=dict(_constraint(text) for text in self.constrain),
             bounds=dict(_range(text) for text in self.bound),
             functions=dict(_pair(text, "--follow", "NAME=FORMULA, e.g. R_Dst_B0=R_Dst_Bp") for text in self.follow),
+            coefficients=self.free,
         )
 
 
 _OPTIONS = (
+    click.option(
+        "--at",
+        multiple=True,
+        metavar="NAME=VALUE",
+        help="Templates and injected ratios of another point of the coefficients, e.g. SR=0.3; may be repeated.",
+    ),
+    click.option(
+        "--free", multiple=True, metavar="NAME", help="Fit a coefficient, which ratios then follow; may be repeated."
+    ),
     click.option("--fix", multiple=True, metavar="NAME=VALUE", help="Hold a parameter; may be repeated."),
     click.option(
         "--constrain",
@@ -101,14 +116,13 @@ def _numbers(parts: Sequence[str], text: str, option: str, wanted: str) -> list[
         raise InputError(Problem("not a number", where=option, got=repr(text), wanted=wanted)) from None
 
 
-def _holding(text: str) -> tuple[str, float]:
-    wanted = "NAME=NUMBER, e.g. R_D=0.3"
-    name, value = _pair(text, "--fix", wanted)
+def _value(text: str, option: str, wanted: str) -> tuple[str, float]:
+    name, value = _pair(text, option, wanted)
     try:
         return name, float(value)
     except ValueError:
         raise InputError(
-            Problem("not a parameter and its value", where="--fix", got=repr(text), wanted=wanted)
+            Problem("not a parameter and its value", where=option, got=repr(text), wanted=wanted)
         ) from None
 
 

@@ -25,6 +25,7 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     from semitau.fit.nuisances import held_in_turn, nuisance_shifts
 
     from ..blinding import cover_of
+    from ..coefficient_fits import refuse_hidden
     from ..fit_parts import budget_parts, nuisance_parts, ratio_parts
     from ..fitting import choose_data, described, fit_or_fail, open_model
     from ..summary import budget_table, held_table, nuisance_table
@@ -32,6 +33,7 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)
     hiding = cover_of(model.templates, source.kind)
+    refuse_hidden(model, hiding)
     result = fit_or_fail(model, observed)
     split = budget(model, result)
     parts = budget_parts(split, {name: held_in_turn(model, result, name) for name in split})

@@ -23,6 +23,7 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     from semitau.fit.decomposition import budget
 
     from ..blinding import cover_of
+    from ..coefficient_fits import fit_coefficients, refuse_hidden
     from ..fit_parts import fit_part, ratio_parts
     from ..fitting import choose_data, described, fit_or_fail, open_model
     from ..summary import goodness_line, hidden_line, parameter_table, ratio_table
@@ -30,7 +31,8 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)
     hiding = cover_of(model.templates, source.kind)
-    result = fit_or_fail(model, observed)
+    refuse_hidden(model, hiding)
+    result, notes = fit_coefficients(model, observed) if model.coefficients else (fit_or_fail(model, observed), ())
     shown = result if hiding is None else hiding.result(model, result)
     ratios = ratio_parts(model, shown, budget(model, result), hidden=hiding is not None)
     fit = fit_part(model, shown)
@@ -38,11 +40,13 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     if hiding is not None:
         call.terminal.show(hidden_line(hiding.part))
     call.terminal.show(goodness_line(fit), parameter_table(fit))
+    call.terminal.show(*(f"Look at this: {note}" for note in notes))
     call.terminal.result(
         {
             "data": source.model_dump(mode="json"),
             "blinding": None if hiding is None else hiding.part.model_dump(mode="json"),
             "ratios": [ratio.model_dump(mode="json") for ratio in ratios],
             "fit": fit.model_dump(mode="json"),
+            "warnings": list(notes),
         }
     )

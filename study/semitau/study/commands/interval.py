@@ -35,6 +35,7 @@ def command(
     the information; use it when it differs from the others.
     """
     from ..blinding import cover_of
+    from ..coefficient_fits import refuse_hidden
     from ..fitting import choose_data, described, fit_or_fail, open_model
     from ..interval_parts import found_intervals, interval_table
 
@@ -42,6 +43,7 @@ def command(
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)
     hiding = cover_of(model.templates, source.kind)
+    refuse_hidden(model, hiding)
     best = fit_or_fail(model, observed)
     if hiding is not None:
         hiding.result(model, best)  # refuses what must not be shown

@@ -34,12 +34,14 @@ def command(
     from semitau.fit.curves import profile, region
 
     from ..blinding import cover_of
+    from ..coefficient_fits import refuse_hidden
     from ..fitting import choose_data, described, fit_or_fail, open_model
     from ..likelihood_parts import curve_document, curve_table, drawn_curves, region_document
 
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)
     hiding = cover_of(model.templates, source.kind)
+    refuse_hidden(model, hiding)
     best = fit_or_fail(model, observed)
     shown = best if hiding is None else hiding.result(model, best)
     free = [name for name in model.ratios if best.error(name) > 0]
