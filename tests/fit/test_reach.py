@@ -8,12 +8,13 @@ from scipy import stats
 from semitau.core.errors import InputError
 from semitau.core.templates import Category, Component, Nuisance, Observable, ScaleParameter, Template, TemplateSet
 from semitau.fit.curves import Conditional
+from semitau.fit.data import Data
 from semitau.fit.enlarged import enlarged
 from semitau.fit.model import Model
 from semitau.fit.newton import maximise
 from semitau.fit.prospects import Deviation, reach
 
-from .problems import one_bin, small
+from .problems import SEED, one_bin, small
 
 S, B = 40.0, 100.0
 TRUE = 0.3
@@ -156,6 +157,31 @@ def test_chance_to_see_it(level: float) -> None:
     exact = stats.poisson.pmf(counts, s + b)[q > level**2].sum()
     assert Deviation(median**2, 1, median).chance(level) == pytest.approx(exact, abs=0.02)
     assert Deviation(0.0, 2, 0.0).chance(level) == pytest.approx(2 * stats.norm.sf(level), rel=1e-3)
+
+
+def test_chance_against_toys() -> None:
+    """How often toys with all nuisances exceed 2 and 3 sigma. Chance of failing: 1.3e-4 (4 binomial errors, twice)."""
+    true, compared, number = {"R_D": 0.50, "R_Dst": 0.254}, 0.299, 400
+    model = Model(enlarged(small(), 2.0), template_statistics=False)
+    exact = reach(
+        small(), [2.0, 3.0], true=true, against={"R_D": (compared, 0.0)},
+        make=lambda templates: Model(templates, template_statistics=False),
+    ).amounts[0].deviations["R_D"]  # fmt: skip
+    rng = np.random.default_rng(SEED)
+    values = model.values(true)
+    widths = np.array([parameter.constraint or 0.0 for parameter in model.parameters])
+    counts = model.expected_counts(values)
+    growth = []
+    for _ in range(number):
+        toy = Data(rng.poisson(counts), values + widths * rng.normal(size=len(widths)), np.ones(model.bins))
+        fitted = maximise(model, toy, values)
+        assert fitted.valid
+        growth.append(Conditional(model, toy, ["R_D"], fitted).height(compared))
+    for level in (2.0, 3.0):
+        chance = exact.chance(level)
+        seen = (np.array(growth) > level**2).mean()
+        # the asymptotic law itself is good to a few per cent at some hundred events
+        assert seen == pytest.approx(chance, abs=4 * np.sqrt(chance * (1 - chance) / number) + 0.03)
 
 
 def test_enlarged_templates() -> None:
