@@ -38,7 +38,7 @@ SHORTEST = 12
 WIDE = 5.0
 """Errors that the largest offset must reach, so that the hidden value says nothing about the true one."""
 
-WITHHELD = 0.02
+WITHHELD = 0.01
 """Expected share of signal in a bin above which its counts are not shown: they would tell the ratio."""
 
 
