@@ -11,7 +11,7 @@ import pytest
 PUBLIC = {
     "gen": {
         "Decay", "WilsonCoefficients", "differential_rate", "form_factor_sets", "form_factors", "observables", "ratio",
-        "read_form_factors", "simulate", "weights",
+        "read_form_factors", "simulate", "weights", "DoubleCharmChain", "double_charm_chains", "simulate_double_charm",
     },
     "fit": {"Model", "maximise", "profile", "read_templates", "run_toys"},
 }  # fmt: skip
