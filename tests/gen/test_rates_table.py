@@ -28,6 +28,9 @@ def test_every_mode_once() -> None:
         assert ratio.parent == "mean"
         pair = [one.value for one in single if one.charm[:-1] == ratio.charm]
         assert ratio.value == pytest.approx(sum(pair) / 2, rel=1e-14)
+        # Both parents have the same form factors, so the errors add up linearly.
+        errors = [one.error for one in single if one.charm[:-1] == ratio.charm]
+        assert ratio.error == pytest.approx(sum(errors) / 2, rel=1e-3)
     for spectrum in table.spectra:
         inside = spectrum.rate[1:-1]
         np.testing.assert_array_equal(inside, gen.differential_rate(spectrum.decay, spectrum.q2[1:-1]))
