@@ -118,7 +118,7 @@ def _ratio_table(rates: RatesTable) -> Table:
         families.setdefault(family, []).append(_shown(ratio.value, ratio.error))
     table = plain_table("Ratio of τ to the mean of e and μ", *parents)
     for family, cells in families.items():
-        table.add_row(f"R({family})", *cells)
+        table.add_row(f"R{family}" if family.startswith("(") else f"R({family})", *cells)
     return table
 
 
