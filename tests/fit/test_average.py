@@ -94,7 +94,12 @@ def test_standard_deviations_far_out() -> None:
     z = standard_deviations(4000.0, 2)
     tail = np.log(2.0) - z**2 / 2 - np.log(z * np.sqrt(2 * np.pi)) + np.log1p(-1 / z**2)
     assert tail == pytest.approx(-2000.0, abs=1e-5)
-    assert standard_deviations(0.0, 2) == 0.0
+    assert standard_deviations(0.0, 2) == standard_deviations(1e-300, 2) == 0.0
+    # three degrees of freedom: p = erfc(sqrt(x/2)) + sqrt(2x/pi) exp(-x/2), Abramowitz and Stegun 26.4.4 (from memory)
+    x = 3000.0
+    z = standard_deviations(x, 3)
+    tail = np.log(2.0) - z**2 / 2 - np.log(z * np.sqrt(2 * np.pi)) + np.log1p(-1 / z**2)
+    assert tail == pytest.approx(-x / 2 + np.log(np.sqrt(2 * x / np.pi)), abs=1e-3)
 
 
 # ── Closed forms ────────────────────────────────────────────────────────────────────────────────────────────────────

@@ -6,7 +6,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass
 
 import numpy as np
-from scipy import optimize, stats
+from scipy import optimize, special, stats
 from semitau.core.errors import InputError, Problem
 
 from .combination import Average, chi2_at, lowest_point
@@ -97,9 +97,11 @@ def standard_deviations(chi2: float, degrees_of_freedom: int) -> float:
     """The Gaussian deviation z, two-sided, with the p-value of a chi^2; also where the p-value underflows."""
     if degrees_of_freedom == 1:
         return float(np.sqrt(chi2))
-    # 2 degrees of freedom: p = exp(-chi2/2); no more than two ratios are ever compared
     log_p = -0.5 * chi2 if degrees_of_freedom == 2 else float(stats.chi2.logsf(chi2, degrees_of_freedom))
-    if log_p == 0.0:
+    if log_p == -np.inf:  # first term of the tail of the incomplete gamma function
+        half = 0.5 * degrees_of_freedom
+        log_p = (half - 1.0) * np.log(0.5 * chi2) - 0.5 * chi2 - special.gammaln(half)
+    if log_p > -1e-15:
         return 0.0
     most = np.sqrt(-2.0 * log_p) + 1.0
     return float(optimize.brentq(lambda z: np.log(2.0) + stats.norm.logsf(z) - log_p, 0.0, most, xtol=1e-12))
