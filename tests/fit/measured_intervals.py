@@ -6,7 +6,7 @@ from collections.abc import Callable
 
 import numpy as np
 from semitau.core.templates import TemplateSet
-from semitau.fit import Model, correct_for_templates, interval_coverage, maximise, profile
+from semitau.fit import Model, correct_for_templates, interval_coverage, maximise, profile, region_coverage
 from semitau.fit.covering import Held, held
 
 from . import problems
@@ -50,6 +50,18 @@ def fixed_templates() -> None:
         )
 
 
+def regions() -> None:
+    print("| model | 39.3 | 68.3 | 95.4 | 99.7 |")
+    print("| --- | --- | --- | --- | --- |")
+    for label, (make, _) in MODELS.items():
+        model = Model(make())
+        names = ("R_D", "R_Dst") if "R_Dst" in model.names else ("yield_a", "yield_b")
+        if len(model.names) > 1:
+            number = OUTER if model.bins < 100 else 1000
+            found = region_coverage(model, names, number, 3)
+            print(f"| {label} | " + " | ".join(map(cell, found.values())) + " |", flush=True)
+
+
 def poor_templates() -> None:
     print(
         "| model | bias | pull width | curvature 68.3 | likelihood curve 68.3 "
@@ -79,6 +91,8 @@ def poor_templates() -> None:
 
 
 if __name__ == "__main__":
+    regions()
+    print()
     poor_templates()
     print()
     fixed_templates()

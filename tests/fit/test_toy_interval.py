@@ -9,7 +9,7 @@ import pytest
 from scipy.optimize import brentq
 from scipy.stats import chi2, poisson
 from semitau.core.errors import InputError
-from semitau.fit import Model, interval_coverage, maximise, profile, toy_interval
+from semitau.fit import Model, interval_coverage, maximise, profile, region_coverage, toy_interval
 
 from . import problems
 
@@ -76,6 +76,14 @@ def test_toy_intervals_cover() -> None:
     found = interval_coverage(Model(problems.one_bin(4.0, 5.0)), "R_D", 300, problems.SEED, inner=400)
     for held, level in zip(found.toys, (0.6827, 0.9545), strict=True):
         assert held.fraction > level - 4 * np.sqrt(level * (1 - level) / 300)
+
+
+def test_regions_cover_in_the_gaussian_limit() -> None:
+    """χ² of two degrees of freedom: 39.3, 68.3, 95.4, 99.7%; 2000 toys, 4 σ each."""
+    found = region_coverage(Model(problems.linear(1e5)), ("yield_a", "yield_c"), 2000, problems.SEED)
+    for held, level in zip(found.values(), (0.393469, 0.682689, 0.9545, 0.9973), strict=True):
+        assert held.confidence == pytest.approx(level, abs=1e-4)
+        assert held.fraction == pytest.approx(level, abs=4 * np.sqrt(level * (1 - level) / 2000))
 
 
 def test_crossings_to_a_thousandth_of_the_error() -> None:

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
     from .constraints import Uniform as Uniform
     from .covering import IntervalCoverage as IntervalCoverage
     from .covering import interval_coverage as interval_coverage
+    from .covering import region_coverage as region_coverage
     from .curves import Profile as Profile
     from .curves import Region as Region
     from .curves import profile as profile
@@ -94,6 +95,7 @@ _HOME = {
     "reach": ".prospects",
     "read_templates": "semitau.core.template_file",
     "region": ".curves",
+    "region_coverage": ".covering",
     "run_toys": ".toys",
     "split_shape_and_rate": ".shape_and_rate",
     "tension": ".compatibility",
@@ -140,6 +142,7 @@ __all__ = [
     "reach",
     "read_templates",
     "region",
+    "region_coverage",
     "run_toys",
     "split_shape_and_rate",
     "tension",

@@ -10,7 +10,9 @@ from numpy.typing import ArrayLike, NDArray
 from scipy.stats import chi2
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import stream_key
+from semitau.core.templates import Floats
 
+from .curves import REGION_LEVELS
 from .model import Model
 from .pulls import LEVELS, binomial_interval
 from .ratio_toys import ratio_toys, shares_above
@@ -68,10 +70,7 @@ def interval_coverage(
         raise InputError(Problem("a fixed parameter has no interval", where=f"parameter {name}"))
     if n < 1:
         raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
-    truth = model.values(injected)
-    truth[[i for i in range(truth.size) if i not in model.free]] = model.start[
-        [i for i in range(truth.size) if i not in model.free]
-    ]
+    truth = _truth(model, injected)
     outer = ratio_toys(model, index, truth, n, stream_key(seed, "coverage", name), workers, keep=inner > 0)
     valid = np.isfinite(outer.heights) & np.isfinite(outer.errors)
     pulls = np.abs(outer.values[valid] - truth[index]) / outer.errors[valid]
@@ -90,6 +89,38 @@ def interval_coverage(
     return IntervalCoverage(
         name, (curvature[0], curvature[1]), (profile[0], profile[1]), tuple(from_toys), int(n - valid.sum())
     )
+
+
+def region_coverage(
+    model: Model,
+    names: tuple[str, str],
+    n: int,
+    seed: int,
+    *,
+    injected: Mapping[str, float] | ArrayLike | None = None,
+    workers: int | None = None,
+) -> dict[str, Held]:
+    """How often the regions of two parameters (`region`) hold the truth: confidence in words -> coverage.
+
+    Raises InputError for an unknown or fixed parameter, or no toys.
+    """
+    places = [model.index(name) for name in names]
+    for name, place in zip(names, places, strict=True):
+        if place not in model.free:
+            raise InputError(Problem("a fixed parameter has no region", where=f"parameter {name}"))
+    if n < 1:
+        raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
+    stream = stream_key(seed, "coverage of regions", *names)
+    toys = ratio_toys(model, places[0], _truth(model, injected), n, stream, workers, also=(places[1],))
+    heights = toys.heights[np.isfinite(toys.heights)]
+    return {words: _held(float(chi2.cdf(level, 2)), heights < level) for words, level in REGION_LEVELS.items()}
+
+
+def _truth(model: Model, injected: Mapping[str, float] | ArrayLike | None) -> Floats:
+    truth = model.values(injected)
+    held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
+    truth[held] = model.start[held]
+    return truth
 
 
 def held(confidence: float, inside: int, number: int) -> Held:

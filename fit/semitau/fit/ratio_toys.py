@@ -51,14 +51,16 @@ def ratio_toys(
     report: Progress | None = None,
     *,
     keep: bool = False,
+    also: tuple[int, ...] = (),
 ) -> RatioToys:
     """Draw n toys at truth (parameters,); toy i depends on (stream, i) alone.
 
     index : of the parameter, which must be free. keep : also give the conditional fits.
+    also : further parameters that are held at their truth, too.
     """
     means = np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
     start = truth.copy()
-    held = np.array([i for i in model.free if i != index], dtype=np.int64)
+    held = np.array([i for i in model.free if i != index and i not in also], dtype=np.int64)
     tasks = [
         partial(_batch, model, index, held, stream, first, min(BATCH, n - first), truth, start, means, keep)
         for first in range(0, n, BATCH)
