@@ -184,6 +184,16 @@ def test_chance_against_toys() -> None:
         assert seen == pytest.approx(chance, abs=4 * np.sqrt(chance * (1 - chance) / number) + 0.03)
 
 
+def test_a_ratio_that_follows_another_has_no_true_value_of_its_own() -> None:
+    def make(templates: TemplateSet) -> Model:
+        return Model(templates, functions={"R_Dst": "0.85 * R_D"})
+
+    with pytest.raises(InputError, match="is no fitted ratio"):
+        reach(small(), [1.0, 2.0], true={"R_Dst": 0.3}, make=make)
+    found = reach(small(), [1.0, 2.0], make=make).amounts[0].budgets
+    assert found["R_Dst"].total == pytest.approx(0.85 * found["R_D"].total)
+
+
 def test_enlarged_templates() -> None:
     larger = enlarged(small(), 4.0)
     model, other = Model(small()), Model(larger)

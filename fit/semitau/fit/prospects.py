@@ -52,7 +52,7 @@ class Deviation:
 
 @dataclass(frozen=True)
 class Amount:
-    """What `factor` times the data bring: ratio -> Budget; ratio (and "together", for two) -> Deviation."""
+    """What `factor` times the data bring: ratio -> Budget; ratio (and "together", for several) -> Deviation."""
 
     factor: float
     budgets: Mapping[str, Budget]
@@ -101,7 +101,8 @@ def reach(
         raise InputError(Problem("needs at least two amounts of data", "reach", str(len(sizes))))
     true, against = dict(true or {}), dict(against or {})
     model = make(templates)
-    fitted = [name for name in model.ratios if model.parameters[model.index(name)].fixed is None]
+    own = (model.parameters[model.index(name)] for name in model.ratios)
+    fitted = [ratio.name for ratio in own if ratio.fixed is None and ratio.function is None]
     unknown = sorted({*true, *against} - set(fitted))
     if unknown:
         raise InputError(Problem("is no fitted ratio", "reach", ", ".join(unknown), ", ".join(fitted)))
