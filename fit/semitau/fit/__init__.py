@@ -9,8 +9,10 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 if TYPE_CHECKING:
+    from semitau.core.quadratic import templates_at as templates_at
     from semitau.core.template_file import read_templates as read_templates
 
+    from .coefficients import deepest as deepest
     from .combination import Average as Average
     from .combination import average as average
     from .compatibility import Prediction as Prediction
@@ -82,6 +84,7 @@ _HOME = {
     "average": ".combination",
     "budget": ".decomposition",
     "correct_for_templates": ".poor_templates",
+    "deepest": ".coefficients",
     "held_in_turn": ".nuisances",
     "interpolate": ".interpolation",
     "interval_coverage": ".covering",
@@ -98,6 +101,7 @@ _HOME = {
     "region_coverage": ".covering",
     "run_toys": ".toys",
     "split_shape_and_rate": ".shape_and_rate",
+    "templates_at": "semitau.core.quadratic",
     "tension": ".compatibility",
     "toy_interval": ".neyman",
 }
@@ -129,6 +133,7 @@ __all__ = [
     "average",
     "budget",
     "correct_for_templates",
+    "deepest",
     "held_in_turn",
     "interpolate",
     "interval_coverage",
@@ -145,6 +150,7 @@ __all__ = [
     "region_coverage",
     "run_toys",
     "split_shape_and_rate",
+    "templates_at",
     "tension",
     "toy_interval",
 ]
