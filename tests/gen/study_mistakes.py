@@ -41,7 +41,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         "[seletion]\nel = { min = 1 }\n[selection]",
         (
             "seletion: unknown key (allowed study, experiment, form_factors, wilson, quadratic, mode, double_charm, "
-            'background, detector, selection, category, variation, fit, toys). Did you mean "selection"?'
+            'background, detector, selection, category, variation, fit, toys, import, blinding). Did you mean "selection"?'
         ),
     ),
     "missing key": (
@@ -574,7 +574,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         'kind = "formfactor"',
         (
             'variation[R0].kind: is no kind (got "formfactor", allowed form_factor, form_factor_direction, '
-            "form_factor_directions, fraction, double_charm_share, "
+            "form_factor_directions, fraction, double_charm_share, production_ratio, "
             "soft_pion_efficiency, lepton_identification, misidentification, tag_resolution, momentum_scale). "
             'Did you mean "form_factor"?'
         ),
@@ -628,7 +628,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         "[selection]",
         '[fit]\ndata = "expcted"\n[selection]',
         (
-            'fit.data: is no data (got "expcted", allowed "expected", "pseudo" or { file = "data.root" }). '
+            'fit.data: is no data (got "expcted", allowed "expected", "pseudo", "import" or { file = "data.root" }). '
             'Did you mean "expected"?'
         ),
         1,
