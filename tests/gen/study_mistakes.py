@@ -41,7 +41,8 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         "[seletion]\nel = { min = 1 }\n[selection]",
         (
             "seletion: unknown key (allowed study, experiment, form_factors, wilson, quadratic, mode, double_charm, "
-            'background, detector, selection, category, variation, fit, toys, import, blinding). Did you mean "selection"?'
+            "background, detector, selection, category, variation, fit, toys, import, blinding). "
+            'Did you mean "selection"?'
         ),
     ),
     "missing key": (
