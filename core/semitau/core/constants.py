@@ -18,6 +18,9 @@ HBAR = 6.582119569e-13
 SPEED_OF_LIGHT = 0.299792458
 """mm/ps."""
 
+FINE_STRUCTURE = 1.0 / 137.035999177
+"""At zero momentum."""
+
 FERMI_COUPLING = 1.1663788e-5
 """GeV^-2, from the muon lifetime."""
 

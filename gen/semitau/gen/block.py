@@ -96,8 +96,16 @@ SCENARIO_END = MEASURED_END + 8
 ) = (LANES * row for row in range(SCENARIO_END, SCENARIO_END + 14))  # fmt: skip
 DOUBLE_CHARM_END = SCENARIO_END + 14
 
+# --- photons of the lepton -----------------------------------------------------------------------------------------
+# PHOTONS: how many there are, in channels that radiate. PHOTON_PX and what follows: px, py, pz, E of each in the rest
+# frame of the B, later in the laboratory.
+MOST_PHOTONS = 6
+PHOTONS = LANES * DOUBLE_CHARM_END
+PHOTON_PX = PHOTONS + LANES
+RADIATION_END = DOUBLE_CHARM_END + 1 + 4 * MOST_PHOTONS
+
 # --- all -----------------------------------------------------------------------------------------------------------
-ROWS = DOUBLE_CHARM_END
+ROWS = RADIATION_END
 
 
 def new_block() -> npt.NDArray[np.float64]:

@@ -62,4 +62,8 @@ HADRON_SIGN = np.uint64(45)
 HADRON_TURN = np.uint64(46)
 
 DALITZ_FIRST = 192  # three draws for each try; a tau that gives pions has no neutrinos to be drawn
+PHOTON_NUMBER = np.uint64(2048)
+PHOTON_FIRST = np.uint64(2049)  # four draws each: energy, angle, acceptance, azimuth
+ONE, TWO, THREE = np.uint64(1), np.uint64(2), np.uint64(3)
+
 NEUTRINO_FIRST = 192  # three draws for each try

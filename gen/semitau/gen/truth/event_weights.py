@@ -68,7 +68,7 @@ def weights(events: ak.Array, decay: Decay, *, drawn_from: Decay | None = None) 
     angles = decay_angles(
         _momentum(events, "B"),
         _momentum(events, charm_field),
-        tau if tau is not None else _momentum(events, "lepton"),
+        tau if tau is not None else _with_photons(events),
         _momentum(events, "D") if has_vector else None,
         visible,
     )
@@ -89,10 +89,18 @@ def _momentum(events: ak.Array, name: str) -> Floats:
     return np.stack([ak.to_numpy(events[name][part], allow_missing=False) for part in ("px", "py", "pz", "E")])
 
 
+def _with_photons(events: ak.Array) -> Floats:
+    """(4, n): the charged lepton before it radiated, which the angles of the decay belong to."""
+    lepton = _momentum(events, "lepton")
+    if "photons" not in events.fields:
+        return lepton
+    return lepton + np.stack([ak.to_numpy(ak.sum(events.photons[part], axis=1)) for part in ("px", "py", "pz", "E")])
+
+
 def _visible(events: ak.Array) -> Floats:
     """What analyses the spin of the tau: the lepton, or the polarimeter of its pions."""
     found = next((names for names in PARTNERS.values() if set(names) <= set(events.fields)), ())
-    pions = [_momentum(events, name) for name in ("lepton", *found)]
+    pions = [_with_photons(events), *(_momentum(events, name) for name in found)]
     if found == PARTNERS["a1_1prong"]:
         pions = [*pions[1:], pions[0]]
     return polarimeter(_momentum(events, "tau"), tuple(pions))

@@ -11,15 +11,17 @@ from semitau.core.errors import InputError, Problem
 from semitau.core.streams import stream_key, uniforms
 
 from .. import block as row
-from ..block import LANES, new_block
+from ..block import LANES, MOST_PHOTONS, new_block
 from ..decays.chains import Channel, chains_of
 from ..decays.decay import Decay
 from . import draw_numbers as draw
 from . import neutrinos as nu
 from .channel_table import ChannelTable, channel_table
+from .decay_angles import to_rest_frame
 from .decay_record import PARAMETER, decay_as_data
 from .drawing import draw_decays
 from .polarimeter import PARTNERS
+from .radiation import LEAST_PHOTON, MOST_PHOTON, Radiation, radiate, radiation_of
 
 Floats = npt.NDArray[np.float64]
 Words = npt.NDArray[np.int64]
@@ -43,8 +45,9 @@ _ROWS = {
 
 
 def simulate(
-    decay: Decay, n: int, seed: int, tau_to: str = "mu", charm_to: str | None = None, frame: str = "B"
-) -> ak.Array:
+    decay: Decay, n: int, seed: int, tau_to: str = "mu", charm_to: str | None = None, frame: str = "B",
+    photons_above: float | None = None,
+) -> ak.Array:  # fmt: skip
     """Unweighted events of a decay with every spin correlation.
 
     decay : what to draw. n : number of events. seed : 0 to 2^64 - 1; event k depends on the seed, the decay, the chain
@@ -56,12 +59,16 @@ def simulate(
         None draws by branching fraction.
     frame : "B" for the B at rest, "Upsilon" for the rest frame of an Upsilon(4S) that decays to a pair of B mesons.
 
+    photons_above : lowest energy in GeV (rest frame of the W* or tau) of photons that the charged lepton radiates, or
+        the pion of tau -> pi nu; None: no photons. Events are the same ones with and without.
+
     Returns an awkward array of n records. Each field is a record named Momentum4D with px, py, pz, E in GeV:
     B; Dss and pion (D** and continua only: all their particles, and the pion or eta beside the D or D*); second_pion
     (None where there is none); Dst and soft (the D* and its pion or photon); D; tau;
     lepton (charged lepton, or the pion of a tau that has its charge); pi0 (rho), pi_second and pi_odd (a1, the pions of
     the same and of the other charge), pi0_first and pi0_second (a1_1prong); nu (of the B decay); nu_tau and nu_lepton
     (of the tau decay).
+    photons, if asked for, is a list of records for each event; `lepton` is what is left after they were radiated.
     Fields that a decay does not have are left out; in a sample that mixes D** -> D* pi and D pi, Dst and soft are None
     where there is no D*. The records carry the decay (see `weights`).
 
@@ -72,25 +79,56 @@ def simulate(
     InputError tells what is wrong with the arguments.
     Source: shared amplitudes (`amplitudes.py`), exact conditional sampling (`truth.py`).
     """
-    chains = _chosen_chains(decay, n, tau_to, charm_to, frame)
+    chains = _chosen_chains(decay, n, tau_to, charm_to, frame, photons_above)
     stream = stream_key(seed, "simulate")
     shares = np.cumsum([chain.branching_fraction for chain in chains])
     picks = np.searchsorted(shares / shares[-1], uniforms(stream, 0, n, int(draw.CHAIN)), side="right")
-    found = np.zeros((len(_ROWS), 4, n))
+    found = np.zeros((len(_ROWS) + MOST_PHOTONS, 4, n))
+    counts = np.zeros(n, dtype=np.int64)
     for number, chain in enumerate(chains):
-        _collect(channel_table(chain), stream, picks, number, _FIRST_ROWS, new_block(), found)
+        radiation = radiation_of(chain, photons_above)
+        _collect(channel_table(chain), radiation, stream, picks, number, _FIRST_ROWS, new_block(), found, counts)
     boson = np.zeros((4, n))
     boson[3] = decay.m_parent
     if frame == "Upsilon":
         boson = _flight(decay.m_parent, stream, n)
         _boost(found, boson)
-    return _records(decay, chains, picks, boson, dict(zip(_ROWS, found, strict=True)))
+    particles = dict(zip(_ROWS, found, strict=False))
+    photons = found[len(_ROWS) :].transpose(2, 0, 1)[np.arange(MOST_PHOTONS) < counts[:, None]]  # (all photons, 4)
+    if photons_above is not None:
+        _recoil(particles, np.sum(found[len(_ROWS) :], axis=0), boson, decay.lepton == "tau")
+    events = _records(decay, chains, picks, boson, particles)
+    if photons_above is None:
+        return events
+    jagged = ak.unflatten(_momentum(photons.T), counts)
+    return ak.with_parameter(ak.with_field(events, jagged, "photons"), PARAMETER, decay_as_data(decay))
 
 
-_FIRST_ROWS = np.array(list(_ROWS.values()))
+_FIRST_ROWS = np.array([*_ROWS.values(), *(row.PHOTON_PX + 4 * LANES * k for k in range(MOST_PHOTONS))], dtype=np.int64)
 
 
-def _chosen_chains(decay: Decay, n: int, tau_to: str, charm_to: str | None, frame: str) -> list[Channel]:
+def _recoil(found: dict[str, Floats], photons: Floats, boson: Floats, has_tau: bool) -> None:
+    """What recoils against lepton and photons, in place: one neutrino by what is left, a pair by a boost of its sum."""
+    if not has_tau:
+        charm = found["D"] + found["soft"] + found["pion"] + found["second_pion"]
+        found["nu"][:] = boson - charm - found["lepton"] - photons
+        return
+    hadrons = found["lepton"] + found["partner_1"] + found["partner_2"]
+    after = found["tau"] - hadrons - photons
+    if not np.any(found["nu_lepton"]):
+        found["nu_tau"][:] = after
+        return
+    before = found["nu_tau"] + found["nu_lepton"]
+    moved = np.any(photons != 0.0, axis=0)
+    back = np.concatenate([-after[:3], after[3:]])
+    for name in ("nu_tau", "nu_lepton"):
+        boosted = to_rest_frame(to_rest_frame(found[name][:, moved], before[:, moved]), back[:, moved])
+        found[name][:, moved] = boosted
+
+
+def _chosen_chains(
+    decay: Decay, n: int, tau_to: str, charm_to: str | None, frame: str, photons_above: float | None
+) -> list[Channel]:
     """The chains to draw from; InputError lists all that is wrong."""
     if not isinstance(decay, Decay):
         raise InputError(
@@ -113,6 +151,11 @@ def _chosen_chains(decay: Decay, n: int, tau_to: str, charm_to: str | None, fram
         )
     if frame not in FRAMES:
         problems.append(Problem("no such frame", where="frame", got=repr(frame), wanted=", ".join(map(repr, FRAMES))))
+    if photons_above is not None and not (
+        isinstance(photons_above, float | int) and LEAST_PHOTON <= photons_above <= MOST_PHOTON
+    ):
+        wanted = f"{LEAST_PHOTON:g} to {MOST_PHOTON:g} GeV, or None"
+        problems.append(Problem("no such energy", where="photons_above", got=repr(photons_above), wanted=wanted))
     chains = list(chains_of(decay, taus[:1]))
     names = list(dict.fromkeys(map(_charm_decay, chains)))
     if charm_to is not None and _uncharged(charm_to) not in map(_uncharged, names):
@@ -143,9 +186,14 @@ def _uncharged(name: str) -> str:
 
 @kernel
 def _collect(
-    table: ChannelTable, stream: np.uint64, picks: Words, number: int, first_rows: Words, x: Floats, found: Floats
-) -> None:
-    """Draw the events whose pick is `number`; four-momenta into found (particles, 4, n)."""
+    table: ChannelTable, radiation: Radiation, stream: np.uint64, picks: Words, number: int, first_rows: Words,
+    x: Floats, found: Floats, counts: Words,
+) -> None:  # fmt: skip
+    """Draw the events whose pick is `number`; four-momenta into found (particles, 4, n), numbers of photons in counts.
+
+    The last particles are the photons; rows of an event that has fewer stay zero.
+    """
+    others = first_rows.size - MOST_PHOTONS
     n = picks.size
     for start in range(0, n, LANES):
         stop = min(start + LANES, n)
@@ -153,11 +201,16 @@ def _collect(
             continue
         draw_decays(x, table, stream, np.uint64(start))
         nu.fill_neutrinos(x, table, stream, np.uint64(start))
+        if radiation.on == 1:
+            radiate(x, radiation, stream, np.uint64(start))
+            for i in range(start, stop):
+                if picks[i] == number:
+                    counts[i] = np.int64(x[row.PHOTONS + i - start])
         for particle in range(first_rows.size):
             for component in range(4):
                 first = first_rows[particle] + component * LANES - start
                 for i in range(start, stop):
-                    if picks[i] == number:
+                    if picks[i] == number and particle < others + counts[i]:
                         found[particle, component, i] = x[first + i]
 
 
