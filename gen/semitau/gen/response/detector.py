@@ -6,6 +6,7 @@ from typing import NamedTuple
 
 import numpy as np
 
+from ..truth.radiation import SILENT, Radiation
 from .efficiency import Efficiency, constant
 
 NO_PARTICLE, CHARGED_PION, NEUTRAL_PION, PHOTON = range(4)
@@ -100,7 +101,10 @@ class Residual(NamedTuple):
 
 
 class Detector(NamedTuple):
-    """Everything that the response kernels need to know of the experiment."""
+    """Everything that the response kernels need to know of the experiment.
+
+    recovery_sine : of the largest angle between an electron and a photon that is added to it.
+    """
 
     beams: Beams
     tag: Tag
@@ -109,13 +113,14 @@ class Detector(NamedTuple):
     leptons: Leptons
     soft: SoftParticles
     residual: Residual
+    recovery_sine: float = 0.0
 
 
 class Chain(NamedTuple):
     """What the response needs to know of a channel: masses in GeV and the kinds of its particles.
 
     charged_parent, charged_d : 1 or 0. muon : 1 if the charged lepton is a muon. tau_pion : 1 if a tau gave pions;
-    partners : which others, NO_PARTNER to TWO_CHARGED.
+    partners : which others, NO_PARTNER to TWO_CHARGED. radiation : photons of the lepton.
     soft, pion, pion2 : NO_PARTICLE, CHARGED_PION, NEUTRAL_PION (also an eta, as one object) or PHOTON.
     beside_soft, kaon, hadron : what double charm has besides, numbers of `light_decays.SPECIES` or NO_SPECIES.
     """
@@ -135,6 +140,7 @@ class Chain(NamedTuple):
     hadron: int = -1
     tau_pion: int = 0
     partners: int = NO_PARTNER
+    radiation: Radiation = SILENT
 
 
 def beams(electron: float, positron: float, spread: float) -> Beams:

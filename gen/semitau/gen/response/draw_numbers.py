@@ -57,6 +57,8 @@ PARTNER2_SMEAR = np.uint64(116)
 PARTNER1_LEFT_OVER = np.uint64(120)
 PARTNER2_LEFT_OVER = np.uint64(121)
 
+RADIATED_FIRST = np.uint64(2112)  # eight for each photon of a lepton
+
 ONE = np.uint64(1)
 TWO = np.uint64(2)
 THREE = np.uint64(3)

@@ -31,6 +31,7 @@ from .detector import (
 )
 from .efficiency import evaluate
 from .others import add_others, has_others
+from .photons import measure_photons
 from .tau_pions import known_masses, measure_pions
 from .tracks import (
     in_photon_acceptance,
@@ -63,6 +64,8 @@ def measure(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     see_light_meson(y, keys, chain.pion2, row.PION2_PX, draws.PION2_SEEN, draws.PION2_LEFT_OVER, detector)
     if has_others(chain):
         add_others(y)
+    if chain.radiation.on == 1:
+        measure_photons(y, keys, detector)
     draw_random_soft(y, keys, chain.charged_d, detector.soft)
 
 

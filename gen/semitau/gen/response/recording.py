@@ -17,11 +17,13 @@ from ..templates.chunk import FOUND_STEPS
 from ..templates.chunk_tasks import NOMINAL, Bench
 from ..templates.component_plan import ChannelPlan
 from ..truth.any_drawing import AnyTable, draw, table_of
+from ..truth.radiation import radiate
 from .candidates import Scenario, Windows, reconstruct
 from .compaction import move
 from .detector import Chain, Detector
 from .finding import find, list_found
 from .measuring import measure
+from .photons import keep_photons
 from .setup import kernel_chain
 from .tau_pions import keep_partners
 
@@ -80,7 +82,7 @@ def event_recorder(
 
     They are the events that `chunk.fill_chunk` makes of the same stream, in this scenario.
     """
-    table, chain = table_of(plan.channel), kernel_chain(plan.channel)
+    table, chain = table_of(plan.channel), kernel_chain(plan.channel, bench.least_photon)
 
     def record(first: int, n: int) -> Events:
         truth = np.empty((len(_TRUTH), n))
@@ -117,6 +119,8 @@ def _record(
             numbers[i] = first_event + np.uint64(i)
             keys[i] = event_key(stream, numbers[i])
         draw(x, table, stream, first_event)
+        if chain.radiation.on == 1:
+            radiate(x, chain.radiation, stream, first_event)
         for k in range(_TRUTH.shape[0]):
             for i in range(here):
                 truth[k, begin + i] = x[_TRUTH[k] + i]
@@ -125,6 +129,8 @@ def _record(
         move(x, keys, numbers, lanes, 0, passed, y, y_keys, y_numbers, 0)
         if chain.partners > 0:
             keep_partners(x, lanes, 0, passed, y, 0)
+        if chain.radiation.on == 1:
+            keep_photons(x, lanes, 0, passed, y, 0)
         measure(y, y_keys, chain, detector)
         reconstruct(y, chain, detector.beams, scenario, windows)
         place(y, passed, cuts, axes, flow, bins)

@@ -10,6 +10,7 @@ from ..study_file.categories import Cut
 from ..study_file.detector import Curve
 from ..study_file.names import LEPTONS, SEEN_LEPTONS
 from ..study_file.study import StudyConfig
+from ..truth.radiation import SILENT, radiation_of
 from . import detector as kernel
 from .candidates import Windows
 from .efficiency import Efficiency, piecewise_linear
@@ -83,11 +84,15 @@ def kernel_detector(study: StudyConfig) -> kernel.Detector:
             d.residual_energy.wrong_tag_mean,
             d.residual_energy.lost_neutral_probability,
         ),
+        recovery_sine=float(np.sin(study.radiation.recovery_angle)),
     )
 
 
-def kernel_chain(channel: AnyChain) -> kernel.Chain:
-    """What the response needs to know of a decay chain."""
+def kernel_chain(channel: AnyChain, least_photon: float | None = None) -> kernel.Chain:
+    """What the response needs to know of a decay chain. least_photon : GeV, None if leptons do not radiate.
+
+    Leptons of double charm do not.
+    """
     beside_soft, kaon, hadron = _others(channel)
     return kernel.Chain(
         parent_mass=MASS[channel.parent],
@@ -102,6 +107,7 @@ def kernel_chain(channel: AnyChain) -> kernel.Chain:
         muon=int(channel.seen_lepton == "mu"),
         tau_pion=int(channel.seen_lepton not in LEPTONS),
         partners=_PARTNERS.get(channel.seen_lepton, kernel.NO_PARTNER),
+        radiation=SILENT if isinstance(channel, DoubleCharmChain) else radiation_of(channel, least_photon),
         soft=_SOFT[channel.soft],
         pion=_BACHELOR[channel.bachelor],
         pion2=_BACHELOR[channel.second],

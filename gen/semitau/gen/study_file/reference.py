@@ -20,6 +20,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[form_factors]": ("FormFactors",),
     "[wilson]": ("Wilson",),
     "[quadratic]": ("Quadratic",),
+    "[radiation]": ("RadiationSection",),
     "[[mode]]": ("Mode",),
     "[[double_charm]]": ("DoubleCharm",),
     "[[background]]": ("Background",),

@@ -27,6 +27,7 @@ from .fit import FitSection, Toys
 from .imports import Imports
 from .machine import Experiment, FormFactors, StudySection
 from .names import OBSERVABLES
+from .radiation import RadiationSection
 from .rules import Table, shown
 from .sections import SECTIONS, Conflict, Sections, missing_file
 from .variations import SingleVariation, Variation
@@ -43,6 +44,7 @@ class StudyConfig(Table):
     experiment: Experiment
     form_factors: FormFactors = FormFactors()
     wilson: Wilson = Wilson()
+    radiation: RadiationSection = RadiationSection()
     quadratic: Quadratic | None = Field(default=None, description="templates as functions of [wilson]")
     modes: tuple[Mode, ...] = Field(alias="mode", min_length=1)
     double_charms: tuple[DoubleCharm, ...] = Field(default=(), alias="double_charm")

@@ -15,9 +15,11 @@ from ..response.compaction import drop_unbinned, move
 from ..response.detector import Chain, Detector
 from ..response.finding import find, list_found
 from ..response.measuring import measure
+from ..response.photons import keep_photons
 from ..response.tau_pions import keep_partners
 from ..truth.any_drawing import AnyTable, draw
 from ..truth.bilinear_pieces import PieceTable, bilinear_pieces
+from ..truth.radiation import radiate
 from ..truth.variation_weights import VariationTable, variation_weights
 from .binning import Axes, Cuts, count, place
 
@@ -76,6 +78,8 @@ def fill_chunk(
             numbers[i] = first_event + np.uint64(i)
             keys[i] = event_key(stream, numbers[i])
         draw(x, table, stream, first_event)
+        if chain.radiation.on == 1:
+            radiate(x, chain.radiation, stream, first_event)
         find(x, keys, chain, detector, quantiles)
         passed = list_found(x, here, sums.found, lanes)
         done = 0
@@ -84,6 +88,8 @@ def fill_chunk(
             move(x, keys, numbers, lanes, done, take, y, y_keys, y_numbers, filled)
             if chain.partners > 0:
                 keep_partners(x, lanes, done, take, y, filled)
+            if chain.radiation.on == 1:
+                keep_photons(x, lanes, done, take, y, filled)
             done += take
             filled += take
             if filled == LANES:

@@ -62,6 +62,7 @@ class Bench:
     categories : of the study. shape : steps of `place`, categories. bins : of all categories together.
     scenarios : reconstructions besides the nominal one. variations : whether columns beyond the nominal one are filled.
     quadratic : parts of coefficients that the templates of modes with a tau are functions of.
+    least_photon : energy in GeV of the softest photons of leptons; None if there are none.
     """
 
     categories: tuple[StudyCategory, ...]
@@ -75,6 +76,7 @@ class Bench:
     scenarios: Mapping[Side, Scenario]
     variations: bool
     quadratic: tuple[str, ...]
+    least_photon: float | None = None
 
     @property
     def category_of_bin(self) -> Integers:
@@ -109,6 +111,7 @@ def make_bench(study: StudyConfig, *, variations: bool) -> Bench:
         scenarios=scenarios(study) if variations else {},
         variations=variations,
         quadratic=study.quadratic.coefficients if variations and study.quadratic is not None else (),
+        least_photon=study.radiation.least,
     )
 
 
@@ -133,7 +136,7 @@ def channel_tasks(plan: ChannelPlan, bench: Bench, stream: np.uint64, events: in
     weights = _weights(plan.channel, decays)
     soft = np.array(list(plan.variations.soft.values()) if bench.variations else [], dtype=np.float64)
     shifts = np.array([NOMINAL, *bench.scenarios.values()], dtype=np.float64)
-    chain = kernel_chain(plan.channel)
+    chain = kernel_chain(plan.channel, bench.least_photon)
     columns = 1 + len(channel_columns(plan, bench))
     pieces = channel_pieces(plan, bench)
     taken = no_pieces(weights) if pieces is None else pieces[0]

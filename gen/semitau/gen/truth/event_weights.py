@@ -94,7 +94,8 @@ def _with_photons(events: ak.Array) -> Floats:
     lepton = _momentum(events, "lepton")
     if "photons" not in events.fields:
         return lepton
-    return lepton + np.stack([ak.to_numpy(ak.sum(events.photons[part], axis=1)) for part in ("px", "py", "pz", "E")])
+    total: Floats = np.stack([ak.to_numpy(ak.sum(events.photons[part], axis=1)) for part in ("px", "py", "pz", "E")])
+    return lepton + total
 
 
 def _visible(events: ak.Array) -> Floats:
