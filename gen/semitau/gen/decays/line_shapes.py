@@ -30,7 +30,14 @@ _END = 0.01
 _SPREAD = 3.0
 """Nominal widths that the map of a resonance takes for its width, so that the tails have enough points."""
 
-_NORM_NODES = 400
+_NORM_NODES = 200
+
+
+@lru_cache(maxsize=8)
+def legendre_nodes(number: int) -> tuple[Floats, Floats]:
+    """Nodes and weights of Gauss-Legendre quadrature on [0, 1]."""
+    points, weights = np.polynomial.legendre.leggauss(number)
+    return 0.5 * (points + 1.0), 0.5 * weights
 
 
 def has_line_shape(decay: Decay) -> bool:
@@ -111,9 +118,8 @@ def _shape(state: CharmState, parameters: tuple[float, ...], m: Floats) -> Float
         (scale,) = parameters
         falling = np.exp(-(m - state.threshold) / scale)
         if state.light == "pi pi":
-            points, weights = np.polynomial.legendre.leggauss(48)
-            t = 0.5 * (points + 1.0)
-            x, dx = t * t * (3.0 - 2.0 * t), 3.0 * weights * t * (1.0 - t)
+            t, weights = legendre_nodes(48)
+            x, dx = t * t * (3.0 - 2.0 * t), 6.0 * weights * t * (1.0 - t)
             return np.asarray(falling * (pair_phase_space(m[..., None], charm, 0.5 * light, 0.5 * light, x) @ dx))
         return np.asarray(falling * breakup(m, charm, light))
     mass, width = parameters
@@ -129,7 +135,6 @@ def _parts(state: CharmState) -> tuple[float, float]:
 
 @lru_cache(maxsize=256)
 def _norm(parent: str, state: CharmState, parameters: tuple[float, ...], end: float) -> float:
-    points, weights = np.polynomial.legendre.leggauss(_NORM_NODES)
-    t = 0.5 * (points + 1.0)
+    t, weights = legendre_nodes(_NORM_NODES)
     m = state.threshold + (end - state.threshold) * t * t
-    return float(weights @ (_shape(state, parameters, m) * t)) * (end - state.threshold)
+    return 2.0 * float(weights @ (_shape(state, parameters, m) * t)) * (end - state.threshold)

@@ -64,7 +64,7 @@ def mass_table(channel: Channel) -> MassTable:
         daughter=daughter,
         first_pion=channel.m_bachelor,
         second_pion=channel.m_second,
-        shares=_pair_shares(point_masses(decay), daughter, channel.m_bachelor, channel.m_second)
+        shares=_pair_shares(tuple(point_masses(decay).tolist()), daughter, channel.m_bachelor, channel.m_second)
         if pair
         else np.zeros((1, 2)),
     )
@@ -86,9 +86,10 @@ def _positions(decay: Decay) -> Floats:
     return interval_table(density, MASS_INTERVALS)
 
 
-def _pair_shares(masses: Floats, daughter: float, first: float, second: float) -> Floats:
+@lru_cache(maxsize=64)
+def _pair_shares(masses: tuple[float, ...], daughter: float, first: float, second: float) -> Floats:
     """(points, 258): quantiles evenly spaced in probability."""
-    t = np.linspace(0.0, 1.0, 4001)
+    t = np.linspace(0.0, 1.0, 2001)
     x = t * t * (3.0 - 2.0 * t)
     even = np.linspace(0.0, 1.0, PAIR_INTERVALS + 1)
     rows = []
