@@ -30,7 +30,7 @@ class TemplateContent:
 
     @property
     def text(self) -> str:
-        """In one line; "" if there is nothing to say."""
+        """In one line with advice; "" if there is nothing to say."""
         parts = (
             (self.poor, f"{self.poor} of {self.bins} bins know their expectation to no better than {POOR:.0%}"),
             (self.unfilled, f"{self.unfilled} expect nothing and are left out"),
@@ -38,7 +38,7 @@ class TemplateContent:
             (self.cancelled, f"{self.cancelled} cancel to zero"),
         )
         said = [text for number, text in parts if number]
-        return "Templates: " + "; ".join(said) + "." if said else ""
+        return "Templates: " + "; ".join(said) + ". Merge bins, or generate more events." if said else ""
 
 
 def template_content(templates: TemplateSet) -> TemplateContent:

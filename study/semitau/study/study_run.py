@@ -21,6 +21,7 @@ from semitau.fit.fit_quality import quality
 from semitau.fit.model import Model
 from semitau.fit.nuisances import held_in_turn, nuisance_shifts
 from semitau.fit.straightness import linearity
+from semitau.fit.template_content import template_content
 from semitau.fit.toys import run_toys
 from semitau.gen.study_file.study import StudyConfig
 
@@ -186,6 +187,7 @@ def found_results(
             *form_factor_warnings(study),
             *worth_a_look(fit, ratios, source, made.cut_flow, fitted.certificate.protected_bins),
             *reweighting_warnings(made.reweightings),
+            *filter(None, [template_content(made.templates).text]),
         ),
         timing=watch.timing(workers),
     )
