@@ -11,9 +11,12 @@ from semitau.core.compiled import kernel
 from semitau.core.engine import run
 from semitau.core.streams import stream_key
 from semitau.gen.block import LANES, new_block
+from semitau.gen.study_file.names import COEFFICIENTS
 from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.study_file.wilson import Quadratic
 from semitau.gen.templates.chunk_tasks import Task, channel_tasks, make_bench
 from semitau.gen.templates.component_plan import ChannelPlan, plan_channels
+from semitau.gen.templates.variations import ChannelVariations
 from semitau.gen.truth.channel_table import ChannelTable, channel_table
 from semitau.gen.truth.drawing import draw_decays
 
@@ -85,7 +88,7 @@ def decay_figures(chains: Chains, counts: Counts, repetitions: int) -> list[Figu
     measured, filled = chains.tasks(variations=False), chains.tasks(variations=True)
     columns = max(task().histogram.shape[1] for task in filled)
     results = [task() for task in measured]
-    passed = sum(int(result.found[-1]) for result in results) / chains.events
+    passed = sum(int(result.sums.found[-1]) for result in results) / chains.events
     timings = interleaved(
         {
             "numpy": numpy_numbers,
@@ -115,6 +118,18 @@ def decay_figures(chains: Chains, counts: Counts, repetitions: int) -> list[Figu
             note=f"up to {columns - 1} varied templates beside the nominal one",
         ),
     ]
+
+
+def quadratic_figure(chains: Chains, repetitions: int) -> Figure:
+    """What templates as functions of all Wilson coefficients cost the modes with a tau, which have them."""
+    plain = ChannelVariations({}, {}, {})
+    tau = [replace(plan, variations=plain) for plan in chains.plans if plan.channel.lepton == "tau"]
+    study = chains.study.model_copy(update={"variations": (), "quadratic": Quadratic(coefficients=COEFFICIENTS)})
+    nominal, pieces = (Chains(study, tau).tasks(variations=more) for more in (False, True))
+    timings = interleaved({"plain": partial(_consume, nominal, 1), "pieces": partial(_consume, pieces, 1)}, repetitions)
+    ratio = timings["pieces"].cpu / timings["plain"].cpu
+    note = f"{len(COEFFICIENTS)} real coefficients, {len(tau)} decay chains"
+    return Figure("quadratic templates: cost over the plain fill", ratio, "times", 3, note=note)
 
 
 def scaling_figure(chains: Chains, repetitions: int) -> Figure:
