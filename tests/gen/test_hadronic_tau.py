@@ -115,6 +115,35 @@ def test_polarimeter_against_dirac_matrices(tau_to: str) -> None:
             assert (up - down) / (up + down) == pytest.approx(direction[:, i] @ axis, abs=1e-4)
 
 
+@pytest.mark.parametrize("tau_to", ["a1", "a1_1prong"])
+def test_neutrino_above_or_below_the_plane_of_the_pions(tau_to: str) -> None:
+    """Parity violation: with w(u) = |M|² by Dirac traces, r = (w(u) - w(-u)) / (w(u) + w(-u)), mean(r) = mean(r²)."""
+    sample = events(tau_to)[:3000]
+    names = ["lepton", *PARTNERS[tau_to]]
+    if tau_to == "a1_1prong":
+        names = [*names[1:], names[0]]
+    tau, *pions = vectors(sample, "tau", *names)
+    hadrons = np.sum(pions, axis=0)
+    ratios = []
+    for i in range(3000):
+        q = [np.roll(at_rest(pion[:, i : i + 1], hadrons[:, i : i + 1])[:, 0], 1) for pion in pions]
+        nu = np.roll(at_rest((tau - hadrons)[:, i : i + 1], hadrons[:, i : i + 1])[:, 0], 1)
+        total = np.sum(q, axis=0)
+        s1, s2 = (float(dirac.dot(q[k] + q[2], q[k] + q[2]).real) for k in (1, 0))
+        current = form_factor(s2) * (q[0] - q[2]) + form_factor(s1) * (q[1] - q[2])
+        current[0] = 0.0  # transverse to the pions' momentum, which is at rest
+        vertex = dirac.slash(current) @ dirac.LEFT
+        w = [
+            np.trace(dirac.slash(n) @ vertex @ (dirac.slash(total + n) + TAU * dirac.ONE) @ dirac.bar(vertex)).real
+            for n in (nu, nu * np.array([1.0, -1.0, -1.0, -1.0]))
+        ]
+        ratios.append((w[0] - w[1]) / (w[0] + w[1]))
+    r = np.array(ratios)
+    difference = r - r**2
+    assert np.mean(r**2) > 4 * np.std(r) / np.sqrt(r.size)  # enough of it to see the sign
+    assert 2 * stats.norm.sf(abs(difference.mean()) / (difference.std() / np.sqrt(r.size))) > UNLIKELY
+
+
 @pytest.mark.parametrize("tau_to", HADRONIC)
 def test_a_full_state_analyses_with_power_one(tau_to: str) -> None:
     """Light-like Pi; and weights of the couplings have the ratio of widths as mean, which needs the drawn spin."""
