@@ -142,7 +142,7 @@ class LeptonIdentificationEfficiency(_Named):
 
 
 class Misidentification(_Named):
-    """Rate at which hadrons pass for a lepton: acts on the backgrounds with misidentified = true."""
+    """Rate at which hadrons pass for a lepton: on backgrounds with misidentified = true and pions of a τ."""
 
     default_group: ClassVar[str] = "detector"
 
