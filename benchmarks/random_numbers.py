@@ -23,7 +23,8 @@ Counts = dict[str, list[float]]
 
 def kind(channel: Channel) -> str:
     """What decides how many numbers a chain draws."""
-    return f"{channel.ground} {channel.vector} {channel.soft} {channel.bachelor} {bool(channel.tau_to)}"
+    light = f"{channel.bachelor} {channel.second} {channel.decay.charm_mass is None}"
+    return f"{channel.ground} {channel.vector} {channel.soft} {light} {bool(channel.tau_to)}"
 
 
 def counted(study: str, most_kinds: int = 1000) -> Counts:
@@ -51,7 +52,7 @@ def _count(study_file: str, most_kinds: int) -> Counts:
     from semitau.gen.templates import chunk, component_plan
     from semitau.gen.templates.chunk_tasks import channel_tasks, make_bench
 
-    stages = {"draw_decays": 0, "find": 0, "measure": 0}
+    stages = {"draw": 0, "find": 0, "measure": 0}
 
     def watched(name: str) -> None:
         kernel = getattr(chunk, name)
