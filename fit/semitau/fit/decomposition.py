@@ -130,7 +130,7 @@ def information(model: Model, values: Floats) -> tuple[Floats, Floats]:
     parts = np.zeros((size, size)), np.zeros((size, size))
     work, gradient = workspace(arrays), np.zeros(size)
     for part, of_templates in zip(parts, (False, True), strict=True):
-        _information(arrays, values, of_templates, work, gradient, part)
+        _information(arrays, np.array(values), of_templates, work, gradient, part)
         part += np.tril(part, -1).T
     return parts
 

@@ -268,14 +268,14 @@ class Model:
         """Protected expectations in the order of the compiled arrays."""
         arrays = self.layout.arrays
         plain, out = np.zeros(arrays.floor.size), np.zeros(arrays.floor.size)
-        expectations(arrays, values, workspace(arrays), plain, out)
+        expectations(arrays, np.array(values), workspace(arrays), plain, out)
         return out
 
     def protected_bins(self, values: Floats) -> int:
         """Number of bins whose plain sum is below the floor of the protection at these parameters."""
         arrays = self.layout.arrays
         plain, out = np.zeros(arrays.floor.size), np.zeros(arrays.floor.size)
-        expectations(arrays, values, workspace(arrays), plain, out)
+        expectations(arrays, np.array(values), workspace(arrays), plain, out)
         return int(((plain < arrays.floor) & (self.layout.lane_bin >= 0)).sum())
 
 

@@ -347,9 +347,10 @@ def run(model: Model, data: Data, free: Indices, x: Floats) -> tuple[Ending, Scr
     arrays = model.layout.arrays
     counts, gammas = model.lanes(data.counts, 0.0), model.lanes(data.gamma_centres, 1.0)
     s = scratch(arrays)
-    ending = minimise(arrays, free, counts, gammas, data.centres, x, s)
+    centres = data.centres.copy()  # one that may be written to, as in toys: another kind would be compiled once more
+    ending = minimise(arrays, free, counts, gammas, centres, x, s)
     if ending.status != CONVERGED:
-        evaluate(arrays, x, counts, gammas, data.centres, EXACT, s.gradient, s.hessian, s.work)
+        evaluate(arrays, x, counts, gammas, centres, EXACT, s.gradient, s.hessian, s.work)
     return ending, s
 
 
