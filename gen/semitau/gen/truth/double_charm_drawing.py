@@ -326,7 +326,10 @@ def _turn_all(x: Floats, table: DoubleCharmTable, stream: np.uint64, first_event
             x[first + i] = r[0] * px + r[1] * py + r[2] * pz
             x[first + LANES + i] = r[3] * px + r[4] * py + r[5] * pz
             x[first + 2 * LANES + i] = r[6] * px + r[7] * py + r[8] * pz
-    for first in (row.NODE, row.VISIBLE_E, row.VISIBLE_X, row.VISIBLE_Y, row.VISIBLE_Z):
+    for first in (
+        row.NODE, row.VISIBLE_E, row.VISIBLE_X, row.VISIBLE_Y, row.VISIBLE_Z,
+        row.POLARISATION_X, row.POLARISATION_Y, row.POLARISATION_Z, row.CHARM_MASS, row.MASS_POINT, row.LIGHT_MASS,
+    ):  # fmt: skip
         for i in range(LANES):
             x[first + i] = 0.0
     for first in (row.PION_PX, row.PION2_PX, row.PARTNER1_PX, row.PARTNER2_PX):

@@ -38,11 +38,12 @@ def fill_momenta(x: Floats, table: ChannelTable, stream: np.uint64, first_event:
         split_pair(x, table.masses.first_pion, table.masses.second_pion, stream, first_event)
     else:
         _clear_second_pion(x)
+    if table.has_tau and table.hadrons.pions > 0:
+        _tau_and_pions(x, table)
+        return
+    _clear_rows(x, row.PARTNER1_PX, 8)
     if table.has_tau:
-        if table.hadrons.pions > 0:
-            _tau_and_pions(x, table)
-        else:
-            _tau_and_daughter(x, table)
+        _tau_and_daughter(x, table)
     else:
         _lepton(x, table)
 
@@ -124,6 +125,13 @@ def _clear_soft(x: Floats) -> None:
 def _clear_pion(x: Floats) -> None:
     for i in range(LANES):
         x[row.PION_PX + i] = x[row.PION_PY + i] = x[row.PION_PZ + i] = x[row.PION_E + i] = 0.0
+
+
+@kernel
+def _clear_rows(x: Floats, first: int, rows: int) -> None:
+    """Rows of particles that a chain does not have are zero."""
+    for i in range(rows * LANES):
+        x[first + i] = 0.0
 
 
 @kernel
@@ -310,3 +318,5 @@ def _tau_and_pions(x: Floats, table: ChannelTable) -> None:
             )
             x[row.PARTNER2_PX + i], x[row.PARTNER2_PY + i] = px, py
             x[row.PARTNER2_PZ + i], x[row.PARTNER2_E + i] = pz, energy
+    else:
+        _clear_rows(x, row.PARTNER2_PX, 4)
