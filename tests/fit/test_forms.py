@@ -28,7 +28,7 @@ def ours(model: Model, x: Array, n: Array, mode: int) -> tuple[float, Array, Arr
     arrays, size = model.layout.arrays, x.size
     gradient, hessian = np.full(size, np.nan), np.full((size, size), np.nan)
     lanes = model.lanes(n, 0.0), model.lanes(np.ones(model.bins), 1.0)
-    value = evaluate(arrays, x, *lanes, model.injected, mode, gradient, hessian, workspace(arrays))
+    value = evaluate(arrays, x.copy(), *lanes, model.injected, mode, gradient, hessian, workspace(arrays))
     return value, gradient, hessian
 
 
