@@ -43,7 +43,7 @@ def test_random_numbers_are_counted() -> None:
     from benchmarks.random_numbers import counted
 
     (kind, (truth, find, measure)) = next(iter(counted(str(ROOT / "configs" / "marlow_small.toml"), 1).items()))
-    assert kind == "D0  none none True"
+    assert kind == "D0  none none none False True"
     assert truth == 23
     # find: collision energy 2, flight 3 + 1, D0 -> K pi 2, three tracks seen, lepton identified
     assert find == 12

@@ -24,7 +24,6 @@ from semitau.gen.decays.amplitudes import (
 from semitau.gen.decays.decay import FAMILIES, Decay, WilsonCoefficients, charm_name
 from semitau.gen.decays.form_factor_values import PseudoscalarFormFactors, VectorFormFactors, longitudinal
 from semitau.gen.decays.tensor_form_factors import (
-    TENSOR_MODELS,
     VectorTensorFormFactors,
     pseudoscalar_tensor,
     vector_tensor,
@@ -226,7 +225,7 @@ def test_tensor_models_agree_in_the_heavy_quark_limit(monkeypatch: pytest.Monkey
     monkeypatch.setattr(tensor_form_factors, "CHARM_POLE_MASS", m)
     q2 = np.linspace(3.2, 10.6, 9)
     d, dst = heavy_quark_pseudoscalar(M, m, q2), heavy_quark_vector(M, m, q2)
-    models = [(pseudoscalar_tensor(name, d, M, m, q2), vector_tensor(name, dst, M, m, q2)) for name in TENSOR_MODELS]
+    models = [(pseudoscalar_tensor(name, d, M, m, q2), vector_tensor(name, dst, M, m, q2)) for name in ("LO", "EOM")]
     np.testing.assert_allclose(models[0][0], models[1][0], rtol=1e-9)
     for name in ("T1", "T2", "T3"):
         np.testing.assert_allclose(getattr(models[0][1], name), getattr(models[1][1], name), rtol=1e-9)

@@ -33,7 +33,7 @@ def without_timing(results: Results) -> dict[str, Any]:
 def test_everything_is_there(finished: Path) -> None:
     names = {path.name for path in finished.iterdir()}
     assert names == {"study.toml", "templates.root", "results.json", "toys.root", "pictures", "report.html"}
-    assert len(list((finished / "pictures").glob("*.png"))) == len(list((finished / "pictures").glob("*.svg"))) == 20
+    assert len(list((finished / "pictures").glob("*.png"))) == len(list((finished / "pictures").glob("*.svg"))) == 21
     results = read_results(finished / "results.json")
     assert [ratio.name for ratio in results.ratios] == ["R_D", "R_Dst"]
     assert results.fit.valid
