@@ -13,6 +13,7 @@ from pydantic import ValidationError
 from semitau.core.constants import BRANCHING_FRACTION, MASS
 from semitau.gen.templates.binning import category_code
 from semitau.gen.templates.component_plan import plan_channels
+from semitau.gen.templates.fit_components import template_categories
 
 from .blocks import channel
 from .marlow_study import PERFECT, study
@@ -53,6 +54,13 @@ def named(**chances: float) -> dict[str, Any]:
 
 def pions(truth: dict[str, np.ndarray], tau_to: str) -> list[Any]:
     return [vectors(truth, name) for name in ("lepton", "partner_1", "partner_2")[: {"pi": 1, "rho": 2}.get(tau_to, 3)]]
+
+
+def test_axes_say_what_is_seen() -> None:
+    labels = {category.name: category.observables[1].label for category in template_categories(study(**with_pions()))}
+    assert labels["D0_e"] == "lepton energy in the B frame"
+    assert labels["D0_pi"] == "pion energy in the B frame"
+    assert labels["Dstp_3pi"] == "three-pion energy in the B frame"
 
 
 @pytest.mark.parametrize("tau_to", ["pi", "rho", "a1_1prong"])

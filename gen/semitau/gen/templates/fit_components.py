@@ -22,12 +22,19 @@ def template_categories(study: StudyConfig) -> tuple[Category, ...]:
             category.name,
             category.label,
             tuple(
-                Observable(name, OBSERVABLES[name].label, OBSERVABLES[name].unit, edges)
+                Observable(name, _axis_label(name, category.lepton), OBSERVABLES[name].unit, edges)
                 for name, edges in category.axes.items()
             ),
         )
         for category in study.categories
     )
+
+
+def _axis_label(observable: str, lepton: str) -> str:
+    """In a category whose lepton is the pions of a tau, an axis says so."""
+    label = OBSERVABLES[observable].label
+    seen = {"pi": "pion", "3pi": "three-pion"}.get(lepton, "lepton")
+    return label.replace("lepton", seen, 1)
 
 
 def template_nuisances(study: StudyConfig) -> tuple[Nuisance, ...]:
