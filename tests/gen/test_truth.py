@@ -22,7 +22,7 @@ from scipy import integrate, stats
 from semitau import gen
 from semitau.core.constants import MASS
 from semitau.core.streams import stream_key
-from semitau.gen.block import LANES, POLARISATION_X, ROWS, SCRATCH_0, SCRATCH_END, new_block
+from semitau.gen.block import LANES, POLARISATION_X, ROWS, SCRATCH_END, new_block
 from semitau.gen.decays.amplitudes import helicity_amplitudes
 from semitau.gen.decays.chains import chains_of
 from semitau.gen.truth import drawing as truth
@@ -401,22 +401,6 @@ def test_excited_states(charm: str) -> None:
     check_mean(np.sign(a.cos_theta), expected.forward_backward)
     check_mean(a.visible_z, expected.tau_polarisation / 3)
     check_mean(a.q2, expected.mean_q2)
-
-
-def test_blocks_do_not_matter() -> None:
-    """An event is the same bits wherever its block starts, and whatever was in the block before."""
-    table = channel_table(next(chains_of(gen.Decay("B0", "D*-", "tau"), ("mu",))))
-    stream = stream_key(SEED, "blocks")
-    first, second = new_block(), np.full(ROWS * LANES, np.nan)
-    draw_decays(first, table, stream, np.uint64(0))
-    draw_decays(second, table, stream, np.uint64(100))
-    rows = slice(0, SCRATCH_0 // LANES)
-    np.testing.assert_array_equal(
-        first.reshape(ROWS, LANES)[rows, 100:], second.reshape(ROWS, LANES)[rows, : LANES - 100]
-    )
-    assert np.isfinite(second.reshape(ROWS, LANES)[rows]).all()
-    draw_decays(second, table, stream_key(SEED + 1, "blocks"), np.uint64(0))
-    assert not np.any(first[: 6 * LANES] == second[: 6 * LANES])
 
 
 def test_other_rows_are_left_alone() -> None:
