@@ -318,5 +318,3 @@ def _tau_and_pions(x: Floats, table: ChannelTable) -> None:
             )
             x[row.PARTNER2_PX + i], x[row.PARTNER2_PY + i] = px, py
             x[row.PARTNER2_PZ + i], x[row.PARTNER2_E + i] = pz, energy
-    else:
-        _clear_rows(x, row.PARTNER2_PX, 4)
