@@ -23,7 +23,7 @@ from semitau.core.templates import (
     TemplateSet,
 )
 from semitau.fit import Data, Model, maximise
-from semitau.fit.pulls import Summary, summarise
+from semitau.fit.toys.pulls import Summary, summarise
 
 Floats = NDArray[np.float64]
 FORMS = ("none", "light", "approximate", "exact")

@@ -13,10 +13,10 @@ from numpy.typing import NDArray
 from semitau.core.compiled import kernel
 from semitau.core.templates import TemplateSet
 from semitau.fit import Data, Model, maximise, run_toys
-from semitau.fit.algebra import inverse_diagonal
-from semitau.fit.layout import Arrays, Indices
-from semitau.fit.likelihood import VALUE, evaluate
-from semitau.fit.newton import Scratch, minimise, scratch
+from semitau.fit.fitting.algebra import inverse_diagonal
+from semitau.fit.fitting.newton import Scratch, minimise, scratch
+from semitau.fit.likelihood.layout import Arrays, Indices
+from semitau.fit.likelihood.likelihood import VALUE, evaluate
 
 from .figures import Figure
 from .timing import interleaved

@@ -7,7 +7,7 @@ from collections.abc import Callable
 import numpy as np
 from semitau.core.templates import TemplateSet
 from semitau.fit import Model, correct_for_templates, interval_coverage, maximise, profile, region_coverage
-from semitau.fit.covering import Held, held
+from semitau.fit.toys.covering import Held, held
 
 from . import problems
 from .poor_models import poor

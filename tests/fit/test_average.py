@@ -9,10 +9,10 @@ import pytest
 from numpy.typing import NDArray
 from scipy import stats
 from semitau.core.errors import InputError
-from semitau.fit.combination import Average, Form, average, chi2_at
-from semitau.fit.compatibility import Prediction, Tension, contour, ellipse, standard_deviations, tension
-from semitau.fit.input_vector import inputs
-from semitau.fit.measurements import Measured, Measurement, Spread
+from semitau.fit.averages.combination import Average, Form, average, chi2_at
+from semitau.fit.averages.compatibility import Prediction, Tension, contour, ellipse, standard_deviations, tension
+from semitau.fit.averages.input_vector import inputs
+from semitau.fit.averages.measurements import Measured, Measurement, Spread
 
 SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 

@@ -13,14 +13,14 @@ from scipy.optimize import minimize
 from semitau.core.errors import InputError
 from semitau.core.quadratic import templates_at
 from semitau.core.templates import Coefficient, Template, TemplateSet
-from semitau.fit.coefficients import deepest, doubts
-from semitau.fit.curves import profile
-from semitau.fit.decomposition import budget
-from semitau.fit.interpolation import bend
-from semitau.fit.likelihood import EXACT, VALUE, evaluate, workspace
-from semitau.fit.model import Model
-from semitau.fit.newton import maximise
-from semitau.fit.toys import run_toys
+from semitau.fit.fitting.coefficients import deepest, doubts
+from semitau.fit.fitting.model import Model
+from semitau.fit.fitting.newton import maximise
+from semitau.fit.likelihood.interpolation import bend
+from semitau.fit.likelihood.likelihood import EXACT, VALUE, evaluate, workspace
+from semitau.fit.toys.toys import run_toys
+from semitau.fit.uncertainty.curves import profile
+from semitau.fit.uncertainty.decomposition import budget
 
 from . import problems
 

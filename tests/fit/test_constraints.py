@@ -11,8 +11,8 @@ from scipy.stats import kstest, norm
 from semitau.core.errors import InputError
 from semitau.core.templates import ScaleParameter, TemplateSet
 from semitau.fit import Data, Model, budget, maximise, profile, run_toys
-from semitau.fit.constraints import Correlated, Gaussian, LogNormal, Uniform
-from semitau.fit.functions import jacobian, read_function
+from semitau.fit.likelihood.constraints import Correlated, Gaussian, LogNormal, Uniform
+from semitau.fit.likelihood.functions import jacobian, read_function
 
 from . import problems
 from .reference import Array, Plain
@@ -94,7 +94,7 @@ def test_toys_of_constraints() -> None:
     """Centres: log-normal ones have a normal logarithm, a block has its covariance (chance of failing 1e-4)."""
     model = Model(problems.small(), **LOG)
     from semitau.core.streams import event_key, stream_key
-    from semitau.fit.toys import draw_toy
+    from semitau.fit.toys.toys import draw_toy
 
     def centres(model: Model, number: int = 3000) -> Array:
         arrays, stream, out = model.layout.arrays, stream_key(problems.SEED, "centres"), []
@@ -250,7 +250,7 @@ def test_fractions() -> None:
 @pytest.mark.parametrize("text", ["2*a*b/c**2 - 0.5*a**0.5", "(a + b)**2 * c", "1 - a", "-a/(2*b)", "3 + 2*(a - b)*c"])
 def test_formulas_against_python(text: str) -> None:
     """Value against eval, derivatives against central differences."""
-    from semitau.fit.functions import arrays_of, set_functions
+    from semitau.fit.likelihood.functions import arrays_of, set_functions
 
     f = arrays_of({"d": read_function("d", text)}, {"a": 0, "b": 1, "c": 2, "d": 3})
     x = np.array([0.7, 1.3, 2.1, 0.0])

@@ -8,7 +8,7 @@ from iminuit import Minuit
 from scipy.stats import chi2
 from semitau.core.errors import InputError, RunError
 from semitau.fit import Model, maximise, profile, region
-from semitau.fit.curves import REGION_LEVELS
+from semitau.fit.uncertainty.curves import REGION_LEVELS
 
 from . import problems
 from .reference import Array, Plain

@@ -8,9 +8,9 @@ from iminuit import cost
 from semitau.core.errors import InputError
 from semitau.core.templates import Category, Component, Observable, ScaleParameter, Template, TemplateSet
 from semitau.fit import Model, maximise, run_toys
-from semitau.fit.bin_statistics import bin_terms, effective_terms
-from semitau.fit.exact_statistics import balance, solve_bin
-from semitau.fit.likelihood import EXACT, FISHER, VALUE, evaluate, workspace
+from semitau.fit.likelihood.bin_statistics import bin_terms, effective_terms
+from semitau.fit.likelihood.exact_statistics import balance, solve_bin
+from semitau.fit.likelihood.likelihood import EXACT, FISHER, VALUE, evaluate, workspace
 
 from . import finite, problems
 from .reference import Array

@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from semitau.fit.interpolation import bend, interpolate, positive
+from semitau.fit.likelihood.interpolation import bend, interpolate, positive
 
 from .reference import polynomial
 

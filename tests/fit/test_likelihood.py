@@ -7,9 +7,9 @@ import numpy as np
 import pytest
 from scipy.optimize import minimize_scalar
 from semitau.core.templates import TemplateSet
-from semitau.fit.likelihood import EXACT, FISHER, VALUE, bin_terms, deviance, evaluate, workspace
-from semitau.fit.model import Model
-from semitau.fit.vectors import WIDTH, dot
+from semitau.fit.fitting.model import Model
+from semitau.fit.likelihood.likelihood import EXACT, FISHER, VALUE, bin_terms, deviance, evaluate, workspace
+from semitau.fit.likelihood.vectors import WIDTH, dot
 
 from . import problems
 from .reference import Array, Plain, complex_step

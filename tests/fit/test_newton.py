@@ -11,7 +11,7 @@ from scipy.optimize import minimize
 from semitau.core.errors import InputError
 from semitau.core.templates import Component, ScaleParameter, TemplateSet
 from semitau.fit import Model, maximise
-from semitau.fit.result import FitResult
+from semitau.fit.fitting.result import FitResult
 
 from . import problems
 from .reference import Array, Plain, complex_step

@@ -7,12 +7,12 @@ import pytest
 from scipy import stats
 from semitau.core.errors import InputError
 from semitau.core.templates import Category, Component, Nuisance, Observable, ScaleParameter, Template, TemplateSet
-from semitau.fit.curves import Conditional
-from semitau.fit.data import Data
-from semitau.fit.enlarged import enlarged
-from semitau.fit.model import Model
-from semitau.fit.newton import maximise
-from semitau.fit.prospects import Deviation, reach
+from semitau.fit.fitting.data import Data
+from semitau.fit.fitting.model import Model
+from semitau.fit.fitting.newton import maximise
+from semitau.fit.uncertainty.curves import Conditional
+from semitau.fit.uncertainty.enlarged import enlarged
+from semitau.fit.uncertainty.prospects import Deviation, reach
 
 from .problems import SEED, one_bin, small
 

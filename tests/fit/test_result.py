@@ -7,7 +7,7 @@ import pytest
 from scipy.stats import chi2, kstest
 from semitau.core.errors import RunError
 from semitau.fit import Data, Model, budget, maximise, run_toys
-from semitau.fit.decomposition import STATISTICAL, TEMPLATES, budget_of
+from semitau.fit.uncertainty.decomposition import STATISTICAL, TEMPLATES, budget_of
 
 from . import problems
 from .test_newton import counts, twins

@@ -9,8 +9,8 @@ import pytest
 from semitau.core.errors import InputError
 from semitau.core.templates import Template, TemplateSet
 from semitau.fit import Model, interpolate, maximise
-from semitau.fit.interpolation import positive
-from semitau.fit.shape_and_rate import mirror, mirrored, one_sided, split_shape_and_rate
+from semitau.fit.fitting.shape_and_rate import mirror, mirrored, one_sided, split_shape_and_rate
+from semitau.fit.likelihood.interpolation import positive
 
 from . import problems
 

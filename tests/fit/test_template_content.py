@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import numpy as np
 from semitau.core.templates import Template
-from semitau.fit.template_content import template_content
+from semitau.fit.fitting.template_content import template_content
 
 from . import problems
 

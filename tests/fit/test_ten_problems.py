@@ -8,8 +8,8 @@ import numpy as np
 import pytest
 from scipy.optimize import minimize
 from semitau.fit import Model, maximise
-from semitau.fit.ending import CONVERGED
-from semitau.fit.newton import run
+from semitau.fit.fitting.ending import CONVERGED
+from semitau.fit.fitting.newton import run
 
 from . import problems
 from .reference import Array, Plain, complex_step

@@ -10,9 +10,9 @@ from scipy.stats import binomtest, chisquare, kstest, norm, poisson
 from semitau.core.errors import InputError
 from semitau.core.streams import event_key, stream_key
 from semitau.fit import Model, linearity, run_toys
-from semitau.fit.poisson import log_factorial
-from semitau.fit.poisson import poisson as draw
-from semitau.fit.toys import draw_toy
+from semitau.fit.toys.poisson import log_factorial
+from semitau.fit.toys.poisson import poisson as draw
+from semitau.fit.toys.toys import draw_toy
 
 from . import problems
 from .test_newton import twins

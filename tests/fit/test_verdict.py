@@ -5,8 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from scipy.stats import binom
-from semitau.fit.pulls import Summary, binomial_interval, coverage, summarise
-from semitau.fit.verdict import judge
+from semitau.fit.toys.pulls import Summary, binomial_interval, coverage, summarise
+from semitau.fit.toys.verdict import judge
 
 from .problems import SEED
 

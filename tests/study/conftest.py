@@ -46,7 +46,7 @@ from semitau.study.results import (
     Toys,
     Verdict,
 )
-from semitau.study.study_run import run_study
+from semitau.study.run.study_run import run_study
 
 SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 

@@ -13,15 +13,15 @@ import numpy as np
 import pytest
 from pydantic import BaseModel
 from semitau.core.errors import InputError
-from semitau.fit.combination import average
-from semitau.fit.compatibility import Prediction, tension
-from semitau.fit.measurements import Measured, Measurement
-from semitau.study.average_file import read_average
-from semitau.study.average_results import AverageResults
-from semitau.study.average_run import averaged
-from semitau.study.average_tables import AverageTables
+from semitau.fit.averages.combination import average
+from semitau.fit.averages.compatibility import Prediction, tension
+from semitau.fit.averages.measurements import Measured, Measurement
+from semitau.study.averages.document import AverageResults
+from semitau.study.averages.measurement_file import read_average
+from semitau.study.averages.planned_errors import planned_errors
+from semitau.study.averages.run import averaged
+from semitau.study.averages.tables import AverageTables
 from semitau.study.command_line import main
-from semitau.study.planned_errors import planned_errors
 from semitau.study.results import Results, Toys
 
 ROOT = Path(__file__).parents[2]

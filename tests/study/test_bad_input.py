@@ -21,9 +21,9 @@ import pytest
 import uproot
 from semitau.core import whole_files
 from semitau.core.templates import TemplateSet
-from semitau.study import study_run
 from semitau.study.command_line import main
 from semitau.study.results import Results
+from semitau.study.run import study_run
 
 WriteStudy = Callable[..., Path]
 Capture = pytest.CaptureFixture[str]

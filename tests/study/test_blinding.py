@@ -12,14 +12,14 @@ import pytest
 from semitau.core.errors import InputError, RunError
 from semitau.core.template_file import read_templates, write_templates
 from semitau.core.templates import TemplateSet
-from semitau.fit.model import Model
-from semitau.fit.newton import maximise
-from semitau.study.blinding import Cover, cover, provenance
+from semitau.fit.fitting.model import Model
+from semitau.fit.fitting.newton import maximise
+from semitau.study.blinding.cover import Cover, cover, provenance
+from semitau.study.blinding.finality import declare_final, templates_digest, unblind
 from semitau.study.command_line import main
-from semitau.study.finality import declare_final, templates_digest, unblind
+from semitau.study.parts.signal_share import signal_shares
 from semitau.study.results import Results, read_results
-from semitau.study.signal_share import signal_shares
-from semitau.study.study_run import run_study
+from semitau.study.run.study_run import run_study
 
 from .conftest import WriteStudy
 
@@ -217,7 +217,7 @@ def test_studies_that_hide_nothing(mini: WriteStudy) -> None:
 
 def test_factor_moves_curves_without_stretching(templates: TemplateSet) -> None:
     """A stretched curve beside the true error would tell the factor."""
-    from semitau.fit.curves import profile
+    from semitau.fit.uncertainty.curves import profile
 
     model = Model(templates)
     curve = profile(model, model.data(templates), "R_D")

@@ -10,11 +10,11 @@ import pytest
 from semitau.core.quadratic import templates_at
 from semitau.core.template_file import write_templates
 from semitau.core.templates import TemplateSet
-from semitau.fit.model import Model
-from semitau.fit.newton import maximise
-from semitau.study.coefficient_fits import refuse_hidden
+from semitau.fit.fitting.model import Model
+from semitau.fit.fitting.newton import maximise
 from semitau.study.command_line import main
-from semitau.study.reweighting_parts import reweighting_line, reweighting_parts, reweighting_warnings
+from semitau.study.parts.coefficient_fits import refuse_hidden
+from semitau.study.parts.reweighting_parts import reweighting_line, reweighting_parts, reweighting_warnings
 
 from ..core.weighted_events import World
 

@@ -12,9 +12,9 @@ from typing import Any
 import numpy as np
 from semitau.core.quadratic import templates_at
 from semitau.core.templates import TemplateSet
-from semitau.fit.coefficients import deepest
-from semitau.fit.model import Model
-from semitau.fit.newton import maximise
+from semitau.fit.fitting.coefficients import deepest
+from semitau.fit.fitting.model import Model
+from semitau.fit.fitting.newton import maximise
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import build_templates
 from semitau.gen.templates.component_plan import predicted_ratio

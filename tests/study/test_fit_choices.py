@@ -9,12 +9,12 @@ from typing import Any
 import pytest
 from semitau.core.errors import InputError
 from semitau.core.templates import TemplateSet
-from semitau.fit.constraints import Correlated, Uniform
-from semitau.fit.model import Model
+from semitau.fit.fitting.model import Model
+from semitau.fit.likelihood.constraints import Correlated, Uniform
 from semitau.gen.study_file.reader import read_study
 from semitau.study.command_line import main
-from semitau.study.fit_choices import FitChoices
-from semitau.study.study_model import study_model
+from semitau.study.run.study_model import study_model
+from semitau.study.terminal.fit_choices import FitChoices
 
 Capture = pytest.CaptureFixture[str]
 SMALL = Path(__file__).parents[2] / "configs" / "marlow_small.toml"

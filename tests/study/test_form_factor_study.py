@@ -15,7 +15,7 @@ from semitau.gen.decays.form_factor_directions import directions
 from semitau.gen.decays.form_factor_set import read_form_factors
 from semitau.gen.study_file.reader import read_study
 from semitau.study.command_line import main
-from semitau.study.study_folder import study_key
+from semitau.study.run.study_folder import study_key
 
 WriteStudy = Callable[..., Path]
 Capture = pytest.CaptureFixture[str]

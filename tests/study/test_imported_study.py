@@ -11,8 +11,8 @@ from semitau.core.errors import InputError
 from semitau.core.template_file import read_templates
 from semitau.gen.study_file.categories import StudyCategory
 from semitau.gen.study_file.reader import read_study
-from semitau.study.study_folder import study_key
-from semitau.study.study_run import run_study
+from semitau.study.run.study_folder import study_key
+from semitau.study.run.study_run import run_study
 
 from .conftest import WriteStudy
 

@@ -5,10 +5,10 @@ from __future__ import annotations
 from dataclasses import replace
 
 import pytest
-from semitau.fit.straightness import Line
+from semitau.fit.toys.straightness import Line
+from semitau.study.parts.toy_parts import overall_verdict
 from semitau.study.results import Results, Toys
-from semitau.study.toy_parts import overall_verdict
-from semitau.study.worth_a_look import worth_a_look
+from semitau.study.run.worth_a_look import worth_a_look
 
 STRAIGHT = Line(
     parameter="R_D",

@@ -6,7 +6,7 @@ import math
 
 import pytest
 from semitau.study.numbers import counted, digits_for, percent, signed, with_error
-from semitau.study.progress import duration
+from semitau.study.terminal.progress import duration
 
 # Two significant digits of the error: the common practice of particle physics tables.
 CASES = [

@@ -6,8 +6,8 @@ import io
 
 import pytest
 from rich.console import Console
-from semitau.study.progress import bars, sparse_lines
-from semitau.study.terminal import Terminal
+from semitau.study.terminal.progress import bars, sparse_lines
+from semitau.study.terminal.terminal import Terminal
 
 
 def test_sparse_lines_say_when_it_is_done_and_how_long_it_takes() -> None:

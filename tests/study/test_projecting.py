@@ -5,10 +5,10 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from semitau.core.templates import Category, Component, Observable, ScaleParameter, Template, TemplateSet
-from semitau.fit.model import Model
-from semitau.fit.newton import maximise
-from semitau.study.fit_parts import component_parts
-from semitau.study.projecting import enhanced_starts, projections
+from semitau.fit.fitting.model import Model
+from semitau.fit.fitting.newton import maximise
+from semitau.study.parts.fit_parts import component_parts
+from semitau.study.parts.projecting import enhanced_starts, projections
 
 
 def test_uncertainty_of_a_counting_experiment() -> None:

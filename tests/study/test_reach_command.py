@@ -10,10 +10,10 @@ from typing import Any
 import pytest
 from semitau.core.template_file import read_templates
 from semitau.core.templates import TemplateSet
-from semitau.fit.model import Model
-from semitau.fit.prospects import reach
+from semitau.fit.fitting.model import Model
+from semitau.fit.uncertainty.prospects import reach
 from semitau.study.command_line import main
-from semitau.study.reach_parts import axis_of
+from semitau.study.parts.reach_parts import axis_of
 
 Capture = pytest.CaptureFixture[str]
 AGAINST = ["--true", "R_D=0.34", "--against", "R_D=0.298:0.004", "--against", "R_Dst=0.24"]

@@ -11,7 +11,7 @@ import pytest
 from semitau.study.pictures import draw_pictures
 from semitau.study.report.page import page
 from semitau.study.results import STATEMENT, Results
-from semitau.study.summary import VERDICT_WORDS
+from semitau.study.terminal.summary import VERDICT_WORDS
 
 
 @pytest.fixture(scope="module")

@@ -12,11 +12,11 @@ import numpy as np
 import pytest
 import uproot
 from semitau.core.template_file import read_templates
-from semitau.study import study_run
 from semitau.study.command_line import main
-from semitau.study.opening import open_study
 from semitau.study.results import Results, read_results
-from semitau.study.study_folder import named_files, study_key
+from semitau.study.run import study_run
+from semitau.study.run.opening import open_study
+from semitau.study.run.study_folder import named_files, study_key
 
 WriteStudy = Callable[..., Path]
 

@@ -9,9 +9,9 @@ from typing import Any
 import pytest
 import uproot
 from semitau.core.templates import TemplateSet
-from semitau.fit.decomposition import budget
-from semitau.fit.model import Model
-from semitau.fit.newton import maximise
+from semitau.fit.fitting.model import Model
+from semitau.fit.fitting.newton import maximise
+from semitau.fit.uncertainty.decomposition import budget
 from semitau.study.command_line import main
 
 Capture = pytest.CaptureFixture[str]

@@ -12,98 +12,98 @@ if TYPE_CHECKING:
     from semitau.core.quadratic import templates_at as templates_at
     from semitau.core.template_file import read_templates as read_templates
 
-    from .coefficients import deepest as deepest
-    from .combination import Average as Average
-    from .combination import average as average
-    from .compatibility import Prediction as Prediction
-    from .compatibility import Tension as Tension
-    from .compatibility import tension as tension
-    from .constraints import Correlated as Correlated
-    from .constraints import Gaussian as Gaussian
-    from .constraints import LogNormal as LogNormal
-    from .constraints import Uniform as Uniform
-    from .covering import IntervalCoverage as IntervalCoverage
-    from .covering import interval_coverage as interval_coverage
-    from .covering import region_coverage as region_coverage
-    from .curves import Profile as Profile
-    from .curves import Region as Region
-    from .curves import profile as profile
-    from .curves import region as region
-    from .data import Data as Data
-    from .decomposition import Budget as Budget
-    from .decomposition import budget as budget
-    from .fit_quality import Quality as Quality
-    from .fit_quality import quality as quality
-    from .interpolation import interpolate as interpolate
-    from .measurements import Measured as Measured
-    from .measurements import Measurement as Measurement
-    from .model import Model as Model
-    from .newton import maximise as maximise
-    from .neyman import ToyInterval as ToyInterval
-    from .neyman import toy_interval as toy_interval
-    from .nuisances import NuisanceShift as NuisanceShift
-    from .nuisances import held_in_turn as held_in_turn
-    from .nuisances import nuisance_shifts as nuisance_shifts
-    from .poor_templates import Corrected as Corrected
-    from .poor_templates import correct_for_templates as correct_for_templates
-    from .prospects import Reach as Reach
-    from .prospects import reach as reach
-    from .result import FitResult as FitResult
-    from .shape_and_rate import mirrored as mirrored
-    from .shape_and_rate import one_sided as one_sided
-    from .shape_and_rate import split_shape_and_rate as split_shape_and_rate
-    from .straightness import Linearity as Linearity
-    from .straightness import linearity as linearity
-    from .toys import ToyResults as ToyResults
-    from .toys import run_toys as run_toys
+    from .averages.combination import Average as Average
+    from .averages.combination import average as average
+    from .averages.compatibility import Prediction as Prediction
+    from .averages.compatibility import Tension as Tension
+    from .averages.compatibility import tension as tension
+    from .averages.measurements import Measured as Measured
+    from .averages.measurements import Measurement as Measurement
+    from .fitting.coefficients import deepest as deepest
+    from .fitting.data import Data as Data
+    from .fitting.model import Model as Model
+    from .fitting.newton import maximise as maximise
+    from .fitting.result import FitResult as FitResult
+    from .fitting.shape_and_rate import mirrored as mirrored
+    from .fitting.shape_and_rate import one_sided as one_sided
+    from .fitting.shape_and_rate import split_shape_and_rate as split_shape_and_rate
+    from .likelihood.constraints import Correlated as Correlated
+    from .likelihood.constraints import Gaussian as Gaussian
+    from .likelihood.constraints import LogNormal as LogNormal
+    from .likelihood.constraints import Uniform as Uniform
+    from .likelihood.interpolation import interpolate as interpolate
+    from .toys.covering import IntervalCoverage as IntervalCoverage
+    from .toys.covering import interval_coverage as interval_coverage
+    from .toys.covering import region_coverage as region_coverage
+    from .toys.neyman import ToyInterval as ToyInterval
+    from .toys.neyman import toy_interval as toy_interval
+    from .toys.poor_templates import Corrected as Corrected
+    from .toys.poor_templates import correct_for_templates as correct_for_templates
+    from .toys.straightness import Linearity as Linearity
+    from .toys.straightness import linearity as linearity
+    from .toys.toys import ToyResults as ToyResults
+    from .toys.toys import run_toys as run_toys
+    from .uncertainty.curves import Profile as Profile
+    from .uncertainty.curves import Region as Region
+    from .uncertainty.curves import profile as profile
+    from .uncertainty.curves import region as region
+    from .uncertainty.decomposition import Budget as Budget
+    from .uncertainty.decomposition import budget as budget
+    from .uncertainty.fit_quality import Quality as Quality
+    from .uncertainty.fit_quality import quality as quality
+    from .uncertainty.nuisances import NuisanceShift as NuisanceShift
+    from .uncertainty.nuisances import held_in_turn as held_in_turn
+    from .uncertainty.nuisances import nuisance_shifts as nuisance_shifts
+    from .uncertainty.prospects import Reach as Reach
+    from .uncertainty.prospects import reach as reach
 
 _HOME = {
-    "Average": ".combination",
-    "Budget": ".decomposition",
-    "Corrected": ".poor_templates",
-    "Correlated": ".constraints",
-    "Data": ".data",
-    "FitResult": ".result",
-    "Gaussian": ".constraints",
-    "IntervalCoverage": ".covering",
-    "Linearity": ".straightness",
-    "LogNormal": ".constraints",
-    "Measured": ".measurements",
-    "Measurement": ".measurements",
-    "Model": ".model",
-    "NuisanceShift": ".nuisances",
-    "Prediction": ".compatibility",
-    "Profile": ".curves",
-    "Quality": ".fit_quality",
-    "Reach": ".prospects",
-    "Region": ".curves",
-    "Tension": ".compatibility",
-    "ToyInterval": ".neyman",
-    "ToyResults": ".toys",
-    "Uniform": ".constraints",
-    "average": ".combination",
-    "budget": ".decomposition",
-    "correct_for_templates": ".poor_templates",
-    "deepest": ".coefficients",
-    "held_in_turn": ".nuisances",
-    "interpolate": ".interpolation",
-    "interval_coverage": ".covering",
-    "linearity": ".straightness",
-    "maximise": ".newton",
-    "mirrored": ".shape_and_rate",
-    "nuisance_shifts": ".nuisances",
-    "one_sided": ".shape_and_rate",
-    "profile": ".curves",
-    "quality": ".fit_quality",
-    "reach": ".prospects",
+    "Average": ".averages.combination",
+    "Budget": ".uncertainty.decomposition",
+    "Corrected": ".toys.poor_templates",
+    "Correlated": ".likelihood.constraints",
+    "Data": ".fitting.data",
+    "FitResult": ".fitting.result",
+    "Gaussian": ".likelihood.constraints",
+    "IntervalCoverage": ".toys.covering",
+    "Linearity": ".toys.straightness",
+    "LogNormal": ".likelihood.constraints",
+    "Measured": ".averages.measurements",
+    "Measurement": ".averages.measurements",
+    "Model": ".fitting.model",
+    "NuisanceShift": ".uncertainty.nuisances",
+    "Prediction": ".averages.compatibility",
+    "Profile": ".uncertainty.curves",
+    "Quality": ".uncertainty.fit_quality",
+    "Reach": ".uncertainty.prospects",
+    "Region": ".uncertainty.curves",
+    "Tension": ".averages.compatibility",
+    "ToyInterval": ".toys.neyman",
+    "ToyResults": ".toys.toys",
+    "Uniform": ".likelihood.constraints",
+    "average": ".averages.combination",
+    "budget": ".uncertainty.decomposition",
+    "correct_for_templates": ".toys.poor_templates",
+    "deepest": ".fitting.coefficients",
+    "held_in_turn": ".uncertainty.nuisances",
+    "interpolate": ".likelihood.interpolation",
+    "interval_coverage": ".toys.covering",
+    "linearity": ".toys.straightness",
+    "maximise": ".fitting.newton",
+    "mirrored": ".fitting.shape_and_rate",
+    "nuisance_shifts": ".uncertainty.nuisances",
+    "one_sided": ".fitting.shape_and_rate",
+    "profile": ".uncertainty.curves",
+    "quality": ".uncertainty.fit_quality",
+    "reach": ".uncertainty.prospects",
     "read_templates": "semitau.core.template_file",
-    "region": ".curves",
-    "region_coverage": ".covering",
-    "run_toys": ".toys",
-    "split_shape_and_rate": ".shape_and_rate",
+    "region": ".uncertainty.curves",
+    "region_coverage": ".toys.covering",
+    "run_toys": ".toys.toys",
+    "split_shape_and_rate": ".fitting.shape_and_rate",
     "templates_at": "semitau.core.quadratic",
-    "tension": ".compatibility",
-    "toy_interval": ".neyman",
+    "tension": ".averages.compatibility",
+    "toy_interval": ".toys.neyman",
 }
 
 __all__ = [

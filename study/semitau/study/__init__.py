@@ -9,14 +9,14 @@ if TYPE_CHECKING:
     from .report import write_report as write_report
     from .results import Results as Results
     from .results import read_results as read_results
-    from .study_run import run_study as run_study
+    from .run.study_run import run_study as run_study
 
 __all__ = ["Results", "read_results", "run_study", "write_report"]
 
 _HOMES = {
     "Results": ".results",
     "read_results": ".results",
-    "run_study": ".study_run",
+    "run_study": ".run.study_run",
     "write_report": ".report",
 }
 

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -21,10 +21,10 @@ def command(call: Invocation, file: Path, output: Path | None) -> None:
     """
     from semitau.core.whole_files import write_whole
 
-    from ..average_file import read_average
-    from ..average_picture import saved_picture
-    from ..average_run import averaged
-    from ..average_summary import average_summary
+    from ..averages.measurement_file import read_average
+    from ..averages.picture import saved_picture
+    from ..averages.run import averaged
+    from ..averages.summary import average_summary
 
     given = read_average(file)
     found = averaged(given)

@@ -6,9 +6,9 @@ from pathlib import Path
 
 import click
 
-from ..fit_choices import FitChoices
-from ..invocation import Invocation, shared_options
-from ..template_options import template_options
+from ..terminal.fit_choices import FitChoices
+from ..terminal.invocation import Invocation, shared_options
+from ..terminal.template_options import template_options
 
 
 @click.command()
@@ -21,14 +21,14 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     add up to the square of the whole error. Then by how much the error falls, in quadrature, when one source alone is
     held, and each nuisance: its pull, its error over that of its auxiliary measurement, what it does to the ratios.
     """
-    from semitau.fit.decomposition import budget
-    from semitau.fit.nuisances import held_in_turn, nuisance_shifts
+    from semitau.fit.uncertainty.decomposition import budget
+    from semitau.fit.uncertainty.nuisances import held_in_turn, nuisance_shifts
 
-    from ..blinding import cover_of
-    from ..coefficient_fits import refuse_hidden
-    from ..fit_parts import budget_parts, nuisance_parts, ratio_parts
-    from ..fitting import choose_data, described, fit_or_fail, open_model
-    from ..summary import budget_table, held_table, nuisance_table
+    from ..blinding.cover import cover_of
+    from ..parts.coefficient_fits import refuse_hidden
+    from ..parts.fit_parts import budget_parts, nuisance_parts, ratio_parts
+    from ..run.fitting import choose_data, described, fit_or_fail, open_model
+    from ..terminal.summary import budget_table, held_table, nuisance_table
 
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)

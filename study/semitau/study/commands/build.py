@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -22,11 +22,11 @@ def command(call: Invocation, file: Path, output: Path | None, again: bool) -> N
     """
     from semitau.core.whole_files import write_whole
 
-    from ..opening import open_study
-    from ..reweighting_parts import reweighting_line, reweighting_warnings
-    from ..study_folder import claimed_folder
-    from ..study_templates import study_templates
-    from ..summary import cut_flow_table
+    from ..parts.reweighting_parts import reweighting_line, reweighting_warnings
+    from ..run.opening import open_study
+    from ..run.study_folder import claimed_folder
+    from ..run.study_templates import study_templates
+    from ..terminal.summary import cut_flow_table
 
     study = open_study(file, call.seed)
     target = output

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -18,9 +18,9 @@ def command(call: Invocation, file: Path) -> None:
     Every problem of FILE is told at once, with line, key, value and remedy. If there is none: components with generated
     and expected events, categories, variations, and rough time, memory and disk.
     """
-    from ..opening import open_study
-    from ..outline_summary import outline_tables
-    from ..study_outline import study_outline
+    from ..run.opening import open_study
+    from ..run.study_outline import study_outline
+    from ..terminal.outline_summary import outline_tables
 
     outline = study_outline(open_study(file, call.seed), call.workers)
     call.terminal.show(*outline_tables(outline, call.workers))

@@ -6,9 +6,9 @@ from pathlib import Path
 
 import click
 
-from ..fit_choices import FitChoices
-from ..invocation import Invocation, shared_options
-from ..template_options import template_options
+from ..terminal.fit_choices import FitChoices
+from ..terminal.invocation import Invocation, shared_options
+from ..terminal.template_options import template_options
 
 
 @click.command()
@@ -20,13 +20,13 @@ def command(call: Invocation, templates: Path, data: Path | None, expected: bool
     TEMPLATES is a template file from anybody's simulation (docs/template_file.md). What is fitted: the file of --data,
     else the data in TEMPLATES, else the expected events.
     """
-    from semitau.fit.decomposition import budget
+    from semitau.fit.uncertainty.decomposition import budget
 
-    from ..blinding import cover_of
-    from ..coefficient_fits import fit_coefficients, refuse_hidden
-    from ..fit_parts import fit_part, ratio_parts
-    from ..fitting import choose_data, described, fit_or_fail, open_model
-    from ..summary import goodness_line, hidden_line, parameter_table, ratio_table
+    from ..blinding.cover import cover_of
+    from ..parts.coefficient_fits import fit_coefficients, refuse_hidden
+    from ..parts.fit_parts import fit_part, ratio_parts
+    from ..run.fitting import choose_data, described, fit_or_fail, open_model
+    from ..terminal.summary import goodness_line, hidden_line, parameter_table, ratio_table
 
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)

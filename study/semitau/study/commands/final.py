@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -19,7 +19,7 @@ def command(call: Invocation, file: Path, by: str, output: Path | None) -> None:
 
     Writes who, when, and the hashes of study, templates, data and code into final.json of the study's folder.
     """
-    from ..finality import declare_final
+    from ..blinding.finality import declare_final
 
     declaration = declare_final(file, by, output, call.seed)
     call.terminal.show(f"{declaration['name']} is final, says {by} ({declaration['when']}).")

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -41,8 +41,8 @@ def command(call: Invocation, file: Path, output: Path | None, format_: str, com
     from semitau.gen.templates.event_files import generate
 
     from ..numbers import counted
-    from ..opening import open_study, thinned
-    from ..study_folder import claimed_folder
+    from ..run.opening import open_study, thinned
+    from ..run.study_folder import claimed_folder
 
     study = thinned(open_study(file, call.seed), share)
     target = output

@@ -6,9 +6,9 @@ from pathlib import Path
 
 import click
 
-from ..fit_choices import FitChoices
-from ..invocation import Invocation, shared_options
-from ..template_options import template_options
+from ..terminal.fit_choices import FitChoices
+from ..terminal.invocation import Invocation, shared_options
+from ..terminal.template_options import template_options
 
 SEED = 1
 
@@ -34,10 +34,10 @@ def command(
     The interval from toys (Neyman) needs no asymptotic formula. The corrected one takes the templates' own noise out of
     the information; use it when it differs from the others.
     """
-    from ..blinding import cover_of
-    from ..coefficient_fits import refuse_hidden
-    from ..fitting import choose_data, described, fit_or_fail, open_model
-    from ..interval_parts import found_intervals, interval_table
+    from ..blinding.cover import cover_of
+    from ..parts.coefficient_fits import refuse_hidden
+    from ..parts.interval_parts import found_intervals, interval_table
+    from ..run.fitting import choose_data, described, fit_or_fail, open_model
 
     seed = SEED if call.seed is None else call.seed
     model = open_model(templates, choices)

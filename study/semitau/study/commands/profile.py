@@ -6,9 +6,9 @@ from pathlib import Path
 
 import click
 
-from ..fit_choices import FitChoices
-from ..invocation import Invocation, shared_options
-from ..template_options import template_options
+from ..terminal.fit_choices import FitChoices
+from ..terminal.invocation import Invocation, shared_options
+from ..terminal.template_options import template_options
 
 
 @click.command()
@@ -31,12 +31,12 @@ def command(
     the region of the first two ratios holds 39.3, 68.3, 95.4 and 99.7 %.
     """
     import numpy as np
-    from semitau.fit.curves import profile, region
+    from semitau.fit.uncertainty.curves import profile, region
 
-    from ..blinding import cover_of
-    from ..coefficient_fits import refuse_hidden
-    from ..fitting import choose_data, described, fit_or_fail, open_model
-    from ..likelihood_parts import curve_document, curve_table, drawn_curves, region_document
+    from ..blinding.cover import cover_of
+    from ..parts.coefficient_fits import refuse_hidden
+    from ..parts.likelihood_parts import curve_document, curve_table, drawn_curves, region_document
+    from ..run.fitting import choose_data, described, fit_or_fail, open_model
 
     model = open_model(templates, choices)
     observed, source = choose_data(model, data, expected)

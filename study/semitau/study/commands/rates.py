@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -22,8 +22,8 @@ def command(call: Invocation, file: Path, output: Path | None) -> None:
     """
     from semitau.gen.decays.rates_table import rates_table
 
-    from ..opening import open_study
-    from ..rates_summary import drawn_spectra, rates_document, rates_tables
+    from ..run.opening import open_study
+    from ..terminal.rates_summary import drawn_spectra, rates_document, rates_tables
 
     study = open_study(file, call.seed)
     sets = {name: study.form_factor_set(name) for name in ("D", "Dst", "Dss")}

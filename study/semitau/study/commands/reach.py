@@ -6,8 +6,8 @@ from pathlib import Path
 
 import click
 
-from ..fit_choices import FitChoices, fit_choices
-from ..invocation import Invocation, shared_options
+from ..terminal.fit_choices import FitChoices, fit_choices
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -43,10 +43,10 @@ def command(
     sets: --seed and --workers change nothing.
     """
     from semitau.core.template_file import read_templates
-    from semitau.fit.prospects import reach
+    from semitau.fit.uncertainty.prospects import reach
 
-    from ..fitting import read_factors
-    from ..reach_parts import axis_of, reach_document, reach_picture, reach_summary, read_compared, read_true
+    from ..parts.reach_parts import axis_of, reach_document, reach_picture, reach_summary, read_compared, read_true
+    from ..run.fitting import read_factors
 
     at, compared, multiples = read_true(true), read_compared(against), read_factors(factors)
     read = read_templates(templates)

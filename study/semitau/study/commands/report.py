@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -20,7 +20,7 @@ def command(call: Invocation, folder: Path) -> None:
     from ..pictures import draw_pictures
     from ..report import write_report
     from ..results import read_results
-    from ..summary import summary
+    from ..terminal.summary import summary
 
     results = read_results(folder / "results.json")
     with call.terminal.progress() as report:

@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -21,8 +21,8 @@ def command(call: Invocation, file: Path, output: Path | None, again: bool) -> N
     ratios, and writes templates.root, toys.root, results.json, pictures/ and report.html into one folder. What is there
     already and was made from the same file, seed and code is taken as it is.
     """
-    from ..study_run import run_study
-    from ..summary import summary
+    from ..run.study_run import run_study
+    from ..terminal.summary import summary
 
     with call.terminal.progress() as report:
         run = run_study(file, output=output, seed=call.seed, workers=call.workers, report=report, again=again)

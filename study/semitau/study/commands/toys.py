@@ -6,8 +6,8 @@ from pathlib import Path
 
 import click
 
-from ..fit_choices import FitChoices, fit_choices
-from ..invocation import Invocation, shared_options
+from ..terminal.fit_choices import FitChoices, fit_choices
+from ..terminal.invocation import Invocation, shared_options
 
 SEED = 1
 
@@ -34,13 +34,13 @@ def command(
     Each toy draws counts and auxiliary measurements from the model of TEMPLATES and is fitted. The seed is 1 unless
     --seed says otherwise.
     """
-    from semitau.fit.straightness import linearity
-    from semitau.fit.toys import run_toys
+    from semitau.fit.toys.straightness import linearity
+    from semitau.fit.toys.toys import run_toys
 
-    from ..fitting import open_model, read_factors
-    from ..summary import linearity_table, toy_table, verdict_text
-    from ..toy_file import write_toys
-    from ..toy_parts import linearity_parts, overall_verdict, toys_part
+    from ..parts.toy_file import write_toys
+    from ..parts.toy_parts import linearity_parts, overall_verdict, toys_part
+    from ..run.fitting import open_model, read_factors
+    from ..terminal.summary import linearity_table, toy_table, verdict_text
 
     seed = SEED if call.seed is None else call.seed
     multiples = read_factors(factors)

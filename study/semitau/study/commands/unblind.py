@@ -6,7 +6,7 @@ from pathlib import Path
 
 import click
 
-from ..invocation import Invocation, shared_options
+from ..terminal.invocation import Invocation, shared_options
 
 
 @click.command()
@@ -20,8 +20,8 @@ def command(call: Invocation, file: Path, by: str, output: Path | None) -> None:
     Refuses if study, templates, data, code or passphrase have changed since. Writes who, when and the hashes into
     unblinding.json first; then results, pictures and report, not hidden, into the folder `unblinded`.
     """
-    from ..finality import unblind
-    from ..summary import summary
+    from ..blinding.finality import unblind
+    from ..terminal.summary import summary
 
     with call.terminal.progress() as report:
         run, record = unblind(file, by, output, call.seed, call.workers, report)

@@ -12,9 +12,9 @@ from semitau.core.whole_files import write_whole
 from ..numbers import counted, digits_for, percent, signed, with_error
 from ..pictures.gallery import DATA_LABELS
 from ..pictures.sheet import Picture
-from ..progress import duration
 from ..results import Results
-from ..summary import VERDICT_WORDS
+from ..terminal.progress import duration
+from ..terminal.summary import VERDICT_WORDS
 from .inline_svg import inline_svg
 
 HERE = Path(__file__).parent

@@ -1,0 +1,1 @@
+"""Averages of measurements, and how far they lie from a prediction."""

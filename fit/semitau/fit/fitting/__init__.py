@@ -1,0 +1,1 @@
+"""Models and data, and how the best parameters are found."""

@@ -1,0 +1,1 @@
+"""Pseudo-experiments: what they say of bias, coverage, linearity and intervals."""

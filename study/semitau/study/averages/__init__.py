@@ -1,0 +1,1 @@
+"""`semitau average`: from a file of measurements to their average."""

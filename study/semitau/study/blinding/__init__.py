@@ -1,0 +1,1 @@
+"""Ratios that stay hidden until a study is final."""

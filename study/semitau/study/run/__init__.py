@@ -1,0 +1,1 @@
+"""A whole study, from its file to its folder."""

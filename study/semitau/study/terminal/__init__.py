@@ -1,0 +1,1 @@
+"""What commands take, and what people see of them in the terminal."""

@@ -1,0 +1,159 @@
+"""Rates of a study as tables for people and as a document."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import fields
+
+from rich.console import RenderableType
+from rich.table import Table
+from rich.text import Text
+from semitau.gen.decays.decay import WilsonCoefficients, family_of
+from semitau.gen.decays.rates import Observables
+from semitau.gen.decays.rates_table import RatesTable
+from semitau.gen.study_file.names import LEPTON_LABEL
+
+from ..numbers import digits_for, signed, with_error
+from ..pictures.sheet import Sheet
+from ..pictures.spectra import Curve, spectra
+from .summary import plain_table
+
+
+def rates_tables(
+    rates: RatesTable, sets: Mapping[str, str], couplings: WilsonCoefficients, tensor: str
+) -> list[RenderableType]:
+    """One table of the decays, one of the ratios, and what they were computed with."""
+    table = plain_table("Decay", "BF (%)", "P", "F_L", "A_FB", "⟨q²⟩ (GeV²)")
+    for mode in rates.modes:
+        value, error = mode.values, mode.errors
+        table.add_row(
+            f"{mode.decay.parent} → {mode.decay.charm} {mode.decay.lepton} ν",
+            _shown(100 * value.branching_fraction, 100 * error.branching_fraction),
+            _shown(value.tau_polarisation, error.tau_polarisation),
+            _shown(value.longitudinal_fraction, error.longitudinal_fraction),
+            _shown(value.forward_backward, error.forward_backward),
+            _shown(value.mean_q2, error.mean_q2),
+        )
+    used = ", ".join(f"{name}: {chosen}" for name, chosen in sets.items())
+    note = (
+        "BF: branching fraction; P: lepton polarisation in the W* rest frame; F_L: longitudinal fraction; A_FB > 0: "
+        f"lepton away from the charm hadron. Errors are those of the form factors alone ({used})."
+    )
+    beyond = {name: value for name, value in _couplings(couplings).items() if any(value)}
+    lines: list[RenderableType] = [table, "", _ratio_table(rates), ""]
+    if (correlation := _between_ratios(rates)) is not None:
+        lines += [Text(f"Correlation of the errors of R(D) and R(D*): {signed(correlation, 2)}"), ""]
+    if rates.relations:
+        lines += [_relation_table(rates), ""]
+    lines.append(Text(note, style="dim"))
+    if beyond:
+        given = ", ".join(f"C_{name} = {_complex(*value)}" for name, value in beyond.items())
+        lines.append(Text(f"Couplings of the τ beyond the Standard Model: {given}; tensor form factors: {tensor}."))
+    return lines
+
+
+def rates_document(
+    rates: RatesTable, sets: Mapping[str, str], couplings: WilsonCoefficients, tensor: str
+) -> dict[str, object]:
+    """The same as plain numbers; widths in GeV, spectra in GeV^-1, couplings as [real, imaginary]."""
+    return {
+        "form_factors": dict(sets),
+        "wilson": {name: list(value) for name, value in _couplings(couplings).items()} | {"tensor": tensor},
+        "modes": [
+            {
+                "parent": mode.decay.parent,
+                "charm": mode.decay.charm,
+                "lepton": mode.decay.lepton,
+                "values": {field.name: getattr(mode.values, field.name) for field in fields(Observables)},
+                "errors": {field.name: getattr(mode.errors, field.name) for field in fields(Observables)},
+            }
+            for mode in rates.modes
+        ],
+        "ratios": [
+            {"parent": ratio.parent, "charm": ratio.charm, "value": ratio.value, "error": ratio.error}
+            for ratio in rates.ratios
+        ],
+        "correlation": rates.correlation.tolist(),
+        "relations": [
+            {
+                "form_factors": relation.transition,
+                "relation": relation.name,
+                "kind": relation.kind,
+                "value": relation.value,
+                "error": relation.error,
+                "status": relation.status,
+            }
+            for relation in rates.relations
+        ],
+        "spectra": [
+            {
+                "parent": spectrum.decay.parent,
+                "charm": spectrum.decay.charm,
+                "lepton": spectrum.decay.lepton,
+                "q2": spectrum.q2.tolist(),
+                "rate": spectrum.rate.tolist(),
+                "error": spectrum.error.tolist(),
+            }
+            for spectrum in rates.spectra
+        ],
+    }
+
+
+def drawn_spectra(rates: RatesTable) -> Sheet:
+    """The picture of d Gamma/d q2 with its bands."""
+    curves: dict[str, list[Curve]] = {}
+    for spectrum in rates.spectra:
+        decay = spectrum.decay
+        curve = Curve(LEPTON_LABEL[decay.lepton], spectrum.q2, spectrum.rate, spectrum.error)
+        curves.setdefault(f"{decay.parent} → {decay.charm} ℓ ν", []).append(curve)
+    return spectra(curves)
+
+
+def _ratio_table(rates: RatesTable) -> Table:
+    """A row for each charmed meson, a column for each parent and the mean of both."""
+    parents = list(dict.fromkeys(ratio.parent for ratio in rates.ratios))
+    families: dict[str, list[str]] = {}
+    for ratio in rates.ratios:
+        family = ratio.charm if ratio.parent == "mean" else family_of(ratio.charm)
+        families.setdefault(family, []).append(_shown(ratio.value, ratio.error))
+    table = plain_table("Ratio of τ to the mean of e and μ", *parents)
+    for family, cells in families.items():
+        table.add_row(f"R{family}" if family.startswith("(") else f"R({family})", *cells)
+    return table
+
+
+def _between_ratios(rates: RatesTable) -> float | None:
+    """Correlation of R(D) and R(D*), for the means if there are two parents."""
+    at = {family_of(ratio.charm) if ratio.parent != "mean" else ratio.charm: k for k, ratio in enumerate(rates.ratios)}
+    return float(rates.correlation[at["D"], at["D*"]]) if {"D", "D*"} <= set(at) else None
+
+
+def _relation_table(rates: RatesTable) -> Table:
+    table = plain_table("Exact relations of the form factors", "left/right − 1, or sum", "")
+    for relation in rates.relations:
+        if relation.kind == "bound":
+            found = f"{with_error(relation.value, relation.error)} of 1"
+        elif relation.status == "exact":
+            found = "0"
+        else:
+            found = f"{with_error(100 * relation.value, 100 * relation.error)} %"
+        table.add_row(f"{relation.transition}: {relation.name}", found, relation.status)
+    return table
+
+
+def _couplings(couplings: WilsonCoefficients) -> dict[str, tuple[float, float]]:
+    values = {field.name: complex(getattr(couplings, field.name)) for field in fields(couplings)}
+    return {name: (value.real, value.imag) for name, value in values.items()}
+
+
+def _complex(real: float, imaginary: float) -> str:
+    return f"{real:g} {'+' if imaginary > 0 else '−'} {abs(imaginary):g}i" if imaginary else f"{real:g}"
+
+
+DECIMALS = 4
+"""Decimals shown at most: what the form factors move less than that has no error to show."""
+
+
+def _shown(value: float, error: float) -> str:
+    places = digits_for(error)
+    return with_error(value, error) if places <= DECIMALS and error > 0 else signed(value, DECIMALS)
