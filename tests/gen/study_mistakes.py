@@ -664,7 +664,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
     "unknown coefficient": (
         "[selection]",
         "[wilson]\nS = 0.1\n[selection]",
-        'wilson.S: unknown key (allowed VL, VR, SL, SR, T, tensor). Did you mean "SR"?',
+        'wilson.S: unknown key (allowed VL, VR, SL, SR, T, tensor, e, mu). Did you mean "SR"?',
         1,
     ),
     "no current left": (
@@ -674,6 +674,44 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
             "wilson: cancels the current of the Standard Model (got 1 + VL + VR = 0+0j, 1 + VL - VR = 0+0j, allowed "
             "another VL or VR)"
         ),
+    ),
+    "coupling of the muon too large": (
+        "[selection]",
+        "[wilson.mu]\nSL = 4.5\n[selection]",
+        (
+            "wilson.mu.SL: is larger than any such coefficient can be (got 4.5, allowed a number or [real, imaginary] "
+            "of size up to 4)"
+        ),
+        1,
+    ),
+    "tensor model of a light lepton": (
+        "[selection]",
+        "[wilson.e]\ntensor = 1\n[selection]",
+        'wilson.e.tensor: unknown key (allowed VL, VR, SL, SR, T). Did you mean "SR"?',
+        1,
+    ),
+    "couplings of an unknown lepton": (
+        "[selection]",
+        "[wilson.muon]\nVL = 0.1\n[selection]",
+        'wilson.muon: unknown key (allowed VL, VR, SL, SR, T, tensor, e, mu). Did you mean "mu"?',
+        0,
+    ),
+    "no current left for electrons": (
+        "[selection]",
+        "[wilson.e]\nVL = -1.0\n[selection]",
+        (
+            "wilson.e: cancels the current of the Standard Model (got 1 + VL + VR = 0+0j, 1 + VL - VR = 0+0j, allowed "
+            "another VL or VR)"
+        ),
+    ),
+    "singular tensor of muons": (
+        "[selection]",
+        '[wilson]\ntensor = "EOM"\n[wilson.mu]\nT = 0.1\n[selection]',
+        (
+            'wilson.mu.T: needs other tensor form factors: those of tensor = "EOM" are singular at small q² '
+            '(got 0.1+0j). Take tensor = "LO", or set T = 0.'
+        ),
+        3,
     ),
     "quadratic in nothing": (
         "[selection]",

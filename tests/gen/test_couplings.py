@@ -6,17 +6,21 @@ Nothing is random.
 from __future__ import annotations
 
 import json
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pytest
+from scipy.integrate import quad
 from semitau import gen
-from semitau.core.constants import BOTTOM_MASS, CHARM_MASS
+from semitau.core.constants import BOTTOM_MASS, CHARM_MASS, ELECTROWEAK_CORRECTION, FERMI_COUPLING, VCB
+from semitau.core.errors import InputError
 from semitau.core.quadratic import value_at
 from semitau.gen.decays.amplitudes import helicity_amplitudes
 from semitau.gen.decays.coefficients import LARGEST, label_of, part_of, quadratic_form, value_of, with_values
 from semitau.gen.decays.decay import WilsonCoefficients
+from semitau.gen.decays.rates_table import rates_table
 from semitau.gen.study_file.reader import read_study
 from semitau.gen.templates.component_plan import plan_channels, predicted_ratio
 
@@ -133,6 +137,78 @@ def test_study_generates_with_its_couplings() -> None:
         assert (at_work == WilsonCoefficients(SR=0.5, T=0.1j)) == (plan.channel.lepton == "tau")
 
 
+LIGHT = {"e": {"SL": 0.3, "VL": 0.02j}, "mu": {"VL": -0.05, "VR": 0.1j, "T": 0.06}}
+
+
+@pytest.mark.parametrize(("parent", "charm"), [("B0", "D-"), ("B+", "D*0")])
+def test_light_couplings_in_the_ratio(parent: str, charm: str) -> None:
+    """VL alone multiplies amplitudes by 1 + VL: R over (|1 + VL_e|² G_e + |1 + VL_mu|² G_mu) / (G_e + G_mu)."""
+    rate = {lepton: gen.observables(gen.Decay(parent, charm, lepton)).rate for lepton in ("e", "mu", "tau")}
+    found = gen.ratio(parent, charm, light={"e": {"VL": 0.1 - 0.2j}, "mu": {"VL": -0.05}})
+    below = abs(1.1 - 0.2j) ** 2 * rate["e"] + 0.95**2 * rate["mu"]
+    assert found == pytest.approx(2.0 * rate["tau"] / below, rel=1e-12)
+    assert gen.ratio(parent, charm, light={"e": {}, "mu": {}}) == gen.ratio(parent, charm)
+    with pytest.raises(InputError, match="no such light lepton"):
+        gen.ratio(parent, charm, light={"tau": {"VL": 0.1}})
+
+
+def test_scalar_current_of_electrons_in_closed_form() -> None:
+    """A massless lepton does not interfere with a scalar current (opposite helicity), so B -> D e nu gains the integral
+    of G_F² |V_cb|² |p| q² |S|²/(16 pi³ M²), S = (SL + SR)/2 (M² - m²) f0/(m_b - m_c): the textbook width of a scalar
+    vertex, here with another quadrature (scipy's)."""
+    plain, new = gen.Decay("B0", "D-", "e"), gen.Decay("B0", "D-", "e", wilson={"SL": 0.3, "SR": 0.4j})
+    M, m = plain.m_parent, plain.m_charm
+
+    def added(q2: float) -> float:
+        f_zero = float(plain.model(M, m, np.array([q2])).f_zero[0])
+        scalar = 0.5 * abs(0.3 + 0.4j) * (M * M - m * m) * f_zero / (BOTTOM_MASS - CHARM_MASS)
+        momentum = np.sqrt(((M - m) ** 2 - q2) * ((M + m) ** 2 - q2)) / (2.0 * M)
+        coupling = (FERMI_COUPLING * ELECTROWEAK_CORRECTION * VCB) ** 2
+        return float(coupling * momentum * q2 * scalar**2 / (16.0 * np.pi**3 * M * M))
+
+    expected = quad(added, 0.0, (M - m) ** 2, epsabs=0.0)[0]
+    found = gen.observables(new).rate - gen.observables(plain).rate
+    assert found == pytest.approx(expected, rel=2e-3)  # m_e interferes: m_e/sqrt(q²) of the vector rate, 1e-3 of this
+
+
+def test_light_couplings_of_a_study(tmp_path: Path) -> None:
+    """Each lepton has its own; ratios are over the mean of e and mu; without any nothing changes."""
+    read = study(tmp_path, "[wilson]\nSR = 0.5\n[wilson.mu]\nVL = -0.05\nVR = [0, 0.1]\nT = 0.06\n")
+    assert read.wilson.couplings == WilsonCoefficients(SR=0.5)
+    assert read.wilson.by_lepton.mu == WilsonCoefficients(VL=-0.05, VR=0.1j, T=0.06)
+    assert read.wilson.by_lepton.e == WilsonCoefficients()
+    given = {name: {key: [value.real, value.imag] for key, value in part.items()} for name, part in LIGHT.items()}
+    made, plain = marlow_study(wilson={"SR": 0.5, **given}), marlow_study(wilson={"SR": 0.5})
+    for plan, old in zip(plan_channels(made), plan_channels(plain), strict=True):
+        decay = plan.channel.decay
+        wanted = LIGHT.get(decay.lepton, {"SR": 0.5})
+        assert decay.couplings == WilsonCoefficients(**wanted)
+        reference = replace(decay, wilson=None if decay.lepton in LIGHT else {"SR": 0.5})
+        # D** too: a measured branching fraction moves with the width of its decay
+        growth = gen.observables(decay).rate / gen.observables(reference).rate
+        assert plan.expected == pytest.approx(old.expected * growth, rel=1e-12), plan.channel.name
+    for name, charm in (("R_D", "D-"), ("R_Dst", "D*-")):
+        expected = gen.ratio("B0", charm, wilson={"SR": 0.5}, light=LIGHT)
+        assert predicted_ratio(made, name, ("B0",)) == pytest.approx(expected, rel=1e-12)
+
+
+def test_light_couplings_in_the_table_of_rates() -> None:
+    table = rates_table(("D*",), parents=("B0",), wilson={"SR": 0.5}, light=LIGHT)
+    assert table.ratios[0].value == pytest.approx(gen.ratio("B0", "D*-", wilson={"SR": 0.5}, light=LIGHT), rel=1e-12)
+    for mode in table.modes:
+        couplings = LIGHT.get(mode.decay.lepton, {"SR": 0.5})
+        assert mode.values == gen.observables(gen.Decay("B0", "D*-", mode.decay.lepton, wilson=couplings))
+
+
+def test_no_mode_with_a_muon() -> None:
+    modes = [
+        {"component": "x", "charm": ["D"], "leptons": ["e"], "events": 9},
+        {"component": "y", "charm": ["D"], "leptons": ["tau"], "events": 9, "scales_with": "R_D", "follows": "x"},
+    ]
+    with pytest.raises(Exception, match="acts on nothing: no mode has a muon"):
+        marlow_study(wilson={"mu": {"VL": 0.1}}, mode=modes)
+
+
 def test_no_mode_with_a_tau() -> None:
     with pytest.raises(Exception, match="acts on nothing: no mode has a tau"):
         marlow_study(wilson={"SR": 0.5}, mode=[{"component": "x", "charm": ["D"], "leptons": ["e"], "events": 9}])
@@ -152,3 +228,15 @@ def test_rates_command(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> No
     assert found == pytest.approx(expected, rel=1e-12)
     assert main(["rates", str(tmp_path / "study.toml")]) == 0
     assert "C_SR = 0.3, C_T = 0.02 − 0.1i" in " ".join(capsys.readouterr().out.split())
+    study(tmp_path, "[wilson]\nSR = 0.3\n[wilson.mu]\nVL = [0.02, -0.1]\n")
+    assert main(["rates", str(tmp_path / "study.toml"), "--json"]) == 0
+    document = json.loads(capsys.readouterr().out)
+    assert document["wilson"]["mu"]["VL"] == [0.02, -0.1]
+    assert document["wilson"]["e"]["VL"] == [0.0, 0.0]
+    expected = gen.ratio("B0", "D-", wilson={"SR": 0.3}, light={"mu": {"VL": 0.02 - 0.1j}})
+    found = next(r["value"] for r in document["ratios"] if (r["parent"], r["charm"]) == ("B0", "D-"))
+    assert found == pytest.approx(expected, rel=1e-12)
+    assert main(["rates", str(tmp_path / "study.toml")]) == 0
+    assert "Couplings of the μ beyond the Standard Model: C_VL = 0.02 − 0.1i" in " ".join(
+        capsys.readouterr().out.split()
+    )

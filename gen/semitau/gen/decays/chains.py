@@ -3,13 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 from semitau.core.constants import BRANCHING_FRACTION, LIFETIME, MASS
 from semitau.core.errors import InputError, Problem
 
 from .decay import CHARMS, DEFAULT_SETS, LEPTONS, PARENTS, Decay, WilsonCoefficients, charm_name
 from .form_factor_set import FormFactorSet
+from .lepton_couplings import Given, LeptonCouplings
 from .orbital_states import CHARGED_PION_SHARE, ETA_NEUTRAL_SHARE, PION_PAIR_SHARES, CharmState
 from .rates import observables, ratio
 
@@ -144,19 +145,21 @@ def channels(
     *,
     tau_to: Iterable[str] = ("e", "mu"),
     form_factors: Mapping[str, FormFactorSet | str] | None = None,
-    wilson: WilsonCoefficients | Mapping[str, complex] | None = None,
+    wilson: Given = None,
     tensor: str = "LO",
+    light: Mapping[str, Given] | None = None,
 ) -> tuple[Channel, ...]:
     """Every chain from these parents through these charmed mesons and leptons, in that order.
 
     parents : of "B+", "B0". charms : families, of "D", "D*", "D1(2420)", "D2*(2460)", "D0*(2300)", "D1'(2430)",
         and the continua "(D pi)", "(D* pi)", "(D pi pi)", "(D* pi pi)", "(D eta)", "(D* eta)".
     leptons : of "e", "mu", "tau". tau_to : of "e", "mu", "pi", "rho", "a1", "a1_1prong"; only these decays of the tau.
-    form_factors : "D", "Dst", "Dss" -> set; the defaults of `Decay` where left out. wilson, tensor : on the tau only.
+    form_factors : "D", "Dst", "Dss" -> set; the defaults of `Decay` where left out. wilson : on the tau only.
+    light : "e", "mu" -> couplings of the decays with that lepton. tensor : of those with couplings.
 
     Branching fractions: of D and D* from the widths with the shipped |V_cb|; of D** and continua with light
-    leptons from measured averages, with a tau these times the ratio of the form factors; of tau and D* from the
-    particle data tables.
+    leptons from measured averages, times what couplings do to the width; with a tau these averages times the ratio of
+    the form factors; of tau and D* from the particle data tables.
     InputError lists names that are unknown.
     """
     parents, charms, leptons, tau_to = tuple(parents), tuple(charms), tuple(leptons), tuple(tau_to)
@@ -164,14 +167,15 @@ def channels(
     _check("charmed meson", charms, CHARMS)
     _check("lepton", leptons, LEPTONS)
     _check("tau decay", tau_to, tuple(BRANCHING_FRACTION["tau"]))
+    couplings = LeptonCouplings.of(wilson, tensor, light)
     found: list[Channel] = []
     for parent in parents:
         for family in charms:
             for lepton in leptons:
                 transition = {"D": "D", "D*": "Dst"}.get(family, "Dss")
                 chosen = (form_factors or {}).get(transition, DEFAULT_SETS[transition])
-                couplings, model = (wilson, tensor) if lepton == "tau" else (None, "LO")
-                decay = Decay(parent, charm_name(parent, family), lepton, chosen, couplings, model)
+                charm, model = charm_name(parent, family), couplings.model(lepton)
+                decay = Decay(parent, charm, lepton, chosen, couplings[lepton], model)
                 found.extend(chains_of(decay, tau_to))
     return tuple(found)
 
@@ -183,7 +187,9 @@ def semileptonic_branching_fraction(decay: Decay) -> float:
         return observables(decay).branching_fraction
     light = state.light_branching_fraction * (1.0 + state.to_two_pions) * decay.lifetime / LIFETIME["B+"]
     if decay.lepton != "tau":
-        return light
+        if decay.couplings == WilsonCoefficients():
+            return light
+        return light * observables(decay).rate / observables(replace(decay, wilson=None, tensor="LO")).rate
     return light * ratio(decay.parent, decay.charm, decay.form_factors, decay.couplings, decay.tensor)
 
 

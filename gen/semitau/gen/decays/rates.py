@@ -13,8 +13,9 @@ from semitau.core.errors import InputError, Problem
 
 from ..truth.kinematics import Floats, kallen
 from .amplitudes import LeptonAmplitudes, lepton_amplitudes
-from .decay import Decay, WilsonCoefficients
+from .decay import Decay
 from .form_factor_set import FormFactorSet
+from .lepton_couplings import Given, LeptonCouplings
 from .line_shapes import has_line_shape, mass_at, mass_density, mass_slope
 
 NODES = 96
@@ -179,13 +180,18 @@ def ratio(
     parent: str,
     charm: str,
     form_factors: FormFactorSet | str | None = None,
-    wilson: WilsonCoefficients | Mapping[str, complex] | None = None,
+    wilson: Given = None,
     tensor: str = "LO",
+    light: Mapping[str, Given] | None = None,
 ) -> float:
     """R: width with a tau over the mean of the widths with an electron and a muon.
 
-    parent, charm, form_factors, tensor : as in `Decay`. wilson : acts on the tau only.
+    parent, charm, form_factors, tensor : as in `Decay`. wilson : acts on the tau only. light : "e", "mu" -> couplings
+    of the decays with that lepton, e.g. {"mu": {"VL": 0.02}}; those of the standard model where left out.
     """
-    tau = observables(Decay(parent, charm, "tau", form_factors, wilson, tensor)).rate
-    light = [observables(Decay(parent, charm, lepton, form_factors)).rate for lepton in ("e", "mu")]
-    return 2.0 * tau / sum(light)
+    couplings = LeptonCouplings.of(wilson, tensor, light)
+    rate = {
+        lepton: observables(Decay(parent, charm, lepton, form_factors, couplings[lepton], couplings.model(lepton))).rate
+        for lepton in ("e", "mu", "tau")
+    }
+    return 2.0 * rate["tau"] / (rate["e"] + rate["mu"])

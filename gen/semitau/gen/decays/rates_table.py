@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Iterator, Mapping
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, fields, replace
 
 import numpy as np
 
 from ..truth.kinematics import Floats
-from .decay import DEFAULT_SETS, LEPTONS, PARENTS, Decay, WilsonCoefficients, charm_name
+from .decay import DEFAULT_SETS, LEPTONS, PARENTS, Decay, charm_name
 from .exact_relations import Relation, exact_relations
 from .form_factor_set import FormFactorSet
 from .form_factor_set import form_factors as shipped
+from .lepton_couplings import Given, LeptonCouplings
 from .rates import Observables, differential_rate, observables, ratio
 
 POINTS = 81
@@ -69,23 +70,20 @@ class _Setting:
     """Everything that rates depend on but the decay."""
 
     sets: Mapping[str, FormFactorSet]
-    wilson: WilsonCoefficients | Mapping[str, complex] | None
-    tensor: str
+    couplings: LeptonCouplings
 
     def decay(self, parent: str, family: str, lepton: str) -> Decay:
-        couplings, model = (self.wilson, self.tensor) if lepton == "tau" else (None, "LO")
-        return Decay(parent, charm_name(parent, family), lepton, self.sets[transition_of(family)], couplings, model)
+        chosen, model = self.sets[transition_of(family)], self.couplings.model(lepton)
+        return Decay(parent, charm_name(parent, family), lepton, chosen, self.couplings[lepton], model)
 
     def ratio(self, parent: str, family: str) -> float:
-        chosen = self.sets[transition_of(family)]
-        return ratio(parent, charm_name(parent, family), chosen, self.wilson, self.tensor)
+        chosen, of = self.sets[transition_of(family)], self.couplings
+        return ratio(parent, charm_name(parent, family), chosen, of.tau, of.tensor, {"e": of.e, "mu": of.mu})
 
     def moved(self, transition: str, direction: int, n_sigma: float) -> _Setting:
         changed = self.sets[transition].along(direction, n_sigma, transition)
         moves = self.moved_together(transition)
-        return _Setting(
-            {name: changed if name in moves else one for name, one in self.sets.items()}, self.wilson, self.tensor
-        )
+        return replace(self, sets={name: changed if name in moves else one for name, one in self.sets.items()})
 
     def moved_together(self, transition: str) -> tuple[str, ...]:
         """Transitions with the same parameters."""
@@ -105,13 +103,15 @@ def rates_table(
     parents: Iterable[str] = PARENTS,
     leptons: Iterable[str] = LEPTONS,
     form_factors: Mapping[str, FormFactorSet | str] | None = None,
-    wilson: WilsonCoefficients | Mapping[str, complex] | None = None,
+    wilson: Given = None,
     tensor: str = "LO",
+    light: Mapping[str, Given] | None = None,
 ) -> RatesTable:
     """Observables of every mode, the ratio of every pair of parent and charmed meson, spectra of the first parent.
 
     charms : families, "D", "D*", "D1(2420)" ... form_factors : "D", "Dst", "Dss" -> set, defaults where left out.
-    wilson, tensor : on the tau only. InputError for unknown names.
+    wilson : on the tau only. light : "e", "mu" -> couplings of the decays with that lepton. tensor : of those with
+    couplings. InputError for unknown names.
 
     Errors are linear: half the difference of both sides of each direction of a covariance, in quadrature. D** rows are
     widths from their form factors; `chains` takes their branching fractions from measurements instead.
@@ -119,7 +119,7 @@ def rates_table(
     charms, parents, leptons = tuple(charms), tuple(parents), tuple(leptons)
     given = {**DEFAULT_SETS, **(form_factors or {})}
     sets = {name: shipped(one) if isinstance(one, str) else one for name, one in given.items()}
-    setting = _Setting(sets, wilson, tensor)
+    setting = _Setting(sets, LeptonCouplings.of(wilson, tensor, light))
     pairs = [(family, parent) for family in charms for parent in parents]
     decays = [(family, parent, lepton) for family, parent in pairs for lepton in leptons]
     drawn = [(family, lepton) for family in charms for lepton in ("mu", "tau") if lepton in leptons]

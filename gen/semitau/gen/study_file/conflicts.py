@@ -11,6 +11,7 @@ from collections.abc import Iterator
 import numpy as np
 from semitau.core.errors import InputError
 
+from ..decays.decay import WilsonCoefficients
 from ..decays.form_factor_set import form_factor_sets
 from .background_conflicts import background_conflicts
 from .categories import written_out
@@ -21,7 +22,6 @@ from .machine import FormFactorSource
 from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, LEPTONS, PION_DECAYS, RATIOS
 from .rules import shown, suggestion
 from .sections import Conflict, Place, Sections, missing_file
-from .wilson import Wilson
 
 RESERVED = {"data", "meta"}  # names within a template file
 MOST_BINS = 100_000
@@ -219,18 +219,28 @@ def _own_set(sections: Sections, source: FormFactorSource, transition: str) -> I
 
 
 def _couplings(sections: Sections) -> Iterator[Conflict]:
-    """Couplings act on a mode with a tau, leave it a rate, and are no function of what does nothing."""
-    if "mode" in sections.whole and not any("tau" in mode.leptons for mode in sections.modes.values()):
+    """Couplings act on a mode with their lepton, leave it a rate, and are no function of what does nothing."""
+    taken = {lepton for mode in sections.modes.values() for lepton in mode.leptons}
+    if "mode" in sections.whole and "tau" not in taken and sections.quadratic is not None:
         remedy = "Remove the table, or add a mode with a tau."
-        if sections.wilson is not None and sections.wilson != Wilson():
-            yield Conflict(("wilson",), "acts on nothing: no mode has a tau", remedy=remedy)
-        if sections.quadratic is not None:
-            yield Conflict(("quadratic",), "acts on nothing: no mode has a tau", remedy=remedy)
-    if sections.wilson is not None:
-        left = 1.0 + sections.wilson.VL
-        if max(abs(left + sections.wilson.VR), abs(left - sections.wilson.VR)) < LEAST_CURRENT:
-            got = f"1 + VL + VR = {left + sections.wilson.VR:g}, 1 + VL - VR = {left - sections.wilson.VR:g}"
-            yield Conflict(("wilson",), "cancels the current of the Standard Model", got, "another VL or VR")
+        yield Conflict(("quadratic",), "acts on nothing: no mode has a tau", remedy=remedy)
+    if sections.wilson is None:
+        return
+    given, plain = sections.wilson.by_lepton, WilsonCoefficients()
+    for lepton in LEPTONS:
+        place: Place = ("wilson",) if lepton == "tau" else ("wilson", lepton)
+        couplings, name = given[lepton], {"tau": "a tau", "e": "an electron", "mu": "a muon"}[lepton]
+        asked = couplings != plain or (lepton == "tau" and given.tensor != "LO" and given.e == given.mu == plain)
+        if asked and "mode" in sections.whole and lepton not in taken:
+            remedy = f"Remove the table, or add a mode with {name}."
+            yield Conflict(place, f"acts on nothing: no mode has {name}", remedy=remedy)
+        left = 1.0 + couplings.VL
+        if max(abs(left + couplings.VR), abs(left - couplings.VR)) < LEAST_CURRENT:
+            got = f"1 + VL + VR = {left + couplings.VR:g}, 1 + VL - VR = {left - couplings.VR:g}"
+            yield Conflict(place, "cancels the current of the Standard Model", got, "another VL or VR")
+        if lepton != "tau" and given.tensor == "EOM" and couplings.T != 0.0:
+            what = 'needs other tensor form factors: those of tensor = "EOM" are singular at small q²'
+            yield Conflict((*place, "T"), what, f"{couplings.T:g}", remedy='Take tensor = "LO", or set T = 0.')
 
 
 def _fit(sections: Sections) -> Iterator[Conflict]:

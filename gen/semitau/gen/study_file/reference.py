@@ -19,6 +19,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[experiment]": ("Experiment",),
     "[form_factors]": ("FormFactors",),
     "[wilson]": ("Wilson",),
+    "[wilson.e] and [wilson.mu]": ("Couplings",),
     "[quadratic]": ("Quadratic",),
     "[radiation]": ("RadiationSection",),
     "[[mode]]": ("Mode",),

@@ -9,6 +9,7 @@ from pydantic import BeforeValidator, Field, PlainSerializer, WithJsonSchema
 
 from ..decays.coefficients import LARGEST
 from ..decays.decay import WilsonCoefficients
+from ..decays.lepton_couplings import LeptonCouplings
 from .names import CoefficientName
 from .rules import Distinct, Table, broken
 
@@ -43,27 +44,41 @@ Scalar = Annotated[complex, _within(LARGEST["SL"]), _SHORT, _WRITTEN]
 Tensor = Annotated[complex, _within(LARGEST["T"]), _SHORT, _WRITTEN]
 
 
-class Wilson(Table):
-    """Couplings beyond the Standard Model at the b mass scale, of the modes with a tau; docs/physics.md defines them.
-
-    Each is a number, or [real, imaginary]. They act on rates, on the decays that are generated, and on the ratios that
-    the templates are made with.
-    """
+class Couplings(Table):
+    """Couplings beyond the Standard Model of the modes with a light lepton; keys as in [wilson]."""
 
     VL: Current = Field(default=0.0, description="left-handed vector current, beside the Standard Model's 1")
     VR: Current = Field(default=0.0, description="right-handed vector current")
     SL: Scalar = Field(default=0.0, description="left-handed scalar current")
     SR: Scalar = Field(default=0.0, description="right-handed scalar current")
     T: Tensor = Field(default=0.0, description="tensor current")
+
+    @property
+    def couplings(self) -> WilsonCoefficients:
+        """As the decays take them."""
+        return WilsonCoefficients(*(complex(getattr(self, name)) for name in ("VL", "VR", "SL", "SR", "T")))
+
+
+class Wilson(Couplings):
+    """Couplings beyond the Standard Model at the b mass scale, of the modes with a tau; docs/physics.md defines them.
+
+    Each is a number, or [real, imaginary]. They act on rates, on the decays that are generated, and on the ratios that
+    the templates are made with. Those of electrons and muons stand in [wilson.e] and [wilson.mu]; ratios are over the
+    mean of both.
+    """
+
     tensor: Literal["LO", "EOM", "HQE"] = Field(
         default="LO",
         description="tensor form factors: heavy-quark limit, equations of motion, or those of a heavy-quark expansion",
     )
 
+    e: Couplings = Field(default=Couplings(), description="of the modes with an electron")
+    mu: Couplings = Field(default=Couplings(), description="of the modes with a muon")
+
     @property
-    def couplings(self) -> WilsonCoefficients:
-        """As the decays of the tau take them."""
-        return WilsonCoefficients(*(complex(getattr(self, name)) for name in ("VL", "VR", "SL", "SR", "T")))
+    def by_lepton(self) -> LeptonCouplings:
+        """All of them; `couplings` are those of the tau."""
+        return LeptonCouplings(self.e.couplings, self.mu.couplings, self.couplings, self.tensor)
 
 
 class Quadratic(Table):

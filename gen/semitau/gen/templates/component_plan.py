@@ -68,9 +68,10 @@ def plan_channels(study: StudyConfig) -> tuple[ChannelPlan, ...]:
 
 def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     sets = {name: study.form_factor_set(name) for name in ("D", "Dst", "Dss")}
+    given = study.wilson.by_lepton
     chains = channels(
-        mode.parents, mode.charm, mode.leptons, tau_to=mode.tau_to,
-        form_factors=sets, wilson=study.wilson.couplings, tensor=study.wilson.tensor,
+        mode.parents, mode.charm, mode.leptons, tau_to=mode.tau_to, form_factors=sets,
+        wilson=given.tau, tensor=given.tensor, light={"e": given.e, "mu": given.mu},
     )  # fmt: skip
     expected = np.array([expected_decays(study, chain) for chain in chains])
     expected *= np.array([injected_factor(study, mode, chain.parent) for chain in chains])
@@ -160,15 +161,15 @@ def predicted_ratio(
 
     couplings : of the tau, those of the study if left out.
     """
-    of_tau = study.wilson.couplings if couplings is None else couplings
+    given = study.wilson.by_lepton if couplings is None else study.wilson.by_lepton.with_tau(couplings)
     family = CHARM_OF_RATIO[name]
     chosen = study.form_factor_set(FORM_FACTORS_OF[family])
     sums = {"e": 0.0, "mu": 0.0, "tau": 0.0}
     for parent in parents:
         tagged = parent_pairs(study, parent) * study.detector.tag.kept(parent)
         for lepton in sums:
-            wilson, tensor = (of_tau, study.wilson.tensor) if lepton == "tau" else (None, "LO")
-            decay = Decay(parent, charm_name(parent, family), lepton, chosen, wilson, tensor)
+            charm, model = charm_name(parent, family), given.model(lepton)
+            decay = Decay(parent, charm, lepton, chosen, given[lepton], model)
             sums[lepton] += tagged * semileptonic_branching_fraction(decay)
     return 2.0 * sums["tau"] / (sums["e"] + sums["mu"])
 

@@ -30,11 +30,14 @@ def command(call: Invocation, file: Path, output: Path | None) -> None:
     names = {name: str(getattr(study.form_factors, name)) for name in sets}
     charms = list(dict.fromkeys(charm for mode in study.modes for charm in mode.charm))
     parents = list(dict.fromkeys(parent for mode in study.modes for parent in mode.parents))
-    couplings, tensor = study.wilson.couplings, study.wilson.tensor
-    rates = rates_table(charms, parents=parents, form_factors=sets, wilson=couplings, tensor=tensor)
-    call.terminal.show(*rates_tables(rates, names, couplings, tensor))
+    given = study.wilson.by_lepton
+    rates = rates_table(
+        charms, parents=parents, form_factors=sets, wilson=given.tau, tensor=given.tensor,
+        light={"e": given.e, "mu": given.mu},
+    )  # fmt: skip
+    call.terminal.show(*rates_tables(rates, names, given))
     if output is not None:
         caption = "Differential rates in q², with the bands that the form factors leave open."
         drawn_spectra(rates).save(output, "spectra", "Differential rates", caption)
         call.terminal.show("", f"Picture: {output / 'spectra.svg'}, {output / 'spectra.png'}")
-    call.terminal.result(rates_document(rates, names, couplings, tensor))
+    call.terminal.result(rates_document(rates, names, given))

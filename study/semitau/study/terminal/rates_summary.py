@@ -9,6 +9,7 @@ from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
 from semitau.gen.decays.decay import WilsonCoefficients, family_of
+from semitau.gen.decays.lepton_couplings import LeptonCouplings
 from semitau.gen.decays.rates import Observables
 from semitau.gen.decays.rates_table import RatesTable
 from semitau.gen.study_file.names import LEPTON_LABEL
@@ -19,9 +20,7 @@ from ..pictures.spectra import Curve, spectra
 from .summary import plain_table
 
 
-def rates_tables(
-    rates: RatesTable, sets: Mapping[str, str], couplings: WilsonCoefficients, tensor: str
-) -> list[RenderableType]:
+def rates_tables(rates: RatesTable, sets: Mapping[str, str], couplings: LeptonCouplings) -> list[RenderableType]:
     """One table of the decays, one of the ratios, and what they were computed with."""
     table = plain_table("Decay", "BF (%)", "P", "F_L", "A_FB", "⟨q²⟩ (GeV²)")
     for mode in rates.modes:
@@ -39,26 +38,32 @@ def rates_tables(
         "BF: branching fraction; P: lepton polarisation in the W* rest frame; F_L: longitudinal fraction; A_FB > 0: "
         f"lepton away from the charm hadron. Errors are those of the form factors alone ({used})."
     )
-    beyond = {name: value for name, value in _couplings(couplings).items() if any(value)}
     lines: list[RenderableType] = [table, "", _ratio_table(rates), ""]
     if (correlation := _between_ratios(rates)) is not None:
         lines += [Text(f"Correlation of the errors of R(D) and R(D*): {signed(correlation, 2)}"), ""]
     if rates.relations:
         lines += [_relation_table(rates), ""]
     lines.append(Text(note, style="dim"))
-    if beyond:
-        given = ", ".join(f"C_{name} = {_complex(*value)}" for name, value in beyond.items())
-        lines.append(Text(f"Couplings of the τ beyond the Standard Model: {given}; tensor form factors: {tensor}."))
+    for lepton in ("tau", "mu", "e"):
+        beyond = {name: value for name, value in _couplings(couplings[lepton]).items() if any(value)}
+        if beyond:
+            given = ", ".join(f"C_{name} = {_complex(*value)}" for name, value in beyond.items())
+            what = f"Couplings of the {LEPTON_LABEL[lepton]} beyond the Standard Model"
+            lines.append(Text(f"{what}: {given}; tensor form factors: {couplings.tensor}."))
     return lines
 
 
-def rates_document(
-    rates: RatesTable, sets: Mapping[str, str], couplings: WilsonCoefficients, tensor: str
-) -> dict[str, object]:
-    """The same as plain numbers; widths in GeV, spectra in GeV^-1, couplings as [real, imaginary]."""
+def rates_document(rates: RatesTable, sets: Mapping[str, str], couplings: LeptonCouplings) -> dict[str, object]:
+    """The same as plain numbers; widths in GeV, spectra in GeV^-1, couplings as [real, imaginary], those of the light
+    leptons below `e` and `mu`."""
     return {
         "form_factors": dict(sets),
-        "wilson": {name: list(value) for name, value in _couplings(couplings).items()} | {"tensor": tensor},
+        "wilson": {
+            **_lists(couplings.tau),
+            "tensor": couplings.tensor,
+            "e": _lists(couplings.e),
+            "mu": _lists(couplings.mu),
+        },
         "modes": [
             {
                 "parent": mode.decay.parent,
@@ -144,6 +149,10 @@ def _relation_table(rates: RatesTable) -> Table:
 def _couplings(couplings: WilsonCoefficients) -> dict[str, tuple[float, float]]:
     values = {field.name: complex(getattr(couplings, field.name)) for field in fields(couplings)}
     return {name: (value.real, value.imag) for name, value in values.items()}
+
+
+def _lists(couplings: WilsonCoefficients) -> dict[str, list[float]]:
+    return {name: list(value) for name, value in _couplings(couplings).items()}
 
 
 def _complex(real: float, imaginary: float) -> str:
