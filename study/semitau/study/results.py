@@ -9,8 +9,10 @@ import json
 from pathlib import Path
 from typing import Literal
 
-from pydantic import BaseModel, ConfigDict, Field, ValidationError
+from pydantic import Field, ValidationError
 from semitau.core.errors import InputError, Problem
+
+from .result_part import Part as Part
 
 FORMAT = "semitau results"
 VERSION = 1
@@ -25,12 +27,6 @@ UNITS = {
     "yields": "relative to the expectation",
     "nuisances": "standard deviations of their constraint",
 }
-
-
-class Part(BaseModel):
-    """A frozen part of the results; unknown keys and infinite numbers are errors."""
-
-    model_config = ConfigDict(frozen=True, extra="forbid", allow_inf_nan=False)
 
 
 class StudyIdentity(Part):
