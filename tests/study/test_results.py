@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 import re
 from pathlib import Path
+from typing import get_args
 
 import pytest
 from pydantic import BaseModel, ValidationError
@@ -55,14 +56,16 @@ def test_missing_file(tmp_path: Path) -> None:
         read_results(tmp_path)
 
 
-def models(model: type[BaseModel], seen: dict[str, type[BaseModel]]) -> dict[str, type[BaseModel]]:
-    if model.__name__ not in seen:
-        seen[model.__name__] = model
-        for field in model.model_fields.values():
-            for part in re.findall(r"semitau\.study\.results\.(\w+)", str(field.annotation)):
-                import semitau.study.results as home
-
-                models(getattr(home, part), seen)
+def models(kind: object, seen: dict[str, type[BaseModel]]) -> dict[str, type[BaseModel]]:
+    """Every model that a type is made of, by its name: no two may share one."""
+    if isinstance(kind, type) and issubclass(kind, BaseModel):
+        assert seen.get(kind.__name__, kind) is kind, f"two models are called {kind.__name__}"
+        if kind.__name__ not in seen:
+            seen[kind.__name__] = kind
+            for field in kind.model_fields.values():
+                models(field.annotation, seen)
+    for part in get_args(kind):
+        models(part, seen)
     return seen
 
 

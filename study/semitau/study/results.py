@@ -12,6 +12,8 @@ from typing import Literal
 from pydantic import Field, ValidationError
 from semitau.core.errors import InputError, Problem
 
+from .averages.document import AverageResults
+from .reach.part import Reach
 from .result_part import Part as Part
 
 FORMAT = "semitau results"
@@ -50,7 +52,7 @@ class DataSource(Part):
 
 
 class RatioResult(Part):
-    """One fitted ratio beside the value that went in."""
+    """One fitted ratio, or coefficient of the templates, beside the value that went in."""
 
     name: str = Field(description="Identifier, e.g. R_D")
     label: str = Field(description="Label for people")
@@ -68,7 +70,7 @@ class Parameter(Part):
 
     name: str = Field(description="Identifier")
     label: str = Field(description="Label for people")
-    kind: str = Field(description="ratio, yield or nuisance")
+    kind: str = Field(description="ratio, yield, coefficient or nuisance")
     injected: float = Field(description="Value that the model was made with")
     constraint: float | None = Field(description="Standard deviation of its auxiliary measurement; null if free")
     value: float = Field(description="Fitted value")
@@ -378,6 +380,10 @@ class Results(Part):
     cut_flow: tuple[CutFlowComponent, ...] = Field(description="Selection per component")
     reweightings: tuple[Reweighting, ...] = Field(
         default=(), description="Effective events of what is made by weights, one entry a component and source"
+    )
+    reach: Reach | None = Field(default=None, description="What more data would bring; null if not asked for")
+    average: AverageResults | None = Field(
+        default=None, description="Average with other measurements, and what this study would change; null if not asked"
     )
     warnings: tuple[str, ...] = Field(description="What should be looked at")
     timing: Timing = Field(description="What the run cost")

@@ -1,4 +1,4 @@
-"""`average.json`: what `semitau average` found. docs/average.md explains every field."""
+"""What an average found: `average.json`, and a part of results.json. docs/average.md explains every field."""
 
 from __future__ import annotations
 
@@ -7,7 +7,7 @@ from typing import Literal
 
 from pydantic import Field
 
-from ..results import Part
+from ..result_part import Part
 
 
 class AveragedRatio(Part):
@@ -62,6 +62,13 @@ class PredictedPart(Part):
     error: float = Field(description="Its error")
 
 
+class RegionPart(Part):
+    """Where both averaged ratios lie with some probability."""
+
+    probability: float = Field(description="Probability that the region holds the true ratios")
+    outline: tuple[tuple[float, float], ...] = Field(description="Points around it, each in the order of `ratios`")
+
+
 class WhatIf(Part):
     """The average with a planned measurement."""
 
@@ -74,7 +81,7 @@ class WhatIf(Part):
 
 
 class AverageResults(Part):
-    """Everything that `semitau average` found."""
+    """An average of measurements; `average.json` holds the same."""
 
     format: Literal["semitau average"] = Field(default="semitau average", description="Always this text")
     version: Literal[1] = Field(default=1, description="Version of this layout")
@@ -94,6 +101,9 @@ class AverageResults(Part):
     prediction: tuple[PredictedPart, ...] = Field(description="What the average is compared with; empty without one")
     prediction_correlation: float = Field(description="Of the errors of the prediction")
     tension: TensionPart | None = Field(description="Null without a prediction")
+    regions: tuple[RegionPart, ...] = Field(
+        default=(), description="Regions of the two averaged ratios, what the picture shows; empty if there is one"
+    )
     planned: tuple[WhatIf, ...] = Field(description="One entry for each planned measurement and assumed outcome")
 
     def text(self) -> str:

@@ -1,0 +1,1 @@
+"""What more data would bring."""
