@@ -97,6 +97,30 @@ def test_reports_every_event() -> None:
     assert {what for what, _, _ in told} == {component.name for component in made.templates.components}
 
 
+def test_costs_count_every_event_and_take_time() -> None:
+    made = built()
+    assert list(made.costs) == [component.name for component in made.templates.components]
+    assert sum(cost.events for cost in made.costs.values()) == made.events
+    generated = dict(zip(made.cut_flow.components, made.cut_flow.generated[0].tolist(), strict=True))
+    assert {name: cost.events for name, cost in made.costs.items()} == generated
+    assert all(cost.seconds > 0.0 for cost in made.costs.values())
+
+
+def test_another_purpose_gives_independent_events() -> None:
+    """Two independent Poisson numbers of one mean: (a - b)²/(a + b) has mean 1 where a bin holds many events, and the
+    sum of m of them variance of about 2m."""
+    one, two = built().templates, build_templates(seeded(), workers=1, purpose="another").templates
+    squares, bins = 0.0, 0
+    for key, template in one.templates.items():
+        other = two.templates[key]
+        filled = (template.nominal**2 > 25 * template.variance) & (other.nominal**2 > 25 * other.variance)
+        difference = (template.nominal - other.nominal)[filled]
+        squares += float((difference**2 / (template.variance + other.variance)[filled]).sum())
+        bins += int(filled.sum())
+    assert bins > 100
+    assert min(stats.chi2.cdf(squares, bins), stats.chi2.sf(squares, bins)) > UNLIKELY
+
+
 def test_expected_numbers_follow_from_rates() -> None:
     """Events before the detector: 2 N share B ε ε, summed over the chains of a component; R from the rates."""
     made = seeded()

@@ -4,7 +4,8 @@ from __future__ import annotations
 
 import time
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from types import MappingProxyType
 
 import numpy as np
 import numpy.typing as npt
@@ -26,23 +27,39 @@ NEGLIGIBLE = 1e-6
 """A variation that changes no bin of a template by this share is left out of it."""
 
 
+@dataclass(frozen=True)
+class Cost:
+    """Generated events of a component, and the time of its threads in seconds.
+
+    The time is that of the middle chunk of each of its chains, so that a chunk that had to wait for the compiler does
+    not count, unless the chain has no other.
+    """
+
+    events: int
+    seconds: float
+
+
 @dataclass(frozen=True, eq=False)
 class Build:
     """Templates, the cut flow behind them, generated events, and timing: seconds of "wall" clock and of "kernels"
-    (threads added up); effective events of every variation made by weights."""
+    (threads added up); effective events of every variation made by weights; component -> what it cost."""
 
     templates: TemplateSet
     cut_flow: CutFlow
     events: int
     timing: Mapping[str, float]
     reweightings: tuple[Reweighting, ...] = ()
+    costs: Mapping[str, Cost] = field(default_factory=lambda: MappingProxyType({}))
 
 
-def build_templates(study: StudyConfig, workers: int | None = None, report: Report | None = None) -> Build:
+def build_templates(
+    study: StudyConfig, workers: int | None = None, report: Report | None = None, purpose: str = "templates"
+) -> Build:
     """Templates of all components in all categories, with all variations.
 
     workers : threads, None for all cores; the result is the same to the last bit for any number.
     report : called with the component at work, done and all generated events.
+    purpose : names the random streams: another word gives events that are independent of the templates.
 
     Raises
     ------
@@ -54,11 +71,14 @@ def build_templates(study: StudyConfig, workers: int | None = None, report: Repo
     bench = make_bench(study, variations=True)
     components, parameters = components_and_parameters(study)
     sums = {component.name: ComponentSums(bench) for component in components}
+    costs = {component.name: Cost(0, 0.0) for component in components}
     events, seconds = 0, 0.0
-    for part, whole in run_parts(component_parts(study, bench, "templates"), bench, workers, report):
+    for part, whole in run_parts(component_parts(study, bench, purpose), bench, workers, report):
         sums[part.component].add(part, whole)
         events += whole.events
         seconds += whole.seconds
+        before = costs[part.component]
+        costs[part.component] = Cost(before.events + whole.events, before.seconds + whole.steady_seconds)
     flow = _cut_flow(study, sums)
     flow.check()
     templates = TemplateSet(
@@ -72,7 +92,7 @@ def build_templates(study: StudyConfig, workers: int | None = None, report: Repo
     )
     reweightings = tuple(found for name, part in sums.items() for found in part.reweightings(name))
     timing = {"wall": time.perf_counter() - start, "kernels": seconds}
-    return Build(templates, flow, events, timing, reweightings)
+    return Build(templates, flow, events, timing, reweightings, MappingProxyType(costs))
 
 
 def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:

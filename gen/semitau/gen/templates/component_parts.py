@@ -22,6 +22,9 @@ Floats = npt.NDArray[np.float64]
 Report = Callable[[str, int, int | None], None]
 """Called as report(what, done, total) from the calling thread."""
 
+PACES_AT_MOST = 1000
+"""Chunks of a part whose pace is kept."""
+
 
 @dataclass(frozen=True, eq=False)
 class Part:
@@ -56,6 +59,7 @@ class PartSums:
     def __init__(self, bench: Bench, part: Part) -> None:
         self.events = 0
         self.seconds = 0.0
+        self._paces: list[float] = []
         pieces = 0 if part.contraction is None else part.contraction.shape[1]
         self.sums = bench.sums(1 + len(part.columns), part.weights, pieces)
 
@@ -63,6 +67,8 @@ class PartSums:
         """One more chunk."""
         self.events += filled.events
         self.seconds += filled.seconds
+        if filled.events and len(self._paces) < PACES_AT_MOST:
+            self._paces.append(filled.seconds / filled.events)
         for total, part in zip(self.sums, filled.sums, strict=True):
             np.add(total, part, out=total)
 
@@ -70,6 +76,11 @@ class PartSums:
     def histogram(self) -> Floats:
         """(bins, columns) of `sums`."""
         return self.sums.histogram
+
+    @property
+    def steady_seconds(self) -> float:
+        """Time of all events at the pace of the middle chunk."""
+        return self.events * float(np.median(self._paces)) if self._paces else 0.0
 
 
 def component_parts(study: StudyConfig, bench: Bench, *purpose: str | int) -> list[Part]:
