@@ -40,8 +40,9 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         "[selection]",
         "[seletion]\nel = { min = 1 }\n[selection]",
         (
-            "seletion: unknown key (allowed study, experiment, form_factors, wilson, radiation, quadratic, mode, "
-            "double_charm, background, detector, selection, category, variation, fit, toys, import, blinding). "
+            "seletion: unknown key (allowed study, experiment, form_factors, branching_fractions, wilson, radiation, "
+            "quadratic, mode, double_charm, background, detector, selection, category, variation, fit, toys, import, "
+            "blinding). "
             'Did you mean "selection"?'
         ),
     ),

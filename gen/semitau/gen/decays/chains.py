@@ -8,6 +8,7 @@ from dataclasses import dataclass, replace
 from semitau.core.constants import BRANCHING_FRACTION, LIFETIME, MASS
 from semitau.core.errors import InputError, Problem
 
+from .branching_fractions import FROM_TABLES, BranchingFractions
 from .decay import CHARMS, DEFAULT_SETS, LEPTONS, PARENTS, Decay, WilsonCoefficients, charm_name
 from .form_factor_set import FormFactorSet
 from .lepton_couplings import Given, LeptonCouplings
@@ -16,22 +17,6 @@ from .rates import observables, ratio
 
 PION_MASS = {"none": 0.0, "charged": MASS["pi+"], "neutral": MASS["pi0"], "eta": MASS["eta"]}
 SOFT_MASS = {"none": 0.0, "charged_pion": MASS["pi+"], "neutral_pion": MASS["pi0"], "photon": 0.0}
-
-# Species of the D* -> (species of the D, kind of soft particle, branching fraction).
-VECTOR_DECAYS = {
-    "D*+": tuple(
-        (ground, soft, BRANCHING_FRACTION["D*+"][mode])
-        for ground, soft, mode in (
-            ("D0", "charged_pion", "D0 pi+"),
-            ("D+", "neutral_pion", "D+ pi0"),
-            ("D+", "photon", "D+ gamma"),
-        )
-    ),
-    "D*0": tuple(
-        (ground, soft, BRANCHING_FRACTION["D*0"][mode])
-        for ground, soft, mode in (("D0", "neutral_pion", "D0 pi0"), ("D0", "photon", "D0 gamma"))
-    ),
-}
 
 
 @dataclass(frozen=True)
@@ -148,6 +133,7 @@ def channels(
     wilson: Given = None,
     tensor: str = "LO",
     light: Mapping[str, Given] | None = None,
+    fractions: BranchingFractions = FROM_TABLES,
 ) -> tuple[Channel, ...]:
     """Every chain from these parents through these charmed mesons and leptons, in that order.
 
@@ -159,7 +145,7 @@ def channels(
 
     Branching fractions: of D and D* from the widths with the shipped |V_cb|; of D** and continua with light
     leptons from measured averages, times what couplings do to the width; with a tau these averages times the ratio of
-    the form factors; of tau and D* from the particle data tables.
+    the form factors; of tau and D* from the particle data tables. fractions : others instead of these.
     InputError lists names that are unknown.
     """
     parents, charms, leptons, tau_to = tuple(parents), tuple(charms), tuple(leptons), tuple(tau_to)
@@ -176,44 +162,67 @@ def channels(
                 chosen = (form_factors or {}).get(transition, DEFAULT_SETS[transition])
                 charm, model = charm_name(parent, family), couplings.model(lepton)
                 decay = Decay(parent, charm, lepton, chosen, couplings[lepton], model)
-                found.extend(chains_of(decay, tau_to))
+                found.extend(chains_of(decay, tau_to, fractions))
     return tuple(found)
 
 
-def semileptonic_branching_fraction(decay: Decay) -> float:
-    """Of B -> X_c l nu; for D** of the part that ends in D(*) pi or D pi pi."""
+def semileptonic_branching_fraction(decay: Decay, fractions: BranchingFractions = FROM_TABLES) -> float:
+    """Of B -> X_c l nu; for D** of the part that ends in D(*) pi or D pi pi.
+
+    What is given for one B alone changes the width of the other by the same factor.
+    """
     state = decay.orbital
     if state is None:
-        return observables(decay).branching_fraction
-    light = state.light_branching_fraction * (1.0 + state.to_two_pions) * decay.lifetime / LIFETIME["B+"]
+        own = observables(decay).branching_fraction
+        return own * _given_over_computed(decay, fractions)
+    known = fractions.state(decay.family)
+    light = known.light_branching_fraction * (1.0 + known.to_two_pions) * decay.lifetime / LIFETIME["B+"]
+    for parent in (decay.parent, *PARENTS):
+        if (given := fractions.semileptonic(parent, decay.family)) is not None:
+            light = given * decay.lifetime / LIFETIME[parent]
+            break
     if decay.lepton != "tau":
         if decay.couplings == WilsonCoefficients():
             return light
         return light * observables(decay).rate / observables(replace(decay, wilson=None, tensor="LO")).rate
+    if decay.family in fractions.ratios:
+        return light * fractions.ratios[decay.family].value
     return light * ratio(decay.parent, decay.charm, decay.form_factors, decay.couplings, decay.tensor)
 
 
-def chains_of(decay: Decay, tau_to: tuple[str, ...]) -> Iterator[Channel]:
+def _given_over_computed(decay: Decay, fractions: BranchingFractions) -> float:
+    """Of B -> D(*) l nu, mean of e and mu; 1 if none is given."""
+    for parent in (decay.parent, *PARENTS):
+        if (given := fractions.semileptonic(parent, decay.family)) is not None:
+            light = [
+                observables(Decay(parent, charm_name(parent, decay.family), lepton, decay.form_factors))
+                for lepton in ("e", "mu")
+            ]
+            return given / (0.5 * sum(one.branching_fraction for one in light))
+    return 1.0
+
+
+def chains_of(decay: Decay, tau_to: tuple[str, ...], fractions: BranchingFractions = FROM_TABLES) -> Iterator[Channel]:
     """Every chain of one decay; the decays of the tau in `tau_to`, which a light lepton does not look at."""
-    start = semileptonic_branching_fraction(decay)
+    start = semileptonic_branching_fraction(decay, fractions)
     if decay.lepton == "tau":
-        leptonic: list[tuple[str | None, float]] = [(name, BRANCHING_FRACTION["tau"][name]) for name in tau_to]
+        leptonic: list[tuple[str | None, float]] = [(name, fractions.value("tau", name)) for name in tau_to]
     else:
         leptonic = [(None, 1.0)]
     for tau, tau_fraction in leptonic:
-        for bachelor, second, vector, soft, ground, fraction in _charm_chains(decay):
+        for bachelor, second, vector, soft, ground, fraction in _charm_chains(decay, fractions):
             yield Channel(decay, tau, bachelor, vector, soft, ground, start * tau_fraction * fraction, second)
 
 
-def _charm_chains(decay: Decay) -> Iterator[tuple[str, str, str, str, str, float]]:
+def _charm_chains(decay: Decay, fractions: BranchingFractions) -> Iterator[tuple[str, str, str, str, str, float]]:
     """Bachelor, second pion, D*, soft particle, D, share of the chain."""
     charge = "+" if decay.parent == "B0" else "0"
     if decay.orbital is None:
         parts = [("none", "none", "D*" in decay.charm, charge, 1.0)]
     else:
-        parts = [part for part in _light_mesons(decay.orbital, charge) if part[-1] > 0.0]
+        parts = [part for part in _light_mesons(fractions.state(decay.family), charge) if part[-1] > 0.0]
     for bachelor, second, is_vector, daughter_charge, share in parts:
-        for vector, soft, ground, fraction in _hadron_chains(is_vector, daughter_charge):
+        for vector, soft, ground, fraction in _hadron_chains(is_vector, daughter_charge, fractions):
             yield bachelor, second, vector, soft, ground, share * fraction
 
 
@@ -238,13 +247,15 @@ def _pion_pairs(is_vector: bool, charge: str, share: float) -> Iterator[tuple[st
         yield first, second, is_vector, charge if first == second else other, share * isospin
 
 
-def _hadron_chains(is_vector: bool, charge: str) -> Iterator[tuple[str, str, str, float]]:
+def _hadron_chains(
+    is_vector: bool, charge: str, fractions: BranchingFractions
+) -> Iterator[tuple[str, str, str, float]]:
     """D*, soft particle, D, share."""
     if not is_vector:
         yield "", "none", "D" + charge, 1.0
         return
     vector = "D*" + charge
-    for ground, soft, fraction in VECTOR_DECAYS[vector]:
+    for ground, soft, fraction in fractions.vector_decays[vector]:
         yield vector, soft, ground, fraction
 
 

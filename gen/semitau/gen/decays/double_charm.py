@@ -10,11 +10,12 @@ from __future__ import annotations
 from collections.abc import Iterable, Iterator
 from dataclasses import dataclass
 
-from semitau.core.charm_fractions import STRANGE_VECTOR_PHOTON, TO_LEPTONS, TO_TWO_CHARMED, Fraction
-from semitau.core.constants import BRANCHING_FRACTION, MASS
+from semitau.core.charm_fractions import Fraction
+from semitau.core.constants import MASS
 from semitau.core.errors import InputError, Problem
 
-from .chains import SOFT_MASS, VECTOR_DECAYS, Channel
+from .branching_fractions import FROM_TABLES, BranchingFractions
+from .chains import SOFT_MASS, Channel
 from .charm_semileptonic import muon_over_electron
 from .decay import DEFAULT_SETS, LEPTONS, PARENTS, Decay, charm_name
 from .form_factor_set import FormFactorSet
@@ -38,6 +39,7 @@ class DoubleCharmChain:
     lepton : of the meson's decay, "e", "mu" or "tau". tau_to : "e" or "mu" for a tau, else None.
     branching_fraction : of the whole chain for one B of this kind, up to the D, whose own decay is not part of it.
     form_factors : set of B -> D*, for the helicities in B -> D* D_s*.
+    photon_share : of photons among the neutral pions and photons of the partner's decay to `meson`.
     """
 
     parent: str
@@ -54,6 +56,7 @@ class DoubleCharmChain:
     tau_to: str | None
     branching_fraction: float
     form_factors: FormFactorSet | str
+    photon_share: float
 
     @property
     def bachelor(self) -> str:
@@ -164,11 +167,12 @@ def double_charm_chains(
     leptons: Iterable[str] = LEPTONS,
     *,
     form_factors: FormFactorSet | str = DEFAULT_SETS["Dst"],
+    fractions: BranchingFractions = FROM_TABLES,
 ) -> tuple[DoubleCharmChain, ...]:
     """Every chain of these parents to these reconstructed mesons with these companions.
 
     parents : of "B+", "B0". charms : of FIRST. beside : of BESIDE. leptons : of the charm decay, of "e", "mu", "tau"; a
-    tau goes on to e and mu. form_factors : of B -> D*.
+    tau goes on to e and mu. form_factors : of B -> D*. fractions : instead of those of the tables.
 
     InputError lists names that are unknown.
     """
@@ -184,7 +188,7 @@ def double_charm_chains(
     ]
     if problems:
         raise InputError(*problems)
-    return tuple(_chains(*chosen, form_factors))
+    return tuple(_chains(*chosen, form_factors, fractions))
 
 
 def _chains(
@@ -193,34 +197,36 @@ def _chains(
     beside: tuple[str, ...],
     leptons: tuple[str, ...],
     form_factors: FormFactorSet | str,
+    fractions: BranchingFractions,
 ) -> Iterator[DoubleCharmChain]:
     for parent in parents:
-        for (family, partner, *rest), decay in TO_TWO_CHARMED[parent].items():
+        for (family, partner, *rest), decay in fractions.to_two_charmed(parent).items():
             if family not in charms or class_of((partner, *rest)) not in beside:
                 continue
             kaon = rest[0] if rest else ""
-            for vector, soft, ground, first in _first_meson(parent, family):
-                for meson, beside_soft, second in _partner(partner):
-                    for hadron, lepton, tau_to, third in _lepton_sources(meson):
+            for vector, soft, ground, first in _first_meson(parent, family, fractions):
+                for meson, beside_soft, second in _partner(partner, fractions):
+                    photons = _photon_share(partner, meson, fractions)
+                    for hadron, lepton, tau_to, third in _lepton_sources(meson, fractions):
                         fraction = decay.value * first * second * third
                         if lepton in leptons:
                             yield DoubleCharmChain(
                                 parent, family, vector, soft, ground, partner, kaon, beside_soft, meson, hadron, lepton,
-                                tau_to, fraction, form_factors,
+                                tau_to, fraction, form_factors, photons,
                             )  # fmt: skip
 
 
-def _first_meson(parent: str, family: str) -> Iterator[tuple[str, str, str, float]]:
+def _first_meson(parent: str, family: str, fractions: BranchingFractions) -> Iterator[tuple[str, str, str, float]]:
     """D*, soft particle, D, share."""
     charge = "+" if parent == "B0" else "0"
     if family == "D":
         yield "", "none", "D" + charge, 1.0
         return
-    for ground, soft, share in VECTOR_DECAYS["D*" + charge]:
+    for ground, soft, share in fractions.vector_decays["D*" + charge]:
         yield "D*" + charge, soft, ground, share
 
 
-def _partner(partner: str) -> Iterator[tuple[str, str, float]]:
+def _partner(partner: str, fractions: BranchingFractions) -> Iterator[tuple[str, str, float]]:
     """Meson that decays weakly, soft particle, share; neutral pions and photons go together."""
     if partner == "D_s*+":
         yield "D_s+", "neutral", 1.0
@@ -228,31 +234,33 @@ def _partner(partner: str) -> Iterator[tuple[str, str, float]]:
         yield partner, "none", 1.0
     else:
         shares: dict[tuple[str, str], float] = {}
-        for ground, soft, share in VECTOR_DECAYS[partner]:
+        for ground, soft, share in fractions.vector_decays[partner]:
             kind = ground, "charged_pion" if soft == "charged_pion" else "neutral"
             shares[kind] = shares.get(kind, 0.0) + share
         for (ground, soft), share in shares.items():
             yield ground, soft, share
 
 
-def photon_share(partner: str, meson: str) -> float:
+def _photon_share(partner: str, meson: str, fractions: BranchingFractions) -> float:
     """Of photons among the neutral pions and photons of partner -> meson."""
     if partner == "D_s*+":
-        return STRANGE_VECTOR_PHOTON.value
+        return fractions.value(partner, "D_s+ gamma")
     if partner == meson:
         return 0.0
     neutral = {
-        soft: share for ground, soft, share in VECTOR_DECAYS[partner] if ground == meson and soft != "charged_pion"
+        soft: share
+        for ground, soft, share in fractions.vector_decays[partner]
+        if ground == meson and soft != "charged_pion"
     }
     return neutral.get("photon", 0.0) / sum(neutral.values()) if neutral else 0.0
 
 
-def _lepton_sources(meson: str) -> Iterator[tuple[str, str, str | None, float]]:
+def _lepton_sources(meson: str, fractions: BranchingFractions) -> Iterator[tuple[str, str, str | None, float]]:
     """Hadron, lepton, daughter of a tau, branching fraction."""
-    for (product,), fraction in TO_LEPTONS[meson].items():
+    for (product,), fraction in fractions.to_leptons(meson).items():
         if product == "tau":
             for lepton in ("e", "mu"):
-                yield "", "tau", lepton, fraction.value * BRANCHING_FRACTION["tau"][lepton]
+                yield "", "tau", lepton, fraction.value * fractions.value("tau", lepton)
         elif product == "mu":
             yield "", "mu", None, fraction.value
         else:

@@ -17,6 +17,7 @@ from .background_conflicts import background_conflicts
 from .categories import written_out
 from .chosen_sets import chosen_set, sets_describing, sound_set
 from .double_charm_conflicts import double_charm_conflicts
+from .fraction_conflicts import fraction_conflicts
 from .idle_variations import idle_variations, nuisance_names
 from .machine import FormFactorSource
 from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, LEPTONS, PION_DECAYS, RATIOS
@@ -31,8 +32,8 @@ LEAST_CURRENT = 1e-3  # below, decays with a tau have no rate to draw from, or t
 def conflicts(sections: Sections) -> list[Conflict]:
     """Everything that is wrong between the tables."""
     checks = (
-        _names, _modes, _ratios, _categories, _pions, double_charm_conflicts, background_conflicts, _form_factors,
-        _couplings, _tensor_model, idle_variations, _fit,
+        _names, _modes, _ratios, _categories, _pions, double_charm_conflicts, background_conflicts, fraction_conflicts,
+        _form_factors, _couplings, _tensor_model, idle_variations, _fit,
     )  # fmt: skip
     return [conflict for check in checks for conflict in check(sections)]
 

@@ -14,6 +14,8 @@ from semitau.core.errors import InputError, Problem
 
 from .conflicts import conflicts
 from .faults import conflict
+from .fractions import BranchingFractionTables
+from .machine import Experiment
 from .places import key_of
 from .sections import COMPONENTS, SECTIONS, Conflict, Sections
 from .study import CONFLICTS, StudyConfig
@@ -134,6 +136,8 @@ def _sound_sections(data: Mapping[str, Any], folder: Path) -> Sections:
         name: _sound(TypeAdapter(StudyConfig.model_fields[name].rebuild_annotation()), data.get(name, {}))
         for name in ("selection", "detector", "form_factors", "fit", "wilson")
     }
+    single["experiment"] = _sound(TypeAdapter(Experiment), data.get("experiment", {}))
+    single["fractions"] = _sound(TypeAdapter(BranchingFractionTables), data.get("branching_fractions", {}))
     single["quadratic"] = _sound(TypeAdapter(Quadratic), data["quadratic"]) if "quadratic" in data else None
     return Sections(
         modes=sound["mode"],

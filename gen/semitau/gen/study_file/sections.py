@@ -12,7 +12,8 @@ from .components import Background, Mode
 from .detector import Detector
 from .double_charm import DoubleCharm
 from .fit import FitSection
-from .machine import FormFactors
+from .fractions import BranchingFractionTables
+from .machine import Experiment, FormFactors
 from .rules import shown
 from .variations import Variation
 from .wilson import Quadratic, Wilson
@@ -55,6 +56,8 @@ class Sections:
     folder: Path | None = None
     wilson: Wilson | None = None
     quadratic: Quadratic | None = None
+    experiment: Experiment | None = None
+    fractions: BranchingFractionTables | None = None
 
     @property
     def categories(self) -> dict[str, StudyCategory]:

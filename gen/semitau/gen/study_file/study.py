@@ -15,6 +15,7 @@ from typing import Any
 from pydantic import Field, PrivateAttr, ValidationInfo, model_validator
 from pydantic_core import PydanticCustomError
 
+from ..decays.branching_fractions import BranchingFractions
 from ..decays.form_factor_set import FormFactorSet
 from .blinding import Blinding
 from .categories import CategoryTable, Cuts, StudyCategory, written_out
@@ -24,6 +25,7 @@ from .conflicts import conflicts
 from .detector import Detector
 from .double_charm import DoubleCharm
 from .fit import FitSection, Toys
+from .fractions import BranchingFractionTables
 from .imports import Imports
 from .machine import Experiment, FormFactors, StudySection
 from .names import OBSERVABLES
@@ -43,6 +45,7 @@ class StudyConfig(Table):
     study: StudySection
     experiment: Experiment
     form_factors: FormFactors = FormFactors()
+    branching_fractions: BranchingFractionTables = BranchingFractionTables()
     wilson: Wilson = Wilson()
     radiation: RadiationSection = RadiationSection()
     quadratic: Quadratic | None = Field(default=None, description="templates as functions of [wilson]")
@@ -98,6 +101,8 @@ class StudyConfig(Table):
             wilson=self.wilson,
             quadratic=self.quadratic,
             fit=self.fit,
+            experiment=self.experiment,
+            fractions=self.branching_fractions,
             whole=frozenset(SECTIONS),
             components=frozenset(item.name for item in self.components),
             folder=folder,
@@ -131,6 +136,11 @@ class StudyConfig(Table):
     def form_factor_set(self, transition: str) -> FormFactorSet:
         """The set chosen for "D", "Dst" or "Dss". InputError if its file is not sound (any more)."""
         return chosen_set(getattr(self.form_factors, transition), transition, self._path.parent)
+
+    @property
+    def fractions(self) -> BranchingFractions:
+        """Branching fractions that decay chains are made with."""
+        return self.branching_fractions.fractions
 
     @property
     def variations(self) -> tuple[SingleVariation, ...]:

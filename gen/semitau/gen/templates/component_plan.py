@@ -72,6 +72,7 @@ def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     chains = channels(
         mode.parents, mode.charm, mode.leptons, tau_to=mode.tau_to, form_factors=sets,
         wilson=given.tau, tensor=given.tensor, light={"e": given.e, "mu": given.mu},
+        fractions=study.fractions,
     )  # fmt: skip
     expected = np.array([expected_decays(study, chain) for chain in chains])
     expected *= np.array([injected_factor(study, mode, chain.parent) for chain in chains])
@@ -94,8 +95,9 @@ def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
 
 def _plan_double_charm(study: StudyConfig, item: DoubleCharm) -> list[ChannelPlan]:
     chains = double_charm_chains(
-        item.parents, item.charm, item.beside, item.leptons, form_factors=study.form_factor_set("Dst")
-    )
+        item.parents, item.charm, item.beside, item.leptons,
+        form_factors=study.form_factor_set("Dst"), fractions=study.fractions,
+    )  # fmt: skip
     expected = np.array([expected_decays(study, chain) for chain in chains])
     _check_expected(expected, f"double_charm {item.name}")
     whole = [(chain, float(n)) for chain, n in zip(chains, expected, strict=True)]
@@ -170,7 +172,7 @@ def predicted_ratio(
         for lepton in sums:
             charm, model = charm_name(parent, family), given.model(lepton)
             decay = Decay(parent, charm, lepton, chosen, given[lepton], model)
-            sums[lepton] += tagged * semileptonic_branching_fraction(decay)
+            sums[lepton] += tagged * semileptonic_branching_fraction(decay, study.fractions)
     return 2.0 * sums["tau"] / (sums["e"] + sums["mu"])
 
 

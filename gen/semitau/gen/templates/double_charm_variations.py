@@ -9,7 +9,6 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 
 import numpy as np
-from semitau.core.charm_fractions import TO_LEPTONS, TO_TWO_CHARMED
 
 from ..decays.double_charm import DoubleCharmChain, relative_error
 from ..study_file.study import StudyConfig
@@ -24,7 +23,7 @@ def double_charm_variations(study: StudyConfig, whole: Expected) -> Iterator[Cha
     leptons = [category.lepton for category in study.categories]
     variations = study.variations
     shares = [variation for variation in variations if isinstance(variation, DoubleCharmShare)]
-    changes = [(variation, *_change(variation, whole)) for variation in shares]
+    changes = [(variation, *_change(study, variation, whole)) for variation in shares]
     for chain, _ in whole:
         soft, factors = common_variations(study, variations, chain, leptons)
         for variation, share, relative in changes:
@@ -42,7 +41,7 @@ def belongs(chain: DoubleCharmChain, variation: DoubleCharmShare) -> bool:
     return chain.beside == variation.beside if variation.beside is not None else chain.source == variation.source
 
 
-def _change(variation: DoubleCharmShare, whole: Expected) -> tuple[float, float]:
+def _change(study: StudyConfig, variation: DoubleCharmShare, whole: Expected) -> tuple[float, float]:
     """Share of the part in the component, and one standard deviation of it, relative."""
     weights: dict[tuple[str, ...], float] = {}
     for chain, expected in whole:
@@ -52,6 +51,7 @@ def _change(variation: DoubleCharmShare, whole: Expected) -> tuple[float, float]
     share = sum(weights.values()) / sum(expected for _, expected in whole)
     if variation.relative is not None or not weights:
         return share, variation.relative or 0.0
-    fractions = TO_TWO_CHARMED if variation.beside is not None else TO_LEPTONS
-    rows = ((weight, fractions[key[0]][key[1:]]) for key, weight in weights.items())
+    known = study.fractions
+    of = known.to_two_charmed if variation.beside is not None else known.to_leptons
+    rows = ((weight, of(key[0])[key[1:]]) for key, weight in weights.items())
     return share, relative_error((weight / fraction.value, fraction) for weight, fraction in rows)

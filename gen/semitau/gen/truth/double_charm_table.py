@@ -17,7 +17,7 @@ from semitau.core.constants import MASS
 from ..decays.amplitudes import helicity_amplitudes
 from ..decays.charm_semileptonic import CharmDecay, angular_terms, q2_density, q2_of_position
 from ..decays.decay import Decay
-from ..decays.double_charm import DoubleCharmChain, photon_share
+from ..decays.double_charm import DoubleCharmChain
 from .alias import interval_table
 from .channel_table import visible_table
 from .tau_decay import energy_range
@@ -89,7 +89,7 @@ def double_charm_table(chain: DoubleCharmChain) -> DoubleCharmTable:
         beside_mass=MASS["pi+" if chain.beside_soft == "charged_pion" else "pi0"]
         if chain.partner != chain.meson
         else 0.0,
-        photon_share=photon_share(chain.partner, chain.meson),
+        photon_share=chain.photon_share,
         plus=plus,
         minus=minus,
         zero=zero,
