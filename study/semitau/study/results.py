@@ -13,6 +13,7 @@ from pydantic import Field, ValidationError
 from semitau.core.errors import InputError, Problem
 
 from .averages.document import AverageResults
+from .bias.part import Bias
 from .reach.part import Reach
 from .result_part import Part as Part
 
@@ -380,6 +381,9 @@ class Results(Part):
     cut_flow: tuple[CutFlowComponent, ...] = Field(description="Selection per component")
     reweightings: tuple[Reweighting, ...] = Field(
         default=(), description="Effective events of what is made by weights, one entry a component and source"
+    )
+    bias: Bias | None = Field(
+        default=None, description="What alternatives do to the ratios; null without [[alternative]]"
     )
     reach: Reach | None = Field(default=None, description="What more data would bring; null if not asked for")
     average: AverageResults | None = Field(

@@ -24,7 +24,7 @@ class BiasStudy(Part):
 
     name: str = Field(description='Identifier; "nominal" for the study itself')
     label: str = Field(description="Label for people")
-    changes: tuple[BiasChange, ...] = Field(description="Keys of the study file that differ; empty for the study itself")
+    changes: tuple[BiasChange, ...] = Field(description="Keys of the study file that differ; none for the study itself")
     covered_by: tuple[str, ...] = Field(
         description="Variations or groups meant to cover it; empty for the whole systematic error"
     )
