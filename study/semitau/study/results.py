@@ -14,6 +14,8 @@ from semitau.core.errors import InputError, Problem
 
 from .averages.document import AverageResults
 from .bias.part import Bias
+from .design.part import Design
+from .inputs.part import Inputs
 from .reach.part import Reach
 from .result_part import Part as Part
 
@@ -385,10 +387,12 @@ class Results(Part):
     bias: Bias | None = Field(
         default=None, description="What alternatives do to the ratios; null without [[alternative]]"
     )
+    design: Design | None = Field(default=None, description="The best selection and binning; null without [design]")
     reach: Reach | None = Field(default=None, description="What more data would bring; null if not asked for")
     average: AverageResults | None = Field(
         default=None, description="Average with other measurements, and what this study would change; null if not asked"
     )
+    inputs: Inputs | None = Field(default=None, description="What went in; null in results of before it was kept")
     warnings: tuple[str, ...] = Field(description="What should be looked at")
     timing: Timing = Field(description="What the run cost")
 

@@ -1,0 +1,1 @@
+"""Design: the selection and binning with the smallest total expected error."""
