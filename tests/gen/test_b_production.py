@@ -66,3 +66,17 @@ def test_production_ratio(tmp_path: Path) -> None:
         assert (up / down - 1) / (sign * 0.05) == pytest.approx(1.0, rel=1e-9)
         assert charged * up + (1 - charged) * down == pytest.approx(1.0, rel=1e-12)
         assert (factors["B+"] == up).all()
+
+
+@pytest.mark.parametrize(("share", "left"), [("0", "B0"), ("1", "B+")])
+def test_production_ratio_of_one_species(tmp_path: Path, share: str, left: str) -> None:
+    """Nothing to move between: told, not passed over."""
+    path = tmp_path / "study.toml"
+    variation = '[[variation]]\nname = "ratio"\nkind = "production_ratio"\nrelative = 0.05\n'
+    path.write_text(TEXT.replace("b_pairs = 1e8", f"b_pairs = 1e8\ncharged_fraction = {share}") + variation)
+    with pytest.raises(InputError) as error:
+        read_study(path)
+    assert (
+        f"variation[ratio]: acts on nothing: there are {left} alone (got [experiment] charged_fraction = {share})"
+        in (str(error.value))
+    )

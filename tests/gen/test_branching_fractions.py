@@ -289,3 +289,24 @@ def test_documented_example(tmp_path: Path) -> None:
     (example,) = re.findall(r"```toml\n(\[branching_fractions\].*?)```", DOCS.read_text(encoding="utf-8"), re.DOTALL)
     text = TEXT.replace('leptons = ["e", "mu"]\nyield', 'leptons = ["e", "mu", "tau"]\nyield')
     assert study_with(tmp_path, example, text).fractions.ratios == {"D1(2420)": (0.09, 0.0)}
+
+
+# --- variations of shares -------------------------------------------------------------------------------------------
+
+
+def test_a_varied_share_does_not_pass_one(tmp_path: Path) -> None:
+    """D1 is 0.0063 of 0.0063 + 0.0033, 66%, a little more by the charm efficiencies: 60% more of it pass the whole."""
+    variation = '[[variation]]\nname = "narrow"\nkind = "fraction"\ncharm = "D1(2420)"\nrelative = {}\n'
+    plan_channels(study_with(tmp_path, variation.format(0.5)))
+    message = r"variation narrow: the varied share of Dss passes 1 \(got 0.66\d* × 1.6, allowed relative up to 0.5\d*\)"
+    with pytest.raises(InputError, match=message):
+        plan_channels(study_with(tmp_path, variation.format(0.6)))
+
+
+def test_a_varied_share_of_double_charm_does_not_pass_one(tmp_path: Path) -> None:
+    variation = '[[variation]]\nname = "strange"\nkind = "double_charm_share"\nbeside = "D_s"\nrelative = {}\n'
+    plan_channels(study_with(tmp_path, DOUBLE_CHARM + variation.format(0.1)))
+    with pytest.raises(
+        InputError, match=r"variation strange: the varied share of cc passes 1 \(got .* × 1.99, allowed"
+    ):
+        plan_channels(study_with(tmp_path, DOUBLE_CHARM + variation.format(0.99)))

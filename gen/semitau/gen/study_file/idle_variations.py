@@ -19,6 +19,7 @@ from .variations import (
     FormFactorDirections,
     LeptonIdentificationEfficiency,
     Misidentification,
+    ProductionRatio,
     SoftPionEfficiency,
     Variation,
 )
@@ -40,6 +41,12 @@ def idle_variations(sections: Sections) -> Iterator[Conflict]:
                     yield from _form_factor(sections, place, variation)
             case ComponentFraction():
                 yield from _fraction(sections, place, variation)
+            case ProductionRatio():
+                share = sections.experiment.charged_fraction if sections.experiment is not None else 0.5
+                if share in (0.0, 1.0):
+                    what = f"acts on nothing: there are {'B0' if share == 0.0 else 'B+'} alone"
+                    remedy = "Remove the variation, or set charged_fraction between 0 and 1."
+                    yield Conflict(place, what, f"[experiment] charged_fraction = {share:g}", remedy=remedy)
             case SoftPionEfficiency():
                 if "mode" in sections.whole and all(mode.charm == ("D",) for mode in modes):
                     what = "acts on nothing: no mode has a D*"

@@ -14,9 +14,10 @@ from ..decays.double_charm import AnyChain, double_charm_chains
 from ..study_file.components import Mode
 from ..study_file.double_charm import DoubleCharm
 from ..study_file.names import CHARM_OF_RATIO, FORM_FACTORS_OF
+from ..study_file.parameter_names import component_name, split_by_parent
 from ..study_file.study import StudyConfig
 from .double_charm_variations import double_charm_variations
-from .variations import ChannelVariations, channel_variations
+from .variations import ChannelVariations, channel_variations, check_shares
 
 LEAST_EVENTS = 256
 """Each chain gets at least this many decays, one block, however small its share."""
@@ -85,6 +86,8 @@ def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
         for name in dict.fromkeys(names)
     }
     leptons = [category.lepton for category in study.categories]
+    for mine in shares.values():
+        check_shares(study, mode.name, mine)
     plans = []
     for name, chain, n_expected, n in zip(names, chains, expected, events, strict=True):
         if n_expected > 0.0:
@@ -101,7 +104,7 @@ def _plan_double_charm(study: StudyConfig, item: DoubleCharm) -> list[ChannelPla
     expected = np.array([expected_decays(study, chain) for chain in chains])
     _check_expected(expected, f"double_charm {item.name}")
     whole = [(chain, float(n)) for chain, n in zip(chains, expected, strict=True)]
-    events, variations = shared_out(item.events, expected), double_charm_variations(study, whole)
+    events, variations = shared_out(item.events, expected), double_charm_variations(study, item.name, whole)
     return [
         ChannelPlan(item.name, item.name, chain, n_expected, n, acting)
         for (chain, n_expected), n, acting in zip(whole, events, variations, strict=True)

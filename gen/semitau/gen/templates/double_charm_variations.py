@@ -9,21 +9,32 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 
 import numpy as np
+from semitau.core.errors import InputError
 
 from ..decays.double_charm import DoubleCharmChain, relative_error
 from ..study_file.study import StudyConfig
 from ..study_file.variations import DoubleCharmShare
-from .variations import SIGNS, ChannelVariations, common_variations
+from .variations import SIGNS, ChannelVariations, common_variations, passing_share
 
 Expected = Sequence[tuple[DoubleCharmChain, float]]
 
 
-def double_charm_variations(study: StudyConfig, whole: Expected) -> Iterator[ChannelVariations]:
-    """Variations of each chain of a component. whole : all its chains with their expected decays."""
+def double_charm_variations(study: StudyConfig, name: str, whole: Expected) -> Iterator[ChannelVariations]:
+    """Variations of each chain of a component of this name. whole : all its chains with their expected decays.
+
+    InputError if a varied share passes 1.
+    """
     leptons = [category.lepton for category in study.categories]
     variations = study.variations
     shares = [variation for variation in variations if isinstance(variation, DoubleCharmShare)]
     changes = [(variation, *_change(study, variation, whole)) for variation in shares]
+    passing = [
+        passing_share(variation.name, name, share, relative)
+        for variation, share, relative in changes
+        if 0.0 < share < 1.0 < share * (1.0 + relative)
+    ]
+    if passing:
+        raise InputError(*passing)
     for chain, _ in whole:
         soft, factors = common_variations(study, variations, chain, leptons)
         for variation, share, relative in changes:

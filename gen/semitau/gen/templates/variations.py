@@ -163,8 +163,34 @@ def varied_set(study: StudyConfig, variation: FormFactor | FormFactorDirection, 
     return nominal.shifted({variation.parameter: sign * shift}, variation.set)
 
 
+def check_shares(study: StudyConfig, mode: str, shares: Mapping[str, float]) -> None:
+    """No varied share of a component may pass 1: the rest of it would be negative. InputError that lists all that do.
+
+    mode, shares : as for `channel_variations`.
+    """
+    problems = [
+        passing_share(variation.name, mode, shares[variation.charm], variation.relative)
+        for variation in study.variations
+        if isinstance(variation, ComponentFraction)
+        and (variation.components is None or mode in variation.components)
+        and 0.0 < shares.get(variation.charm, 0.0) < 1.0 < shares[variation.charm] * (1.0 + variation.relative)
+    ]
+    if problems:
+        raise InputError(*problems)
+
+
+def passing_share(variation: str, component: str, share: float, relative: float) -> Problem:
+    """The problem of a share that passes 1 when it is varied."""
+    return Problem(
+        f"the varied share of {component} passes 1",
+        where=f"variation {variation}",
+        got=f"{share:.4g} × {1 + relative:g}",
+        wanted=f"relative up to {1 / share - 1:.3g}",
+    )
+
+
 def check_efficiencies(study: StudyConfig) -> None:
-    """No varied efficiency may pass 1, nor a share of a component. Raises InputError that lists all that do."""
+    """No varied efficiency may pass 1. Raises InputError that lists all that do."""
     soft, lepton = study.detector.soft_pion, study.detector.lepton_id
     curves: dict[str, Curve] = {
         "charged": soft.charged,
