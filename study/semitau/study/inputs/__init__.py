@@ -1,0 +1,1 @@
+"""What went into a study, as it stands in results.json and in the report."""
