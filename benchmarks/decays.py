@@ -14,7 +14,7 @@ from semitau.gen.block import LANES, new_block
 from semitau.gen.study_file.names import COEFFICIENTS
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.study_file.wilson import Quadratic
-from semitau.gen.templates.chunk_tasks import Task, channel_tasks, make_bench
+from semitau.gen.templates.chunk_tasks import Task, channel_inputs, channel_tasks, make_bench
 from semitau.gen.templates.component_plan import ChannelPlan, plan_channels
 from semitau.gen.templates.variations import ChannelVariations
 from semitau.gen.truth.channel_table import ChannelTable, channel_table
@@ -60,7 +60,11 @@ class Chains:
     def tasks(self, *, variations: bool) -> list[Task]:
         bench = make_bench(self.study, variations=variations)
         stream = stream_key(1, "benchmark")
-        return [task for plan in self.plans for task in channel_tasks(plan, bench, stream, plan.events)]
+        return [
+            task
+            for plan in self.plans
+            for task in channel_tasks(channel_inputs(plan, bench, stream), bench, 0, plan.events)
+        ]
 
     def numbers(self, counts: Counts, passed: float) -> tuple[float, float]:
         """Random numbers for each decay: of the truth, and of the whole chain, if a share `passed` is measured."""

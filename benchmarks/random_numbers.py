@@ -50,7 +50,7 @@ def _count(study_file: str, most_kinds: int) -> Counts:
     from semitau.gen.block import LANES
     from semitau.gen.study_file.reader import read_study
     from semitau.gen.templates import chunk, component_plan
-    from semitau.gen.templates.chunk_tasks import channel_tasks, make_bench
+    from semitau.gen.templates.chunk_tasks import channel_inputs, channel_tasks, make_bench
 
     stages = {"draw": 0, "find": 0, "measure": 0}
 
@@ -70,7 +70,8 @@ def _count(study_file: str, most_kinds: int) -> Counts:
     bench, counts = make_bench(study, variations=False), Counts()
     for plan in component_plan.plan_channels(study):
         if kind(plan.channel) not in counts and len(counts) < most_kinds:
-            for task in channel_tasks(plan, bench, streams.stream_key(1, "count"), LANES):
+            inputs = channel_inputs(plan, bench, streams.stream_key(1, "count"))
+            for task in channel_tasks(inputs, bench, 0, LANES):
                 task()
             counts[kind(plan.channel)] = [number / LANES for number in stages.values()]
     return counts

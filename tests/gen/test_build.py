@@ -22,7 +22,14 @@ from semitau.gen.decays.rates import ratio
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates import build as build_module
 from semitau.gen.templates.build import Build, build_templates
-from semitau.gen.templates.chunk_tasks import NOMINAL, Bench, channel_columns, channel_tasks, make_bench
+from semitau.gen.templates.chunk_tasks import (
+    NOMINAL,
+    Bench,
+    channel_columns,
+    channel_inputs,
+    channel_tasks,
+    make_bench,
+)
 from semitau.gen.templates.component_plan import (
     LEAST_EVENTS,
     ChannelPlan,
@@ -177,7 +184,10 @@ def test_separate_ratios_take_components_apart() -> None:
 def histogram(bench: Bench, chosen: ChannelPlan, events: int, word: str) -> np.ndarray:
     """All columns of a channel from its own stream, divided by the events."""
     stream = stream_key(SEED, "test build", word)
-    return sum(task().histogram for task in channel_tasks(chosen, bench, stream, events)) / events
+    return (
+        sum(task().histogram for task in channel_tasks(channel_inputs(chosen, bench, stream), bench, 0, events))
+        / events
+    )
 
 
 def expect_alike(weighted: np.ndarray, events: int, anew: np.ndarray, events_anew: int) -> None:

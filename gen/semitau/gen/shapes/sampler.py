@@ -39,11 +39,32 @@ class _Rows:
 
 
 @dataclass(frozen=True, eq=False)
-class _Laws:
-    """How one category is drawn."""
+class DrawnLaws:
+    """How one category is drawn: everything that its events depend on, besides their stream.
+
+    correlated : observables that are drawn together, with their correlation matrix. draws : observable -> its number.
+    """
 
     tables: dict[str, QuantileTable]
     trees: tuple[_Rows, ...]
+    correlated: tuple[str, ...]
+    correlation: Floats
+    draws: dict[str, int]
+
+    def draw(self, stream_key: int | np.uint64, first: int, n: int) -> dict[str, Floats]:
+        """As `ShapeSampler.draw`."""
+        drawn: dict[str, Floats] = {}
+        if self.correlated:
+            numbers = [self.draws[name] for name in self.correlated]
+            together = correlated_uniforms(stream_key, first, n, numbers, self.correlation)
+            drawn = {name: self.tables[name](u) for name, u in zip(self.correlated, together, strict=True)}
+        for name, quantiles in self.tables.items():
+            if name not in drawn:
+                drawn[name] = quantiles(uniforms(stream_key, first, n, self.draws[name]))
+        for k, tree in enumerate(self.trees):
+            row = tree.table(uniforms(stream_key, first, n, ROW_DRAW + k))
+            drawn |= {name: column[row] for name, column in tree.columns.items()}
+        return drawn
 
 
 class ShapeSampler:
@@ -69,26 +90,18 @@ class ShapeSampler:
         """Categories that have events."""
         return tuple(self._laws)
 
+    def laws(self, category: str) -> DrawnLaws:
+        """How a category is drawn. KeyError if the background has no events in the category."""
+        return self._laws[category]
+
     def draw(self, category: str, stream_key: int | np.uint64, first: int, n: int) -> dict[str, Floats]:
         """Observables of the events first ... first + n - 1 of a category: name -> (n,) float64, in GeV or GeV².
 
         KeyError if the background has no events in the category.
         """
-        laws = self._laws[category]
-        drawn: dict[str, Floats] = {}
-        if self._correlated:
-            draws = [_draw(name) for name in self._correlated]
-            together = correlated_uniforms(stream_key, first, n, draws, self._correlation)
-            drawn = {name: laws.tables[name](u) for name, u in zip(self._correlated, together, strict=True)}
-        for name, quantiles in laws.tables.items():
-            if name not in drawn:
-                drawn[name] = quantiles(uniforms(stream_key, first, n, _draw(name)))
-        for k, tree in enumerate(laws.trees):
-            row = tree.table(uniforms(stream_key, first, n, ROW_DRAW + k))
-            drawn |= {name: column[row] for name, column in tree.columns.items()}
-        return drawn
+        return self._laws[category].draw(stream_key, first, n)
 
-    def _prepare(self, category: StudyCategory) -> _Laws:
+    def _prepare(self, category: StudyCategory) -> DrawnLaws:
         laws = self.background.laws(category.name, category.charm)
         rate = None
         if self.background.misidentified:
@@ -106,7 +119,9 @@ class ShapeSampler:
                 with self._place(category, observable):
                     self._memory[key] = self._table(law, curve)
             tables[observable] = self._memory[key]
-        return _Laws(tables, tuple(self._rows(category, columns, rate) for columns in together.values()))
+        trees = tuple(self._rows(category, columns, rate) for columns in together.values())
+        draws = {name: _draw(name) for name in (*tables, *self._correlated)}
+        return DrawnLaws(tables, trees, self._correlated, self._correlation, draws)
 
     def _table(self, law: Law, curve: Curve | None) -> QuantileTable:
         factor, breaks = (None, ()) if curve is None else (_logarithm(curve), curve.momentum)

@@ -15,10 +15,12 @@ from semitau.core.templates import Pair, Template, TemplateSet
 from ..study_file.study import StudyConfig
 from .binning import cut_names
 from .chunk_tasks import make_bench
-from .component_parts import Report, component_parts, run_parts
+from .component_parts import Report, component_parts
 from .component_sums import ComponentSums
 from .cut_flow import CutFlow, step_names
 from .fit_components import components_and_parameters, template_categories, template_coefficients, template_nuisances
+from .kept_sums import Kept, component_key
+from .part_runs import by_component, run_parts
 from .provenance import provenance
 from .variations import check_efficiencies
 
@@ -53,13 +55,18 @@ class Build:
 
 
 def build_templates(
-    study: StudyConfig, workers: int | None = None, report: Report | None = None, purpose: str = "templates"
+    study: StudyConfig,
+    workers: int | None = None,
+    report: Report | None = None,
+    purpose: str = "templates",
+    kept: Kept | None = None,
 ) -> Build:
     """Templates of all components in all categories, with all variations.
 
     workers : threads, None for all cores; the result is the same to the last bit for any number.
     report : called with the component at work, done and all generated events.
     purpose : names the random streams: another word gives events that are independent of the templates.
+    kept : components that are there are not made again, and what is made is put there; same bits.
 
     Raises
     ------
@@ -73,7 +80,7 @@ def build_templates(
     sums = {component.name: ComponentSums(bench) for component in components}
     costs = {component.name: Cost(0, 0.0) for component in components}
     events, seconds = 0, 0.0
-    for part, whole in run_parts(component_parts(study, bench, purpose), bench, workers, report):
+    for part, whole in run_parts(component_parts(study, bench, purpose), bench, workers, report, kept):
         sums[part.component].add(part, whole)
         events += whole.events
         seconds += whole.seconds
@@ -93,6 +100,13 @@ def build_templates(
     reweightings = tuple(found for name, part in sums.items() for found in part.reweightings(name))
     timing = {"wall": time.perf_counter() - start, "kernels": seconds}
     return Build(templates, flow, events, timing, reweightings, MappingProxyType(costs))
+
+
+def component_keys(study: StudyConfig, purpose: str = "templates") -> dict[str, str]:
+    """Component -> key under which `build_templates` keeps its sums; see `kept_sums`."""
+    bench = make_bench(study, variations=True)
+    parts = component_parts(study, bench, purpose)
+    return {name: component_key(of_one, bench) for name, of_one in by_component(parts).items()}
 
 
 def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:

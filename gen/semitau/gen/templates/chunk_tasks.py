@@ -3,13 +3,15 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from functools import partial
+from functools import cached_property, partial
+from typing import TypeGuard
 
 import numpy as np
 import numpy.typing as npt
 from semitau.core.constants import MASS
+from semitau.core.content_digest import content_digest
 
 from ..decays.chains import Channel
 from ..decays.decay import Decay
@@ -17,9 +19,9 @@ from ..decays.double_charm import AnyChain
 from ..decays.operators import Operators
 from ..response.candidates import Scenario, Windows
 from ..response.charm_decay import pair_mass_quantiles
-from ..response.detector import Detector
+from ..response.detector import Chain, Detector
 from ..response.setup import delta_m_windows, kernel_chain, kernel_detector
-from ..shapes.sampler import ShapeSampler
+from ..shapes.sampler import DrawnLaws, ShapeSampler
 from ..study_file.categories import StudyCategory
 from ..study_file.components import Background
 from ..study_file.study import StudyConfig
@@ -83,6 +85,14 @@ class Bench:
         """(bins,) place of the category that each bin belongs to."""
         return np.repeat(np.arange(len(self.categories)), [int(np.prod(c.shape)) for c in self.categories])
 
+    @cached_property
+    def digest(self) -> str:
+        """Of everything here that histograms depend on; what varies from part to part is in the part's inputs."""
+        return content_digest(
+            self.shape, self.bins, self.detector, self.windows, self.quantiles, self.cuts, self.axes,
+            self.category_of_bin, CHUNK_EVENTS,
+        )  # fmt: skip
+
     def sums(self, columns: int, weights: int = 0, pieces: int = 0) -> Sums:
         """Zeros for what events are added to. columns : of the histogram. weights : of them, those by weights."""
         return Sums(
@@ -124,66 +134,114 @@ def channel_columns(plan: ChannelPlan, bench: Bench) -> list[Side]:
 
 def channel_pieces(plan: ChannelPlan, bench: Bench) -> tuple[PieceTable, Operators] | None:
     """Table for the bilinear pieces of a channel, if it has a tau and the study asks for them."""
-    if not (bench.quadratic and isinstance(plan.channel, Channel) and plan.channel.lepton == "tau"):
+    if not _has_pieces(plan.channel, bench):
         return None
     return piece_table(plan.channel, bench.quadratic)
 
 
-def channel_tasks(plan: ChannelPlan, bench: Bench, stream: np.uint64, events: int) -> Iterator[Task]:
-    """Chunks of one channel, in order. stream : random stream of the channel; events : decays to generate."""
-    table = table_of(plan.channel)
-    decays = list(plan.variations.decays.values()) if bench.variations else []
-    weights = _weights(plan.channel, decays)
-    soft = np.array(list(plan.variations.soft.values()) if bench.variations else [], dtype=np.float64)
-    shifts = np.array([NOMINAL, *bench.scenarios.values()], dtype=np.float64)
-    chain = kernel_chain(plan.channel, bench.least_photon)
-    columns = 1 + len(channel_columns(plan, bench))
-    pieces = channel_pieces(plan, bench)
-    taken = no_pieces(weights) if pieces is None else pieces[0]
+def _has_pieces(channel: AnyChain, bench: Bench) -> TypeGuard[Channel]:
+    return bool(bench.quadratic) and isinstance(channel, Channel) and channel.lepton == "tau"
+
+
+@dataclass(frozen=True, eq=False)
+class ChannelInputs:
+    """All that the histograms of a channel depend on, besides the bench and how many events there are.
+
+    decays : with other form factors, one a column of weights. soft : factors on the soft efficiency. shifts
+    (scenarios, 2) : of the reconstruction, the nominal one first. quadratic : parts of coefficients for its pieces.
+    """
+
+    stream: np.uint64
+    channel: AnyChain
+    decays: tuple[Decay, ...]
+    soft: Floats
+    shifts: Floats
+    chain: Chain
+    quadratic: tuple[str, ...]
+
+
+def channel_inputs(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> ChannelInputs:
+    """What a channel is made from. stream : random stream of the channel."""
+    return ChannelInputs(
+        stream=stream,
+        channel=plan.channel,
+        decays=tuple(plan.variations.decays.values()) if bench.variations else (),
+        soft=np.array(list(plan.variations.soft.values()) if bench.variations else [], dtype=np.float64),
+        shifts=np.array([NOMINAL, *bench.scenarios.values()], dtype=np.float64),
+        chain=kernel_chain(plan.channel, bench.least_photon),
+        quadratic=bench.quadratic if _has_pieces(plan.channel, bench) else (),
+    )
+
+
+def channel_tasks(inputs: ChannelInputs, bench: Bench, first: int, events: int) -> Iterator[Task]:
+    """Chunks of one channel, in order: those of `events` decays in all that begin at decay `first` or later."""
+    channel, decays, soft, shifts = inputs.channel, inputs.decays, inputs.soft, inputs.shifts
+    table = table_of(channel)
+    weights = _weights(channel, decays)
+    columns = len(decays) + len(soft) + len(shifts)
+    taken = no_pieces(weights)
+    if inputs.quadratic and isinstance(channel, Channel):
+        taken, _ = piece_table(channel, inputs.quadratic)
     category_of_bin = bench.category_of_bin
 
     def task(first: int, n: int) -> Filled:
         start = time.thread_time()
         sums = bench.sums(columns, len(decays) + len(soft), taken.pieces)
         fill_chunk(
-            stream, first, n, table, chain, bench.detector, bench.quantiles, weights, taken, soft, shifts,
+            inputs.stream, first, n, table, inputs.chain, bench.detector, bench.quantiles, weights, taken, soft, shifts,
             bench.windows, bench.cuts, bench.axes, category_of_bin, sums,
         )  # fmt: skip
         return Filled(sums, n, time.thread_time() - start)
 
-    return (partial(task, first, n) for first, n in chunks(events))
+    return (partial(task, begin, n) for begin, n in chunks(events, first))
 
 
-def background_tasks(
-    sampler: ShapeSampler, background: Background, bench: Bench, category: str, stream: np.uint64, events: int
-) -> Iterator[Task]:
-    """Chunks of one background in one category, in order."""
+@dataclass(frozen=True, eq=False)
+class BackgroundInputs:
+    """All that the histogram of a background in one category depends on, besides the bench and how many events."""
+
+    stream: np.uint64
+    code: int
+    drawn: tuple[str, ...]
+    laws: DrawnLaws
+
+
+def background_inputs(
+    sampler: ShapeSampler, background: Background, bench: Bench, category: str, stream: np.uint64
+) -> BackgroundInputs:
+    """What a background is made from in one category. stream : its random stream there."""
     target = next(known for known in bench.categories if known.name == category)
-    code = category_code(target.charm, target.lepton)
     drawn = tuple(background.laws(category, target.charm))
-    cuts = make_cuts(bench.categories, drawn)
-    rows = np.array([ROW_OF[name] for name in drawn], dtype=np.int64)
+    code = category_code(target.charm, target.lepton)
+    return BackgroundInputs(stream, code, drawn, sampler.laws(category))
+
+
+def background_tasks(inputs: BackgroundInputs, bench: Bench, first: int, events: int) -> Iterator[Task]:
+    """Chunks of one background in one category, in order, as those of a channel."""
+    cuts = make_cuts(bench.categories, inputs.drawn)
+    rows = np.array([ROW_OF[name] for name in inputs.drawn], dtype=np.int64)
 
     def task(first: int, n: int) -> Filled:
         start = time.thread_time()
         sums = bench.sums(1)
         sums.found[:] = n
-        values = sampler.draw(category, stream, first, n)
-        fill_drawn(np.stack([values[name] for name in drawn]), rows, code, cuts, bench.axes, sums.flow, sums.histogram)
+        drawn = inputs.laws.draw(inputs.stream, first, n)
+        values = np.stack([drawn[name] for name in inputs.drawn])
+        fill_drawn(values, rows, inputs.code, cuts, bench.axes, sums.flow, sums.histogram)
         return Filled(sums, n, time.thread_time() - start)
 
-    return (partial(task, first, n) for first, n in chunks(events))
+    return (partial(task, begin, n) for begin, n in chunks(events, first))
 
 
-def chunks(events: int) -> Iterator[tuple[int, int]]:
-    """First event and number of events of each chunk."""
-    for first in range(0, events, CHUNK_EVENTS):
-        yield first, min(CHUNK_EVENTS, events - first)
+def chunks(events: int, first: int = 0) -> Iterator[tuple[int, int]]:
+    """First event and number of events of each chunk, from event `first` on, which begins one."""
+    for begin in range(first, events, CHUNK_EVENTS):
+        yield begin, min(CHUNK_EVENTS, events - begin)
 
 
-def _weights(channel: AnyChain, decays: list[Decay]) -> VariationTable:
+def _weights(channel: AnyChain, decays: Sequence[Decay]) -> VariationTable:
     if decays and isinstance(channel, Channel):
-        return variation_table(channel, decays, shape_only=True)
+        return variation_table(channel, list(decays), shape_only=True)
     return _no_weights()
 
 

@@ -1,20 +1,30 @@
-"""The sources of all components of a study, decay chains and backgrounds in categories, and how they are run."""
+"""The sources of all components of a study: decay chains, and backgrounds in categories."""
 
 from __future__ import annotations
 
 from collections.abc import Callable, Iterator, Mapping, Sequence
-from contextlib import closing
 from dataclasses import dataclass
 
 import numpy as np
 import numpy.typing as npt
-from semitau.core import engine
 from semitau.core.streams import stream_key
 
 from ..shapes.sampler import ShapeSampler
 from ..study_file.components import Background
 from ..study_file.study import StudyConfig
-from .chunk_tasks import Bench, Filled, Task, background_tasks, channel_columns, channel_pieces, channel_tasks
+from .chunk_tasks import (
+    BackgroundInputs,
+    Bench,
+    ChannelInputs,
+    Filled,
+    Task,
+    background_inputs,
+    background_tasks,
+    channel_columns,
+    channel_inputs,
+    channel_pieces,
+    channel_tasks,
+)
 from .component_plan import ChannelPlan, plan_channels
 from .variations import Side, background_factors
 
@@ -32,7 +42,7 @@ class Part:
 
     expected : decays or background events in the data, before detector and selection. events : how many are generated.
     columns : sides in the histogram after the nominal column. factors : sides that are constant weights by category.
-    tasks : makes the chunks of a run of events.
+    inputs : all that its histograms depend on, besides bench and events.
     weights : how many of the columns, the first ones, are weights of the nominal events.
     contraction : (pairs, pieces) what the bilinear pieces of the events count in the quadratic ones of the study; None
         if the part does not follow coefficients.
@@ -43,7 +53,7 @@ class Part:
     events: int
     columns: Sequence[Side]
     factors: Mapping[Side, Floats]
-    tasks: Callable[[int], Iterator[Task]]
+    inputs: ChannelInputs | BackgroundInputs
     weights: int = 0
     contraction: Floats | None = None
 
@@ -52,6 +62,12 @@ class Part:
         """Expected events that each generated one counts."""
         return self.expected / self.events
 
+    def tasks(self, bench: Bench, first: int = 0) -> Iterator[Task]:
+        """Its chunks in order, from event `first` on, which begins one."""
+        if isinstance(self.inputs, ChannelInputs):
+            return channel_tasks(self.inputs, bench, first, self.events)
+        return background_tasks(self.inputs, bench, first, self.events)
+
 
 class PartSums:
     """Chunks of one part added up, in their order."""
@@ -59,7 +75,7 @@ class PartSums:
     def __init__(self, bench: Bench, part: Part) -> None:
         self.events = 0
         self.seconds = 0.0
-        self._paces: list[float] = []
+        self.paces: list[float] = []
         pieces = 0 if part.contraction is None else part.contraction.shape[1]
         self.sums = bench.sums(1 + len(part.columns), part.weights, pieces)
 
@@ -67,8 +83,8 @@ class PartSums:
         """One more chunk."""
         self.events += filled.events
         self.seconds += filled.seconds
-        if filled.events and len(self._paces) < PACES_AT_MOST:
-            self._paces.append(filled.seconds / filled.events)
+        if filled.events and len(self.paces) < PACES_AT_MOST:
+            self.paces.append(filled.seconds / filled.events)
         for total, part in zip(self.sums, filled.sums, strict=True):
             np.add(total, part, out=total)
 
@@ -80,7 +96,7 @@ class PartSums:
     @property
     def steady_seconds(self) -> float:
         """Time of all events at the pace of the middle chunk."""
-        return self.events * float(np.median(self._paces)) if self._paces else 0.0
+        return self.events * float(np.median(self.paces)) if self.paces else 0.0
 
 
 def component_parts(study: StudyConfig, bench: Bench, *purpose: str | int) -> list[Part]:
@@ -102,24 +118,6 @@ def component_parts(study: StudyConfig, bench: Bench, *purpose: str | int) -> li
     return parts
 
 
-def run_parts(
-    parts: Sequence[Part], bench: Bench, workers: int | None = None, report: Report | None = None
-) -> Iterator[tuple[Part, PartSums]]:
-    """Generate the events of all parts; iterates over parts and their sums in order, whatever the workers."""
-    total, done = sum(part.events for part in parts), 0
-    tasks = (task for part in parts for task in part.tasks(part.events))
-    with closing(engine.run(tasks, workers)) as results:  # type: ignore[type-var]
-        for part in parts:
-            sums = PartSums(bench, part)
-            while sums.events < part.events:
-                filled = next(results)
-                sums.add(filled)
-                done += filled.events
-                if report is not None:
-                    report(part.component, done, total)
-            yield part, sums
-
-
 def _channel_part(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Part:
     pieces = channel_pieces(plan, bench)
     return Part(
@@ -128,7 +126,7 @@ def _channel_part(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Part:
         events=plan.events,
         columns=channel_columns(plan, bench),
         factors=plan.variations.factors,
-        tasks=lambda events: channel_tasks(plan, bench, stream, events),
+        inputs=channel_inputs(plan, bench, stream),
         weights=len(plan.variations.decays) + len(plan.variations.soft) if bench.variations else 0,
         contraction=None if pieces is None else pieces[1].contraction,
     )
@@ -143,5 +141,5 @@ def _background_part(
         events=max(background.events_in[category], 1),
         columns=(),
         factors=background_factors(study, background.misidentified),
-        tasks=lambda events: background_tasks(sampler, background, bench, category, stream, events),
+        inputs=background_inputs(sampler, background, bench, category, stream),
     )

@@ -11,7 +11,9 @@ from semitau.core.streams import stream_key
 
 from ..study_file.study import StudyConfig
 from .chunk_tasks import make_bench
-from .component_parts import Part, Report, component_parts, run_parts
+from .component_parts import Part, Report, component_parts
+from .kept_sums import Kept
+from .part_runs import run_parts
 
 Floats = npt.NDArray[np.float64]
 
@@ -23,6 +25,7 @@ def pseudo_data(
     *,
     replica: int = 0,
     factors: Mapping[str, float] | None = None,
+    kept: Kept | None = None,
 ) -> dict[str, Floats]:
     """Observed counts by category, each in the shape of its axes: whole numbers, as float64.
 
@@ -30,14 +33,14 @@ def pseudo_data(
     passes the detector or not, and counts one. The random streams are not those of the templates.
 
     replica : another number is another, independent data set. factors : on the expectation of components (by name), to
-    inject other ratios or yields than the templates have.
+    inject other ratios or yields than the templates have. kept : as in `build_templates`.
     """
     bench = make_bench(study, variations=False)
     parts = component_parts(study, bench, "pseudo-data", replica)
     counts = np.random.default_rng(int(stream_key(study.study.seed, "pseudo-data counts", replica)))
     drawn = [_with_counts(part, counts, (factors or {}).get(part.component, 1.0)) for part in parts]
     observed = np.zeros(bench.bins)
-    for _, sums in run_parts([part for part in drawn if part.events > 0], bench, workers, report):
+    for _, sums in run_parts([part for part in drawn if part.events > 0], bench, workers, report, kept):
         observed += sums.histogram[:, 0]
     ends = np.cumsum([int(np.prod(category.shape)) for category in bench.categories])
     return {
