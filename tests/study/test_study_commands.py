@@ -57,6 +57,11 @@ def test_rates_are_those_of_gen(mini: WriteStudy, capsys: Capture) -> None:
     assert ratios["B0", "D*-"]["value"] == pytest.approx(gen.ratio("B0", "D*-", "CLN-2021"))
     for mode in said["modes"]:
         assert mode["errors"]["branching_fraction"] > 0
+    made_with = {(m["parent"], m["charm"], m["lepton"]): m["template_branching_fraction"] for m in said["modes"]}
+    assert made_with["B0", "D*-", "mu"] == gen.observables(gen.Decay("B0", "D*-", "mu", "CLN-2021")).branching_fraction
+    # B(B+ -> D1 l nu) B(D1 -> D*- pi+) = 0.00281 (Eur. Phys. J. C 81 (2021) 226, from memory) over 2/3 and over 0.67 of
+    # D1 -> D* pi.
+    assert made_with["B+", "D1(2420)0", "e"] == pytest.approx(0.00281 * 3 / 2 / 0.67, rel=0.002)
 
 
 def test_rates_as_tables(mini: WriteStudy, capsys: Capture) -> None:

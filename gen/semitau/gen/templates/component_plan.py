@@ -199,3 +199,13 @@ def injected_factor(study: StudyConfig, mode: Mode, parent: str) -> float:
         return 1.0
     predicted = predicted_ratio(study, mode.scales_with, ratio_parents(study, mode, parent))
     return injected_ratio(study, mode, parent) / predicted
+
+
+def template_fraction(study: StudyConfig, decay: Decay) -> float | None:
+    """Branching fraction of a decay that the templates are made with, injected ratio included; None for a decay that no
+    mode has."""
+    for mode in study.modes:
+        if decay.parent in mode.parents and decay.family in mode.charm and decay.lepton in mode.leptons:
+            fraction = semileptonic_branching_fraction(decay, study.fractions)
+            return fraction * injected_factor(study, mode, decay.parent)
+    return None

@@ -17,10 +17,12 @@ def command(call: Invocation, file: Path, output: Path | None) -> None:
     """Rates, ratios, polarisations and asymmetries, without generating.
 
     For every decay of the modes of FILE, with the errors from the covariance of its form factors; |V_cb| and lifetimes
-    are taken as exact. The relations that hold exactly between form factors are checked. Nothing is drawn at random:
-    --seed and --workers change nothing.
+    are taken as exact. Beside the branching fractions of the form factors stand those that templates are made with:
+    measured for D**, of [branching_fractions], or with an injected ratio. The relations that hold exactly between form
+    factors are checked. Nothing is drawn at random: --seed and --workers change nothing.
     """
     from semitau.gen.decays.rates_table import rates_table
+    from semitau.gen.templates.component_plan import template_fraction
 
     from ..run.opening import open_study
     from ..terminal.rates_summary import drawn_spectra, rates_document, rates_tables
@@ -35,9 +37,10 @@ def command(call: Invocation, file: Path, output: Path | None) -> None:
         charms, parents=parents, form_factors=sets, wilson=given.tau, tensor=given.tensor,
         light={"e": given.e, "mu": given.mu},
     )  # fmt: skip
-    call.terminal.show(*rates_tables(rates, names, given))
+    made_with = [template_fraction(study, mode.decay) for mode in rates.modes]
+    call.terminal.show(*rates_tables(rates, made_with, names, given))
     if output is not None:
         caption = "Differential rates in q², with the bands that the form factors leave open."
         drawn_spectra(rates).save(output, "spectra", "Differential rates", caption)
         call.terminal.show("", f"Picture: {output / 'spectra.svg'}, {output / 'spectra.png'}")
-    call.terminal.result(rates_document(rates, names, given))
+    call.terminal.result(rates_document(rates, made_with, names, given))

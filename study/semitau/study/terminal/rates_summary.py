@@ -2,13 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from dataclasses import fields
 
 from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
-from semitau.gen.decays.decay import WilsonCoefficients, family_of
+from semitau.gen.decays.decay import Decay, WilsonCoefficients, family_of
 from semitau.gen.decays.lepton_couplings import LeptonCouplings
 from semitau.gen.decays.rates import Observables
 from semitau.gen.decays.rates_table import RatesTable
@@ -20,25 +20,38 @@ from ..pictures.spectra import Curve, spectra
 from .summary import plain_table
 
 
-def rates_tables(rates: RatesTable, sets: Mapping[str, str], couplings: LeptonCouplings) -> list[RenderableType]:
-    """One table of the decays, one of the ratios, and what they were computed with."""
-    table = plain_table("Decay", "BF (%)", "P", "F_L", "A_FB", "⟨q²⟩ (GeV²)")
+def rates_tables(
+    rates: RatesTable, made_with: Sequence[float | None], sets: Mapping[str, str], couplings: LeptonCouplings
+) -> list[RenderableType]:
+    """Tables of the decays and of the ratios, and what they were computed with.
+
+    made_with : for each decay the branching fraction of the templates; None for one that the study does not have.
+    """
+    widths = plain_table("Decay", "BF, form factors (%)", "BF, templates (%)", "⟨q²⟩ (GeV²)")
+    for mode, fraction in zip(rates.modes, made_with, strict=True):
+        value, error = mode.values, mode.errors
+        widths.add_row(
+            _name(mode.decay),
+            _shown(100 * value.branching_fraction, 100 * error.branching_fraction),
+            "" if fraction is None else signed(100 * fraction, DECIMALS),
+            _shown(value.mean_q2, error.mean_q2),
+        )
+    spins = plain_table("Decay", "P", "F_L", "A_FB")
     for mode in rates.modes:
         value, error = mode.values, mode.errors
-        table.add_row(
-            f"{mode.decay.parent} → {mode.decay.charm} {mode.decay.lepton} ν",
-            _shown(100 * value.branching_fraction, 100 * error.branching_fraction),
+        spins.add_row(
+            _name(mode.decay),
             _shown(value.tau_polarisation, error.tau_polarisation),
             _shown(value.longitudinal_fraction, error.longitudinal_fraction),
             _shown(value.forward_backward, error.forward_backward),
-            _shown(value.mean_q2, error.mean_q2),
         )
     used = ", ".join(f"{name}: {chosen}" for name, chosen in sets.items())
     note = (
-        "BF: branching fraction; P: lepton polarisation in the W* rest frame; F_L: longitudinal fraction; A_FB > 0: "
-        f"lepton away from the charm hadron. Errors are those of the form factors alone ({used})."
+        "BF: branching fraction, of the form factors and of the templates; P: lepton polarisation in the W* frame; "
+        "F_L: longitudinal fraction; A_FB > 0: lepton away from the charm hadron. Errors are those of the form factors "
+        f"alone ({used})."
     )
-    lines: list[RenderableType] = [table, "", _ratio_table(rates), ""]
+    lines: list[RenderableType] = [widths, "", spins, "", _ratio_table(rates), ""]
     if (correlation := _between_ratios(rates)) is not None:
         lines += [Text(f"Correlation of the errors of R(D) and R(D*): {signed(correlation, 2)}"), ""]
     if rates.relations:
@@ -53,7 +66,13 @@ def rates_tables(rates: RatesTable, sets: Mapping[str, str], couplings: LeptonCo
     return lines
 
 
-def rates_document(rates: RatesTable, sets: Mapping[str, str], couplings: LeptonCouplings) -> dict[str, object]:
+def _name(decay: Decay) -> str:
+    return f"{decay.parent} → {decay.charm} {decay.lepton} ν"
+
+
+def rates_document(
+    rates: RatesTable, made_with: Sequence[float | None], sets: Mapping[str, str], couplings: LeptonCouplings
+) -> dict[str, object]:
     """The same as plain numbers; widths in GeV, spectra in GeV^-1, couplings as [real, imaginary], those of the light
     leptons below `e` and `mu`."""
     return {
@@ -71,8 +90,9 @@ def rates_document(rates: RatesTable, sets: Mapping[str, str], couplings: Lepton
                 "lepton": mode.decay.lepton,
                 "values": {field.name: getattr(mode.values, field.name) for field in fields(Observables)},
                 "errors": {field.name: getattr(mode.errors, field.name) for field in fields(Observables)},
+                "template_branching_fraction": fraction,
             }
-            for mode in rates.modes
+            for mode, fraction in zip(rates.modes, made_with, strict=True)
         ],
         "ratios": [
             {"parent": ratio.parent, "charm": ratio.charm, "value": ratio.value, "error": ratio.error}
