@@ -119,7 +119,7 @@ def make_axes(categories: Sequence[StudyCategory]) -> Axes:
 
 
 @inlined
-def _bin_on_axis(value: float, axes: Axes, code: int, k: int) -> int:
+def bin_on_axis(value: float, axes: Axes, code: int, k: int) -> int:
     """Bin of a value on an axis, -1 if it is outside (or not a number): edges[b] <= value < edges[b + 1]."""
     start, bins = axes.first_edge[code, k], axes.bins[code, k]
     if not (value >= axes.edges[start] and value < axes.edges[start + bins]):
@@ -161,7 +161,7 @@ def place(y: Floats, events: int, cuts: Cuts, axes: Axes, flow: Integers, bins: 
         number = 0
         for k in range(3):
             if axes.bins[code, k] > 0 and number >= 0:
-                b = _bin_on_axis(y[axes.row[code, k] + i], axes, code, k)
+                b = bin_on_axis(y[axes.row[code, k] + i], axes, code, k)
                 number = number * axes.bins[code, k] + b if b >= 0 else -1
         if number >= 0:
             bins[i] = axes.offset[code] + number

@@ -6,7 +6,7 @@ from typing import NamedTuple
 
 import numpy as np
 import numpy.typing as npt
-from semitau.core.compiled import kernel
+from semitau.core.compiled import inlined, kernel
 from semitau.core.streams import event_key
 
 from ..block import CATEGORY, LANES, ROWS, SOFT_EFFICIENCY, SOFT_FOUND
@@ -159,11 +159,18 @@ def fill_pieces(
                 moments[category, p, q] += weights[i, p] * weights[i, q]
 
 
+@inlined
+def soft_weight(factor: float, efficiency: float, found: bool) -> float:
+    """Weight for a changed soft efficiency e' = f e: f if the particle was found, (1 - e')/(1 - e) if it was lost."""
+    lost = (1.0 - factor * efficiency) / (1.0 - efficiency) if efficiency < 1.0 else 0.0
+    return factor if found else lost
+
+
 @kernel
 def fill_soft(
     y: Floats, bins: Integers, events: int, factors: Floats, place: int, histogram: Floats, spread: Floats
 ) -> None:
-    """Weights of a changed soft efficiency e' = f e: f if the particle was found, (1 - e')/(1 - e) if it was lost.
+    """Weights of changed soft efficiencies.
 
     place : of the first factor among the weights; column 0 of the histogram comes before them.
     """
@@ -172,8 +179,7 @@ def fill_soft(
             efficiency = y[SOFT_EFFICIENCY + i]
             found = y[SOFT_FOUND + i] == 1.0
             for s in range(factors.shape[0]):
-                lost = (1.0 - factors[s] * efficiency) / (1.0 - efficiency) if efficiency < 1.0 else 0.0
-                weight = factors[s] if found else lost
+                weight = soft_weight(factors[s], efficiency, found)
                 histogram[bins[i], 1 + place + s] += weight
                 spread[place + s, 0] += weight
                 spread[place + s, 1] += weight * weight
