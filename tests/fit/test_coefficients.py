@@ -21,7 +21,9 @@ from semitau.fit.likelihood.likelihood import EXACT, VALUE, evaluate, workspace
 from semitau.fit.toys.toys import run_toys
 from semitau.fit.uncertainty.curves import profile
 from semitau.fit.uncertainty.decomposition import budget
+from semitau.fit.uncertainty.nuisances import held_in_turn
 
+from ..core.weighted_events import World
 from . import problems
 
 NAMES = ("SR", "T", "Im_T")
@@ -275,3 +277,19 @@ def test_nothing_to_fit_them_with() -> None:
     extra = (*templates.coefficients, Coefficient("VR", "VR", 0.0, 2.0))
     with pytest.raises(InputError, match="VR: no template depends on this free parameter"):
         Model(replace(templates, coefficients=extra), coefficients=("VR",))
+
+
+def test_sources_of_a_ratio_that_follows() -> None:
+    """R_D is a function of SR alone: every row of both budgets is |dR/dSR| times that of SR (chain rule)."""
+    made = World()
+    model = Model(made.template_set(), coefficients=("SR",))
+    result = maximise(model, model.expected_data())
+    step = 1e-5
+    ends = [made.rate((result.value("SR") + sign * step, made.base[1])) for sign in (1.0, -1.0)]
+    slope = abs(ends[0] - ends[1]) / (2.0 * step)
+    rows, of_coefficient = (held_in_turn(model, result, name) for name in ("R_D", "SR"))
+    assert set(rows) == set(of_coefficient) == {"statistical", "template statistics", "detector"}
+    for source, part in rows.items():
+        assert part == pytest.approx(slope * of_coefficient[source], rel=1e-6), source
+    split = budget(model, result)
+    assert split["R_D"].total == pytest.approx(slope * split["SR"].total, rel=1e-6)

@@ -6,11 +6,15 @@ from __future__ import annotations
 
 import os
 import tomllib
+from collections.abc import Callable
 from functools import cache
+from pathlib import Path
 from typing import Any
 
 import numpy as np
-from semitau.core.quadratic import templates_at
+import pytest
+from semitau.core.quadratic import templates_at, value_at
+from semitau.core.template_file import read_templates
 from semitau.core.templates import TemplateSet
 from semitau.fit.fitting.coefficients import deepest
 from semitau.fit.fitting.model import Model
@@ -19,6 +23,8 @@ from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import build_templates
 from semitau.gen.templates.component_plan import predicted_ratio
 from semitau.gen.templates.pseudo_data import pseudo_data
+from semitau.study.command_line import main
+from semitau.study.results import read_results
 
 from ..gen.marlow_study import TEXT
 from ..gen.marlow_study import study as marlow
@@ -70,3 +76,28 @@ def test_ratios_come_back_at_the_right_point() -> None:
     truth = predicted_ratio(made, "R_Dst", ("B+", "B0"))
     assert abs(right.value("R_Dst") - truth) < 4.0 * right.error("R_Dst")
     assert wrong.minus_log_likelihood > right.minus_log_likelihood + 5.0
+
+
+def test_a_study_floats_them(mini: Callable[..., Path]) -> None:
+    """`[fit] coefficients`: parameters with errors in the results, ratios that follow them, toys of both; no linearity.
+
+    The fit of the study is that of a model made by hand from its templates."""
+    path = mini({"[fit]\n": '[quadratic]\ncoefficients = ["SR", "T"]\n\n[fit]\ncoefficients = ["SR"]\n'})
+    assert main(["study", str(path), "--quiet", "--workers", "2"]) == 0
+    results = read_results(Path("out") / "results.json")
+    found = {ratio.name: ratio for ratio in results.ratios}
+    assert list(found) == ["R_D", "R_Dst", "SR"]
+    assert {p.name: p.kind for p in results.fit.parameters}["SR"] == "coefficient"
+    templates = read_templates(Path("out") / "templates.root")
+    model = Model(templates, coefficients=("SR",))
+    fitted, _ = deepest(model, templates.data)
+    assert found["SR"].value == fitted.value("SR")
+    assert found["SR"].error == fitted.error("SR") > 0
+    form = {(a, b): piece for a, b, piece in next(p for p in templates.parameters if p.name == "R_D").rate}
+    assert found["R_D"].value == pytest.approx(value_at(form, {"SR": found["SR"].value, "T": 0.0}), rel=1e-9)
+    assert results.toys is not None
+    assert {ratio.ratio for ratio in results.toys.ratios} == {"R_D", "R_Dst", "SR"}
+    assert results.linearity == ()
+    assert any("Linearity is left out" in warning for warning in results.warnings)
+    report = (Path("out") / "report.html").read_text(encoding="utf-8")
+    assert "Re C_SR" in report

@@ -99,30 +99,29 @@ def held_in_turn(model: Model, result: FitResult, name: str) -> dict[str, float]
     parameters = [model.parameters[index] for index in free]
     through = model.jacobian(result.values)[:, free]
     constraints = through.T @ model.precision(result.values) @ through
-    place = int(np.flatnonzero(free == model.index(name))[0])
+    towards = through[model.index(name)]  # of a parameter that is a function of others: its slopes
     everything = np.ones(free.size, dtype=bool)
-    total = _variance(whole + constraints, everything, place)
+    total = _variance(whole + constraints, everything, towards)
     groups: dict[str, np.ndarray] = {}
     constrained = np.array([p.constraint is not None and p.name != name for p in parameters])
     for group in dict.fromkeys(p.group for p, is_one in zip(parameters, constrained, strict=True) if is_one):
         groups[group] = constrained & np.array([p.group == group for p in parameters])
     to_fit = result.error(name) ** 2 / total
     rows_of = {
-        STATISTICAL: _variance(exact, ~constrained, place),
-        TEMPLATES: total - _variance(exact + constraints, everything, place),
+        STATISTICAL: _variance(exact, ~constrained, towards),
+        TEMPLATES: total - _variance(exact + constraints, everything, towards),
     }
     for group, members in groups.items():
-        rows_of[group] = total - _variance(whole + constraints, ~members, place)
+        rows_of[group] = total - _variance(whole + constraints, ~members, towards)
     return {source: float(np.sqrt(max(0.0, part) * to_fit)) for source, part in rows_of.items()}
 
 
-def _variance(information: Floats, kept: np.ndarray, place: int) -> float:
-    """Of the parameter at `place` when all but the kept ones are held."""
+def _variance(information: Floats, kept: np.ndarray, towards: Floats) -> float:
+    """Of what moves by `towards` with the parameters, when all but the kept ones are held."""
     matrix = information[np.ix_(kept, kept)]
     scale = 1.0 / np.sqrt(np.diag(matrix))
     inverse = np.linalg.inv(matrix * np.outer(scale, scale)) * np.outer(scale, scale)
-    at = int(np.sum(kept[:place]))
-    return float(inverse[at, at])
+    return float(towards[kept] @ inverse @ towards[kept])
 
 
 def _slope(model: Model, result: FitResult, index: int) -> Floats:

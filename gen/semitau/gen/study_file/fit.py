@@ -66,6 +66,9 @@ class FitSection(Table):
     injected: dict[RatioName, Positive] = Field(
         default={}, description="ratios that templates are made with; those of the form factors if left out"
     )
+    coefficients: Annotated[tuple[Identifier, ...], Distinct] = Field(
+        default=(), description="of [quadratic], fitted; the others stay as the templates were made"
+    )
     fixed: dict[Identifier, Number] = Field(default={}, description="parameters held, and at which value")
     functions: dict[Identifier, Text] = Field(
         default={}, description='parameters that follow others, e.g. R_Dst_B0 = "R_Dst_Bp" or yield_b = "1.1 * yield_a"'

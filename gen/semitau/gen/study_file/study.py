@@ -25,6 +25,7 @@ from .conflicts import conflicts
 from .detector import Detector
 from .double_charm import DoubleCharm
 from .fit import FitSection, Toys
+from .fit_conflicts import fit_conflicts
 from .fractions import BranchingFractionTables
 from .imports import Imports
 from .machine import Experiment, FormFactors, StudySection
@@ -67,7 +68,10 @@ class StudyConfig(Table):
     @model_validator(mode="after")
     def _agree(self, info: ValidationInfo) -> StudyConfig:
         folder = (info.context or {}).get("folder")
-        found = [*conflicts(self.sections(folder=folder)), *self._import_conflicts(folder)]
+        sections = self.sections(folder=folder)
+        found = [*conflicts(sections), *self._import_conflicts(folder)]
+        if not any(conflict.place[0] in ("form_factors", "mode", "variation") for conflict in found):
+            found += fit_conflicts(self, sections)  # whose names follow from these
         if found:
             text = "; ".join(conflict.what for conflict in found)
             raise PydanticCustomError(CONFLICTS, "{text}", {"text": text, "conflicts": found})

@@ -40,23 +40,6 @@ class ChannelPlan:
     variations: ChannelVariations
 
 
-def split_by_parent(study: StudyConfig, mode: Mode) -> bool:
-    """Whether the mode's templates are kept apart by parent: the fit has separate ratios, and the mode has a ratio, is
-    the denominator of one, or follows such a denominator."""
-    if study.fit.ratios != "separate":
-        return False
-    denominators = {followed.name for m in study.modes if m.scales_with and (followed := study.followed_by(m))}
-    followed = study.followed_by(mode)
-    return mode.name in denominators or (followed is not None and followed.name in denominators)
-
-
-def component_name(study: StudyConfig, mode: Mode, parent: str) -> str:
-    """Template component of the mode's decays of a parent: "D_tau", or "D_tau_Bp" and "D_tau_B0" if kept apart."""
-    if not split_by_parent(study, mode):
-        return mode.name
-    return f"{mode.name}_{'Bp' if parent == 'B+' else 'B0'}"
-
-
 def plan_channels(study: StudyConfig) -> tuple[ChannelPlan, ...]:
     """All chains of all modes, then of double charm, in the order of the study file; those that can never be seen are
     left out.

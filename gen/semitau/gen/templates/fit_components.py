@@ -7,12 +7,12 @@ from semitau.core.templates import Category, Coefficient, Component, Nuisance, O
 from ..decays.coefficients import LARGEST, label_of, part_of, quadratic_form, value_of
 from ..study_file.components import Mode, Yield
 from ..study_file.names import OBSERVABLES
+from ..study_file.parameter_names import PARENT_SUFFIX, component_name, split_by_parent
 from ..study_file.study import StudyConfig
-from .component_plan import component_name, injected_ratio, predicted_ratio, ratio_parents, split_by_parent
+from .component_plan import injected_ratio, predicted_ratio, ratio_parents
 
 _RATIO_LABEL = {"R_D": "R(D)", "R_Dst": "R(D*)"}
 _PARENT_LABEL = {"B+": "B⁺", "B0": "B⁰"}
-_PARENT_SUFFIX = {"B+": "_Bp", "B0": "_B0"}
 
 
 def template_categories(study: StudyConfig) -> tuple[Category, ...]:
@@ -82,7 +82,7 @@ def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...]
             part_label = f"{label} ({_PARENT_LABEL[parent]})" if split else label
             scales_with = []
             if mode.scales_with is not None:
-                ratio = mode.scales_with + (_PARENT_SUFFIX[parent] if split else "")
+                ratio = mode.scales_with + (PARENT_SUFFIX[parent] if split else "")
                 ratio_label = _RATIO_LABEL[mode.scales_with] + (f" of {_PARENT_LABEL[parent]}" if split else "")
                 injected = injected_ratio(study, mode, parent)
                 if ratio not in ratios:

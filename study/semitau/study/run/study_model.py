@@ -28,6 +28,7 @@ def study_model(study: StudyConfig, templates: TemplateSet) -> Model:
             correlated=[_together(block) for block in fit.correlated],
             bounds={name: (ends.min, ends.max) for name, ends in fit.bounds.items()},
             functions=fit.functions,
+            coefficients=fit.coefficients,
         )
     except InputError as error:
         raise InputError(*(_in_study(problem) for problem in error.problems)) from None

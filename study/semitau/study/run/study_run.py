@@ -26,6 +26,7 @@ from semitau.fit.uncertainty.nuisances import held_in_turn, nuisance_shifts
 from semitau.gen.study_file.study import StudyConfig
 
 from ..blinding.cover import WITHHELD, Cover, cover, passphrase
+from ..parts.coefficient_fits import fit_coefficients
 from ..parts.fit_parts import budget_parts, category_parts, component_parts, fit_part, nuisance_parts, ratio_parts
 from ..parts.projecting import projections
 from ..parts.quality_parts import quality_part
@@ -144,7 +145,7 @@ def found_results(
     with watch.stage("fit"):
         model = study_model(study, made.templates)
         data, source = fitted_data(study, model)
-        fitted = fit_or_fail(model, data)
+        fitted, notes = fit_coefficients(model, data) if model.coefficients else (fit_or_fail(model, data), ())
         split = budget(model, fitted)
         in_turn = {name: held_in_turn(model, fitted, name) for name in split}
         shifts = nuisance_shifts(model, data, fitted)
@@ -154,7 +155,9 @@ def found_results(
         toys = run_toys(model, study.toys.number, study.study.seed, workers, report)
         judged = quality(model, data, fitted, toys) if source.kind != "expected" and toys.valid.any() else None
     lines = None
-    if study.toys.linearity is not None:
+    if study.toys.linearity is not None and model.coefficients:
+        notes = *notes, "Linearity is left out: ratios that follow fitted coefficients have no multiples."
+    elif study.toys.linearity is not None:
         plan = study.toys.linearity
         with watch.stage("linearity"):
             progress = None if report is None else _one_bar(report, len(plan.factors))
@@ -187,6 +190,7 @@ def found_results(
             *form_factor_warnings(study),
             *worth_a_look(fit, ratios, source, made.cut_flow, fitted.certificate.protected_bins),
             *reweighting_warnings(made.reweightings),
+            *notes,
             *filter(None, [template_content(made.templates).text]),
         ),
         timing=watch.timing(workers),
