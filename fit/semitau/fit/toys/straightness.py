@@ -10,6 +10,7 @@ import numpy as np
 from scipy.stats import chi2, norm
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import stream_key
+from semitau.core.true_minus import formatted
 
 from ..fitting.model import Model
 from .toys import Report, ToyResults, run_toys
@@ -41,7 +42,7 @@ class Line:
         """What the line shows, in words."""
         slope = f"{self.parameter}: slope {self.slope:.4f} ± {self.slope_error:.4f}"
         away = (self.slope - 1.0) / self.slope_error
-        intercept = f"intercept {self.intercept:+.4f} ± {self.intercept_error:.4f}"
+        intercept = f"intercept {formatted(self.intercept, '+.4f')} ± {self.intercept_error:.4f}"
         if abs(away) >= SIGNIFICANT:
             return f"{slope}, {abs(away):.1f} standard deviations from 1, {intercept}: not linear with slope 1."
         reach = abs(self.slope - 1.0) + AT_95 * self.slope_error
@@ -50,7 +51,7 @@ class Line:
             f"a slope further than {reach:.1%} from 1 is excluded at 95% confidence."
         )
         if self.p_value is not None and self.p_value < 2.0 * norm.sf(SIGNIFICANT):
-            text += f" The points do not lie on a line (p = {self.p_value:.1g})."
+            text += f" The points do not lie on a line (p = {formatted(self.p_value, '.1g')})."
         return text
 
 

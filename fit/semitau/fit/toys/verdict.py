@@ -11,6 +11,7 @@ from math import ceil, isfinite
 
 import numpy as np
 from scipy.stats import binomtest, norm
+from semitau.core.true_minus import formatted
 
 from .pulls import Summary, binomial_interval
 
@@ -83,14 +84,16 @@ def judge(summary: Summary) -> Verdict:
 def _of_bias(
     summary: Summary, judgement: str, significance: float, p_value: float, excluded: float, needed: int
 ) -> str:
-    size = f"{summary.bias:+.2g} ± {summary.bias_error:.1g}"
-    relative = f"{summary.bias / summary.mean_error:+.3f} of the fit's error"
+    size = f"{formatted(summary.bias, '+.2g')} ± {formatted(summary.bias_error, '.1g')}"
+    relative = f"{formatted(summary.bias / summary.mean_error, '+.3f')} of the fit's error"
     if judgement == "biased":
         return (
-            f"biased by {size}, {relative} ({abs(significance):.1f} standard deviations, p = {p_value:.1g}, "
-            f"{summary.fitted} toys); a bias beyond {excluded:.2f} of the error is excluded at 95% confidence."
+            f"biased by {size}, {relative} ({abs(significance):.1f} standard deviations, "
+            f"p = {formatted(p_value, '.1g')}, {summary.fitted} toys); "
+            f"a bias beyond {excluded:.2f} of the error is excluded at 95% confidence."
         )
-    seen = f"mean of fitted minus injected {size} ({abs(significance):.1f} standard deviations, p = {p_value:.2g})"
+    chance = formatted(p_value, ".2g")
+    seen = f"mean of fitted minus injected {size} ({abs(significance):.1f} standard deviations, p = {chance})"
     if judgement == "unbiased":
         return (
             f"{seen}; {summary.fitted} toys exclude a bias beyond {excluded:.3f} of the fit's error at 95% confidence."

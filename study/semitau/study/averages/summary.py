@@ -7,6 +7,7 @@ from collections.abc import Iterator
 from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
+from semitau.core.true_minus import formatted
 
 from ..numbers import GAP, digits_for, percent, shortened, signed, with_error
 from ..terminal.summary import plain_table
@@ -76,7 +77,8 @@ def quality_line(results: AverageResults) -> Text:
     if results.p_value is not None:
         freedom = results.degrees_of_freedom
         parts.append(
-            f"χ² {results.chi2:.1f} for {freedom} degree{'s' * (freedom != 1)} of freedom, p = {results.p_value:.2g}."
+            f"χ² {results.chi2:.1f} for {freedom} degree{'s' * (freedom != 1)} of freedom, "
+            f"p = {formatted(results.p_value, '.2g')}."
         )
     return Text(" ".join(parts))
 
@@ -101,7 +103,7 @@ def tension_text(results: AverageResults) -> Text:
     single = ", ".join(f"{signed(sigmas, 1, plus=True)}{GAP}σ in {RATIOS[r]}" for r, sigmas in found.each.items())
     text = f"From the prediction {predicted} it differs by {single}"
     if found.degrees_of_freedom > 1:
-        text += f"; together by {found.sigmas:.2f}{GAP}σ (χ² {found.chi2:.1f}, p = {found.p_value:.2g})"
+        text += f"; together by {found.sigmas:.2f}{GAP}σ (χ² {found.chi2:.1f}, p = {formatted(found.p_value, '.2g')})"
     return Text(f"{text}.")
 
 

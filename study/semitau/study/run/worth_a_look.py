@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Sequence
 
+from semitau.core.true_minus import formatted
+
 from ..numbers import percent, signed
 from ..results import CutFlowComponent, DataSource, Fit, RatioResult
 
@@ -34,8 +36,8 @@ def _of_fit(fit: Fit, data: DataSource, protected_bins: int) -> Iterator[str]:
         p_value = goodness.p_value if goodness.toy_p_value is None else goodness.toy_p_value
         if p_value is not None and p_value < BAD_FIT:
             yield (
-                f"The model does not describe the data (p = {p_value:.1g}): look for the projection that is off, and "
-                "for a component or variation that is missing."
+                f"The model does not describe the data (p = {formatted(p_value, '.1g')}): look for the projection that "
+                "is off, and for a component or variation that is missing."
             )
     for parameter in fit.parameters:
         if parameter.constraint is not None:
