@@ -9,18 +9,18 @@ from math import inf
 import numpy as np
 from numpy.typing import ArrayLike
 from semitau.core.errors import InputError, Problem
-from semitau.core.quadratic import contents_at, injected_values
+from semitau.core.quadratic import injected_values
 from semitau.core.templates import Floats, TemplateSet
 
 from ..likelihood.constraints import BLOCK, LOG_NORMAL, Constraint, Correlated
 from ..likelihood.constraints import arrays_of as constraint_arrays
 from ..likelihood.functions import arrays_of as function_arrays
 from ..likelihood.functions import jacobian, read_function, set_functions
-from ..likelihood.interpolation import bend
 from ..likelihood.layout import APPROXIMATE, EXACT_BY_COMPONENT, LIGHT, Indices, Layout, lay_out
 from ..likelihood.likelihood import expectations, workspace
-from ..likelihood.scaled_parts import growth, parts_of
+from ..likelihood.scaled_parts import parts_of
 from .coefficients import floated, followed_rates, set_twice, starting_shifts
+from .component_expectations import component_expectations
 from .data import Data, Source, read_data
 from .knowledge import Knowledge, refuse, unknown
 
@@ -207,23 +207,7 @@ class Model:
         They add up to `expected` wherever the sum is above the floor of the protection (interpolation.py).
         """
         values = dict(zip(self.names, self.values(parameters).tolist(), strict=True))
-        injected = {parameter.name: parameter.injected for parameter in self.parameters}
-        following = followed_rates(self.templates, self.coefficients)
-        point = injected_values(self.templates) | {name: values[name] for name in self.coefficients}
-        out = {}
-        for component in self.templates.components:
-            scale = float(np.prod([values[n] / injected[n] for n in component.scales_with if n not in following]))
-            for category in self.templates.categories:
-                template = self.templates.templates.get((category.name, component.name))
-                if template is None:
-                    continue
-                contents, shifts = contents_at(template, point), np.zeros_like(template.nominal)
-                for name, plus in template.plus.items():
-                    minus, theta = template.minus[name], values[name]
-                    shifts += 0.5 * (plus - minus) * theta
-                    shifts += (0.5 * (plus + minus) - template.nominal) * bend(theta)[0]
-                out[category.name, component.name] = scale * (contents + shifts * growth(template, contents))
-        return out
+        return component_expectations(self.templates, values, self.coefficients)
 
     def template_errors(self) -> dict[str, Floats]:
         """Relative error of each bin's expectation from finite templates, by category, at the injected values."""

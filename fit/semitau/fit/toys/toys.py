@@ -5,6 +5,9 @@ fluctuates too: the centre of each constraint about the injected value, the cent
 factor about 1. So the errors, which contain all of these, must cover. (Keeping the centres in place would make toys
 that vary less than the errors say.) Every toy draws from its own numbered stream: the same toys for any number of
 workers.
+
+The counts may also be drawn about what another model expects, to see what this model makes of them; the auxiliary
+measurements stay those of this model, since they are what its user knows.
 """
 
 from __future__ import annotations
@@ -45,6 +48,36 @@ _TEMPLATES = np.uint64(1 << 41)
 
 
 @dataclass(frozen=True, eq=False)
+class Expectation:
+    """What a model expects, for another model to be fitted to.
+
+    counts : (bins,) expected events. true : true value of each of its ratios.
+    """
+
+    counts: Floats
+    true: Mapping[str, float]
+
+    @classmethod
+    def of(cls, model: Model) -> Expectation:
+        """What a model expects at its injected values."""
+        counts = model.expected_counts()
+        counts.flags.writeable = False
+        return cls(counts, {name: float(model.injected[model.index(name)]) for name in model.ratios})
+
+    def seen_by(self, model: Model) -> tuple[Floats, float]:
+        """(bins,) the counts without those where the model expects none, which no fit can take; and the sum of these.
+
+        Raises InputError when the model has other bins.
+        """
+        if self.counts.shape != (model.bins,):
+            raise InputError(
+                Problem("the models have different bins", "expectation", str(self.counts.shape), f"({model.bins},)")
+            )
+        hollow = model.layout.bin_lane < 0
+        return np.where(hollow, 0.0, self.counts), float(self.counts[hollow].sum())
+
+
+@dataclass(frozen=True, eq=False)
 class ToyResults:
     """All fits of one set of toys.
 
@@ -53,6 +86,7 @@ class ToyResults:
     values, errors : (toys, parameters) fitted values and errors; the errors of failed fits are NaN.
     statuses : (toys,) how each fit ended, 0 for success (ending.py).
     statistics : (toys,) goodness-of-fit statistic of each; its distribution replaces χ² when bins hold few events.
+    foreign : whether the counts were drawn about what another model expects; `injected` then has its true ratios.
     """
 
     names: tuple[str, ...]
@@ -64,6 +98,7 @@ class ToyResults:
     statistics: Floats
     steps: NDArray[np.int64]
     seed: int
+    foreign: bool = False
 
     @property
     def number(self) -> int:
@@ -127,6 +162,7 @@ def run_toys(
     report: Report | None = None,
     *,
     injected: Mapping[str, float] | ArrayLike | None = None,
+    expectation: Expectation | None = None,
     label: str = "toys",
 ) -> ToyResults:
     """Draw and fit n toys.
@@ -134,6 +170,8 @@ def run_toys(
     seed : whole number; toy i depends on (seed, i) alone.
     workers : threads, None for all cores; report : called as report(label, done, n).
     injected : true values, by name over those of the templates, or a (parameters,) array.
+    expectation : what another model expects; the counts are drawn about it, with the same random numbers as toys of
+        this model, and its ratios are the true ones. Bins where this model expects nothing stay empty.
 
     Failed fits are counted, not raised. Raises InputError for n < 1, a bad seed, or unknown names.
     """
@@ -143,7 +181,8 @@ def run_toys(
     start = truth.copy()
     held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
     start[held] = model.start[held]
-    stream, means = stream_key(seed, "toys"), _padded_means(model, truth)
+    stream = stream_key(seed, "toys")
+    means = _padded_means(model, truth) if expectation is None else model.lanes(expectation.seen_by(model)[0], 0.0)
     sizes = [min(BATCH, n - first) for first in range(0, n, BATCH)]
     tasks = [
         partial(_batch, model, stream, number * BATCH, size, truth, start, means) for number, size in enumerate(sizes)
@@ -151,10 +190,15 @@ def run_toys(
     progress = None if report is None else lambda done, _: report(label, min(n, done * BATCH), n)
     parts = list(run(tasks, workers, progress))
     values, errors, statuses, statistics, steps = (np.concatenate(part) for part in zip(*parts, strict=True))
+    if expectation is not None:
+        truth = truth.copy()
+        for name, value in expectation.true.items():
+            truth[model.index(name)] = value
     for array in (truth, values, errors, statuses, statistics, steps):
         array.flags.writeable = False
     ratios = tuple(name for name in model.ratios if model.parameters[model.index(name)].fixed is None)
-    return ToyResults(model.names, ratios, truth, values, errors, statuses, statistics, steps, int(seed))
+    foreign = expectation is not None
+    return ToyResults(model.names, ratios, truth, values, errors, statuses, statistics, steps, int(seed), foreign)
 
 
 Batch = tuple[Floats, Floats, NDArray[np.int64], Floats, NDArray[np.int64]]

@@ -9,7 +9,7 @@ from __future__ import annotations
 from dataclasses import dataclass
 
 import numpy as np
-from semitau.core.errors import Problem, RunError
+from semitau.core.errors import InputError, Problem, RunError
 from semitau.core.streams import event_key, stream_key
 from semitau.core.templates import Category, Floats
 
@@ -81,8 +81,10 @@ def quality(model: Model, data: Source, result: FitResult, toys: ToyResults) -> 
 
     toys : of the same model; they are drawn again from their seed, not fitted again.
 
-    Raises RunError when the fit is not valid or no toy could be fitted.
+    Raises RunError when the fit is not valid or no toy could be fitted, InputError for toys of another model.
     """
+    if toys.foreign:
+        raise InputError(Problem("the toys were drawn from another model", "goodness of fit"))
     if not result.valid or not toys.valid.any():
         raise RunError(*(result.reasons or (Problem("no toy could be fitted", "goodness of fit"),)))
     observed = model.data(data)
