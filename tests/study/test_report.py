@@ -5,11 +5,13 @@ from __future__ import annotations
 import re
 from collections import Counter
 from html.parser import HTMLParser
+from itertools import pairwise
 from pathlib import Path
 
 import pytest
 from semitau.study.pictures import draw_pictures
 from semitau.study.report.page import page
+from semitau.study.report.sections import SECTIONS
 from semitau.study.results import STATEMENT, Results
 from semitau.study.terminal.summary import VERDICT_WORDS
 
@@ -32,6 +34,7 @@ class Outline(HTMLParser):
         self.open: list[str] = []
         self.ids: list[str] = []
         self.targets: list[str] = []
+        self.held: list[str] = []
         self.outside: list[str] = []
         self.text: list[str] = []
 
@@ -57,7 +60,10 @@ class Outline(HTMLParser):
             if name == "id":
                 self.ids.append(value)
             elif name in ("href", "src", "xlink:href"):
-                (self.targets if value.startswith("#") else self.outside).append(value)
+                kept = (
+                    self.targets if value.startswith("#") else self.held if value.startswith("data:") else self.outside
+                )
+                kept.append(value)
             self.targets += [f"#{target}" for target in re.findall(r"url\(#([^)]+)\)", value)]
 
 
@@ -97,7 +103,32 @@ def test_statement_and_verdict_come_first(html: str, outline: Outline) -> None:
     places = [text.index(words, text.index(STATEMENT)) for words in order]
     assert places[0] < places[1]
     assert text.count(STATEMENT) == 2
-    assert html.index('id="verdict"') < html.index('id="ratios"') < html.index('id="provenance"')
+    sections = re.findall(r'<section id="(\w+)"', html)
+    assert sections[:3] == ["verdict", "ratios", "uncertainty"]
+    assert sections[-2:] == ["study", "provenance"]
+
+
+def test_contents_name_every_section(html: str) -> None:
+    contents = re.search(r"<nav.*?</nav>", html, flags=re.S)
+    assert contents is not None
+    linked = re.findall(r'href="#(\w+)"', contents[0])
+    assert linked == re.findall(r'<section id="(\w+)"', html)
+
+
+def test_headings_go_down_one_step_at_a_time(html: str) -> None:
+    levels = [int(level) for level in re.findall(r"<h([1-6])", html)]
+    assert levels[0] == 1
+    assert levels.count(1) == 1
+    assert all(after - before <= 1 for before, after in pairwise(levels))
+
+
+def test_table_headings_say_what_they_head(html: str) -> None:
+    tables = re.findall(r"<table.*?</table>", html, flags=re.S)
+    assert len(tables) >= 6
+    for table in tables:
+        assert 'aria-labelledby="' in table
+        assert re.findall(r"<th(?! scope=\"(?:col|row)\")[ >]", table) == []
+        assert table.count('<th scope="row"') == table.count("<tr") - 1
 
 
 def test_numbers_of_the_results_stand_in_it(outline: Outline, results: Results) -> None:
@@ -132,5 +163,8 @@ def test_every_verdict_has_its_words(status: str, results: Results) -> None:
 def test_template_and_style_are_package_data() -> None:
     import semitau.study.report.page as home
 
-    for name in ("page.html.j2", "page.css"):
-        assert (Path(home.__file__).parent / name).is_file()
+    folder = Path(home.__file__).parent
+    for name in ("page.html.j2", "macros.html.j2", "page.css", *(f"sections/{s.name}.html.j2" for s in SECTIONS)):
+        assert (folder / name).is_file(), name
+    # And none that no section shows.
+    assert {file.name for file in (folder / "sections").iterdir()} == {f"{s.name}.html.j2" for s in SECTIONS}

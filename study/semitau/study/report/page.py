@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Sequence
 from pathlib import Path
+from urllib.parse import quote
 
 from jinja2 import Environment, FileSystemLoader, StrictUndefined
 from markupsafe import Markup
@@ -15,7 +17,10 @@ from ..pictures.sheet import Picture
 from ..results import Results
 from ..terminal.progress import duration
 from ..terminal.summary import VERDICT_WORDS
+from .findings import findings
 from .inline_svg import inline_svg
+from .sections import report_tables, shown_sections
+from .table import chance
 
 HERE = Path(__file__).parent
 
@@ -47,11 +52,18 @@ def page(results: Results, pictures: Sequence[Picture]) -> str:
         "with_error": with_error,
         "digits_for": digits_for,
         "duration": duration,
+        "p_value": lambda value: chance(value).shown,
     }
+    sections = shown_sections(results)
     return environment.get_template("page.html.j2").render(
         results=results,
+        sections=sections,
+        tables=report_tables(results, sections),
+        findings=findings(results),
         data_label=DATA_LABELS[results.data.kind],
         headline=VERDICT_WORDS[results.verdict.status],
+        stem=file_stem(results.study.name),
+        study_address=f"data:text/plain;charset=utf-8,{quote(results.study.text, safe='')}",
         style=Markup((HERE / "page.css").read_text()),
         pictures={
             picture.name: {
@@ -63,3 +75,8 @@ def page(results: Results, pictures: Sequence[Picture]) -> str:
             for picture in pictures
         },
     )
+
+
+def file_stem(name: str) -> str:
+    """The name of a study as the beginning of file names."""
+    return re.sub(r"[^a-z0-9]+", "_", name.lower()).strip("_") or "study"

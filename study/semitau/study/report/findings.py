@@ -1,0 +1,113 @@
+"""The most important of every section in a sentence or two, for the first page."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+
+from ..averages.document import AverageResults
+from ..bias.part import Bias
+from ..design.part import Design
+from ..numbers import percent, signed, with_error
+from ..reach.part import Reach
+from ..results import Results
+from .table import chance
+
+BAD_FIT = 0.01
+"""p-value of the fit below which it is worth a look; by chance it happens in one study of a hundred."""
+
+
+@dataclass(frozen=True)
+class Finding:
+    """section : where it stands in full. topic, text : what was found. alarming : whether somebody must look at it."""
+
+    section: str
+    topic: str
+    text: str
+    alarming: bool = False
+
+
+def findings(results: Results) -> tuple[Finding, ...]:
+    """What each section found, in the order of the report."""
+    found = [*_uncertainty(results)]
+    if results.bias is not None:
+        found.append(_bias(results.bias))
+    found += _goodness(results)
+    if results.design is not None:
+        found.append(_design(results.design))
+    if results.reach is not None:
+        found.append(_reach(results.reach))
+    if results.average is not None:
+        found.append(_average(results.average))
+    return tuple(found)
+
+
+def _uncertainty(results: Results) -> Iterator[Finding]:
+    parts = []
+    ratios = {ratio.name: ratio for ratio in results.ratios}
+    for budget in results.budget:
+        ratio = ratios[budget.ratio]
+        # Hidden ratios are no scale for errors.
+        scale = abs(ratio.injected if results.blinding is not None else ratio.value)
+        if not (scale and budget.rows):
+            continue
+        ordered = sorted(budget.rows, key=lambda row: -row.error)[:2]
+        sources = ", then ".join(f"{row.label} {percent(row.error / scale)}" for row in ordered)
+        parts.append(f"{ratio.label} to {percent(budget.total / scale)}, first of all {sources}")
+    if parts:
+        yield Finding("uncertainty", "Uncertainty", f"{'; '.join(parts)}.")
+
+
+def _bias(bias: Bias) -> Finding:
+    others = len(bias.studies) - 1
+    if bias.not_covered:
+        return Finding("bias", "Alternatives", " ".join(bias.not_covered), alarming=True)
+    text = f"{others} alternative{'s' * (others != 1)}: no shift of a ratio is left uncovered."
+    return Finding("bias", "Alternatives", " ".join((text, *bias.sentences[:2])))
+
+
+def _goodness(results: Results) -> Iterator[Finding]:
+    goodness = results.fit.goodness
+    if goodness is None or results.data.kind == "expected":
+        return
+    p_value = goodness.p_value if goodness.toy_p_value is None else goodness.toy_p_value
+    if p_value is None:
+        return
+    where = "goodness" if results.quality is not None else "fit"
+    source = "χ²" if goodness.toy_p_value is None else "toys"
+    text = f"p {'' if p_value < 0.0005 else '= '}{chance(p_value).shown} from {source}"
+    if results.quality is not None and results.quality.categories:
+        worst = min(results.quality.categories, key=lambda category: category.p_value)
+        text += (
+            f"; worst category: {worst.label}, p {'' if worst.p_value < 0.0005 else '= '}{chance(worst.p_value).shown}"
+        )
+    yield Finding(where, "Quality of the fit", f"{text}.", alarming=p_value < BAD_FIT)
+
+
+def _design(design: Design) -> Finding:
+    check = design.confirmation
+    flat = [curve.label for curve in design.curves if not curve.matters]
+    text = (
+        f"The expected error at the proposed working point is smaller by {percent(check.gain)} ± "
+        f"{percent(check.uncertainty)} on independent events ({percent(design.gain)} on those of the search)"
+    )
+    text += "." if check.confirmed else ": not confirmed, the study stays as good as it is."
+    if flat:
+        text += f" Does not matter: {', '.join(flat)}."
+    return Finding("design", "Design", text)
+
+
+def _reach(reach: Reach) -> Finding:
+    sentences = [*(part.sentence for part in reach.needed), *(part.sentence for part in reach.walls)]
+    return Finding("reach", "Reach", " ".join(sentences))
+
+
+def _average(average: AverageResults) -> Finding:
+    values = ", ".join(f"{ratio.label} = {with_error(ratio.value, ratio.error)}" for ratio in average.ratios)
+    text = f"With the other measurements: {values}"
+    if average.tension is not None:
+        text += f", {signed(average.tension.sigmas, 2)} σ from the prediction"
+        for case in average.planned[:2]:
+            if case.tension is not None:
+                text += f"; with {case.planned} found at the {case.found_at}, {signed(case.tension.sigmas, 2)} σ"
+    return Finding("average", "Average", f"{text}.")
