@@ -26,6 +26,7 @@ from semitau.fit.uncertainty.nuisances import held_in_turn, nuisance_shifts
 from semitau.gen.study_file.study import StudyConfig
 
 from ..blinding.cover import WITHHELD, Cover, cover, passphrase
+from ..inputs.gathering import inputs_part
 from ..parts.coefficient_fits import fit_coefficients
 from ..parts.fit_parts import budget_parts, category_parts, component_parts, fit_part, nuisance_parts, ratio_parts
 from ..parts.projecting import projections
@@ -186,6 +187,7 @@ def found_results(
         projections=projections(model, shown, data, withheld),
         cut_flow=made.cut_flow,
         reweightings=made.reweightings,
+        inputs=inputs_part(study, made.templates),
         warnings=(
             *form_factor_warnings(study),
             *worth_a_look(fit, ratios, source, made.cut_flow, fitted.certificate.protected_bins),
