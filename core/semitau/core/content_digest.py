@@ -3,11 +3,15 @@
 from __future__ import annotations
 
 import hashlib
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Mapping, Sequence
 from collections.abc import Set as AnySet
 from dataclasses import fields, is_dataclass
+from functools import cache
+from typing import Any
 
 import numpy as np
+
+_PLAIN = (bool, int, float, complex, np.generic)
 
 
 def content_digest(*values: object) -> str:
@@ -20,44 +24,56 @@ def content_digest(*values: object) -> str:
     Raises TypeError for anything else, e.g. a function: its contents cannot be seen, and a guess could be wrong.
     """
     digest = hashlib.sha256()
-    for part in _parts(values):
-        # The length in front keeps neighbours apart: ("ab", "c") is not ("a", "bc").
-        digest.update(b"%d:" % len(part))
-        digest.update(part)
+    _feed(digest, values)
     return digest.hexdigest()
 
 
-def _parts(value: object) -> Iterator[bytes]:
-    kind = type(value).__qualname__
-    if value is None or isinstance(value, bool | int | float | complex | np.generic):
-        yield f"{kind} {value!r}".encode()
-    elif isinstance(value, str):
-        yield f"str {value}".encode()
+def _feed(digest: Any, value: object) -> None:
+    """Each part with its kind and length in front, which keeps neighbours apart: ("ab", "c") is not ("a", "bc")."""
+    kind = type(value)
+    if kind is str:
+        _add(digest, "str", value.encode())  # type: ignore[attr-defined]
+    elif value is None or isinstance(value, _PLAIN):
+        _add(digest, kind.__qualname__, repr(value).encode())
     elif isinstance(value, bytes):
-        yield b"bytes " + value
+        _add(digest, "bytes", value)
     elif isinstance(value, np.ndarray):
         if value.dtype.hasobject:
             raise TypeError("an array of objects has no digest")
-        yield f"array {value.dtype.str} {value.shape}".encode()
-        yield np.ascontiguousarray(value).tobytes()
+        _add(digest, f"array {value.dtype.str} {value.shape}", np.ascontiguousarray(value).tobytes())
     elif is_dataclass(value) and not isinstance(value, type):
-        names = tuple(field.name for field in fields(value))
-        yield f"{kind} {len(names)}".encode()
+        names = _names(kind)  # type: ignore[arg-type]
+        _add(digest, kind.__qualname__, " ".join(names).encode())
         for name in names:
-            yield name.encode()
-            yield from _parts(getattr(value, name))
+            _feed(digest, getattr(value, name))
     elif isinstance(value, Mapping):
-        yield f"mapping {len(value)}".encode()
+        _add(digest, "mapping", b"%d" % len(value))
         for key, item in value.items():
-            yield from _parts(key)
-            yield from _parts(item)
+            _feed(digest, key)
+            _feed(digest, item)
     elif isinstance(value, AnySet):
-        members = sorted(content_digest(item) for item in value)
-        yield f"set {' '.join(members)}".encode()
+        _add(digest, "set", " ".join(sorted(content_digest(item) for item in value)).encode())
+    elif isinstance(value, str):
+        _add(digest, "str", str(value).encode())
     elif isinstance(value, Sequence):
-        names = tuple(getattr(value, "_fields", ()))
-        yield f"{kind if names else 'sequence'} {len(value)} {' '.join(names)}".encode()
+        if kind is tuple and set(map(type, value)) == {float}:
+            # Most of what there is: form factors with their correlations.
+            _add(digest, "floats", np.array(value).tobytes())
+            return
+        fields_of_tuple = getattr(value, "_fields", None)
+        names = ("sequence",) if fields_of_tuple is None else (kind.__qualname__, *fields_of_tuple)
+        _add(digest, " ".join(names), b"%d" % len(value))
         for item in value:
-            yield from _parts(item)
+            _feed(digest, item)
     else:
-        raise TypeError(f"{type(value).__name__} has no digest")
+        raise TypeError(f"{kind.__name__} has no digest")
+
+
+def _add(digest: Any, kind: str, content: bytes) -> None:
+    digest.update(b"%s %d:" % (kind.encode(), len(content)))
+    digest.update(content)
+
+
+@cache
+def _names(kind: type) -> tuple[str, ...]:
+    return tuple(field.name for field in fields(kind))

@@ -8,6 +8,7 @@ the tau decay is the form W = 1 + odd . sigma on the two lepton helicities.
 
 from __future__ import annotations
 
+from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
@@ -49,7 +50,7 @@ class PieceTable(NamedTuple):
 
 def piece_table(channel: Channel, names: tuple[str, ...]) -> tuple[PieceTable, Operators]:
     """Table for `bilinear_pieces`, and how the named parts of coefficients combine its pieces."""
-    taken = operators(channel.decay, names, _columns)
+    taken = _operators(channel.decay, names)
     nodes_first = np.ascontiguousarray(np.moveaxis(taken.amplitudes, 0, -2))
     table = PieceTable(
         columns=nodes_first.ravel(),
@@ -65,6 +66,11 @@ def piece_table(channel: Channel, names: tuple[str, ...]) -> tuple[PieceTable, O
 def no_pieces(chain: VariationTable) -> PieceTable:
     """A table that asks for nothing."""
     return PieceTable(np.zeros(0), 0, 0, 0, np.zeros(0), chain)
+
+
+@lru_cache(maxsize=8)  # chains of one decay follow each other
+def _operators(decay: Decay, names: tuple[str, ...]) -> Operators:
+    return operators(decay, names, _columns)
 
 
 def _columns(decay: Decay) -> npt.NDArray[np.complex128]:
