@@ -39,10 +39,13 @@ if TYPE_CHECKING:
     from .toys.neyman import toy_interval as toy_interval
     from .toys.poor_templates import Corrected as Corrected
     from .toys.poor_templates import correct_for_templates as correct_for_templates
+    from .toys.redrawn_templates import toys_with_new_templates as toys_with_new_templates
     from .toys.straightness import Linearity as Linearity
     from .toys.straightness import linearity as linearity
     from .toys.toys import ToyResults as ToyResults
     from .toys.toys import run_toys as run_toys
+    from .uncertainty.allocation import best_events as best_events
+    from .uncertainty.allocation import least_events as least_events
     from .uncertainty.curves import Profile as Profile
     from .uncertainty.curves import Region as Region
     from .uncertainty.curves import profile as profile
@@ -56,6 +59,8 @@ if TYPE_CHECKING:
     from .uncertainty.nuisances import nuisance_shifts as nuisance_shifts
     from .uncertainty.prospects import Reach as Reach
     from .uncertainty.prospects import reach as reach
+    from .uncertainty.template_costs import EventNumbers as EventNumbers
+    from .uncertainty.template_costs import event_numbers as event_numbers
 
 _HOME = {
     "Average": ".averages.combination",
@@ -63,6 +68,7 @@ _HOME = {
     "Corrected": ".toys.poor_templates",
     "Correlated": ".likelihood.constraints",
     "Data": ".fitting.data",
+    "EventNumbers": ".uncertainty.template_costs",
     "FitResult": ".fitting.result",
     "Gaussian": ".likelihood.constraints",
     "IntervalCoverage": ".toys.covering",
@@ -82,12 +88,15 @@ _HOME = {
     "ToyResults": ".toys.toys",
     "Uniform": ".likelihood.constraints",
     "average": ".averages.combination",
+    "best_events": ".uncertainty.allocation",
     "budget": ".uncertainty.decomposition",
     "correct_for_templates": ".toys.poor_templates",
     "deepest": ".fitting.coefficients",
+    "event_numbers": ".uncertainty.template_costs",
     "held_in_turn": ".uncertainty.nuisances",
     "interpolate": ".likelihood.interpolation",
     "interval_coverage": ".toys.covering",
+    "least_events": ".uncertainty.allocation",
     "linearity": ".toys.straightness",
     "maximise": ".fitting.newton",
     "mirrored": ".fitting.shape_and_rate",
@@ -104,6 +113,7 @@ _HOME = {
     "templates_at": "semitau.core.quadratic",
     "tension": ".averages.compatibility",
     "toy_interval": ".toys.neyman",
+    "toys_with_new_templates": ".toys.redrawn_templates",
 }
 
 __all__ = [
@@ -112,6 +122,7 @@ __all__ = [
     "Corrected",
     "Correlated",
     "Data",
+    "EventNumbers",
     "FitResult",
     "Gaussian",
     "IntervalCoverage",
@@ -131,12 +142,15 @@ __all__ = [
     "ToyResults",
     "Uniform",
     "average",
+    "best_events",
     "budget",
     "correct_for_templates",
     "deepest",
+    "event_numbers",
     "held_in_turn",
     "interpolate",
     "interval_coverage",
+    "least_events",
     "linearity",
     "maximise",
     "mirrored",
@@ -153,6 +167,7 @@ __all__ = [
     "templates_at",
     "tension",
     "toy_interval",
+    "toys_with_new_templates",
 ]
 
 
