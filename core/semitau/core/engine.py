@@ -1,8 +1,9 @@
 """Run many independent tasks on all cores and hand their results back in the order of the tasks.
 
 The order of the results, and so everything summed from them, does not depend on the number of workers. Workers are
-threads, because the compiled kernels let go of the interpreter lock. Any other `concurrent.futures.Executor`
-(processes, a cluster) can take their place; then tasks and results must pickle.
+threads, because the compiled kernels let go of the interpreter lock. Any other `concurrent.futures.Executor` can take
+their place, or, for all that runs inside `elsewhere`, other machines (cluster.py); then tasks and results must pickle.
+A `Job` is a task that keeps apart what it has in common with others, which then travels once.
 """
 
 from __future__ import annotations
@@ -12,15 +13,55 @@ import os
 from collections import deque
 from collections.abc import Callable, Iterable, Iterator, Sized
 from concurrent.futures import Executor, Future, ThreadPoolExecutor
-from typing import TypeVar
+from contextlib import contextmanager
+from dataclasses import dataclass
+from typing import Any, Generic, Protocol, TypeVar
 
 from .errors import InputError, Problem
 
 T = TypeVar("T")
+T_co = TypeVar("T_co", covariant=True)
 Report = Callable[[int, int | None], None]
 
 WAITING_PER_WORKER = 2
 """Tasks handed out and not yet consumed, per worker: enough to keep each busy, few enough to bound the memory."""
+
+
+@dataclass(frozen=True, eq=False)
+class Job(Generic[T_co]):
+    """A task: function(common, *own).
+
+    function : of a module, so that other processes find it by its name. common : may be large; workers elsewhere get it
+    once for all successive jobs with the very same object. own : small.
+    """
+
+    function: Callable[..., T_co]
+    common: object
+    own: tuple[Any, ...] = ()
+
+    def __call__(self) -> T_co:
+        return self.function(self.common, *self.own)
+
+
+class Workers(Protocol):
+    """Workers that are not threads of this process."""
+
+    def results(self, tasks: Iterator[Callable[[], T]]) -> Iterator[T]:
+        """Results in the order of the tasks, a bounded number of them under way."""
+        ...
+
+
+_ELSEWHERE: contextvars.ContextVar[Workers | None] = contextvars.ContextVar("semitau_workers", default=None)
+
+
+@contextmanager
+def elsewhere(workers: Workers) -> Iterator[None]:
+    """Tasks that are run inside, by this thread, go to these workers."""
+    before = _ELSEWHERE.set(workers)
+    try:
+        yield
+    finally:
+        _ELSEWHERE.reset(before)
 
 
 def available_cores() -> int:
@@ -66,6 +107,8 @@ def run(
     executor : runs the tasks instead of threads started here; `workers` then only sets how many tasks are handed out
         ahead of the results. It is left running.
 
+    Inside `elsewhere` the workers are those given there, as many as they are.
+
     At most WAITING_PER_WORKER tasks per worker are under way or finished and not consumed: a slow consumer slows the
     workers instead of piling up results. An exception of a task is raised at its place in the order, whatever failed
     first by the clock; tasks not started are then cancelled, as they are on Ctrl-C and when the iterator is closed.
@@ -78,6 +121,8 @@ def run(
     total = len(tasks) if isinstance(tasks, Sized) else None
     if executor is not None:
         results = _spread(iter(tasks), executor.submit, count)
+    elif (others := _ELSEWHERE.get()) is not None:
+        results = others.results(iter(tasks))
     elif count == 1:
         results = (task() for task in tasks)
     else:

@@ -42,6 +42,10 @@ class SemitauError(Exception):
         self.problems = problems
         super().__init__("\n".join(map(str, problems)))
 
+    def __reduce__(self) -> tuple[type[SemitauError], tuple[Problem, ...]]:
+        # An exception is pickled with its text alone; this one would lose its problems on the way from a worker.
+        return type(self), self.problems
+
 
 class InputError(SemitauError):
     """What the user gave is wrong: study file, template file, data, options. Exit status 2."""

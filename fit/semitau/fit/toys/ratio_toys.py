@@ -7,13 +7,12 @@ those that do (covering.py).
 from __future__ import annotations
 
 from collections.abc import Callable
-from functools import partial
 from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 from semitau.core.compiled import kernel
-from semitau.core.engine import run
+from semitau.core.engine import Job, run
 from semitau.core.streams import event_key
 from semitau.core.templates import Floats
 
@@ -21,7 +20,7 @@ from ..fitting.algebra import inverse_diagonal
 from ..fitting.ending import CONVERGED
 from ..fitting.model import Model
 from ..fitting.newton import Scratch, minimise, scratch
-from ..likelihood.layout import Arrays, Indices
+from ..likelihood.layout import EXACT_BY_COMPONENT, Arrays, Indices
 from ..likelihood.likelihood import VALUE, evaluate
 from .toys import BATCH, draw_toy
 
@@ -61,34 +60,33 @@ def ratio_toys(
     means = np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
     start = truth.copy()
     held = np.array([i for i in model.free if i != index and i not in also], dtype=np.int64)
-    tasks = [
-        partial(_batch, model, index, held, stream, first, min(BATCH, n - first), truth, start, means, keep)
-        for first in range(0, n, BATCH)
-    ]
+    place = int(np.flatnonzero(model.free == index)[0])
+    common = _Toys(model.layout.arrays, model.free, held, place, stream, truth, start, means, keep)
+    tasks = [Job(_batch, common, (first, min(BATCH, n - first))) for first in range(0, n, BATCH)]
     progress = None if report is None else lambda done, _: report(min(n, done * BATCH), n)
     return RatioToys(*(np.concatenate(part) for part in zip(*run(tasks, workers, progress), strict=True)))
 
 
-def _batch(
-    model: Model,
-    index: int,
-    held: Indices,
-    stream: np.uint64,
-    first: int,
-    size: int,
-    truth: Floats,
-    start: Floats,
-    means: Floats,
-    keep: bool,
-) -> RatioToys:
-    arrays = model.layout.arrays
+class _Toys(NamedTuple):
+    """What all batches have in common, without the model: workers elsewhere need no more."""
+
+    arrays: Arrays
+    free: Indices
+    held: Indices
+    place: int
+    stream: np.uint64
+    truth: Floats
+    start: Floats
+    means: Floats
+    keep: bool
+
+
+def _batch(common: _Toys, first: int, size: int) -> RatioToys:
+    arrays, free, held, place, stream, truth, start, means, keep = common
     out = RatioToys(np.zeros(size), np.zeros(size), np.zeros(size), np.zeros((size if keep else 0, truth.size)))
     # The exact form of the likelihood has a factor for each component of a bin, the others have one for the bin.
-    gammas = np.ones(arrays.nominal.size if model.likelihood == "exact" else means.size)
-    place = int(np.flatnonzero(model.free == index)[0])
-    _fit_both(
-        arrays, model.free, held, place, stream, np.uint64(first), truth, start, means, gammas, scratch(arrays), out
-    )
+    gammas = np.ones(arrays.nominal.size if arrays.form == EXACT_BY_COMPONENT else means.size)
+    _fit_both(arrays, free, held, place, stream, np.uint64(first), truth, start, means, gammas, scratch(arrays), out)
     return out
 
 

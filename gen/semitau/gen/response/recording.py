@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -75,27 +74,37 @@ class Events:
     selected: Integers
 
 
-def event_recorder(
-    plan: ChannelPlan, bench: Bench, stream: np.uint64, scenario: Scenario = NOMINAL
-) -> Callable[[int, int], Events]:
-    """A function of (first, n) that gives the decays first ... first + n - 1 of a channel's stream.
+@dataclass(frozen=True, eq=False)
+class EventRecorder:
+    """Called with (first, n), it gives the decays first ... first + n - 1 of a channel's stream."""
 
-    They are the events that `chunk.fill_chunk` makes of the same stream, in this scenario.
-    """
-    table, chain = table_of(plan.channel), kernel_chain(plan.channel, bench.least_photon)
+    bench: Bench
+    stream: np.uint64
+    table: AnyTable
+    chain: Chain
+    scenario: Scenario
 
-    def record(first: int, n: int) -> Events:
+    def __call__(self, first: int, n: int) -> Events:
+        bench = self.bench
         truth = np.empty((len(_TRUTH), n))
         candidates = np.empty((len(_CANDIDATE), n))
         number, selected = np.empty(n, dtype=np.int64), np.empty(n, dtype=np.int64)
         flow = np.zeros(bench.shape, dtype=np.int64)
         m = _record(
-            stream, first, n, table, chain, bench.detector, bench.quantiles, scenario, bench.windows, bench.cuts,
-            bench.axes, flow, truth, candidates, number, selected,
+            self.stream, first, n, self.table, self.chain, bench.detector, bench.quantiles, self.scenario,
+            bench.windows, bench.cuts, bench.axes, flow, truth, candidates, number, selected,
         )  # fmt: skip
         return Events(first, truth, candidates[:, :m], number[:m], selected[:m])
 
-    return record
+
+def event_recorder(plan: ChannelPlan, bench: Bench, stream: np.uint64, scenario: Scenario = NOMINAL) -> EventRecorder:
+    """Recorder of a channel.
+
+    Its events are those that `chunk.fill_chunk` makes of the same stream, in this scenario.
+    """
+    return EventRecorder(
+        bench, stream, table_of(plan.channel), kernel_chain(plan.channel, bench.least_photon), scenario
+    )
 
 
 @kernel

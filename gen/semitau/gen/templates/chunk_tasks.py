@@ -3,15 +3,16 @@
 from __future__ import annotations
 
 import time
-from collections.abc import Callable, Iterator, Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
-from functools import cached_property, partial
+from functools import cached_property
 from typing import TypeGuard
 
 import numpy as np
 import numpy.typing as npt
 from semitau.core.constants import MASS
 from semitau.core.content_digest import content_digest
+from semitau.core.engine import Job
 
 from ..decays.chains import Channel
 from ..decays.decay import Decay
@@ -25,7 +26,7 @@ from ..shapes.sampler import DrawnLaws, ShapeSampler
 from ..study_file.categories import StudyCategory
 from ..study_file.components import Background
 from ..study_file.study import StudyConfig
-from ..truth.any_drawing import table_of
+from ..truth.any_drawing import AnyTable, table_of
 from ..truth.bilinear_pieces import PieceTable, no_pieces, piece_table
 from ..truth.variation_weights import WIDTH, VariationTable, variation_table
 from .binning import ROW_OF, Axes, Cuts, category_code, make_axes, make_cuts
@@ -54,7 +55,7 @@ class Filled:
         return self.sums.histogram
 
 
-Task = Callable[[], Filled]
+Task = Job[Filled]
 
 
 @dataclass(frozen=True, eq=False)
@@ -86,12 +87,15 @@ class Bench:
         return np.repeat(np.arange(len(self.categories)), [int(np.prod(c.shape)) for c in self.categories])
 
     @cached_property
+    def selection_digest(self) -> str:
+        """Of what the histograms of a background depend on here; what varies from part to part is in its inputs."""
+        return content_digest(self.shape, self.bins, self.cuts, self.axes, CHUNK_EVENTS)
+
+    @cached_property
     def digest(self) -> str:
-        """Of everything here that histograms depend on; what varies from part to part is in the part's inputs."""
-        return content_digest(
-            self.shape, self.bins, self.detector, self.windows, self.quantiles, self.cuts, self.axes,
-            self.category_of_bin, CHUNK_EVENTS,
-        )  # fmt: skip
+        """Of what the histograms of a decay chain depend on here."""
+        response = self.detector, self.windows, self.quantiles, self.category_of_bin
+        return content_digest(self.selection_digest, response)
 
     def sums(self, columns: int, weights: int = 0, pieces: int = 0) -> Sums:
         """Zeros for what events are added to. columns : of the histogram. weights : of them, those by weights."""
@@ -175,25 +179,36 @@ def channel_inputs(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Channe
 
 def channel_tasks(inputs: ChannelInputs, bench: Bench, first: int, events: int) -> Iterator[Task]:
     """Chunks of one channel, in order: those of `events` decays in all that begin at decay `first` or later."""
-    channel, decays, soft, shifts = inputs.channel, inputs.decays, inputs.soft, inputs.shifts
-    table = table_of(channel)
-    weights = _weights(channel, decays)
-    columns = len(decays) + len(soft) + len(shifts)
-    taken = no_pieces(weights)
+    channel = inputs.channel
+    weights = weight_table(channel, inputs.decays)
+    pieces = no_pieces(weights)
     if inputs.quadratic and isinstance(channel, Channel):
-        taken, _ = piece_table(channel, inputs.quadratic)
-    category_of_bin = bench.category_of_bin
+        pieces, _ = piece_table(channel, inputs.quadratic)
+    common = _Channel(inputs, bench, table_of(channel), weights, pieces)
+    return (Job(_fill_channel, common, chunk) for chunk in chunks(events, first))
 
-    def task(first: int, n: int) -> Filled:
-        start = time.thread_time()
-        sums = bench.sums(columns, len(decays) + len(soft), taken.pieces)
-        fill_chunk(
-            inputs.stream, first, n, table, inputs.chain, bench.detector, bench.quantiles, weights, taken, soft, shifts,
-            bench.windows, bench.cuts, bench.axes, category_of_bin, sums,
-        )  # fmt: skip
-        return Filled(sums, n, time.thread_time() - start)
 
-    return (partial(task, begin, n) for begin, n in chunks(events, first))
+@dataclass(frozen=True, eq=False)
+class _Channel:
+    """What the chunks of a channel have in common."""
+
+    inputs: ChannelInputs
+    bench: Bench
+    table: AnyTable
+    weights: VariationTable
+    pieces: PieceTable
+
+
+def _fill_channel(common: _Channel, first: int, n: int) -> Filled:
+    start = time.thread_time()
+    inputs, bench = common.inputs, common.bench
+    by_weight = len(inputs.decays) + len(inputs.soft)
+    sums = bench.sums(by_weight + len(inputs.shifts), by_weight, common.pieces.pieces)
+    fill_chunk(
+        inputs.stream, first, n, common.table, inputs.chain, bench.detector, bench.quantiles, common.weights,
+        common.pieces, inputs.soft, inputs.shifts, bench.windows, bench.cuts, bench.axes, bench.category_of_bin, sums,
+    )  # fmt: skip
+    return Filled(sums, n, time.thread_time() - start)
 
 
 @dataclass(frozen=True, eq=False)
@@ -220,17 +235,29 @@ def background_tasks(inputs: BackgroundInputs, bench: Bench, first: int, events:
     """Chunks of one background in one category, in order, as those of a channel."""
     cuts = make_cuts(bench.categories, inputs.drawn)
     rows = np.array([ROW_OF[name] for name in inputs.drawn], dtype=np.int64)
+    common = _Background(inputs, bench, cuts, rows)
+    return (Job(_fill_background, common, chunk) for chunk in chunks(events, first))
 
-    def task(first: int, n: int) -> Filled:
-        start = time.thread_time()
-        sums = bench.sums(1)
-        sums.found[:] = n
-        drawn = inputs.laws.draw(inputs.stream, first, n)
-        values = np.stack([drawn[name] for name in inputs.drawn])
-        fill_drawn(values, rows, inputs.code, cuts, bench.axes, sums.flow, sums.histogram)
-        return Filled(sums, n, time.thread_time() - start)
 
-    return (partial(task, begin, n) for begin, n in chunks(events, first))
+@dataclass(frozen=True, eq=False)
+class _Background:
+    """What the chunks of a background in one category have in common. rows : of what is drawn."""
+
+    inputs: BackgroundInputs
+    bench: Bench
+    cuts: Cuts
+    rows: Integers
+
+
+def _fill_background(common: _Background, first: int, n: int) -> Filled:
+    start = time.thread_time()
+    inputs, bench = common.inputs, common.bench
+    sums = bench.sums(1)
+    sums.found[:] = n
+    drawn = inputs.laws.draw(inputs.stream, first, n)
+    values = np.stack([drawn[name] for name in inputs.drawn])
+    fill_drawn(values, common.rows, inputs.code, common.cuts, bench.axes, sums.flow, sums.histogram)
+    return Filled(sums, n, time.thread_time() - start)
 
 
 def chunks(events: int, first: int = 0) -> Iterator[tuple[int, int]]:
@@ -239,7 +266,7 @@ def chunks(events: int, first: int = 0) -> Iterator[tuple[int, int]]:
         yield begin, min(CHUNK_EVENTS, events - begin)
 
 
-def _weights(channel: AnyChain, decays: Sequence[Decay]) -> VariationTable:
+def weight_table(channel: AnyChain, decays: Sequence[Decay]) -> VariationTable:
     if decays and isinstance(channel, Channel):
         return variation_table(channel, list(decays), shape_only=True)
     return _no_weights()

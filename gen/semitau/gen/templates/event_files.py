@@ -3,10 +3,9 @@
 from __future__ import annotations
 
 import json
-from collections.abc import Callable, Iterator, Sequence
+from collections.abc import Iterator, Sequence
 from contextlib import closing
 from dataclasses import dataclass
-from functools import partial
 from pathlib import Path
 from typing import Any
 
@@ -14,12 +13,13 @@ import numpy as np
 import numpy.typing as npt
 import uproot
 from semitau.core import engine
+from semitau.core.engine import Job
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import stream_key
 from semitau.core.whole_files import whole_file
 
-from ..response.recording import CANDIDATE_ROWS, TRUTH_ROWS, Events, event_recorder
-from ..shapes.sampler import ShapeSampler
+from ..response.recording import CANDIDATE_ROWS, TRUTH_ROWS, EventRecorder, event_recorder
+from ..shapes.sampler import DrawnLaws, ShapeSampler
 from ..study_file.categories import StudyCategory
 from ..study_file.names import CHARM_HADRONS, OBSERVABLES, SEEN_LEPTONS
 from ..study_file.study import StudyConfig
@@ -124,16 +124,14 @@ class _Origin:
 
 @dataclass(frozen=True, eq=False)
 class _Decays:
-    """Task: a run of decays of one channel."""
+    """Runs of decays of one channel."""
 
     origin: _Origin
-    record: Callable[[int, int], Events]
-    first: int
-    n: int
+    record: EventRecorder
 
-    def __call__(self) -> tuple[str, Record]:
-        events = self.record(self.first, self.n)
-        numbers = np.arange(self.first, self.first + self.n)
+    def run(self, first: int, n: int) -> tuple[str, Record]:
+        events = self.record(first, n)
+        numbers = np.arange(first, first + n)
         truth = dict(zip(TRUTH_ROWS, events.truth, strict=True))
         candidates = dict(zip(CANDIDATE_ROWS, events.candidates, strict=True)) | {"selected": events.selected}
         return self.origin.label, {
@@ -144,25 +142,23 @@ class _Decays:
 
 @dataclass(frozen=True, eq=False)
 class _Drawn:
-    """Task: a run of background events of one category."""
+    """Runs of background events of one category."""
 
     origin: _Origin
-    draw: Callable[[int, int], dict[str, npt.NDArray[np.float64]]]
-    select: Callable[[dict[str, npt.NDArray[np.float64]]], npt.NDArray[np.bool_]]
-    code: int
-    first: int
-    n: int
+    laws: DrawnLaws
+    stream: np.uint64
+    category: StudyCategory
 
-    def __call__(self) -> tuple[str, Record]:
-        drawn = self.draw(self.first, self.n)
-        columns = {name: drawn.get(name, np.full(self.n, np.nan)) for name in ROW_OF}
+    def run(self, first: int, n: int) -> tuple[str, Record]:
+        drawn = self.laws.draw(self.stream, first, n)
+        columns = {name: drawn.get(name, np.full(n, np.nan)) for name in ROW_OF}
         whole = {
-            "category": np.full(self.n, self.code),
-            "selected": self.select(drawn),
-            "soft_found": np.zeros(self.n),
-            "tag_wrong": np.zeros(self.n),
+            "category": np.full(n, category_code(self.category.charm, self.category.lepton)),
+            "selected": _selected(self.category, drawn),
+            "soft_found": np.zeros(n),
+            "tag_wrong": np.zeros(n),
         }
-        origin = self.origin.columns(np.arange(self.first, self.first + self.n))
+        origin = self.origin.columns(np.arange(first, first + n))
         return self.origin.label, {"candidates": origin | _typed("candidates", columns | whole)}
 
 
@@ -170,26 +166,25 @@ def _typed(tree: str, columns: Columns) -> Columns:
     return {name: columns[name].astype(kind) for name, kind in TREES[tree].items() if name not in _ORIGIN}
 
 
-def _tasks(study: StudyConfig, plans: Sequence[ChannelPlan], names: list[str]) -> Iterator[_Decays | _Drawn]:
+def _tasks(study: StudyConfig, plans: Sequence[ChannelPlan], names: list[str]) -> Iterator[Job[tuple[str, Record]]]:
     bench = make_bench(study, variations=False)
     seed = study.study.seed
     for number, plan in enumerate(plans):
         record = event_recorder(plan, bench, stream_key(seed, "templates", plan.mode, plan.channel.name))
         origin = _Origin(plan.mode, names.index(plan.mode), number, plan.expected / plan.events)
-        for first, n in chunks(plan.events):
-            yield _Decays(origin, record, first, n)
+        decays = _Decays(origin, record)
+        yield from (Job(_Decays.run, decays, chunk) for chunk in chunks(plan.events))
     for background in study.backgrounds:
         sampler = ShapeSampler(background, study)
         for category in bench.categories:
             if category.name not in sampler.categories:
                 continue
             events = max(background.events_in[category.name], 1)
-            draw = partial(sampler.draw, category.name, stream_key(seed, "templates", background.name, category.name))
+            stream = stream_key(seed, "templates", background.name, category.name)
             weight = background.expected[category.name] / events
             origin = _Origin(background.name, names.index(background.name), NO_CHANNEL, weight)
-            code = category_code(category.charm, category.lepton)
-            for first, n in chunks(events):
-                yield _Drawn(origin, draw, partial(_selected, category), code, first, n)
+            drawn = _Drawn(origin, sampler.laws(category.name), stream, category)
+            yield from (Job(_Drawn.run, drawn, chunk) for chunk in chunks(events))
 
 
 def _selected(category: StudyCategory, drawn: dict[str, npt.NDArray[np.float64]]) -> npt.NDArray[np.bool_]:
