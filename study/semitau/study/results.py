@@ -18,6 +18,7 @@ from .design.part import Design
 from .inputs.part import Inputs
 from .reach.part import Reach
 from .result_part import Part as Part
+from .sizing.part import Sizing
 
 FORMAT = "semitau results"
 VERSION = 1
@@ -388,6 +389,7 @@ class Results(Part):
         default=None, description="What alternatives do to the ratios; null without [[alternative]]"
     )
     design: Design | None = Field(default=None, description="The best selection and binning; null without [design]")
+    sizing: Sizing | None = Field(default=None, description="How many events are needed; null without [sizing]")
     reach: Reach | None = Field(default=None, description="What more data would bring; null if not asked for")
     average: AverageResults | None = Field(
         default=None, description="Average with other measurements, and what this study would change; null if not asked"

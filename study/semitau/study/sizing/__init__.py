@@ -1,0 +1,1 @@
+"""How many events a study should generate, and of what."""
