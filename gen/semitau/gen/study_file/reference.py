@@ -66,6 +66,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[fit.bounds]": ("Bounds",),
     "[[fit.correlated]]": ("Correlated",),
     "[toys]": ("Toys",),
+    "[sizing]": ("SizingSection",),
     "[import]": ("Imports", "ImportedComponent", "ImportedSides", "ImportedData"),
     "[blinding]": ("Blinding",),
     "Values with a short form": (

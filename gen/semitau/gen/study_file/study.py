@@ -33,6 +33,8 @@ from .names import OBSERVABLES
 from .radiation import RadiationSection
 from .rules import Table, shown
 from .sections import SECTIONS, Conflict, Sections, missing_file
+from .sizing import SizingSection
+from .sizing_conflicts import sizing_conflicts
 from .variations import SingleVariation, Variation
 from .wilson import Quadratic, Wilson
 from .written_variations import single_variations
@@ -60,6 +62,7 @@ class StudyConfig(Table):
     fit: FitSection = FitSection()
     toys: Toys = Toys()
     imports: Imports | None = Field(default=None, alias="import", description="from other simulations")
+    sizing: SizingSection | None = Field(default=None, description="no part of the study without it")
     blinding: Blinding | None = Field(default=None, description="hides the ratios; nothing is hidden without it")
 
     _text: str = PrivateAttr(default="")
@@ -72,6 +75,7 @@ class StudyConfig(Table):
         found = [*conflicts(sections), *self._import_conflicts(folder)]
         if not any(conflict.place[0] in ("form_factors", "mode", "variation") for conflict in found):
             found += fit_conflicts(self, sections)  # whose names follow from these
+            found += sizing_conflicts(self)
         if found:
             text = "; ".join(conflict.what for conflict in found)
             raise PydanticCustomError(CONFLICTS, "{text}", {"text": text, "conflicts": found})
