@@ -14,13 +14,13 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
-from functools import partial
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from semitau.core.compiled import kernel
 from semitau.core.elementary import normal_pair
-from semitau.core.engine import run
+from semitau.core.engine import Job, run
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import event_key, stream_key, uniform
 from semitau.core.templates import Floats
@@ -184,9 +184,8 @@ def run_toys(
     stream = stream_key(seed, "toys")
     means = _padded_means(model, truth) if expectation is None else model.lanes(expectation.seen_by(model)[0], 0.0)
     sizes = [min(BATCH, n - first) for first in range(0, n, BATCH)]
-    tasks = [
-        partial(_batch, model, stream, number * BATCH, size, truth, start, means) for number, size in enumerate(sizes)
-    ]
+    common = _Toys(model.layout.arrays, model.free, stream, truth, start, means)
+    tasks = [Job(_batch, common, (number * BATCH, size)) for number, size in enumerate(sizes)]
     progress = None if report is None else lambda done, _: report(label, min(n, done * BATCH), n)
     parts = list(run(tasks, workers, progress))
     values, errors, statuses, statistics, steps = (np.concatenate(part) for part in zip(*parts, strict=True))
@@ -204,17 +203,26 @@ def run_toys(
 Batch = tuple[Floats, Floats, NDArray[np.int64], Floats, NDArray[np.int64]]
 
 
-def _batch(
-    model: Model, stream: np.uint64, first: int, size: int, truth: Floats, start: Floats, means: Floats
-) -> Batch:
+class _Toys(NamedTuple):
+    """What all batches have in common, without the model: workers elsewhere need no more."""
+
+    arrays: Arrays
+    free: Indices
+    stream: np.uint64
+    truth: Floats
+    start: Floats
+    means: Floats
+
+
+def _batch(common: _Toys, first: int, size: int) -> Batch:
+    arrays, free, stream, truth, start, means = common
     parameters = truth.size
     values, errors = np.zeros((size, parameters)), np.zeros((size, parameters))
     statuses, steps, statistics = np.zeros(size, np.int64), np.zeros(size, np.int64), np.zeros(size)
-    arrays = model.layout.arrays
     exact = arrays.form == EXACT_BY_COMPONENT
     lanes = np.zeros(means.size), np.ones(arrays.nominal.size if exact else means.size)
     _fit_toys(
-        arrays, model.free, stream, np.uint64(first), truth, start, means, *lanes, np.zeros(parameters),
+        arrays, free, stream, np.uint64(first), truth, start, means, *lanes, np.zeros(parameters),
         scratch(arrays), values, errors, statuses, statistics, steps,
     )  # fmt: skip
     return values, errors, statuses, statistics, steps
