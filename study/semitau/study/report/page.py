@@ -11,6 +11,7 @@ from jinja2 import Environment, FileSystemLoader, StrictUndefined
 from markupsafe import Markup
 from semitau.core.whole_files import write_whole
 
+from ..averages.summary import quality_line, tension_text
 from ..numbers import counted, digits_for, percent, signed, with_error
 from ..pictures.gallery import DATA_LABELS
 from ..pictures.sheet import Picture
@@ -63,7 +64,10 @@ def page(results: Results, pictures: Sequence[Picture]) -> str:
         data_label=DATA_LABELS[results.data.kind],
         headline=VERDICT_WORDS[results.verdict.status],
         stem=file_stem(results.study.name),
-        study_address=f"data:text/plain;charset=utf-8,{quote(results.study.text, safe='')}",
+        study_address=_address(results.study.text),
+        snippet_address=_address(results.design.snippet if results.design is not None else ""),
+        quality_of_average=quality_line(results.average).plain if results.average is not None else "",
+        tension_of_average=tension_text(results.average).plain if results.average is not None else "",
         style=Markup((HERE / "page.css").read_text()),
         pictures={
             picture.name: {
@@ -75,6 +79,11 @@ def page(results: Results, pictures: Sequence[Picture]) -> str:
             for picture in pictures
         },
     )
+
+
+def _address(text: str) -> str:
+    """A text as a link that downloads it."""
+    return f"data:text/plain;charset=utf-8,{quote(text, safe='')}"
 
 
 def file_stem(name: str) -> str:

@@ -7,7 +7,17 @@ from dataclasses import dataclass
 
 from ..results import Results
 from .table import ReportTable
-from .tables import event_tables, fit_tables, input_tables, ratio_tables, toy_tables
+from .tables import (
+    average_tables,
+    bias_tables,
+    design_tables,
+    event_tables,
+    fit_tables,
+    input_tables,
+    ratio_tables,
+    reach_tables,
+    toy_tables,
+)
 
 MakeTable = Callable[[Results], ReportTable | None]
 
@@ -26,6 +36,12 @@ SECTIONS = (
     Section("verdict", "Verdict"),
     Section("ratios", "Ratios", tables=(ratio_tables.ratio_table,)),
     Section("uncertainty", "Uncertainty by source", lambda r: r.budget, (ratio_tables.budget_table,)),
+    Section(
+        "bias",
+        "Bias matrix",
+        lambda r: r.bias,
+        (bias_tables.change_table, bias_tables.nominal_table, bias_tables.pair_table),
+    ),
     Section("toys", "Toys", lambda r: r.toys, (toy_tables.toy_table,)),
     Section("linearity", "Linearity", lambda r: r.linearity, (toy_tables.line_table, toy_tables.point_table)),
     Section("nuisances", "Nuisances", lambda r: r.nuisances, (fit_tables.nuisance_table,)),
@@ -40,6 +56,33 @@ SECTIONS = (
     Section("fit", "Fit", tables=(fit_tables.parameter_table, fit_tables.correlation_table)),
     Section("selection", "Cut flow", lambda r: r.cut_flow, (event_tables.cut_flow_table,)),
     Section("weights", "Events behind weights", lambda r: r.reweightings, (event_tables.reweighting_table,)),
+    Section(
+        "design",
+        "Design",
+        lambda r: r.design,
+        (
+            design_tables.point_table,
+            design_tables.cut_table,
+            design_tables.curve_table,
+            design_tables.binning_table,
+            design_tables.choice_table,
+            design_tables.merging_table,
+            design_tables.information_table,
+            design_tables.cost_table,
+        ),
+    ),
+    Section(
+        "reach",
+        "Reach",
+        lambda r: r.reach,
+        (reach_tables.error_table, reach_tables.deviation_table, reach_tables.compared_table),
+    ),
+    Section(
+        "average",
+        "Average",
+        lambda r: r.average,
+        (average_tables.ratio_table, average_tables.input_table, average_tables.source_table),
+    ),
     Section(
         "inputs",
         "What went in",
@@ -64,6 +107,7 @@ def shown_sections(results: Results) -> tuple[Section, ...]:
 
 
 def report_tables(results: Results, sections: Iterable[Section]) -> dict[str, ReportTable]:
-    """Every table of these sections by its name, and those behind the projections."""
+    """Every table of these sections by its name, with the bias matrices and the numbers behind the projections."""
     made = [make(results) for section in sections for make in section.tables]
-    return {found.name: found for found in (*made, *event_tables.projection_tables(results)) if found is not None}
+    made += [*bias_tables.matrix_tables(results), *event_tables.projection_tables(results)]
+    return {found.name: found for found in made if found is not None}
