@@ -67,6 +67,8 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[[fit.correlated]]": ("Correlated",),
     "[toys]": ("Toys",),
     "[sizing]": ("SizingSection",),
+    "[[alternative]]": ("Alternative",),
+    "[bias]": ("BiasSection",),
     "[import]": ("Imports", "ImportedComponent", "ImportedSides", "ImportedData"),
     "[blinding]": ("Blinding",),
     "Values with a short form": (
@@ -158,6 +160,8 @@ def _kind(value: Mapping[str, Any]) -> str:
             return f"list of {_kind(value['items'])}"
         case "object":
             items = value["additionalProperties"]
+            if not isinstance(items, Mapping):
+                return "table"
             return "table of laws" if "oneOf" in items else f"table of {_kind(items)}"
         case "number":
             return _limits("number", value) + (f" in {value['description']}" if _is_unit(value) else "")

@@ -17,6 +17,7 @@ from pydantic_core import PydanticCustomError
 
 from ..decays.branching_fractions import BranchingFractions
 from ..decays.form_factor_set import FormFactorSet
+from .alternatives import Alternative, BiasSection
 from .blinding import Blinding
 from .categories import CategoryTable, Cuts, StudyCategory, written_out
 from .chosen_sets import chosen_set
@@ -63,6 +64,8 @@ class StudyConfig(Table):
     toys: Toys = Toys()
     imports: Imports | None = Field(default=None, alias="import", description="from other simulations")
     sizing: SizingSection | None = Field(default=None, description="no part of the study without it")
+    alternatives: tuple[Alternative, ...] = Field(default=(), alias="alternative")
+    bias: BiasSection = BiasSection()
     blinding: Blinding | None = Field(default=None, description="hides the ratios; nothing is hidden without it")
 
     _text: str = PrivateAttr(default="")
