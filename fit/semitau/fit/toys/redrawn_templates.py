@@ -15,12 +15,12 @@ components look more different than they are; and nothing fluctuates between plu
 from __future__ import annotations
 
 from collections.abc import Mapping
-from functools import partial
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from semitau.core.compiled import kernel
-from semitau.core.engine import run
+from semitau.core.engine import Job, run
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import event_key, stream_key
 from semitau.core.templates import Floats
@@ -68,10 +68,8 @@ def toys_with_new_templates(
     start[held] = model.start[held]
     streams = stream_key(seed, "toys"), stream_key(seed, "templates of toys")
     means = np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
-    tasks = [
-        partial(_batch, model, thinning, streams, first, min(BATCH, n - first), truth, start, means)
-        for first in range(0, n, BATCH)
-    ]
+    common = _Toys(model.layout.arrays, model.template_statistics, thinning, model.free, *streams, truth, start, means)
+    tasks = [Job(_batch, common, (first, min(BATCH, n - first))) for first in range(0, n, BATCH)]
     progress = None if report is None else lambda done, _: report(label, min(n, done * BATCH), n)
     parts = list(run(tasks, workers, progress))
     values, errors, statuses, statistics, steps = (np.concatenate(part) for part in zip(*parts, strict=True))
@@ -97,20 +95,25 @@ def _thinning(model: Model, factors: Mapping[str, float] | float) -> Floats:
 Batch = tuple[Floats, Floats, NDArray[np.int64], Floats, NDArray[np.int64]]
 
 
-def _batch(
-    model: Model,
-    thinning: Floats,
-    streams: tuple[np.uint64, np.uint64],
-    first: int,
-    size: int,
-    truth: Floats,
-    start: Floats,
-    means: Floats,
-) -> Batch:
+class _Toys(NamedTuple):
+    """What all batches have in common, without the model: workers elsewhere need no more."""
+
+    arrays: Arrays
+    counted: bool
+    thinning: Floats
+    free: Indices
+    stream: np.uint64
+    template_stream: np.uint64
+    truth: Floats
+    start: Floats
+    means: Floats
+
+
+def _batch(common: _Toys, first: int, size: int) -> Batch:
+    true, counted, thinning, free, stream, template_stream, truth, start, means = common
     parameters = truth.size
     values, errors = np.zeros((size, parameters)), np.zeros((size, parameters))
     statuses, steps, statistics = np.zeros(size, np.int64), np.zeros(size, np.int64), np.zeros(size)
-    true = model.layout.arrays
     own = true._replace(
         nominal=true.nominal.copy(),
         odd=true.odd.copy(),
@@ -123,8 +126,8 @@ def _batch(
     exact = true.form == EXACT_BY_COMPONENT
     lanes = np.zeros(means.size), np.ones(true.nominal.size if exact else means.size), np.ones(means.size)
     _fit_toys(
-        true, own, model.template_statistics, thinning, model.free, *streams, np.uint64(first), truth, start, means,
-        *lanes, np.zeros(parameters), scratch(true), values, errors, statuses, statistics, steps,
+        true, own, counted, thinning, free, stream, template_stream, np.uint64(first), truth, start, means, *lanes,
+        np.zeros(parameters), scratch(true), values, errors, statuses, statistics, steps,
     )  # fmt: skip
     return values, errors, statuses, statistics, steps
 
