@@ -15,7 +15,7 @@ import numpy.typing as npt
 from semitau.core.code_digest import code_digest, versions
 from semitau.core.content_digest import content_digest
 
-from .chunk_tasks import CHUNK_EVENTS, Bench
+from .chunk_tasks import CHUNK_EVENTS, Bench, ChannelInputs
 from .component_parts import Part, PartSums
 
 Arrays = Mapping[str, npt.NDArray[Any]]
@@ -38,8 +38,12 @@ class Kept(Protocol):
 
 def component_key(parts: Sequence[Part], bench: Bench) -> str:
     """Key of a component that is made of these parts."""
-    inputs = [(part.events, part.inputs) for part in parts]
-    return content_digest(code_digest("core", "gen"), versions(), bench.digest, inputs)
+    inputs = [(part.events, _shared(part, bench), part.inputs) for part in parts]
+    return content_digest(code_digest("core", "gen"), versions(), inputs)
+
+
+def _shared(part: Part, bench: Bench) -> str:
+    return bench.digest if isinstance(part.inputs, ChannelInputs) else bench.selection_digest
 
 
 def packed(sums: Sequence[PartSums]) -> Arrays:
