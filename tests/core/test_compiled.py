@@ -69,6 +69,26 @@ def test_an_index_that_cannot_be_read_is_made_anew(tmp_path: Path) -> None:
     assert run(tmp_path, program.format("new")) == [3, 0]
 
 
+def test_processes_that_compile_at_once_keep_each_others_entries(tmp_path: Path) -> None:
+    """Each takes a second between reading the index and writing it: without a lock both would number their code 1."""
+    (tmp_path / "made").mkdir()
+    (tmp_path / "made" / "__init__.py").write_text("")
+    loop = "from semitau.core.compiled import kernel\n\n\n@kernel\ndef double(x):\n    return x + x\n"
+    (tmp_path / "made" / "loop.py").write_text(loop)
+    slow = (
+        "import time; from made.loop import double; index = double._cache._cache_file; save = index._save_index; "
+        "index._save_index = lambda entries: (time.sleep(1), save(entries)); print(int(double({})))"
+    )
+    environment = {name: value for name, value in os.environ.items() if name != "NUMBA_CACHE_DIR"}
+    both = [
+        subprocess.Popen([sys.executable, "-c", slow.format(x)], cwd=tmp_path, env=environment, stdout=subprocess.PIPE)
+        for x in ("3", "1.5")
+    ]
+    assert [int(process.communicate()[0]) for process in both] == [6, 3]
+    told = "from made.loop import double; print(double(3), int(double(1.5)), sum(double.stats.cache_hits.values()))"
+    assert run(tmp_path, told) == [6, 3, 2]
+
+
 @pytest.mark.parametrize("change", ["rows.py", "lane.py", "loop.py"])
 def test_digest_covers_all_that_is_imported(tmp_path: Path, change: str) -> None:
     write(tmp_path, first=0, shift=1)

@@ -11,6 +11,7 @@ from __future__ import annotations
 import hashlib
 import re
 from collections.abc import Callable
+from contextlib import ExitStack, suppress
 from functools import cache
 from pathlib import Path
 from typing import Any
@@ -39,6 +40,7 @@ def _stamped(dispatcher: Any, function: Callable[..., Any]) -> Any:
     if index is not None and hasattr(index, "_source_stamp"):
         index._source_stamp = (index._source_stamp, source_digest(function.__code__.co_filename))
         index._load_index = _or_empty(index._load_index)
+        index.load, index.save = _one_at_a_time(index, index.load), _one_at_a_time(index, index.save)
     return dispatcher
 
 
@@ -53,6 +55,22 @@ def _or_empty(load: Callable[[], dict[Any, Any]]) -> Callable[[], dict[Any, Any]
             return {}
 
     return loaded
+
+
+def _one_at_a_time(index: Any, step: Callable[..., Any]) -> Callable[..., Any]:
+    """Processes share the folder. Two that add an entry at the same moment would give the same number to both, and one
+    would find the other's code under its own arguments. Where a system or disk knows no locks, it is left to luck."""
+
+    def alone(*arguments: Any) -> Any:
+        with ExitStack() as held:
+            with suppress(ImportError, OSError):
+                from fcntl import LOCK_EX, flock
+
+                lock = held.enter_context(open(Path(index._cache_path) / "one_at_a_time.lock", "ab"))
+                flock(lock, LOCK_EX)
+            return step(*arguments)
+
+    return alone
 
 
 @cache
