@@ -42,7 +42,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         (
             "seletion: unknown key (allowed study, experiment, form_factors, branching_fractions, wilson, radiation, "
             "quadratic, mode, double_charm, background, detector, selection, category, variation, fit, toys, import, "
-            "sizing, alternative, bias, blinding). "
+            "sizing, alternative, bias, design, blinding). "
             'Did you mean "selection"?'
         ),
     ),

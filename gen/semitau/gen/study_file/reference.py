@@ -69,6 +69,8 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[sizing]": ("SizingSection",),
     "[[alternative]]": ("Alternative",),
     "[bias]": ("BiasSection",),
+    "[design]": ("DesignSection",),
+    "[design.cuts]": ("ScannedCut",),
     "[import]": ("Imports", "ImportedComponent", "ImportedSides", "ImportedData"),
     "[blinding]": ("Blinding",),
     "Values with a short form": (

@@ -23,6 +23,8 @@ from .categories import CategoryTable, Cuts, StudyCategory, written_out
 from .chosen_sets import chosen_set
 from .components import Background, Mode
 from .conflicts import conflicts
+from .design import DesignSection
+from .design_conflicts import design_conflicts
 from .detector import Detector
 from .double_charm import DoubleCharm
 from .fit import FitSection, Toys
@@ -66,6 +68,7 @@ class StudyConfig(Table):
     sizing: SizingSection | None = Field(default=None, description="no part of the study without it")
     alternatives: tuple[Alternative, ...] = Field(default=(), alias="alternative")
     bias: BiasSection = BiasSection()
+    design: DesignSection | None = Field(default=None, description="no part of the study without it")
     blinding: Blinding | None = Field(default=None, description="hides the ratios; nothing is hidden without it")
 
     _text: str = PrivateAttr(default="")
@@ -75,7 +78,7 @@ class StudyConfig(Table):
     def _agree(self, info: ValidationInfo) -> StudyConfig:
         folder = (info.context or {}).get("folder")
         sections = self.sections(folder=folder)
-        found = [*conflicts(sections), *self._import_conflicts(folder)]
+        found = [*conflicts(sections), *self._import_conflicts(folder), *self._design_conflicts()]
         if not any(conflict.place[0] in ("form_factors", "mode", "variation") for conflict in found):
             found += fit_conflicts(self, sections)  # whose names follow from these
             found += sizing_conflicts(self)
@@ -97,6 +100,9 @@ class StudyConfig(Table):
                 yield from missing_file(("import", "component", i, "file"), item.file, folder)
             if self.imports.data is not None:
                 yield from missing_file(("import", "data", "file"), self.imports.data.file, folder)
+
+    def _design_conflicts(self) -> Iterator[Conflict]:
+        return iter(()) if self.design is None else design_conflicts(self, self.design)
 
     def sections(self, folder: Path | None = None) -> Sections:
         """The study as study_conflicts looks at it."""

@@ -1,0 +1,1 @@
+"""Candidates on fine grids, generated once for any number of working points."""
