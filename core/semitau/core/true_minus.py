@@ -1,8 +1,13 @@
-"""Numbers for people: with a true minus sign, also in exponents. Files for programs keep the ASCII hyphen."""
+"""Numbers for people: with a true minus sign, and powers of ten raised. Files for programs keep the ASCII forms."""
 
 from __future__ import annotations
 
+GAP = "\u00a0"
+RAISED = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
+
 
 def formatted(value: float, form: str) -> str:
-    """`value` as `format` writes it, with "−" (U+2212) for "-"."""
-    return format(value, form).replace("-", "−")
+    """`value` as `format` writes it, with "−" (U+2212) for "-" and "3 × 10⁻⁵" for "3e-05"."""
+    mantissa, exponential, exponent = format(value, form).partition("e")
+    text = mantissa.replace("-", "−")
+    return f"{text}{GAP}×{GAP}10{str(int(exponent)).translate(RAISED)}" if exponential else text

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from semitau.core.true_minus import formatted
+
 from ...averages.document import AverageResults, WhatIf
 from ...averages.summary import OUTCOMES
 from ...averages.tables import RATIOS
@@ -65,7 +67,7 @@ def _numbers(average: AverageResults, case: AverageResults | WhatIf) -> list[Cel
         *(measured(ratios[ratio.name].value, ratios[ratio.name].error) for ratio in average.ratios),
         number(case.correlation, 2, plus=True),
         number(None if tension is None else tension.sigmas, 2),
-        Cell(NOTHING if p_value is None else f"{p_value:.2g}".replace("-", "−"), (p_value,)),
+        Cell(NOTHING if p_value is None else formatted(p_value, ".2g"), (p_value,)),
     ]
 
 
@@ -90,4 +92,4 @@ def source_table(results: Results) -> ReportTable | None:
 def _sides(spread: tuple[float, float], places: int) -> Cell:
     up, down = spread
     same = signed(up, places)
-    return Cell(same if up == down else f"+{same}{GAP}{signed(-down, places)}", (up, down))
+    return Cell(same if up == down else f"+{same}{GAP}{signed(-down, places)}", (up, -down))

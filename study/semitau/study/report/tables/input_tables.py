@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from semitau.core.true_minus import formatted
+
 from ...inputs.part import InputCut
 from ...numbers import counted, signed
 from ...results import Results
@@ -67,7 +69,7 @@ def axis_table(results: Results) -> ReportTable | None:
     rows = [
         [
             words(f"{label} / {unit}" if unit else label, name, label, unit),
-            Cell(", ".join(f"{edge:g}".replace("-", "−") for edge in edges), (" ".join(map(str, edges)),)),
+            Cell(", ".join(formatted(edge, "g") for edge in edges), (" ".join(map(str, edges)),)),
             words(", ".join(labels)),
         ]
         for (name, label, unit, edges), labels in shared.items()
@@ -138,4 +140,4 @@ def _cut(cut: InputCut) -> str:
 
 
 def _as_given(value: float) -> Cell:
-    return Cell(f"{value:.6g}".replace("-", "−"), (value,))
+    return Cell(formatted(value, ".6g"), (value,))

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from semitau.core.true_minus import formatted
+
 from ...numbers import digits_for
 from ...reach.part import Reach, ReachDeviation
 from ...results import Results
@@ -92,10 +94,4 @@ def _label(reach: Reach, part: ReachDeviation) -> str:
 
 
 def _amount(amount: float) -> Cell:
-    if abs(amount) < 1e5:
-        return Cell(f"{amount:.4g}", (amount,))
-    mantissa, exponent = f"{amount:.2e}".split("e")
-    return Cell(f"{mantissa} × 10{str(int(exponent)).translate(RAISED)}", (amount,))
-
-
-RAISED = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
+    return Cell(formatted(amount, ".2e" if amount >= 1e5 else ".4g"), (amount,))
