@@ -50,10 +50,25 @@ from semitau.study.reach.part import (
     ReachWall,
 )
 from semitau.study.results import NuisanceResult, RatioShift, Results, Reweighting
+from semitau.study.sizing.part import (
+    Sizing,
+    SizingAllocation,
+    SizingCheck,
+    SizingCost,
+    SizingCurve,
+    SizingGain,
+    SizingRatio,
+    SizingSample,
+    SizingShareOfTime,
+    SizingToyRatio,
+    SizingToys,
+    SizingVerification,
+)
 
 RATIOS = (("R_D", "R(D)", 0.299, 0.031), ("R_Dst", "R(D*)", 0.254, 0.018))
 AVERAGE = Path(__file__).parents[2] / "configs" / "average.toml"
 NOT_COVERED = "R(D*), made with a worse resolution: shift −0.021 ± 0.001, −1.17 of its error; covering error 0.004."
+TOO_FEW = "Continuum needs 2.5 times as many events."
 
 
 def with_every_part(results: Results) -> Results:
@@ -62,6 +77,7 @@ def with_every_part(results: Results) -> Results:
         update={
             "inputs": inputs(),
             "bias": bias(),
+            "sizing": sizing(),
             "design": design(),
             "reach": reach(),
             "average": averaged(read_average(AVERAGE)).results,
@@ -262,6 +278,7 @@ def design() -> Design:
     return Design(
         minimised="mean",
         ratios=("R_D", "R_Dst"),
+        labels=("R(D)", "R(D*)"),
         start=point(1.0, 0.8),
         proposed=point(0.95, 0.9),
         gain=0.05,
@@ -299,4 +316,84 @@ def design() -> Design:
         generated=8_000_000,
         snippet="[selection]\ne_res = { max = 0.9 }\n",
         notes=("The scan ends at residual energies of 1.2 GeV.",),
+    )  # fmt: skip
+
+
+def sizing() -> Sizing:
+    samples = (("D_tau", "B → D τ ν"), ("Dst_tau", "B → D* τ ν"), ("continuum", "continuum"))
+    return Sizing(
+        ratios=tuple(
+            SizingRatio(
+                ratio=name, label=label, injected=injected, exact=0.98 * error, now=error, templates=0.2 * error,
+                templates_error=0.01 * error, with_needed=0.99 * error,
+            )
+            for name, label, injected, error in RATIOS
+        ),
+        samples=tuple(
+            SizingSample(
+                sample=name, label=label, components=(name,), generated=None if i == 2 else 600_000 * (i + 1),
+                effective=5e5, share=0.01, needed=0.5 + i, needed_error=0.03, needed_events=None if i == 2 else 300_000,
+                decisive="R_Dst",
+            )
+            for i, (name, label) in enumerate(samples)
+        ),
+        costs=tuple(
+            SizingCost(
+                sample=name, ratio=ratio, part=0.002, part_error=0.0001, cost=0.004, needed=1.25, needed_formula=1.3,
+                needed_error=0.04,
+            )
+            for name, _ in samples
+            for ratio, *_ in RATIOS
+        ),
+        curves=tuple(
+            SizingCurve(ratio=ratio, sample=sample, factors=(0.1, 1.0, 10.0), errors=(2 * error, error, 0.9 * error))
+            for ratio, _, _, error in RATIOS
+            for sample in ("", "D_tau")
+        ),
+        toys=(
+            SizingToys(
+                factor=0.1, multiple=1.2, number=1000, failures=2,
+                ratios=tuple(
+                    SizingToyRatio(
+                        ratio=ratio, true=1.2 * injected, expected=error, mean_error=0.95 * error, spread=1.02 * error,
+                        spread_error=0.02 * error, bias=-0.01 * error, bias_error=0.03 * error, pull_width=1.07,
+                        pull_width_error=0.024, coverage=0.651, coverage_low=0.636, coverage_high=0.666,
+                    )
+                    for ratio, _, injected, error in RATIOS
+                ),
+            ),
+        ),
+        verifications=(
+            SizingVerification(
+                what="fewer", sets=8, fraction=0.125, events=1_200_000,
+                checks=tuple(
+                    SizingCheck(
+                        sample=sample, ratio="R_D", predicted=0.0054, predicted_error=0.0002, measured=0.0055,
+                        measured_error=0.0001, scatter=0.0051 if sample else None,
+                        scatter_error=0.0013 if sample else None, p_value=0.81 if sample else None,
+                    )
+                    for sample in ("D_tau", "")
+                ),
+            ),
+        ),
+        allocation=SizingAllocation(
+            target="all", seconds=12.0, seconds_now=12.5, aim=0.01, seconds_aim=20.0, seconds_aim_as_now=35.0,
+            samples=tuple(
+                SizingShareOfTime(
+                    sample=name, nanoseconds=1234.5, nanoseconds_error=None if i else 12.0, now=600_000, best=700_000,
+                    cheapest=900_000,
+                )
+                for i, (name, _) in enumerate(samples)
+            ),
+            gains=tuple(
+                SizingGain(
+                    ratio=ratio, templates_now=0.2 * error, templates_best=0.15 * error, error_now=error,
+                    error_best=0.99 * error, error_cheapest=0.985 * error,
+                )
+                for ratio, _, _, error in RATIOS
+            ),
+            snippet="events = 700_000\n",
+        ),
+        snippet="events = 300_000\n",
+        sentences=(TOO_FEW, "Template statistics cost R(D) 2.0 % of its error."),
     )  # fmt: skip

@@ -32,6 +32,8 @@ def findings(results: Results) -> tuple[Finding, ...]:
     found = [*_uncertainty(results)]
     if results.bias is not None:
         found.append(_bias(results.bias))
+    if results.sizing is not None:
+        found.append(Finding("sizing", "How many events", " ".join(results.sizing.sentences[:3])))
     found += _goodness(results)
     if results.design is not None:
         found.append(_design(results.design))

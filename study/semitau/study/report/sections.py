@@ -16,6 +16,7 @@ from .tables import (
     input_tables,
     ratio_tables,
     reach_tables,
+    sizing_tables,
     toy_tables,
 )
 
@@ -41,6 +42,21 @@ SECTIONS = (
         "Bias matrix",
         lambda r: r.bias,
         (bias_tables.change_table, bias_tables.nominal_table, bias_tables.pair_table),
+    ),
+    Section(
+        "sizing",
+        "How many events",
+        lambda r: r.sizing,
+        (
+            sizing_tables.ratio_table,
+            sizing_tables.sample_table,
+            sizing_tables.cost_table,
+            sizing_tables.curve_table,
+            sizing_tables.toy_table,
+            sizing_tables.check_table,
+            sizing_tables.allocation_table,
+            sizing_tables.gain_table,
+        ),
     ),
     Section("toys", "Toys", lambda r: r.toys, (toy_tables.toy_table,)),
     Section("linearity", "Linearity", lambda r: r.linearity, (toy_tables.line_table, toy_tables.point_table)),

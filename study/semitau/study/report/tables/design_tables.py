@@ -194,7 +194,7 @@ def information_table(results: Results) -> ReportTable | None:
     if design is None:
         return None
     rows = [
-        *([words(f"{a.label} of {a.table}", a.label, a.table), share(a.loss, 2)] for a in design.axes),
+        *([words(f"{a.label} of {a.table}", a.label, a.table), _loss(a.loss)] for a in design.axes),
         *([words(c.label, c.category, c.label), _loss(c.loss)] for c in design.categories),
     ]
     return table("design_worth", "What axes and categories are worth", columns, rows)
