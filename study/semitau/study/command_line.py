@@ -26,6 +26,7 @@ COMMANDS = {
     "budget": "Take the uncertainty of each ratio apart by source.",
     "final": "Declare a study with hidden ratios final, before it is unblinded.",
     "unblind": "Show the true ratios of a study that was declared final.",
+    "design": "The selection and binning with the smallest total expected error.",
     "reach": "Expected errors and significance against the amount of data.",
     "average": "Combine measurements with correlations; compatibility with a prediction.",
     "report": "Draw pictures and report of a study folder again.",
@@ -34,7 +35,7 @@ COMMANDS = {
 
 EPILOG = (
     "Exit status: 0 fine, 1 the work failed, 2 bad input. "
-    "Every command takes --seed, --workers, --quiet and --json; `semitau COMMAND --help` tells more."
+    "Every command takes --seed, --workers, --engine, --quiet and --json; `semitau COMMAND --help` tells more."
 )
 
 

@@ -40,6 +40,11 @@ class Merged:
     bins: tuple[int, ...]
     merits: tuple[float, ...]
 
+    @property
+    def size(self) -> int:
+        """Bins of one category, outside of cuts included."""
+        return int(np.prod([len(inner) + 1 for _, inner in self.binning]))
+
 
 def merge(evaluator: Evaluator, point: WorkingPoint, table: int, observables: Sequence[str], wanted: Wanted) -> Merged:
     """The best binning of a table on these axes, all other binnings and the cuts as at the point."""
@@ -49,7 +54,7 @@ def merge(evaluator: Evaluator, point: WorkingPoint, table: int, observables: Se
     rest = evaluator.information(point) - sum(told.information for told in evaluator.told(point, table))
     kept = [list(edges[name]) for name in observables]
     # (categories, bins along the axes ..., columns), axes in the order of `observables`
-    contents = _in_order(evaluator, finest, table, observables)
+    contents = in_order(evaluator, finest, table, observables)
     merit, rows = _judge(evaluator, rest, contents)
     sizes, merits = [_size(kept)], [merit]
     chosen: tuple[list[Edges], float] | None = None
@@ -83,7 +88,8 @@ def _size(kept: Sequence[Sequence[int]]) -> int:
     return int(np.prod([len(own) - 1 for own in kept]))
 
 
-def _in_order(evaluator: Evaluator, point: WorkingPoint, table: int, observables: Sequence[str]) -> Floats:
+def in_order(evaluator: Evaluator, point: WorkingPoint, table: int, observables: Sequence[str]) -> Floats:
+    """(categories, bins along the observables ..., columns): contents of a table with its axes in this order."""
     edges = evaluator.space.edges(point, table)
     shape = [len(own) - 1 for own in edges.values()]
     names = list(edges)

@@ -92,7 +92,7 @@ class DesignAxis(Part):
     shares: tuple[tuple[float, ...], ...] = Field(
         description="For each ratio the share of each bin in the information of the counts, over all other axes"
     )
-    loss: float = Field(description="Rise of the merit without this axis, relative")
+    loss: float | None = Field(description="Rise of the merit without this axis, relative; null: no fit without it")
 
 
 class DesignCategory(Part):
@@ -130,6 +130,7 @@ class Design(Part):
 
     minimised: str = Field(description="What is made small: mean, area, or the name of a ratio")
     ratios: tuple[str, ...] = Field(description="Identifiers of the ratios, in the order of all lists")
+    labels: tuple[str, ...] = Field(description="Their labels for people")
     start: DesignPoint = Field(description="The study as it is")
     proposed: DesignPoint = Field(description="The best that was found")
     gain: float = Field(description="Fall of the merit on the events of the search, relative")

@@ -133,21 +133,14 @@ def _best_binnings(
                 report("binnings", number + 1, len(sets))
         limit = min(choice.merged.merit for choice in found) * (1.0 + design.loss)
         close = [choice for choice in found if choice.merged.merit <= limit]
-        taken = min(close, key=lambda choice: (_bins(choice.merged), choice.merged.merit))
+        taken = min(close, key=lambda choice: (choice.merged.size, choice.merged.merit))
         now, merit = _bins_now(evaluator, point, table), evaluator.merit(point)
-        if merit <= limit and now <= _bins(taken.merged):
+        if merit <= limit and now <= taken.merged.size:
             compared += found
             continue
         point = point.with_binning(table, taken.merged.binning)
         compared += [replace(choice, chosen=choice is taken) for choice in found]
     return point, tuple(compared)
-
-
-def _bins(merged: Merged) -> int:
-    size = 1
-    for _, inner in merged.binning:
-        size *= len(inner) + 1
-    return size
 
 
 def _bins_now(evaluator: Evaluator, point: WorkingPoint, table: int) -> int:

@@ -207,7 +207,7 @@ def _variables(
                 values = tuple(sorted(even))
                 several = scan.by_category and len(acting) > 1
                 where = ", ".join(c.name for k in group for c in tables[k][1])
-                label = f"{OBSERVABLES[observable].label} {'≥' if side == 'min' else '<'}"
+                label = f"{OBSERVABLES[observable].label} {'from' if side == 'min' else 'below'}"
                 yield CutVariable(
                     observable, side, tuple(group), values, values.index(start),
                     f"{observable}.{side}" + (f" ({where})" if several else ""),

@@ -12,6 +12,7 @@ from ..numbers import counted
 from ..results import Results
 from .budget_bars import budget_bars
 from .correlations import correlation_matrix
+from .design import design_drawings
 from .linearity import linearity
 from .nuisance_strips import nuisance_strips
 from .projections import stacked_projections
@@ -80,6 +81,8 @@ def _drawings(results: Results) -> Iterator[Drawing]:
             "Mean fitted against injected ratio, and the bias in units of the error of one fit; the band is ±0.1.",
             partial(linearity, results.linearity),
         )
+    if results.design is not None:
+        yield from design_drawings(results.design)
     yield from _projections(results)
     if results.fit.correlation:
         yield (
