@@ -9,6 +9,7 @@ from math import isfinite
 import numpy as np
 from scipy.stats import chi2, norm
 from semitau.core.errors import InputError, Problem
+from semitau.core.kept import Kept
 from semitau.core.streams import stream_key
 from semitau.core.true_minus import formatted
 
@@ -71,11 +72,12 @@ def linearity(
     seed: int,
     workers: int | None = None,
     report: Report | None = None,
+    kept: Kept | None = None,
 ) -> Linearity:
     """Draw and fit n toys at each of several injected values of the ratios.
 
     factors : at least two different positive numbers; each multiplies the injected value of every ratio.
-    seed, workers, report : as for run_toys; the points have toys of their own.
+    seed, workers, report, kept : as for run_toys; the points have toys of their own.
 
     Raises InputError for bad factors, or when no ratio is free.
     """
@@ -101,7 +103,7 @@ def linearity(
         injected = {name: factor * float(model.injected[model.index(name)]) for name in free}
         stream = int(stream_key(seed, "linearity", number))
         label = f"linearity, factor {factor:g}"
-        points.append(run_toys(model, n, stream, workers, report, injected=injected, label=label))
+        points.append(run_toys(model, n, stream, workers, report, injected=injected, label=label, kept=kept))
     return Linearity(checked, tuple(points), {name: _line(name, points) for name in free})
 
 

@@ -13,6 +13,7 @@ measurements stay those of this model, since they are what its user knows.
 from __future__ import annotations
 
 from collections.abc import Callable, Mapping
+from contextlib import closing
 from dataclasses import dataclass
 from typing import NamedTuple
 
@@ -22,6 +23,7 @@ from semitau.core.compiled import kernel
 from semitau.core.elementary import normal_pair
 from semitau.core.engine import Job, run
 from semitau.core.errors import InputError, Problem
+from semitau.core.kept import Kept
 from semitau.core.streams import event_key, stream_key, uniform
 from semitau.core.templates import Floats
 
@@ -30,6 +32,7 @@ from ..fitting.model import Model
 from ..fitting.newton import Scratch, errors_at, minimise, scratch
 from ..likelihood.constraints import BLOCK, GAUSSIAN, LOG_NORMAL
 from ..likelihood.layout import APPROXIMATE, EXACT_BY_COMPONENT, Arrays, Indices
+from .kept_toys import Batch, joined, keeping, kept_batch, toys_key
 from .poisson import poisson
 from .pulls import Summary, summarise
 from .verdict import Verdict, judge
@@ -164,6 +167,7 @@ def run_toys(
     injected: Mapping[str, float] | ArrayLike | None = None,
     expectation: Expectation | None = None,
     label: str = "toys",
+    kept: Kept | None = None,
 ) -> ToyResults:
     """Draw and fit n toys.
 
@@ -172,6 +176,8 @@ def run_toys(
     injected : true values, by name over those of the templates, or a (parameters,) array.
     expectation : what another model expects; the counts are drawn about it, with the same random numbers as toys of
         this model, and its ratios are the true ones. Bins where this model expects nothing stay empty.
+    kept : toys that are there are not made again, and what is made is put there, also when it is interrupted; toys of
+        a smaller or larger number are the same toys.
 
     Failed fits are counted, not raised. Raises InputError for n < 1, a bad seed, or unknown names.
     """
@@ -183,12 +189,17 @@ def run_toys(
     start[held] = model.start[held]
     stream = stream_key(seed, "toys")
     means = _padded_means(model, truth) if expectation is None else model.lanes(expectation.seen_by(model)[0], 0.0)
-    sizes = [min(BATCH, n - first) for first in range(0, n, BATCH)]
     common = _Toys(model.layout.arrays, model.free, stream, truth, start, means)
-    tasks = [Job(_batch, common, (number * BATCH, size)) for number, size in enumerate(sizes)]
-    progress = None if report is None else lambda done, _: report(label, min(n, done * BATCH), n)
-    parts = list(run(tasks, workers, progress))
-    values, errors, statuses, statistics, steps = (np.concatenate(part) for part in zip(*parts, strict=True))
+    key = "" if kept is None else toys_key(common)
+    there = None if kept is None else kept_batch(kept, key, truth.size)
+    parts = [] if there is None else [there]
+    first = 0 if there is None else there[2].size
+    tasks = [Job(_batch, common, (begin, min(BATCH, n - begin))) for begin in range(first, n, BATCH)]
+    progress = None if report is None else lambda done, _: report(label, min(n, first + done * BATCH), n)
+    batches = run(tasks, workers, progress)
+    with closing(batches if kept is None else keeping(batches, kept, key, parts)) as made:  # type: ignore[type-var]
+        parts = [*parts, *made]
+    values, errors, statuses, statistics, steps = joined(parts, n)
     if expectation is not None:
         truth = truth.copy()
         for name, value in expectation.true.items():
@@ -198,9 +209,6 @@ def run_toys(
     ratios = tuple(name for name in model.ratios if model.parameters[model.index(name)].fixed is None)
     foreign = expectation is not None
     return ToyResults(model.names, ratios, truth, values, errors, statuses, statistics, steps, int(seed), foreign)
-
-
-Batch = tuple[Floats, Floats, NDArray[np.int64], Floats, NDArray[np.int64]]
 
 
 class _Toys(NamedTuple):

@@ -9,6 +9,7 @@ from types import MappingProxyType
 
 import numpy as np
 import numpy.typing as npt
+from semitau.core.kept import Kept
 from semitau.core.quadratic import Reweighting, pairs_of
 from semitau.core.templates import Pair, Template, TemplateSet
 
@@ -19,7 +20,7 @@ from .component_parts import Report, component_parts
 from .component_sums import ComponentSums
 from .cut_flow import CutFlow, step_names
 from .fit_components import components_and_parameters, template_categories, template_coefficients, template_nuisances
-from .kept_sums import Kept, component_key
+from .kept_sums import component_key
 from .part_runs import by_component, run_parts
 from .provenance import provenance
 from .variations import check_efficiencies

@@ -7,33 +7,19 @@ What only multiplies or combines histograms afterwards (expected numbers, consta
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from typing import Any, Protocol
+from collections.abc import Sequence
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 from semitau.core.code_digest import code_digest, versions
 from semitau.core.content_digest import content_digest
+from semitau.core.kept import Arrays
 
 from .chunk_tasks import CHUNK_EVENTS, Bench, ChannelInputs
 from .component_parts import Part, PartSums
 
-Arrays = Mapping[str, npt.NDArray[Any]]
 KIND = "component"
-
-
-class Kept(Protocol):
-    """Where sums are kept. What comes back may be None at any time: then it is made again."""
-
-    def take(self, kind: str, key: str) -> Arrays | None:
-        """The arrays under this key."""
-
-    def keep(self, kind: str, key: str, arrays: Arrays) -> None:
-        """Keep the arrays under this key, in the place of what was there."""
-
-    @property
-    def pause(self) -> float:
-        """Seconds between two times that incomplete sums are kept."""
 
 
 def component_key(parts: Sequence[Part], bench: Bench) -> str:

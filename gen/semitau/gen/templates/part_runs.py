@@ -8,10 +8,11 @@ from contextlib import closing
 from dataclasses import dataclass, field
 
 from semitau.core import engine
+from semitau.core.kept import Kept
 
 from .chunk_tasks import Bench, Filled, Task
 from .component_parts import Part, PartSums, Report
-from .kept_sums import KIND, Kept, component_key, packed, unpacked
+from .kept_sums import KIND, component_key, packed, unpacked
 
 
 @dataclass(eq=False)

@@ -7,12 +7,12 @@ from dataclasses import replace
 
 import numpy as np
 import numpy.typing as npt
+from semitau.core.kept import Kept
 from semitau.core.streams import stream_key
 
 from ..study_file.study import StudyConfig
 from .chunk_tasks import make_bench
 from .component_parts import Part, Report, component_parts
-from .kept_sums import Kept
 from .part_runs import run_parts
 
 Floats = npt.NDArray[np.float64]
