@@ -74,6 +74,8 @@ def _draw_stack(axes: Axes, projection: Projection, colours: Mapping[str, str]) 
             facecolor=colours[component.component],
             linewidth=0,
         )
+        # A gap of paper keeps neighbours apart in grey print, too.
+        axes.stairs(roof / widths, edges, color=PAPER, linewidth=0.6, baseline=None)
         floor = roof
     spread = np.asarray(projection.uncertainty)
     axes.stairs(

@@ -19,7 +19,7 @@ PAPER = "#ffffff"
 
 RATIO_HUES = ("#d55e00", "#0072b2", "#cc79a7", "#56b4e9")
 NORMALISATION_TINTS = ("#f6cfb0", "#b4d4ea", "#efd3e2", "#d4ebf9")
-FEED_DOWN_HUES = ("#8fd3bf", "#009e73", "#c7e8de", "#00694d")
+FEED_DOWN_HUES = ("#35a886", "#00573f", "#c7e8de", "#8fd3bf")
 BACKGROUND_HUES = ("#dcdfe2", "#c0c5ca", "#a3aab1", "#868f97", "#eceef0", "#727b84")
 
 RC: dict[Any, Any] = {

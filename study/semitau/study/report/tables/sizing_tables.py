@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from semitau.core.true_minus import formatted
 
-from ...numbers import GAP, digits_for
+from ...numbers import GAP, counted, digits_for
 from ...results import Results
 from ...sizing.part import SizingToyRatio, SizingToys
 from ..table import NOTHING, Cell, Column, ReportTable, chance, count, measured, number, share, table, words
@@ -229,5 +229,5 @@ def _measured(value: float | None, error: float | None) -> Cell:
     if value is None:
         return Cell(NOTHING, (None, error))
     if not error:
-        return Cell(formatted(value, ".3g"), (value, error))
+        return Cell(counted(value) if value >= 1000 else formatted(value, ".3g"), (value, error))
     return Cell(measured(value, error).shown, (value, error))
