@@ -26,6 +26,8 @@ def split_shape_and_rate(templates: TemplateSet, names: Iterable[str]) -> Templa
     Raises InputError for a name that is no nuisance, or where a total is not positive, so that there is no rate.
     """
     names = tuple(names)
+    if not names:
+        return templates
     _refuse([*_unknown(templates, names), *_without_rate(templates, names)])
     rates = {
         (component.name, side, name): rate
@@ -69,6 +71,8 @@ def mirrored(templates: TemplateSet, keep: Mapping[str, str]) -> TemplateSet:
 
     Raises InputError for a name that is no nuisance, or another side.
     """
+    if not keep:
+        return templates
     _refuse(
         [
             *_unknown(templates, keep),

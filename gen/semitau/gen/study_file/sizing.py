@@ -6,7 +6,7 @@ from typing import Annotated
 
 from pydantic import Field, model_validator
 
-from .rules import Count, Identifier, Increasing, Positive, Table, broken
+from .rules import Count, Flag, Identifier, Increasing, Positive, Table, broken
 
 _NotNegativeCount = Annotated[int, Field(strict=True, ge=0)]
 
@@ -43,6 +43,9 @@ class SizingSection(Table):
     )
     multiples: Annotated[tuple[Positive, ...], Field(min_length=1), Increasing] = Field(
         default=(1.0, 1.2), description="true ratios of the toys over those of the templates"
+    )
+    alone: Flag = Field(
+        default=True, description="toys, too, with the lowest factor on one component alone, at the highest multiple"
     )
     sets: _NotNegativeCount = Field(
         default=12, description="of templates generated anew, to verify the prediction; 0 for none"

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Literal
+
 from pydantic import Field
 
 from ..result_part import Part
@@ -78,7 +80,12 @@ class SizingToyRatio(Part):
 class SizingToys(Part):
     """Toys in which templates and data are drawn anew, at one number of events and one set of true ratios."""
 
-    factor: float = Field(gt=0, description="Multiple of the events of all samples")
+    what: Literal["all", "needed", "alone"] = Field(
+        description="all: the events of all samples times `factor`; needed: the needed events of each; alone: those of "
+        "`sample` times `factor`, the others as they are"
+    )
+    sample: str = Field(description='Sample of "alone", else ""')
+    factor: float | None = Field(description='Multiple of the events; null for "needed"')
     multiple: float = Field(gt=0, description="True ratios over those that the templates were made with")
     number: int = Field(description="Toys drawn")
     failures: int = Field(description="Toys whose fit failed; they are left out of everything else")
@@ -105,7 +112,9 @@ class SizingCheck(Part):
 class SizingVerification(Part):
     """Templates generated anew with other numbers of events, independent of those of the study."""
 
-    what: str = Field(description='"fewer": a fraction of all samples; "needed": the needed events of each')
+    what: Literal["fewer", "needed"] = Field(
+        description="fewer: a fraction of the events of all samples; needed: the needed events of each"
+    )
     sets: int = Field(description="Independent sets of templates")
     fraction: float = Field(gt=0, description="Events over those of the study, or over the needed ones")
     events: int = Field(description="Generated for all sets together")
@@ -117,7 +126,9 @@ class SizingShareOfTime(Part):
 
     sample: str = Field(description="Sample")
     nanoseconds: float = Field(gt=0, description="Processor time of one event, measured")
-    nanoseconds_error: float = Field(ge=0, description="Standard error from the scatter between the generated sets")
+    nanoseconds_error: float | None = Field(
+        description="Standard error, from the scatter between generated sets; null from one"
+    )
     now: int = Field(description="Events as they are")
     best: int = Field(description="Events that make template statistics smallest in the time")
     cheapest: int = Field(description="Events that reach `aim` in the least time")

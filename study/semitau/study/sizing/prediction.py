@@ -1,0 +1,162 @@
+"""What expected information says of templates and their events: errors, costs, needed events, curves."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping
+from dataclasses import dataclass
+from math import ceil
+
+import numpy as np
+from semitau.core.templates import Floats
+from semitau.fit.fitting.model import Model
+from semitau.fit.uncertainty.template_costs import EventNumbers, event_numbers
+
+from .part import SizingCost, SizingCurve, SizingRatio, SizingSample
+from .samples import Sample, effective_events, members
+
+PLACES = 25
+"""Points of a curve."""
+
+LOWEST, HIGHEST = 1e-2, 1e2
+"""Ends of the curves, in multiples of the events."""
+
+
+@dataclass(frozen=True, eq=False)
+class Prediction:
+    """The expected errors of a model, and the events that it asks for.
+
+    shares : (samples,) chosen costs. needed, formula, needed_errors : (ratios, samples) multiples of the events.
+    events : sample -> generated ones, None if they are not known. least : of each sample.
+    """
+
+    model: Model
+    numbers: EventNumbers
+    samples: tuple[Sample, ...]
+    shares: Floats
+    needed: Floats
+    formula: Floats
+    needed_errors: Floats
+    events: Mapping[str, int] | None
+    least: int
+
+    @property
+    def needed_factors(self) -> Floats:
+        """(samples,) multiples of the events that every ratio is content with."""
+        most = self.needed.max(axis=0)
+        if self.events is None:
+            return np.where(most > 0.0, most, 1.0)
+        asked = [self.needed_events[name] / self.events[name] for name in self.numbers.samples]
+        return np.array(asked)
+
+    @property
+    def needed_events(self) -> dict[str, int]:
+        """Sample -> number of events; empty if it is not known how many there are."""
+        if self.events is None:
+            return {}
+        most = dict(zip(self.numbers.samples, self.needed.max(axis=0).tolist(), strict=True))
+        return {name: max(ceil(most[name] * events), self.least) for name, events in self.events.items()}
+
+
+def predicted(
+    model: Model,
+    samples: tuple[Sample, ...],
+    share: float,
+    shares: Mapping[str, float],
+    least: int,
+    events: Mapping[str, int] | None,
+) -> Prediction:
+    """Raises InputError and RunError as `event_numbers`."""
+    numbers = event_numbers(model, members(samples))
+    wanted = np.array([shares.get(sample.name, share) for sample in samples])
+    first, unsure = numbers.first_order(), numbers.first_order_errors()
+    needed = numbers.needed(wanted)
+    relative = np.where(first > 0.0, unsure / np.where(first > 0.0, first, 1.0), 0.0)
+    formula = numbers.needed_first_order(wanted)
+    return Prediction(model, numbers, samples, wanted, needed, formula, needed * relative, events, least)
+
+
+def ratio_parts(found: Prediction) -> tuple[SizingRatio, ...]:
+    """Errors of every ratio: with exact templates, as it is, with the needed events."""
+    numbers, model = found.numbers, found.model
+    parts, unsure = numbers.parts(1.0), numbers.part_errors(1.0)
+    whole = np.sqrt((parts**2).sum(axis=1))
+    exact, now, needed = (numbers.errors(factors) for factors in (np.inf, 1.0, found.needed_factors))
+    return tuple(
+        SizingRatio(
+            ratio=name,
+            label=model.parameters[model.index(name)].label,
+            injected=float(model.injected[model.index(name)]),
+            exact=float(exact[r]),
+            now=float(now[r]),
+            templates=float(whole[r]),
+            templates_error=quadratic_error(parts[r], unsure[r]),
+            with_needed=float(needed[r]),
+        )
+        for r, name in enumerate(numbers.ratios)
+    )
+
+
+def quadratic_error(parts: Floats, errors: Floats) -> float:
+    """Error of the quadratic sum of parts."""
+    whole = float(np.sqrt((parts**2).sum()))
+    return float(np.sqrt(((parts * errors) ** 2).sum())) / whole if whole > 0.0 else 0.0
+
+
+def sample_parts(found: Prediction) -> tuple[SizingSample, ...]:
+    """What every sample has and needs."""
+    ratios = found.numbers.ratios
+    parts = []
+    for s, sample in enumerate(found.samples):
+        decisive = int(np.argmax(found.needed[:, s]))
+        parts.append(
+            SizingSample(
+                sample=sample.name,
+                label=sample.label,
+                components=sample.components,
+                generated=None if found.events is None else found.events[sample.name],
+                effective=effective_events(sample, found.model.templates),
+                share=float(found.shares[s]),
+                needed=float(found.needed[decisive, s]),
+                needed_error=float(found.needed_errors[decisive, s]),
+                needed_events=found.needed_events.get(sample.name),
+                decisive=ratios[decisive],
+            )
+        )
+    return tuple(parts)
+
+
+def cost_parts(found: Prediction) -> Iterator[SizingCost]:
+    """What every sample does to every ratio."""
+    numbers = found.numbers
+    parts, unsure, costs = numbers.parts(1.0), numbers.part_errors(1.0), numbers.costs(1.0)
+    for s, sample in enumerate(numbers.samples):
+        for r, ratio in enumerate(numbers.ratios):
+            yield SizingCost(
+                sample=sample,
+                ratio=ratio,
+                part=float(parts[r, s]),
+                part_error=float(unsure[r, s]),
+                cost=float(costs[r, s]),
+                needed=float(found.needed[r, s]),
+                needed_formula=float(found.formula[r, s]),
+                needed_error=float(found.needed_errors[r, s]),
+            )
+
+
+def curve_parts(numbers: EventNumbers) -> Iterator[SizingCurve]:
+    """Expected errors against the events: of all samples at once, then of each with the others exact."""
+    factors = np.geomspace(LOWEST, HIGHEST, PLACES)
+    together = np.array([numbers.errors(factor) for factor in factors])
+    for r, ratio in enumerate(numbers.ratios):
+        yield SizingCurve(
+            ratio=ratio, sample="", factors=tuple(factors.tolist()), errors=tuple(together[:, r].tolist())
+        )
+    for s, sample in enumerate(numbers.samples):
+        alone = np.full(len(numbers.samples), np.inf)
+        errors = []
+        for factor in factors:
+            alone[s] = factor
+            errors.append(numbers.errors(alone))
+        for r, ratio in enumerate(numbers.ratios):
+            column = tuple(float(error[r]) for error in errors)
+            yield SizingCurve(ratio=ratio, sample=sample, factors=tuple(factors.tolist()), errors=column)
