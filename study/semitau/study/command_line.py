@@ -26,6 +26,7 @@ COMMANDS = {
     "budget": "Take the uncertainty of each ratio apart by source.",
     "final": "Declare a study with hidden ratios final, before it is unblinded.",
     "unblind": "Show the true ratios of a study that was declared final.",
+    "bias": "Every alternative made with each and fitted with each, and whether a systematic covers it.",
     "design": "The selection and binning with the smallest total expected error.",
     "reach": "Expected errors and significance against the amount of data.",
     "average": "Combine measurements with correlations; compatibility with a prediction.",

@@ -88,8 +88,10 @@ def shift_errors(model: Model, expectation: Expectation, fit: ForeignFit, fluctu
         result = maximise(model, _data(model, moved))
         if result.valid:
             found.append([result.value(name) for name in fit.shifts])
-    spread = np.std(found, axis=0, ddof=1) if len(found) > 1 else np.full(len(fit.shifts), np.nan)
-    return dict(zip(fit.shifts, spread.tolist(), strict=True))
+    if len(found) < 2:
+        return dict.fromkeys(fit.shifts, float("nan"))
+    apart = np.array(found) - found[0]  # exactly 0 where nothing moves
+    return dict(zip(fit.shifts, np.std(apart, axis=0, ddof=1).tolist(), strict=True))
 
 
 def _data(model: Model, counts: Floats) -> Data:

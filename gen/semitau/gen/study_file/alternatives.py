@@ -56,7 +56,7 @@ class BiasSection(Table):
         default=0.1, description="share of the whole error below which a shift does not matter"
     )
     replicas: Annotated[Count, Field(ge=4)] = Field(
-        default=16, description="independent sets of events that tell the error of the shifts from finite templates"
+        default=10, description="independent sets of events that tell the error of the shifts from finite templates"
     )
     replica_events: Annotated[Positive, Field(le=1)] = Field(
         default=0.25, description="events of all replicas together, relative to those of the templates"

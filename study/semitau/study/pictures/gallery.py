@@ -10,6 +10,7 @@ from matplotlib import rc_context
 
 from ..numbers import counted
 from ..results import Results
+from .bias_matrix import bias_matrix
 from .budget_bars import budget_bars
 from .correlations import correlation_matrix
 from .design import design_drawings
@@ -65,6 +66,14 @@ def _drawings(results: Results) -> Iterator[Drawing]:
             "Nuisances",
             "Fitted value and error of each nuisance on its auxiliary measurement, and how far it moves each ratio.",
             partial(nuisance_strips, results.nuisances, results.ratios),
+        )
+    if results.bias is not None and results.bias.pairs:
+        yield (
+            "bias_matrix",
+            "Bias matrix",
+            "Shift of each ratio in units of its error, for everything made with one study and fitted with another; "
+            "framed where no assigned systematic covers it.",
+            partial(bias_matrix, results.bias),
         )
     toys = results.toys
     if toys is not None and toys.number > toys.failures:
