@@ -352,7 +352,7 @@ def sizing() -> Sizing:
         ),
         toys=(
             SizingToys(
-                factor=0.1, multiple=1.2, number=1000, failures=2,
+                what="alone", sample="D_tau", factor=0.1, multiple=1.2, number=1000, failures=2,
                 ratios=tuple(
                     SizingToyRatio(
                         ratio=ratio, true=1.2 * injected, expected=error, mean_error=0.95 * error, spread=1.02 * error,

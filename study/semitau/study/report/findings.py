@@ -11,6 +11,7 @@ from ..design.part import Design
 from ..numbers import percent, signed, with_error
 from ..reach.part import Reach
 from ..results import Results
+from ..sizing.part import Sizing
 from .table import chance
 
 BAD_FIT = 0.01
@@ -33,7 +34,7 @@ def findings(results: Results) -> tuple[Finding, ...]:
     if results.bias is not None:
         found.append(_bias(results.bias))
     if results.sizing is not None:
-        found.append(Finding("sizing", "How many events", " ".join(results.sizing.sentences[:3])))
+        found.append(_sizing(results.sizing))
     found += _goodness(results)
     if results.design is not None:
         found.append(_design(results.design))
@@ -61,11 +62,26 @@ def _uncertainty(results: Results) -> Iterator[Finding]:
 
 
 def _bias(bias: Bias) -> Finding:
-    others = len(bias.studies) - 1
-    if bias.not_covered:
-        return Finding("bias", "Alternatives", " ".join(bias.not_covered), alarming=True)
-    text = f"{others} alternative{'s' * (others != 1)}: no shift of a ratio is left uncovered."
-    return Finding("bias", "Alternatives", " ".join((text, *bias.sentences[:2])))
+    labels = {study.name: study.label for study in bias.studies}
+    nominal, *others = labels
+    missed = {
+        pair.made_with
+        for pair in bias.pairs
+        if pair.fitted_with == nominal and any(ratio.status == "not covered" for ratio in pair.ratios)
+    }
+    if missed:
+        names = ", ".join(labels[name] for name in others if name in missed)
+        which = f"{len(missed)} of {len(others)} {'is' if len(missed) == 1 else 'are'} not covered: {names}."
+        return Finding("bias", "Alternatives", " ".join((which, *bias.not_covered[:1])), alarming=True)
+    text = f"No shift of a ratio by one of {len(others)} is left uncovered."
+    return Finding("bias", "Alternatives", " ".join((text, *bias.not_covered[:1], *bias.sentences[:1])))
+
+
+def _sizing(sizing: Sizing) -> Finding:
+    """Costs of each ratio and what is needed, which come first, and what is marked as worth a look."""
+    first = len(sizing.ratios) + 1
+    marked = [sentence for sentence in sizing.sentences[first:] if sentence.startswith("Look at this")]
+    return Finding("sizing", "How many events", " ".join((*sizing.sentences[:first], *marked)))
 
 
 def _goodness(results: Results) -> Iterator[Finding]:

@@ -105,7 +105,7 @@ def toy_table(results: Results) -> ReportTable | None:
     labels = {part.ratio: part.label for part in sizing.ratios}
     columns = [
         Column("Ratio", text=True),
-        Column("events", names=("events over those now",)),
+        Column("events", text=True, names=("what", "sample", "events over those now")),
         Column("true / injected"),
         Column("toys", names=("toys", "failed")),
         Column("expected error"),
@@ -115,17 +115,18 @@ def toy_table(results: Results) -> ReportTable | None:
         Column("pull width", names=("pull width", "error of pull width")),
         Column("coverage at 68.3 %", names=("coverage", "coverage, low", "coverage, high")),
     ]
-    rows = [_toy_cells(toys, part, labels) for toys in sizing.toys for part in toys.ratios]
+    samples = {part.sample: part.label for part in sizing.samples}
+    rows = [_toy_cells(toys, part, labels, samples) for toys in sizing.toys for part in toys.ratios]
     return table("sizing_toys", "Toys with templates and data drawn anew", columns, rows)
 
 
-def _toy_cells(toys: SizingToys, part: SizingToyRatio, labels: dict[str, str]) -> list[Cell]:
+def _toy_cells(toys: SizingToys, part: SizingToyRatio, labels: dict[str, str], samples: dict[str, str]) -> list[Cell]:
     places = digits_for(part.spread_error) if part.spread_error else 4
     failed = f"{toys.failures} failed" if toys.failures else ""
     interval = (part.coverage, part.coverage_low, part.coverage_high)
     return [
         words(labels.get(part.ratio, part.ratio)),
-        Cell(f"×{GAP}{toys.factor:.3g}", (toys.factor,)),
+        Cell(_events(toys, samples), (toys.what, toys.sample, toys.factor)),
         Cell(f"×{GAP}{toys.multiple:.3g}", (toys.multiple,)),
         Cell(count(toys.number).shown, (toys.number, toys.failures), failed),
         number(part.expected, places),
@@ -135,6 +136,13 @@ def _toy_cells(toys: SizingToys, part: SizingToyRatio, labels: dict[str, str]) -
         measured(part.pull_width, part.pull_width_error),
         Cell(share(part.coverage).shown, interval, f"{share(interval[1]).shown} to {share(interval[2]).shown}"),
     ]
+
+
+def _events(toys: SizingToys, samples: dict[str, str]) -> str:
+    if toys.factor is None:
+        return "as needed"
+    factor = f"×{GAP}{toys.factor:.3g}"
+    return f"{factor} of {samples.get(toys.sample, toys.sample)}" if toys.what == "alone" else factor
 
 
 def check_table(results: Results) -> ReportTable | None:
