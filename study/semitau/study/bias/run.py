@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import hashlib
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from math import isfinite
@@ -15,12 +14,11 @@ from semitau.fit.toys.pulls import Summary
 from semitau.fit.toys.toys import ToyResults, run_toys
 from semitau.fit.uncertainty.covering import covering_error, judge_shift
 from semitau.fit.uncertainty.foreign_fit import ForeignFit, foreign_fit, shift_errors
-from semitau.gen.study_file.alternative_studies import CHANGEABLE, alternative_changes
+from semitau.gen.study_file.alternative_studies import alternative_changes
 from semitau.gen.study_file.alternatives import NOMINAL
 from semitau.gen.study_file.study import StudyConfig
 
 from ..graph.materials import Materials
-from ..run.study_folder import named_files
 from .part import Bias, BiasChange, BiasCoverage, BiasGoodness, BiasPair, BiasRatio, BiasStudy
 from .sentences import not_covered, other_sentences
 from .worlds import World, worlds
@@ -54,24 +52,8 @@ def bias_part(study: StudyConfig, materials: Materials, workers: int | None, rep
 
 
 def ingredients(study: StudyConfig) -> object:
-    """What the bias matrix depends on besides the templates and [fit] of the study, as plain JSON values.
-
-    An alternative may switch on what the study itself does without, so everything that one may change counts.
-    """
-    fields = {name for name, info in type(study).model_fields.items() if (info.alias or name) in CHANGEABLE}
-    document = study.model_dump(mode="json", include=fields | {"alternatives", "bias"}, exclude={"fit": {"data"}})
-    return {
-        "seed": study.study.seed,
-        "tables": document,
-        "files": {file: _digest(study, file) for file in sorted(set(named_files(document)))},
-    }
-
-
-def _digest(study: StudyConfig, file: str) -> str:
-    try:
-        return hashlib.sha256(study.beside(file).read_bytes()).hexdigest()
-    except OSError:
-        return ""  # what needs the file will say that it is not there
+    """What the bias matrix depends on besides the templates, [fit], and all that events are made from; JSON values."""
+    return study.model_dump(mode="json", include={"alternatives", "bias"})
 
 
 def _studies(study: StudyConfig) -> tuple[BiasStudy, ...]:

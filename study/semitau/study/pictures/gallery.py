@@ -71,8 +71,10 @@ def _drawings(results: Results) -> Iterator[Drawing]:
         yield (
             "bias_matrix",
             "Bias matrix",
-            "Shift of each ratio in units of its error, for everything made with one study and fitted with another; "
-            "framed where no assigned systematic covers it.",
+            (
+                "Shift of each ratio in units of its error, for everything made with one study and fitted with another; "
+                "framed where no assigned systematic covers it."
+            ),
             partial(bias_matrix, results.bias),
         )
     toys = results.toys
