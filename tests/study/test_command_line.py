@@ -17,7 +17,7 @@ from semitau.study.command_line import COMMANDS, main
 
 HEAVY = ("numpy", "pydantic", "scipy", "numba", "uproot", "awkward", "matplotlib", "rich", "jinja2", "boost_histogram")
 
-SHARED = {"--seed", "--workers", "--quiet", "--json"}
+SHARED = {"--seed", "--workers", "--engine", "--quiet", "--json"}
 
 
 def test_help_imports_nothing_heavy() -> None:

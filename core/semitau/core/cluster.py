@@ -12,7 +12,9 @@ import json
 import logging
 import pickle
 import platform
+import queue
 import re
+import threading
 import time
 import uuid
 import warnings
@@ -25,10 +27,13 @@ from pathlib import Path
 from typing import Any, TypeVar
 
 from .code_digest import code_digest, versions
-from .engine import WAITING_PER_WORKER, Job
+from .engine import Job
 from .errors import InputError, Problem, RunError
 
 T = TypeVar("T")
+
+AHEAD = 4
+"""Tasks under way per thread: twice as many as here, for the time that they spend between the machines."""
 
 ANSWER_SECONDS = 5.0
 """How long a scheduler may take to answer."""
@@ -101,25 +106,54 @@ def connected(engine: str, *, patience: float = WORKER_SECONDS) -> Iterator[Clus
         warnings.catch_warnings(),
     ):
         warnings.simplefilter("ignore")
-        try:
-            make: Any = distributed.Client
-            client = make(address, timeout=ANSWER_SECONDS, set_as_default=False, name="semitau")
-        except (OSError, ValueError, RuntimeError, EOFError) as error:
-            raise RunError(
-                Problem(
-                    "the scheduler does not answer",
-                    f"--engine: {address}",
-                    f"nothing that speaks its language within {ANSWER_SECONDS:g} s: {_first_line(error)}",
-                    remedy="Check host and port, that `dask scheduler` of the same version of distributed runs there, "
-                    "and the way through firewalls; or leave --engine out.",
-                )
-            ) from None
+        client = _client(distributed.Client, address)
         try:
             cluster = Cluster(client, address, patience)
             cluster.expect_workers()
             yield cluster
         finally:
             client.close(timeout=ANSWER_SECONDS)
+
+
+def _client(make: Any, address: str) -> Any:
+    """A client of the scheduler. Made in a thread, as the library waits for ever for somebody who speaks otherwise.
+
+    Raises
+    ------
+    RunError : nothing has come of it in time.
+    """
+    client = make.__new__(make)
+    ended: queue.SimpleQueue[Exception | None] = queue.SimpleQueue()
+
+    def ask() -> None:
+        try:
+            client.__init__(address, timeout=ANSWER_SECONDS, set_as_default=False, name="semitau")
+            ended.put(None)
+        except Exception as error:
+            ended.put(error)
+
+    threading.Thread(target=ask, daemon=True).start()
+    try:
+        error = ended.get(timeout=2.0 * ANSWER_SECONDS)
+        got = "" if error is None else _first_line(error)
+    except queue.Empty:
+        got = "nothing that a scheduler says"
+    if got:
+        client.status = "closed"  # there is nothing to close, which the library would wait for
+        raise _no_answer(address, got)
+    return client
+
+
+def _no_answer(address: str, got: str) -> RunError:
+    return RunError(
+        Problem(
+            "the scheduler does not answer",
+            f"--engine: {address}",
+            got,
+            remedy="Check host and port, whether `dask scheduler` runs there, with about the same version of "
+            "distributed, and the way through firewalls; or leave --engine out.",
+        )
+    )
 
 
 class Cluster:
@@ -195,13 +229,14 @@ class Cluster:
         waiting: deque[Future[T]] = deque()
         try:
             for task in tasks:
-                while waiting and len(waiting) >= WAITING_PER_WORKER * self.threads():
+                while waiting and len(waiting) >= AHEAD * self.threads():
                     yield self._result(waiting.popleft())
                 if isinstance(task, Job):
                     common, own = sender.sent(task.common), task.own
-                    waiting.append(executor.submit(_done, self._wanted, task.function, common, *own))
+                    submitted = task.function, common, *own
                 else:
-                    waiting.append(executor.submit(_done, self._wanted, task))
+                    submitted = (task,)
+                waiting.append(executor.submit(_done, self._wanted, *submitted, key=_key(submitted[0])))
             while waiting:
                 yield self._result(waiting.popleft())
         finally:
@@ -282,6 +317,12 @@ def _done(wanted: dict[str, str], function: Callable[..., T], *arguments: object
 
         raise OtherVersions(get_worker().address, here)
     return function(*arguments)
+
+
+def _key(function: Callable[..., Any]) -> str:
+    """A new name for a task. Its first word tells the scheduler which tasks take alike long."""
+    kind = re.sub("[^a-z]", "", getattr(function, "__name__", "")) or "task"
+    return f"{kind}-{uuid.uuid4().hex}"
 
 
 def _first_line(error: BaseException) -> str:
