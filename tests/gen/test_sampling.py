@@ -17,7 +17,7 @@ from semitau.core.constants import MASS
 from semitau.core.streams import stream_key, uniforms
 from semitau.gen.block import LANES, NODE, Q2, VISIBLE_E, new_block
 from semitau.gen.decays.chains import chains_of
-from semitau.gen.truth.alias import alias_table, draw_position, interval_table
+from semitau.gen.truth.alias import alias_tables, draw_position, interval_table
 from semitau.gen.truth.channel_table import Q2_INTERVALS, channel_table
 from semitau.gen.truth.cosines import even_cosine
 from semitau.gen.truth.drawing import draw_decays
@@ -42,11 +42,11 @@ def test_alias_table_holds_the_weights() -> None:
     """What stays at an index plus what is sent there gives back the weights exactly."""
     weights = np.random.default_rng(SEED).exponential(size=100)
     weights[[3, 50]] = 0.0
-    table = alias_table(weights)
+    table = alias_tables(weights[None])[0]
     back = table[:, 0].copy()
     np.add.at(back, table[:, 1].astype(int), 1.0 - table[:, 0])
     np.testing.assert_allclose(back / 100, weights / weights.sum(), atol=1e-15)
-    np.testing.assert_array_equal(alias_table(np.ones(4))[:, 0], 1.0)
+    np.testing.assert_array_equal(alias_tables(np.ones((1, 4)))[0, :, 0], 1.0)
 
 
 def test_interval_table_follows_its_density() -> None:

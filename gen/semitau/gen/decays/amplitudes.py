@@ -25,40 +25,45 @@ Checked point by point against products of explicit Dirac matrices (tests/gen/te
 from __future__ import annotations
 
 from dataclasses import dataclass, fields
+from typing import NamedTuple
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 from semitau.core.constants import BOTTOM_MASS, CHARM_MASS
 
 from ..truth.kinematics import Floats, kallen
-from .decay import Decay
+from .decay import Decay, WilsonCoefficients
 from .form_factor_values import PseudoscalarFormFactors, VectorFormFactors
 from .orbital_amplitudes import orbital_currents
 from .tensor_form_factors import VectorTensorFormFactors, pseudoscalar_tensor, vector_tensor
 
 Complexes = NDArray[np.complex128]
+Amplitude = NDArray[np.float64] | NDArray[np.complex128]
+"""Real where no coupling is complex, which the arithmetic is several times faster for."""
 
 
 @dataclass(frozen=True)
 class HelicityAmplitudes:
-    """Amplitudes of the hadron current, each complex128 of the shape of q2, in GeV.
+    """Amplitudes of the hadron current, each of the shape of q2, in GeV; float64 if all couplings are real.
 
     J : vector and axial current for charm helicity +, -, 0 and timelike. S : scalar. T : tensor.
-    Without complex couplings all imaginary parts are zero.
     """
 
-    J_plus: Complexes
-    J_minus: Complexes
-    J_zero: Complexes
-    J_t: Complexes
-    S: Complexes
-    T_plus: Complexes
-    T_minus: Complexes
-    T_zero: Complexes
+    J_plus: Amplitude
+    J_minus: Amplitude
+    J_zero: Amplitude
+    J_t: Amplitude
+    S: Amplitude
+    T_plus: Amplitude
+    T_minus: Amplitude
+    T_zero: Amplitude
 
     def with_lepton(self, x: ArrayLike) -> LeptonAmplitudes:
         """Combinations for a lepton of x = m_lepton / sqrt(q2)."""
         x = np.asarray(x, dtype=np.float64)
+        if not any(np.any(one) for one in (self.S, self.T_plus, self.T_minus, self.T_zero)):
+            plus, minus, zero = self.J_plus, self.J_minus, self.J_zero
+            return LeptonAmplitudes(plus, minus, zero, x * plus, x * minus, x * zero, x * self.J_t)
         return LeptonAmplitudes(
             a_plus=self.J_plus + x * self.T_plus,
             a_minus=self.J_minus + x * self.T_minus,
@@ -72,15 +77,15 @@ class HelicityAmplitudes:
 
 @dataclass(frozen=True)
 class LeptonAmplitudes:
-    """a (lepton helicity -1/2) and b, t (+1/2) of the table above; complex128 of the shape of q2, GeV."""
+    """a (lepton helicity -1/2) and b, t (+1/2) of the table above; of the shape of q2, GeV."""
 
-    a_plus: Complexes
-    a_minus: Complexes
-    a_zero: Complexes
-    b_plus: Complexes
-    b_minus: Complexes
-    b_zero: Complexes
-    t: Complexes
+    a_plus: Amplitude
+    a_minus: Amplitude
+    a_zero: Amplitude
+    b_plus: Amplitude
+    b_minus: Amplitude
+    b_zero: Amplitude
+    t: Amplitude
 
 
 def helicity_amplitudes(decay: Decay, q2: ArrayLike, charm_mass: ArrayLike | None = None) -> HelicityAmplitudes:
@@ -106,77 +111,102 @@ def lepton_amplitudes(decay: Decay, q2: ArrayLike, charm_mass: ArrayLike | None 
     return helicity_amplitudes(decay, q2, charm_mass).with_lepton(decay.m_lepton / np.sqrt(q2))
 
 
-def _amplitudes(q2: Floats, **given: ArrayLike) -> HelicityAmplitudes:
-    """The given amplitudes as complex arrays, the others zero."""
+class _Strengths(NamedTuple):
+    """Couplings as they multiply amplitudes: real numbers if none is complex."""
+
+    VL: float | complex
+    VR: float | complex
+    SL: float | complex
+    SR: float | complex
+    T: float | complex
+
+    @classmethod
+    def of(cls, couplings: WilsonCoefficients) -> _Strengths:
+        values = [complex(getattr(couplings, name)) for name in cls._fields]
+        return cls(*(values if any(value.imag for value in values) else [value.real for value in values]))
+
+
+def _amplitudes(q2: Floats, couplings: _Strengths, **given: ArrayLike) -> HelicityAmplitudes:
+    """The given amplitudes as arrays of one type, the others zero."""
+    dtype: type = np.complex128 if isinstance(couplings.T, complex) else np.float64
     names = (field.name for field in fields(HelicityAmplitudes))
     return HelicityAmplitudes(
-        **{name: np.asarray(given.get(name, np.zeros(q2.shape)), dtype=np.complex128) for name in names}
+        **{name: np.asarray(given[name], dtype) if name in given else np.zeros(q2.shape, dtype) for name in names}
     )
+
+
+# Divisions below are products with a reciprocal, which real and complex numbers round alike.
 
 
 def pseudoscalar_amplitudes(
     decay: Decay, q2: Floats, values: PseudoscalarFormFactors, f_T: Floats
 ) -> HelicityAmplitudes:
     """B -> D from given form factors; masses and couplings of `decay`."""
-    M, m, c = decay.m_parent, decay.m_charm, decay.couplings
-    size, gap = np.sqrt(kallen(M, m, q2)), M**2 - m**2
+    M, m, c = decay.m_parent, decay.m_charm, _Strengths.of(decay.couplings)
+    size, gap, over_root = np.sqrt(kallen(M, m, q2)), M**2 - m**2, 1.0 / np.sqrt(q2)
     vector = 1.0 + c.VL + c.VR
-    return _amplitudes(
-        q2,
-        J_zero=-0.5 * vector * size / np.sqrt(q2) * values.f_plus,
-        J_t=0.5 * vector * gap / np.sqrt(q2) * values.f_zero,
-        S=0.5 * (c.SL + c.SR) * gap * values.f_zero / (BOTTOM_MASS - CHARM_MASS),
-        T_zero=-2.0 * c.T * size * f_T / (M + m),
-    )
+    found = {
+        "J_zero": -0.5 * vector * size * over_root * values.f_plus,
+        "J_t": 0.5 * vector * gap * over_root * values.f_zero,
+    }
+    if c.SL or c.SR:
+        found["S"] = 0.5 * (c.SL + c.SR) * gap * values.f_zero * (1.0 / (BOTTOM_MASS - CHARM_MASS))
+    if c.T:
+        found["T_zero"] = -2.0 * c.T * size * f_T * (1.0 / (M + m))
+    return _amplitudes(q2, c, **found)
 
 
 def vector_amplitudes(
     decay: Decay, q2: Floats, values: VectorFormFactors, tensor: VectorTensorFormFactors
 ) -> HelicityAmplitudes:
     """B -> D* from given form factors; masses and couplings of `decay`."""
-    M, m, c = decay.m_parent, decay.m_charm, decay.couplings
+    M, m, c = decay.m_parent, decay.m_charm, _Strengths.of(decay.couplings)
     square = kallen(M, m, q2)
-    size, root, gap = np.sqrt(square), np.sqrt(q2), M**2 - m**2
+    size, over_root, gap = np.sqrt(square), 1.0 / np.sqrt(q2), M**2 - m**2
     axial, vector = 1.0 + c.VL - c.VR, 1.0 + c.VL + c.VR
-    transverse, parity = axial * (M + m) * values.A1, vector * size * values.V / (M + m)
-    T_even, T_odd = gap * tensor.T2, size * tensor.T1
-    return _amplitudes(
-        q2,
-        J_plus=0.5 * (transverse - parity),
-        J_minus=0.5 * (transverse + parity),
-        J_zero=0.5 * axial * values.F1 / root,
-        J_t=-0.5 * axial * size / root * values.A0,
-        S=-0.5 * (c.SR - c.SL) * size * values.A0 / (BOTTOM_MASS + CHARM_MASS),
-        T_plus=-2.0 * c.T * (T_even + T_odd) / root,
-        T_minus=-2.0 * c.T * (T_even - T_odd) / root,
-        T_zero=-(c.T / m) * ((M**2 + 3.0 * m**2 - q2) * tensor.T2 - square * tensor.T3 / gap),
-    )
+    transverse, parity = axial * (M + m) * values.A1, vector * size * values.V * (1.0 / (M + m))
+    found = {
+        "J_plus": 0.5 * (transverse - parity),
+        "J_minus": 0.5 * (transverse + parity),
+        "J_zero": 0.5 * axial * values.F1 * over_root,
+        "J_t": -0.5 * axial * size * over_root * values.A0,
+    }
+    if c.SL or c.SR:
+        found["S"] = -0.5 * (c.SR - c.SL) * size * values.A0 * (1.0 / (BOTTOM_MASS + CHARM_MASS))
+    if c.T:
+        T_even, T_odd = gap * tensor.T2, size * tensor.T1
+        found["T_plus"] = -2.0 * c.T * (T_even + T_odd) * over_root
+        found["T_minus"] = -2.0 * c.T * (T_even - T_odd) * over_root
+        found["T_zero"] = -(c.T / m) * ((M**2 + 3.0 * m**2 - q2) * tensor.T2 - square * tensor.T3 / gap)
+    return _amplitudes(q2, c, **found)
 
 
 def _orbital(decay: Decay, q2: Floats, m: Floats) -> HelicityAmplitudes:
     """B -> D**. Scalar and tensor currents follow from the equations of motion, exact at leading order in 1/m."""
     currents = orbital_currents(decay, q2, m)
-    M, c = decay.m_parent, decay.couplings
-    root, total, difference = np.sqrt(q2), M + m, M - m
+    M, c = decay.m_parent, _Strengths.of(decay.couplings)
     axial, vector = 1.0 + c.VL - c.VR, 1.0 + c.VL + c.VR
     timelike = -0.5 * currents.timelike  # the helicity table has J_t and J_0 of opposite sign
-    drag = np.sqrt(kallen(M, m, q2)) * currents.timelike
     # The current that carries the polarisation vector of the charmed meson is the vector one in 1+ states, the axial
     # one in 0+ and 2+; the other one has the epsilon tensor.
     if currents.natural_is_vector:
         even, odd, scalar = vector, axial, (c.SL + c.SR) / (BOTTOM_MASS - CHARM_MASS)
-        tensor, with_even, with_odd = -c.T, total, difference
+        tensor, with_even, with_odd = -c.T, M + m, M - m
     else:
         even, odd, scalar = axial, vector, (c.SR - c.SL) / (BOTTOM_MASS + CHARM_MASS)
-        tensor, with_even, with_odd = c.T, difference, total
-    return _amplitudes(
-        q2,
-        J_plus=0.5 * (even * currents.transverse - odd * currents.parity),
-        J_minus=0.5 * (even * currents.transverse + odd * currents.parity),
-        J_zero=0.5 * even * currents.longitudinal,
-        J_t=even * timelike,
-        S=scalar * root * timelike,
-        T_plus=-2.0 * tensor * (with_even * currents.transverse + with_odd * currents.parity) / root,
-        T_minus=-2.0 * tensor * (with_even * currents.transverse - with_odd * currents.parity) / root,
-        T_zero=-2.0 * tensor * (with_even * currents.longitudinal - drag / with_odd) / root,
-    )
+        tensor, with_even, with_odd = c.T, M - m, M + m
+    found = {
+        "J_plus": 0.5 * (even * currents.transverse - odd * currents.parity),
+        "J_minus": 0.5 * (even * currents.transverse + odd * currents.parity),
+        "J_zero": 0.5 * even * currents.longitudinal,
+        "J_t": even * timelike,
+    }
+    if scalar:
+        found["S"] = scalar * np.sqrt(q2) * timelike
+    if tensor:
+        over_root, drag = 1.0 / np.sqrt(q2), np.sqrt(kallen(M, m, q2)) * currents.timelike
+        whole, part = with_even * currents.transverse, with_odd * currents.parity
+        found["T_plus"] = -2.0 * tensor * (whole + part) * over_root
+        found["T_minus"] = -2.0 * tensor * (whole - part) * over_root
+        found["T_zero"] = -2.0 * tensor * (with_even * currents.longitudinal - drag / with_odd) * over_root
+    return _amplitudes(q2, c, **found)

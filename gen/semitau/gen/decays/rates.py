@@ -85,6 +85,19 @@ def mass_nodes(decay: Decay) -> tuple[Floats, Floats]:
 
 def _at_mass(decay: Decay, q2: Floats, m: Floats) -> DifferentialRates:
     """Differential rates with this mass of the charmed meson, GeV; m broadcasts to q2 or the other way round."""
+    amplitudes, factor = _amplitudes_at(decay, q2, m)
+    return _angular_integrals(amplitudes, factor)
+
+
+def _total_at(decay: Decay, q2: Floats, m: Floats) -> Floats:
+    """The `total` of these."""
+    amplitudes, factor = _amplitudes_at(decay, q2, m)
+    positive, negative, _ = _helicities(amplitudes, factor)
+    return positive + negative
+
+
+def _amplitudes_at(decay: Decay, q2: Floats, m: Floats) -> tuple[LeptonAmplitudes, Floats]:
+    """Amplitudes, and what their squares are multiplied with; 0 outside the physical range."""
     low, high = decay.m_lepton**2, (decay.m_parent - m) ** 2
     inside = (q2 > low) & (q2 < high)
     safe = np.where(inside, q2, 0.5 * (low + high))
@@ -92,24 +105,28 @@ def _at_mass(decay: Decay, q2: Floats, m: Floats) -> DifferentialRates:
     M, square = decay.m_parent, safe - decay.m_lepton**2
     coupling = (FERMI_COUPLING * ELECTROWEAK_CORRECTION * VCB) ** 2 / (32.0 * np.pi**3 * M**2)
     momentum = np.sqrt(kallen(M, m, safe)) / (2.0 * M)
-    factor = np.where(inside, coupling * momentum * square**2 / safe, 0.0)
-    return _angular_integrals(amplitudes, factor)
+    return amplitudes, np.where(inside, coupling * momentum * square**2 / safe, 0.0)
 
 
 def _angular_integrals(k: LeptonAmplitudes, factor: Floats) -> DifferentialRates:
     """Integrals over cos(theta) of the squares of the helicity table."""
+    positive, negative, longitudinal = _helicities(k, factor)
+    odd = _square(k.a_minus) - _square(k.a_plus) + 2.0 * np.real(k.t * np.conj(k.b_zero))
+    return DifferentialRates(positive, negative, factor * longitudinal, factor * odd)
+
+
+def _helicities(k: LeptonAmplitudes, factor: Floats) -> tuple[Floats, Floats, Floats]:
+    """Rates of both lepton helicities, and that of charm helicity 0 without the factor."""
     zero_negative, zero_positive = _square(k.a_zero) * (4.0 / 3.0), _square(k.b_zero) * (2.0 / 3.0) + 2.0 * _square(k.t)
-    plus, minus = _square(k.a_plus), _square(k.a_minus)
-    return DifferentialRates(
-        positive=factor * (zero_positive + (2.0 / 3.0) * (_square(k.b_plus) + _square(k.b_minus))),
-        negative=factor * (zero_negative + (4.0 / 3.0) * (plus + minus)),
-        longitudinal=factor * (zero_negative + zero_positive),
-        forward_minus_backward=factor * (minus - plus + 2.0 * np.real(k.t * np.conj(k.b_zero))),
-    )
+    positive = factor * (zero_positive + (2.0 / 3.0) * (_square(k.b_plus) + _square(k.b_minus)))
+    negative = factor * (zero_negative + (4.0 / 3.0) * (_square(k.a_plus) + _square(k.a_minus)))
+    return positive, negative, zero_negative + zero_positive
 
 
 def _square(amplitude: np.ndarray) -> Floats:
-    result: Floats = amplitude.real**2 + amplitude.imag**2
+    result: Floats = amplitude.real**2
+    if np.iscomplexobj(amplitude):
+        result += amplitude.imag**2
     return result
 
 
@@ -139,7 +156,7 @@ def widths_at(decay: Decay, masses: Floats) -> Floats:
     m = masses[:, None]
     low, high = decay.m_lepton**2, (decay.m_parent - m) ** 2
     q2 = low + (high - low) * t * t * (3.0 - 2.0 * t)
-    widths: Floats = (_at_mass(decay, q2, m).total * (6.0 * (high - low) * t * (1.0 - t))) @ weights
+    widths: Floats = (_total_at(decay, q2, m) * (6.0 * (high - low) * t * (1.0 - t))) @ weights
     return widths
 
 
@@ -149,23 +166,13 @@ def observables(decay: Decay) -> Observables:
 
     InputError if couplings or form factors leave no rate.
     """
-    t, weights = _nodes(NODES)
-    if has_line_shape(decay):
-        masses, mass_weights = (column[:, None] for column in mass_nodes(decay))
-    else:
-        masses, mass_weights = np.array(decay.m_charm), np.array(1.0)
-    low, high = decay.m_lepton**2, (decay.m_parent - masses) ** 2
-    q2 = low + (high - low) * t * t * (3.0 - 2.0 * t)
+    q2, masses, flat = _quadrature(decay)
     parts = _at_mass(decay, q2, masses)
-    flat = (weights * (6.0 * (high - low) * t * (1.0 - t)) * mass_weights).ravel()
 
     def integral(of: Floats) -> float:
         return float(flat @ of.ravel())
 
-    rate = integral(parts.total)
-    if not 0.0 < rate < np.inf:
-        remedy = "Look at couplings that cancel each other, and at the form factors."
-        raise InputError(Problem("has no rate", str(decay), got=f"{rate:g} GeV", remedy=remedy))
+    rate = _checked(decay, integral(parts.total))
     return Observables(
         rate=rate,
         branching_fraction=rate * decay.lifetime / HBAR,
@@ -174,6 +181,32 @@ def observables(decay: Decay) -> Observables:
         forward_backward=integral(parts.forward_minus_backward) / rate,
         mean_q2=integral(parts.total * q2) / rate,
     )
+
+
+@lru_cache(maxsize=1024)
+def width(decay: Decay) -> float:
+    """The `rate` of `observables` alone, at half the cost."""
+    q2, masses, flat = _quadrature(decay)
+    return _checked(decay, float(flat @ _total_at(decay, q2, masses).ravel()))
+
+
+def _quadrature(decay: Decay) -> tuple[Floats, Floats, Floats]:
+    """q2 (masses, nodes) or (nodes,), masses that broadcast to it, and flat weights of the integral over both."""
+    t, weights = _nodes(NODES)
+    if has_line_shape(decay):
+        masses, mass_weights = (column[:, None] for column in mass_nodes(decay))
+    else:
+        masses, mass_weights = np.array(decay.m_charm), np.array(1.0)
+    low, high = decay.m_lepton**2, (decay.m_parent - masses) ** 2
+    q2 = low + (high - low) * t * t * (3.0 - 2.0 * t)
+    return q2, masses, (weights * (6.0 * (high - low) * t * (1.0 - t)) * mass_weights).ravel()
+
+
+def _checked(decay: Decay, rate: float) -> float:
+    if not 0.0 < rate < np.inf:
+        remedy = "Look at couplings that cancel each other, and at the form factors."
+        raise InputError(Problem("has no rate", str(decay), got=f"{rate:g} GeV", remedy=remedy))
+    return rate
 
 
 def ratio(

@@ -19,7 +19,7 @@ from ..decays.amplitudes import HelicityAmplitudes, helicity_amplitudes
 from ..decays.chains import Channel
 from ..decays.decay import Decay
 from ..decays.line_shapes import has_line_shape, mass_density
-from .alias import interval_table
+from .alias import interval_table, interval_tables
 from .charm_masses import MassTable, mass_table, point_masses
 from .hadronic_currents import HadronTable, hadron_table
 from .tau_decay import energy_density, energy_range
@@ -89,7 +89,6 @@ def channel_table(channel: Channel) -> ChannelTable:
         chain = ORBITAL_VECTOR if channel.vector else ORBITAL_GROUND
     low, high = decay.q2_range
     visible_mass = channel.m_seen_lepton if channel.tau_to else 0.0
-    amplitudes = regular_amplitudes(decay)
     energy_low, energy_high = energy_range(visible_mass)
     return ChannelTable(
         parent_mass=decay.m_parent,
@@ -111,7 +110,7 @@ def channel_table(channel: Channel) -> ChannelTable:
         intervals=q2_intervals(decay),
         masses=mass_table(channel),
         q2_table=q2_table(decay),
-        amplitudes=complex_columns(amplitudes) if needs_complex(amplitudes) else real_columns(amplitudes),
+        amplitudes=amplitude_columns((decay,))[0],
         visible_table=visible_table(visible_mass),
         hadrons=hadron_table(channel.tau_to),
     )
@@ -161,10 +160,18 @@ def regular_amplitudes(decay: Decay) -> HelicityAmplitudes:
     return HelicityAmplitudes(**{name: (value * factor).ravel() for name, value in vars(values).items()})
 
 
+@lru_cache(maxsize=16)
+def amplitude_columns(decays: tuple[Decay, ...]) -> tuple[Floats, ...]:
+    """Amplitudes of each decay as `ChannelTable.amplitudes` has them, all of one kind; shared by its chains."""
+    values = [regular_amplitudes(decay) for decay in decays]
+    columns_of = complex_columns if any(map(needs_complex, values)) else real_columns
+    return tuple(map(columns_of, values))
+
+
 def needs_complex(amplitudes: HelicityAmplitudes) -> bool:
     """Whether there is more than a real vector and axial current, i.e. more than the standard model or real VL, VR."""
-    values = vars(amplitudes)
-    return any(np.any(value.imag) or (name[0] != "J" and np.any(value)) for name, value in values.items())
+    values = vars(amplitudes).items()
+    return any((np.iscomplexobj(v) and np.any(v.imag)) or (name[0] != "J" and np.any(v)) for name, v in values)
 
 
 def real_columns(amplitudes: HelicityAmplitudes) -> Floats:
@@ -177,21 +184,18 @@ def complex_columns(amplitudes: HelicityAmplitudes) -> Floats:
     """(nodes, 16): real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0."""
     a = amplitudes
     values = [a.J_plus, a.J_minus, a.J_zero, a.J_t, a.S, a.T_plus, a.T_minus, a.T_zero]
-    return np.ascontiguousarray(np.stack(values, axis=-1)).view(np.float64)
+    return np.ascontiguousarray(np.stack(values, axis=-1, dtype=np.complex128)).view(np.float64)
 
 
 @lru_cache(maxsize=64)
 def q2_table(decay: Decay) -> Floats:
     """(points * intervals, 3) tables for `draw_position` of d Gamma / dt, one for each mass point."""
-    intervals = q2_intervals(decay)
-    return np.concatenate(
-        [interval_table(partial(_rate_density, decay, float(mass)), intervals) for mass in point_masses(decay)]
-    )
+    return interval_tables(partial(_rate_densities, decay, point_masses(decay)[:, None]), q2_intervals(decay))
 
 
-def _rate_density(decay: Decay, mass: float, t: Floats) -> Floats:
-    """d Gamma / dt up to a factor, for this mass of the charm hadron in GeV."""
-    q2 = q2_of_position(decay, t, np.asarray(mass))
+def _rate_densities(decay: Decay, mass: Floats, t: Floats) -> Floats:
+    """d Gamma / dt up to a factor, for these masses (n, 1) of the charm hadron in GeV at t (m,); (n, m)."""
+    q2 = q2_of_position(decay, t, mass)
     x = decay.m_lepton / np.sqrt(q2)
     values = helicity_amplitudes(decay, q2, mass).with_lepton(x)
     a, b = (np.abs([getattr(values, f"{k}_{h}") for h in ("plus", "minus", "zero")]) ** 2 for k in "ab")

@@ -92,13 +92,12 @@ def _pair_shares(masses: tuple[float, ...], daughter: float, first: float, secon
     t = np.linspace(0.0, 1.0, 2001)
     x = t * t * (3.0 - 2.0 * t)
     even = np.linspace(0.0, 1.0, PAIR_INTERVALS + 1)
-    rows = []
-    for m in masses:
-        span = max(m - daughter - first - second, 1e-9)
-        density = pair_phase_space(first + second + daughter + span, daughter, first, second, x)
-        cumulative = np.concatenate([[0.0], np.cumsum(0.5 * (density[1:] + density[:-1]) * np.diff(x))])
-        rows.append(_doubled(np.interp(even, cumulative / cumulative[-1], x)))
-    return np.array(rows)
+    m = np.array(masses)[:, None]
+    span = np.maximum(m - daughter - first - second, 1e-9)
+    density = pair_phase_space(first + second + daughter + span, daughter, first, second, x)
+    inside = np.cumsum(0.5 * (density[:, 1:] + density[:, :-1]) * np.diff(x), axis=-1)
+    cumulative = np.concatenate([np.zeros((len(m), 1)), inside], axis=-1)
+    return np.array([_doubled(np.interp(even, row / row[-1], x)) for row in cumulative])
 
 
 def _doubled(values: Floats) -> Floats:

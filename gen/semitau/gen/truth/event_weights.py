@@ -127,7 +127,8 @@ def _densities(
     masses: Floats | None,
 ) -> Floats:
     """masses : (n,) GeV of the charm, where a line shape gives it; its density is then part of the result."""
-    amplitudes = np.stack(list(vars(helicity_amplitudes(decay, angles.q2, masses)).values()))
+    given = vars(helicity_amplitudes(decay, angles.q2, masses)).values()
+    amplitudes = np.stack(list(given), dtype=np.complex128)
     if masses is not None:
         amplitudes = amplitudes * np.sqrt(mass_density(decay, masses))
     coherent = np.where(photon, -0.5, 1.0) if has_vector else np.zeros(photon.size)

@@ -8,6 +8,7 @@ templates whose normalisation is a parameter of the fit.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from functools import lru_cache
 from typing import NamedTuple
 
 import numpy as np
@@ -19,8 +20,8 @@ from .. import block as row
 from ..block import LANES
 from ..decays.chains import Channel
 from ..decays.decay import Decay
-from ..decays.rates import observables
-from .channel_table import channel_table, complex_columns, needs_complex, real_columns, regular_amplitudes
+from ..decays.rates import width
+from .channel_table import amplitude_columns, channel_table
 from .spin_algebra import chain_density
 from .tau_decay import emission
 
@@ -68,20 +69,11 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
     ]
     if wrong or not decays:
         raise InputError(*(wrong or [Problem("no variation is given", where=channel.name)]))
-    values = [regular_amplitudes(decay) for decay in (channel.decay, *decays)]
-    if shape_only:
-        rates = np.array([observables(decay).rate for decay in (channel.decay, *decays)])
-    else:
-        rates = np.ones(len(values))
-    columns_of = complex_columns if any(map(needs_complex, values)) else real_columns
-    scaled = [columns_of(value) * np.sqrt(rates[0] / rate) for value, rate in zip(values, rates, strict=True)]
-    groups = -(-len(scaled) // WIDTH)
-    filled = scaled + [scaled[0]] * (groups * WIDTH - len(scaled))
-    nodes, parts = scaled[0].shape
+    columns, parts = _columns(channel.decay, tuple(decays), shape_only)
     table = channel_table(channel)
     return VariationTable(
-        columns=np.ascontiguousarray(np.reshape(filled, (groups, WIDTH, nodes, parts)).transpose(2, 0, 3, 1)).ravel(),
-        groups=groups,
+        columns=columns,
+        groups=-(-(1 + len(decays)) // WIDTH),
         width=WIDTH,
         real=int(parts == 4),
         variations=len(decays),
@@ -92,6 +84,18 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
         one_neutrino=table.one_neutrino,
         visible_mass=table.visible_mass,
     )
+
+
+@lru_cache(maxsize=4)  # chains of one decay follow each other
+def _columns(drawn: Decay, decays: tuple[Decay, ...], shape_only: bool) -> tuple[Floats, int]:
+    """Columns of a `VariationTable`, and how many numbers a node has."""
+    given = amplitude_columns((drawn, *decays))
+    rates = [width(decay) for decay in (drawn, *decays)] if shape_only else [1.0] * len(given)
+    scaled = [column * np.sqrt(rates[0] / rate) for column, rate in zip(given, rates, strict=True)]
+    groups = -(-len(scaled) // WIDTH)
+    filled = scaled + [scaled[0]] * (groups * WIDTH - len(scaled))
+    nodes, parts = scaled[0].shape
+    return np.ascontiguousarray(np.reshape(filled, (groups, WIDTH, nodes, parts)).transpose(2, 0, 3, 1)).ravel(), parts
 
 
 @kernel
