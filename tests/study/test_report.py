@@ -168,3 +168,8 @@ def test_template_and_style_are_package_data() -> None:
         assert (folder / name).is_file(), name
     # And none that no section shows.
     assert {file.name for file in (folder / "sections").iterdir()} == {f"{s.name}.html.j2" for s in SECTIONS}
+
+
+def test_docs_explain_every_section() -> None:
+    text = (Path(__file__).parents[2] / "docs" / "report.md").read_text()
+    assert re.findall(r"^## (.*)$", text, flags=re.M) == [section.title for section in SECTIONS]

@@ -5,7 +5,7 @@ from __future__ import annotations
 from semitau.core.true_minus import formatted
 
 from ...inputs.part import InputCut
-from ...numbers import counted, signed
+from ...numbers import counted
 from ...results import Results
 from ..table import NOTHING, Cell, Column, ReportTable, count, table, words
 
@@ -134,9 +134,12 @@ def number_table(results: Results) -> ReportTable | None:
 
 
 def _cut(cut: InputCut) -> str:
-    low = "" if cut.low is None else f"{signed(cut.low, 6).rstrip('0').rstrip('.')} ≤ "
-    high = "" if cut.high is None else f" < {signed(cut.high, 6).rstrip('0').rstrip('.')}"
-    return f"{low}{cut.observable}{high} {cut.unit}".strip()
+    low = None if cut.low is None else formatted(cut.low, "g")
+    high = None if cut.high is None else formatted(cut.high, "g")
+    if low is not None and high is not None:
+        return f"{low} ≤ {cut.observable} < {high} {cut.unit}".strip()
+    limit = f"≥ {low}" if high is None else f"< {high}"
+    return f"{cut.observable} {limit} {cut.unit}".strip()
 
 
 def _as_given(value: float) -> Cell:
