@@ -24,8 +24,8 @@ from typing import Any
 
 import numpy as np
 from semitau.core.errors import InputError, Problem
+from semitau.core.toml_lines import TomlLines
 
-from ..study_file.toml_lines import TomlLines
 from ..truth.kinematics import Floats
 from .form_factor_parameters import SHARED, TRANSITIONS, parameter_problems, parametrisations, value_problems
 

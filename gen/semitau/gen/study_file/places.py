@@ -5,9 +5,10 @@ from __future__ import annotations
 import re
 import tomllib
 
+from semitau.core.toml_lines import TomlLines
+
 from .sections import Place
 from .study import StudyConfig
-from .toml_lines import TomlLines
 
 # The keys that name an element of an array of tables; without them elements are counted from 1.
 _NAMES = ("component", "name")

@@ -9,13 +9,13 @@ from pathlib import Path
 from typing import Any
 
 from semitau.core.errors import InputError, Problem
+from semitau.core.toml_lines import TomlLines
 
 from .alternative_studies import alternative_conflicts
 from .checking import checked_alone
 from .places import key_of
 from .sections import Conflict
 from .study import StudyConfig
-from .toml_lines import TomlLines
 
 MOST_BYTES = 4_000_000
 

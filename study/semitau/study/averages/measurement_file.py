@@ -10,13 +10,13 @@ from typing import Any, TypeVar
 
 from pydantic import BaseModel, ValidationError
 from semitau.core.errors import InputError
+from semitau.core.toml_lines import TomlLines
 from semitau.fit.averages.compatibility import Prediction
 from semitau.fit.averages.input_vector import faults_of
 from semitau.fit.averages.measurements import Fault, Measurement, faults_in
 from semitau.gen.study_file.faults import conflict
 from semitau.gen.study_file.reader import problems_at, tables_of, text_of
 from semitau.gen.study_file.sections import Conflict
-from semitau.gen.study_file.toml_lines import TomlLines
 
 from .planned_errors import planned_errors
 from .tables import RATIOS, AverageSection, AverageTables, MeasurementTable, SourceTable

@@ -9,7 +9,7 @@ from pathlib import Path
 import pytest
 from hypothesis import given
 from hypothesis import strategies as st
-from semitau.gen.study_file.toml_lines import TomlLines
+from semitau.core.toml_lines import TomlLines
 
 ROOT = Path(__file__).parents[2]
 
