@@ -27,6 +27,7 @@ COMMANDS = {
     "final": "Declare a study with hidden ratios final, before it is unblinded.",
     "unblind": "Show the true ratios of a study that was declared final.",
     "bias": "Every alternative made with each and fitted with each, and whether a systematic covers it.",
+    "sizing": "What finite templates cost, how many events are needed, and how to share out the time.",
     "design": "The selection and binning with the smallest total expected error.",
     "reach": "Expected errors and significance against the amount of data.",
     "average": "Combine measurements with correlations; compatibility with a prediction.",

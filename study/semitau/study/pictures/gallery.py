@@ -18,6 +18,7 @@ from .linearity import linearity
 from .nuisance_strips import nuisance_strips
 from .projections import stacked_projections
 from .sheet import Picture, Sheet
+from .sizing import sizing_drawings
 from .style import RC, component_colours
 from .toy_pulls import toy_pulls
 
@@ -92,6 +93,8 @@ def _drawings(results: Results) -> Iterator[Drawing]:
             "Mean fitted against injected ratio, and the bias in units of the error of one fit; the band is ±0.1.",
             partial(linearity, results.linearity),
         )
+    if results.sizing is not None:
+        yield from sizing_drawings(results.sizing)
     if results.design is not None:
         yield from design_drawings(results.design)
     yield from _projections(results)

@@ -48,18 +48,21 @@ def trials(found: Prediction, asked: SizingSection) -> Iterator[Trial]:
 def toy_parts(
     found: Prediction, asked: SizingSection, seed: int, workers: int | None, report: Report | None
 ) -> Iterator[SizingToys]:
-    """One entry a trial; imported components keep the events that they have. Trials without two valid fits are left
-    out."""
+    """One entry a trial; imported components keep the events that they have.
+
+    All trials draw with the same random numbers, so that their differences are those of the events. Trials without two
+    valid fits are left out.
+    """
     model, numbers = found.model, found.numbers
     kept = dict.fromkeys((component.name for component in model.templates.components), 1.0)
     ratios = [name for name in numbers.ratios if model.parameters[model.index(name)].function is None]
-    planned = tuple(trials(found, asked))
+    planned, stream = tuple(trials(found, asked)), int(stream_key(seed, "sizing"))
     for done, trial in enumerate(planned):
         toys = toys_with_new_templates(
             model,
             kept | {name: trial.factors[s.name] for s in found.samples for name in s.components},
             asked.toys,
-            int(stream_key(seed, "sizing", trial.what, trial.sample, f"{trial.factor}", f"{trial.multiple}")),
+            stream,
             workers,
             None if report is None else _after(report, done * asked.toys, len(planned) * asked.toys),
             injected={name: trial.multiple * float(model.injected[model.index(name)]) for name in ratios},

@@ -66,7 +66,9 @@ def _coverage(found: Sizing) -> Iterator[str]:
             f"{_shares([lowest], ratio.ratio)}, with {lowest.factor:g} times the events."
         )
     for ratio in found.ratios:
-        poor = [toys for toys in needed if _of(toys, ratio.ratio).coverage_high + _error(toys, ratio.ratio) < LEVELS[1]]
+        poor = [
+            toys for toys in needed if _of(toys, ratio.ratio).coverage + 3.0 * _error(toys, ratio.ratio) < LEVELS[1]
+        ]
         if poor:
             yield (
                 f"Look at this: with the needed events alone intervals of {ratio.label} cover too little. The formula "

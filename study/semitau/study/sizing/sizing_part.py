@@ -42,7 +42,8 @@ def sizing_part(study: StudyConfig, materials: Materials, workers: int | None, r
     samples = samples_of_study(study)
     events = generated(samples, materials.nominal)
     found = predicted(materials.model, samples, asked.share, asked.shares, asked.least, events)
-    verified = verify(study, materials.templates, found, materials.build, report)
+    quiet = Materials(materials.study, materials.store, materials.workers)
+    verified = verify(study, materials.templates, found, quiet.build, report)
     paces = verified.paces or {
         name: [pace] for name, pace in seconds_per_event(samples, materials.nominal).items() if pace > 0.0
     }
