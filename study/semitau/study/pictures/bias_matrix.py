@@ -22,6 +22,7 @@ WIDTH, HEIGHT = 0.52, 0.27
 """Inches of a cell."""
 
 BETWEEN, KEY = 0.42, 0.65
+ROOM_FOR_KEY = 7.4
 FULL = 1.0
 """Shift in errors of the full colours; larger ones are drawn alike and told apart by their numbers."""
 
@@ -37,7 +38,7 @@ def bias_matrix(bias: Bias) -> Sheet:
     margin, foot = 0.6 + longest, 0.15 + longest
     side, tall = WIDTH * len(labels), HEIGHT * len(labels)
     height = KEY + foot + len(ratios) * (tall + BETWEEN) + 0.4
-    width = max(margin + side + 0.3, 6.2)
+    width = max(margin + side + 0.3, ROOM_FOR_KEY)
     sheet = Sheet(width, height, "Bias matrix", "shift of the fitted ratio in units of its error, expected sets")
     for number, (name, label) in enumerate(ratios.items()):
         bottom = KEY + foot + (len(ratios) - 1 - number) * (tall + BETWEEN)
