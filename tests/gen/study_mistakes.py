@@ -42,7 +42,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         (
             "seletion: unknown key (allowed study, experiment, form_factors, branching_fractions, wilson, radiation, "
             "quadratic, mode, double_charm, background, detector, selection, category, variation, fit, toys, import, "
-            "sizing, alternative, bias, design, blinding). "
+            "sizing, alternative, bias, design, reach, average, blinding). "
             'Did you mean "selection"?'
         ),
     ),
@@ -782,4 +782,44 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         -2,
     ),
     "no toys": ("[selection]", "[toys]\nnumber = 0\n[selection]", "toys.number: must be above 0 (got 0)", 1),
+    "reach of an unknown ratio": (
+        "[selection]",
+        "[reach]\nagainst = { R_D = 0.3, R_Ds = 0.25 }\n[selection]",
+        'reach.against.R_Ds: names no ratio that is fitted (got "R_Ds", allowed R_D, R_Dst). Did you mean "R_Dst"?',
+        1,
+    ),
+    "reach with two axes": (
+        "[selection]",
+        "[reach]\npairs = 7e8\nluminosity = 711\n[selection]",
+        "reach: has two axes (allowed either pairs or luminosity). Leave one of them out.",
+    ),
+    "reach with a word to compare with": (
+        "[selection]",
+        '[reach]\nagainst = { R_Dst = "SM" }\n[selection]',
+        'reach.against.R_Dst: is nothing to compare with (got "SM", allowed a number or { value = ..., error = ... })',
+        1,
+    ),
+    "reach with one amount of data": (
+        "[selection]",
+        "[reach]\nfactors = [1.0]\n[selection]",
+        "reach.factors: needs at least 2 (got 1)",
+        1,
+    ),
+    "reach with no ratio": (
+        "[selection]",
+        "[reach]\n[fit]\nfixed = { R_D = 0.3, R_Dst = 0.25 }\n[selection]",
+        "reach: has no ratio that is fitted. Remove the table.",
+    ),
+    "average with a file that is not there": (
+        "[selection]",
+        '[average]\nfile = "none.toml"\n[selection]',
+        'average.file: there is no such file (got "none.toml"). Relative names are looked for beside the study file.',
+        1,
+    ),
+    "average with an unknown ratio of a source": (
+        "[selection]",
+        '[average]\nfile = "none.toml"\nsources.x = { R_Ds = 0.01 }\n[selection]',
+        'average.sources.x.R_Ds: unknown key (allowed R_D, R_Dst). Did you mean "R_Dst"?',
+        2,
+    ),
 }

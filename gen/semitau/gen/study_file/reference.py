@@ -71,6 +71,8 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[bias]": ("BiasSection",),
     "[design]": ("DesignSection",),
     "[design.cuts]": ("ScannedCut",),
+    "[reach]": ("ReachSection",),
+    "[average]": ("AverageStudySection", "Shifts"),
     "[import]": ("Imports", "ImportedComponent", "ImportedSides", "ImportedData"),
     "[blinding]": ("Blinding",),
     "Values with a short form": (
@@ -84,6 +86,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
         "FitData",
         "Constraint",
         "Linearity",
+        "ComparedValue",
     ),
 }
 

@@ -18,6 +18,7 @@ from pydantic_core import PydanticCustomError
 from ..decays.branching_fractions import BranchingFractions
 from ..decays.form_factor_set import FormFactorSet
 from .alternatives import Alternative, BiasSection
+from .average import AverageStudySection
 from .blinding import Blinding
 from .categories import CategoryTable, Cuts, StudyCategory, written_out
 from .chosen_sets import chosen_set
@@ -33,7 +34,9 @@ from .fractions import BranchingFractionTables
 from .imports import Imports
 from .machine import Experiment, FormFactors, StudySection
 from .names import OBSERVABLES
+from .prospect_conflicts import prospect_conflicts
 from .radiation import RadiationSection
+from .reach import ReachSection
 from .rules import Table, shown
 from .sections import SECTIONS, Conflict, Sections, missing_file
 from .sizing import SizingSection
@@ -69,6 +72,8 @@ class StudyConfig(Table):
     alternatives: tuple[Alternative, ...] = Field(default=(), alias="alternative")
     bias: BiasSection = BiasSection()
     design: DesignSection | None = Field(default=None, description="no part of the study without it")
+    reach: ReachSection | None = Field(default=None, description="no part of the study without it")
+    average: AverageStudySection | None = Field(default=None, description="no part of the study without it")
     blinding: Blinding | None = Field(default=None, description="hides the ratios; nothing is hidden without it")
 
     _text: str = PrivateAttr(default="")
@@ -82,6 +87,7 @@ class StudyConfig(Table):
         if not any(conflict.place[0] in ("form_factors", "mode", "variation") for conflict in found):
             found += fit_conflicts(self, sections)  # whose names follow from these
             found += sizing_conflicts(self)
+            found += prospect_conflicts(self, folder)
         if found:
             text = "; ".join(conflict.what for conflict in found)
             raise PydanticCustomError(CONFLICTS, "{text}", {"text": text, "conflicts": found})

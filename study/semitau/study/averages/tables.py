@@ -7,6 +7,7 @@ from typing import Annotated, Any, ClassVar, Literal
 
 from pydantic import Field, model_validator
 from semitau.fit.averages.measurements import Measured, Measurement
+from semitau.gen.study_file.average import Shifts
 from semitau.gen.study_file.rules import NotNegative, Number, ShortTable, Table, Text, broken
 
 RATIOS = {"R_D": "R(D)", "R_Dst": "R(D*)"}
@@ -65,13 +66,6 @@ class MeasuredRatio(PlannedRatio):
     """One ratio of a measurement."""
 
     value: Number = Field(description="what was found")
-
-
-class Shifts(Table):
-    """What one standard deviation of a common source does to each ratio, with its sign."""
-
-    R_D: Number = Field(default=0.0, description="shift of R(D)")
-    R_Dst: Number = Field(default=0.0, description="shift of R(D*)")
 
 
 class _Joint(Table):
