@@ -14,7 +14,7 @@ from semitau.gen.study_file.reader import read_study
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import build_templates
 
-from .decays import chains_of, decay_figures, quadratic_figure, scaling_figure
+from .decays import chains_of, decay_figures, quadratic_figure, scaling_figure, shape_figure
 from .figures import Figure, table
 from .files import file_figures
 from .fits import fit_figures, toy_figures
@@ -35,7 +35,11 @@ def sections(path: Path, study: StudyConfig, quick: bool) -> Iterator[Section]:
     two = available_cores() > 1
     yield (
         "Decays",
-        lambda: [*decay_figures(chains, counted(str(path)), repetitions), quadratic_figure(chains, repetitions)],
+        lambda: [
+            *decay_figures(chains, counted(str(path)), repetitions),
+            quadratic_figure(chains, repetitions),
+            shape_figure(chains, repetitions),
+        ],
     )
     if two:
         yield "Two workers", lambda: [scaling_figure(chains, repetitions), build_figure(study, repetitions)]

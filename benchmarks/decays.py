@@ -11,7 +11,12 @@ from semitau.core.compiled import kernel
 from semitau.core.engine import run
 from semitau.core.streams import stream_key
 from semitau.gen.block import LANES, new_block
+from semitau.gen.decays.chains import Channel
+from semitau.gen.decays.decay import Decay
+from semitau.gen.decays.form_factor_shifts import SHIFTS_AT_MOST
+from semitau.gen.study_file.machine import FormFactors, FormFactorSource
 from semitau.gen.study_file.names import COEFFICIENTS
+from semitau.gen.study_file.shift_tables import FormFactorShifts
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.study_file.wilson import Quadratic
 from semitau.gen.templates.chunk_tasks import Task, channel_inputs, channel_tasks, make_bench
@@ -134,6 +139,32 @@ def quadratic_figure(chains: Chains, repetitions: int) -> Figure:
     ratio = timings["pieces"].cpu / timings["plain"].cpu
     note = f"{len(COEFFICIENTS)} real coefficients, {len(tau)} decay chains"
     return Figure("quadratic templates: cost over the plain fill", ratio, "times", 3, note=note)
+
+
+def shape_figure(chains: Chains, repetitions: int) -> Figure:
+    """What templates as functions of as many form-factor directions as there may be cost the modes of D and D*."""
+    sets = FormFactors(D=FormFactorSource(name="BCL-2021"), Dst=FormFactorSource(name="BGL-2021"))
+    tables = tuple(
+        FormFactorShifts(name=name, set=name, order="variance", keep=1.0, at_most=SHIFTS_AT_MOST)
+        for name in ("D", "Dst")
+    )
+    quadratic = Quadratic(form_factors=tables)
+    study = chains.study.model_copy(update={"variations": (), "quadratic": quadratic, "form_factors": sets})
+    plain = ChannelVariations({}, {}, {})
+    moved = [
+        replace(plan, variations=plain, channel=replace(plan.channel, decay=_with_set(plan.channel.decay, study)))
+        for plan in chains.plans
+        if isinstance(plan.channel, Channel) and plan.channel.decay.transition in ("D", "Dst")
+    ]
+    nominal, pieces = (Chains(study, moved).tasks(variations=more) for more in (False, True))
+    timings = interleaved({"plain": partial(_consume, nominal, 1), "pieces": partial(_consume, pieces, 1)}, repetitions)
+    ratio = timings["pieces"].cpu / timings["plain"].cpu
+    note = f"{SHIFTS_AT_MOST} directions a decay, {len(moved)} decay chains"
+    return Figure("templates that follow form factors: cost over the plain fill", ratio, "times", 3, note=note)
+
+
+def _with_set(decay: Decay, study: StudyConfig) -> Decay:
+    return replace(decay, form_factors=study.form_factor_set(decay.transition))
 
 
 def scaling_figure(chains: Chains, repetitions: int) -> Figure:

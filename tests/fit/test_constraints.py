@@ -270,7 +270,7 @@ def test_formulas_against_python(text: str) -> None:
         ({"functions": {"R_Dst": "R_Dx"}}, "no such parameter"),
         ({"functions": {"R_Dst": "sin(R_D)"}}, "numbers, parameters"),
         ({"functions": {"R_Dst": "R_D +"}}, "not a formula"),
-        ({"functions": {"R_Dst": "1/(R_D + R0)"}}, "only a product"),
+        ({"functions": {"R_Dst": "R_D/(R_D + R0)"}}, "only a product"),
         ({"functions": {"R_Dst": "R_D", "R_D": "2 * R_Dst"}}, "may not follow another"),
         ({"functions": {"R_Dst": "R_Dst"}}, "may not follow another"),
         ({"functions": {"R_Dst": "0.3"}}, "no parameter in it"),

@@ -9,13 +9,13 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 from difflib import get_close_matches
-from math import isfinite
+from math import isfinite, prod
 
 import numpy as np
 from numpy.typing import ArrayLike
 
 from .errors import InputError, Problem
-from .templates import ONE, Coefficient, Floats, Pair, Template, TemplateSet
+from .templates import ONE, Coefficient, Floats, Form, Pair, Template, TemplateSet
 
 QuadraticForm = Mapping[Pair, float]
 
@@ -44,6 +44,11 @@ def value_at(form: QuadraticForm, values: Mapping[str, float]) -> float:
     """A quadratic form at a point; values of all its coefficients."""
     whole = {ONE: 1.0, **values}
     return float(sum(whole[a] * whole[b] * piece for (a, b), piece in form.items()))
+
+
+def form_at(form: Form, values: Mapping[str, float], empty: float = 1.0) -> float:
+    """The same of a form as components and parameters have it; `empty` if it has no pieces."""
+    return value_at({(a, b): piece for a, b, piece in form}, values) if form else empty
 
 
 def gradient_at(form: QuadraticForm, values: Mapping[str, float]) -> dict[str, float]:
@@ -180,8 +185,9 @@ def templates_at(templates: TemplateSet, values: Mapping[str, float]) -> Templat
     values : coefficient -> value; those left out keep the value that the templates were made with.
 
     The nominal contents become T(c), the ratios that follow the coefficients become R(c), and c is the injected point.
-    Variations keep their relative change of each bin. The variances go with (T(c)/T(c_0))² and add up to the sum of the
-    squared weights at c, where the moments tell it.
+    A component with a rate of its own keeps its size, or follows its ratio: T(c) is divided by the rate, and multiplied
+    with R(c)/R(c_0). Variations keep their relative change of each bin. The variances go with (T(c)/T(c_0))² and add up
+    to the sum of the squared weights at c, where the moments tell it.
 
     Raises InputError for unknown names, values out of range, a point without rate, and a template that fewer than
     EVENTS_AT_LEAST effective events would make although it had more.
@@ -201,35 +207,63 @@ def templates_at(templates: TemplateSet, values: Mapping[str, float]) -> Templat
         if effective[key] < EVENTS_AT_LEAST <= before[key]
     ]
     parameters = []
+    growth: dict[str, float] = {}
     for parameter in templates.parameters:
         if parameter.rate:
-            injected = value_at({(a, b): piece for a, b, piece in parameter.rate}, point)
+            below = form_at(parameter.over, point)
+            injected = form_at(parameter.rate, point) / below if below > 0 else 0.0
             if not injected > 1e-6 * parameter.injected:
                 problems.append(
                     Problem("there is no rate at this point", point_text(point), got=f"{parameter.name} = {injected:g}")
                 )
                 continue
-            parameter = replace(parameter, injected=injected)
+            growth[parameter.name] = injected / parameter.injected
+            over = tuple((a, b, piece / below) for a, b, piece in parameter.over)
+            rate = tuple((a, b, piece / below) for a, b, piece in parameter.rate) if over else parameter.rate
+            parameter = replace(parameter, injected=injected, rate=rate, over=over)
         parameters.append(parameter)
+    components, sizes = [], {}
+    for component in templates.components:
+        if component.rate:
+            size = form_at(component.rate, point)
+            if not size > 1e-6:
+                problems.append(
+                    Problem("there is no rate at this point", point_text(point), got=f"{component.name}: {size:g}")
+                )
+                continue
+            sizes[component.name] = prod(growth.get(name, 1.0) for name in component.scales_with) / size
+            component = replace(component, rate=tuple((a, b, piece / size) for a, b, piece in component.rate))
+        components.append(component)
     if problems:
         raise InputError(*problems)
-    moved = {key: _moved(template, point) for key, template in templates.templates.items()}
+    moved = {key: _moved(template, point, sizes.get(key[1], 1.0)) for key, template in templates.templates.items()}
     coefficients = tuple(replace(known, value=point[known.name]) for known in templates.coefficients)
-    return replace(templates, parameters=tuple(parameters), templates=moved, coefficients=coefficients)
+    return replace(
+        templates,
+        components=tuple(components),
+        parameters=tuple(parameters),
+        templates=moved,
+        coefficients=coefficients,
+    )
 
 
-def _moved(template: Template, point: Mapping[str, float]) -> Template:
+def _moved(template: Template, point: Mapping[str, float], size: float) -> Template:
+    """size : what T(c) is multiplied with."""
     if not template.quadratic:
         return template
-    contents = contents_at(template, point)
+    contents = size * contents_at(template, point)
     there = template.nominal != 0
     factor = np.where(there, contents / np.where(there, template.nominal, 1.0), 1.0)
     variance = template.variance * factor**2
     if template.moments is not None and variance.any():
         phi = monomials(list(point.values()))
-        variance *= max(float(phi @ template.moments @ phi), 0.0) / variance.sum()
+        variance *= size**2 * max(float(phi @ template.moments @ phi), 0.0) / variance.sum()
     sides = [{name: values * factor for name, values in side.items()} for side in (template.plus, template.minus)]
-    return replace(template, nominal=contents, variance=variance, plus=sides[0], minus=sides[1])
+    changed = replace(template, nominal=contents, variance=variance, plus=sides[0], minus=sides[1])
+    if size == 1.0:
+        return changed
+    pieces = {pair: size * piece for pair, piece in template.quadratic.items()}
+    return replace(changed, quadratic=pieces, moments=None if template.moments is None else size**2 * template.moments)
 
 
 def contracted(pieces: Mapping[Pair, Floats], values: Mapping[str, float], kept: Sequence[str]) -> dict[Pair, Floats]:

@@ -19,6 +19,9 @@ MAJOR, MINOR = 1, 0
 WITH_COEFFICIENTS = 1
 """Minor version of files with quadratic pieces, which a reader of 1.0 would not know; files without stay 1.0."""
 
+WITH_SHAPES = 2
+"""Minor version of files with coefficients that change shapes alone."""
+
 S = TypeVar("S")
 T = TypeVar("T")
 
@@ -45,6 +48,7 @@ class _Component(_Part):
     label: str
     role: str
     scales_with: list[str]
+    rate: list[tuple[str, str, FiniteFloat]] = Field(default_factory=list)
 
 
 class _Parameter(_Part):
@@ -54,6 +58,7 @@ class _Parameter(_Part):
     injected: FiniteFloat
     constraint: FiniteFloat | None = None
     rate: list[tuple[str, str, FiniteFloat]] = Field(default_factory=list)
+    over: list[tuple[str, str, FiniteFloat]] = Field(default_factory=list)
 
 
 class _Coefficient(_Part):
@@ -61,6 +66,9 @@ class _Coefficient(_Part):
     label: str
     value: FiniteFloat
     limit: FiniteFloat
+    kind: str = "coupling"
+    constraint: FiniteFloat | None = None
+    group: str = ""
 
 
 class _Nuisance(_Part):
@@ -97,15 +105,15 @@ def describe(templates: TemplateSet) -> str:
     """The JSON text of a template set. Raises InputError if the provenance holds other than plain JSON values."""
     meta: dict[str, object] = {
         "format": FORMAT,
-        "version": f"{MAJOR}.{WITH_COEFFICIENTS if templates.coefficients else MINOR}",
+        "version": f"{MAJOR}.{_minor(templates)}",
         "categories": [asdict(category) for category in templates.categories],
-        "components": [asdict(component) for component in templates.components],
-        "parameters": [_without_empty(asdict(parameter), "rate") for parameter in templates.parameters],
+        "components": [_without_empty(asdict(component), "rate") for component in templates.components],
+        "parameters": [_without_empty(asdict(parameter), "rate", "over") for parameter in templates.parameters],
         "nuisances": [asdict(nuisance) | {"constraint": "unit Gaussian"} for nuisance in templates.nuisances],
         "provenance": dict(templates.provenance),
     }
     if templates.coefficients:
-        meta["coefficients"] = [asdict(coefficient) for coefficient in templates.coefficients]
+        meta["coefficients"] = [_coefficient(coefficient) for coefficient in templates.coefficients]
     try:
         return json.dumps(meta, allow_nan=False)
     except (TypeError, ValueError) as error:
@@ -116,8 +124,20 @@ def describe(templates: TemplateSet) -> str:
         ) from error
 
 
-def _without_empty(table: dict[str, object], key: str) -> dict[str, object]:
-    return {name: value for name, value in table.items() if name != key or value}
+def _minor(templates: TemplateSet) -> int:
+    if any(coefficient.kind == "shape" for coefficient in templates.coefficients):
+        return WITH_SHAPES
+    return WITH_COEFFICIENTS if templates.coefficients else MINOR
+
+
+def _coefficient(coefficient: Coefficient) -> dict[str, object]:
+    """Of a coupling what version 1.1 knows."""
+    table = _without_empty(asdict(coefficient), "constraint", "group")
+    return {name: value for name, value in table.items() if (name, value) != ("kind", "coupling")}
+
+
+def _without_empty(table: dict[str, object], *keys: str) -> dict[str, object]:
+    return {name: value for name, value in table.items() if name not in keys or value}
 
 
 def understand(text: str, where: str) -> Description:
@@ -130,10 +150,16 @@ def understand(text: str, where: str) -> Description:
     problems: list[Problem] = []
     categories = _made(meta.categories, _category, where, problems)
     components = _made(
-        meta.components, lambda c: Component(c.name, c.label, c.role, tuple(c.scales_with)), where, problems
+        meta.components,
+        lambda c: Component(c.name, c.label, c.role, tuple(c.scales_with), tuple(c.rate)),
+        where,
+        problems,
     )
     parameters = _made(
-        meta.parameters, lambda p: ScaleParameter(**(p.model_dump() | {"rate": tuple(p.rate)})), where, problems
+        meta.parameters,
+        lambda p: ScaleParameter(**(p.model_dump() | {"rate": tuple(p.rate), "over": tuple(p.over)})),
+        where,
+        problems,
     )
     coefficients = _made(meta.coefficients, lambda c: Coefficient(**c.model_dump()), where, problems)
     nuisances = _made(meta.nuisances, lambda n: Nuisance(n.name, n.label, n.group), where, problems)

@@ -29,6 +29,11 @@ ONE = "one"
 
 Pair = tuple[str, str]
 
+Form = tuple[tuple[str, str, float], ...]
+"""A quadratic form in the set's coefficients: (a, b, piece), with value = sum of c_a c_b piece; see quadratic.py."""
+
+COEFFICIENT_KINDS = ("coupling", "shape")
+
 SAME_AT_MOST = 1e-6
 """Relative rounding that other programs' sums of quadratic pieces may have."""
 
@@ -90,15 +95,19 @@ class Component:
     role : "signal", "normalisation", "feed-down" or "background".
     scales_with : names of the `ScaleParameter`s whose product (each over its injected value) multiplies the template,
         e.g. ("R_D", "yield_D_light") for B -> D tau nu. Empty: the component is fixed but for its nuisances.
+    rate : decays before detector and selection over those at the injected point, which its quadratic pieces are to be
+        divided by: then coefficients of kind "shape" leave its size to the scale parameters. Empty: 1.
     """
 
     name: str
     label: str
     role: str
     scales_with: tuple[str, ...]
+    rate: Form = ()
 
     def __post_init__(self) -> None:
         object.__setattr__(self, "scales_with", tuple(self.scales_with))
+        object.__setattr__(self, "rate", tuple(self.rate))
         _refuse(self._problems())
 
     def _problems(self) -> Iterator[Problem]:
@@ -107,6 +116,7 @@ class Component:
         if self.role not in ROLES:
             yield Problem("unknown role", where, got=repr(self.role), wanted=", ".join(ROLES))
         yield from _repeated("scale parameter", self.scales_with, where)
+        yield from _form_problems("the rate", self.rate, where)
 
 
 @dataclass(frozen=True)
@@ -115,8 +125,8 @@ class ScaleParameter:
 
     kind : "ratio" (value is the ratio itself) or "yield" (value relative to the expectation; injected 1).
     constraint : standard deviation of a Gaussian auxiliary measurement of the value; None if free.
-    rate : a ratio as a quadratic form in the set's coefficients: (a, b, piece) with value = sum of c_a c_b piece, see
-        quadratic.py; empty if it does not follow them.
+    rate : a ratio as a quadratic form in the set's coefficients; empty if it does not follow them.
+    over : what that form is divided by, 1 at the injected point; empty: 1 everywhere.
     """
 
     name: str
@@ -124,7 +134,8 @@ class ScaleParameter:
     kind: str
     injected: float
     constraint: float | None = None
-    rate: tuple[tuple[str, str, float], ...] = ()
+    rate: Form = ()
+    over: Form = ()
 
     def __post_init__(self) -> None:
         _refuse(self._problems())
@@ -138,9 +149,10 @@ class ScaleParameter:
         for what, value in (("injected value", self.injected), ("constraint", self.constraint)):
             if value is not None and not (isfinite(value) and value > 0):
                 yield Problem(f"{what} must be positive and finite", where, got=str(value))
-        for a, b, piece in self.rate:
-            if not isfinite(piece):
-                yield Problem("a piece of the rate is not finite", f"{where}: {a}, {b}", got=str(piece))
+        yield from _form_problems("the rate", self.rate, where)
+        yield from _form_problems("what the rate is over", self.over, where)
+        if self.over and not self.rate:
+            yield Problem("there is something to divide by, but no rate", where)
 
 
 @dataclass(frozen=True)
@@ -160,12 +172,18 @@ class Coefficient:
     """A real number that templates are quadratic functions of, e.g. the real part of a Wilson coefficient.
 
     value : where the nominal templates are made. limit : largest size at which the templates are to be used.
+    kind : "coupling": ratios follow it when it is fitted; "shape": components keep their size, ratios stay free.
+    constraint : standard deviation of a Gaussian auxiliary measurement of it; None if there is none.
+    group : row of the budget; that of coefficients if empty.
     """
 
     name: str
     label: str
     value: float
     limit: float
+    kind: str = "coupling"
+    constraint: float | None = None
+    group: str = ""
 
     def __post_init__(self) -> None:
         _refuse(self._problems())
@@ -175,6 +193,10 @@ class Coefficient:
         yield from _name_problems("coefficient", self.name)
         if self.name == "moments":
             yield Problem("the template file keeps this name for itself: no coefficient can have it", got="'moments'")
+        if self.kind not in COEFFICIENT_KINDS:
+            yield Problem("unknown kind", where, got=repr(self.kind), wanted=", ".join(COEFFICIENT_KINDS))
+        if self.constraint is not None and not (isfinite(self.constraint) and self.constraint > 0):
+            yield Problem("constraint must be positive and finite", where, got=str(self.constraint))
         if not (isfinite(self.limit) and self.limit > 0):
             yield Problem("a limit must be positive and finite", where, got=str(self.limit))
         elif not abs(self.value) <= self.limit:
@@ -292,9 +314,12 @@ class TemplateSet:
         coefficients = [coefficient.name for coefficient in self.coefficients]
         yield from _repeated("parameter", [*parameters, *coefficients, *(nuisance.name for nuisance in self.nuisances)])
         for parameter in self.parameters:
-            pieces = {(a, b): piece for a, b, piece in parameter.rate}
-            yield from self._quadratic_problems(f"parameter {parameter.name}", pieces, np.array(parameter.injected))
+            for form, injected in ((parameter.rate, parameter.injected), (parameter.over, 1.0)):
+                pieces = {(a, b): piece for a, b, piece in form}
+                yield from self._quadratic_problems(f"parameter {parameter.name}", pieces, np.array(injected))
         for component in self.components:
+            pieces = {(a, b): piece for a, b, piece in component.rate}
+            yield from self._quadratic_problems(f"component {component.name}", pieces, np.array(1.0))
             yield from _unknown("parameter", component.scales_with, parameters, f"component {component.name}")
         shapes = {category.name: category.shape for category in self.categories}
         components = {component.name for component in self.components}
@@ -360,6 +385,12 @@ def _name_problems(kind: str, name: object) -> Iterator[Problem]:
         yield Problem(f"not a name for a {kind}", got=repr(name), wanted="letters, digits and _")
     elif name == RESERVED.get(kind):
         yield Problem(f"the template file keeps this name for itself: no {kind} can have it", got=repr(name))
+
+
+def _form_problems(what: str, form: Form, where: str) -> Iterator[Problem]:
+    for a, b, piece in form:
+        if not isfinite(piece):
+            yield Problem(f"a piece of {what} is not finite", f"{where}: {a}, {b}", got=str(piece))
 
 
 def _repeated(kind: str, names: Iterable[str], where: str = "") -> Iterator[Problem]:

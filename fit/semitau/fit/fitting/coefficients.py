@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping, Sequence
 from difflib import get_close_matches
 from itertools import product
+from math import prod
 from typing import TYPE_CHECKING
 
 import numpy as np
@@ -33,15 +34,17 @@ def deepest(model: Model, data: Source) -> tuple[FitResult, tuple[FitResult, ...
     """The deepest minimum from many starts in the coefficients, and others that are nearly as deep, deepest first.
 
     What is quadratic in the coefficients has the same rate at two points, and the likelihood may have as many minima.
-    Starts: the injected point, and all combinations of STARTS for the first three coefficients that are free.
+    Starts: the injected point, and all combinations of STARTS for the first three couplings that are free.
     """
     from .newton import maximise
 
     limits = {known.name: known.limit for known in model.templates.coefficients}
-    free = [name for name in model.coefficients if model.index(name) in set(model.free.tolist())]
+    couplings = {known.name for known in model.templates.coefficients if known.kind == "coupling"}
+    movable = set(model.free.tolist())
+    free = [name for name in model.coefficients if name in couplings and model.index(name) in movable]
     checked = model.data(data)
     results = [maximise(model, checked)]
-    for parts in product(STARTS, repeat=min(len(free), 3)):
+    for parts in product(STARTS, repeat=min(len(free), 3)) if free else ():
         start = dict(zip(free, model.start[[model.index(name) for name in free]].tolist(), strict=True))
         start |= {name: part * limits[name] for name, part in zip(free, parts, strict=False) if part}
         results.append(maximise(model, checked, start))
@@ -112,13 +115,25 @@ def _problems(templates: TemplateSet, names: Sequence[str], likelihood: str) -> 
             got=likelihood,
             wanted="light, approximate",
         )
+    kinds = {known.kind for known in templates.coefficients if known.name in names}
+    if len(kinds) > 1:
+        yield Problem(
+            "ratios cannot follow some fitted coefficients and be free of others",
+            "coefficients",
+            got=", ".join(names),
+            remedy="Fit couplings, or coefficients of shapes, and hold the others.",
+        )
 
 
 def followed_rates(templates: TemplateSet, coefficients: Sequence[str]) -> dict[str, str]:
     """Ratios that depend on a fitted coefficient -> formula in these (functions.py), the others at their values."""
     values, found = injected_values(templates), {}
+    if any(known.kind == "shape" for known in templates.coefficients if known.name in coefficients):
+        return {}  # these leave ratios free
     for parameter in templates.parameters:
         terms: dict[tuple[str, ...], float] = {}
+        if any(name in coefficients for a, b, _ in parameter.over for name in (a, b)):
+            raise InputError(Problem("what a ratio is over cannot follow couplings", f"parameter {parameter.name}"))
         for a, b, piece in parameter.rate:
             factor, names = piece, []
             for name in (a, b):
@@ -128,7 +143,32 @@ def followed_rates(templates: TemplateSet, coefficients: Sequence[str]) -> dict[
                     factor *= values[name]
             terms[tuple(names)] = terms.get(tuple(names), 0.0) + factor
         if any(names and factor for names, factor in terms.items()):
-            found[parameter.name] = " + ".join(" * ".join([f"({c!r})", *names]) for names, c in terms.items() if c)
+            found[parameter.name] = _sum(terms)
+    return found
+
+
+def _sum(terms: Mapping[tuple[str, ...], float]) -> str:
+    return " + ".join(" * ".join([f"({c!r})", *names]) for names, c in terms.items() if c)
+
+
+SIZE = "_size_"
+"""Begins the name of the parameter that keeps the size of a component."""
+
+
+def kept_sizes(templates: TemplateSet, coefficients: Sequence[str]) -> dict[str, str]:
+    """Components whose rate depends on a fitted coefficient -> formula of one over that rate, 1 at the injected point.
+
+    With it the coefficients change what a component looks like, and only its scale parameters how large it is.
+    """
+    values, found = injected_values(templates), {}
+    for component in templates.components:
+        terms: dict[tuple[str, ...], float] = {}
+        for a, b, piece in component.rate:
+            names = tuple(name for name in (a, b) if name in coefficients)
+            held = prod(values[name] for name in (a, b) if name not in (*coefficients, ONE))
+            terms[names] = terms.get(names, 0.0) + held * piece
+        if any(names and factor for names, factor in terms.items()):
+            found[component.name] = f"1 / ({_sum(terms)})"
     return found
 
 
@@ -146,7 +186,7 @@ def starting_shifts(parts: Sequence[Part], templates: TemplateSet, free: Sequenc
     """
     point, found = injected_values(templates), {}
     for known in templates.coefficients:
-        if known.name in free:
+        if known.name in free and known.kind == "coupling":
             slopes: dict[tuple[str, str], Floats] = {}
             for part in parts:
                 if known.name in part.scales:

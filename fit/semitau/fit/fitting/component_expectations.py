@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping, Sequence
 
 import numpy as np
-from semitau.core.quadratic import contents_at, injected_values
+from semitau.core.quadratic import contents_at, form_at, injected_values
 from semitau.core.templates import Floats, TemplateSet
 
 from ..likelihood.interpolation import bend
@@ -26,6 +26,7 @@ def component_expectations(
     out = {}
     for component in templates.components:
         scale = float(np.prod([values[n] / injected[n] for n in component.scales_with if n not in following]))
+        scale /= form_at(component.rate, point) if coefficients else 1.0
         for category in templates.categories:
             template = templates.templates.get((category.name, component.name))
             if template is None:

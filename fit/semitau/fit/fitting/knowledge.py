@@ -63,6 +63,11 @@ class Knowledge:
         )  # fmt: skip
         single: dict[str, Constraint] = {n.name: Gaussian(1.0) for n in templates.nuisances}
         single |= {p.name: Gaussian(p.constraint) for p in templates.parameters if p.constraint is not None}
+        single |= {
+            c.name: Gaussian(c.constraint)
+            for c in templates.coefficients
+            if c.name in coefficients and c.constraint is not None
+        }
         _replace(single, {name: None if sigma is None else Gaussian(sigma) for name, sigma in yields.items()})
         _replace(single, constraints)
         for block in correlated:

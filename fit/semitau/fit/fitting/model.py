@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import ArrayLike
 from semitau.core.errors import InputError, Problem
 from semitau.core.quadratic import injected_values
-from semitau.core.templates import Floats, TemplateSet
+from semitau.core.templates import Coefficient, Floats, TemplateSet
 
 from ..likelihood.constraints import BLOCK, LOG_NORMAL, Constraint, Correlated
 from ..likelihood.constraints import arrays_of as constraint_arrays
@@ -19,7 +19,7 @@ from ..likelihood.functions import jacobian, read_function, set_functions
 from ..likelihood.layout import APPROXIMATE, EXACT_BY_COMPONENT, LIGHT, Indices, Layout, lay_out
 from ..likelihood.likelihood import expectations, workspace
 from ..likelihood.scaled_parts import parts_of
-from .coefficients import floated, followed_rates, set_twice, starting_shifts
+from .coefficients import SIZE, floated, followed_rates, kept_sizes, set_twice, starting_shifts
 from .component_expectations import component_expectations
 from .data import Data, Source, read_data
 from .knowledge import Knowledge, refuse, unknown
@@ -36,7 +36,9 @@ DEFAULT_LIKELIHOOD = "light"
 class Parameter:
     """One number that the likelihood depends on.
 
-    kind : "ratio", "yield" (relative to the expectation), "coefficient" or "nuisance" (in standard deviations).
+    kind : "ratio", "yield" (relative to the expectation), "coefficient", "nuisance" (in standard deviations; of
+        coefficients those that change shapes and have a constraint), or "size": what keeps the size of a component
+        while such coefficients change, a function of them.
     group : row of the budget that a constraint belongs to: the nuisance's group, "yields", "ratios" or "coefficients".
     injected : the value that the templates were made with; 0 for a nuisance.
     constraint : standard deviation of the Gaussian auxiliary measurement, None if there is none.
@@ -75,13 +77,15 @@ class Model:
     bounds : parameter name -> (low, high), either None; the fit keeps the parameter inside.
     functions : parameter name -> formula of other parameters, e.g. {"R_D_B0": "R_D_Bp", "yield_b": "1.1 * yield_a"}
         (functions.py). Such a parameter is not fitted, but has a value, an error and correlations in the result.
-    coefficients : names of the template set's coefficients to fit. Templates and ratios follow them: a ratio that does
-        is a function of them, not a parameter of its own. The other coefficients stay at their injected values, which
+    coefficients : names of the template set's coefficients to fit. Templates and ratios follow couplings: a ratio that
+        does is a function of them, not a parameter of its own. Coefficients of shapes leave the ratios free and the
+        size of components to their scale parameters. The other coefficients stay at their injected values, which
         `core.quadratic.templates_at` puts elsewhere.
 
     Parameters are the scale parameters (ratios and yields), the fitted coefficients, then the nuisances, in the order
     of the template set. A model does not change once made. Bins are numbered through all categories, in C order of
-    their axes. `ratios` names the parameters of interest: ratios and fitted coefficients.
+    their axes. `ratios` names the parameters of interest: ratios and fitted coefficients, but for those that are
+    nuisances; `following` the ratios that are functions of fitted couplings.
 
     Raises InputError for names that are not there, values that make no sense, a free parameter that nothing depends
     on, and bins whose total expectation is negative.
@@ -107,12 +111,15 @@ class Model:
         self.coefficients = floated(templates, coefficients, self.likelihood)
         following = followed_rates(templates, self.coefficients)
         refuse(set_twice(following, functions or {}))
-        parts = parts_of(templates, self.coefficients, tuple(following))
+        self.following = tuple(following)
+        kept = kept_sizes(templates, self.coefficients)
+        self._sizes = {name: f"{SIZE}{name}" for name in kept}
+        parts = parts_of(templates, self.coefficients, self.following, self._sizes)
         point = {name: value for name, value in injected_values(templates).items() if name in self.coefficients}
-        known = Knowledge.gather(
-            templates, fixed, yields, constraints, correlated, bounds, {**(functions or {}), **following}, point
-        )
-        self.parameters = _parameters(templates, known, self.coefficients)
+        point |= dict.fromkeys(self._sizes.values(), 1.0)
+        set_by = {**(functions or {}), **following, **{self._sizes[name]: text for name, text in kept.items()}}
+        known = Knowledge.gather(templates, fixed, yields, constraints, correlated, bounds, set_by, point)
+        self.parameters = _parameters(templates, known, self.coefficients, self._sizes)
         self.names = tuple(parameter.name for parameter in self.parameters)
         of_interest = ("ratio", "coefficient")
         self.ratios = tuple(parameter.name for parameter in self.parameters if parameter.kind in of_interest)
@@ -263,16 +270,23 @@ class Model:
         return int(((plain < arrays.floor) & (self.layout.lane_bin >= 0)).sum())
 
 
-def _parameters(templates: TemplateSet, known: Knowledge, fitted: Sequence[str]) -> tuple[Parameter, ...]:
+def _parameters(
+    templates: TemplateSet, known: Knowledge, fitted: Sequence[str], sizes: Mapping[str, str]
+) -> tuple[Parameter, ...]:
     parameters = []
     scales = [
         (p.name, p.label, p.kind, "ratios" if p.kind == "ratio" else "yields", p.injected) for p in templates.parameters
     ]
     nuisances = [(n.name, n.label, "nuisance", n.group, 0.0) for n in templates.nuisances]
     coefficients = [
-        (c.name, c.label, "coefficient", "coefficients", c.value) for c in templates.coefficients if c.name in fitted
+        (c.name, c.label, _kind(c), c.group or "coefficients", c.value)
+        for c in templates.coefficients
+        if c.name in fitted
     ]
-    for name, label, kind, group, injected in [*scales, *coefficients, *nuisances]:
+    labels = {component.name: component.label for component in templates.components}
+    kept = [(name, f"size of {labels[of]}", "size", "sizes", 1.0) for of, name in sizes.items()]
+    # Whatever scales components comes before the nuisances (expectation.py).
+    for name, label, kind, group, injected in [*scales, *coefficients, *kept, *nuisances]:
         law, sigma = known.law_of(name, injected)
         function = known.functions.get(name)
         parameters.append(
@@ -286,6 +300,10 @@ def _parameters(templates: TemplateSet, known: Knowledge, fitted: Sequence[str])
             Problem("too many parameters", "templates", got=str(len(parameters)), wanted=f"up to {PARAMETERS_AT_MOST}")
         )
     return tuple(parameters)
+
+
+def _kind(coefficient: Coefficient) -> str:
+    return "nuisance" if coefficient.kind == "shape" and coefficient.constraint is not None else "coefficient"
 
 
 def _known_likelihood(name: str) -> str:

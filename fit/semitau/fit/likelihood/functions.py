@@ -3,7 +3,7 @@
 A function is a sum of products of powers, written as text: "R_D", "0.5 * total * fraction", "1 - fraction",
 "yield_a * efficiency / 1.02". That covers what templates are scaled with, and has exact derivatives of any order:
 
-    x = Σ_terms c Π_k x_k^{e_k}
+    x = Σ_terms c Π_k x_k^{e_k},  or one over such a sum.
 
 The likelihood is computed with all parameters as if they were independent; gradient and Hessian are then pulled back to
 the fitted ones by the chain rule.
@@ -31,10 +31,14 @@ Powers = tuple[tuple[str, float], ...]
 
 @dataclass(frozen=True)
 class Function:
-    """A sum of products of powers. terms : (name, power) pairs, sorted by name -> coefficient."""
+    """A sum of products of powers. terms : (name, power) pairs, sorted by name -> coefficient.
+
+    inverse : whether it is one over that sum.
+    """
 
     text: str
     terms: Mapping[Powers, float]
+    inverse: bool = False
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -48,10 +52,20 @@ def read_function(name: str, text: str) -> Function:
         tree = ast.parse(text.strip(), mode="eval").body
     except (SyntaxError, ValueError) as error:
         raise InputError(Problem("not a formula", where, got=repr(text))) from error
-    terms = {powers: c for powers, c in _terms(tree, where, text).items() if c != 0.0}
+    number, below = _number_over_sum(tree, where, text)
+    terms = {p: c / number for p, c in (_terms(tree, where, text) if below is None else below).items() if c != 0.0}
     if not terms or any(not isfinite(c) for c in terms.values()):
         raise InputError(Problem("the formula is zero or not finite", where, got=repr(text)))
-    return Function(text, terms)
+    return Function(text, terms, inverse=below is not None)
+
+
+def _number_over_sum(node: ast.expr, where: str, text: str) -> tuple[float, dict[Powers, float] | None]:
+    """Of "2 / (1 + a)" the number and the terms of the sum; 1 and None of any other formula."""
+    if isinstance(node, ast.BinOp) and isinstance(node.op, ast.Div):
+        above, below = _terms(node.left, where, text), _terms(node.right, where, text)
+        if set(above) == {()} and above[()] != 0.0 and len(below) > 1:
+            return above[()], below
+    return 1.0, None
 
 
 def _terms(node: ast.expr, where: str, text: str) -> dict[Powers, float]:
@@ -110,7 +124,7 @@ def _power(terms: Mapping[Powers, float], exponent: float, where: str, text: str
                 "only a product can be divided by or raised to this power, not a sum",
                 where,
                 got=repr(text),
-                remedy="Divide by one parameter at a time, or fit the sum as a parameter of its own.",
+                remedy="Only a number can be divided by a sum; or fit the sum as a parameter of its own.",
             )
         )
     ((powers, c),) = terms.items()
@@ -126,6 +140,7 @@ class Functions(NamedTuple):
     first_factor: Wholes  # (terms + 1,)
     factor: Wholes  # parameter
     power: Floats
+    inverse: Wholes  # 1 for one over the sum of the terms
 
 
 def arrays_of(functions: Mapping[str, Function], indices: Mapping[str, int]) -> Functions:
@@ -141,7 +156,7 @@ def arrays_of(functions: Mapping[str, Function], indices: Mapping[str, int]) -> 
         first_term.append(len(coefficient))
     return Functions(
         _whole(parameter), _whole(first_term), np.array(coefficient), _whole(first_factor), _whole(factor),
-        np.array(power),
+        np.array(power), _whole(int(function.inverse) for function in functions.values()),
     )  # fmt: skip
 
 
@@ -172,16 +187,24 @@ def set_functions(f: Functions, x: Floats) -> None:
         total = 0.0
         for term in range(f.first_term[i], f.first_term[i + 1]):
             total += _partial(f, term, x, -1, -1)
-        x[f.parameter[i]] = total
+        x[f.parameter[i]] = 1.0 / total if f.inverse[i] else total
 
 
 @kernel
 def slopes(f: Functions, i: int, x: Floats, out: Floats) -> None:
-    """Derivatives of function i in all parameters."""
+    """Derivatives of function i in all parameters; x holds its value."""
     out[:] = 0.0
+    outer = _outer_slope(f, i, x)
     for term in range(f.first_term[i], f.first_term[i + 1]):
         for k in range(f.first_factor[term], f.first_factor[term + 1]):
-            out[f.factor[k]] += _partial(f, term, x, k, -1)
+            out[f.factor[k]] += outer * _partial(f, term, x, k, -1)
+
+
+@kernel
+def _outer_slope(f: Functions, i: int, x: Floats) -> float:
+    """Derivative of a function in the sum of its terms: 1, or -1/sum² of one over it."""
+    value = x[f.parameter[i]]
+    return -value * value if f.inverse[i] else 1.0
 
 
 @kernel
@@ -201,10 +224,15 @@ def pull_back(f: Functions, x: Floats, with_curvature: bool, gradient: Floats, h
                 if p != d and q != d:
                     hessian[p, q] += slope[p] * hessian[d, q] + slope[q] * hessian[p, d] + slope[p] * slope[q] * own
         if with_curvature:
+            outer = _outer_slope(f, i, x)
+            if f.inverse[i]:
+                for p in range(size):
+                    for q in range(size):
+                        hessian[p, q] += gradient[d] * 2.0 * slope[p] * slope[q] / x[d]
             for term in range(f.first_term[i], f.first_term[i + 1]):
                 for k in range(f.first_factor[term], f.first_factor[term + 1]):
                     for l in range(f.first_factor[term], f.first_factor[term + 1]):
-                        hessian[f.factor[k], f.factor[l]] += gradient[d] * _partial(f, term, x, k, l)
+                        hessian[f.factor[k], f.factor[l]] += gradient[d] * outer * _partial(f, term, x, k, l)
         gradient[d] = 0.0
         hessian[d, :] = 0.0
         hessian[:, d] = 0.0

@@ -33,7 +33,7 @@ LIGHT, APPROXIMATE, EXACT_BY_COMPONENT = 0, 1, 2
 class Arrays(NamedTuple):
     """What the compiled functions read. Parameters: scale parameters first, then coefficients, then nuisances."""
 
-    inverse_injected: Floats  # (parameters,); 1 for coefficients, 0 for nuisances
+    inverse_injected: Floats  # (parameters,); 1 for coefficients and sizes, 0 for nuisances
     inverse_variance: Floats  # (parameters,) of the constraint, of the logarithm for log-normal ones; 0 without one
     constraints: Constraints
     functions: Functions  # parameters that are set by others
@@ -190,6 +190,8 @@ def lay_out(
     for coefficient in templates.coefficients:
         if coefficient.name in indices:
             inverse_injected[indices[coefficient.name]] = 1.0
+    for name in {name for part in parts for name in part.scales} - {known.name for known in templates.parameters}:
+        inverse_injected[indices[name]] = 1.0
     scales = [[indices[name] for name in part.scales] for part in parts]
     arrays = Arrays(
         inverse_injected=inverse_injected,

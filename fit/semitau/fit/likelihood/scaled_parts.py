@@ -33,15 +33,23 @@ class Part:
     of_variance: bool = False
 
 
-def parts_of(templates: TemplateSet, floated: Sequence[str] = (), following: Sequence[str] = ()) -> tuple[Part, ...]:
+def parts_of(
+    templates: TemplateSet,
+    floated: Sequence[str] = (),
+    following: Sequence[str] = (),
+    sizes: Mapping[str, str] | None = None,
+) -> tuple[Part, ...]:
     """The parts of all components; coefficients that are not floated stay at their injected values.
 
     following : ratios that follow the floated coefficients: the templates do so themselves, and need no such factor.
+    sizes : component -> the parameter that takes what floated coefficients do to its size away again.
     """
     found: list[Part] = []
     for component in templates.components:
         here = {c: t for (c, name), t in templates.templates.items() if name == component.name}
         scales = tuple(name for name in component.scales_with if name not in following)
+        if sizes is not None and component.name in sizes:
+            scales = (*scales, sizes[component.name])
         if floated and any(template.quadratic for template in here.values()):
             found += _pieces(component.name, scales, here, floated, injected_values(templates))
         else:

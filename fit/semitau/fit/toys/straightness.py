@@ -86,7 +86,7 @@ def linearity(
         raise InputError(
             Problem("linearity needs different injected values", "factors", str(list(factors)), "two or more above 0")
         )
-    if model.coefficients:
+    if model.following:
         raise InputError(
             Problem(
                 "ratios that follow coefficients have no multiples",
@@ -95,7 +95,8 @@ def linearity(
                 remedy="Hold the coefficients at a point instead.",
             )
         )
-    free = [name for name in model.ratios if model.parameters[model.index(name)].fixed is None]
+    parameters = [model.parameters[model.index(name)] for name in model.ratios]
+    free = [parameter.name for parameter in parameters if parameter.kind == "ratio" and parameter.fixed is None]
     if not free:
         raise InputError(Problem("no ratio is free: there is no linearity to test", "linearity"))
     points = []

@@ -53,12 +53,17 @@ def label_of(name: str) -> str:
 def quadratic_form(
     function: Callable[[WilsonCoefficients], float], couplings: WilsonCoefficients, names: Sequence[str]
 ) -> QuadraticForm:
-    """The coefficients f_ij of a function that is quadratic in the named parts; others stay at `couplings`.
+    """The coefficients f_ij of a function that is quadratic in the named parts; others stay at `couplings`."""
+    return form_through(lambda values: function(with_values(couplings, values)), names)
+
+
+def form_through(function: Callable[[dict[str, float]], float], names: Sequence[str]) -> QuadraticForm:
+    """The same of a function that is quadratic in named values.
 
     Evaluates it at as many points as there are coefficients, and solves for them.
     """
     points = _points(len(names))
-    values = [function(with_values(couplings, dict(zip(names, point, strict=True)))) for point in points.tolist()]
+    values = [function(dict(zip(names, point, strict=True))) for point in points.tolist()]
     solved = np.linalg.solve(np.stack([monomials(point) for point in points]), np.array(values))
     return dict(zip(pairs_of(names), solved.tolist(), strict=True))
 

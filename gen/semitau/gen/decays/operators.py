@@ -4,6 +4,9 @@ Amplitudes are linear in the Wilson coefficients, A(C) = sum of g_m(C) A_m with 
 current with g = 1 + VL, the right-handed one, the scalar and the tensor. Those that are multiples of each other count
 once (both currents in B -> D; SL and SR always, with opposite signs in B -> D*), so there are four at most, and a
 density of events, a Hermitian form in g, has 16 real pieces at most, whatever the coefficients.
+
+Where amplitudes are linear in shifts s_i of form-factor parameters, A = A_0 + sum of s_i A_i with g = (1, s_1, ...); at
+complex couplings the real and the imaginary part of each A_i are operators of their own.
 """
 
 from __future__ import annotations
@@ -16,6 +19,7 @@ import numpy.typing as npt
 
 from .coefficients import part_of, with_values
 from .decay import Decay, WilsonCoefficients
+from .form_factor_shifts import Coefficient, shifted_decay
 
 Floats = npt.NDArray[np.float64]
 Complexes = npt.NDArray[np.complex128]
@@ -115,3 +119,23 @@ def operators(decay: Decay, names: Sequence[str], amplitudes_of: Callable[[Decay
     base, strengths = strength(decay.couplings), np.vstack([rest[None], slopes])
     at_work = np.any(strengths != 0.0, axis=0) | (base != 0.0)
     return Operators(np.stack(found)[at_work], base[at_work], strengths[:, at_work])
+
+
+SPAN = 4.0
+"""Standard deviations over which the slope of amplitudes is taken: they are linear, and rounding counts less."""
+
+
+def shift_operators(
+    decay: Decay, coefficients: Sequence[Coefficient], amplitudes_of: Callable[[Decay], Complexes]
+) -> Operators:
+    """The same for coefficients that shift form factors; those that do not act on the decay have no strengths."""
+    plain = amplitudes_of(decay)
+    slopes = [(amplitudes_of(shifted_decay(decay, [(one, SPAN)])) - plain) / SPAN for one in coefficients]
+    found, strengths = [], []
+    for row, amplitudes in enumerate([plain, *slopes]):
+        for part, unit in ((amplitudes.real, 1.0), (amplitudes.imag, 1j)):
+            if part.any():
+                found.append(part)
+                strengths.append(unit * np.eye(1 + len(slopes))[row])
+    columns = np.array(strengths, dtype=np.complex128).T
+    return Operators(np.stack(found), columns[0], columns)

@@ -21,6 +21,7 @@ from .fraction_conflicts import fraction_conflicts
 from .idle_variations import idle_variations, nuisance_names
 from .machine import FormFactorSource
 from .names import CHARM_OF_RATIO, COEFFICIENTS, FORM_FACTORS_OF, LEPTONS, PION_DECAYS, RATIOS
+from .quadratic_conflicts import quadratic_conflicts, shift_names
 from .rules import shown, suggestion
 from .sections import Conflict, Place, Sections, missing_file
 
@@ -33,7 +34,7 @@ def conflicts(sections: Sections) -> list[Conflict]:
     """Everything that is wrong between the tables."""
     checks = (
         _names, _modes, _ratios, _categories, _pions, double_charm_conflicts, background_conflicts, fraction_conflicts,
-        _form_factors, _couplings, _tensor_model, idle_variations, _fit,
+        _form_factors, _couplings, _tensor_model, quadratic_conflicts, idle_variations, _fit,
     )  # fmt: skip
     return [conflict for check in checks for conflict in check(sections)]
 
@@ -49,6 +50,7 @@ def _names(sections: Sections) -> Iterator[Conflict]:
         for i, item in sections.variations.items()
         for name in nuisance_names(sections, item)
     ]
+    named += [(place, name, "variation") for place, name in shift_names(sections)]
     seen: set[tuple[str, str]] = set()
     for place, name, kind in named:
         if (kind, name) in seen:
@@ -222,7 +224,8 @@ def _own_set(sections: Sections, source: FormFactorSource, transition: str) -> I
 def _couplings(sections: Sections) -> Iterator[Conflict]:
     """Couplings act on a mode with their lepton, leave it a rate, and are no function of what does nothing."""
     taken = {lepton for mode in sections.modes.values() for lepton in mode.leptons}
-    if "mode" in sections.whole and "tau" not in taken and sections.quadratic is not None:
+    functions = sections.quadratic is not None and sections.quadratic.coefficients
+    if "mode" in sections.whole and "tau" not in taken and functions:
         remedy = "Remove the table, or add a mode with a tau."
         yield Conflict(("quadratic",), "acts on nothing: no mode has a tau", remedy=remedy)
     if sections.wilson is None:

@@ -7,7 +7,9 @@ from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
 from .idle_variations import nuisance_names
+from .names import COEFFICIENTS
 from .parameter_names import ParameterNames, parameter_names
+from .quadratic_conflicts import shift_names
 from .rules import shown, suggestion
 from .sections import Conflict, Place, Sections
 
@@ -20,7 +22,7 @@ def fit_conflicts(study: StudyConfig, sections: Sections) -> Iterator[Conflict]:
     if sections.folder is None and any(source.file for _, source in study.form_factors):
         return  # names of directions follow from a file that cannot be looked for
     variations = [name for table in study.variation_tables for name in nuisance_names(sections, table)]
-    names = parameter_names(study, variations)
+    names = parameter_names(study, variations, [name for _, name in shift_names(sections)])
     yield from _coefficients(study, names)
     fit = study.fit
     for k, name in enumerate(fit.apart):
@@ -30,13 +32,13 @@ def fit_conflicts(study: StudyConfig, sections: Sections) -> Iterator[Conflict]:
     known = (*names.ratios, *names.yields, *fit.coefficients, *names.nuisances)
     for key in ("fixed", "functions", "constraints", "bounds"):
         for name in getattr(fit, key):
-            yield from _parameter(("fit", key, name), name, known, study)
+            yield from _parameter(("fit", key, name), name, known, study, names)
     for i, block in enumerate(fit.correlated):
         for k, name in enumerate(block.parameters):
-            yield from _parameter(("fit", "correlated", i, "parameters", k), name, known, study)
+            yield from _parameter(("fit", "correlated", i, "parameters", k), name, known, study, names)
     for name, formula in fit.functions.items():
         for used in _names_in(formula):
-            yield from _parameter(("fit", "functions", name), used, known, study)
+            yield from _parameter(("fit", "functions", name), used, known, study, names)
 
 
 def _variation(place: Place, name: str, names: ParameterNames) -> Iterator[Conflict]:
@@ -45,11 +47,13 @@ def _variation(place: Place, name: str, names: ParameterNames) -> Iterator[Confl
         yield Conflict(place, "names no variation", shown(name), wanted, suggestion(name, names.variations))
 
 
-def _parameter(place: Place, name: str, known: tuple[str, ...], study: StudyConfig) -> Iterator[Conflict]:
+def _parameter(
+    place: Place, name: str, known: tuple[str, ...], study: StudyConfig, names: ParameterNames
+) -> Iterator[Conflict]:
     if name in known:
         return
     remedy = suggestion(name, known)
-    if study.quadratic is not None and name in study.quadratic.coefficients:
+    if name in names.coefficients:
         remedy = "Float it: name it in fit.coefficients."
     if name in study.fit.apart:
         remedy = f"It is apart: take {name}_shape or {name}_rate."
@@ -80,10 +84,11 @@ def _coefficients(study: StudyConfig, names: ParameterNames) -> Iterator[Conflic
     if fit.likelihood == "exact":
         remedy = 'Take likelihood = "light" or "approximate".'
         yield Conflict(place, 'cannot be fitted with likelihood = "exact"', shown(fit.coefficients), remedy=remedy)
-    if study.blinding is not None and fit.data.kind != "expected":
+    couplings = [name for name in fit.coefficients if name in COEFFICIENTS]
+    if study.blinding is not None and fit.data.kind != "expected" and couplings:
         remedy = 'Fit the expected events (data = "expected"), or leave [blinding] out.'
         yield Conflict(place, "would give hidden ratios away", shown(fit.coefficients), remedy=remedy)
-    for name in fit.functions:
+    for name in fit.functions if couplings else ():
         if name in names.ratios:
             remedy = "Take one of them away."
             what = "already follows the fitted coefficients"

@@ -43,8 +43,8 @@ def component_name(study: StudyConfig, mode: Mode, parent: str) -> str:
     return mode.name + (PARENT_SUFFIX[parent] if split_by_parent(study, mode) else "")
 
 
-def parameter_names(study: StudyConfig, variations: Sequence[str]) -> ParameterNames:
-    """All of them. variations : names of those of the study, one for each nuisance."""
+def parameter_names(study: StudyConfig, variations: Sequence[str], shifts: Sequence[str] = ()) -> ParameterNames:
+    """All of them. variations : names of those of the study, one for each nuisance. shifts : of form factors."""
     imported = study.imports.components if study.imports is not None else ()
     sides = [sides.name for item in imported for sides in item.variations]
     variations = list(dict.fromkeys([*variations, *sides]))
@@ -53,7 +53,7 @@ def parameter_names(study: StudyConfig, variations: Sequence[str]) -> ParameterN
     return ParameterNames(
         ratios=tuple(dict.fromkeys(_ratios(study))),
         yields=tuple(dict.fromkeys(yields)),
-        coefficients=study.quadratic.coefficients if study.quadratic is not None else (),
+        coefficients=(*(study.quadratic.coefficients if study.quadratic is not None else ()), *shifts),
         variations=tuple(variations),
         nuisances=tuple(name for part in parts for name in part),
     )

@@ -22,6 +22,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
     "[wilson]": ("Wilson",),
     "[wilson.e] and [wilson.mu]": ("Couplings",),
     "[quadratic]": ("Quadratic",),
+    "[[quadratic.form_factors]]": ("FormFactorShifts",),
     "[radiation]": ("RadiationSection",),
     "[[mode]]": ("Mode",),
     "[[double_charm]]": ("DoubleCharm",),

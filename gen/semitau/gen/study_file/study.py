@@ -17,6 +17,7 @@ from pydantic_core import PydanticCustomError
 
 from ..decays.branching_fractions import BranchingFractions
 from ..decays.form_factor_set import FormFactorSet
+from ..decays.form_factor_shifts import Coefficient
 from .alternatives import Alternative, BiasSection
 from .average import AverageStudySection
 from .blinding import Blinding
@@ -35,6 +36,7 @@ from .imports import Imports
 from .machine import Experiment, FormFactors, StudySection
 from .names import OBSERVABLES
 from .prospect_conflicts import prospect_conflicts
+from .quadratic_shifts import written_coefficients
 from .radiation import RadiationSection
 from .reach import ReachSection
 from .rules import Table, shown
@@ -57,7 +59,7 @@ class StudyConfig(Table):
     branching_fractions: BranchingFractionTables = BranchingFractionTables()
     wilson: Wilson = Wilson()
     radiation: RadiationSection = RadiationSection()
-    quadratic: Quadratic | None = Field(default=None, description="templates as functions of [wilson]")
+    quadratic: Quadratic | None = Field(default=None, description="templates as functions of coefficients")
     modes: tuple[Mode, ...] = Field(alias="mode", min_length=1)
     double_charms: tuple[DoubleCharm, ...] = Field(default=(), alias="double_charm")
     backgrounds: tuple[Background, ...] = Field(default=(), alias="background")
@@ -169,6 +171,11 @@ class StudyConfig(Table):
     def variations(self) -> tuple[SingleVariation, ...]:
         """All variations, one for each nuisance parameter, in the file's order."""
         return tuple(single_variations(self.variation_tables, self.form_factor_set))
+
+    @property
+    def coefficients(self) -> tuple[Coefficient, ...]:
+        """What templates are functions of, written out."""
+        return written_coefficients(self.quadratic, self.form_factors, self.form_factor_set)
 
     @property
     def categories(self) -> tuple[StudyCategory, ...]:

@@ -5,13 +5,14 @@ from __future__ import annotations
 from math import hypot, isfinite
 from typing import Annotated, Any, Literal
 
-from pydantic import BeforeValidator, Field, PlainSerializer, WithJsonSchema
+from pydantic import BeforeValidator, Field, PlainSerializer, WithJsonSchema, model_validator
 
 from ..decays.coefficients import LARGEST
 from ..decays.decay import WilsonCoefficients
 from ..decays.lepton_couplings import LeptonCouplings
 from .names import CoefficientName
 from .rules import Distinct, Table, broken
+from .shift_tables import FormFactorShifts
 
 
 def _number(given: Any) -> bool:
@@ -82,12 +83,21 @@ class Wilson(Couplings):
 
 
 class Quadratic(Table):
-    """Templates of the modes with a tau as exact quadratic functions of chosen real coefficients.
+    """Templates as exact quadratic functions of chosen real coefficients: couplings of the tau, or form factors.
 
-    From the one sample that [wilson] draws; a fit then takes any point or floats them (docs/statistics.md). `SR` is the
-    real part of a coefficient, `Im_SR` its imaginary part.
+    From the one sample that [wilson] and [form_factors] draw; a fit then takes any point or floats them
+    (docs/statistics.md). `SR` is the real part of a coupling, `Im_SR` its imaginary part.
     """
 
     coefficients: Annotated[tuple[CoefficientName, ...], Field(min_length=1), Distinct] = Field(
-        description="real and imaginary parts that templates are functions of"
+        default=(), description="real and imaginary parts of couplings, which templates of the modes with a tau follow"
     )
+    form_factors: Annotated[tuple[FormFactorShifts, ...], Field(min_length=1)] = Field(
+        default=(), description="[[quadratic.form_factors]], which templates of all modes of D or D* follow"
+    )
+
+    @model_validator(mode="after")
+    def _of_something(self) -> Quadratic:
+        if not (self.coefficients or self.form_factors):
+            raise broken("has no coefficients", "coefficients or form_factors", got="")
+        return self

@@ -13,6 +13,7 @@ from semitau.core.kept import Kept
 from semitau.core.quadratic import Reweighting, pairs_of
 from semitau.core.templates import Pair, Template, TemplateSet
 
+from ..decays.form_factor_shifts import name_of
 from ..study_file.study import StudyConfig
 from .binning import cut_names
 from .chunk_tasks import make_bench
@@ -124,7 +125,7 @@ def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:
 def _templates(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> dict[tuple[str, str], Template]:
     templates = {}
     first = 0
-    pairs = pairs_of(study.quadratic.coefficients) if study.quadratic is not None else ()
+    pairs = pairs_of([name_of(one) for one in study.coefficients]) if study.coefficients else ()
     for place, category in enumerate(study.categories):
         size = int(np.prod(category.shape))
         here = slice(first, first + size)

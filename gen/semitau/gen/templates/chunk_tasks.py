@@ -6,7 +6,6 @@ import time
 from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
-from typing import TypeGuard
 
 import numpy as np
 import numpy.typing as npt
@@ -17,6 +16,7 @@ from semitau.core.engine import Job
 from ..decays.chains import Channel
 from ..decays.decay import Decay
 from ..decays.double_charm import AnyChain
+from ..decays.form_factor_shifts import Coefficient, acts_on
 from ..decays.operators import Operators
 from ..response.candidates import Scenario, Windows
 from ..response.charm_decay import pair_mass_quantiles
@@ -64,7 +64,7 @@ class Bench:
 
     categories : of the study. shape : steps of `place`, categories. bins : of all categories together.
     scenarios : reconstructions besides the nominal one. variations : whether columns beyond the nominal one are filled.
-    quadratic : parts of coefficients that the templates of modes with a tau are functions of.
+    quadratic : coefficients that templates are functions of.
     least_photon : energy in GeV of the softest photons of leptons; None if there are none.
     """
 
@@ -78,7 +78,7 @@ class Bench:
     axes: Axes
     scenarios: Mapping[Side, Scenario]
     variations: bool
-    quadratic: tuple[str, ...]
+    quadratic: tuple[Coefficient, ...]
     least_photon: float | None = None
 
     @property
@@ -124,7 +124,7 @@ def make_bench(study: StudyConfig, *, variations: bool) -> Bench:
         axes=make_axes(categories),
         scenarios=scenarios(study) if variations else {},
         variations=variations,
-        quadratic=study.quadratic.coefficients if variations and study.quadratic is not None else (),
+        quadratic=study.coefficients if variations else (),
         least_photon=study.radiation.least,
     )
 
@@ -137,14 +137,17 @@ def channel_columns(plan: ChannelPlan, bench: Bench) -> list[Side]:
 
 
 def channel_pieces(plan: ChannelPlan, bench: Bench) -> tuple[PieceTable, Operators] | None:
-    """Table for the bilinear pieces of a channel, if it has a tau and the study asks for them."""
-    if not _has_pieces(plan.channel, bench):
+    """Table for the bilinear pieces of a channel, if a coefficient acts on it."""
+    if not (_acting(plan.channel, bench) and isinstance(plan.channel, Channel)):
         return None
     return piece_table(plan.channel, bench.quadratic)
 
 
-def _has_pieces(channel: AnyChain, bench: Bench) -> TypeGuard[Channel]:
-    return bool(bench.quadratic) and isinstance(channel, Channel) and channel.lepton == "tau"
+def _acting(channel: AnyChain, bench: Bench) -> tuple[Coefficient, ...]:
+    """Coefficients that a channel depends on; their pieces come in the order of those of all coefficients."""
+    if not isinstance(channel, Channel):
+        return ()
+    return tuple(one for one in bench.quadratic if acts_on(one, channel.decay))
 
 
 @dataclass(frozen=True, eq=False)
@@ -152,7 +155,7 @@ class ChannelInputs:
     """All that the histograms of a channel depend on, besides the bench and how many events there are.
 
     decays : with other form factors, one a column of weights. soft : factors on the soft efficiency. shifts
-    (scenarios, 2) : of the reconstruction, the nominal one first. quadratic : parts of coefficients for its pieces.
+    (scenarios, 2) : of the reconstruction, the nominal one first. quadratic : coefficients that act.
     """
 
     stream: np.uint64
@@ -161,7 +164,7 @@ class ChannelInputs:
     soft: Floats
     shifts: Floats
     chain: Chain
-    quadratic: tuple[str, ...]
+    quadratic: tuple[Coefficient, ...]
 
 
 def channel_inputs(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> ChannelInputs:
@@ -173,7 +176,7 @@ def channel_inputs(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Channe
         soft=np.array(list(plan.variations.soft.values()) if bench.variations else [], dtype=np.float64),
         shifts=np.array([NOMINAL, *bench.scenarios.values()], dtype=np.float64),
         chain=kernel_chain(plan.channel, bench.least_photon),
-        quadratic=bench.quadratic if _has_pieces(plan.channel, bench) else (),
+        quadratic=_acting(plan.channel, bench),
     )
 
 

@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
-from semitau.core.templates import Category, Coefficient, Component, Nuisance, Observable, ScaleParameter
+from semitau.core.templates import Category, Coefficient, Component, Form, Nuisance, Observable, ScaleParameter
 
 from ..decays.coefficients import LARGEST, label_of, part_of, quadratic_form, value_of
+from ..decays.form_factor_shifts import LARGEST_SHIFT
 from ..study_file.components import Mode, Yield
 from ..study_file.names import OBSERVABLES
 from ..study_file.parameter_names import PARENT_SUFFIX, component_name, split_by_parent
 from ..study_file.study import StudyConfig
 from .component_plan import injected_ratio, predicted_ratio, ratio_parents
+from .quadratic_rates import decay_form, ratio_forms, study_shifts
 
 _RATIO_LABEL = {"R_D": "R(D)", "R_Dst": "R(D*)"}
 _PARENT_LABEL = {"B+": "B⁺", "B0": "B⁰"}
@@ -46,12 +48,22 @@ def template_coefficients(study: StudyConfig) -> tuple[Coefficient, ...]:
     """The real numbers that templates are quadratic functions of."""
     couplings = study.wilson.couplings
     return tuple(
-        Coefficient(name, label_of(name), value_of(couplings, name), LARGEST[part_of(name)[0]])
-        for name in (study.quadratic.coefficients if study.quadratic is not None else ())
+        Coefficient(one, label_of(one), value_of(couplings, one), LARGEST[part_of(one)[0]])
+        if isinstance(one, str)
+        else Coefficient(one.name, one.label, 0.0, LARGEST_SHIFT, "shape", one.constraint, one.group)
+        for one in study.coefficients
     )
 
 
-def _rate(study: StudyConfig, mode: Mode, parent: str) -> tuple[tuple[str, str, float], ...]:
+def _ratio_forms(study: StudyConfig, mode: Mode, parent: str) -> tuple[Form, Form]:
+    """The ratio of a mode as a quadratic form in the coefficients over another, and that other one; empty if not."""
+    name, parents = str(mode.scales_with), ratio_parents(study, mode, parent)
+    if study_shifts(study):
+        return ratio_forms(study, name, parents, injected_ratio(study, mode, parent))
+    return _rate(study, mode, parent), ()
+
+
+def _rate(study: StudyConfig, mode: Mode, parent: str) -> Form:
     """The ratio of a mode as a quadratic form in the coefficients, at the study's couplings the injected one."""
     if study.quadratic is None:
         return ()
@@ -86,8 +98,8 @@ def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...]
                 ratio_label = _RATIO_LABEL[mode.scales_with] + (f" of {_PARENT_LABEL[parent]}" if split else "")
                 injected = injected_ratio(study, mode, parent)
                 if ratio not in ratios:
-                    rate = _rate(study, mode, parent)
-                    ratios[ratio] = ScaleParameter(ratio, ratio_label, "ratio", injected, None, rate)
+                    forms = _ratio_forms(study, mode, parent)
+                    ratios[ratio] = ScaleParameter(ratio, ratio_label, "ratio", injected, None, *forms)
                 scales_with.append(ratio)
             followed = study.followed_by(mode)
             if followed is not None and followed.yield_constraint.kind != "fixed":
@@ -96,7 +108,8 @@ def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...]
             if own is not None:
                 yields[own.name] = own
                 scales_with.append(own.name)
-            components.append(Component(name, part_label, mode.role, tuple(scales_with)))
+            size = _size(study, mode, parent, ratios.get(scales_with[0]) if mode.scales_with is not None else None)
+            components.append(Component(name, part_label, mode.role, tuple(scales_with), size))
     for item in study.components:
         if isinstance(item, Mode):
             continue
@@ -107,6 +120,14 @@ def components_and_parameters(study: StudyConfig) -> tuple[tuple[Component, ...]
         scales = (own.name,) if own is not None else ()
         components.append(Component(item.name, label, item.role, scales))
     return tuple(components), (*ratios.values(), *yields.values())
+
+
+def _size(study: StudyConfig, mode: Mode, parent: str, ratio: ScaleParameter | None) -> Form:
+    """What shifts of form factors do to the number of decays of a component, which its scale parameters are to hold."""
+    if ratio is not None:
+        return tuple((a, b, piece / ratio.injected) for a, b, piece in ratio.rate) if study_shifts(study) else ()
+    parents = (parent,) if split_by_parent(study, mode) else mode.parents
+    return decay_form(study, parents, mode.charm, mode.leptons)
 
 
 def _yield_parameter(component: str, label: str, constraint: Yield) -> ScaleParameter | None:

@@ -1,9 +1,9 @@
 """What an event's |M|² is made of: its real bilinear pieces in the operators, relative to the |M|² it was drawn from.
 
-With amplitudes M = sum of g_m M_m over at most four operators, |M|² = sum over m, n of g_m* g_n D_mn, where D is a
-Hermitian matrix of the event. Re D_mn and Im D_mn, at most 16 numbers, give its weight for every value of all Wilson
-coefficients. D uses the spin of D* and tau as `spin_algebra.chain_density` does, whose quadratic form it polarises:
-the tau decay is the form W = 1 + odd . sigma on the two lepton helicities.
+With amplitudes M = sum of g_m M_m over a few operators, |M|² = sum over m, n of g_m* g_n D_mn, where D is a Hermitian
+matrix of the event. Re D_mn and Im D_mn give its weight for every value of all Wilson coefficients (four operators and
+16 numbers at most), or of shifts of form factors. D uses the spin of D* and tau as `spin_algebra.chain_density` does,
+whose quadratic form it polarises: the tau decay is the form W = 1 + odd . sigma on the two lepton helicities.
 """
 
 from __future__ import annotations
@@ -18,7 +18,8 @@ from semitau.core.compiled import inlined, kernel
 from .. import block as row
 from ..decays.chains import Channel
 from ..decays.decay import Decay
-from ..decays.operators import Operators, operators
+from ..decays.form_factor_shifts import Coefficient
+from ..decays.operators import Operators, operators, shift_operators
 from .channel_table import regular_amplitudes
 from .spin_algebra import helicity_states, lepton_terms
 from .variation_weights import VariationTable, analyse, variation_table
@@ -26,7 +27,7 @@ from .variation_weights import VariationTable, analyse, variation_table
 Floats = npt.NDArray[np.float64]
 Integers = npt.NDArray[np.int64]
 
-OPERATORS_AT_MOST = 4
+OPERATORS_AT_MOST = 6
 AMPLITUDES = 8
 _ROOT_HALF = float(np.sqrt(0.5))
 
@@ -48,9 +49,12 @@ class PieceTable(NamedTuple):
     chain: VariationTable
 
 
-def piece_table(channel: Channel, names: tuple[str, ...]) -> tuple[PieceTable, Operators]:
-    """Table for `bilinear_pieces`, and how the named parts of coefficients combine its pieces."""
-    taken = _operators(channel.decay, names)
+def piece_table(channel: Channel, coefficients: tuple[Coefficient, ...]) -> tuple[PieceTable, Operators]:
+    """Table for `bilinear_pieces`, and how the coefficients combine its pieces.
+
+    coefficients : parts of Wilson coefficients ("SR", "Im_T"), or shifts of form factors; not both that act.
+    """
+    taken = _operators(channel.decay, coefficients)
     nodes_first = np.ascontiguousarray(np.moveaxis(taken.amplitudes, 0, -2))
     table = PieceTable(
         columns=nodes_first.ravel(),
@@ -69,8 +73,11 @@ def no_pieces(chain: VariationTable) -> PieceTable:
 
 
 @lru_cache(maxsize=8)  # chains of one decay follow each other
-def _operators(decay: Decay, names: tuple[str, ...]) -> Operators:
-    return operators(decay, names, _columns)
+def _operators(decay: Decay, coefficients: tuple[Coefficient, ...]) -> Operators:
+    couplings = [one for one in coefficients if isinstance(one, str)]
+    if len(couplings) == len(coefficients):
+        return operators(decay, couplings, _columns)
+    return shift_operators(decay, coefficients, _columns)
 
 
 def _columns(decay: Decay) -> npt.NDArray[np.complex128]:

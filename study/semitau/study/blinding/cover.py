@@ -83,7 +83,8 @@ class Cover:
                     remedy="What the fit does then would tell it. Fit the expected events (--expected).",
                 )
             )
-        others = [p.name for p in model.parameters if p.fixed is None and p.kind not in ("ratio", "yield", "nuisance")]
+        harmless = ("ratio", "yield", "nuisance", "size")
+        others = [p.name for p in model.parameters if p.fixed is None and p.kind not in harmless]
         if others or not model.ratios:
             raise InputError(
                 Problem(

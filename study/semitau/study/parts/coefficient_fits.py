@@ -34,7 +34,7 @@ def refuse_hidden(model: Model, hiding: object | None) -> None:
     ------
     InputError : coefficients are to be fitted to data whose ratios are hidden.
     """
-    if hiding is not None and model.coefficients:
+    if hiding is not None and model.following:
         raise InputError(
             Problem(
                 "the coefficients would give hidden ratios away",

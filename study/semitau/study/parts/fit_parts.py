@@ -38,7 +38,7 @@ def fit_part(model: Model, result: FitResult, toys: ToyResults | None = None) ->
 
     toys : at the injected ratios, if there are any; a p-value from them holds for bins with few events, too.
     """
-    free = [index for index, parameter in enumerate(model.parameters) if parameter.fixed is None]
+    free = [index for index, p in enumerate(model.parameters) if p.fixed is None and p.kind != "size"]
     finite = bool(np.isfinite(result.errors).all())
     goodness = result.goodness
     return Fit(

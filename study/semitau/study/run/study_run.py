@@ -156,7 +156,7 @@ def found_results(
         toys = run_toys(model, study.toys.number, study.study.seed, workers, report)
         judged = quality(model, data, fitted, toys) if source.kind != "expected" and toys.valid.any() else None
     lines = None
-    if study.toys.linearity is not None and model.coefficients:
+    if study.toys.linearity is not None and model.following:
         notes = *notes, "Linearity is left out: ratios that follow fitted coefficients have no multiples."
     elif study.toys.linearity is not None:
         plan = study.toys.linearity
