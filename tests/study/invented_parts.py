@@ -368,11 +368,11 @@ def sizing() -> Sizing:
                 what="fewer", sets=8, fraction=0.125, events=1_200_000,
                 checks=tuple(
                     SizingCheck(
-                        sample=sample, ratio="R_D", predicted=0.0054, predicted_error=0.0002, measured=0.0055,
-                        measured_error=0.0001, scatter=0.0051 if sample else None,
-                        scatter_error=0.0013 if sample else None, p_value=0.81 if sample else None,
+                        sample=sample, ratio=ratio, predicted=0.0054, predicted_error=0.0002, measured=0.0055,
+                        measured_error=0.0001, scatter=0.0051, scatter_error=0.0013, p_value=0.81,
                     )
-                    for sample in ("D_tau", "")
+                    for sample in ("", *(name for name, _ in samples))
+                    for ratio, *_ in RATIOS
                 ),
             ),
         ),
