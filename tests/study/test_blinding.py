@@ -15,8 +15,9 @@ from semitau.core.templates import TemplateSet
 from semitau.fit.fitting.model import Model
 from semitau.fit.fitting.newton import maximise
 from semitau.study.blinding.cover import Cover, cover, provenance
-from semitau.study.blinding.finality import declare_final, templates_digest, unblind
+from semitau.study.blinding.finality import declare_final, unblind
 from semitau.study.command_line import main
+from semitau.study.graph.template_digest import templates_digest
 from semitau.study.parts.signal_share import signal_shares
 from semitau.study.results import Results, read_results
 from semitau.study.run.study_run import run_study

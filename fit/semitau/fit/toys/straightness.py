@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from math import isfinite
 
@@ -14,7 +14,7 @@ from semitau.core.streams import stream_key
 from semitau.core.true_minus import formatted
 
 from ..fitting.model import Model
-from .toys import Report, ToyResults, run_toys
+from .toys import Report, ToyResults, run_toys, toys_kept
 from .verdict import AT_95, SIGNIFICANT
 
 
@@ -95,17 +95,32 @@ def linearity(
                 remedy="Hold the coefficients at a point instead.",
             )
         )
-    parameters = [model.parameters[model.index(name)] for name in model.ratios]
-    free = [parameter.name for parameter in parameters if parameter.kind == "ratio" and parameter.fixed is None]
+    free = _free_ratios(model)
     if not free:
         raise InputError(Problem("no ratio is free: there is no linearity to test", "linearity"))
-    points = []
-    for number, factor in enumerate(checked):
-        injected = {name: factor * float(model.injected[model.index(name)]) for name in free}
-        stream = int(stream_key(seed, "linearity", number))
-        label = f"linearity, factor {factor:g}"
-        points.append(run_toys(model, n, stream, workers, report, injected=injected, label=label, kept=kept))
+    points = [
+        run_toys(model, n, stream, workers, report, injected=injected, label=f"linearity, factor {factor:g}", kept=kept)
+        for factor, stream, injected in _points(model, checked, seed)
+    ]
     return Linearity(checked, tuple(points), {name: _line(name, points) for name in free})
+
+
+def linearity_kept(model: Model, factors: Sequence[float], n: int, seed: int, kept: Kept | None) -> int:
+    """How many toys `linearity` would find kept, of n at each factor."""
+    points = _points(model, factors, seed)
+    return sum(min(n, toys_kept(model, stream, kept, injected)) for _, stream, injected in points)
+
+
+def _free_ratios(model: Model) -> list[str]:
+    parameters = [model.parameters[model.index(name)] for name in model.ratios]
+    return [parameter.name for parameter in parameters if parameter.kind == "ratio" and parameter.fixed is None]
+
+
+def _points(model: Model, factors: Sequence[float], seed: int) -> Iterator[tuple[float, int, dict[str, float]]]:
+    """Factor, seed and injected ratios of each point."""
+    for number, factor in enumerate(factors):
+        injected = {name: factor * float(model.injected[model.index(name)]) for name in _free_ratios(model)}
+        yield factor, int(stream_key(seed, "linearity", number)), injected
 
 
 def _line(name: str, points: Sequence[ToyResults]) -> Line:

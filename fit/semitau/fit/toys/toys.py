@@ -183,13 +183,8 @@ def run_toys(
     """
     if isinstance(n, bool) or not isinstance(n, int | np.integer) or n < 1:
         raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
-    truth = model.values(injected)
-    start = truth.copy()
-    held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
-    start[held] = model.start[held]
-    stream = stream_key(seed, "toys")
-    means = _padded_means(model, truth) if expectation is None else model.lanes(expectation.seen_by(model)[0], 0.0)
-    common = _Toys(model.layout.arrays, model.free, stream, truth, start, means)
+    common = _common(model, seed, injected, expectation)
+    truth = common.truth
     key = "" if kept is None else toys_key(common)
     there = None if kept is None else kept_batch(kept, key, truth.size)
     parts = [] if there is None else [there]
@@ -211,6 +206,16 @@ def run_toys(
     return ToyResults(model.names, ratios, truth, values, errors, statuses, statistics, steps, int(seed), foreign)
 
 
+def toys_kept(
+    model: Model, seed: int, kept: Kept | None, injected: Mapping[str, float] | ArrayLike | None = None
+) -> int:
+    """How many toys `run_toys` would find kept."""
+    if kept is None:
+        return 0
+    there = kept_batch(kept, toys_key(_common(model, seed, injected, None)), model.injected.size)
+    return 0 if there is None else int(there[2].size)
+
+
 class _Toys(NamedTuple):
     """What all batches have in common, without the model: workers elsewhere need no more."""
 
@@ -220,6 +225,17 @@ class _Toys(NamedTuple):
     truth: Floats
     start: Floats
     means: Floats
+
+
+def _common(
+    model: Model, seed: int, injected: Mapping[str, float] | ArrayLike | None, expectation: Expectation | None
+) -> _Toys:
+    truth = model.values(injected)
+    start = truth.copy()
+    held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
+    start[held] = model.start[held]
+    means = _padded_means(model, truth) if expectation is None else model.lanes(expectation.seen_by(model)[0], 0.0)
+    return _Toys(model.layout.arrays, model.free, stream_key(seed, "toys"), truth, start, means)
 
 
 def _batch(common: _Toys, first: int, size: int) -> Batch:

@@ -22,7 +22,7 @@ from .component_sums import ComponentSums
 from .cut_flow import CutFlow, step_names
 from .fit_components import components_and_parameters, template_categories, template_coefficients, template_nuisances
 from .kept_sums import component_key
-from .part_runs import by_component, run_parts
+from .part_runs import by_component, events_kept, run_parts
 from .provenance import provenance
 from .variations import check_efficiencies
 
@@ -109,6 +109,14 @@ def component_keys(study: StudyConfig, purpose: str = "templates") -> dict[str, 
     bench = make_bench(study, variations=True)
     parts = component_parts(study, bench, purpose)
     return {name: component_key(of_one, bench) for name, of_one in by_component(parts).items()}
+
+
+def template_events_kept(
+    study: StudyConfig, kept: Kept | None, purpose: str = "templates"
+) -> dict[str, tuple[int, int]]:
+    """Component -> events that `build_templates` would find kept, and all of its events."""
+    bench = make_bench(study, variations=True)
+    return events_kept(component_parts(study, bench, purpose), bench, kept)
 
 
 def _cut_flow(study: StudyConfig, sums: Mapping[str, ComponentSums]) -> CutFlow:

@@ -50,12 +50,7 @@ def run_parts(
     kept : sums of components that are there are not made again, and what is made is put there, also when it is
     interrupted: the next run goes on after the last chunk. The result is the same to the last bit.
     """
-    components = [_Component(name, of_one) for name, of_one in by_component(parts).items()]
-    for component in components:
-        if kept is not None:
-            component.key = component_key(component.parts, bench)
-            arrays = kept.take(KIND, component.key)
-            component.sums = [] if arrays is None else unpacked(arrays, component.parts, bench) or []
+    components = _components(parts, bench, kept)
     total, done = sum(part.events for part in parts), sum(component.done for component in components)
     if report is not None and done:
         report(components[0].name, done, total)
@@ -68,6 +63,25 @@ def run_parts(
                 if report is not None:
                     report(component.name, done, total)
             yield from zip(component.parts, component.sums, strict=True)
+
+
+def events_kept(parts: Sequence[Part], bench: Bench, kept: Kept | None) -> dict[str, tuple[int, int]]:
+    """Component -> events whose sums are there, and all of its events."""
+    return {
+        component.name: (component.done, sum(part.events for part in component.parts))
+        for component in _components(parts, bench, kept)
+    }
+
+
+def _components(parts: Sequence[Part], bench: Bench, kept: Kept | None) -> list[_Component]:
+    """All components with what is kept of them."""
+    components = [_Component(name, of_one) for name, of_one in by_component(parts).items()]
+    for component in components:
+        if kept is not None:
+            component.key = component_key(component.parts, bench)
+            arrays = kept.take(KIND, component.key)
+            component.sums = [] if arrays is None else unpacked(arrays, component.parts, bench) or []
+    return components
 
 
 def by_component(parts: Sequence[Part]) -> dict[str, list[Part]]:

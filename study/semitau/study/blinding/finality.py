@@ -10,26 +10,31 @@ from __future__ import annotations
 import hashlib
 import json
 from collections.abc import Mapping
-from dataclasses import fields, is_dataclass
 from datetime import UTC, datetime
 from pathlib import Path
 from typing import Any
 
-import numpy as np
+from semitau.core.code_digest import code_digest, versions
+from semitau.core.content_digest import content_digest
 from semitau.core.engine import checked_workers
 from semitau.core.errors import InputError, Problem
 from semitau.core.template_file import read_templates
-from semitau.core.templates import Floats, Template, TemplateSet
 from semitau.core.whole_files import write_whole
 from semitau.gen.study_file.study import StudyConfig
 
+from ..graph.course import Course
+from ..graph.materials import Materials
+from ..graph.plan import expected_seconds, study_plan
+from ..graph.store import Store
+from ..graph.template_digest import templates_digest
 from ..pictures import draw_pictures
 from ..report import write_report
 from ..results import Results, read_results
 from ..run.opening import open_study
-from ..run.study_folder import StudyFolder, claimed_folder, code_digest, study_key, versions
+from ..run.study_data import fitted_data
+from ..run.study_folder import StudyFolder, claimed_folder, study_key
 from ..run.study_model import study_model
-from ..run.study_run import Report, StudyRun, fitted_data, found_results
+from ..run.study_run import Report, StudyRun, found_results
 from .cover import Cover, cover, passphrase
 
 FINAL, UNBLINDING = "final.json", "unblinding.json"
@@ -100,12 +105,18 @@ def unblind(
         raise InputError(
             *(Problem(f"{what} since it was declared final", str(folder.path), remedy=remedy) for what in changed)
         )
+    materials = Materials(study, Store(folder.store), checked_workers(workers), report)
+    if templates_digest(materials.templates) != now["templates"]:
+        remedy = "Run the study with --again, and declare it final again."
+        raise InputError(
+            Problem("the stored templates are not those of the template file", str(folder.store), remedy=remedy)
+        )
     record = {"by": by, "when": _now(), "name": study.study.name, "declared": final["when"], **now}
     _append(folder.path / UNBLINDING, "unblindings", record)
     opened = StudyFolder(folder.path / "unblinded")
-    results = found_results(
-        study, opened, study_key(study), checked_workers(workers), report, False, None, folder.templates
-    )
+    write_whole(opened.study_file, study.text)
+    course = Course(expected_seconds(study_plan(materials)), report)
+    results = found_results(materials, opened, study_key(study), course, None, unblinded=True)
     write_report(results, draw_pictures(results, opened.pictures, report), opened.report)
     return StudyRun(results, opened, reused=False), record
 
@@ -138,44 +149,12 @@ def _state(study: StudyConfig, folder: StudyFolder, hiding: Cover) -> dict[str, 
         "study": study.digest,
         "seed": study.study.seed,
         "templates": templates_digest(templates),
-        "data": _digest(data.counts),
-        "code": code_digest(),
+        "data": content_digest(data.counts),
+        "code": code_digest("core", "gen", "fit"),
         "versions": versions(),
         "fingerprint": hiding.fingerprint,
         "results": hashlib.sha256(folder.results.read_bytes()).hexdigest(),
     }
-
-
-def templates_digest(templates: TemplateSet) -> str:
-    """SHA-256 of everything in a template set that a fit sees: the same for the same contents, whatever the file."""
-    digest = hashlib.sha256()
-    for field in fields(templates):
-        if field.name not in ("data", "provenance"):
-            _feed(digest, field.name, getattr(templates, field.name))
-    return digest.hexdigest()
-
-
-def _feed(digest: Any, name: str, part: object) -> None:
-    """Names and contents of a part, whatever it is made of."""
-    digest.update(f"{name}:".encode())
-    if isinstance(part, np.ndarray):
-        digest.update(_digest(part).encode())
-    elif isinstance(part, Mapping):
-        for key in sorted(part, key=repr):
-            _feed(digest, repr(key), part[key])
-    elif isinstance(part, Template):
-        for field in fields(part):
-            _feed(digest, field.name, getattr(part, field.name))
-    elif isinstance(part, tuple):
-        for number, item in enumerate(part):
-            _feed(digest, str(number), vars(item) if is_dataclass(item) else item)
-    else:
-        digest.update(repr(part).encode())
-
-
-def _digest(array: Floats) -> str:
-    whole = np.ascontiguousarray(array, dtype="<f8")
-    return hashlib.sha256(f"{whole.shape}".encode() + whole.tobytes()).hexdigest()
 
 
 def _now() -> str:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from contextlib import nullcontext
 from pathlib import Path
 
 import click
@@ -22,21 +23,25 @@ def command(call: Invocation, file: Path, output: Path | None, again: bool) -> N
     """
     from semitau.core.whole_files import write_whole
 
+    from ..graph.materials import Materials
+    from ..graph.store import Store
     from ..parts.reweighting_parts import reweighting_line, reweighting_warnings
     from ..run.opening import open_study
-    from ..run.study_folder import claimed_folder
-    from ..run.study_templates import study_templates
+    from ..run.study_folder import StudyFolder, claimed_folder, own_folder
+    from ..run.study_templates import study_templates, write_template_file
     from ..terminal.summary import cut_flow_table
 
     study = open_study(file, call.seed)
-    target = output
-    if target is None:
-        folder = claimed_folder(Path(study.study.output), study.study.name)
+    folder = claimed_folder(Path(study.study.output), study.study.name) if output is None else own_folder(study)
+    if folder is not None and output is None:
         write_whole(folder.study_file, study.text)
-        target = folder.templates
-    with call.terminal.progress() as report:
-        made = study_templates(study, target, call.workers, report, again)
-    reused = " (they were there already; --again makes them anew)" if made.reused else ""
+    store = None if folder is None else Store(folder.store, fresh=again)
+    target = output or StudyFolder(Path(study.study.output)).templates
+    with call.terminal.progress() as report, nullcontext() if store is None else store.in_use():
+        made = study_templates(Materials(study, store, call.workers, report))
+        write_template_file(made.templates, target, store)
+    call.terminal.show(*(store.notes if store is not None else ()))
+    reused = " (all events were there already; --again makes them anew)" if made.reused else ""
     call.terminal.show(cut_flow_table(made.cut_flow), "", reweighting_line(made.reweightings))
     call.terminal.show(*(f"Look at this: {warning}" for warning in reweighting_warnings(made.reweightings)))
     call.terminal.show(f"Templates: {target}{reused}")

@@ -16,6 +16,7 @@ from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import Build, build_templates
 from semitau.gen.templates.imported import imported_data, poisson_of_imports, with_imports
 
+from ..parts.coefficient_fits import fit_coefficients
 from ..results import DataSource
 from ..run.fitting import fit_or_fail
 from ..run.study_data import fitted_data
@@ -37,6 +38,11 @@ class Materials:
     store: Store | None = None
     workers: int | None = None
     report: Report | None = None
+
+    @property
+    def made(self) -> int:
+        """How many times something was kept so far: unchanged if all came from the store."""
+        return 0 if self.store is None else self.store.made
 
     def build(self, study: StudyConfig, purpose: str = "templates") -> Build:
         """Templates of any study, without what it imports.
@@ -76,10 +82,16 @@ class Materials:
         """What the study fits, and what that is in words."""
         return fitted_data(self.study, self.model)
 
-    @cached_property
+    @property
     def fitted(self) -> FitResult:
         """The fit to the study's data: true values, also where the study hides them. RunError if it fails."""
-        return fit_or_fail(self.model, self.data[0])
+        return self.fit_and_notes[0]
+
+    @cached_property
+    def fit_and_notes(self) -> tuple[FitResult, tuple[str, ...]]:
+        """The same, with what should be looked at where coefficients are fitted."""
+        model, data = self.model, self.data[0]
+        return fit_coefficients(model, data) if model.coefficients else (fit_or_fail(model, data), ())
 
     def _pseudo_data(self, templates: TemplateSet) -> Mapping[str, Any]:
         from semitau.gen.templates.pseudo_data import pseudo_data

@@ -13,7 +13,7 @@ import re
 import time
 import zipfile
 import zlib
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterable, Iterator, Mapping
 from contextlib import contextmanager, suppress
 from pathlib import Path
 from typing import Any
@@ -38,7 +38,7 @@ class Store:
     """One store in its folder, which is made by the first file that is kept.
 
     notes : what was found damaged or of another version, each a sentence; there is nothing to do about it.
-    used : names of the files that were taken or kept.
+    used : names of the files that were taken or kept. made : how many times something was kept.
     fresh : nothing is taken that was not kept through this object.
     """
 
@@ -46,6 +46,7 @@ class Store:
         self.folder = folder
         self.notes: list[str] = []
         self.used: set[str] = set()
+        self.made = 0
         self.pause = LEAST_PAUSE
         self._fresh = fresh
         self._usable = self._check_version()
@@ -66,19 +67,32 @@ class Store:
                 with file.open(f"{name}.npy", "w", force_zip64=True) as member:
                     np.lib.format.write_array(member, np.ascontiguousarray(array), allow_pickle=False)
         self.used.add(path.name)
+        self.made += 1
         self.pause = max(LEAST_PAUSE, (time.monotonic() - start) / SHARE_OF_TIME)
 
     def take_document(self, kind: str, key: str) -> Any | None:
-        """The JSON document kept under this key, None if it is not there or not sound."""
-        return self._sound(self._path(kind, key, ".json"), kind, key, _read_document)
+        """The JSON document kept under this key, None if it is not there or not sound.
 
-    def keep_document(self, kind: str, key: str, document: object) -> None:
-        """Keep a document of JSON values under a key. Raises RunError as `write_whole`."""
+        What was needed to make it counts as used, too: it is there for a run after the next change.
+        """
+        found = self._sound(self._path(kind, key, ".json"), kind, key, _read_document)
+        if found is None:
+            return None
+        self.used.update(found["needed"])
+        return found["document"]
+
+    def keep_document(self, kind: str, key: str, document: object, needed: Iterable[str] = ()) -> None:
+        """Keep a document of JSON values under a key. Raises RunError as `write_whole`.
+
+        needed : names of the files that it was made from.
+        """
         self._open_for_writing()
         path = self._path(kind, key, ".json")
-        text = json.dumps({**_header(kind, key), "checksum": _checksum(document), "document": document}, indent=0)
+        whole = {"document": document, "needed": sorted(needed)}
+        text = json.dumps({**_header(kind, key), "checksum": _checksum(whole), **whole}, indent=0)
         write_whole(path, text + "\n")
         self.used.add(path.name)
+        self.made += 1
 
     def has(self, kind: str, key: str) -> bool:
         """Whether there is a file under this key, sound or not, finished or not."""
@@ -176,9 +190,10 @@ def _read_arrays(path: Path, kind: str, key: str) -> Arrays:
 def _read_document(path: Path, kind: str, key: str) -> Any:
     whole = json.loads(path.read_text(encoding="utf-8"))
     _check(whole, kind, key)
-    if whole["checksum"] != _checksum(whole["document"]):
+    found = {"document": whole["document"], "needed": whole["needed"]}
+    if whole["checksum"] != _checksum(found):
         raise ValueError("changed since it was written")
-    return whole["document"]
+    return found
 
 
 def _checksum(document: object) -> int:

@@ -3,23 +3,18 @@
 from __future__ import annotations
 
 import hashlib
-import json
 import tomllib
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
-from functools import cache
-from importlib.metadata import version
-from importlib.util import find_spec
 from pathlib import Path
 from typing import TYPE_CHECKING
 
+from semitau.core.code_digest import code_digest, versions
+from semitau.core.content_digest import content_digest
 from semitau.core.errors import InputError, Problem
 
 if TYPE_CHECKING:
     from semitau.gen.study_file.study import StudyConfig
-
-LIBRARIES = ("numpy", "scipy", "numba")
-"""Libraries whose version may move a last digit."""
 
 
 @dataclass(frozen=True)
@@ -36,6 +31,11 @@ class StudyFolder:
     @property
     def templates(self) -> Path:
         return self.path / "templates.root"
+
+    @property
+    def store(self) -> Path:
+        """What is dear to make, see `graph.store`."""
+        return self.path / "store"
 
     @property
     def results(self) -> Path:
@@ -95,6 +95,14 @@ def claimed_folder(path: Path, name: str) -> StudyFolder:
     return folder
 
 
+def own_folder(study: StudyConfig) -> StudyFolder | None:
+    """The folder that [study] output names, if it is there and is this study's."""
+    folder = StudyFolder(Path(study.study.output))
+    if not folder.study_file.is_file() or _name_in(folder.study_file) != study.study.name:
+        return None
+    return folder
+
+
 def _name_in(study_file: Path) -> str:
     try:
         return str(tomllib.loads(study_file.read_text(encoding="utf-8"))["study"]["name"])
@@ -103,35 +111,10 @@ def _name_in(study_file: Path) -> str:
 
 
 def study_key(study: StudyConfig) -> str:
-    """SHA-256 of all that templates and results depend on: study text, seed, versions, code, files that it names."""
-    parts = {
-        "study": study.digest,
-        "seed": study.study.seed,
-        "versions": versions(),
-        "code": code_digest(),
-        "files": {file: _digest_of(study.beside(file)) for file in named_files(study.model_dump(mode="json"))},
-    }
-    return hashlib.sha256(json.dumps(parts, sort_keys=True).encode()).hexdigest()
-
-
-@cache
-def versions() -> dict[str, str]:
-    """Program -> version, ours first."""
-    return {name: version(name) for name in ("semitau", *LIBRARIES)}
-
-
-@cache
-def code_digest() -> str:
-    """SHA-256 of the source of core, gen and fit: a developer's change makes stored templates invalid."""
-    digest = hashlib.sha256()
-    for package in ("core", "gen", "fit"):
-        spec = find_spec(f"semitau.{package}")
-        for root in (spec.submodule_search_locations or ()) if spec is not None else ():
-            for source in sorted(Path(root).rglob("*")):
-                if source.suffix in (".py", ".toml"):
-                    digest.update(f"{package}/{source.relative_to(root)}\n".encode())
-                    digest.update(source.read_bytes())
-    return digest.hexdigest()
+    """SHA-256 of all that results depend on: study text, seed, versions, code, files that it names."""
+    files = {file: file_digest(study.beside(file)) for file in named_files(study.model_dump(mode="json"))}
+    code = code_digest("core", "gen", "fit", "study")
+    return content_digest(study.digest, study.study.seed, versions(), code, files)
 
 
 def named_files(document: object) -> Iterator[str]:
@@ -147,7 +130,8 @@ def named_files(document: object) -> Iterator[str]:
             yield from named_files(item)
 
 
-def _digest_of(path: Path) -> str:
+def file_digest(path: Path) -> str:
+    """SHA-256 of a file, "" if it cannot be read."""
     try:
         with open(path, "rb") as file:
             return hashlib.file_digest(file, "sha256").hexdigest()

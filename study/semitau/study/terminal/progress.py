@@ -11,17 +11,38 @@ from rich.progress import (
     BarColumn,
     MofNCompleteColumn,
     Progress,
+    Task,
     TaskID,
     TextColumn,
     TimeElapsedColumn,
     TimeRemainingColumn,
 )
+from rich.text import Text
+
+from ..graph.course import WHOLE
 
 Report = Callable[[str, int, int | None], None]
 """report(label, done, total): `done` of `total` steps of the work `label`; total None if unknown."""
 
 BETWEEN_LINES = 10.0
 """Seconds between two lines about the same work, where there is no terminal to draw a bar on."""
+
+
+class _Count(MofNCompleteColumn):
+    """Steps done and to do; of the whole study, which counts seconds, the share."""
+
+    def render(self, task: Task) -> Text:
+        return Text(f"{task.percentage:.0f} %") if task.description == WHOLE else super().render(task)
+
+
+class _Left(TimeRemainingColumn):
+    """Time that is left; of the whole study as it says itself."""
+
+    def render(self, task: Task) -> Text:
+        if task.description != WHOLE or task.total is None:
+            return super().render(task)
+        minutes, seconds = divmod(round(task.total - task.completed), 60)
+        return Text(f"{minutes:02d}:{seconds:02d}", style="progress.remaining")
 
 
 def silence(label: str, done: int, total: int | None) -> None:
@@ -34,10 +55,10 @@ def bars(console: Console) -> Iterator[Report]:
     columns = (
         TextColumn("{task.description}"),
         BarColumn(bar_width=28),
-        MofNCompleteColumn(),
+        _Count(),
         TimeElapsedColumn(),
         TextColumn("left"),
-        TimeRemainingColumn(compact=True),
+        _Left(compact=True),
     )
     with Progress(*columns, console=console, refresh_per_second=5) as progress:
         tasks: dict[str, TaskID] = {}
@@ -52,21 +73,31 @@ def bars(console: Console) -> Iterator[Report]:
 
 @contextmanager
 def sparse_lines(console: Console, clock: Callable[[], float] = time.monotonic) -> Iterator[Report]:
-    """A line when a piece of work ends, and every BETWEEN_LINES seconds while it lasts."""
+    """A line when a piece of work ends, and every BETWEEN_LINES seconds while it lasts: about the whole study if there
+    is a report on it, else about each piece."""
     started: dict[str, tuple[float, int]] = {}
     spoken: dict[str, float] = {}
     finished: set[str] = set()
+    at_work = ""
 
     def report(label: str, done: int, total: int | None) -> None:
+        nonlocal at_work
         now = clock()
         begin, already = started.setdefault(label, (now, done))
+        at_work = at_work if label == WHOLE else label
         if total is not None and done >= total:
             if label not in finished:
                 finished.add(label)
                 console.print(f"{label}: done in {duration(now - begin)}", highlight=False)
+        elif label != WHOLE and WHOLE in started:
+            return
         elif now - spoken.setdefault(label, begin) >= BETWEEN_LINES:
             spoken[label] = now
-            if total:
+            if label == WHOLE and total:
+                step = f" (now: {at_work})" if at_work else ""
+                left = f"about {duration(float(total - done))} left"
+                console.print(f"{label}: {100 * done // total} %, {left}{step}", highlight=False)
+            elif total:
                 # The first steps may compile code: an estimate from less than a twentieth would frighten.
                 told = done - already > total / 20
                 left = f", about {duration((now - begin) * (total - done) / (done - already))} left" if told else ""
