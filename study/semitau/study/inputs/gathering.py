@@ -14,7 +14,7 @@ from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.study_file.units import UNITS
 from semitau.gen.study_file.variations import FormFactor
 
-from ..run.study_outline import study_outline
+from ..run.study_outline import component_outlines
 from .part import (
     InputAxis,
     InputCategory,
@@ -48,7 +48,7 @@ def inputs_part(study: StudyConfig, templates: TemplateSet) -> Inputs:
 
 
 def _components(study: StudyConfig, templates: TemplateSet) -> Iterator[InputComponent]:
-    generated = {component.name: component for component in study_outline(study, 1).components}
+    generated = {component.name: component for component in component_outlines(study)}
     for name, made in generated.items():
         yield InputComponent(
             name=name,

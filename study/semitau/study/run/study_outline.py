@@ -13,16 +13,10 @@ from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.component_plan import plan_channels
 from semitau.gen.templates.variations import check_efficiencies, scenarios
 
+from ..graph.materials import Materials
+from ..graph.plan import StepPlan, study_plan
+from ..graph.store import Store
 from .form_factor_warnings import form_factor_warnings
-
-DECAYS_PER_SECOND = 8e5
-"""Generated decays per second and core through templates with about ten variations, on one core of a 2024 server. Each
-further scenario (a variation that reconstructs the same events anew) costs as much again as a fifth of that."""
-
-COST_OF_SCENARIO = 0.2
-TOYS_PER_SECOND = 1000.0
-FIXED_SECONDS = 6.0
-"""Libraries loaded, pictures drawn, files written. Compiling, once for an installation, takes about a minute more."""
 
 BYTES_OF_LIBRARIES = 350e6
 BYTES_OF_PICTURES = 3e5
@@ -47,7 +41,7 @@ class ComponentOutline:
 
 @dataclass(frozen=True)
 class StudyOutline:
-    """A whole study; seconds, bytes are rough."""
+    """A whole study; seconds, for what is not there yet, and bytes are rough."""
 
     name: str
     seed: int
@@ -62,6 +56,7 @@ class StudyOutline:
     seconds: float
     memory: float
     disk: float
+    steps: tuple[StepPlan, ...]
     warnings: tuple[str, ...]
 
     def document(self) -> dict[str, object]:
@@ -69,8 +64,8 @@ class StudyOutline:
         return asdict(self)
 
 
-def study_outline(study: StudyConfig, workers: int) -> StudyOutline:
-    """What the study will make with this many workers.
+def study_outline(study: StudyConfig, workers: int, store: Store | None = None) -> StudyOutline:
+    """What the study will make with this many workers. store : of its folder, with what is there already.
 
     Raises
     ------
@@ -78,7 +73,7 @@ def study_outline(study: StudyConfig, workers: int) -> StudyOutline:
     """
     check_efficiencies(study)
     samplers(study)  # reads the files of backgrounds, which may be foreign or damaged
-    components = (*_mode_outlines(study), *_background_outlines(study))
+    components = component_outlines(study)
     categories = tuple(
         (category.label, " × ".join(f"{name} ({len(edges) - 1})" for name, edges in category.axes.items()), bins)
         for category in study.categories
@@ -86,14 +81,12 @@ def study_outline(study: StudyConfig, workers: int) -> StudyOutline:
     )
     bins = sum(count for _, _, count in categories)
     extra = len(scenarios(study))
-    generated = sum(component.generated for component in components)
     toys = study.toys.number
     if study.toys.linearity is not None:
         toys += study.toys.linearity.number * len(study.toys.linearity.factors)
     columns = 2 + 2 * len(study.variations)
     sets = 1 + (study.fit.data.kind == "pseudo")
-    seconds = FIXED_SECONDS + toys / TOYS_PER_SECOND / workers
-    seconds += generated * (1 + COST_OF_SCENARIO * extra) / DECAYS_PER_SECOND / workers
+    steps = study_plan(Materials(study, store, workers))
     return StudyOutline(
         name=study.study.name,
         seed=study.study.seed,
@@ -105,11 +98,17 @@ def study_outline(study: StudyConfig, workers: int) -> StudyOutline:
         scenarios=extra,
         data=study.fit.data.file or study.fit.data.kind,
         toys=toys,
-        seconds=seconds,
+        seconds=sum(step.seconds for step in steps),
+        steps=steps,
         memory=BYTES_OF_LIBRARIES + workers * BLOCKS_IN_FLIGHT + 16.0 * bins * columns * len(components),
         warnings=form_factor_warnings(study),
         disk=sets * 8.0 * bins * columns * len(components) + 3 * BYTES_OF_PICTURES * len(categories),
     )
+
+
+def component_outlines(study: StudyConfig) -> tuple[ComponentOutline, ...]:
+    """All components in the order of the study file: modes, double charm, backgrounds."""
+    return (*_mode_outlines(study), *_background_outlines(study))
 
 
 def _mode_outlines(study: StudyConfig) -> tuple[ComponentOutline, ...]:
