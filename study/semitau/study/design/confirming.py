@@ -14,6 +14,7 @@ from dataclasses import dataclass, replace
 
 import numpy as np
 from semitau.core.candidate_grid import GENERATED, CandidateGrid, GridAxis
+from semitau.core.errors import Problem, RunError
 from semitau.core.templates import Floats
 from semitau.fit.uncertainty.working_points import Sensitivity, add_cross_information
 
@@ -28,17 +29,18 @@ CERTAIN = 2.0
 @dataclass(frozen=True, eq=False)
 class Confirmed:
     """errors (points, ratios), of the starting and the proposed point. gain, uncertainty : relative fall of the merit
-    without information from fluctuations. noise : relative rise of the merit of both points when that is taken out."""
+    without information from fluctuations. noise : relative rise of the merit of both points when that is taken out;
+    None if the events are too few to tell, and the gain is then with it."""
 
     errors: Floats
     gain: float
     uncertainty: float
-    noise: tuple[float, float]
+    noise: tuple[float, float] | None
 
     @property
     def certain(self) -> bool:
         """Whether the gain is more than its error allows for."""
-        return self.gain > CERTAIN * self.uncertainty
+        return self.noise is not None and self.gain > CERTAIN * self.uncertainty
 
 
 def confirmation_space(space: Space, points: Sequence[WorkingPoint]) -> Space:
@@ -78,22 +80,34 @@ def confirm(
     """The starting and the proposed point on batches of other events. grids : one for each batch, on `coarse`."""
     by_point = [_contents(space, coarse, grids, point) for point in points]
     batches = range(len(grids))
-    plain, clean = [], []
-    for parts in by_point:
-        covariance = _covariance(parts, list(batches), sensitivity, clean=False)
-        plain.append((covariance, goal.merit(covariance)))
-        clean.append(goal.merit(_covariance(parts, list(batches), sensitivity, clean=True)))
-    gain = 1.0 - clean[1] / clean[0]
-    left_out = []
-    for out in batches:
-        kept = [b for b in batches if b != out]
-        merits = [goal.merit(_covariance(parts, kept, sensitivity, clean=True)) for parts in by_point]
-        left_out.append(1.0 - merits[1] / merits[0])
-    spread = np.sqrt((len(grids) - 1) / len(grids) * np.sum((np.array(left_out) - np.mean(left_out)) ** 2))
-    size = len(sensitivity.ratios)
-    errors = [np.full(size, np.nan) if c is None else np.sqrt(np.diag(c)) for c, _ in plain]
-    noise = [float(clean[k] / plain[k][1] - 1.0) for k in range(2)]
-    return Confirmed(np.stack(errors), float(gain), float(spread), (noise[0], noise[1]))
+    kept = [list(batches), *([b for b in batches if b != out] for out in batches)]
+    covariances = [[_covariance(parts, own, sensitivity, clean=False) for parts in by_point] for own in kept]
+    plain = np.array([[goal.merit(covariance) for covariance in pair] for pair in covariances])
+    clean = np.array(
+        [[goal.merit(_covariance(parts, own, sensitivity, clean=True)) for parts in by_point] for own in kept]
+    )
+    # With very few events products of batches may not add up to an information at all.
+    enough = bool(np.isfinite(clean).all())
+    merits = clean if enough else plain
+    if not np.isfinite(merits).all():
+        raise RunError(
+            Problem(
+                "independent events do not tell the ratios",
+                where="confirmation of the design",
+                remedy="Generate more events.",
+            )
+        )
+    gains = 1.0 - merits[:, 1] / merits[:, 0]
+    left_out = gains[1:]
+    spread = np.sqrt((len(grids) - 1) / len(grids) * np.sum((left_out - left_out.mean()) ** 2))
+    errors = [np.sqrt(np.diag(own)) for own in covariances[0] if own is not None]
+    noise = clean[0] / plain[0] - 1.0
+    return Confirmed(
+        np.stack(errors),
+        float(gains[0]),
+        float(spread),
+        (float(noise[0]), float(noise[1])) if enough else None,
+    )
 
 
 def _contents(space: Space, coarse: Space, grids: Sequence[CandidateGrid], point: WorkingPoint) -> list[Floats]:

@@ -34,10 +34,14 @@ from .part import (
 from .proposal import snippet
 from .run import Found
 from .search import scans
+from .skeleton import skeleton_model
 from .space import WorkingPoint
 
 DEAREST = 12
 """Variations that are told of."""
+
+NOISY = 0.02
+"""Rise of the merit without information from fluctuations from which on more events are advised."""
 
 
 def document(study: StudyConfig, design: DesignSection, found: Found) -> Design:
@@ -245,6 +249,7 @@ def _variations(study: StudyConfig, evaluator: Evaluator, best: WorkingPoint) ->
 
 
 def _notes(study: StudyConfig, design: DesignSection, found: Found) -> Iterator[str]:
+    model = skeleton_model(study)
     space, best, confirmed = found.evaluator.space, found.proposed, found.confirmed
     if best == space.start:
         yield "Nothing better than the study as it is was found."
@@ -256,12 +261,21 @@ def _notes(study: StudyConfig, design: DesignSection, found: Found) -> Iterator[
     for variable, place in zip(space.variables, best.cuts, strict=True):
         if place in (0, len(variable.values) - 1) and place != variable.start:
             yield f"{variable.name} is at the end of its range: widen it."
-    for before, after in [confirmed.noise]:
-        if max(before, after) > 0.02:
-            yield (
-                f"Fluctuations of the templates make the expected error look smaller by {100 * before:.1f} per cent at "
-                f"the starting point and {100 * after:.1f} per cent at the proposed one: generate more events."
-            )
+    if confirmed.noise is None:
+        yield "There are too few events to tell information from fluctuations of the templates: generate more events."
+    elif max(confirmed.noise) > NOISY:
+        before, after = (f"{100 * noise:.1f}" for noise in confirmed.noise)
+        yield (
+            f"Fluctuations of the templates make the expected error look smaller by {before} per cent at the starting "
+            f"point and {after} per cent at the proposed one: generate more events."
+        )
+    moved = [
+        name
+        for name, at, made in zip(model.names, model.start, (p.injected for p in model.parameters), strict=True)
+        if abs(at - made) > 1e-9 * max(abs(made), 1.0)
+    ]
+    if moved:
+        yield f"[fit] sets {', '.join(moved)} away from where the templates are made; the design looks at the latter."
     if design.events is not None:
         yield f"At most {design.events} events of each component were generated; the study's own numbers count."
     if study.fit.likelihood != "light" and study.fit.template_statistics:

@@ -119,10 +119,11 @@ class DesignConfirmation(Part):
     proposed: tuple[DesignError, ...] = Field(description="Expected errors at the proposed point")
     gain: float = Field(description="Fall of the merit from the starting to the proposed point, relative")
     uncertainty: float = Field(ge=0, description="Statistical error of the gain, from batches of the events")
-    noise: tuple[float, float] = Field(
-        description="Rise of the merit, relative, at both points if information from template fluctuations is taken out"
+    noise: tuple[float, float] | None = Field(
+        description="Rise of the merit, relative, at both points if information from template fluctuations is taken "
+        "out, as it is in the gain; null if there are too few events to do so"
     )
-    confirmed: bool = Field(description="Whether the gain is more than twice its uncertainty")
+    confirmed: bool = Field(description="Whether the gain is more than twice its uncertainty, and noise is known")
 
 
 class Design(Part):

@@ -252,7 +252,8 @@ def _options(study: StudyConfig, design: DesignSection, name: str, fine: Mapping
     """Finest edges of an observable: those of all its axes in the study, each bin cut into parts, and those given."""
     edges = sorted({edge for category in study.categories for edge in category.axes.get(name, ())})
     parts = fine.get(name, 1)
-    cut = {low + k * (high - low) / parts for low, high in pairwise(edges) for k in range(parts)} | set(edges[-1:])
+    parted = (low + k * (high - low) / parts for low, high in pairwise(edges) for k in range(1, parts))
+    cut = set(edges) | {float(f"{edge:.10g}") for edge in parted}
     return tuple(sorted(cut | set(design.axes[name].edges if name in design.axes else ())))
 
 
