@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from ..averages.document import AverageResults
+from ..averages.part import AverageResults
 from ..bias.part import Bias
 from ..design.part import Design
 from ..numbers import percent, signed, with_error

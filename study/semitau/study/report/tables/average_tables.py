@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from semitau.core.true_minus import formatted
 
-from ...averages.document import AverageResults, WhatIf
+from ...averages.part import AverageResults, WhatIf
 from ...averages.summary import OUTCOMES
 from ...averages.tables import RATIOS
 from ...numbers import GAP, digits_for, signed

@@ -203,7 +203,7 @@ def allocation_table(results: Results) -> ReportTable | None:
         ]
         for part in sizing.allocation.samples
     ]
-    return table("sizing_allocation", "Best use of the time", columns, rows)
+    return table("sizing_allocation", "Events of each sample, best shared out", columns, rows)
 
 
 def gain_table(results: Results) -> ReportTable | None:
