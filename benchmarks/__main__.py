@@ -21,6 +21,7 @@ from .fits import fit_figures, toy_figures
 from .machine import machine, share_of_a_core
 from .programs import help_figure, memory_figures
 from .random_numbers import counted
+from .small_components import small_component_figures
 from .timing import interleaved
 
 STUDY = Path(__file__).parents[1] / "configs" / "marlow_small.toml"
@@ -41,6 +42,7 @@ def sections(path: Path, study: StudyConfig, quick: bool) -> Iterator[Section]:
             shape_figure(chains, repetitions),
         ],
     )
+    yield "Small components", lambda: small_component_figures(repetitions)
     if two:
         yield "Two workers", lambda: [scaling_figure(chains, repetitions), build_figure(study, repetitions)]
     yield "Fits", lambda: fit_figures(templates, fits)
