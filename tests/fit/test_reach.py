@@ -119,6 +119,16 @@ def test_generated_events_are_a_wall_too() -> None:
     assert exact.walls["R_D"][0] is None
 
 
+def test_generated_events_that_grow_are_no_wall() -> None:
+    """Variance 35 of 100 events with factor f of data and of generated events: error² of the signal is f (n + 35)."""
+    found = reach(counting(variance=35.0), np.geomspace(0.1, 100, 7), grows=True)
+    assert found.walls["R_D"][0] is None
+    for amount in found.amounts:
+        rows = amount.budgets["R_D"].rows
+        assert rows["statistical"] == pytest.approx(TRUE * np.sqrt((S + B) / amount.factor) / S, rel=0.02)
+        assert rows["template statistics"] == pytest.approx(TRUE * np.sqrt(35.0 / amount.factor) / S, rel=0.02)
+
+
 def test_error_of_the_comparison() -> None:
     """At many events all is Gaussian: (true - compared)² over the sum of both variances."""
     many = counting(signal=S)

@@ -12,7 +12,7 @@ from typing import Literal
 from pydantic import Field, ValidationError
 from semitau.core.errors import InputError, Problem
 
-from .averages.document import AverageResults
+from .averages.part import AverageResults
 from .bias.part import Bias
 from .design.part import Design
 from .inputs.part import Inputs

@@ -84,12 +84,14 @@ def reach(
     true: Mapping[str, float] | None = None,
     against: Mapping[str, tuple[float, float]] | None = None,
     make: Callable[[TemplateSet], Model] = Model,
+    grows: bool = False,
     report: Callable[[str, int, int | None], None] | None = None,
 ) -> Reach:
     """Expected errors and significance for these multiples of the data of the templates.
 
     true : ratio -> its true value; default: that of the templates. against : ratio -> (value, error) to compare with;
-    without it there is no significance. make : the model of a template set. Generated events stay as many as they are.
+    without it there is no significance. make : the model of a template set. grows : generated events grow with the
+    data; else they stay as many as they are.
 
     Raises
     ------
@@ -109,13 +111,16 @@ def reach(
 
     compared = {name: (name,) for name in against} | ({JOINT: tuple(against)} if len(against) > 1 else {})
 
+    def expected_with(factor: float) -> _Expected:
+        return _Expected(make(enlarged(templates, factor, generated=factor if grows else 1.0)), true)
+
     def deviation(factor: float, label: str) -> float:
-        expected = _Expected(make(enlarged(templates, factor)), true)
+        expected = expected_with(factor)
         return expected.deviation({name: against[name] for name in compared[label]}).sigmas
 
     amounts = []
     for done, factor in enumerate(sizes, 1):
-        expected = _Expected(make(enlarged(templates, factor)), true)
+        expected = expected_with(factor)
         found = {
             label: expected.deviation({name: against[name] for name in names}) for label, names in compared.items()
         }

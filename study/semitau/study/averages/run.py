@@ -7,22 +7,26 @@ from dataclasses import dataclass
 from typing import Literal
 
 import numpy as np
+from semitau.core.code_digest import versions
 from semitau.fit.averages.combination import Average, average
-from semitau.fit.averages.compatibility import Prediction, tension
+from semitau.fit.averages.compatibility import Prediction, contour, tension
 from semitau.fit.averages.measurements import sides
 
-from ..run.study_folder import versions
-from .document import (
+from .measurement_file import AverageInput
+from .part import (
     AveragedRatio,
     AverageInputPart,
     AverageResults,
     PredictedPart,
+    RegionPart,
     SourcePart,
     TensionPart,
     WhatIf,
 )
-from .measurement_file import AverageInput
 from .tables import RATIOS
+
+REGIONS = (0.6827, 0.9545, 0.9973)
+"""Probabilities of the regions that are told."""
 
 
 @dataclass(frozen=True)
@@ -67,9 +71,19 @@ def averaged(given: AverageInput) -> Averaged:
         prediction=tuple(PredictedPart(ratio=r, value=value, error=error) for r, (value, error) in predicted.items()),
         prediction_correlation=0.0 if given.prediction is None else given.prediction.correlation,
         tension=_tension(found, given.prediction),
+        regions=tuple(_regions(found)),
         planned=tuple(_what_ifs(found, given)),
     )
     return Averaged(found, results)
+
+
+def _regions(found: Average) -> Iterator[RegionPart]:
+    if len(found.ratios) != 2:
+        return
+    columns = [found.ratios.index(name) for name in sorted(found.ratios, key=list(RATIOS).index)]
+    for probability in REGIONS:
+        outline = contour(found, probability)[:, columns]
+        yield RegionPart(probability=probability, outline=tuple((float(x), float(y)) for x, y in outline))
 
 
 def _ratios(found: Average) -> tuple[AveragedRatio, ...]:

@@ -11,7 +11,7 @@ from semitau.core.true_minus import formatted
 
 from ..numbers import GAP, digits_for, percent, shortened, signed, with_error
 from ..terminal.summary import plain_table
-from .document import AveragedRatio, AverageResults, TensionPart
+from .part import AveragedRatio, AverageResults, TensionPart
 from .tables import RATIOS
 
 FORMS = {"linear": "best linear unbiased estimate", "likelihood": "likelihood with asymmetric errors"}

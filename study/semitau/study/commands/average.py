@@ -29,7 +29,7 @@ def command(call: Invocation, file: Path, output: Path | None) -> None:
     given = read_average(file)
     found = averaged(given)
     folder = output or Path(given.section.output)
-    picture = saved_picture(found.average, found.results, folder)
+    picture = saved_picture(found.results, folder)
     write_whole(folder / "average.json", found.results.text())
     call.terminal.show(*average_summary(found.results))
     call.terminal.show("", f"Results and picture: {folder / 'average.json'}, {folder / picture.name}.svg, .png")

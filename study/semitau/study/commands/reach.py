@@ -24,6 +24,12 @@ from ..terminal.invocation import Invocation, shared_options
     "--against", multiple=True, metavar="NAME=VALUE:ERROR", help="What the ratio is compared with; may be repeated."
 )
 @click.option("--pairs", type=click.FloatRange(min=1.0), help="B pairs of the templates; default: of their study.")
+@click.option(
+    "--luminosity",
+    type=click.FloatRange(min=0.0, min_open=True),
+    help="Integrated luminosity in fb⁻¹, instead of pairs.",
+)
+@click.option("--growing", is_flag=True, help="Generated events grow with the data.")
 @fit_choices
 @click.option("--output", type=click.Path(path_type=Path), help="Folder for the picture; without it none is drawn.")
 @shared_options
@@ -34,6 +40,8 @@ def command(
     true: tuple[str, ...],
     against: tuple[str, ...],
     pairs: float | None,
+    luminosity: float | None,
+    growing: bool,
     choices: FitChoices,
     output: Path | None,
 ) -> None:
@@ -42,22 +50,22 @@ def command(
     The events of TEMPLATES are multiplied, the generated ones stay as many as they are. Everything is from expected
     sets: --seed and --workers change nothing.
     """
+    from semitau.core.errors import InputError, Problem
     from semitau.core.template_file import read_templates
-    from semitau.fit.uncertainty.prospects import reach
 
-    from ..parts.reach_parts import axis_of, reach_document, reach_picture, reach_summary, read_compared, read_true
-    from ..run.fitting import read_factors
+    from ..pictures.reach import CAPTION, reach_curves
+    from ..reach.options import asked_reach
+    from ..reach.run import reach_of
+    from ..terminal.reach_summary import reach_summary
 
-    at, compared, multiples = read_true(true), read_compared(against), read_factors(factors)
+    if pairs is not None and luminosity is not None:
+        raise InputError(Problem("pairs and luminosity are two axes", "--luminosity", remedy="Leave one of them out."))
+    asked = asked_reach(factors, true, against, pairs, luminosity, growing)
     read = read_templates(templates)
-    axis = axis_of(read, pairs)
     with call.terminal.progress() as report:
-        found = reach(read, multiples, true=at, against=compared, make=choices.model, report=report)
-    labels = {parameter.name: parameter.label for parameter in read.parameters}
-    call.terminal.show(*reach_summary(found, labels, axis))
+        part = reach_of(read, asked, choices.model, report)
+    call.terminal.show(*reach_summary(part))
     if output is not None:
-        reach_picture(found, labels, axis).save(
-            output, "reach", "Reach", "Errors by source and expected significance against the amount of data."
-        )
+        reach_curves(part).save(output, "reach", "Reach", CAPTION)
         call.terminal.show("", f"Picture: {output / 'reach.svg'}, {output / 'reach.png'}")
-    call.terminal.result(reach_document(found, axis))
+    call.terminal.result(part.model_dump(mode="json"))

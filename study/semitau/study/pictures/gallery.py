@@ -8,6 +8,8 @@ from pathlib import Path
 
 from matplotlib import rc_context
 
+from ..averages.picture import average_picture
+from ..averages.picture import caption as average_caption
 from ..numbers import counted
 from ..results import Results
 from .bias_matrix import bias_matrix
@@ -17,6 +19,8 @@ from .design import design_drawings
 from .linearity import linearity
 from .nuisance_strips import nuisance_strips
 from .projections import stacked_projections
+from .reach import CAPTION as REACH_CAPTION
+from .reach import reach_curves
 from .sheet import Picture, Sheet
 from .sizing import sizing_drawings
 from .style import RC, component_colours
@@ -97,6 +101,10 @@ def _drawings(results: Results) -> Iterator[Drawing]:
         yield from sizing_drawings(results.sizing)
     if results.design is not None:
         yield from design_drawings(results.design)
+    if results.reach is not None:
+        yield "reach", "Reach", REACH_CAPTION, partial(reach_curves, results.reach)
+    if results.average is not None:
+        yield "average", "Average", average_caption(results.average), partial(average_picture, results.average)
     yield from _projections(results)
     if results.fit.correlation:
         yield (

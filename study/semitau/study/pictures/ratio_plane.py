@@ -23,6 +23,7 @@ Interval = tuple[float, float, float]
 MEASUREMENT_HUES = ("#0072b2", "#009e73", "#cc79a7", "#e69f00", "#56b4e9", "#727b84")
 PREDICTION_HUE = "#d55e00"
 REGION_TINTS = ("#9aa6b2", "#ccd4dc", "#e9edf1")
+PLANNED_DASHES = (0, (3, 1.5))
 SIDE, LEFT, FOOT, NAMES, ROWS, VALUES, ROW = 4.6, 0.75, 0.55, 2.05, 2.3, 1.6, 0.27
 
 
@@ -40,7 +41,10 @@ class Drawn:
 
 @dataclass(frozen=True)
 class RatioPlane:
-    """What is drawn. labels : of the ratios, one or two. regions : confidence in words -> contour of the average."""
+    """What is drawn. labels : of the ratios, one or two. regions : confidence in words -> contour of the average.
+
+    planned : the average with measurements that do not exist yet, dashed.
+    """
 
     heading: str
     note: str
@@ -49,6 +53,7 @@ class RatioPlane:
     average: Drawn
     regions: Mapping[str, NDArray[np.float64]]
     prediction: Drawn | None
+    planned: Sequence[Drawn] = ()
 
 
 def ratio_plane(plane: RatioPlane) -> Sheet:
@@ -76,7 +81,9 @@ def ratio_plane(plane: RatioPlane) -> Sheet:
 
 def _rows_of(plane: RatioPlane, ratio: int) -> list[tuple[int, Drawn]]:
     return [(number, drawn) for number, drawn in enumerate(plane.measurements, 1) if ratio in drawn.intervals] + [
-        (0, drawn) for drawn in (plane.average, plane.prediction) if drawn is not None and ratio in drawn.intervals
+        (0, drawn)
+        for drawn in (plane.average, *plane.planned, plane.prediction)
+        if drawn is not None and ratio in drawn.intervals
     ]
 
 
@@ -113,6 +120,9 @@ def _draw_plane(axes: Axes, plane: RatioPlane) -> None:
                 _mark(axes, number, (value, along), axes.get_xaxis_transform())
             else:
                 _mark(axes, number, (along, value), axes.get_yaxis_transform())
+    for planned in plane.planned:
+        if planned.outline is not None:
+            axes.plot(*planned.outline.T, color=INK, linewidth=1.0, linestyle=PLANNED_DASHES, zorder=5)
     best = plane.average.intervals
     axes.plot(best[0][1], best[1][1], marker="+", color=INK, markersize=9, markeredgewidth=1.4, zorder=6)
     if plane.prediction is not None:
@@ -141,9 +151,11 @@ def _draw_rows(axes: Axes, plane: RatioPlane, ratio: int, rows: Sequence[tuple[i
     names, values = -0.02, 1.04
     for y, (number, drawn) in enumerate(rows):
         low, value, high = drawn.intervals[ratio]
-        colour = _hue(number) if number else INK if drawn is plane.average else PREDICTION_HUE
-        weight = "normal" if number else "bold"
-        axes.plot([low, high], [y, y], color=colour, linewidth=1.4 if number else 2.0, zorder=3)
+        planned = any(drawn is other for other in plane.planned)
+        colour = _hue(number) if number else PREDICTION_HUE if drawn is plane.prediction else INK
+        weight = "normal" if number or planned else "bold"
+        line = {"linewidth": 1.4} if number else {"linewidth": 2.0, "linestyle": PLANNED_DASHES if planned else "solid"}
+        axes.plot([low, high], [y, y], color=colour, zorder=3, **line)
         axes.plot(value, y, marker="o" if number else "D", color=colour, markersize=4, zorder=4)
         across = axes.get_yaxis_transform()
         axes.text(

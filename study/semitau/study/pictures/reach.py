@@ -2,114 +2,105 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
-
 from matplotlib import rc_context
 from matplotlib.axes import Axes
 from matplotlib.ticker import FuncFormatter, NullFormatter
 
+from ..reach.axis import MULTIPLES
+from ..reach.part import Reach, ReachDeviation
 from .sheet import Panels, Sheet
 from .style import INK, QUIET, RC, RULE, ratio_colour
 
 SOURCE_LINES = ("#009e73", "#cc79a7", "#e69f00", "#56b4e9", "#0072b2", "#727b84")
 DASHES = ("solid", (0, (5, 2)), (0, (1, 1.2)), (0, (5, 1.5, 1, 1.5)))
+CAPTION = (
+    "Expected error of each ratio by source against the amount of data; a dashed line marks where the finite data "
+    "matter as much as all else. Where ratios are compared: expected significance, and the chances to see 3 and 5 σ."
+)
 
 
-@dataclass(frozen=True)
-class Errors:
-    """One ratio: total error and source -> error at each place; wall: place where data matter less than all else."""
-
-    label: str
-    total: Sequence[float]
-    rows: Mapping[str, Sequence[float]]
-    wall: float | None
-
-
-@dataclass(frozen=True)
-class Significance:
-    """Expected standard deviations at each place, the chances of 3 and 5, and the ratio's number; None for both."""
-
-    label: str
-    sigmas: Sequence[float]
-    chances: Sequence[Sequence[float]]
-    ratio: int | None
-
-
-@dataclass(frozen=True)
-class Curves:
-    """What is drawn, against `places` on an axis called `label`."""
-
-    label: str
-    places: Sequence[float]
-    errors: Sequence[Errors]
-    significance: Sequence[Significance]
-
-
-def reach_curves(curves: Curves) -> Sheet:
+def reach_curves(part: Reach) -> Sheet:
     """A panel with errors a ratio; then, if there is a deviation, its significance and the chance to see it."""
-    seen = bool(curves.significance)
-    panels = Panels(len(curves.errors) + 2 * seen, 2, width=4.0, height=2.8, left=0.8, foot=0.55, head=0.3)
+    seen = bool(part.needed)
+    panels = Panels(len(part.ratios) + 2 * seen, 2, width=4.0, height=2.8, left=0.8, foot=0.55, head=0.3)
+    growing = "; generated events grow with the data" if part.generated == "grows" else ""
     with rc_context(RC):
-        sheet = Sheet(*panels.sheet_size, "Reach", "expected sets: medians, without fluctuations")
-        for number, errors in enumerate(curves.errors):
+        sheet = Sheet(*panels.sheet_size, "Reach", f"expected sets: medians, without fluctuations{growing}")
+        for number in range(len(part.ratios)):
             axes = sheet.axes(*panels.corner(number), panels.width, panels.height, xscale="log", yscale="log")
-            _draw_errors(axes, curves, errors, ratio_colour(number))
+            _draw_errors(axes, part, number)
         if seen:
-            first = len(curves.errors)
-            for number, draw in enumerate((_draw_sigmas, _draw_chances), first):
+            for number, draw in enumerate((_draw_sigmas, _draw_chances), len(part.ratios)):
                 axes = sheet.axes(*panels.corner(number), panels.width, panels.height, xscale="log")
-                draw(axes, curves)
+                draw(axes, part)
     return sheet
 
 
-def _draw_errors(axes: Axes, curves: Curves, errors: Errors, colour: str) -> None:
-    axes.plot(curves.places, errors.total, color=colour, linewidth=2.4, label="total")
-    lowest = 0.02 * min(errors.total)
-    shown = {name: row for name, row in errors.rows.items() if max(row) > lowest}
-    for number, (name, row) in enumerate(shown.items()):
-        colour_of_row = INK if number == 0 else SOURCE_LINES[(number - 1) % len(SOURCE_LINES)]
-        axes.plot(
-            curves.places, row, color=colour_of_row, linewidth=1.1, linestyle=DASHES[number % len(DASHES)], label=name
-        )
-    if errors.wall is not None:
-        axes.axvline(errors.wall, color=QUIET, linewidth=0.8, linestyle=(0, (2, 2)))
-    axes.set_xlabel(curves.label)
-    axes.set_ylabel(f"error of {errors.label}")
-    axes.set_xlim(curves.places[0], curves.places[-1])
-    axes.set_ylim(max(0.5 * min(min(row) for row in shown.values()), 0.02 * min(errors.total)), 1.5 * max(errors.total))
+def _places(part: Reach, axes: Axes) -> list[float]:
+    places = [amount.amount for amount in part.amounts]
+    axes.set_xlabel("data, relative to the templates" if part.unit == MULTIPLES else part.unit)
+    axes.set_xlim(places[0], places[-1])
+    return places
+
+
+def _draw_errors(axes: Axes, part: Reach, number: int) -> None:
+    ratio, places = part.ratios[number], _places(part, axes)
+    errors = [next(error for error in amount.errors if error.ratio == ratio.ratio) for amount in part.amounts]
+    total = [error.total for error in errors]
+    rows = {source: [error.sources[source] for error in errors] for source in errors[0].sources}
+    axes.plot(places, total, color=ratio_colour(number), linewidth=2.4, label="total")
+    lowest = 0.02 * min(total)
+    shown = {name: row for name, row in rows.items() if max(row) > lowest}
+    for line, (name, row) in enumerate(shown.items()):
+        colour = INK if line == 0 else SOURCE_LINES[(line - 1) % len(SOURCE_LINES)]
+        axes.plot(places, row, color=colour, linewidth=1.1, linestyle=DASHES[line % len(DASHES)], label=name)
+    wall = next((wall.factor for wall in part.walls if wall.ratio == ratio.ratio), None)
+    if wall is not None:
+        axes.axvline(wall * places[0] / part.amounts[0].factor, color=QUIET, linewidth=0.8, linestyle=(0, (2, 2)))
+    axes.set_ylabel(f"error of {ratio.label}")
+    axes.set_ylim(max(0.5 * min(min(row) for row in shown.values()), 0.02 * min(total)), 1.5 * max(total))
     axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
     axes.yaxis.set_minor_formatter(NullFormatter())
     axes.legend(loc="lower left", fontsize=7, ncols=2, borderaxespad=0.1, columnspacing=1.2, handlelength=2.4)
 
 
-def _draw_sigmas(axes: Axes, curves: Curves) -> None:
+def _lines(part: Reach) -> list[tuple[str, str, list[ReachDeviation]]]:
+    """Label, colour and deviations of everything that is compared."""
+    colours = {ratio.ratio: ratio_colour(number) for number, ratio in enumerate(part.ratios)}
+    return [
+        (
+            needed.label if needed.name in colours else "together",
+            colours.get(needed.name, INK),
+            [next(seen for seen in amount.deviations if seen.name == needed.name) for amount in part.amounts],
+        )
+        for needed in part.needed
+    ]
+
+
+def _draw_sigmas(axes: Axes, part: Reach) -> None:
+    places, lines = _places(part, axes), _lines(part)
     for level in (3.0, 5.0):
         axes.axhline(level, color=RULE, linewidth=0.8)
-        axes.text(curves.places[0], level, f" {level:g} σ", color=QUIET, fontsize=7.5, va="bottom")
-    for line in curves.significance:
-        colour = INK if line.ratio is None else ratio_colour(line.ratio)
-        if len(curves.significance) == 1:  # bands of several would hide each other
-            low, high = [max(s - 1.0, 0.0) for s in line.sigmas], [s + 1.0 for s in line.sigmas]
-            axes.fill_between(curves.places, low, high, color=colour, alpha=0.12, linewidth=0)
-        axes.plot(curves.places, line.sigmas, color=colour, linewidth=1.8, label=line.label)
-    axes.set_xlabel(curves.label)
+        axes.text(places[0], level, f" {level:g} σ", color=QUIET, fontsize=7.5, va="bottom")
+    for label, colour, seen in lines:
+        sigmas = [deviation.sigmas for deviation in seen]
+        if len(lines) == 1:  # bands of several would hide each other
+            low, high = [max(s - 1.0, 0.0) for s in sigmas], [s + 1.0 for s in sigmas]
+            axes.fill_between(places, low, high, color=colour, alpha=0.12, linewidth=0)
+        axes.plot(places, sigmas, color=colour, linewidth=1.8, label=label)
     axes.set_ylabel("expected standard deviations")
-    axes.set_xlim(curves.places[0], curves.places[-1])
-    axes.set_ylim(0.0, 1.05 * max(5.5, *(max(line.sigmas) for line in curves.significance)))
+    axes.set_ylim(0.0, 1.05 * max(5.5, *(max(deviation.sigmas for deviation in seen) for _, _, seen in lines)))
     axes.legend(loc="upper left", bbox_to_anchor=(0.1, 1.0))
 
 
-def _draw_chances(axes: Axes, curves: Curves) -> None:
-    for line in curves.significance:
-        colour = INK if line.ratio is None else ratio_colour(line.ratio)
-        for chances, style, level in zip(line.chances, ("solid", (0, (4, 2))), ("3", "5"), strict=True):
+def _draw_chances(axes: Axes, part: Reach) -> None:
+    places = _places(part, axes)
+    for label, colour, seen in _lines(part):
+        chances = {"3": [found.evidence for found in seen], "5": [found.discovery for found in seen]}
+        for (level, row), style in zip(chances.items(), ("solid", (0, (4, 2))), strict=True):
             axes.plot(
-                curves.places, [100.0 * chance for chance in chances], color=colour, linestyle=style,
-                label=f"{line.label}: {level} σ",
-            )  # fmt: skip
-    axes.set_xlabel(curves.label)
+                places, [100.0 * chance for chance in row], color=colour, linestyle=style, label=f"{label}: {level} σ"
+            )
     axes.set_ylabel("chance to see it, per cent")
-    axes.set_xlim(curves.places[0], curves.places[-1])
     axes.set_ylim(0.0, 102.0)
     axes.legend(loc="upper left", fontsize=7)

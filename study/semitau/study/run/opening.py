@@ -13,9 +13,13 @@ def open_study(path: Path, seed: int | None = None) -> StudyConfig:
 
     Raises
     ------
-    InputError : every problem of the file, with line, key, value and remedy.
+    InputError : every problem of the file, with line, key, value and remedy; then those of the file of [average].
     """
     study = read_study(path)
+    if study.average is not None:
+        from ..averages.checking import checked_average
+
+        checked_average(study)
     if seed is None:
         return study
     section = study.study.model_copy(update={"seed": seed})
