@@ -19,6 +19,7 @@ from semitau.gen.decays.double_charm import double_charm_chains
 from semitau.gen.study_file.fractions import BranchingFractionTables
 from semitau.gen.study_file.reader import read_study
 from semitau.gen.study_file.study import StudyConfig
+from semitau.gen.templates.build import build_templates
 from semitau.gen.templates.component_plan import plan_channels
 
 from .small_study import TEXT
@@ -310,3 +311,74 @@ def test_a_varied_share_of_double_charm_does_not_pass_one(tmp_path: Path) -> Non
         InputError, match=r"variation strange: the varied share of cc passes 1 \(got .* × 1.99, allowed"
     ):
         plan_channels(study_with(tmp_path, DOUBLE_CHARM + variation.format(0.99)))
+
+
+# --- variations of fractions ----------------------------------------------------------------------------------------
+
+CHANGE = '[[variation]]\nname = "br"\nkind = "branching_fraction"\nparticle = "{}"\ndecay = "{}"\n'
+
+
+def factors(study: StudyConfig, sign: int) -> dict[str, float]:
+    """Of the variation "br", by chain; 1 where it does not act."""
+    found = {}
+    for plan in plan_channels(study):
+        factor = plan.variations.factors.get(("br", sign))
+        found[f"{plan.mode}: {plan.channel.name}"] = 1.0 if factor is None else float(factor[0])
+    return found
+
+
+def test_a_varied_tau_decay(tmp_path: Path) -> None:
+    """By the error that is given, 2% of tau -> mu: the chains with it and no others; those of D_s -> tau too."""
+    text = (
+        DOUBLE_CHARM + CHANGE.format("tau", "mu") + "[branching_fractions]\ntau.mu = { value = 0.17, error = 0.0034 }"
+    )
+    study = study_with(tmp_path, text)
+    for sign in (1, -1):
+        for name, factor in factors(study, sign).items():
+            assert factor == pytest.approx(1.0 + 0.02 * sign if "tau -> mu" in name else 1.0, abs=1e-12)
+
+
+def test_a_varied_vector_decay(tmp_path: Path) -> None:
+    """D*+ -> D0 pi+ up by 1%: the others go down by 0.677 x 1% / 0.323, and the sum stays."""
+    study = study_with(tmp_path, CHANGE.format("D*+", "D0 pi+") + "relative = 0.01\n")
+    moved = factors(study, 1)
+    for plan in plan_channels(study):
+        wanted = 1.0
+        if plan.channel.vector == "D*+":
+            wanted = 1.01 if plan.channel.soft == "charged_pion" else 1.0 - 0.01 * 0.677 / 0.323
+        assert moved[f"{plan.mode}: {plan.channel.name}"] == pytest.approx(wanted, rel=1e-12)
+
+
+def test_a_varied_fraction_in_templates(tmp_path: Path) -> None:
+    """B(tau -> mu) up by 5%: the signal with a muon grows so, in a template that has both leptons' categories."""
+    study = study_with(tmp_path, CHANGE.format("tau", "mu") + "relative = 0.05\n")
+    templates = build_templates(study, workers=1).templates.templates
+    template = templates["D0_mu", "D_tau"]
+    assert template.plus["br"] == pytest.approx(1.05 * template.nominal, rel=1e-12)
+    assert template.minus["br"] == pytest.approx(0.95 * template.nominal, rel=1e-12)
+    assert "br" not in templates["D0_mu", "D_light"].plus
+
+
+@pytest.mark.parametrize(
+    ("change", "message"),
+    [
+        (CHANGE.format("taus", "mu"), ".particle: names no particle"),
+        (CHANGE.format("tau", "muon"), "names no decay of tau (got muon, allowed e, mu, pi"),
+        (
+            CHANGE.format("tau", "pi") + "relative = 0.1\n",
+            "acts on nothing: no component has this decay (got tau → pi)",
+        ),
+        (CHANGE.format("B+", "D l") + "relative = 0.1\n", 'has no value to change (got B+ → D l). Give "B+"."D l" in'),
+        (CHANGE.format("tau", "mu"), "does not say how far it goes (got tau → mu). Add relative, or an error to"),
+        (
+            CHANGE.format("D*+", "D0 pi+") + "relative = 0.6\n",
+            "leaves the range of a branching fraction (got 0.677 × 1.6 and 0.677 × 0.4, allowed above 0 and below 1)",
+        ),
+    ],
+)
+def test_messages_of_varied_fractions(tmp_path: Path, change: str, message: str) -> None:
+    with pytest.raises(InputError) as error:
+        study_with(tmp_path, change)
+    (problem,) = error.value.problems
+    assert "variation[br]" in str(problem)
+    assert message.removeprefix(".particle: ") in str(problem)

@@ -95,6 +95,13 @@ class BranchingFractions:
         found = self.one(particle, final)
         return 0.0 if found is None else found.value
 
+    def relative_error(self, particle: str, final: str, given: float | None = None) -> float:
+        """`given`, or the error of a fraction over its value; 0 if there is none."""
+        found = self.one(particle, final)
+        if given is not None:
+            return given
+        return found.error / found.value if found is not None and found.value > 0.0 else 0.0
+
     def moved(self, particle: str, final: str, value: float) -> BranchingFractions:
         """With another value of one fraction; the other decays take up the difference in proportion if they all sum to
         one."""

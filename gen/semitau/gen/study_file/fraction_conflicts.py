@@ -10,6 +10,7 @@ from ..decays.double_charm import class_of, source_of
 from ..decays.orbital_states import CHARM_STATES
 from .fractions import BranchingFractionTables
 from .sections import Conflict, Place, Sections
+from .variations import BranchingFractionChange
 
 TABLE = "branching_fractions"
 TOLERANCE = 1e-6
@@ -24,6 +25,7 @@ def fraction_conflicts(sections: Sections) -> Iterator[Conflict]:
         yield from _sums(particle, fractions)
     if {"mode", "double_charm"} <= sections.whole:
         yield from _idle(sections, sections.fractions)
+        yield from _changes(sections, sections.fractions)
 
 
 def _sums(particle: str, fractions: BranchingFractions) -> Iterator[Conflict]:
@@ -78,6 +80,28 @@ def _idle(sections: Sections, tables: BranchingFractionTables) -> Iterator[Confl
         if not any("tau" in mode.leptons and family in mode.charm for mode in sections.modes.values()):
             what = "acts on nothing: no mode has this with a tau"
             yield Conflict((TABLE, "R", family), what, remedy=remedy)
+
+
+def _changes(sections: Sections, tables: BranchingFractionTables) -> Iterator[Conflict]:
+    """Variations of fractions: of what there is, by how much, and not beyond one."""
+    used, fractions = _used(sections, tables), tables.fractions
+    for i, variation in sections.variations.items():
+        if not isinstance(variation, BranchingFractionChange):
+            continue
+        particle, final, place = variation.particle, variation.decay, ("variation", i)
+        one, relative = fractions.one(particle, final), fractions.relative_error(particle, final, variation.relative)
+        got = f"{particle} → {final}"
+        if particle not in used or (particle not in COMPLETE and final not in used[particle]):
+            yield Conflict((*place, "decay"), "acts on nothing: no component has this decay", got)
+        elif one is None or one.value == 0.0:
+            remedy = f'Give "{particle}"."{final}" in [branching_fractions].'
+            yield Conflict((*place, "decay"), "has no value to change", got, remedy=remedy)
+        elif relative == 0.0:
+            remedy = f'Add relative, or an error to "{particle}"."{final}" in [branching_fractions].'
+            yield Conflict(place, "does not say how far it goes", got, remedy=remedy)
+        elif one.value * (1.0 + relative) >= 1.0 or relative >= 1.0:
+            shown = f"{one.value:g} × {1.0 + relative:.4g} and {one.value:g} × {1.0 - relative:.4g}"
+            yield Conflict(place, "leaves the range of a branching fraction", shown, "above 0 and below 1")
 
 
 def _used(sections: Sections, tables: BranchingFractionTables) -> Mapping[str, set[str]]:

@@ -55,6 +55,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
         "FormFactorDirection",
         "FormFactorDirections",
         "ComponentFraction",
+        "BranchingFractionChange",
         "DoubleCharmShare",
         "ProductionRatio",
         "SoftPionEfficiency",

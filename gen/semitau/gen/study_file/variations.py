@@ -9,9 +9,10 @@ from typing import Annotated, ClassVar, Literal
 
 from pydantic import Field, model_validator
 
+from ..decays.branching_fractions import TABLES
 from .double_charm import Beside, Source
 from .names import CharmFamily, LightLepton, SoftKind
-from .rules import Count, Identifier, Positive, Table, Text, broken
+from .rules import Count, Identifier, Positive, Table, Text, broken, suggestion
 
 FormFactorGroup = Literal["D", "Dst", "Dss"]
 _Relative = Annotated[Positive, Field(lt=1)]
@@ -86,6 +87,34 @@ class ComponentFraction(_Named):
         default=None, description="modes it acts on; all with this and other charm if left out"
     )
     relative: _Relative = Field(description="one standard deviation")
+
+
+class BranchingFractionChange(_Named):
+    """One branching fraction, as [branching_fractions] names it: `particle = "tau"`, `decay = "mu"`.
+
+    The other decays take up the difference if those of the particle sum to one. Yields follow, where the fit has no
+    parameter that takes them up.
+    """
+
+    default_group: ClassVar[str] = "branching fractions"
+
+    kind: Literal["branching_fraction"]
+    particle: Text = Field(description="what decays")
+    decay: Text = Field(description="final state")
+    relative: _Relative | None = Field(
+        default=None, description="one standard deviation; the error in [branching_fractions] or the tables if left out"
+    )
+
+    @model_validator(mode="after")
+    def _known(self) -> BranchingFractionChange:
+        if self.particle not in TABLES:
+            near = suggestion(self.particle, TABLES)
+            raise broken("names no particle of [branching_fractions]", ", ".join(TABLES), near, got=self.particle)
+        if self.decay not in TABLES[self.particle]:
+            words = tuple(TABLES[self.particle])
+            near = suggestion(self.decay, words)
+            raise broken(f"names no decay of {self.particle}", ", ".join(words), near, got=self.decay)
+        return self
 
 
 class DoubleCharmShare(_Named):
@@ -173,6 +202,7 @@ SingleVariation = (
     FormFactor
     | FormFactorDirection
     | ComponentFraction
+    | BranchingFractionChange
     | DoubleCharmShare
     | ProductionRatio
     | SoftPionEfficiency
@@ -188,6 +218,7 @@ Variation = Annotated[
     | FormFactorDirection
     | FormFactorDirections
     | ComponentFraction
+    | BranchingFractionChange
     | DoubleCharmShare
     | ProductionRatio
     | SoftPionEfficiency

@@ -8,15 +8,17 @@ from dataclasses import dataclass
 import numpy as np
 from semitau.core.errors import InputError, Problem
 
+from ..decays.branching_fractions import BranchingFractions
 from ..decays.chains import Channel, channels, semileptonic_branching_fraction
 from ..decays.decay import Decay, WilsonCoefficients, charm_name
-from ..decays.double_charm import AnyChain, double_charm_chains
+from ..decays.double_charm import AnyChain, DoubleCharmChain, double_charm_chains
 from ..study_file.components import Mode
 from ..study_file.double_charm import DoubleCharm
 from ..study_file.names import CHARM_OF_RATIO, FORM_FACTORS_OF
 from ..study_file.parameter_names import component_name, split_by_parent
 from ..study_file.study import StudyConfig
 from .double_charm_variations import double_charm_variations
+from .fraction_changes import fraction_changes, with_fractions
 from .variations import ChannelVariations, channel_variations, check_shares
 
 LEAST_EVENTS = 256
@@ -53,11 +55,15 @@ def plan_channels(study: StudyConfig) -> tuple[ChannelPlan, ...]:
 def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     sets = {name: study.form_factor_set(name) for name in ("D", "Dst", "Dss")}
     given = study.wilson.by_lepton
-    chains = channels(
-        mode.parents, mode.charm, mode.leptons, tau_to=mode.tau_to, form_factors=sets,
-        wilson=given.tau, tensor=given.tensor, light={"e": given.e, "mu": given.mu},
-        fractions=study.fractions,
-    )  # fmt: skip
+
+    def chains_with(fractions: BranchingFractions) -> tuple[Channel, ...]:
+        return channels(
+            mode.parents, mode.charm, mode.leptons, tau_to=mode.tau_to, form_factors=sets,
+            wilson=given.tau, tensor=given.tensor, light={"e": given.e, "mu": given.mu},
+            fractions=fractions,
+        )  # fmt: skip
+
+    chains = chains_with(study.fractions)
     expected = np.array([expected_decays(study, chain) for chain in chains])
     expected *= np.array([injected_factor(study, mode, chain.parent) for chain in chains])
     _check_expected(expected, f"mode {mode.name}")
@@ -71,26 +77,32 @@ def _plan_mode(study: StudyConfig, mode: Mode) -> list[ChannelPlan]:
     leptons = [category.lepton for category in study.categories]
     for mine in shares.values():
         check_shares(study, mode.name, mine)
-    plans = []
-    for name, chain, n_expected, n in zip(names, chains, expected, events, strict=True):
+    plans, changes = [], fraction_changes(study, chains_with)
+    for k, (name, chain, n_expected, n) in enumerate(zip(names, chains, expected, events, strict=True)):
         if n_expected > 0.0:
             variations = channel_variations(study, mode.name, chain, shares[name], leptons)
+            variations = with_fractions(variations, changes, k, len(leptons))
             plans.append(ChannelPlan(name, mode.name, chain, float(n_expected), int(n), variations))
     return plans
 
 
 def _plan_double_charm(study: StudyConfig, item: DoubleCharm) -> list[ChannelPlan]:
-    chains = double_charm_chains(
-        item.parents, item.charm, item.beside, item.leptons,
-        form_factors=study.form_factor_set("Dst"), fractions=study.fractions,
-    )  # fmt: skip
+    def chains_with(fractions: BranchingFractions) -> tuple[DoubleCharmChain, ...]:
+        return double_charm_chains(
+            item.parents, item.charm, item.beside, item.leptons,
+            form_factors=study.form_factor_set("Dst"), fractions=fractions,
+        )  # fmt: skip
+
+    chains, changes = chains_with(study.fractions), fraction_changes(study, chains_with)
     expected = np.array([expected_decays(study, chain) for chain in chains])
     _check_expected(expected, f"double_charm {item.name}")
     whole = [(chain, float(n)) for chain, n in zip(chains, expected, strict=True)]
     events, variations = shared_out(item.events, expected), double_charm_variations(study, item.name, whole)
     return [
-        ChannelPlan(item.name, item.name, chain, n_expected, n, acting)
-        for (chain, n_expected), n, acting in zip(whole, events, variations, strict=True)
+        ChannelPlan(
+            item.name, item.name, chain, n_expected, n, with_fractions(acting, changes, k, len(study.categories))
+        )
+        for k, ((chain, n_expected), n, acting) in enumerate(zip(whole, events, variations, strict=True))
         if n_expected > 0.0
     ]
 
