@@ -25,6 +25,9 @@ Report = Callable[[str, int, int | None], None]
 SEARCH, CONFIRMATION = "design", "confirmation"
 """Names of the random streams: independent of each other and of the templates."""
 
+ROUNDS = 4
+"""Binnings and cuts in turn, at most so often: the best cuts move with the axes."""
+
 
 @dataclass(frozen=True)
 class Choice:
@@ -104,14 +107,18 @@ def search(
     budget = Budget(design.points, design.points, report)
     best = best_cuts(evaluator, space.start, study.study.seed, budget)
     compared: tuple[Choice, ...] = ()
-    if design.binning:
+    looked_at = 0
+    for number in range(ROUNDS if design.binning else 0):
         best, compared = _best_binnings(evaluator, design, best, report)
-        best = best_cuts(evaluator, best, study.study.seed, budget)
+        looked_at += sum(len(choice.merged.bins) for choice in compared)
+        moved = best if number == ROUNDS - 1 else best_cuts(evaluator, best, study.study.seed, budget)
+        if moved.cuts == best.cuts:
+            break  # what was compared was compared at the proposed cuts
+        best = moved
     if not evaluator.merit(best) < evaluator.merit(space.start) * (1.0 - GAIN):
         best = space.start
     confirmed = _confirm(study, design, evaluator, best, report)
-    looked_at = budget.used + sum(len(choice.merged.bins) for choice in compared)
-    return Found(evaluator, best, confirmed, compared, looked_at, evaluator.grid.generated)
+    return Found(evaluator, best, confirmed, compared, budget.used + looked_at, evaluator.grid.generated)
 
 
 def _best_binnings(
