@@ -14,22 +14,20 @@ from .form_factor_set import FormFactorSet
 from .lepton_couplings import Given, LeptonCouplings
 from .orbital_states import CHARGED_PION_SHARE, ETA_NEUTRAL_SHARE, PION_PAIR_SHARES, CharmState
 from .rates import observables, ratio
+from .seen_charm import SeenCharm
 
 PION_MASS = {"none": 0.0, "charged": MASS["pi+"], "neutral": MASS["pi0"], "eta": MASS["eta"]}
-SOFT_MASS = {"none": 0.0, "charged_pion": MASS["pi+"], "neutral_pion": MASS["pi0"], "photon": 0.0}
 
 
 @dataclass(frozen=True)
-class Channel:
+class Channel(SeenCharm):
     """One fully specified decay chain of a B+ or B0; charge conjugation is implied.
 
     decay : the semileptonic decay, with its form factors.
     tau_to : decay of the tau: "e", "mu", "pi", "rho" (pi- pi0), "a1" (pi- pi- pi+) or "a1_1prong" (pi- pi0 pi0); None
         if the B decay gave no tau.
     bachelor : light meson beside the D(*) of a D** or a continuum: "none", "charged" or "neutral" (pions), "eta".
-    vector : species of the D*, "D*+" or "D*0"; "" if there is none.
-    soft : particle of the D* decay: "none", "charged_pion", "neutral_pion" or "photon".
-    ground : species of the D at the end, "D0" or "D+".
+    vector, soft, ground : as in `SeenCharm`.
     branching_fraction : of the whole chain for one B of this kind, up to the D, whose own decay is not part of it.
     second : second pion of a D** or a continuum, as `bachelor`.
 
@@ -64,21 +62,6 @@ class Channel:
     def seen_lepton(self) -> str:
         """Charged particle that is detected: the lepton, or what the tau leaves."""
         return self.tau_to or self.decay.lepton
-
-    @property
-    def m_vector(self) -> float:
-        """GeV; 0 if there is no D*."""
-        return MASS[self.vector] if self.vector else 0.0
-
-    @property
-    def m_ground(self) -> float:
-        """GeV."""
-        return MASS[self.ground]
-
-    @property
-    def m_soft(self) -> float:
-        """GeV."""
-        return SOFT_MASS[self.soft]
 
     @property
     def m_bachelor(self) -> float:

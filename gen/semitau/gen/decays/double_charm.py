@@ -15,10 +15,11 @@ from semitau.core.constants import MASS
 from semitau.core.errors import InputError, Problem
 
 from .branching_fractions import FROM_TABLES, BranchingFractions
-from .chains import SOFT_MASS, Channel
+from .chains import Channel
 from .charm_semileptonic import muon_over_electron
 from .decay import DEFAULT_SETS, LEPTONS, PARENTS, Decay, charm_name
 from .form_factor_set import FormFactorSet
+from .seen_charm import SeenCharm
 
 FIRST = ("D", "D*")
 BESIDE = ("D_s", "D_s*", "D K", "D* K")
@@ -29,7 +30,7 @@ SOURCES = ("tau", "mu", "eta", "eta'", "phi", "K", "K*", "pi", "rho")
 
 
 @dataclass(frozen=True)
-class DoubleCharmChain:
+class DoubleCharmChain(SeenCharm):
     """One decay chain; charge conjugation is implied and species leave it out, as in `chains.Channel`.
 
     parent : "B+" or "B0". family : "D" or "D*", the meson that is reconstructed. vector, soft, ground : how it decays.
@@ -97,17 +98,7 @@ class DoubleCharmChain:
     @property
     def m_charm(self) -> float:
         """Of the D(*) that is reconstructed, GeV."""
-        return MASS[self.vector or self.ground]
-
-    @property
-    def m_ground(self) -> float:
-        """GeV."""
-        return MASS[self.ground]
-
-    @property
-    def m_soft(self) -> float:
-        """GeV."""
-        return SOFT_MASS[self.soft]
+        return self.m_vector or self.m_ground
 
     @property
     def m_partner(self) -> float:
