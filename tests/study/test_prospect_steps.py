@@ -57,6 +57,17 @@ R_D = { value = 0.299, error = 0.003 }
 R_Dst = { value = 0.254, error = 0.005 }
 """
 
+SAME = """[[measurement]]
+name = "a"
+R_Dst = { value = 0.28, systematic = 0.005 }
+sources.x = { R_Dst = 0.005 }
+
+[[measurement]]
+name = "b"
+R_Dst = { value = 0.31, systematic = 0.008 }
+sources.x = { R_Dst = 0.008 }
+"""
+
 
 def written(mini: WriteStudy, tables: str, others: str = OTHERS) -> Path:
     """A study with these tables instead of its own [reach], beside the file others.toml."""
@@ -173,9 +184,7 @@ def test_the_picture_needs_the_part_alone(mini: WriteStudy, templates: TemplateS
         ('[average]\nfile = "others.toml"\n', OTHERS.replace("[[measurement]]", "[[mesurement]]"), "others.toml:8: "),
         (
             '[average]\nfile = "others.toml"\n',
-            OTHERS[: OTHERS.index("[[measurement]]")]
-            + '[[measurement]]\nname = "a"\nR_Dst = { value = 0.28, systematic = 0.005 }\nsources.x = { R_Dst = 0.005 }\n'
-            + '[[measurement]]\nname = "b"\nR_Dst = { value = 0.31, systematic = 0.008 }\nsources.x = { R_Dst = 0.008 }\n',
+            OTHERS[: OTHERS.index("[[measurement]]")] + SAME,
             "not positive definite, foremost those of R_Dst of a and R_Dst of b",
         ),
     ],

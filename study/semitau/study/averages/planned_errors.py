@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from pathlib import Path
 
 from semitau.core.errors import InputError, Problem
@@ -31,18 +30,14 @@ def planned_errors(path: Path) -> Measurement:
     if not ratios:
         raise InputError(Problem("no ratio of this study can be averaged", str(path), remedy=remedy))
     found = {name: _errors(ratio, _scale(results, ratio)) for name, ratio in ratios.items()}
-    return expected_measurement(results.study.name, found, _correlation(results) if len(found) == 2 else 0.0)
-
-
-def expected_measurement(name: str, errors: Mapping[str, tuple[float, float]], correlation: float) -> Measurement:
-    """A measurement with values of 0. errors : ratio -> statistical, systematic. correlation : of the total errors of
-    two ratios; that of either kind is chosen such that it comes out."""
-    measured = {ratio: Measured(0.0, statistical, systematic) for ratio, (statistical, systematic) in errors.items()}
-    if len(errors) == 2:
-        (s1, y1), (s2, y2) = errors.values()
+    correlation = 0.0
+    if len(found) == 2:
+        (s1, y1), (s2, y2) = found.values()
         whole = ((s1**2 + y1**2) * (s2**2 + y2**2)) ** 0.5
-        correlation = max(-0.999, min(0.999, correlation * whole / (s1 * s2 + y1 * y2)))
-    return Measurement(name, measured, correlation, correlation)
+        correlation = _correlation(results) * whole / (s1 * s2 + y1 * y2)
+        correlation = max(-0.999, min(0.999, correlation))
+    measured = {name: Measured(0.0, statistical, systematic) for name, (statistical, systematic) in found.items()}
+    return Measurement(results.study.name, measured, correlation, correlation)
 
 
 def _errors(ratio: RatioResult, scale: float) -> tuple[float, float]:

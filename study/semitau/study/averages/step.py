@@ -6,12 +6,13 @@ from collections.abc import Callable
 from dataclasses import replace
 from typing import Any
 
+import numpy as np
 from semitau.core.errors import InputError, Problem, RunError
 from semitau.fit.averages.input_vector import faults_of
-from semitau.fit.averages.measurements import Measurement
+from semitau.fit.averages.measurements import Measured, Measurement
 from semitau.fit.fitting.model import Model
 from semitau.fit.fitting.newton import maximise
-from semitau.fit.uncertainty.decomposition import budget
+from semitau.fit.uncertainty.covariance_split import split_covariance
 from semitau.gen.study_file.places import place_in
 from semitau.gen.study_file.study import StudyConfig
 
@@ -19,7 +20,6 @@ from ..graph.materials import Materials
 from ..numbers import shortened
 from .checking import checked_average
 from .part import AverageResults
-from .planned_errors import expected_measurement
 from .run import averaged
 from .tables import RATIOS
 
@@ -78,12 +78,12 @@ def expected_errors(model: Model, name: str) -> Measurement:
     result = maximise(model, data)
     if not result.valid:
         raise RunError(*(result.reasons or (Problem("the fit to the expected set failed", "average"),)))
-    split = {ratio: found for ratio, found in budget(model, result).items() if ratio in RATIOS}
-    errors = {
-        ratio: ((found.total**2 - found.systematic**2) ** 0.5, found.systematic) for ratio, found in split.items()
-    }
-    correlation = 0.0
-    if len(errors) == 2:
-        first, second = errors
-        correlation = result.correlation(first, second)
-    return expected_measurement(name, errors, correlation)
+    names = [ratio for ratio in model.ratios if ratio in RATIOS and result.error(ratio) > 0.0]
+    parts = split_covariance(model, result, names)
+    errors = [np.sqrt(np.diag(part)) for part in parts]
+    correlations = [
+        float(np.clip(part[0, 1] / (error[0] * error[1]), -0.999, 0.999)) if len(names) == 2 and error.all() else 0.0
+        for part, error in zip(parts, errors, strict=True)
+    ]
+    measured = {ratio: Measured(0.0, *map(float, both)) for ratio, *both in zip(names, *errors, strict=True)}
+    return Measurement(name, measured, correlations[0], correlations[1])
