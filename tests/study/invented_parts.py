@@ -333,14 +333,15 @@ def sizing() -> Sizing:
             SizingSample(
                 sample=name, label=label, components=(name,), generated=None if i == 2 else 600_000 * (i + 1),
                 effective=5e5, share=0.01, needed=0.5 + i, needed_error=0.03, needed_events=None if i == 2 else 300_000,
-                decisive="R_Dst",
+                decisive="R_Dst", because="precision",
             )
             for i, (name, label) in enumerate(samples)
         ),
         costs=tuple(
             SizingCost(
                 sample=name, ratio=ratio, part=0.002, part_error=0.0001, cost=0.004, needed=1.25, needed_formula=1.3,
-                needed_error=0.04,
+                needed_error=0.04, bias=0.001, bias_error=0.0001, understated=0.002, understated_error=0.0002,
+                decisive="precision", needed_precision=1.25, needed_bias=0.5, needed_reported=0.2,
             )
             for name, _ in samples
             for ratio, *_ in RATIOS

@@ -66,7 +66,7 @@ class EventNumbers:
 
     def errors(self, factors: ArrayLike) -> Floats:
         """(ratios,) expected errors with `factors`, (samples,) or one for all, times today's events; inf is exact."""
-        reach = self._reach(factors)
+        reach = self.reach(factors)
         found: Floats = np.sqrt(np.sum(reach * self.asked.T, axis=0))
         return found
 
@@ -145,8 +145,8 @@ class EventNumbers:
         found: Floats = self._per_event(factors) @ self.variances + self.kept
         return found
 
-    def _reach(self, factors: ArrayLike) -> Floats:
-        """(free, ratios): rows of the inverse information."""
+    def reach(self, factors: ArrayLike) -> Floats:
+        """(free, ratios): what a unit of information about each free parameter does to each ratio."""
         relative = self._relative(factors)
         information = self.information(relative)
         scale = 1.0 / np.sqrt(np.diag(information))
@@ -158,7 +158,7 @@ class EventNumbers:
     def _levers(self, factors: ArrayLike) -> Floats:
         """(ratios, bins): what a unit of relative variance of a bin adds to the variance of each ratio."""
         relative = self._relative(factors)
-        found: Floats = ((self.rows @ self._reach(factors)) / (1.0 + self.expected * relative)[:, None]).T ** 2
+        found: Floats = ((self.rows @ self.reach(factors)) / (1.0 + self.expected * relative)[:, None]).T ** 2
         return found
 
     def _variances_of(self, factors: ArrayLike, shares: Floats) -> Floats:

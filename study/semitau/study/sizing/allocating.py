@@ -24,6 +24,8 @@ def allocation_part(
 ) -> SizingAllocation | None:
     """The best allocation; None where events or times are not known.
 
+    No sample gets less than bias and reported errors ask for, unless the time is too short for that.
+
     paces : sample -> measured seconds of an event, one or more.
 
     Raises InputError when the least numbers of events take longer than [sizing] seconds.
@@ -37,6 +39,8 @@ def allocation_part(
     time_now = float(times @ now)
     time = asked.seconds or time_now
     least = np.full(now.size, float(asked.least))
+    unbiased = np.maximum(least, now * found.needs[1:].max(axis=(0, 1)))
+    least = unbiased if unbiased @ times <= time else least
     try:
         best = np.floor(best_events(gains, times, time, least) * (1.0 + 1e-12))
     except InputError as error:
@@ -48,7 +52,7 @@ def allocation_part(
         ) from None
     aim = asked.together or asked.share
     allowed = aim**2 * _unit(asked, found)
-    cheapest = np.ceil(least_events(gains, times, allowed, least))
+    cheapest = np.ceil(least_events(gains, times, allowed, unbiased))
     return SizingAllocation(
         target=asked.target,
         seconds=time,

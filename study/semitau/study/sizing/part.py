@@ -31,10 +31,11 @@ class SizingSample(Part):
     generated: int | None = Field(description="Events that were generated; null if that is not known")
     effective: float = Field(ge=0, description="Effective events in the templates: squared sum over sum of squares")
     share: float = Field(gt=0, description="Chosen cost: growth of the error over exact templates, in quadrature")
-    needed: float = Field(ge=0, description="Events that cost this share at most for every ratio, over those now")
+    needed: float = Field(ge=0, description="Events that do for every ratio, over those now: see SizingCost")
     needed_error: float = Field(ge=0, description="Error of `needed` from the finite events that it is known from")
     needed_events: int | None = Field(description="The same as a number of events; null if `generated` is")
     decisive: str = Field(description="Ratio that asks for the most")
+    because: Literal["precision", "bias", "reported error"] = Field(description="Why it does")
 
 
 class SizingCost(Part):
@@ -45,9 +46,21 @@ class SizingCost(Part):
     part: float = Field(ge=0, description="Part of the error now, by quadrature")
     part_error: float = Field(ge=0, description="Its error from the finite numbers that it is known from")
     cost: float = Field(ge=0, description="Growth of the error with all other samples exact, in quadrature, over it")
-    needed: float = Field(ge=0, description="Multiple of the events at which `cost` is the chosen share")
+    bias: float | None = Field(
+        description="Pull of its noise on the fitted ratio now, the largest of all true ratios tried; null if not known"
+    )
+    bias_error: float | None = Field(description="Its error from the finite numbers that it is known from")
+    understated: float | None = Field(
+        description="Part by which its noise makes the reported variance too small; null if not known"
+    )
+    understated_error: float | None = Field(description="Its error from the finite numbers that it is known from")
+    needed: float = Field(ge=0, description="Multiple of the events that does for precision, bias and reported error")
+    needed_error: float = Field(ge=0, description="Its error from the finite numbers that it is known from")
+    decisive: Literal["precision", "bias", "reported error"] = Field(description="Which of the three asks for the most")
+    needed_precision: float = Field(ge=0, description="Multiple of the events at which `cost` is the chosen share")
     needed_formula: float = Field(ge=0, description="The same to first order, by the formula: never less")
-    needed_error: float = Field(ge=0, description="Error of both from the finite numbers that they are known from")
+    needed_bias: float | None = Field(description="Multiple at which the bias is the chosen share of the exact error")
+    needed_reported: float | None = Field(description="Multiple at which `understated` is the square of the share")
 
 
 class SizingCurve(Part):

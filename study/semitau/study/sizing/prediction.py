@@ -5,17 +5,23 @@ from __future__ import annotations
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from math import ceil
+from typing import Literal
 
 import numpy as np
 from semitau.core.templates import Floats
 from semitau.fit.fitting.model import Model
+from semitau.fit.uncertainty.template_bias import TemplateBias, template_bias
 from semitau.fit.uncertainty.template_costs import EventNumbers, event_numbers
+from semitau.gen.study_file.sizing import SizingSection
 
 from .part import SizingCost, SizingCurve, SizingRatio, SizingSample
 from .samples import Sample, effective_events, members
 
 PLACES = 25
 """Points of a curve."""
+
+Reason = Literal["precision", "bias", "reported error"]
+REASONS: tuple[Reason, Reason, Reason] = ("precision", "bias", "reported error")
 
 LOWEST, HIGHEST = 1e-2, 1e2
 """Ends of the curves, in multiples of the events."""
@@ -25,7 +31,10 @@ LOWEST, HIGHEST = 1e-2, 1e2
 class Prediction:
     """The expected errors of a model, and the events that it asks for.
 
-    shares : (samples,) chosen costs. needed, formula, needed_errors : (ratios, samples) multiples of the events.
+    shares : (samples,) chosen costs.
+    formula : (ratios, samples) multiples of the events at which each sample costs its share, to first order.
+    needs : (3, ratios, samples) multiples that do for precision, bias and reported error. need_errors : of them.
+    pulled : what is known of bias, one for each multiple of the true ratios; empty if nothing is.
     events : sample -> generated ones, None if they are not known. least : of each sample.
     """
 
@@ -33,11 +42,18 @@ class Prediction:
     numbers: EventNumbers
     samples: tuple[Sample, ...]
     shares: Floats
-    needed: Floats
     formula: Floats
-    needed_errors: Floats
+    needs: Floats
+    need_errors: Floats
+    pulled: tuple[TemplateBias, ...]
     events: Mapping[str, int] | None
     least: int
+
+    @property
+    def needed(self) -> Floats:
+        """(ratios, samples) multiples of the events that do in every respect."""
+        most: Floats = self.needs.max(axis=0)
+        return most
 
     @property
     def needed_factors(self) -> Floats:
@@ -58,21 +74,38 @@ class Prediction:
 
 
 def predicted(
-    model: Model,
-    samples: tuple[Sample, ...],
-    share: float,
-    shares: Mapping[str, float],
-    least: int,
-    events: Mapping[str, int] | None,
+    model: Model, samples: tuple[Sample, ...], asked: SizingSection, events: Mapping[str, int] | None
 ) -> Prediction:
     """Raises InputError and RunError as `event_numbers`."""
     numbers = event_numbers(model, members(samples))
-    wanted = np.array([shares.get(sample.name, share) for sample in samples])
+    wanted = np.array([asked.shares.get(sample.name, asked.share) for sample in samples])
     first, unsure = numbers.first_order(), numbers.first_order_errors()
-    needed = numbers.needed(wanted)
     relative = np.where(first > 0.0, unsure / np.where(first > 0.0, first, 1.0), 0.0)
+    precision = numbers.needed(wanted)
+    needs, errors = np.zeros((3, *first.shape)), np.zeros((3, *first.shape))
+    needs[0], errors[0] = precision, precision * relative
+    pulled = () if model.coefficients else tuple(_pulled(model, samples, numbers, asked))
+    exact = numbers.errors(np.inf)[:, None]
+    for known in pulled:
+        _raise(needs[1], errors[1], np.abs(known.bias) / (wanted * exact), known.bias_error / (wanted * exact))
+        _raise(needs[2], errors[2], known.understated / wanted**2, known.understated_error / wanted**2)
     formula = numbers.needed_first_order(wanted)
-    return Prediction(model, numbers, samples, wanted, needed, formula, needed * relative, events, least)
+    return Prediction(model, numbers, samples, wanted, formula, needs, errors, pulled, events, asked.least)
+
+
+def _pulled(
+    model: Model, samples: tuple[Sample, ...], numbers: EventNumbers, asked: SizingSection
+) -> Iterator[TemplateBias]:
+    ratios = [name for name in numbers.ratios if model.parameters[model.index(name)].function is None]
+    for multiple in asked.multiples:
+        true = {name: multiple * float(model.injected[model.index(name)]) for name in ratios}
+        yield template_bias(model, members(samples), true)
+
+
+def _raise(most: Floats, errors: Floats, other: Floats, other_errors: Floats) -> None:
+    """The larger of both, in place."""
+    larger = other > most
+    most[larger], errors[larger] = other[larger], other_errors[larger]
 
 
 def ratio_parts(found: Prediction) -> tuple[SizingRatio, ...]:
@@ -108,6 +141,7 @@ def sample_parts(found: Prediction) -> tuple[SizingSample, ...]:
     parts = []
     for s, sample in enumerate(found.samples):
         decisive = int(np.argmax(found.needed[:, s]))
+        why = int(np.argmax(found.needs[:, decisive, s]))
         parts.append(
             SizingSample(
                 sample=sample.name,
@@ -117,9 +151,10 @@ def sample_parts(found: Prediction) -> tuple[SizingSample, ...]:
                 effective=effective_events(sample, found.model.templates),
                 share=float(found.shares[s]),
                 needed=float(found.needed[decisive, s]),
-                needed_error=float(found.needed_errors[decisive, s]),
+                needed_error=float(found.need_errors[why, decisive, s]),
                 needed_events=found.needed_events.get(sample.name),
                 decisive=ratios[decisive],
+                because=REASONS[why],
             )
         )
     return tuple(parts)
@@ -131,15 +166,28 @@ def cost_parts(found: Prediction) -> Iterator[SizingCost]:
     parts, unsure, costs = numbers.parts(1.0), numbers.part_errors(1.0), numbers.costs(1.0)
     for s, sample in enumerate(numbers.samples):
         for r, ratio in enumerate(numbers.ratios):
+            why = int(np.argmax(found.needs[:, r, s]))
+            pulls = [(float(known.bias[r, s]), float(known.bias_error[r, s])) for known in found.pulled]
+            false = [(float(known.understated[r, s]), float(known.understated_error[r, s])) for known in found.pulled]
+            bias, bias_error = max(pulls, key=lambda pull: abs(pull[0]), default=(None, None))
+            understated, understated_error = max(false, key=lambda part: part[0], default=(None, None))
             yield SizingCost(
                 sample=sample,
                 ratio=ratio,
                 part=float(parts[r, s]),
                 part_error=float(unsure[r, s]),
                 cost=float(costs[r, s]),
+                bias=bias,
+                bias_error=bias_error,
+                understated=understated,
+                understated_error=understated_error,
                 needed=float(found.needed[r, s]),
+                needed_error=float(found.need_errors[why, r, s]),
+                decisive=REASONS[why],
+                needed_precision=float(found.needs[0, r, s]),
                 needed_formula=float(found.formula[r, s]),
-                needed_error=float(found.needed_errors[r, s]),
+                needed_bias=float(found.needs[1, r, s]) if found.pulled else None,
+                needed_reported=float(found.needs[2, r, s]) if found.pulled else None,
             )
 
 

@@ -39,7 +39,7 @@ def _needs(found: Sizing) -> str:
     short = sorted((s for s in found.samples if s.needed > 1.0), key=lambda s: -s.needed)
     if not short:
         return "Every component has the events that it needs."
-    told = "; ".join(f"{s.label} {_times(s)} for {labels[s.decisive]}" for s in short)
+    told = "; ".join(f"{s.label} {_times(s)} for the {s.because} of {labels[s.decisive]}" for s in short)
     enough = len(found.samples) - len(short)
     return f"Too few events: {told}. {f'{enough} others have enough.' if enough else ''}".strip()
 
@@ -71,8 +71,8 @@ def _coverage(found: Sizing) -> Iterator[str]:
         ]
         if poor:
             yield (
-                f"Look at this: with the needed events alone intervals of {ratio.label} cover too little. The formula "
-                f"is for errors; keep more events, or take the interval that is corrected for poor templates."
+                f"Look at this: with the needed events intervals of {ratio.label} cover too little. Ask for a smaller "
+                "share, or take the interval that is corrected for poor templates."
             )
 
 

@@ -41,7 +41,7 @@ def sizing_part(study: StudyConfig, materials: Materials, workers: int | None, r
     study = study.model_copy(update={"sizing": asked})
     samples = samples_of_study(study)
     events = generated(samples, materials.nominal)
-    found = predicted(materials.model, samples, asked.share, asked.shares, asked.least, events)
+    found = predicted(materials.model, samples, asked, events)
     quiet = Materials(materials.study, materials.store, materials.workers)
     verified = verify(study, materials.templates, found, quiet.build, report)
     paces = verified.paces or {
@@ -62,7 +62,7 @@ def sizing_of_templates(
 
     Nothing is generated, so nothing is verified, and times are not known. model : of the templates.
     """
-    found = predicted(model, samples_of_templates(templates), asked.share, asked.shares, asked.least, None)
+    found = predicted(model, samples_of_templates(templates), asked, None)
     return _whole(asked, found, Verified(), {}, seed, workers, report)
 
 
