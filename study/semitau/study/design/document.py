@@ -258,9 +258,13 @@ def _notes(study: StudyConfig, design: DesignSection, found: Found) -> Iterator[
             f"Not confirmed: on independent events the gain is {100 * confirmed.gain:.2f} ± "
             f"{100 * confirmed.uncertainty:.2f} per cent. Keep the study as it is, or generate more events."
         )
-    for variable, place in zip(space.variables, best.cuts, strict=True):
-        if place in (0, len(variable.values) - 1) and place != variable.start:
-            yield f"{variable.name} is at the end of its range: widen it."
+    merit = found.evaluator.merit(best)
+    for number, (variable, place) in enumerate(zip(space.variables, best.cuts, strict=True)):
+        last = len(variable.values) - 1
+        if place in (0, last) and place != variable.start:
+            inside = found.evaluator.merit(best.with_cut(number, 1 if place == 0 else last - 1))
+            if inside > merit * (1.0 + design.loss):
+                yield f"The best value of {variable.name} is the last one of its range: widen it."
     if confirmed.noise is None:
         yield "There are too few events to tell information from fluctuations of the templates: generate more events."
     elif max(confirmed.noise) > NOISY:
