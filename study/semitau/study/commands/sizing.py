@@ -26,9 +26,11 @@ def command(
     times. Or FILE is a template file from anybody: then nothing is generated, and numbers of events are multiples of
     those behind the templates. Options for the fit go with template files; a study file has [fit].
     """
+    from matplotlib import rc_context
     from semitau.core.whole_files import write_whole
 
     from ..pictures.sizing import sizing_drawings
+    from ..pictures.style import RC
     from ..sizing.opening import sizing_of_file
     from ..terminal.sizing_summary import sizing_summary
 
@@ -36,8 +38,9 @@ def command(
         found = sizing_of_file(file, choices, share, toys, call.seed, call.workers, report)
     call.terminal.show(*sizing_summary(found))
     if output is not None:
-        for name, title, caption, draw in sizing_drawings(found):
-            draw().save(output, name, title, caption)
+        with rc_context(RC):
+            for name, title, caption, draw in sizing_drawings(found):
+                draw().save(output, name, title, caption)
         snippets = {"needed": found.snippet, "best": found.allocation.snippet if found.allocation else ""}
         for name, text in snippets.items():
             if text:

@@ -37,7 +37,7 @@ def sizing_drawings(sizing: Sizing) -> Iterator[Drawing]:
     yield (
         "sizing_needed",
         "Needed events",
-        "Events with which each component costs its share of the error, over those that there are.",
+        "Events with which each component costs its share of the error at most, over those that there are.",
         partial(needed_events, sizing),
     )
     for verification in sizing.verifications:
@@ -138,7 +138,9 @@ def needed_events(sizing: Sizing) -> Sheet:
     panels = Panels(
         count=len(sizing.ratios), columns=2, width=3.0, height=ROW * rows + 0.15, left=1.75, foot=0.5, head=0.3
     )
-    note = "dots: from the whole expected error; bars: by the formula; right of 1 there are too few"
+    note = (
+        "dots: for precision, bias and reported error; bars: for precision by the formula; right of 1 there are too few"
+    )
     sheet = Sheet(*panels.sheet_size, "Needed events", note)
     for number, ratio in enumerate(sizing.ratios):
         axes = sheet.axes(*panels.corner(number), panels.width, panels.height, xscale="log")
@@ -201,8 +203,8 @@ def checked(sizing: Sizing, verification: SizingVerification) -> Sheet:
         _name_rows(axes, sizing, first="all together")
         axes.set_xlabel(f"part of the error of {ratio.label}")
         axes.set_title(ratio.label, weight="bold")
-        axes.legend(loc="lower right", ncols=3, fontsize=7, handletextpad=0.2, columnspacing=0.9, borderaxespad=0.1)
         axes.set_ylim(len(sizing.samples) + 0.6, -1.7)
+        axes.legend(loc="lower right", ncols=3, fontsize=7, handletextpad=0.2, columnspacing=0.9, borderaxespad=0.1)
     return sheet
 
 

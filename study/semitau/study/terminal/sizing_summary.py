@@ -8,7 +8,7 @@ from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
 
-from ..numbers import GAP, counted, digits_for, percent, shortened, signed, with_error
+from ..numbers import counted, digits_for, percent, shortened, signed
 from ..sizing.part import Sizing, SizingAllocation, SizingSample
 from .summary import plain_table
 
@@ -33,50 +33,52 @@ def sizing_summary(found: Sizing) -> Iterator[RenderableType]:
 def sample_table(found: Sizing) -> Table:
     """Events and costs of every sample."""
     table = plain_table(
-        "Sample", "events", "effective", *(f"part of {ratio.label}" for ratio in found.ratios), "share",
-        "needed, times", "needed events",
-    )  # fmt: skip
+        "Sample", "events", *(f"part of {ratio.label}" for ratio in found.ratios), "needed, times", "for", "events"
+    )
     costs = {(cost.sample, cost.ratio): cost for cost in found.costs}
     for sample in found.samples:
         own = [costs[sample.sample, ratio.ratio] for ratio in found.ratios]
         table.add_row(
             shortened(sample.label),
             "–" if sample.generated is None else counted(sample.generated),
-            counted(sample.effective),
-            *(with_error(cost.part, cost.part_error) if cost.part_error > 0.0 else "0" for cost in own),
-            percent(sample.share, 0),
+            *(bracketed(cost.part, cost.part_error) for cost in own),
             Text(_needed(sample), style="bold red" if sample.needed > 1.0 else ""),
+            sample.because,
             "–" if sample.needed_events is None else counted(sample.needed_events),
         )
     return table
 
 
 def _needed(sample: SizingSample) -> str:
-    if not sample.needed > 0.0:
-        return "any"
-    return with_error(sample.needed, sample.needed_error) if sample.needed_error > 0.0 else f"{sample.needed:.3g}"
+    return bracketed(sample.needed, sample.needed_error) if sample.needed > 0.0 else "any"
+
+
+def bracketed(value: float, error: float) -> str:
+    """The error in units of the last digits, e.g. "0.0810(18)"; three digits where it is below them."""
+    if not error > 0.005 * abs(value):
+        return signed(value, digits_for(abs(value)) + 1) if value else "0"
+    places = digits_for(error)
+    return f"{signed(value, places)}({round(error * 10**places)})"
 
 
 def toy_table(found: Sizing) -> Table:
     """Toys with new templates: errors, bias, pulls, coverage."""
     labels = {ratio.ratio: ratio.label for ratio in found.ratios}
     samples = {sample.sample: sample.label for sample in found.samples}
-    table = plain_table("Toys: events", "true", "", "expected", "reported", "scatter", "bias", "pull width", "covers")
+    table = plain_table("Toys: events", "true", "", "reported", "scatter", "bias", "pull width", "covers, %")
     for toys in found.toys:
-        events = "needed" if toys.factor is None else f"× {toys.factor:g} {samples.get(toys.sample, '')}".rstrip()
+        label = shortened(samples.get(toys.sample, ""), 20)
+        events = "needed" if toys.factor is None else f"×{toys.factor:g} {label}".rstrip()
         for part in toys.ratios:
-            places = digits_for(part.mean_error) + 1
-            error = 50.0 * (part.coverage_high - part.coverage_low)
             table.add_row(
                 events,
-                f"× {toys.multiple:g}",
+                f"×{toys.multiple:g}" if events else "",
                 labels[part.ratio],
-                signed(part.expected, places),
-                signed(part.mean_error, places),
-                with_error(part.spread, part.spread_error),
-                f"{signed(part.bias, places, plus=True)}{GAP}±{GAP}{signed(part.bias_error, places)}",
-                with_error(part.pull_width, part.pull_width_error),
-                f"{signed(100.0 * part.coverage, 1)}{GAP}±{GAP}{error:.1f}{GAP}%",
+                signed(part.mean_error, digits_for(part.mean_error) + 1),
+                bracketed(part.spread, part.spread_error),
+                bracketed(part.bias, part.bias_error),
+                bracketed(part.pull_width, part.pull_width_error),
+                bracketed(100.0 * part.coverage, 50.0 * (part.coverage_high - part.coverage_low)),
             )
             events = ""
     return table
@@ -87,17 +89,16 @@ def check_table(found: Sizing, what: str) -> Table:
     verification = next(each for each in found.verifications if each.what == what)
     labels = {ratio.ratio: ratio.label for ratio in found.ratios}
     samples = {sample.sample: sample.label for sample in found.samples}
-    title = (
-        f"{verification.sets} × {verification.fraction:.3g} of the {'events' if what == 'fewer' else 'needed events'}"
-    )
+    events = "events" if what == "fewer" else "needed events"
+    title = f"{verification.sets} × {verification.fraction:.3g} of the {events}"
     table = plain_table(title, "", "predicted", "by variances", "scatter of fits", "p")
     for check in verification.checks:
-        scatter = None if check.scatter is None else with_error(check.scatter, check.scatter_error or 0.0)
+        scatter = None if check.scatter is None else bracketed(check.scatter, check.scatter_error or 0.0)
         table.add_row(
             shortened(samples.get(check.sample, "all together")),
             labels[check.ratio],
-            with_error(check.predicted, check.predicted_error),
-            with_error(check.measured, check.measured_error),
+            bracketed(check.predicted, check.predicted_error),
+            bracketed(check.measured, check.measured_error),
             scatter or "–",
             "–" if check.p_value is None else signed(check.p_value, 3),
         )
@@ -111,9 +112,11 @@ def allocation_table(found: Sizing, best: SizingAllocation) -> Table:
         "Allocation", "ns an event", "now", f"best in {best.seconds:.2g} s", f"for {percent(best.aim, 0)} in all"
     )
     for sample in best.samples:
-        error = sample.nanoseconds_error
-        pace = f"{sample.nanoseconds:.0f}" if error is None else with_error(sample.nanoseconds, max(error, 0.1))
         table.add_row(
-            shortened(labels[sample.sample]), pace, counted(sample.now), counted(sample.best), counted(sample.cheapest)
+            shortened(labels[sample.sample]),
+            bracketed(sample.nanoseconds, sample.nanoseconds_error or 0.0),
+            counted(sample.now),
+            counted(sample.best),
+            counted(sample.cheapest),
         )
     return table
