@@ -296,7 +296,7 @@ def test_what_is_not_covered_comes_first_in_words(bias: Bias) -> None:
     hidden = f"{beyond}; the goodness of fit would not show it (p = 0.40 for a typical data set)."
     third, another, exchanged, others = said
     assert third.startswith("Made with a third one: R(D) shifts by −0.0280 ± 0.0010, −0.70 of its error, ")
-    assert third.endswith(f"{beyond}; a typical data set would show it (p = 1e-05).")
+    assert third.endswith(f"{beyond}; a typical data set would show it (p < 0.001).")
     assert another == f"Made with another world: R(D) shifts by +0.0200 ± 0.0010, +0.50 of its error, {hidden}"
     assert exchanged == (
         "Made with the study itself, fitted with another world: R(D) shifts by −0.0360 ± 0.0010, −0.90 of its error, "

@@ -107,5 +107,6 @@ def _seen(pair: BiasPair) -> str:
     if p_value is None:
         return ""
     if p_value < UNLIKELY:
-        return f"; a typical data set would show it (p = {p_value:.1g})"
+        chance = "p < 0.001" if p_value < 0.001 else f"p = {p_value:.3f}"
+        return f"; a typical data set would show it ({chance})"
     return f"; the goodness of fit would not show it (p = {p_value:.2f} for a typical data set)"
