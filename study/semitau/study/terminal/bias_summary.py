@@ -10,19 +10,14 @@ from rich.text import Text
 
 from ..bias.part import Bias, BiasPair, BiasRatio
 from ..numbers import GAP, digits_for, percent, shortened, signed
-from .summary import plain_table
+from .summary import bias_text, listed, plain_table
 
 COLOURS = {"not covered": "bold red", "undecided": "yellow", "covered": "", "negligible": "dim"}
 
 
 def bias_summary(bias: Bias) -> Iterator[RenderableType]:
     """What no systematic covers, every alternative fitted with the study, the matrix of shifts, and the rest."""
-    if bias.not_covered:
-        yield Text("Not covered by the assigned systematic errors:", style="bold red")
-    else:
-        yield Text("No alternative is found to shift a ratio by more than what covers it.", style="bold green")
-    yield _listed(bias.not_covered)
-    yield ""
+    yield bias_text(bias)
     yield shift_table(bias)
     yield ""
     if any(ratio.coverage for pair in bias.pairs for ratio in pair.ratios):
@@ -31,7 +26,7 @@ def bias_summary(bias: Bias) -> Iterator[RenderableType]:
     for name, label in {ratio.ratio: ratio.label for pair in bias.pairs for ratio in pair.ratios}.items():
         yield shift_matrix(bias, name, label)
         yield ""
-    yield _listed(bias.sentences)
+    yield listed(bias.sentences)
 
 
 def shift_table(bias: Bias) -> Table:
@@ -106,11 +101,3 @@ def _shift(pair: BiasPair, name: str) -> Text:
         return Text("failed")
     mark = {"not covered": "*", "undecided": "?"}.get(ratio.status, " ")
     return Text(signed(ratio.significance, 2, plus=True) + mark, style=COLOURS[ratio.status])
-
-
-def _listed(sentences: tuple[str, ...]) -> Table:
-    # A grid keeps the indent of sentences that take several lines.
-    grid = Table.grid(padding=(0, 1))
-    for sentence in sentences:
-        grid.add_row("  •", Text(sentence))
-    return grid

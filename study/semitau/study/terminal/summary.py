@@ -9,6 +9,7 @@ from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
+from ..bias.part import Bias
 from ..numbers import GAP, counted, digits_for, percent, signed, with_error
 from ..results import (
     Blinding,
@@ -51,6 +52,8 @@ def summary(results: Results, report: str) -> RenderableType:
     if results.linearity:
         parts.append(linearity_table(results.linearity))
     parts.append(verdict_text(results.verdict))
+    if results.bias is not None:
+        parts.append(bias_text(results.bias))
     parts.extend(Text(f"Look at this: {warning}", style="yellow") for warning in results.warnings)
     parts.append(Text(f"Report: {report}"))
     return Group(*(line for part in parts for line in ((part, "") if isinstance(part, Table) else (part,))))
@@ -179,11 +182,23 @@ def linearity_table(lines: Iterable[Linearity]) -> Table:
 def verdict_text(verdict: Verdict) -> RenderableType:
     """The judgement, its headline in colour."""
     headline = Text(f"{VERDICT_WORDS[verdict.status]}.", style=f"bold {VERDICT_COLOURS[verdict.status]}")
-    # A grid keeps the indent of sentences that take several lines.
-    sentences = Table.grid(padding=(0, 1))
-    for sentence in verdict.sentences:
-        sentences.add_row("  •", Text(sentence))
-    return Group(headline, sentences, "")
+    return Group(headline, listed(verdict.sentences), "")
+
+
+def bias_text(bias: Bias) -> RenderableType:
+    """What no systematic covers, or that there is no such thing."""
+    if not bias.not_covered:
+        return Text("No alternative is found to shift a ratio by more than what covers it.\n", style="bold green")
+    headline = Text("Not covered by the assigned systematic errors:", style="bold red")
+    return Group(headline, listed(bias.not_covered), "")
+
+
+def listed(sentences: Sequence[str]) -> Table:
+    """Sentences as a list. A grid keeps the indent of those that take several lines."""
+    grid = Table.grid(padding=(0, 1))
+    for sentence in sentences:
+        grid.add_row("  •", Text(sentence))
+    return grid
 
 
 def cut_flow_table(flow: Sequence[CutFlowComponent]) -> Table:
