@@ -13,6 +13,7 @@ from typing import Any
 
 import numpy as np
 import pytest
+from semitau import gen
 from semitau.core.quadratic import templates_at, value_at
 from semitau.core.template_file import read_templates
 from semitau.core.templates import TemplateSet
@@ -25,6 +26,7 @@ from semitau.gen.templates.component_plan import predicted_ratio
 from semitau.gen.templates.pseudo_data import pseudo_data
 from semitau.study.command_line import main
 from semitau.study.results import read_results
+from semitau.study.run.opening import open_study
 
 from ..gen.marlow_study import TEXT
 from ..gen.marlow_study import study as marlow
@@ -101,3 +103,67 @@ def test_a_study_floats_them(mini: Callable[..., Path]) -> None:
     assert any("Linearity is left out" in warning for warning in results.warnings)
     report = (Path("out") / "report.html").read_text(encoding="utf-8")
     assert "Re C_SR" in report
+
+
+DIRECTIONS = """[[variation]]
+name = "D_first"
+label = "D form factors, first direction"
+kind = "form_factor_direction"
+set = "D"
+direction = 1
+
+[[variation]]
+name = "D_second"
+label = "D form factors, second direction"
+kind = "form_factor_direction"
+set = "D"
+direction = 2
+"""
+FLOATED = """[[quadratic.form_factors]]
+name = "D_ff"
+set = "D"
+order = "variance"
+keep = 1.0
+at_most = 2
+"""
+
+
+def test_a_study_floats_form_factors(mini: Callable[..., Path]) -> None:
+    """The directions of D as coefficients, and as variations with two sides: ratios are free in both, nuisances in
+    every table, and the errors agree, since one standard deviation is little. `--at` injects ratios of another set."""
+    chosen = {"[fit]\n": '[fit]\ncoefficients = ["D_ff_1", "D_ff_2"]\n', 'data = "pseudo"': 'data = "expected"'}
+    path = mini({DIRECTIONS: FLOATED, **chosen})
+    assert main(["study", str(path), "--quiet", "--workers", "2"]) == 0
+    results = read_results(Path("out") / "results.json")
+    assert [ratio.name for ratio in results.ratios] == ["R_D", "R_Dst"]
+    kinds = {parameter.name: (parameter.kind, parameter.constraint) for parameter in results.fit.parameters}
+    assert kinds["D_ff_1"] == ("nuisance", 1.0)
+    assert not any(name.startswith("_") for name in kinds)
+    assert {"D_ff_1", "D_ff_2"} < {nuisance.name for nuisance in results.nuisances}
+    assert results.linearity
+    varied = mini({'data = "pseudo"': 'data = "expected"'})
+    assert main(["study", str(varied), "--quiet", "--workers", "2", "--output", "varied"]) == 0
+    other = read_results(Path("varied") / "results.json")
+    for mine, theirs in zip(results.ratios, other.ratios, strict=True):
+        assert mine.error == pytest.approx(theirs.error, rel=0.01)
+    shifts = [{n.name: n for n in part.nuisances} for part in (results, other)]
+    first, second = (
+        next(s for s in by_name[name].shifts if s.ratio == "R_D")
+        for by_name, name in zip(shifts, ("D_ff_1", "D_first"), strict=True)
+    )
+    assert first.up is not None
+    assert second.up is not None
+    assert first.up == pytest.approx(second.up, rel=0.2, abs=0.02 * results.ratios[0].error)
+    moved = templates_at(read_templates(Path("out") / "templates.root"), {"D_ff_1": 2.0})
+    chosen_set = gen.form_factors("BCL-2021").along(0, 2.0, "D")
+    parents = {"B+": 0.514, "B0": 0.486}
+    tagged = {parent: share * open_study(path).detector.tag.kept(parent) for parent, share in parents.items()}
+    widths = {
+        lepton: sum(
+            tagged[parent] * gen.observables(gen.Decay(parent, charm, lepton, chosen_set)).branching_fraction
+            for parent, charm in (("B+", "D0"), ("B0", "D-"))
+        )
+        for lepton in ("e", "mu", "tau")
+    }
+    expected = 2.0 * widths["tau"] / (widths["e"] + widths["mu"])
+    assert moved.parameters[0].injected == pytest.approx(expected, rel=1e-9)

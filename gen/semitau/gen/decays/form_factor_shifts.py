@@ -52,6 +52,13 @@ def name_of(coefficient: Coefficient) -> str:
     return coefficient if isinstance(coefficient, str) else coefficient.name
 
 
+def unlabelled(coefficient: Coefficient) -> Coefficient:
+    """Without what amplitudes do not know of."""
+    if isinstance(coefficient, str):
+        return coefficient
+    return replace(coefficient, name="", label="", group="", constraint=None)
+
+
 def acts_on(coefficient: Coefficient, decay: Decay) -> bool:
     """Whether amplitudes of the decay depend on it."""
     if isinstance(coefficient, str):

@@ -7,7 +7,7 @@ from typing import Annotated, Any, ClassVar, Literal
 from pydantic import BeforeValidator, Field, model_validator
 
 from .fit_parameters import Bounds, Constraint, Correlated
-from .names import RatioName
+from .names import COEFFICIENTS, RatioName
 from .rules import (
     Count,
     Distinct,
@@ -82,6 +82,11 @@ class FitSection(Table):
     mirrored: dict[Identifier, Literal["plus", "minus"]] = Field(
         default={}, description="variations of which one side is kept and the other is its mirror image"
     )
+
+    @property
+    def couplings(self) -> tuple[str, ...]:
+        """The fitted coefficients that ratios follow; others leave them free."""
+        return tuple(name for name in self.coefficients if name in COEFFICIENTS)
 
 
 class Linearity(ShortTable):

@@ -7,7 +7,6 @@ from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
 from .idle_variations import nuisance_names
-from .names import COEFFICIENTS
 from .parameter_names import ParameterNames, parameter_names
 from .quadratic_conflicts import shift_names
 from .rules import shown, suggestion
@@ -84,11 +83,10 @@ def _coefficients(study: StudyConfig, names: ParameterNames) -> Iterator[Conflic
     if fit.likelihood == "exact":
         remedy = 'Take likelihood = "light" or "approximate".'
         yield Conflict(place, 'cannot be fitted with likelihood = "exact"', shown(fit.coefficients), remedy=remedy)
-    couplings = [name for name in fit.coefficients if name in COEFFICIENTS]
-    if study.blinding is not None and fit.data.kind != "expected" and couplings:
+    if study.blinding is not None and fit.data.kind != "expected" and fit.couplings:
         remedy = 'Fit the expected events (data = "expected"), or leave [blinding] out.'
         yield Conflict(place, "would give hidden ratios away", shown(fit.coefficients), remedy=remedy)
-    for name in fit.functions if couplings else ():
+    for name in fit.functions if fit.couplings else ():
         if name in names.ratios:
             remedy = "Take one of them away."
             what = "already follows the fitted coefficients"

@@ -27,7 +27,7 @@ def prospect_conflicts(study: StudyConfig, folder: Path | None) -> Iterator[Conf
 
 def fitted_ratios(study: StudyConfig) -> list[str]:
     """Ratios that the fit has a parameter of its own for."""
-    if study.fit.coefficients:
+    if study.fit.couplings:
         return []
     return [
         name
@@ -59,4 +59,4 @@ def _average(study: StudyConfig) -> Iterator[Conflict]:
 
 def _remedy(study: StudyConfig) -> str:
     others = ", or [fit] coefficients, which stand in the place of ratios"
-    return f"Remove the table{others if study.fit.coefficients else ''}."
+    return f"Remove the table{others if study.fit.couplings else ''}."

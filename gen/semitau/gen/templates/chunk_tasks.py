@@ -16,7 +16,7 @@ from semitau.core.engine import Job
 from ..decays.chains import Channel
 from ..decays.decay import Decay
 from ..decays.double_charm import AnyChain
-from ..decays.form_factor_shifts import Coefficient, acts_on
+from ..decays.form_factor_shifts import Coefficient, acts_on, unlabelled
 from ..decays.operators import Operators
 from ..response.candidates import Scenario, Windows
 from ..response.charm_decay import pair_mass_quantiles
@@ -176,7 +176,7 @@ def channel_inputs(plan: ChannelPlan, bench: Bench, stream: np.uint64) -> Channe
         soft=np.array(list(plan.variations.soft.values()) if bench.variations else [], dtype=np.float64),
         shifts=np.array([NOMINAL, *bench.scenarios.values()], dtype=np.float64),
         chain=kernel_chain(plan.channel, bench.least_photon),
-        quadratic=_acting(plan.channel, bench),
+        quadratic=tuple(unlabelled(one) for one in _acting(plan.channel, bench)),
     )
 
 
