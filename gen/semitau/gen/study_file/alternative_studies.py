@@ -15,6 +15,7 @@ from .checking import checked_alone
 from .idle_variations import nuisance_names
 from .parameter_names import PARENT_SUFFIX, ParameterNames, parameter_names
 from .places import key_of
+from .quadratic_conflicts import sound_shifts
 from .rules import shown, suggestion
 from .sections import Conflict, Place
 from .study import StudyConfig
@@ -187,10 +188,13 @@ def _coverings(study: StudyConfig, folder: Path) -> Collection[str]:
     imported = study.imports.components if study.imports is not None else ()
     groups = [table.budget_group for table in study.variation_tables]
     groups += [sides.group for item in imported for sides in item.variations]
+    shifts = [one for one in sound_shifts(study.sections(folder=folder)) if one.name in fit.coefficients]
+    groups += [one.group for one in shifts if one.constraint is not None]
     known = [f"yield_{item.name}" for item in (*study.components, *imported) if item.yield_constraint.uncertainty]
     known += [f"{name}{suffix}" for name in known for suffix in PARENT_SUFFIX.values()]
     known += [name for name, constraint in fit.constraints.items() if constraint.kind == "law"]
     known += [name for block in fit.correlated for name in block.parameters]
     scales = [name for name in (*names.ratios, *names.yields) if name in known]
     rows = [row for row, of in (("yields", names.yields), ("ratios", names.ratios)) if set(scales) & set(of)]
-    return list(dict.fromkeys([*groups, *rows, *names.variations, *names.nuisances, *scales]))
+    moved = [one.name for one in shifts]
+    return list(dict.fromkeys([*groups, *rows, *names.variations, *names.nuisances, *moved, *scales]))

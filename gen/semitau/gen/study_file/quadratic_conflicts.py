@@ -29,6 +29,11 @@ def shift_names(sections: Sections) -> Iterator[tuple[Place, str]]:
         yield from ((("quadratic", "form_factors", i, "name"), shift.name) for shift in shifts)
 
 
+def sound_shifts(sections: Sections) -> list[FormFactorShift]:
+    """The coefficients of [[quadratic.form_factors]] whose sets are sound."""
+    return [shift for _, _, _, shifts in _written(sections) for shift in shifts]
+
+
 def quadratic_conflicts(sections: Sections) -> Iterator[Conflict]:
     """Form factors move on their own, in components of their own, linearly, and not too many of them."""
     if sections.quadratic is None or not sections.quadratic.form_factors:
