@@ -127,15 +127,19 @@ class Store:
         try:
             found = read(path, kind, key)
         except _OtherVersion as error:
-            self.notes.append(f"{path} was written by another version ({error}): it is made again.")
+            self._note(f"{path} was written by another version ({error}): it is made again.")
             return None
         except FileNotFoundError:
             return None  # removed meanwhile by another run
         except _DAMAGE:
-            self.notes.append(f"{path} is damaged: it is made again.")
+            self._note(f"{path} is damaged: it is made again.")
             return None
         self.used.add(path.name)
         return found
+
+    def _note(self, text: str) -> None:
+        if text not in self.notes:
+            self.notes.append(text)
 
     def _check_version(self) -> bool:
         """Whether what lies in the folder can be read."""
