@@ -30,7 +30,9 @@ from semitau.study.graph.materials import Materials
 from semitau.study.graph.store import Store
 from semitau.study.pictures.bias_matrix import bias_matrix
 from semitau.study.run.study_model import study_model
+from semitau.study.run.study_run import run_study
 from semitau.study.terminal.bias_summary import bias_summary
+from semitau.study.terminal.summary import summary
 
 from .conftest import mini_text
 
@@ -248,6 +250,26 @@ def test_command(path: Path, bias: Bias, tmp_path: Path, capsys: pytest.CaptureF
     said: Any = json.loads(capsys.readouterr().out)
     assert Bias.model_validate(said) == bias
     assert sorted(file.name for file in tmp_path.iterdir()) == ["bias_matrix.png", "bias_matrix.svg"]
+
+
+def test_step_of_a_study(tmp_path: Path) -> None:
+    """Made once, in results and pictures, told by the summary; taken as it is by the next run."""
+    path = tmp_path / "mini.toml"
+    ratio = OTHERS.split("[[alternative]]")[2]
+    text = mini_text().split("# ── Design")[0]
+    path.write_text(f"{text}\n[[alternative]]{ratio}\n[bias]\ntoys = 20\nreplicas = 4\n")
+    run = run_study(path, output=tmp_path / "out", workers=2)
+    assert run.results.bias is not None
+    assert [study.name for study in run.results.bias.studies] == ["nominal", "ratio"]
+    study = read_study(path)
+    assert run.results.bias == bias_part(study, Materials(study, None, 2), 2, None)
+    assert (run.folder.pictures / "bias_matrix.svg").exists()
+    console = Console(width=120, record=True, file=io.StringIO())
+    console.print(summary(run.results, "report.html"))
+    assert "No alternative is found to shift a ratio by more than what covers it." in console.export_text()
+    again = run_study(path, output=tmp_path / "out", workers=2)
+    assert again.reused
+    assert again.results.bias == run.results.bias
 
 
 def test_summary(bias: Bias) -> None:
