@@ -35,7 +35,7 @@ def average_picture(results: AverageResults) -> Sheet:
             regions={f"{100 * region.probability:.1f} %": np.array(region.outline) for region in results.regions},
             prediction=_prediction(results, order),
             planned=[
-                Drawn(f"with {case.planned}", _intervals(case.ratios), _outline(case.ratios, case.correlation))
+                Drawn(f"+ {case.planned}", _intervals(case.ratios), _outline(case.ratios, case.correlation))
                 for case in results.planned
                 if case.found_at == "average" and [ratio.name for ratio in case.ratios] == order
             ],

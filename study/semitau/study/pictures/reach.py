@@ -13,6 +13,9 @@ from .style import INK, QUIET, RC, RULE, ratio_colour
 
 SOURCE_LINES = ("#009e73", "#cc79a7", "#e69f00", "#56b4e9", "#0072b2", "#727b84")
 DASHES = ("solid", (0, (5, 2)), (0, (1, 1.2)), (0, (5, 1.5, 1, 1.5)))
+LEGEND_SHARE = 0.38
+"""Room for the legend below the lines, over the height that these take."""
+
 CAPTION = (
     "Expected error of each ratio by source against the amount of data; a dashed line marks where the finite data "
     "matter as much as all else. Where ratios are compared: expected significance, and the chances to see 3 and 5 σ."
@@ -58,8 +61,9 @@ def _draw_errors(axes: Axes, part: Reach, number: int) -> None:
     if wall is not None:
         axes.axvline(wall * places[0] / part.amounts[0].factor, color=QUIET, linewidth=0.8, linestyle=(0, (2, 2)))
     axes.set_ylabel(f"error of {ratio.label}")
-    axes.set_ylim(max(0.5 * min(min(row) for row in shown.values()), 0.02 * min(total)), 1.5 * max(total))
-    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:g}"))
+    low, high = max(0.7 * min(min(row) for row in shown.values()), 0.02 * min(total)), 1.5 * max(total)
+    axes.set_ylim(low / (high / low) ** LEGEND_SHARE, high)
+    axes.yaxis.set_major_formatter(FuncFormatter(lambda value, _: f"{value:.9f}".rstrip("0").rstrip(".")))
     axes.yaxis.set_minor_formatter(NullFormatter())
     axes.legend(loc="lower left", fontsize=7, ncols=2, borderaxespad=0.1, columnspacing=1.2, handlelength=2.4)
 
