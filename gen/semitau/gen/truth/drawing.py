@@ -210,22 +210,24 @@ def _fill_q2(x: Floats, table: ChannelTable) -> None:
         x[row.Q2 + i] = table.q2_min + (end * end - table.q2_min) * (t * t * (3.0 - 2.0 * t))
 
 
-@kernel
-def _draw_angles(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
+@inlined
+def _all_angles(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64, amplitudes: Any) -> None:
+    """amplitudes : `_real_amplitudes` or `_complex_amplitudes`."""
     _fill_q2(x, table)
     for i in range(LANES):
         key = event_key(stream, first_event + np.uint64(i))
         x_lepton = table.lepton_mass / np.sqrt(x[row.Q2 + i])
-        _lane_angles(x, i, key, x_lepton, table.incoherent, table.coherent, _real_amplitudes(x, i))
+        _lane_angles(x, i, key, x_lepton, table.incoherent, table.coherent, amplitudes(x, i))
+
+
+@kernel
+def _draw_angles(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
+    _all_angles(x, table, stream, first_event, _real_amplitudes)
 
 
 @kernel
 def _draw_angles_complex(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
-    _fill_q2(x, table)
-    for i in range(LANES):
-        key = event_key(stream, first_event + np.uint64(i))
-        x_lepton = table.lepton_mass / np.sqrt(x[row.Q2 + i])
-        _lane_angles(x, i, key, x_lepton, table.incoherent, table.coherent, _complex_amplitudes(x, i))
+    _all_angles(x, table, stream, first_event, _complex_amplitudes)
 
 
 @inlined

@@ -9,7 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from functools import lru_cache
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 import numpy.typing as npt
@@ -168,9 +168,12 @@ def _complex(columns: Floats, a: int, b: int, f: float) -> tuple[complex, ...]:
     )
 
 
-@kernel
-def _weights_real(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
-    """Densities of the drawn decay and the variations go one after the other into the scratch rows."""
+@inlined
+def _weigh(x: Floats, table: VariationTable, out: Floats, n: int, parts: int, amplitudes: Any) -> None:
+    """Densities of the drawn decay and the variations go one after the other into the scratch rows.
+
+    parts, amplitudes : 4 and `_real`, or 16 and `_complex`; the compiler makes a loop of its own for each.
+    """
     incoherent, coherent, columns, groups = table.incoherent, table.coherent, table.columns, table.groups
     lepton_mass, width = table.lepton_mass, table.width
     for i in range(n):
@@ -181,39 +184,24 @@ def _weights_real(x: Floats, table: VariationTable, out: Floats, n: int) -> None
         theta, v, cos_chi, sin_chi = x[row.COS_THETA + i], x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i]
         px, py, pz = x[row.POLARISATION_X + i], x[row.POLARISATION_Y + i], x[row.POLARISATION_Z + i]
         for group in range(groups):
-            low = (k * groups + group) * (4 * WIDTH)
-            high = low + groups * (4 * WIDTH)
+            low = (k * groups + group) * (parts * WIDTH)
+            high = low + groups * (parts * WIDTH)
             place = row.SCRATCH_0 + group * WIDTH
             for j in range(width):
                 x[place + j] = chain_density(
                     x_lepton, incoherent, coherent, theta, v, cos_chi, sin_chi, 1.0, px, py, pz,
-                    _real(columns, low + j, high + j, f),
+                    amplitudes(columns, low + j, high + j, f),
                 )  # fmt: skip
         scale = 1.0 / x[row.SCRATCH_0]
         for j in range(table.variations):
             out[i, j] = x[row.SCRATCH_0 + 1 + j] * scale
+
+
+@kernel
+def _weights_real(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
+    _weigh(x, table, out, n, 4, _real)
 
 
 @kernel
 def _weights_complex(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
-    incoherent, coherent, columns, groups = table.incoherent, table.coherent, table.columns, table.groups
-    lepton_mass, width = table.lepton_mass, table.width
-    for i in range(n):
-        # Everything of the event is read before the loop: the compiler cannot know that the scratch rows are elsewhere.
-        k = int(x[row.NODE + i])
-        f = x[row.NODE + i] - k
-        x_lepton = lepton_mass / np.sqrt(x[row.Q2 + i])
-        theta, v, cos_chi, sin_chi = x[row.COS_THETA + i], x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i]
-        px, py, pz = x[row.POLARISATION_X + i], x[row.POLARISATION_Y + i], x[row.POLARISATION_Z + i]
-        for group in range(groups):
-            low = (k * groups + group) * (16 * WIDTH)
-            high = low + groups * (16 * WIDTH)
-            place = row.SCRATCH_0 + group * WIDTH
-            for j in range(width):
-                x[place + j] = chain_density(
-                    x_lepton, incoherent, coherent, theta, v, cos_chi, sin_chi, 1.0, px, py, pz,
-                    _complex(columns, low + j, high + j, f),
-                )  # fmt: skip
-        scale = 1.0 / x[row.SCRATCH_0]
-        for j in range(table.variations):
-            out[i, j] = x[row.SCRATCH_0 + 1 + j] * scale
+    _weigh(x, table, out, n, 16, _complex)
