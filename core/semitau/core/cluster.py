@@ -82,10 +82,11 @@ def _is_address(text: str) -> bool:
 
 
 @contextmanager
-def connected(engine: str, *, patience: float = WORKER_SECONDS) -> Iterator[Cluster]:
+def connected(engine: str, *, patience: float | None = None) -> Iterator[Cluster]:
     """The workers of a scheduler, for as long as the context lasts; they are left running.
 
-    engine : tcp://HOST:PORT or the path of a scheduler file. patience : seconds without any worker.
+    engine : tcp://HOST:PORT or the path of a scheduler file. patience : seconds without any worker,
+    WORKER_SECONDS for None.
 
     Raises
     ------
@@ -108,7 +109,7 @@ def connected(engine: str, *, patience: float = WORKER_SECONDS) -> Iterator[Clus
         warnings.simplefilter("ignore")
         client = _client(distributed.Client, address)
         try:
-            cluster = Cluster(client, address, patience)
+            cluster = Cluster(client, address, WORKER_SECONDS if patience is None else patience)
             cluster.expect_workers()
             yield cluster
         finally:
