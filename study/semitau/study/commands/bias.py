@@ -20,18 +20,17 @@ def command(call: Invocation, file: Path, output: Path | None) -> None:
     of the ratios without fluctuations, its error from finite templates, pulls, coverage and goodness of fit of toys,
     and the shift against the error that is meant to cover it.
     """
-    from tempfile import TemporaryDirectory
-
     from ..bias.run import bias_part
     from ..graph.materials import Materials
-    from ..graph.store import Store
+    from ..graph.open_store import open_store
     from ..run.opening import open_study
     from ..terminal.bias_summary import bias_summary
 
     study = open_study(file, call.seed)
-    # What an alternative does not touch is made once: the store of one call knows it again.
-    with call.terminal.progress() as report, TemporaryDirectory(prefix="semitau-") as folder:
-        found = bias_part(study, Materials(study, Store(Path(folder)), call.workers), call.workers, report)
+    # What an alternative does not touch is made once: the store knows it again.
+    with call.terminal.progress() as report, open_store(study) as store:
+        found = bias_part(study, Materials(study, store, call.workers), call.workers, report)
+    call.terminal.show(*store.notes)
     call.terminal.show(*bias_summary(found))
     if output is not None:
         from ..pictures.bias_matrix import bias_matrix

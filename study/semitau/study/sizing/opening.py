@@ -10,6 +10,7 @@ from semitau.core.template_file import read_templates
 from semitau.gen.study_file.sizing import SizingSection
 
 from ..graph.materials import Materials
+from ..graph.open_store import open_store
 from ..run.opening import open_study
 from ..terminal.fit_choices import FitChoices
 from .part import Sizing
@@ -47,7 +48,8 @@ def sizing_of_file(
     study = open_study(path, seed)
     asked = _changed(study.sizing or SizingSection(), share, toys)
     study = study.model_copy(update={"sizing": asked})
-    return sizing_part(study, Materials(study, None, workers, report), workers, report)
+    with open_store(study) as store:
+        return sizing_part(study, Materials(study, store, workers, report), workers, report)
 
 
 def _changed(asked: SizingSection, share: float | None, toys: int | None) -> SizingSection:
