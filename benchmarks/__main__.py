@@ -15,6 +15,7 @@ from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import build_templates
 
 from .decays import chains_of, decay_figures, quadratic_figure, scaling_figure, shape_figure
+from .design import design_figures
 from .figures import Figure, table
 from .files import file_figures
 from .fits import fit_figures, toy_figures
@@ -48,6 +49,7 @@ def sections(path: Path, study: StudyConfig, quick: bool) -> Iterator[Section]:
     yield "Fits", lambda: fit_figures(templates, fits)
     if two:
         yield "Toys", lambda: toy_figures(templates, 200 if quick else 2000, repetitions)
+    yield "Design", lambda: design_figures(100 if quick else 1000, repetitions)
     yield "Template files", lambda: file_figures(templates, repetitions)
     yield "Start", lambda: [help_figure()]
     if not quick:

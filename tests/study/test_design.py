@@ -97,6 +97,14 @@ def test_points_agree_with_templates_built_for_them(study: StudyConfig, evaluato
         np.testing.assert_allclose(errors_at(evaluator, tried), wanted, rtol=1e-6)
 
 
+def test_mirrored_sides(study: StudyConfig) -> None:
+    """One side counts, of weights, constant factors and other reconstructions."""
+    sides = {"tag_resolution": "plus", "Dst_rho2": "minus", "soft_charged": "plus", "muon_id": "minus"}
+    one_sided = study.model_copy(update={"fit": study.fit.model_copy(update={"mirrored": sides})})
+    own = evaluator_of(one_sided, DESIGN, 2, purpose=TEMPLATES)
+    np.testing.assert_allclose(errors_at(own, own.space.start), fitted_errors(one_sided), rtol=1e-6)
+
+
 def test_brute_force_over_all_cuts(study: StudyConfig, evaluator: Evaluator) -> None:
     """Every point of a small scan built and fitted: the same errors, and the search finds the best of them."""
     space = evaluator.space

@@ -122,7 +122,7 @@ def _draw_choices(axes: Axes, choices: Sequence[DesignChoice]) -> None:
     axes.axvline(0.0, color=RULE, linewidth=0.8)
     for line, (choice, rise) in enumerate(zip(choices, rises, strict=True)):
         axes.axhline(line, color=RULE, linewidth=0.4, zorder=0)
-        words = f"{choice.bins} bins" + (", now" if choice.now else "") + (", proposed" if choice.chosen else "")
+        words = f"{choice.bins} bins" + (", axes of the study" if choice.now else "") + (", proposed" if choice.chosen else "")
         if rise is None or rise > right:
             axes.text(
                 right * 1.26, line, "no fit" if rise is None else f"{rise:.0f} %", ha="right", va="center", size=7
