@@ -48,6 +48,10 @@ def test_sound(tmp_path: Path) -> None:
         ("[design]\npoints = 0", "points"),
         ("[design]\nmost_axes = 4", "most_axes"),
         ("[fit]\napart = ['R0']\n[design]", "does not know shapes and rates apart"),
+        (
+            "[quadratic]\ncoefficients = ['SR']\n[fit]\ncoefficients = ['SR']\n[design]",
+            "does not know templates that follow coefficients",
+        ),
     ],
 )
 def test_mistakes(tmp_path: Path, lines: str, message: str) -> None:

@@ -34,6 +34,12 @@ def design_conflicts(study: StudyConfig, design: DesignSection) -> Iterator[Conf
     if study.fit.apart:
         what, remedy = "does not know shapes and rates apart", "Leave out apart in [fit], or [design]."
         yield Conflict(("design",), what, shown(study.fit.apart), remedy=remedy)
+    if study.fit.coefficients:
+        what, remedy = (
+            "does not know templates that follow coefficients",
+            "Leave out coefficients in [fit], or [design].",
+        )
+        yield Conflict(("design",), what, shown(study.fit.coefficients), remedy=remedy)
     for observable, scan in design.cuts.items():
         place: Place = ("design", "cuts", observable)
         if observable == "delta_m":
