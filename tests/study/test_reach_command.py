@@ -59,8 +59,8 @@ def test_words(template_file: Path, capsys: Capture) -> None:
     text = capsys.readouterr().out
     assert re.search(r"R\(D\): .*(limited by|from) ", text)
     assert re.search(r"R\(D\) and R\(D\*\) together: 3\s*σ (with|not even)", text)
-    assert "7e6" in text
-    assert "7e11" in text
+    assert "7\u00a0×\u00a010⁶" in text
+    assert "7\u00a0×\u00a010¹¹" in text
     assert main(["reach", str(template_file)]) == 0
     text = capsys.readouterr().out
     assert "×0.1" in text
@@ -69,7 +69,7 @@ def test_words(template_file: Path, capsys: Capture) -> None:
 
 def test_pairs_come_from_the_study(templates: TemplateSet) -> None:
     assert chosen_axis(templates, None, None).told(10.0) == "10 times the data"
-    assert chosen_axis(templates, 5e6, None).told(10.0) == "5e7 B pairs (×10)"
+    assert chosen_axis(templates, 5e6, None).told(10.0) == "5\u00a0×\u00a010⁷ B pairs (×10)"
     study = TemplateSet(
         templates.categories, templates.components, templates.parameters, templates.nuisances, templates.templates,
         provenance={"study": "[experiment]\nb_pairs = 700e6\n"},

@@ -6,6 +6,7 @@ import tomllib
 from dataclasses import dataclass
 
 from semitau.core.templates import TemplateSet
+from semitau.core.true_minus import formatted
 
 PAIRS, LUMINOSITY, MULTIPLES = "B pairs", "fb⁻¹", "times the data"
 
@@ -22,15 +23,15 @@ class Axis:
         return factor * self.size
 
     def shown(self, factor: float) -> str:
-        """In a table, e.g. "×10", "7e9" or "7110"."""
+        """In a table, e.g. "×10", "7 × 10⁹" or "7110"."""
         if self.unit == MULTIPLES:
             return f"×{factor:.3g}"
         if self.unit == PAIRS:
-            return f"{self.of(factor):.2g}".replace("e+0", "e").replace("e+", "e")
+            return formatted(self.of(factor), ".2g")
         return f"{float(f'{self.of(factor):.3g}'):g}"
 
     def told(self, factor: float) -> str:
-        """In a sentence, e.g. "10 times the data" or "7e9 B pairs (×10)"."""
+        """In a sentence, e.g. "10 times the data" or "7 × 10⁹ B pairs (×10)"."""
         if self.unit == MULTIPLES:
             return f"{factor:.3g} times the data"
         return f"{self.shown(factor)} {self.unit} (×{factor:.3g})"

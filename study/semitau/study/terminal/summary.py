@@ -10,6 +10,7 @@ from rich.table import Table
 from rich.text import Text
 
 from ..bias.part import Bias
+from ..findings import Finding, findings
 from ..numbers import GAP, counted, digits_for, percent, signed, with_error
 from ..results import (
     Blinding,
@@ -52,6 +53,8 @@ def summary(results: Results, report: str) -> RenderableType:
     if results.linearity:
         parts.append(linearity_table(results.linearity))
     parts.append(verdict_text(results.verdict))
+    if found := findings(results):
+        parts.append(findings_text(found))
     if results.bias is not None:
         parts.append(bias_text(results.bias))
     parts.extend(Text(f"Look at this: {warning}", style="yellow") for warning in results.warnings)
@@ -199,6 +202,15 @@ def listed(sentences: Sequence[str]) -> Table:
     for sentence in sentences:
         grid.add_row("  •", Text(sentence))
     return grid
+
+
+def findings_text(found: Sequence[Finding]) -> RenderableType:
+    """What must be looked at first, then the most important of every other part."""
+    lines = Table.grid(padding=(0, 1))
+    for finding in sorted(found, key=lambda finding: not finding.alarming):
+        mark = "Look at this: " if finding.alarming else ""
+        lines.add_row(finding.topic, Text(f"{mark}{finding.text}"), style="yellow" if finding.alarming else "")
+    return Group(lines, "")
 
 
 def cut_flow_table(flow: Sequence[CutFlowComponent]) -> Table:

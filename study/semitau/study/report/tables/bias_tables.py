@@ -66,7 +66,7 @@ def nominal_table(results: Results) -> ReportTable | None:
 
 def _nominal_cells(pair: BiasPair, ratio: BiasRatio) -> Iterator[Cell]:
     yield words(ratio.label)
-    yield measured(ratio.shift, ratio.shift_error) if ratio.shift_error > 0 else _exact(ratio)
+    yield _shift(ratio)
     yield number(ratio.significance, 2, plus=True)
     yield number(ratio.covering, digits_for(ratio.error) + 1)
     yield words(MARKS[ratio.status], ratio.status)
@@ -80,9 +80,11 @@ def _nominal_cells(pair: BiasPair, ratio: BiasRatio) -> Iterator[Cell]:
     yield chance(None if pair.goodness is None else pair.goodness.p_value)
 
 
-def _exact(ratio: BiasRatio) -> Cell:
-    shown = number(ratio.shift, digits_for(ratio.error) + 1, plus=True).shown
-    return Cell(shown, (ratio.shift, ratio.shift_error))
+def _shift(ratio: BiasRatio) -> Cell:
+    """The shift with its error; what is exact, or nearly so, without it."""
+    if ratio.shift_error > 1e-3 * ratio.error:
+        return measured(ratio.shift, ratio.shift_error)
+    return Cell(number(ratio.shift, digits_for(ratio.error) + 2, plus=True).shown, (ratio.shift, ratio.shift_error))
 
 
 def _pull(value: float | None, error: float | None) -> Cell:

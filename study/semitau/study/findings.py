@@ -1,18 +1,17 @@
-"""The most important of every section in a sentence or two, for the first page."""
+"""The most important of every part of a study, for the terminal and the first page of the report."""
 
 from __future__ import annotations
 
 from collections.abc import Iterator
 from dataclasses import dataclass
 
-from ..averages.part import AverageResults
-from ..bias.part import Bias
-from ..design.part import Design
-from ..numbers import percent, signed, with_error
-from ..reach.part import Reach
-from ..results import Results
-from ..sizing.part import Sizing
-from .table import chance
+from .averages.part import AverageResults
+from .bias.part import Bias
+from .design.part import Design
+from .numbers import percent, signed, with_error
+from .reach.part import Reach
+from .results import Results
+from .sizing.part import Sizing
 
 BAD_FIT = 0.01
 """p-value of the fit below which it is worth a look; by chance it happens in one study of a hundred."""
@@ -71,10 +70,14 @@ def _bias(bias: Bias) -> Finding:
     }
     if missed:
         names = ", ".join(labels[name] for name in others if name in missed)
-        which = f"{len(missed)} of {len(others)} {'is' if len(missed) == 1 else 'are'} not covered: {names}."
+        which = f"{_alternatives(len(missed), len(others))} not covered: {names}."
         return Finding("bias", "Alternatives", " ".join((which, *bias.not_covered[:1])), alarming=True)
-    text = f"No shift of a ratio by one of {len(others)} is left uncovered."
+    text = f"No shift of a ratio by one of the {len(others)} is left uncovered."
     return Finding("bias", "Alternatives", " ".join((text, *bias.not_covered[:1], *bias.sentences[:1])))
+
+
+def _alternatives(missed: int, of: int) -> str:
+    return f"{missed} of {of} alternative{'s' * (of != 1)} {'is' if missed == 1 else 'are'}"
 
 
 def _sizing(sizing: Sizing) -> Finding:
@@ -93,13 +96,15 @@ def _goodness(results: Results) -> Iterator[Finding]:
         return
     where = "goodness" if results.quality is not None else "fit"
     source = "χ²" if goodness.toy_p_value is None else "toys"
-    text = f"p {'' if p_value < 0.0005 else '= '}{chance(p_value).shown} from {source}"
+    text = f"{_p(p_value)} from {source}"
     if results.quality is not None and results.quality.categories:
         worst = min(results.quality.categories, key=lambda category: category.p_value)
-        text += (
-            f"; worst category: {worst.label}, p {'' if worst.p_value < 0.0005 else '= '}{chance(worst.p_value).shown}"
-        )
+        text += f"; worst category: {worst.label}, {_p(worst.p_value)}"
     yield Finding(where, "Quality of the fit", f"{text}.", alarming=p_value < BAD_FIT)
+
+
+def _p(p_value: float) -> str:
+    return "p < 0.001" if p_value < 0.0005 else f"p = {signed(p_value, 3)}"
 
 
 def _design(design: Design) -> Finding:
