@@ -315,6 +315,7 @@ def mini_text(changes: Mapping[str, str] | None = None) -> str:
     text = re.sub(r"^el = \[.*\]$", "el = [0.2, 0.9, 1.5, 2.6]", text, flags=re.M)
     text = re.sub(r'^output = ".*"', 'output = "out"', text, flags=re.M)
     text = re.sub(r"\n# ── Other worlds.*?(?=\n# ── |\Z)", "", text, flags=re.S)  # test_bias.py has its own
+    text = re.sub(r"\n# ── How many events.*?(?=\n# ── |\Z)", "", text, flags=re.S)  # test_sizing.py has its own
     for old, new in (changes or {}).items():
         assert old in text, old
         text = text.replace(old, new)
