@@ -6,7 +6,7 @@ from semitau.core.true_minus import formatted
 
 from ...numbers import GAP, counted, digits_for
 from ...results import Results
-from ...sizing.part import SizingToyRatio, SizingToys
+from ...sizing.part import SizingCost, SizingToyRatio, SizingToys
 from ..table import NOTHING, Cell, Column, ReportTable, chance, count, measured, number, share, table, words
 
 ALL = "all samples"
@@ -52,7 +52,7 @@ def sample_table(results: Results) -> ReportTable | None:
         *(Column(f"costs {label}") for label in labels.values()),
         Column("needed / generated", names=("needed over generated", "its error")),
         Column("needed"),
-        Column("because of", text=True),
+        Column("because of", text=True, names=("decisive ratio", "because of")),
     ]
     costs = {(part.sample, part.ratio): part.cost for part in sizing.costs}
     rows = [
@@ -64,7 +64,7 @@ def sample_table(results: Results) -> ReportTable | None:
             *(share(costs.get((part.sample, ratio)), 2) for ratio in labels),
             _uncertain(part.needed, part.needed_error, digits_for(part.needed_error or 0.1 * part.needed)),
             count(part.needed_events),
-            words(labels.get(part.decisive, part.decisive)),
+            words(f"{labels.get(part.decisive, part.decisive)}: {part.because}", part.decisive, part.because),
         ]
         for part in sizing.samples
     ]
@@ -72,18 +72,11 @@ def sample_table(results: Results) -> ReportTable | None:
 
 
 def cost_table(results: Results) -> ReportTable | None:
-    """Each sample and ratio: to be downloaded."""
-    headings = "sample,ratio,part of the error,error of part,cost,needed over generated,needed by the formula,its error"
-    rows = [
-        [
-            words(part.sample),
-            words(part.ratio),
-            *(number(value, 6) for value in (part.part, part.part_error, part.cost, part.needed, part.needed_formula)),
-            number(part.needed_error, 6),
-        ]
-        for part in (results.sizing.costs if results.sizing is not None else ())
-    ]
-    return table("sizing_costs", "What each sample does to each ratio", list(map(Column, headings.split(","))), rows)
+    """Each sample and ratio with all that is known: to be downloaded."""
+    names = [name.replace("_", " ") for name in SizingCost.model_fields]
+    costs = results.sizing.costs if results.sizing is not None else ()
+    rows = [[words("", value) for value in part.model_dump().values()] for part in costs]
+    return table("sizing_costs", "What each sample does to each ratio", list(map(Column, names)), rows)
 
 
 def curve_table(results: Results) -> ReportTable | None:
