@@ -338,7 +338,7 @@ class StageTime(Part):
 
 
 class Timing(Part):
-    """What the run cost. The only part that differs between two runs of the same study."""
+    """What the run cost. With `sizing.allocation`, which rests on times, all that differs between two runs of a study."""
 
     started: str = Field(description="Date and time, UTC, ISO 8601")
     stages: tuple[StageTime, ...] = Field(description="In order")

@@ -20,6 +20,10 @@ class SizingRatio(Part):
     templates: float = Field(ge=0, description="Part of the error now, by quadrature, that is template statistics")
     templates_error: float = Field(ge=0, description="Its error from the finite numbers that it is known from")
     with_needed: float = Field(gt=0, description="Expected error with the needed events of every sample")
+    bias_now: float | None = Field(
+        default=None, description="Pull of the noise of all samples together now, to first order; null if not known"
+    )
+    bias_needed: float | None = Field(default=None, description="The same with the needed events of every sample")
 
 
 class SizingSample(Part):

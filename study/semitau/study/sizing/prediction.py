@@ -124,9 +124,16 @@ def ratio_parts(found: Prediction) -> tuple[SizingRatio, ...]:
             templates=float(whole[r]),
             templates_error=quadratic_error(parts[r], unsure[r]),
             with_needed=float(needed[r]),
+            bias_now=_bias(found, r, np.ones(len(found.samples))),
+            bias_needed=_bias(found, r, found.needed_factors),
         )
         for r, name in enumerate(numbers.ratios)
     )
+
+
+def _bias(found: Prediction, ratio: int, factors: Floats) -> float | None:
+    """Of all samples together, the largest of all true ratios that were tried."""
+    return max((float((known.bias[ratio] / factors).sum()) for known in found.pulled), key=abs, default=None)
 
 
 def quadratic_error(parts: Floats, errors: Floats) -> float:

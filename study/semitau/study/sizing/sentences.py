@@ -8,7 +8,7 @@ from math import sqrt
 from semitau.fit.toys.pulls import LEVELS
 
 from ..numbers import GAP, counted, percent, signed, with_error
-from .part import Sizing, SizingSample, SizingToyRatio, SizingToys, SizingVerification
+from .part import Sizing, SizingRatio, SizingSample, SizingToyRatio, SizingToys, SizingVerification
 
 UNLIKELY = 0.0027
 """p-value of three standard deviations: a prediction that fares worse is doubted."""
@@ -30,8 +30,15 @@ def _costs(found: Sizing) -> Iterator[str]:
         yield (
             f"{ratio.label}: template statistics are {with_error(ratio.templates, max(ratio.templates_error, 1e-12))} "
             f"of the expected error of {signed(ratio.now, 4)}, which is {percent(growth)} larger than with exact "
-            f"templates; with the needed events {percent(ratio.with_needed / ratio.exact - 1.0)}."
+            f"templates; with the needed events {percent(ratio.with_needed / ratio.exact - 1.0)}" + _bias(ratio)
         )
+
+
+def _bias(ratio: SizingRatio) -> str:
+    if ratio.bias_now is None or ratio.bias_needed is None:
+        return "."
+    now, needed = (signed(bias / ratio.exact, 3, plus=True) for bias in (ratio.bias_now, ratio.bias_needed))
+    return f". Noise of the templates pulls it by {now} errors, with the needed events by {needed}."
 
 
 def _needs(found: Sizing) -> str:
