@@ -1,17 +1,23 @@
 """Branching fractions given in the study file: what they do to decay chains and expected events, and what is refused.
 
-Expected numbers are products of the numbers given, worked out here; nothing is drawn at random.
+Expected numbers are products of the numbers given, worked out here. One test draws at random and asks for a p-value
+above 1e-6; SEMITAU_TEST_SEED changes its seed.
 """
 
 from __future__ import annotations
 
+import os
 import re
 from pathlib import Path
 
+import numpy as np
 import pytest
+from scipy import integrate, stats
 from semitau import gen
-from semitau.core.constants import LIFETIME
+from semitau.core.constants import LIFETIME, MASS
 from semitau.core.errors import InputError
+from semitau.core.streams import stream_key
+from semitau.gen.block import CHARM_MASS, LANES, LIGHT_MASS, new_block
 from semitau.gen.decays.branching_fractions import COMPLETE, FROM_TABLES, TABLES, BranchingFractions
 from semitau.gen.decays.chains import Channel, channels
 from semitau.gen.decays.decay import CHARMS, Decay, charm_name
@@ -21,11 +27,15 @@ from semitau.gen.study_file.reader import read_study
 from semitau.gen.study_file.study import StudyConfig
 from semitau.gen.templates.build import build_templates
 from semitau.gen.templates.component_plan import plan_channels
+from semitau.gen.truth.channel_table import channel_table
+from semitau.gen.truth.drawing import draw_decays
 
 from .small_study import TEXT
 
 DOCS = Path(__file__).parents[2] / "docs" / "physics.md"
 PARENTS = ("B+", "B0")
+SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
+PION, D_PLUS = MASS["pi+"], MASS["D+"]
 DOUBLE_CHARM = '[[double_charm]]\ncomponent = "cc"\nbeside = ["D_s", "D K"]\nevents = 100_000\n'
 
 
@@ -40,6 +50,9 @@ def given(**tables: dict[str, object]) -> BranchingFractions:
         "Ds": "D_s+",
     }
     return BranchingFractionTables.model_validate({names.get(k, k): v for k, v in tables.items()}).fractions
+
+
+D1_BROAD_TO_PAIRS = BranchingFractionTables.model_validate({"D1'(2430)": {"D* pi": 0.8, "D pi pi": 0.2}}).fractions
 
 
 def total(chains: tuple[Channel, ...], **wanted: str) -> float:
@@ -161,6 +174,32 @@ def test_decays_of_excited_charm() -> None:
     assert total(tensor, vector="", second="none") == pytest.approx(0.5 * whole, rel=1e-12)
     assert whole - total(tensor, vector="") == pytest.approx(0.2 * whole, rel=1e-12)
     assert whole - total(tensor, second="none") == pytest.approx(0.3 * whole, rel=1e-12)
+
+
+@pytest.mark.parametrize("family", ["D2*(2460)", "D1'(2430)"])
+def test_two_pions_of_a_state_that_has_none_in_the_tables(family: str) -> None:
+    """Pairs between the edges of phase space, and along the borders of the Dalitz plot (particle data tables, review of
+    kinematics) for a fixed mass: its height in the square of the pair mass is 4 m_pair p_pi* p_D*."""
+    fractions = {"D2*(2460)": given(D2={"D* pi": 0.3, "D pi": 0.5, "D pi pi": 0.2}), "D1'(2430)": D1_BROAD_TO_PAIRS}
+    (chain,) = (
+        c for c in of(family, fractions[family], ("mu",))
+        if (c.parent, c.bachelor, c.second, c.vector) == ("B0", "charged", "charged", "")
+    )  # fmt: skip
+    table, x, rows = channel_table(chain), new_block(), []
+    for block in range(60):
+        draw_decays(x, table, stream_key(SEED, "pairs"), np.uint64(block * LANES))
+        rows.append([x[row : row + LANES].copy() for row in (CHARM_MASS, LIGHT_MASS)])
+    charm, pair = np.concatenate(rows, axis=1)
+    assert np.all(pair > 2 * PION)
+    assert np.all(pair < charm - D_PLUS)
+    if family == "D2*(2460)":
+        m, points = float(charm[0]), np.linspace(2 * PION, charm[0] - D_PLUS, 4001)
+        in_pair = np.sqrt(np.maximum(points**2 / 4 - PION**2, 0.0))
+        energy = (m * m - points**2 - D_PLUS**2) / (2 * points)
+        height = in_pair * np.sqrt(np.maximum(energy**2 - D_PLUS**2, 0.0)) * points
+        cumulated = integrate.cumulative_simpson(height, x=points, initial=0.0)
+        found = stats.kstest(pair, lambda value: np.interp(value, points, cumulated / cumulated[-1]))
+        assert found.pvalue > 1e-6
 
 
 def test_double_charm() -> None:
