@@ -21,7 +21,10 @@ if TYPE_CHECKING:
 WIDTH, HEIGHT = 0.52, 0.27
 """Inches of a cell."""
 
-BETWEEN, KEY = 0.42, 0.65
+BETWEEN, BESIDE, KEY = 0.42, 0.3, 0.65
+WIDEST, NARROWEST = 7.2, 7.0
+"""Inches of the sheet up to which the matrices stand side by side, and that the key needs."""
+
 ROOM_FOR_KEY = 7.4
 FULL = 1.0
 """Shift in errors of the full colours; larger ones are drawn alike and told apart by their numbers."""
@@ -37,21 +40,26 @@ def bias_matrix(bias: Bias) -> Sheet:
     longest = LETTER * max(map(len, labels))
     margin, foot = 0.6 + longest, 0.15 + longest
     side, tall = WIDTH * len(labels), HEIGHT * len(labels)
-    height = KEY + foot + len(ratios) * (tall + BETWEEN) + 0.4
-    width = max(margin + side + 0.3, ROOM_FOR_KEY)
+    in_a_row = margin + len(ratios) * (side + BESIDE) <= WIDEST
+    across, rows = (len(ratios), 1) if in_a_row else (1, len(ratios))
+    height = KEY + foot + rows * (tall + BETWEEN) + 0.4
+    width = max(margin + across * (side + BESIDE), NARROWEST)
     sheet = Sheet(width, height, "Bias matrix", "shift of the fitted ratio in units of its error, expected sets")
     for number, (name, label) in enumerate(ratios.items()):
-        bottom = KEY + foot + (len(ratios) - 1 - number) * (tall + BETWEEN)
-        axes = sheet.axes(margin, bottom, side, tall)
+        row, column = divmod(number, across)
+        bottom = KEY + foot + (rows - 1 - row) * (tall + BETWEEN)
+        axes = sheet.axes(margin + column * (side + BESIDE), bottom, side, tall)
         with rc_context(RC):
             _matrix(axes, bias.studies, _cells(bias, name))
             axes.set_title(label, color=INK, fontweight="bold", pad=5)
-            axes.set_yticks([i + 0.5 for i in range(len(labels))], labels[::-1])
-            last = number == len(ratios) - 1
-            axes.set_xticks([i + 0.5 for i in range(len(labels))], labels if last else [""] * len(labels), rotation=90)
+            nothing = [""] * len(labels)
+            axes.set_yticks([i + 0.5 for i in range(len(labels))], nothing if column else labels[::-1])
+            lowest = row == rows - 1
+            axes.set_xticks([i + 0.5 for i in range(len(labels))], labels if lowest else nothing, rotation=90)
             axes.tick_params(length=0, labelcolor=INK)
-            axes.set_ylabel("made with", color=QUIET)
-            if last:
+            if not column:
+                axes.set_ylabel("made with", color=QUIET)
+            if lowest:
                 axes.set_xlabel("fitted with", color=QUIET)
     _key(sheet, 0.12, bias.negligible)
     return sheet
