@@ -68,4 +68,6 @@ class DesignSection(Table):
         default=None, description="most decays to generate of each component; those of the study if left out"
     )
     points: Count = Field(default=5000, description="most selections to look at")
-    memory: Annotated[Count, Field(ge=16)] = Field(default=512, description="MB for the sums of candidates")
+    memory: Annotated[Count, Field(ge=16)] = Field(
+        default=512, description="MB for the sums of candidates, of the search and again of the confirmation"
+    )

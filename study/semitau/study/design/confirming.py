@@ -21,7 +21,9 @@ from semitau.fit.uncertainty.working_points import Sensitivity, add_cross_inform
 from .goal import Goal
 from .space import Space, TableAxis, WorkingPoint
 
-BATCHES = 8
+BATCHES, LEAST_BATCHES = 8, 4
+"""Of the events that confirm; as many as the memory allows."""
+
 CERTAIN = 2.0
 """Gain over its statistical error from which on it counts as confirmed; common practice."""
 

@@ -13,7 +13,7 @@ from semitau.gen.study_file.design import DesignSection
 from semitau.gen.study_file.design_conflicts import design_conflicts
 from semitau.gen.study_file.study import StudyConfig
 
-from .confirming import BATCHES, Confirmed, confirm, confirmation_space
+from .confirming import BATCHES, LEAST_BATCHES, Confirmed, confirm, confirmation_space
 from .evaluation import Evaluator
 from .goal import Goal
 from .merging import Merged, Wanted, choices, merge
@@ -164,9 +164,11 @@ def _confirm(
     points = (space.start, best)
     coarse = confirmation_space(space, points)
     _, columns = columns_of(study)
+    few = coarse.grids(study.categories)
+    room = design.memory * 1_000_000 // (8 * len(columns.all) * sum(grid.rows for grid in few))
     grids = grid_sums(
-        study, coarse.grids(study.categories), columns, purpose=CONFIRMATION, most_events=design.events,
-        batches=BATCHES, workers=evaluator.workers, report=_renamed(report),
+        study, few, columns, purpose=CONFIRMATION, most_events=design.events,
+        batches=min(BATCHES, max(LEAST_BATCHES, room)), workers=evaluator.workers, report=_renamed(report),
     )  # fmt: skip
     return confirm(space, coarse, grids, points, evaluator.sensitivity, evaluator.goal)
 
