@@ -124,6 +124,14 @@ def test_fits_with_functions_and_held_parameters() -> None:
     assert numbers.errors(1.0)[0] == pytest.approx(result.error("R_D"), rel=1e-7)
 
 
+def test_fits_with_coefficients() -> None:
+    model = Model(problems.following(events=20.0), coefficients=("SR",))
+    numbers = event_numbers(model)
+    assert numbers.ratios == ("R_D", "R_Dst", "SR")
+    result = maximise(model, model.expected_data())
+    assert numbers.errors(1.0) == pytest.approx([result.error(name) for name in numbers.ratios], rel=1e-6)
+
+
 def test_needed_events_cost_their_share() -> None:
     """By fits: one template poor as needed, all others exact."""
     templates = problems.small()

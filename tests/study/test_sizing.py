@@ -23,6 +23,7 @@ from semitau.gen.study_file.reader import read_study
 from semitau.gen.study_file.study import StudyConfig
 from semitau.study.command_line import main
 from semitau.study.graph.materials import Materials
+from semitau.study.numbers import bracketed
 from semitau.study.pictures.sizing import sizing_drawings
 from semitau.study.run.study_model import study_model
 from semitau.study.sizing.allocating import rounded_down, rounded_up
@@ -30,7 +31,7 @@ from semitau.study.sizing.part import Sizing
 from semitau.study.sizing.samples import samples_of_study, with_events
 from semitau.study.sizing.sizing_part import ingredients, sizing_part
 from semitau.study.sizing.verification import mixed, plan_of_sets
-from semitau.study.terminal.sizing_summary import bracketed, sizing_summary
+from semitau.study.terminal.sizing_summary import sizing_summary
 
 from .conftest import mini_text
 

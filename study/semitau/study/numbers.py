@@ -25,6 +25,14 @@ def with_error(value: float, error: float) -> str:
     return f"{signed(value, places)}{GAP}±{GAP}{error:.{places}f}"
 
 
+def bracketed(value: float, error: float) -> str:
+    """The error in units of the last digits, e.g. "0.0810(18)"; three digits where it is below them."""
+    if not error > 0.005 * abs(value):
+        return signed(value, digits_for(abs(value)) + 1) if value else "0"
+    places = digits_for(error)
+    return f"{signed(value, places)}({round(error * 10**places)})"
+
+
 def signed(value: float, places: int, plus: bool = False) -> str:
     """Fixed decimal places, a true minus sign, no "-0"."""
     text = f"{value:+.{places}f}" if plus else f"{value:.{places}f}"

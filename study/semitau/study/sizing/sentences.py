@@ -7,7 +7,7 @@ from math import sqrt
 
 from semitau.fit.toys.pulls import LEVELS
 
-from ..numbers import GAP, counted, percent, signed, with_error
+from ..numbers import GAP, bracketed, counted, percent, signed
 from .part import Sizing, SizingRatio, SizingSample, SizingToyRatio, SizingToys, SizingVerification
 
 UNLIKELY = 0.0027
@@ -28,7 +28,7 @@ def _costs(found: Sizing) -> Iterator[str]:
     for ratio in found.ratios:
         growth = ratio.now / ratio.exact - 1.0
         yield (
-            f"{ratio.label}: template statistics are {with_error(ratio.templates, max(ratio.templates_error, 1e-12))} "
+            f"{ratio.label}: template statistics are {bracketed(ratio.templates, ratio.templates_error)} "
             f"of the expected error of {signed(ratio.now, 4)}, which is {percent(growth)} larger than with exact "
             f"templates; with the needed events {percent(ratio.with_needed / ratio.exact - 1.0)}" + _bias(ratio)
         )
@@ -48,7 +48,8 @@ def _needs(found: Sizing) -> str:
         return "Every component has the events that it needs."
     told = "; ".join(f"{s.label} {_times(s)} for the {s.because} of {labels[s.decisive]}" for s in short)
     enough = len(found.samples) - len(short)
-    return f"Too few events: {told}. {f'{enough} others have enough.' if enough else ''}".strip()
+    others = {0: "", 1: " One other has enough."}.get(enough, f" {enough} others have enough.")
+    return f"Too few events: {told}.{others}"
 
 
 def _times(sample: SizingSample) -> str:
@@ -108,15 +109,15 @@ def _verified(found: Sizing, verification: SizingVerification) -> str:
     whole = [check for check in verification.checks if check.sample == ""]
     if verification.what == "needed":
         told = ", ".join(
-            f"{labels[c.ratio]} {with_error(c.measured, max(c.measured_error, 1e-12))} "
-            f"(predicted {with_error(c.predicted, max(c.predicted_error, 1e-12))})"
+            f"{labels[c.ratio]} {bracketed(c.measured, c.measured_error)} "
+            f"(predicted {bracketed(c.predicted, c.predicted_error)})"
             for c in whole
         )
         capped = "" if verification.fraction == 1.0 else f", {percent(verification.fraction, 0)} of them"
         return f"Generated anew with the needed events{capped}: template statistics of {told}."
     told = ", ".join(
-        f"{labels[c.ratio]} {with_error(c.scatter or 0.0, max(c.scatter_error or 0.0, 1e-12))} "
-        f"(predicted {with_error(c.predicted, max(c.predicted_error, 1e-12))})"
+        f"{labels[c.ratio]} {bracketed(c.scatter or 0.0, c.scatter_error or 0.0)} "
+        f"(predicted {bracketed(c.predicted, c.predicted_error)})"
         for c in whole
     )
     tested = [check.p_value for check in verification.checks if check.p_value is not None]

@@ -8,7 +8,7 @@ from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
 
-from ..numbers import counted, digits_for, percent, shortened, signed
+from ..numbers import bracketed, counted, digits_for, percent, shortened, signed
 from ..sizing.part import Sizing, SizingAllocation, SizingSample
 from .summary import plain_table
 
@@ -51,14 +51,6 @@ def sample_table(found: Sizing) -> Table:
 
 def _needed(sample: SizingSample) -> str:
     return bracketed(sample.needed, sample.needed_error) if sample.needed > 0.0 else "any"
-
-
-def bracketed(value: float, error: float) -> str:
-    """The error in units of the last digits, e.g. "0.0810(18)"; three digits where it is below them."""
-    if not error > 0.005 * abs(value):
-        return signed(value, digits_for(abs(value)) + 1) if value else "0"
-    places = digits_for(error)
-    return f"{signed(value, places)}({round(error * 10**places)})"
 
 
 def toy_table(found: Sizing) -> Table:
