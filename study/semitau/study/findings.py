@@ -81,10 +81,14 @@ def _alternatives(missed: int, of: int) -> str:
 
 
 def _sizing(sizing: Sizing) -> Finding:
-    """Costs of each ratio and what is needed, which come first, and what is marked as worth a look."""
-    first = len(sizing.ratios) + 1
-    marked = [sentence for sentence in sizing.sentences[first:] if sentence.startswith("Look at this")]
-    return Finding("sizing", "How many events", " ".join((*sizing.sentences[:first], *marked)))
+    """Cost of finite templates, who has too few events, and what is marked as worth a look."""
+    costs = " and ".join(f"of {ratio.label} by {percent(ratio.now / ratio.exact - 1.0)}" for ratio in sizing.ratios)
+    short = sorted((sample for sample in sizing.samples if sample.needed > 1.0), key=lambda sample: -sample.needed)
+    needs = "; ".join(f"{sample.label} needs {sample.needed:.2g} times as many" for sample in short)
+    few = f"Too few events: {needs}." if short else "Every component has the events that it needs."
+    marked = [sentence for sentence in sizing.sentences if sentence.startswith("Look at this")]
+    text = f"{few} Finite templates enlarge the expected error {costs}."
+    return Finding("sizing", "How many events", " ".join((text, *marked)), alarming=bool(marked))
 
 
 def _goodness(results: Results) -> Iterator[Finding]:
@@ -121,7 +125,9 @@ def _design(design: Design) -> Finding:
 
 
 def _reach(reach: Reach) -> Finding:
-    sentences = [*(part.sentence for part in reach.needed), *(part.sentence for part in reach.walls)]
+    """When a deviation is seen, and the walls within the range; without either, what limits each ratio."""
+    sentences = [part.sentence for part in reach.needed]
+    sentences += [part.sentence for part in reach.walls if part.factor is not None or not reach.needed]
     return Finding("reach", "Reach", " ".join(sentences))
 
 

@@ -62,7 +62,7 @@ def sample_table(results: Results) -> ReportTable | None:
             count(part.effective),
             share(part.share),
             *(share(costs.get((part.sample, ratio)), 2) for ratio in labels),
-            _uncertain(part.needed, part.needed_error, digits_for(part.needed_error or 0.1 * part.needed)),
+            _uncertain(part.needed, part.needed_error, min(digits_for(part.needed_error or 0.1 * part.needed), 3)),
             count(part.needed_events),
             words(f"{labels.get(part.decisive, part.decisive)}: {part.because}", part.decisive, part.because),
         ]
@@ -222,8 +222,8 @@ def gain_table(results: Results) -> ReportTable | None:
 
 
 def _uncertain(value: float, error: float, places: int) -> Cell:
-    shown = formatted(value, f".{places}f")
-    return Cell(f"{shown}{GAP}±{GAP}{formatted(error, f'.{places}f')}" if error else shown, (value, error))
+    shown, beyond = formatted(value, f".{places}f"), 0.5 * 10.0**-places
+    return Cell(f"{shown}{GAP}±{GAP}{formatted(error, f'.{places}f')}" if error >= beyond else shown, (value, error))
 
 
 def _measured(value: float | None, error: float | None) -> Cell:
