@@ -57,6 +57,19 @@ def test_what_was_there_already_is_no_pace() -> None:
         assert watched.left == 80
 
 
+def test_each_phase_of_a_step_has_its_own_pace() -> None:
+    watched = Watched({"bias": 60.0})
+    with watched.course.step("bias") as report:
+        assert report is not None
+        report("alternatives", 0, 10)
+        watched.now = 40.0
+        report("alternatives", 10, 10)
+        report("bias matrix", 0, 1000)
+        watched.now = 50.0
+        report("bias matrix", 100, 1000)
+        assert watched.left == 90
+
+
 def test_later_steps_are_scaled_by_how_those_before_have_gone() -> None:
     """(1 + 29) s expected, (1 + 59) s taken: everything else takes twice as long as expected."""
     watched = Watched({"templates": 29.0, "toys": 30.0, "pictures": 10.0})

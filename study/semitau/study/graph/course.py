@@ -45,18 +45,19 @@ class Course:
             yield None
             return
         self._tell(expected * self._factor)
-        first: int | None = None
+        phase, since, first = "", begin, 0
 
         def report(label: str, done: int, total: int | None) -> None:
-            nonlocal first
-            first = done if first is None else first
+            nonlocal phase, since, first
+            if label != phase:  # a step may have several, each with a pace of its own
+                phase, since, first = label, (self._clock() if phase else begin), done
             if self._report is not None:
                 self._report(label, done, total)
             left = expected * self._factor
             if total is not None:
                 left *= 1.0 - done / total if total else 0.0
                 if done - first > TOLD_FROM * (total - first):
-                    left = (self._clock() - begin) * (total - done) / (done - first)
+                    left = (self._clock() - since) * (total - done) / (done - first)
             self._tell(left)
 
         yield report
