@@ -30,7 +30,7 @@ def _toy_cells(ratio: ToyRatio) -> list[Cell]:
     return [
         words(ratio.label),
         measured(ratio.bias, ratio.bias_error),
-        Cell(f"{percent(relative)} ± {percent(error)}", (relative, error)),
+        Cell(f"{percent(relative)}{GAP}±{GAP}{percent(error)}", (relative, error)),
         measured(ratio.pull_mean, ratio.pull_mean_error),
         measured(ratio.pull_width, ratio.pull_width_error),
         *(
