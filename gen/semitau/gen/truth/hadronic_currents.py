@@ -34,19 +34,31 @@ _ROWS = 32
 
 
 @inlined
-def _resonance(s: float, mass: float, width: float) -> complex:
-    """P-wave Breit-Wigner with energy-dependent width, 1 at s = 0 apart from the width."""
+def _resonance(s: float, mass: float, width: float) -> tuple[float, float]:
+    """P-wave Breit-Wigner with energy-dependent width, 1 at s = 0 apart from the width: real and imaginary part.
+
+    The division is Smith's (Comm. ACM 5 (1962) 435), by the larger part, with a choice instead of a branch, so that
+    loops become SIMD code.
+    """
     four = 4.0 * PION * PION
     ratio = max(s - four, 0.0) / (mass * mass - four)
-    return mass * mass / (mass * mass - s - 1j * (width * mass * mass / np.sqrt(s) * ratio * np.sqrt(ratio)))  # type: ignore[no-any-return]
+    real = mass * mass - s
+    imaginary = 0.0 - width * mass * mass / np.sqrt(s) * ratio * np.sqrt(ratio)
+    is_real = abs(real) >= abs(imaginary)
+    large, small = (real, imaginary) if is_real else (imaginary, real)
+    share = small / large
+    scale, part = large + small * share, mass * mass * share
+    return (mass * mass if is_real else part) / scale, (0.0 - part if is_real else -(mass * mass)) / scale
 
 
 @inlined
 def pion_form_factor(s: float) -> complex:
     """F at a squared pair mass s (GeV², one number)."""
-    first = _resonance(s, RHO_MASS, RHO_WIDTH)
-    second = _resonance(s, SECOND_RHO_MASS, SECOND_RHO_WIDTH)
-    return (first + SECOND_RHO_SHARE * second) / (1.0 + SECOND_RHO_SHARE)  # type: ignore[no-any-return]
+    first_real, first_imaginary = _resonance(s, RHO_MASS, RHO_WIDTH)
+    second_real, second_imaginary = _resonance(s, SECOND_RHO_MASS, SECOND_RHO_WIDTH)
+    real = (first_real + SECOND_RHO_SHARE * second_real) / (1.0 + SECOND_RHO_SHARE)
+    imaginary = (first_imaginary + SECOND_RHO_SHARE * second_imaginary) / (1.0 + SECOND_RHO_SHARE)
+    return real + 1j * imaginary  # type: ignore[no-any-return]
 
 
 def form_factors(s: Floats) -> npt.NDArray[np.complex128]:
