@@ -29,12 +29,13 @@ from semitau.study.command_line import main
 from semitau.study.graph.materials import Materials
 from semitau.study.graph.store import Store
 from semitau.study.pictures.bias_matrix import bias_matrix
+from semitau.study.run.opening import open_study
 from semitau.study.run.study_model import study_model
 from semitau.study.run.study_run import run_study
 from semitau.study.terminal.bias_summary import bias_summary
 from semitau.study.terminal.summary import summary
 
-from .conftest import mini_text
+from .conftest import SEED, mini_text
 
 ROOT = Path(__file__).parents[2]
 OTHERS = """
@@ -71,7 +72,7 @@ def path(tmp_path_factory: pytest.TempPathFactory) -> Path:
 
 @pytest.fixture(scope="module")
 def study(path: Path) -> StudyConfig:
-    return read_study(path)
+    return open_study(path, SEED)
 
 
 @pytest.fixture(scope="module")
@@ -246,7 +247,7 @@ def test_study_without_alternatives(mini: WriteStudy, capsys: pytest.CaptureFixt
 
 
 def test_command(path: Path, bias: Bias, tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    assert main(["bias", str(path), "--json", "--quiet", "--output", str(tmp_path)]) == 0
+    assert main(["bias", str(path), "--seed", str(SEED), "--json", "--quiet", "--output", str(tmp_path)]) == 0
     said: Any = json.loads(capsys.readouterr().out)
     assert Bias.model_validate(said) == bias
     assert sorted(file.name for file in tmp_path.iterdir()) == ["bias_matrix.png", "bias_matrix.svg"]
