@@ -77,7 +77,7 @@ def _drawings(results: Results) -> Iterator[Drawing]:
             "bias_matrix",
             "Bias matrix",
             (
-                "Shift of each ratio in units of its error, for all that is made with one study and fitted with another; "
+                "Shift of each ratio in units of its error, made with one study and fitted with another; "
                 "framed where no assigned systematic covers it."
             ),
             partial(bias_matrix, results.bias),
