@@ -122,7 +122,8 @@ def _draw_choices(axes: Axes, choices: Sequence[DesignChoice]) -> None:
     axes.axvline(0.0, color=RULE, linewidth=0.8)
     for line, (choice, rise) in enumerate(zip(choices, rises, strict=True)):
         axes.axhline(line, color=RULE, linewidth=0.4, zorder=0)
-        words = f"{choice.bins} bins" + (", axes of the study" if choice.now else "") + (", proposed" if choice.chosen else "")
+        marks = [word for word, holds in (("axes of the study", choice.now), ("proposed", choice.chosen)) if holds]
+        words = ", ".join([f"{choice.bins} bins", *marks])
         if rise is None or rise > right:
             axes.text(
                 right * 1.26, line, "no fit" if rise is None else f"{rise:.0f} %", ha="right", va="center", size=7
