@@ -144,6 +144,12 @@ def test_other_versions_are_refused(cluster: Cluster, another_numba: dict[str, s
         list(run([Job(tasks.slow, 0.0, (1,))]))
 
 
+def test_a_worker_that_died_just_now_is_not_asked_for_its_versions(processes: LocalCluster, cluster: Cluster) -> None:
+    processes.workers[0].kill()
+    with connected(cluster.address) as again, elsewhere(again):  # perhaps before the scheduler has seen it
+        assert list(run([Job(tasks.slow, 0.0, (number,)) for number in range(3)])) == [0, 1, 2]
+
+
 def test_the_scheduler_dies(tmp_path: Path) -> None:
     with local_cluster(tmp_path, 1) as made, connected(str(made.file)) as there, elsewhere(there):
         results = run([Job(tasks.slow, 0.05, (number,)) for number in range(1000)])

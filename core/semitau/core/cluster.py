@@ -176,9 +176,15 @@ class Cluster:
         ------
         RunError : there is none, or one has other versions.
         """
-        while self.threads() == 0:
+        end = time.monotonic() + max(self._patience, ANSWER_SECONDS)
+        while True:
+            while self.threads() == 0:
+                time.sleep(0.1)
+            found: dict[str, Any] = self._client.run(fingerprint, on_error="return")
+            if not any(isinstance(told, OSError) for told in found.values()) or time.monotonic() > end:
+                break
+            self._looked = float("-inf")  # one has died just now, and the scheduler does not know it yet
             time.sleep(0.1)
-        found: dict[str, Any] = self._client.run(fingerprint, on_error="return")
         problems = [self._refusal(worker, told) for worker, told in found.items() if told != self._wanted]
         if problems:
             more = len(problems) - AT_MOST_TOLD
