@@ -103,6 +103,8 @@ class Bias(Part):
 
     studies: tuple[BiasStudy, ...] = Field(description="The study itself, then its alternatives")
     negligible: float = Field(description="Share of the whole error below which a shift does not matter")
-    not_covered: tuple[str, ...] = Field(description="What no systematic covers, in words: first what the study's own fit gets wrong; the worst first")
+    not_covered: tuple[str, ...] = Field(
+        description="What no systematic covers, in words: first what the study's own fit gets wrong; the worst first"
+    )
     sentences: tuple[str, ...] = Field(description="Everything else that is worth saying, in words")
     pairs: tuple[BiasPair, ...] = Field(description="Row by row: all that are made with the first study, and so on")
