@@ -134,7 +134,8 @@ def _draw_choices(axes: Axes, choices: Sequence[DesignChoice]) -> None:
         axes.plot(
             [rise], [line], marker="D" if choice.chosen else "o", markersize=5, color=colour, markerfacecolor=fill
         )
-        axes.annotate(words, (rise, line), (7, 0), "data", "offset points", size=7, va="center")
+        beside = (-7, "right") if rise > 0.6 * right else (7, "left")
+        axes.annotate(words, (rise, line), (beside[0], 0), "data", "offset points", size=7, va="center", ha=beside[1])
     axes.set_yticks(range(len(choices)), [" × ".join(own.observables) for own in choices], fontsize=7.5)
     axes.tick_params(axis="y", length=0)
     axes.set_xlabel("rise of the error, %")
