@@ -8,6 +8,8 @@ from typing import Any
 import pytest
 from rich.console import Console
 from semitau.study.graph.course import WHOLE, Course
+from semitau.study.graph.features import FEATURES
+from semitau.study.results import Results
 from semitau.study.terminal.progress import bars, sparse_lines
 
 
@@ -88,6 +90,12 @@ def test_steps_that_nobody_foresaw_and_an_end() -> None:
         watched.now = 3.0
     watched.course.end()
     assert watched.told[-1] == (WHOLE, 3, 3)
+
+
+def test_every_feature_is_a_field_of_the_results_and_a_step_once() -> None:
+    names = [feature.name for feature in FEATURES]
+    assert len(set(names)) == len(names)
+    assert set(names) <= set(Results.model_fields)
 
 
 def test_nobody_listens() -> None:

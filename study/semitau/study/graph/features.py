@@ -88,7 +88,5 @@ FEATURES: tuple[Feature, ...] = (
     Feature("sizing", "sizing.sizing_part", "sizing_part", "Sizing", lambda study: study.sizing is not None, 60.0),
     Feature("design", "design.design_part", "design_part", "Design", lambda study: study.design is not None, 60.0),
     Feature("reach", "reach.run", "reach_part", "Reach", lambda study: study.reach is not None, 5.0),
-    Feature("average", "averages.step", "average_part", "AverageResults", lambda s: s.average is not None, 1.0),
-    Feature("reach", "reach.run", "reach_part", "Reach", lambda study: study.reach is not None, 5.0),
     Feature("average", "averages.step", "average_part", "AverageResults", lambda study: study.average is not None, 1.0),
 )
