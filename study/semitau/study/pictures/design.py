@@ -20,6 +20,8 @@ MOST_SHOWN = 25.0
 """Per cent above which a curve leaves its panel: what matters lies near the minimum."""
 LINE = 0.21
 """Height of a line of the binnings, inches."""
+OVER_RULES = {"facecolor": "white", "edgecolor": "none", "pad": 1.0}
+"""Words that stand on a rule hide it."""
 
 
 def design_drawings(design: Design) -> Iterator[Drawing]:
@@ -125,9 +127,8 @@ def _draw_choices(axes: Axes, choices: Sequence[DesignChoice]) -> None:
         marks = [word for word, holds in (("axes of the study", choice.now), ("proposed", choice.chosen)) if holds]
         words = ", ".join([f"{choice.bins} bins", *marks])
         if rise is None or rise > right:
-            axes.text(
-                right * 1.26, line, "no fit" if rise is None else f"{rise:.0f} %", ha="right", va="center", size=7
-            )
+            shown = "no fit" if rise is None else f"{rise:.0f} %"
+            axes.text(right * 1.26, line, shown, ha="right", va="center", size=7, bbox=OVER_RULES)
             continue
         fill = PROPOSED if choice.chosen else "white"
         colour = PROPOSED if choice.chosen else START if choice.now else INK
@@ -135,7 +136,10 @@ def _draw_choices(axes: Axes, choices: Sequence[DesignChoice]) -> None:
             [rise], [line], marker="D" if choice.chosen else "o", markersize=5, color=colour, markerfacecolor=fill
         )
         beside = (-7, "right") if rise > 0.6 * right else (7, "left")
-        axes.annotate(words, (rise, line), (beside[0], 0), "data", "offset points", size=7, va="center", ha=beside[1])
+        axes.annotate(
+            words, (rise, line), (beside[0], 0), "data", "offset points", size=7, va="center", ha=beside[1],
+            bbox=OVER_RULES,
+        )  # fmt: skip
     axes.set_yticks(range(len(choices)), [" × ".join(own.observables) for own in choices], fontsize=7.5)
     axes.tick_params(axis="y", length=0)
     axes.set_xlabel("rise of the error, %")
@@ -169,7 +173,7 @@ def information_along_axes(design: Design) -> Sheet:
             axes = sheet.axes(*panels.corner(number), panels.width, panels.height)
             _draw_axis(axes, design, axis)
             if number == 0:
-                axes.legend(loc="upper right", fontsize=7, handlelength=1.6)
+                axes.legend(loc="upper right", fontsize=7, handlelength=1.6, ncols=2)
     return sheet
 
 
@@ -184,4 +188,5 @@ def _draw_axis(axes: Axes, design: Design, axis: DesignAxis) -> None:
     axes.set_xlabel(f"{axis.label} / {axis.unit}" if axis.unit else axis.label, fontsize=8)
     axes.set_ylabel("information in a bin, %")
     axes.set_xlim(axis.edges[0], axis.edges[-1])
-    axes.set_ylim(bottom=0.0)
+    # Room for the legend above the highest bin.
+    axes.set_ylim(0.0, 1.25 * max(100.0 * share for shares in axis.shares for share in shares))
