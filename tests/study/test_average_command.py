@@ -16,8 +16,8 @@ from semitau.core.errors import InputError
 from semitau.fit.averages.combination import average
 from semitau.fit.averages.compatibility import Prediction, tension
 from semitau.fit.averages.measurements import Measured, Measurement
-from semitau.study.averages.part import AverageResults
 from semitau.study.averages.measurement_file import read_average
+from semitau.study.averages.part import AverageResults
 from semitau.study.averages.planned_errors import planned_errors
 from semitau.study.averages.run import averaged
 from semitau.study.averages.tables import AverageTables

@@ -338,7 +338,7 @@ class StageTime(Part):
 
 
 class Timing(Part):
-    """What the run cost. With `sizing.allocation`, which rests on times, all that differs between two runs of a study."""
+    """What the run cost. With `sizing.allocation`, which rests on times, all that two runs of a study differ in."""
 
     started: str = Field(description="Date and time, UTC, ISO 8601")
     stages: tuple[StageTime, ...] = Field(description="In order")
