@@ -21,7 +21,7 @@ further scenario (a variation that reconstructs the same events anew) costs as m
 
 COST_OF_SCENARIO = 0.2
 TOYS_PER_SECOND = 2500.0
-PICTURES = 6.0
+PICTURES = 15.0
 """Seconds for pictures and report; libraries loaded included."""
 
 FIT = 1.0

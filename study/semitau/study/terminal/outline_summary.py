@@ -81,4 +81,6 @@ def _step_rows(outline: StudyOutline) -> Iterator[tuple[str, str, str, str]]:
 
 
 def _listed(parts: list[str], of: int) -> str:
-    return "all" if len(parts) == of and not any("%" in part for part in parts) else ", ".join(parts)
+    if len(parts) == of and not any("%" in part for part in parts):
+        return "all"
+    return ", ".join(parts) if len(parts) <= 2 else f"{len(parts)} of {of}"
