@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from .averages.part import AverageResults
 from .bias.part import Bias
 from .design.part import Design
-from .numbers import percent, signed, with_error
+from .numbers import counted, percent, signed, with_error
 from .reach.part import Reach
 from .results import Results
 from .sizing.part import Sizing
@@ -84,7 +84,7 @@ def _sizing(sizing: Sizing) -> Finding:
     """Cost of finite templates, who has too few events, and what is marked as worth a look."""
     costs = " and ".join(f"of {ratio.label} by {percent(ratio.now / ratio.exact - 1.0)}" for ratio in sizing.ratios)
     short = sorted((sample for sample in sizing.samples if sample.needed > 1.0), key=lambda sample: -sample.needed)
-    needs = "; ".join(f"{sample.label} needs {sample.needed:.2g} times as many" for sample in short)
+    needs = "; ".join(f"{sample.label} needs {counted(sample.needed)} times as many" for sample in short)
     few = f"Too few events: {needs}." if short else "Every component has the events that it needs."
     marked = [sentence for sentence in sizing.sentences if sentence.startswith("Look at this")]
     text = f"{few} Finite templates enlarge the expected error {costs}."

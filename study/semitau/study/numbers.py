@@ -56,3 +56,11 @@ def percent(fraction: float, places: int = 1) -> str:
 def shortened(name: str, length: int = 28) -> str:
     """A name cut to a length that fits a table or a picture."""
     return name if len(name) <= length else name[: length - 1].rstrip() + "…"
+
+
+def duration(seconds: float) -> str:
+    """Seconds in words, e.g. "0.8 s", "42 s", "3 min 20 s"."""
+    if seconds < 9.95:
+        return f"{seconds:.1f} s"
+    whole = round(seconds)
+    return f"{whole} s" if whole < 60 else f"{whole // 60} min {whole % 60} s"

@@ -13,11 +13,10 @@ from semitau.core.whole_files import write_whole
 
 from ..averages.summary import quality_line, tension_text
 from ..findings import findings
-from ..numbers import counted, digits_for, percent, signed, with_error
+from ..numbers import counted, digits_for, duration, percent, signed, with_error
 from ..pictures.gallery import DATA_LABELS
 from ..pictures.sheet import Picture
 from ..results import Results
-from ..terminal.progress import duration
 from ..terminal.summary import VERDICT_WORDS
 from .inline_svg import inline_svg
 from .sections import report_tables, shown_sections

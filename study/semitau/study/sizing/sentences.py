@@ -5,9 +5,10 @@ from __future__ import annotations
 from collections.abc import Iterator, Sequence
 from math import sqrt
 
+from semitau.core.true_minus import formatted
 from semitau.fit.toys.pulls import LEVELS
 
-from ..numbers import GAP, bracketed, counted, percent, signed
+from ..numbers import GAP, bracketed, counted, duration, percent, signed
 from .part import Sizing, SizingRatio, SizingSample, SizingToyRatio, SizingToys, SizingVerification
 
 UNLIKELY = 0.0027
@@ -53,7 +54,7 @@ def _needs(found: Sizing) -> str:
 
 
 def _times(sample: SizingSample) -> str:
-    text = f"needs {sample.needed:.2g} times as many"
+    text = f"needs {counted(sample.needed)} times as many"
     return text if sample.needed_events is None else f"{text} ({counted(sample.needed_events)})"
 
 
@@ -128,7 +129,8 @@ def _verified(found: Sizing, verification: SizingVerification) -> str:
     return (
         f"Ratios fitted with {verification.sets} new sets of templates, {verification.fraction:.3g} of the "
         f"events each, scatter by {told}. The {len(tested)} scatters of single components and of all {verdict} "
-        f"(smallest p-value {lowest:.2g}, so small or smaller by chance in {percent(chance, 0)} of cases)."
+        f"(smallest p-value {formatted(lowest, '.2g')}, so small or smaller by chance in {percent(chance, 0)} of "
+        "cases)."
     )
 
 
@@ -142,10 +144,10 @@ def _allocation(found: Sizing) -> Iterator[str]:
         f"{labels[gain.ratio]} from {signed(gain.templates_now, 4)} to {signed(gain.templates_best, 4)}"
         for gain in best.gains
     )
-    when = "the processor time that the events take now" if same else f"{best.seconds:.3g} s of processor time"
-    yield f"Best shared out, {when} ({best.seconds:.2g} s) brings template statistics of {told}."
+    when = "the processor time that the events take now" if same else f"{duration(best.seconds)} of processor time"
+    yield f"Best shared out, {when} ({duration(best.seconds)}) brings template statistics of {told}."
     yield (
         f"All template statistics together cost {percent(best.aim, 0)} of the error in quadrature, that is "
-        f"{percent(sqrt(1.0 + best.aim**2) - 1.0)} of it, after {best.seconds_aim:.2g} s best shared out; "
-        f"{best.seconds_aim_as_now:.2g} s shared out as now."
+        f"{percent(sqrt(1.0 + best.aim**2) - 1.0)} of it, after {duration(best.seconds_aim)} best shared out; "
+        f"{duration(best.seconds_aim_as_now)} shared out as now."
     )

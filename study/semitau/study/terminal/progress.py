@@ -20,6 +20,7 @@ from rich.progress import (
 from rich.text import Text
 
 from ..graph.course import WHOLE
+from ..numbers import duration as duration
 
 Report = Callable[[str, int, int | None], None]
 """report(label, done, total): `done` of `total` steps of the work `label`; total None if unknown."""
@@ -106,11 +107,3 @@ def sparse_lines(console: Console, clock: Callable[[], float] = time.monotonic) 
                 console.print(f"{label}: {done} done", highlight=False)
 
     yield report
-
-
-def duration(seconds: float) -> str:
-    """Seconds in words, e.g. "0.8 s", "42 s", "3 min 20 s"."""
-    if seconds < 9.95:
-        return f"{seconds:.1f} s"
-    whole = round(seconds)
-    return f"{whole} s" if whole < 60 else f"{whole // 60} min {whole % 60} s"

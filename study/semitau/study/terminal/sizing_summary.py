@@ -8,7 +8,7 @@ from rich.console import RenderableType
 from rich.table import Table
 from rich.text import Text
 
-from ..numbers import bracketed, counted, digits_for, percent, shortened, signed
+from ..numbers import bracketed, counted, digits_for, duration, percent, shortened, signed
 from ..sizing.part import Sizing, SizingAllocation, SizingSample
 from .summary import plain_table
 
@@ -101,7 +101,7 @@ def allocation_table(found: Sizing, best: SizingAllocation) -> Table:
     """Events of every sample: now, best in the time, cheapest for the aim."""
     labels = {sample.sample: sample.label for sample in found.samples}
     table = plain_table(
-        "Allocation", "ns an event", "now", f"best in {best.seconds:.2g} s", f"for {percent(best.aim, 0)} in all"
+        "Allocation", "ns an event", "now", f"best in {duration(best.seconds)}", f"for {percent(best.aim, 0)} in all"
     )
     for sample in best.samples:
         table.add_row(
