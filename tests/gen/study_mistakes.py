@@ -577,7 +577,8 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         (
             'variation[R0].kind: is no kind (got "formfactor", allowed form_factor, form_factor_direction, '
             "form_factor_directions, fraction, branching_fraction, double_charm_share, production_ratio, "
-            "soft_pion_efficiency, lepton_identification, misidentification, tag_resolution, momentum_scale). "
+            "soft_pion_efficiency, lepton_identification, misidentification, tag_resolution, momentum_scale, "
+            "residual_energy). "
             'Did you mean "form_factor"?'
         ),
     ),

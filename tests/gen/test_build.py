@@ -275,7 +275,7 @@ def test_shifted_scenarios_are_other_detectors(name: str, change: float) -> None
 
 
 def test_nominal_scenario_is_the_detector_as_it_is() -> None:
-    assert (NOMINAL.tag_width, NOMINAL.momentum) == (1.0, 1.0)
+    assert NOMINAL == (1.0, 1.0, 1.0)
 
 
 def test_constant_factors() -> None:

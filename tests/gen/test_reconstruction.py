@@ -30,7 +30,7 @@ SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 SIGMAS = 5.0
 STREAM = stream_key(SEED, "reconstruction")
 OPEN = Windows(1, *(-np.inf, np.inf) * 8)
-NOMINAL = Scenario(1.0, 1.0)
+NOMINAL = Scenario(1.0, 1.0, 1.0)
 
 
 def bench(**changes: Any) -> Bench:
@@ -95,7 +95,7 @@ def test_faultless_detector_gives_the_truth(charm: str, chain: Channel) -> None:
     np.testing.assert_allclose(seen["delta_m"], known, atol=1e-9)
 
 
-@pytest.mark.parametrize("scenario", [NOMINAL, Scenario(1.3, 0.98)])
+@pytest.mark.parametrize("scenario", [NOMINAL, Scenario(1.3, 0.98, 1.0)])
 @pytest.mark.parametrize(("charm", "chain"), CHAINS[2:6:2], ids=["charged", "neutral"])
 def test_observables_of_measured_momenta(charm: str, chain: Channel, scenario: Scenario) -> None:
     """Brute force with the library's four-vectors, from what a real detector measured."""
@@ -160,7 +160,7 @@ def test_missing_mass_resolution_follows_from_the_tag() -> None:
 def test_a_wider_tag_is_the_same_events_wider() -> None:
     """The shifted scenario is what another detector gives from the same random numbers."""
     chain = channel("B+", "D", "mu")
-    _, scenario = recorded(chain, bench(), 3000, Scenario(1.25, 1.0))
+    _, scenario = recorded(chain, bench(), 3000, Scenario(1.25, 1.0, 1.0))
     wide = bench(detector__tag__momentum_resolution=1.25 * 0.022, detector__tag__wrong_momentum_resolution=1.25 * 0.16)
     _, other = recorded(chain, wide, 3000)
     for name in scenario:
@@ -172,11 +172,32 @@ def test_momentum_scale_acts_on_charged_tracks_alone() -> None:
     chain = channel("B+", "D*", "mu", soft="neutral_pion")
     made = bench(**PERFECT)
     _, plain = recorded(chain, made, 2000)
-    truth, shifted = recorded(chain, made, 2000, Scenario(1.0, 1.01))
+    truth, shifted = recorded(chain, made, 2000, Scenario(1.0, 1.01, 1.0))
     np.testing.assert_allclose(shifted["p_lepton"], 1.01 * plain["p_lepton"], rtol=1e-12)
     assert len(truth["q2"]) == 2000
     # First order: δ(m²) = 2 ε p_D·(E_soft v_D − p_soft) in the laboratory; its size is a few MeV at most.
     assert 1e-5 < np.abs(shifted["delta_m"] - plain["delta_m"]).max() < 5e-3
+
+
+def test_scaled_residual_energy_is_the_same_events_with_more_left_over() -> None:
+    """The shifted scenario is what a noisier calorimeter gives from the same random numbers (beside a D0 without a soft
+    particle noise and wrong tags are all there is); with lost soft pions e_res scales, and nothing else moves."""
+    chain = channel("B+", "D", "mu")
+    _, scenario = recorded(chain, bench(), 3000, Scenario(1.0, 1.0, 1.25))
+    residual = study().detector.residual_energy
+    noisy = bench(
+        detector__residual_energy__noise_mean=1.25 * residual.noise_mean,
+        detector__residual_energy__wrong_tag_mean=1.25 * residual.wrong_tag_mean,
+    )
+    _, other = recorded(chain, noisy, 3000)
+    for name in scenario:
+        np.testing.assert_allclose(scenario[name], other[name], rtol=1e-9, atol=1e-12)
+    star = channel("B+", "D*", "mu", soft="neutral_pion")
+    _, plain = recorded(star, bench(), 3000)
+    _, scaled = recorded(star, bench(), 3000, Scenario(1.0, 1.0, 1.25))
+    np.testing.assert_allclose(scaled.pop("e_res"), 1.25 * plain.pop("e_res"), rtol=1e-12)
+    for name in plain:
+        np.testing.assert_array_equal(scaled[name], plain[name])
 
 
 # --- categories -----------------------------------------------------------------------------------------------------

@@ -122,7 +122,7 @@ def test_shipped_studies(name: str, least: float, most: float) -> None:
     assert len(study.backgrounds) >= 3
     assert len(study.variations) >= 12
     kinds = {variation.kind for variation in study.variations}
-    assert len(kinds) == 8
+    assert len(kinds) == 9
     assert {mode.scales_with for mode in study.modes} == {"R_D", "R_Dst", None}
     assert study.toys.number >= 2000
     assert "invented" in study.text.split("[study]")[0]

@@ -115,7 +115,8 @@ def list_block(
     """The part of `list_chunk` behind compaction: `events` found decays in one block."""
     measure(y, keys, chain, detector)
     for s in range(scenarios.shape[0] - 1, -1, -1):  # the nominal one last: what follows reads its rows
-        reconstruct(y, chain, detector.beams, Scenario(scenarios[s, 0], scenarios[s, 1]), windows)
+        scenario = Scenario(scenarios[s, 0], scenarios[s, 1], scenarios[s, 2])
+        reconstruct(y, chain, detector.beams, scenario, windows)
         find_cells(y, events, cuts, grid, rows[s])
     used = listing.used[0]
     places = np.full(LANES, -1, dtype=np.int64)

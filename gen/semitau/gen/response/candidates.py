@@ -35,10 +35,12 @@ _CHARM_X, _CHARM_Y, _CHARM_Z, _CHARM_MASS, _USED = (
 
 
 class Scenario(NamedTuple):
-    """What may be shifted without drawing anew: factors on the width of the tag momentum and on track momenta."""
+    """What may be shifted without drawing anew: factors on the width of the tag momentum, on track momenta, and on the
+    residual energy."""
 
     tag_width: float
     momentum: float
+    residual: float
 
 
 class Windows(NamedTuple):
@@ -74,16 +76,17 @@ def reconstruct(y: Floats, chain: Chain, beams: Beams, scenario: Scenario, windo
     pions in (one, three), or -1: the charges of charm, lepton and tag do not add up, or a charged particle is left.
     DELTA_M is 0 without a D*.
     """
-    choose_charm(y, chain, scenario.momentum, windows)
+    choose_charm(y, chain, scenario, windows)
     form_observables(y, beams, scenario)
 
 
 @kernel
-def choose_charm(y: Floats, chain: Chain, scale: float, windows: Windows) -> None:
+def choose_charm(y: Floats, chain: Chain, scenario: Scenario, windows: Windows) -> None:
     """A D* if a soft candidate puts delta_m into its window (the one nearest to the known value), else the D alone.
 
     A D* candidate that misses the window is none: the event goes on as a D if the charges allow it.
     """
+    scale = scenario.momentum
     d_mass = chain.d_mass
     charged_d = float(chain.charged_d)
     soft_charged = 1.0 if chain.soft == CHARGED_PION else 0.0
@@ -169,7 +172,8 @@ def choose_charm(y: Floats, chain: Chain, scale: float, windows: Windows) -> Non
         y[_CHARM_Z + i] = pz + use_true * sz + use_random * rz
         y[_CHARM_MASS + i] = d_mass + star * nominal
         y[row.DELTA_M + i] = use_true * true_delta + use_random * random_delta
-        y[row.E_RES + i] = y[row.LEFT_OVER + i] + soft_neutral * unused * y[row.LAB_SOFT_E + i]
+        left_over = y[row.LEFT_OVER + i] + soft_neutral * unused * y[row.LAB_SOFT_E + i]
+        y[row.E_RES + i] = scenario.residual * left_over
 
 
 @kernel

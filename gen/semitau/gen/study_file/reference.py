@@ -63,6 +63,7 @@ SECTIONS: dict[str, tuple[str, ...]] = {
         "Misidentification",
         "TagResolution",
         "MomentumScale",
+        "ResidualEnergyScale",
     ),
     "[fit]": ("FitSection",),
     "[fit.bounds]": ("Bounds",),

@@ -198,6 +198,15 @@ class MomentumScale(_Named):
     relative: Annotated[Positive, Field(lt=0.1)] = Field(description="one standard deviation")
 
 
+class ResidualEnergyScale(_Named):
+    """Scale of the residual energy of decays: noise, what a wrong tag leaves, photons, lost neutral particles alike."""
+
+    default_group: ClassVar[str] = "detector"
+
+    kind: Literal["residual_energy"]
+    relative: _Relative = Field(description="one standard deviation")
+
+
 SingleVariation = (
     FormFactor
     | FormFactorDirection
@@ -210,6 +219,7 @@ SingleVariation = (
     | Misidentification
     | TagResolution
     | MomentumScale
+    | ResidualEnergyScale
 )
 """One nuisance parameter each."""
 
@@ -225,6 +235,7 @@ Variation = Annotated[
     | LeptonIdentificationEfficiency
     | Misidentification
     | TagResolution
-    | MomentumScale,
+    | MomentumScale
+    | ResidualEnergyScale,
     Field(discriminator="kind"),
 ]

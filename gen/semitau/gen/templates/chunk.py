@@ -60,7 +60,7 @@ def fill_chunk(
     """Generate, reconstruct, select and fill `events` decays with numbers from `first` on.
 
     stream : the chain's random stream. quantiles : for D+ -> K pi pi. soft_factors (s,) : on the soft efficiency.
-    scenarios (r, 2) : factors on tag width and track momenta; the first is the nominal one.
+    scenarios (r, 3) : factors on tag width, track momenta and residual energy; the first is the nominal one.
     category_of_bin (bins,) : for the moments.
     """
     x, y = np.zeros(ROWS * LANES), np.zeros(ROWS * LANES)
@@ -116,11 +116,12 @@ def fill_block(
     weight_columns = variations.variations
     soft_columns = soft_factors.shape[0]
     for s in range(1, scenarios.shape[0]):
-        scenario = Scenario(scenarios[s, 0], scenarios[s, 1])
+        scenario = Scenario(scenarios[s, 0], scenarios[s, 1], scenarios[s, 2])
         reconstruct(y, chain, detector.beams, scenario, windows)
         place(y, events, cuts, axes, lost_flow, bins)
         count(bins, events, weight_columns + soft_columns + s, histogram)
-    reconstruct(y, chain, detector.beams, Scenario(scenarios[0, 0], scenarios[0, 1]), windows)
+    nominal = Scenario(scenarios[0, 0], scenarios[0, 1], scenarios[0, 2])
+    reconstruct(y, chain, detector.beams, nominal, windows)
     place(y, events, cuts, axes, sums.flow, bins)
     count(bins, events, 0, histogram)
     if soft_columns > 0:

@@ -38,7 +38,7 @@ Floats = npt.NDArray[np.float64]
 Integers = npt.NDArray[np.int64]
 
 CHUNK_EVENTS = 65_536
-NOMINAL = Scenario(tag_width=1.0, momentum=1.0)
+NOMINAL = Scenario(tag_width=1.0, momentum=1.0, residual=1.0)
 
 
 @dataclass(frozen=True, eq=False)
@@ -155,7 +155,7 @@ class ChannelInputs:
     """All that the histograms of a channel depend on, besides the bench and how many events there are.
 
     decays : with other form factors, one a column of weights. soft : factors on the soft efficiency. shifts
-    (scenarios, 2) : of the reconstruction, the nominal one first. quadratic : coefficients that act.
+    (scenarios, 3) : of the reconstruction, the nominal one first. quadratic : coefficients that act.
     """
 
     stream: np.uint64

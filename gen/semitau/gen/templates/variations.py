@@ -32,6 +32,7 @@ from ..study_file.variations import (
     Misidentification,
     MomentumScale,
     ProductionRatio,
+    ResidualEnergyScale,
     SingleVariation,
     SoftPionEfficiency,
     TagResolution,
@@ -66,9 +67,11 @@ def scenarios(study: StudyConfig) -> dict[Side, Scenario]:
         for sign in SIGNS:
             factor = 1.0 + sign * (getattr(variation, "relative", None) or 0.0)
             if isinstance(variation, TagResolution):
-                found[variation.name, sign] = Scenario(tag_width=factor, momentum=1.0)
+                found[variation.name, sign] = Scenario(tag_width=factor, momentum=1.0, residual=1.0)
             elif isinstance(variation, MomentumScale):
-                found[variation.name, sign] = Scenario(tag_width=1.0, momentum=factor)
+                found[variation.name, sign] = Scenario(tag_width=1.0, momentum=factor, residual=1.0)
+            elif isinstance(variation, ResidualEnergyScale):
+                found[variation.name, sign] = Scenario(tag_width=1.0, momentum=1.0, residual=factor)
     return found
 
 
