@@ -55,6 +55,31 @@ def test_same_results_same_bytes(pictures: tuple[Picture, ...], few: Results, fo
             assert (tmp_path / file).read_bytes() == (folder / file).read_bytes(), file
 
 
+def test_only_what_changed_is_drawn_again(few: Results, tmp_path: Path) -> None:
+    """Another value in the budget touches the budget's picture alone; damaged files are drawn again, and so are all if
+    the user says so."""
+    draw_pictures(few, tmp_path)
+    first = {path.name: path.stat().st_mtime_ns for path in tmp_path.iterdir()}
+
+    def drawn(results: Results, again: bool = False) -> set[str]:
+        before = {path.name: path.stat().st_mtime_ns for path in tmp_path.iterdir()}
+        draw_pictures(results, tmp_path, again=again)
+        return {path.stem for path in tmp_path.iterdir() if before.get(path.name) != path.stat().st_mtime_ns}
+
+    assert drawn(few) == set()
+    row = few.budget[0].rows[0]
+    rows = (row.model_copy(update={"error": 1.01 * row.error}), *few.budget[0].rows[1:])
+    other = few.model_copy(update={"budget": (few.budget[0].model_copy(update={"rows": rows}), *few.budget[1:])})
+    assert drawn(other) == {"budget"}
+    assert drawn(few) == {"budget"}
+    whole = (tmp_path / "linearity.svg").read_bytes()
+    (tmp_path / "linearity.svg").write_bytes(whole[: len(whole) // 2])
+    (tmp_path / "toy_pulls.png").unlink()
+    assert drawn(few) == {"linearity", "toy_pulls"}
+    assert (tmp_path / "linearity.svg").read_bytes() == whole
+    assert drawn(few, again=True) == {Path(name).stem for name in first}
+
+
 def test_a_study_without_toys_has_fewer_pictures(few: Results, tmp_path: Path) -> None:
     bare = few.model_copy(update={"toys": None, "linearity": (), "budget": (), "projections": ()})
     assert [picture.name for picture in draw_pictures(bare, tmp_path)] == ["correlations"]

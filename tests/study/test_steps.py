@@ -53,14 +53,14 @@ def finished(tmp_path_factory: pytest.TempPathFactory) -> Path:
     folder = tmp_path_factory.mktemp("finished")
     (folder / "mini.toml").write_text(plain_text())
     with pytest.MonkeyPatch.context() as patch:
-        patch.setattr(study_run, "draw_pictures", lambda results, folder, report: ())
+        patch.setattr(study_run, "draw_pictures", lambda results, folder, report, again: ())
         study_run.run_study(folder / "mini.toml", output=folder / "out", workers=2)
     return folder / "out"
 
 
 @pytest.fixture(autouse=True)
 def no_pictures(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(study_run, "draw_pictures", lambda results, folder, report: ())
+    monkeypatch.setattr(study_run, "draw_pictures", lambda results, folder, report, again: ())
 
 
 @pytest.fixture
@@ -219,7 +219,7 @@ RUN = """
     from semitau.study.graph import store
     from semitau.study.run import study_run
     store.LEAST_PAUSE, store.SHARE_OF_TIME = 0.01, 1.0
-    study_run.draw_pictures = lambda results, folder, report: ()
+    study_run.draw_pictures = lambda results, folder, report, again: ()
     print("ready", flush=True)
     study_run.run_study(sys.argv[1], workers=int(sys.argv[2]))
 """

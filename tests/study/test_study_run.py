@@ -23,7 +23,7 @@ WriteStudy = Callable[..., Path]
 
 @pytest.fixture
 def no_pictures(monkeypatch: pytest.MonkeyPatch) -> None:
-    monkeypatch.setattr(study_run, "draw_pictures", lambda results, folder, report: ())
+    monkeypatch.setattr(study_run, "draw_pictures", lambda results, folder, report, again: ())
 
 
 def without_timing(results: Results) -> dict[str, Any]:

@@ -24,7 +24,7 @@ def command(call: Invocation, folder: Path) -> None:
 
     results = read_results(folder / "results.json")
     with call.terminal.progress() as report:
-        pictures = draw_pictures(results, folder / "pictures", report)
+        pictures = draw_pictures(results, folder / "pictures", report, again=True)
     write_report(results, pictures, folder / "report.html")
     call.terminal.show(summary(results, str(folder / "report.html")))
     call.terminal.result({"report": str(folder / "report.html"), "pictures": [picture.name for picture in pictures]})

@@ -16,6 +16,7 @@ from .bias_matrix import bias_matrix
 from .budget_bars import budget_bars
 from .correlations import correlation_matrix
 from .design import design_drawings
+from .kept import kept_picture, picture_key
 from .linearity import linearity
 from .nuisance_strips import nuisance_strips
 from .projections import stacked_projections
@@ -33,11 +34,14 @@ Drawing = tuple[str, str, str, Callable[[], Sheet]]
 
 
 def draw_pictures(
-    results: Results, folder: Path, report: Callable[[str, int, int | None], None] | None = None
+    results: Results,
+    folder: Path,
+    report: Callable[[str, int, int | None], None] | None = None,
+    again: bool = False,
 ) -> tuple[Picture, ...]:
-    """Draw every picture into `folder` as SVG and PNG; same results, same bytes.
+    """Every picture in `folder` as SVG and PNG; same results, same bytes. What is there already is not drawn again.
 
-    report : called as report(label, done, total) after each.
+    report : called as report(label, done, total) after each. again : draw in any case.
 
     Raises
     ------
@@ -46,8 +50,10 @@ def draw_pictures(
     drawings = list(_drawings(results))
     pictures = []
     for done, (name, title, caption, draw) in enumerate(drawings, start=1):
+        key = picture_key(name, title, caption, draw)
+        kept = None if again else kept_picture(folder, name, title, caption, key)
         with rc_context(RC):
-            pictures.append(draw().save(folder, name, title, caption))
+            pictures.append(kept or draw().save(folder, name, title, caption, key))
         if report is not None:
             report("pictures", done, len(drawings))
     return tuple(pictures)

@@ -86,8 +86,10 @@ class Sheet:
         with rc_context(RC):
             return self.figure.add_axes(box, **how)
 
-    def save(self, folder: Path, name: str, title: str, caption: str) -> Picture:
+    def save(self, folder: Path, name: str, title: str, caption: str, key: str = "") -> Picture:
         """Write NAME.svg and NAME.png into `folder`, each whole or not at all.
+
+        key : what the picture was drawn from; both files hold it.
 
         Raises
         ------
@@ -96,8 +98,9 @@ class Sheet:
         with rc_context(RC):
             svg, png = io.BytesIO(), io.BytesIO()
             # No date, no version: the same picture has the same bytes.
-            self.figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "semitau", "Title": title})
-            self.figure.savefig(png, format="png", dpi=PIXELS_PER_INCH, metadata={"Software": None, "Title": title})
+            told = {"Title": title, "Identifier": key} if key else {"Title": title}
+            self.figure.savefig(svg, format="svg", metadata={"Date": None, "Creator": "semitau", **told})
+            self.figure.savefig(png, format="png", dpi=PIXELS_PER_INCH, metadata={"Software": None, **told})
         write_whole(folder / f"{name}.svg", svg.getvalue())
         write_whole(folder / f"{name}.png", png.getvalue())
         return Picture(name, title, caption, svg.getvalue().decode())

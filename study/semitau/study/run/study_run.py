@@ -79,7 +79,7 @@ def run_study(
         course = Course({} if stored is not None else expected_seconds(study_plan(materials)), report)
         results = stored or found_results(materials, folder, key, course, hiding)
         with course.step("pictures") as progress:
-            write_report(results, draw_pictures(results, folder.pictures, progress), folder.report)
+            write_report(results, draw_pictures(results, folder.pictures, progress, again), folder.report)
     course.end()
     if stored is None:
         store.prune()
