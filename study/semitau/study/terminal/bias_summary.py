@@ -4,20 +4,20 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from rich.console import RenderableType
+from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
 from ..bias.part import Bias, BiasPair, BiasRatio
 from ..numbers import GAP, digits_for, percent, shortened, signed
-from .summary import bias_text, listed, plain_table
+from .summary import listed, plain_table
 
 COLOURS = {"not covered": "bold red", "undecided": "yellow", "covered": "", "negligible": "dim"}
 
 
 def bias_summary(bias: Bias) -> Iterator[RenderableType]:
     """What no systematic covers, every alternative fitted with the study, the matrix of shifts, and the rest."""
-    yield bias_text(bias)
+    yield _uncovered(bias)
     yield shift_table(bias)
     yield ""
     if any(ratio.coverage for pair in bias.pairs for ratio in pair.ratios):
@@ -101,3 +101,11 @@ def _shift(pair: BiasPair, name: str) -> Text:
         return Text("failed")
     mark = {"not covered": "*", "undecided": "?"}.get(ratio.status, " ")
     return Text(signed(ratio.significance, 2, plus=True) + mark, style=COLOURS[ratio.status])
+
+
+def _uncovered(bias: Bias) -> RenderableType:
+    """What no systematic covers, or that there is no such thing."""
+    if not bias.not_covered:
+        return Text("No alternative is found to shift a ratio by more than what covers it.\n", style="bold green")
+    headline = Text("Not covered by the assigned systematic errors:", style="bold red")
+    return Group(headline, listed(bias.not_covered), "")

@@ -9,7 +9,6 @@ from rich.console import Group, RenderableType
 from rich.table import Table
 from rich.text import Text
 
-from ..bias.part import Bias
 from ..findings import Finding, findings
 from ..numbers import GAP, counted, digits_for, percent, signed, with_error
 from ..results import (
@@ -55,8 +54,6 @@ def summary(results: Results, report: str) -> RenderableType:
     parts.append(verdict_text(results.verdict))
     if found := findings(results):
         parts.append(findings_text(found))
-    if results.bias is not None:
-        parts.append(bias_text(results.bias))
     parts.extend(Text(f"Look at this: {warning}", style="yellow") for warning in results.warnings)
     parts.append(Text(f"Report: {report}"))
     return Group(*(line for part in parts for line in ((part, "") if isinstance(part, Table) else (part,))))
@@ -186,14 +183,6 @@ def verdict_text(verdict: Verdict) -> RenderableType:
     """The judgement, its headline in colour."""
     headline = Text(f"{VERDICT_WORDS[verdict.status]}.", style=f"bold {VERDICT_COLOURS[verdict.status]}")
     return Group(headline, listed(verdict.sentences), "")
-
-
-def bias_text(bias: Bias) -> RenderableType:
-    """What no systematic covers, or that there is no such thing."""
-    if not bias.not_covered:
-        return Text("No alternative is found to shift a ratio by more than what covers it.\n", style="bold green")
-    headline = Text("Not covered by the assigned systematic errors:", style="bold red")
-    return Group(headline, listed(bias.not_covered), "")
 
 
 def listed(sentences: Sequence[str]) -> Table:
