@@ -303,10 +303,10 @@ def results() -> Results:
 MARLOW = (Path(__file__).parents[2] / "configs" / "marlow_small.toml").read_text()
 
 
-def mini_text(changes: Mapping[str, str] | None = None) -> str:
+def mini_text(changes: Mapping[str, str] | None = None, *, questions: bool = True) -> str:
     """The small Marlow study with a fiftieth of its events, few bins and toys, and no alternatives.
 
-    changes : text -> text in its place.
+    changes : text -> text in its place. questions : whether it asks for design and reach.
     """
     text = re.sub(r"^events = ([\d_]+)", lambda found: f"events = {int(found[1]) // 50}", MARLOW, flags=re.M)
     text = re.sub(r"^number = \d+", "number = 60", text, flags=re.M)
@@ -316,6 +316,8 @@ def mini_text(changes: Mapping[str, str] | None = None) -> str:
     text = re.sub(r'^output = ".*"', 'output = "out"', text, flags=re.M)
     text = re.sub(r"\n# ── Other worlds.*?(?=\n# ── |\Z)", "", text, flags=re.S)  # test_bias.py has its own
     text = re.sub(r"\n# ── How many events.*?(?=\n# ── |\Z)", "", text, flags=re.S)  # test_sizing.py has its own
+    if not questions:
+        text = text.split("# ── Design")[0]
     for old, new in (changes or {}).items():
         assert old in text, old
         text = text.replace(old, new)
@@ -330,9 +332,9 @@ def mini(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> WriteStudy:
     """Writes a quick study, with changes if any, into a folder of its own, which is the current one."""
     monkeypatch.chdir(tmp_path)
 
-    def write(changes: Mapping[str, str] | None = None) -> Path:
+    def write(changes: Mapping[str, str] | None = None, *, questions: bool = True) -> Path:
         path = tmp_path / "mini.toml"
-        path.write_text(mini_text(changes))
+        path.write_text(mini_text(changes, questions=questions))
         return path
 
     return write

@@ -257,7 +257,7 @@ def test_step_of_a_study(tmp_path: Path) -> None:
     """Made once, in results and pictures, told by the summary; taken as it is by the next run."""
     path = tmp_path / "mini.toml"
     ratio = OTHERS.split("[[alternative]]")[2]
-    text = mini_text().split("# ── Design")[0]
+    text = mini_text(questions=False)
     path.write_text(f"{text}\n[[alternative]]{ratio}\n[bias]\ntoys = 20\nreplicas = 4\n")
     run = run_study(path, output=tmp_path / "out", workers=2)
     assert run.results.bias is not None

@@ -84,7 +84,9 @@ def test_a_study_floats_them(mini: Callable[..., Path]) -> None:
     """`[fit] coefficients`: parameters with errors in the results, ratios that follow them, toys of both; no linearity.
 
     The fit of the study is that of a model made by hand from its templates."""
-    path = mini({"[fit]\n": '[quadratic]\ncoefficients = ["SR", "T"]\n\n[fit]\ncoefficients = ["SR"]\n'})
+    path = mini(
+        {"[fit]\n": '[quadratic]\ncoefficients = ["SR", "T"]\n\n[fit]\ncoefficients = ["SR"]\n'}, questions=False
+    )
     assert main(["study", str(path), "--quiet", "--workers", "2"]) == 0
     results = read_results(Path("out") / "results.json")
     found = {ratio.name: ratio for ratio in results.ratios}
@@ -132,7 +134,7 @@ def test_a_study_floats_form_factors(mini: Callable[..., Path]) -> None:
     """The directions of D as coefficients, and as variations with two sides: ratios are free in both, nuisances in
     every table, and the errors agree, since one standard deviation is little. `--at` injects ratios of another set."""
     chosen = {"[fit]\n": '[fit]\ncoefficients = ["D_ff_1", "D_ff_2"]\n', 'data = "pseudo"': 'data = "expected"'}
-    path = mini({DIRECTIONS: FLOATED, **chosen})
+    path = mini({DIRECTIONS: FLOATED, **chosen}, questions=False)
     assert main(["study", str(path), "--quiet", "--workers", "2"]) == 0
     results = read_results(Path("out") / "results.json")
     assert [ratio.name for ratio in results.ratios] == ["R_D", "R_Dst"]

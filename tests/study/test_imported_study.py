@@ -31,7 +31,7 @@ DATA = '[import.data]\nfile = "out/templates.root"\nhistogram = "{category}/data
 
 
 def test_templates_and_data_from_elsewhere(mini: WriteStudy) -> None:
-    path = mini({"[toys]": COMPONENT})
+    path = mini({"[toys]": COMPONENT}, questions=False)
     categories = [category.name for category in read_study_without_files(path)]
     rng = np.random.default_rng(5)
     filled = {name: rng.poisson(0.4, (MM2.size - 1, EL.size - 1)).astype(float) for name in categories}
@@ -48,7 +48,10 @@ def test_templates_and_data_from_elsewhere(mini: WriteStudy) -> None:
     assert next(p for p in first.fit.parameters if p.name == "yield_cascade").constraint == 0.2
 
     # Its own pseudo-data taken as data of another file: the same fit.
-    path = mini({"[toys]": COMPONENT.replace("[toys]", DATA + "\n[toys]"), 'data = "pseudo"': 'data = "import"'})
+    path = mini(
+        {"[toys]": COMPONENT.replace("[toys]", DATA + "\n[toys]"), 'data = "pseudo"': 'data = "import"'},
+        questions=False,
+    )
     second = run_study(path, output=Path("again"), workers=2).results
     assert second.data.kind == "file"
     assert second.data.events == first.data.events

@@ -28,7 +28,7 @@ SEED = int(os.environ.get("SEMITAU_TEST_SEED", "20261201"))
 
 def plain_text() -> str:
     """The quick study without what it asks beyond fit and toys."""
-    return mini_text().split("# ── Design")[0]
+    return mini_text(questions=False)
 
 
 @pytest.fixture
