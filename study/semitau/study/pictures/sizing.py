@@ -98,8 +98,8 @@ def _draw_errors(axes: Axes, sizing: Sizing, ratio: SizingRatio, toys: Sequence[
         )  # fmt: skip
     axes.set_ylabel(f"error of {ratio.label}")
     axes.set_xlim(low, high)
-    axes.margins(y=0.18)
-    axes.legend(loc="upper right")
+    axes.margins(y=0.1)
+    _legend_above(axes, 0.3)
 
 
 def _draw_coverage(axes: Axes, ratio: SizingRatio, toys: Sequence[SizingToys], colour: str) -> None:
@@ -120,8 +120,15 @@ def _draw_coverage(axes: Axes, ratio: SizingRatio, toys: Sequence[SizingToys], c
             label="true ratios as in the templates" if same else f"true ratios {multiple:g} times that",
         )  # fmt: skip
     axes.set_ylabel("coverage, %")
-    axes.margins(y=0.3)
-    axes.legend(loc="lower right", fontsize=7.5, handletextpad=0.3, borderaxespad=0.1)
+    axes.margins(y=0.1)
+    _legend_above(axes, 0.35)
+
+
+def _legend_above(axes: Axes, room: float) -> None:
+    """The legend in a part `room` of the height that is added above all that is drawn."""
+    low, high = axes.get_ylim()
+    axes.set_ylim(low, low + (high - low) / (1.0 - room))
+    axes.legend(loc="upper right", ncols=2, fontsize=7.5, handletextpad=0.3, columnspacing=1.0, borderaxespad=0.1)
 
 
 def _of(toys: SizingToys, ratio: SizingRatio) -> SizingToyRatio:
