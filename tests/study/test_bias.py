@@ -267,7 +267,7 @@ def test_step_of_a_study(tmp_path: Path) -> None:
     assert (run.folder.pictures / "bias_matrix.svg").exists()
     console = Console(width=120, record=True, file=io.StringIO())
     console.print(summary(run.results, "report.html"))
-    assert "No alternative is found to shift a ratio by more than what covers it." in console.export_text()
+    assert "No shift of a ratio by the alternative is left uncovered." in console.export_text()
     again = run_study(path, output=tmp_path / "out", workers=2)
     assert again.reused
     assert again.results.bias == run.results.bias

@@ -72,7 +72,8 @@ def _bias(bias: Bias) -> Finding:
         names = ", ".join(labels[name] for name in others if name in missed)
         which = f"{_alternatives(len(missed), len(others))} not covered: {names}."
         return Finding("bias", "Alternatives", " ".join((which, *bias.not_covered[:1])), alarming=True)
-    text = f"No shift of a ratio by one of the {len(others)} is left uncovered."
+    count = len(others)
+    text = f"No shift of a ratio by {'the alternative' if count == 1 else f'one of the {count}'} is left uncovered."
     return Finding("bias", "Alternatives", " ".join((text, *bias.not_covered[:1], *bias.sentences[:1])))
 
 
