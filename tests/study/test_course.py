@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import io
+import re
 from typing import Any
 
 import pytest
@@ -141,3 +142,35 @@ def test_the_bar_of_the_whole_study_tells_share_and_time() -> None:
         report(WHOLE, 30, 120)
     assert "25 %" in out.getvalue()
     assert "01:30" in out.getvalue()
+
+
+BACK = ((30, 100), (76, 100), (73, 100), (50, 100), (80, 100))
+"""Reports on the whole whose share falls, as when a step turns out slower than expected."""
+
+
+def test_the_share_of_the_whole_study_never_falls_in_lines() -> None:
+    def tell(report: Any, now: list[float]) -> None:
+        report(WHOLE, 0, 100)
+        for done, total in BACK:
+            now[0] += 11.0
+            report(WHOLE, done, total)
+
+    assert [line.split(" left")[0].removeprefix("whole study: ") for line in lines(tell)] == [
+        "30 %, about 1 min 10 s",
+        "76 %, about 24 s",
+        "76 %, about 27 s",
+        "76 %, about 50 s",
+        "80 %, about 20 s",
+    ]
+
+
+def test_the_share_of_the_whole_study_never_falls_in_the_bar() -> None:
+    shown = []
+    for end in range(1, len(BACK) + 1):
+        out = io.StringIO()
+        with bars(Console(file=out, width=100, force_terminal=True)) as report:
+            for done, total in BACK[:end]:
+                report(WHOLE, done, total)
+        plain = re.sub(r"\x1b\[[0-9;?]*[A-Za-z]", "", out.getvalue())
+        shown.append((re.findall(r"(\d+) %", plain)[-1], re.findall(r"left (\d\d:\d\d)", plain)[-1]))
+    assert shown == [("30", "01:10"), ("76", "00:24"), ("76", "00:27"), ("76", "00:50"), ("80", "00:20")]

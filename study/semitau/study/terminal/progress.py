@@ -40,10 +40,21 @@ class _Left(TimeRemainingColumn):
     """Time that is left; of the whole study as it says itself."""
 
     def render(self, task: Task) -> Text:
-        if task.description != WHOLE or task.total is None:
+        if "left" not in task.fields:
             return super().render(task)
-        minutes, seconds = divmod(round(task.total - task.completed), 60)
+        minutes, seconds = divmod(task.fields["left"], 60)
         return Text(f"{minutes:02d}:{seconds:02d}", style="progress.remaining")
+
+
+class _Onward:
+    """Share of the whole study that is done: it never falls, though the estimate of what is left may grow."""
+
+    def __init__(self) -> None:
+        self._share = 0.0
+
+    def share(self, done: int, total: int) -> float:
+        self._share = max(self._share, done / total)
+        return self._share
 
 
 def silence(label: str, done: int, total: int | None) -> None:
@@ -63,11 +74,16 @@ def bars(console: Console) -> Iterator[Report]:
     )
     with Progress(*columns, console=console, refresh_per_second=5) as progress:
         tasks: dict[str, TaskID] = {}
+        onward = _Onward()
 
         def report(label: str, done: int, total: int | None) -> None:
             if label not in tasks:
                 tasks[label] = progress.add_task(label, total=total)
-            progress.update(tasks[label], completed=done, total=total)
+            if label == WHOLE and total:
+                share = onward.share(done, total)
+                progress.update(tasks[label], completed=share * total, total=total, left=total - done)
+            else:
+                progress.update(tasks[label], completed=done, total=total)
 
         yield report
 
@@ -80,12 +96,14 @@ def sparse_lines(console: Console, clock: Callable[[], float] = time.monotonic) 
     spoken: dict[str, float] = {}
     finished: set[str] = set()
     at_work = ""
+    onward = _Onward()
 
     def report(label: str, done: int, total: int | None) -> None:
         nonlocal at_work
         now = clock()
         begin, already = started.setdefault(label, (now, done))
         at_work = at_work if label == WHOLE else label
+        share = onward.share(done, total) if label == WHOLE and total else 0.0
         if total is not None and done >= total:
             if label not in finished:
                 finished.add(label)
@@ -97,7 +115,7 @@ def sparse_lines(console: Console, clock: Callable[[], float] = time.monotonic) 
             if label == WHOLE and total:
                 step = f" (now: {at_work})" if at_work else ""
                 left = f"about {duration(float(total - done))} left"
-                console.print(f"{label}: {100 * done // total} %, {left}{step}", highlight=False)
+                console.print(f"{label}: {int(100 * share)} %, {left}{step}", highlight=False)
             elif total:
                 # The first steps may compile code: an estimate from less than a twentieth would frighten.
                 told = done - already > total / 20
