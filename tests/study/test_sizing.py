@@ -20,6 +20,7 @@ from semitau.core.templates import TemplateSet
 from semitau.fit import Model, maximise
 from semitau.fit.uncertainty.enlarged import enlarged
 from semitau.gen.study_file.reader import read_study
+from semitau.gen.study_file.sizing import SizingSection
 from semitau.gen.study_file.study import StudyConfig
 from semitau.study.command_line import main
 from semitau.study.graph.materials import Materials
@@ -29,7 +30,7 @@ from semitau.study.run.study_model import study_model
 from semitau.study.sizing.allocating import rounded_down, rounded_up
 from semitau.study.sizing.part import Sizing
 from semitau.study.sizing.samples import samples_of_study, with_events
-from semitau.study.sizing.sizing_part import ingredients, sizing_part
+from semitau.study.sizing.sizing_part import ingredients, sizing_of_templates, sizing_part
 from semitau.study.sizing.verification import mixed, plan_of_sets
 from semitau.study.terminal.sizing_summary import sizing_summary
 
@@ -99,6 +100,17 @@ def test_needed_is_the_most_of_three(sized: Sizing) -> None:
         assert part.needed == max(cost.needed for cost in sized.costs if cost.sample == part.sample)
         assert part.generated is not None
         assert part.needed_events == max(500, int(np.ceil(part.needed * part.generated)))
+
+
+@pytest.mark.parametrize("form", ["approximate", "exact"])
+def test_bias_is_not_told_where_it_is_that_of_another_likelihood(form: str, templates: TemplateSet) -> None:
+    model = Model(templates, likelihood=form)
+    found = sizing_of_templates(templates, model, SizingSection(toys=0), SEED, 2, None)
+    assert {(cost.bias, cost.understated, cost.needed_bias, cost.needed_reported) for cost in found.costs} == {
+        (None, None, None, None)
+    }
+    assert {sample.because for sample in found.samples} == {"precision"}
+    assert not any("pulls" in sentence for sentence in found.sentences)
 
 
 def test_generated_templates_agree_with_the_prediction(sized: Sizing) -> None:

@@ -11,6 +11,10 @@ sample adds
 
 the part by which the reported variance is too small. Both fall as 1/f with f times the events, faster than the
 template error itself, which falls as 1/√f; so they matter where events are few.
+
+All this is of the light form, with one factor for a bin. A fit that takes its templates as exact has v = 0, and leaves
+out the template error itself besides. The other forms let each component fluctuate, which takes the bias away; their
+errors are too small as well, but by how much is not worked out here.
 """
 
 from __future__ import annotations
@@ -47,6 +51,11 @@ class TemplateBias:
     understated_error: Floats
 
 
+def bias_is_known(model: Model) -> bool:
+    """Whether `template_bias` can tell: not for fitted coefficients, nor for forms with factors of components."""
+    return not model.coefficients and (model.likelihood == "light" or not model.template_statistics)
+
+
 def template_bias(
     model: Model,
     samples: Mapping[str, Sequence[str]] | None = None,
@@ -56,12 +65,16 @@ def template_bias(
 
     samples : as in `event_numbers`. injected : true values, other than those of the templates.
 
-    Raises InputError as `event_numbers`, and for a model with fitted coefficients; RunError as `event_numbers`.
+    Raises InputError as `event_numbers`, and for a model with fitted coefficients or another form of the likelihood
+    than the light one; RunError as `event_numbers`.
     """
+    where = "bias from poor templates"
     if model.coefficients:
-        raise InputError(Problem("is not known while coefficients are fitted", "bias from poor templates"))
+        raise InputError(Problem("is not known while coefficients are fitted", where))
+    if not bias_is_known(model):
+        raise InputError(Problem("is not known for this form of the likelihood", where, model.likelihood, "light"))
     numbers = event_numbers(model, samples)
-    samples = samples or {name: (name,) for name in numbers.samples}
+    samples = {name: (name,) for name in numbers.samples} if samples is None else samples
     components = [component.name for component in model.templates.components]
     values = model.values(injected)
     held = np.array([parameter.fixed is not None for parameter in model.parameters])
@@ -81,17 +94,22 @@ def template_bias(
     exact = numbers.errors(np.inf)
     # Of each bin of each component; its number of effective events is 1/relative.
     own = relative[:, :, None]
-    spread = _spread_at_injection(model, components)[:, there][:, :, None]
+    spread = _spread_at_injection(model, components)[:, there][:, :, None] * float(model.template_statistics)
     pulls = -(own * contents[:, :, None] * along / mu[:, None] - spread * together)
     false = (own * along**2 / mu[:, None] - spread * together**2 / mu[:, None]) * (1.0 / exact**2)
     members = np.array([[float(c in names) for c in components] for names in samples.values()])
+    members = members.reshape(len(samples), len(components))
 
     def summed(terms: Floats) -> tuple[Floats, Floats]:
         # Every term is proportional to the number of events in its bin.
         total, error = terms.sum(axis=1), np.sqrt((terms**2 * own).sum(axis=1))
         return (members @ total).T, np.sqrt(members @ error**2).T
 
-    return TemplateBias(numbers.ratios, numbers.samples, *summed(pulls), *summed(false))
+    understated, unsure = summed(false)
+    if not model.template_statistics:
+        understated = understated + numbers.first_order() / exact[:, None] ** 2
+        unsure = np.hypot(unsure, numbers.first_order_errors() / exact[:, None] ** 2)
+    return TemplateBias(numbers.ratios, numbers.samples, *summed(pulls), understated, unsure)
 
 
 def _relative_variances(arrays: Arrays, components: int) -> Floats:

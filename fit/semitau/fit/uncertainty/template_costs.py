@@ -215,6 +215,7 @@ def event_numbers(model: Model, samples: Mapping[str, Sequence[str]] | None = No
     total = nominal.sum(axis=0)
     safe = np.where(total > 0, total, 1.0)
     members = np.array([[float(c in own) for c in components] for own in samples.values()])
+    members = members.reshape(len(samples), len(components))  # perhaps without samples
     variances = np.where(total > 0, members @ spread / safe**2, 0.0)
     fluctuation = np.where(total > 0, members @ unsure / safe**4, 0.0)
     free, through = model.free, model.jacobian(values)

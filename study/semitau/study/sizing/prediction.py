@@ -10,7 +10,7 @@ from typing import Literal
 import numpy as np
 from semitau.core.templates import Floats
 from semitau.fit.fitting.model import Model
-from semitau.fit.uncertainty.template_bias import TemplateBias, template_bias
+from semitau.fit.uncertainty.template_bias import TemplateBias, bias_is_known, template_bias
 from semitau.fit.uncertainty.template_costs import EventNumbers, event_numbers
 from semitau.gen.study_file.sizing import SizingSection
 
@@ -84,7 +84,7 @@ def predicted(
     precision = numbers.needed(wanted)
     needs, errors = np.zeros((3, *first.shape)), np.zeros((3, *first.shape))
     needs[0], errors[0] = precision, precision * relative
-    pulled = () if model.coefficients else tuple(_pulled(model, samples, numbers, asked))
+    pulled = tuple(_pulled(model, samples, numbers, asked)) if bias_is_known(model) else ()
     exact = numbers.errors(np.inf)[:, None]
     for known in pulled:
         _raise(needs[1], errors[1], np.abs(known.bias) / (wanted * exact), known.bias_error / (wanted * exact))
