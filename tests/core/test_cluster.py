@@ -14,6 +14,7 @@ import textwrap
 import threading
 import time
 from collections.abc import Iterator
+from concurrent.futures import Future
 from pathlib import Path
 
 import numpy as np
@@ -148,6 +149,27 @@ def test_a_worker_that_died_just_now_is_not_asked_for_its_versions(processes: Lo
     processes.workers[0].kill()
     with connected(cluster.address) as again, elsewhere(again):  # perhaps before the scheduler has seen it
         assert list(run([Job(tasks.slow, 0.0, (number,)) for number in range(3)])) == [0, 1, 2]
+
+
+class Late(Future[int]):
+    """Ends just after its time is up, before anybody has looked."""
+
+    def result(self, timeout: float | None = None) -> int:
+        if timeout is not None and not self.done():
+            self.set_result(7)
+            raise TimeoutError
+        return super().result(timeout)
+
+
+def test_a_result_that_comes_as_the_time_is_up(monkeypatch: pytest.MonkeyPatch) -> None:
+    made, late = Cluster(None, "tcp://nowhere:1", 1.0), Late()
+    monkeypatch.setattr(cluster_module, "LOOK_SECONDS", 0.01)
+    monkeypatch.setattr(made, "threads", lambda: late.done() or late.set_result(7))
+    assert made._result(late) == 7
+    failed = Future[int]()
+    failed.set_exception(TimeoutError("of the task"))
+    with pytest.raises(TimeoutError, match="of the task"):
+        made._result(failed)
 
 
 def test_the_scheduler_dies(tmp_path: Path) -> None:

@@ -70,7 +70,13 @@ def test_digests_are_the_same_in_another_process() -> None:
     assert out.strip() == content_digest({"a", "b", "c"}, {"x": (1.5, None)})
 
 
-@pytest.mark.parametrize("value", [lambda: 1, object(), {"a": print}, np.array([object()], dtype=object), iter(())])
+@pytest.mark.parametrize(
+    "value",
+    [
+        lambda: 1, object(), {"a": print}, np.array([object()], dtype=object), iter(()),
+        np.zeros(2, dtype=[("x", "f8"), ("y", "f8")]),
+    ],
+)  # fmt: skip
 def test_what_cannot_be_seen_has_no_digest(value: object) -> None:
     with pytest.raises(TypeError, match="has no digest"):
         content_digest(value)

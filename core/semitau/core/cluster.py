@@ -20,7 +20,7 @@ import uuid
 import warnings
 from collections import deque
 from collections.abc import Callable, Iterator
-from concurrent.futures import CancelledError, Future
+from concurrent.futures import CancelledError, Future, wait
 from contextlib import contextmanager
 from functools import cache
 from pathlib import Path
@@ -252,21 +252,19 @@ class Cluster:
     def _result(self, future: Future[T]) -> T:
         from distributed.scheduler import KilledWorker
 
-        while True:
-            try:
-                return future.result(timeout=LOOK_SECONDS)
-            except TimeoutError:
-                if future.done():
-                    raise
-                self.threads()
-            except CancelledError:
-                raise self._lost() from None
-            except KilledWorker as error:
-                remedy = "Look into the logs of the workers; most often their memory is full: give them more each."
-                what = "several workers died over the same task"
-                raise RunError(Problem(what, f"--engine: {self.address}", _first_line(error), remedy=remedy)) from None
-            except OtherVersions as error:
-                raise RunError(self._refusal(*error.args)) from None
+        # Not result(timeout): it may end between its time-out and a look at it, and a task may raise the same error.
+        while not wait((future,), timeout=LOOK_SECONDS).done:
+            self.threads()
+        try:
+            return future.result()
+        except CancelledError:
+            raise self._lost() from None
+        except KilledWorker as error:
+            remedy = "Look into the logs of the workers; most often their memory is full: give them more each."
+            what = "several workers died over the same task"
+            raise RunError(Problem(what, f"--engine: {self.address}", _first_line(error), remedy=remedy)) from None
+        except OtherVersions as error:
+            raise RunError(self._refusal(*error.args)) from None
 
     def _refusal(self, worker: str, told: object) -> Problem:
         where = f"--engine: {self.address}"

@@ -38,8 +38,8 @@ def _feed(digest: Any, value: object) -> None:
     elif isinstance(value, bytes):
         _add(digest, "bytes", value)
     elif isinstance(value, np.ndarray):
-        if value.dtype.hasobject:
-            raise TypeError("an array of objects has no digest")
+        if value.dtype.hasobject or value.dtype.names is not None:
+            raise TypeError("an array of objects or of records has no digest")  # its `str` does not tell the fields
         _add(digest, f"array {value.dtype.str} {value.shape}", np.ascontiguousarray(value).tobytes())
     elif is_dataclass(value) and not isinstance(value, type):
         names = _names(kind)  # type: ignore[arg-type]
