@@ -314,8 +314,9 @@ def test_what_is_not_covered_comes_first_in_words(bias: Bias) -> None:
         example("not covered", "other", "third", 0.8),
         example("covered", "third", "other", 0.2),
     ]
-    said = list(not_covered(studies, pairs))
-    beyond = "beyond the 0.0110 of tag_resolution, Dst_R0 and detector"
+    sources = {"tag_resolution": "tag resolution", "Dst_R0": "R₀(1) of D*"}
+    said = list(not_covered(studies, pairs, sources))
+    beyond = "beyond the 0.0110 of tag resolution, R₀(1) of D* and detector"
     hidden = f"{beyond}; the goodness of fit would not show it (p = 0.40 for a typical data set)."
     third, another, exchanged, others = said
     assert third.startswith("Made with a third one: R(D) shifts by −0.0280 ± 0.0010, −0.70 of its error, ")
@@ -329,7 +330,7 @@ def test_what_is_not_covered_comes_first_in_words(bias: Bias) -> None:
         "Of the 2 pairs of two alternatives 1 are not covered, the worst of them R(D) made with another world, fitted "
         "with a third one: +0.80 of its error."
     )
-    rest = list(other_sentences(studies, pairs))
+    rest = list(other_sentences(studies, pairs, sources))
     assert rest[0].startswith("Made with the study itself, fitted with a third one: R(D) shifts by +0.0120 ± 0.0010")
     assert "against the 0.0110 of the whole systematic error: the generated events are too few" in rest[0]
     assert rest[1] == (
@@ -342,11 +343,11 @@ def test_what_went_wrong_in_words(bias: Bias) -> None:
         update={"valid": False, "reason": "no minimum", "ratios": (), "goodness": None}
     )
     odd = example("covered", "ratio").model_copy(update={"failures": 3, "outside": 7.2})
-    said = "\n".join(other_sentences(bias.studies, [failed, odd]))
+    said = "\n".join(other_sentences(bias.studies, [failed, odd], {}))
     assert "Made with worse tags: the fit to the expected set failed (no minimum)." in said
     assert "Made with ratio: 3 of 10 toys failed." in said
     assert "Made with ratio: 7.2 expected events lie in bins where the fitted study expects none" in said
-    assert list(not_covered(bias.studies, [failed, odd])) == []
+    assert list(not_covered(bias.studies, [failed, odd], {})) == []
 
 
 def test_picture_frames_what_is_not_covered(bias: Bias) -> None:

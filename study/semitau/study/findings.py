@@ -119,7 +119,14 @@ def _design(design: Design) -> Finding:
         f"The expected error at the proposed working point is smaller by {percent(check.gain)} ± "
         f"{percent(check.uncertainty)} on independent events ({percent(design.gain)} on those of the search)"
     )
-    text += "." if check.confirmed else ": not confirmed, the study stays as good as it is."
+    if not design.snippet:
+        text = "Nothing better than the study as it is was found."
+    elif check.confirmed:
+        text += "."
+    elif check.noise is None:
+        text += ": not confirmed, there are too few events to tell it from fluctuations of the templates."
+    else:
+        text += ": not confirmed. Keep the study as it is, or generate more events."
     if flat:
         text += f" Does not matter: {', '.join(flat)}."
     return Finding("design", "Design", text)

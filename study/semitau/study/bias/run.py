@@ -42,11 +42,12 @@ def bias_part(study: StudyConfig, materials: Materials, workers: int | None, rep
     parts = _studies(study)
     pairs = list(_pairs(study, found, workers, report))
     ordered = sorted(pairs, key=lambda pair: _place(parts, pair))
+    sources = {parameter.name: parameter.label for world in reversed(found) for parameter in world.model.parameters}
     return Bias(
         studies=parts,
         negligible=study.bias.negligible,
-        not_covered=tuple(not_covered(parts, ordered)),
-        sentences=tuple(other_sentences(parts, ordered)),
+        not_covered=tuple(not_covered(parts, ordered, sources)),
+        sentences=tuple(other_sentences(parts, ordered, sources)),
         pairs=tuple(ordered),
     )
 

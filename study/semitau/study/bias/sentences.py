@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 
 from ..numbers import counted, digits_for, signed
 from .part import BiasPair, BiasRatio, BiasStudy
@@ -16,14 +16,17 @@ SAME = 1e-9
 Case = tuple[BiasPair, BiasRatio]
 
 
-def not_covered(studies: Sequence[BiasStudy], pairs: Sequence[BiasPair]) -> Iterator[str]:
+def not_covered(studies: Sequence[BiasStudy], pairs: Sequence[BiasPair], sources: Mapping[str, str]) -> Iterator[str]:
     """Shifts beyond what covers them: first what the study's own fit gets wrong, then what it is right about and an
-    alternative would not be, each the worst first; pairs of two alternatives in one line."""
+    alternative would not be, each the worst first; pairs of two alternatives in one line.
+
+    sources : what covers -> its label; what has none goes by its name.
+    """
     labels = {study.name: study.label for study in studies}
     nominal = studies[0].name
     cases = _cases(pairs, "not covered")
     for pair, ratio in _of_study(cases, nominal):
-        yield _shift(pair, ratio, labels, nominal) + f", beyond the {_covering(ratio)}{_seen(pair)}."
+        yield f"{_shift(pair, ratio, labels, nominal)}, beyond the {_covering(ratio, sources)}{_seen(pair)}."
     rest = [(pair, ratio) for pair, ratio in cases if nominal not in (pair.made_with, pair.fitted_with)]
     if rest:
         pair, ratio = rest[0]
@@ -36,14 +39,16 @@ def not_covered(studies: Sequence[BiasStudy], pairs: Sequence[BiasPair]) -> Iter
         )
 
 
-def other_sentences(studies: Sequence[BiasStudy], pairs: Sequence[BiasPair]) -> Iterator[str]:
-    """What is not decided, what else went wrong, and how much is well."""
+def other_sentences(
+    studies: Sequence[BiasStudy], pairs: Sequence[BiasPair], sources: Mapping[str, str]
+) -> Iterator[str]:
+    """What is not decided, what else went wrong, and how much is well. sources : as for `not_covered`."""
     labels = {study.name: study.label for study in studies}
     nominal = studies[0].name
     for pair, ratio in _of_study(_cases(pairs, "undecided"), nominal):
         yield (
-            _shift(pair, ratio, labels, nominal) + f", against the {_covering(ratio)}: the generated events are too "
-            "few to decide whether that matters."
+            f"{_shift(pair, ratio, labels, nominal)}, against the {_covering(ratio, sources)}: the generated events "
+            "are too few to decide whether that matters."
         )
     apart = [pair for pair in pairs if pair.made_with != pair.fitted_with]
     own = [pair for pair in apart if pair.fitted_with == nominal]
@@ -92,8 +97,9 @@ def _shift(pair: BiasPair, ratio: BiasRatio, labels: dict[str, str], nominal: st
     )
 
 
-def _covering(ratio: BiasRatio) -> str:
-    whose = _listed(ratio.covered_by) if ratio.covered_by else "the whole systematic error"
+def _covering(ratio: BiasRatio, sources: Mapping[str, str]) -> str:
+    names = [sources.get(name, name) for name in ratio.covered_by]
+    whose = _listed(names) if names else "the whole systematic error"
     return f"{signed(ratio.covering, digits_for(ratio.error) + 1)} of {whose}"
 
 
