@@ -21,7 +21,7 @@ from semitau.gen.block import CHARM_MASS, LANES, LIGHT_MASS, new_block
 from semitau.gen.decays.branching_fractions import COMPLETE, FROM_TABLES, TABLES, BranchingFractions
 from semitau.gen.decays.chains import Channel, channels
 from semitau.gen.decays.decay import CHARMS, Decay, charm_name
-from semitau.gen.decays.double_charm import double_charm_chains
+from semitau.gen.decays.double_charm import DoubleCharmChain, double_charm_chains
 from semitau.gen.study_file.fractions import BranchingFractionTables
 from semitau.gen.study_file.reader import read_study
 from semitau.gen.study_file.study import StudyConfig
@@ -212,6 +212,20 @@ def test_double_charm() -> None:
     )
     assert by_name["B+ -> D0 D_s+, D_s+ -> phi e"].branching_fraction == pytest.approx(0.01 * 0.03, rel=1e-12)
     assert {chain.photon_share for chain in chains if chain.partner == "D_s*+"} == {0.9}
+
+
+def test_fractions_of_zero_in_double_charm(tmp_path: Path) -> None:
+    """What is switched off leaves no chain, and no variation of its share, whose error the tables would tell."""
+    vector = '[branching_fractions]\n"D*+" = { "D0 pi+" = 1, "D+ pi0" = 0, "D+ gamma" = 0 }\n'
+    pairs = DOUBLE_CHARM.replace('["D_s", "D K"]', '["D* K"]')
+    found = [p.channel for p in plan_channels(study_with(tmp_path, pairs + vector)) if p.mode == "cc"]
+    assert {c.beside_soft for c in found if isinstance(c, DoubleCharmChain) and c.partner == "D*+"} == {"charged_pion"}
+    share = '[[variation]]\nname = "share"\nkind = "double_charm_share"\nsource = "tau"\n'
+    none = '[branching_fractions]\n"D_s+".tau = 0\n'
+    for text, there in ((DOUBLE_CHARM + share, True), (DOUBLE_CHARM + share + none, False)):
+        plans = [plan for plan in plan_channels(study_with(tmp_path, text)) if plan.mode == "cc"]
+        assert any(plan.channel.lepton == "tau" for plan in plans) == there
+        assert all((("share", 1) in plan.variations.factors) == there for plan in plans)
 
 
 def test_moving_one_of_a_sum() -> None:

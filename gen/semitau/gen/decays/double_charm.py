@@ -243,7 +243,8 @@ def _photon_share(partner: str, meson: str, fractions: BranchingFractions) -> fl
         for ground, soft, share in fractions.vector_decays[partner]
         if ground == meson and soft != "charged_pion"
     }
-    return neutral.get("photon", 0.0) / sum(neutral.values()) if neutral else 0.0
+    whole = sum(neutral.values())
+    return neutral.get("photon", 0.0) / whole if whole > 0.0 else 0.0
 
 
 def _lepton_sources(meson: str, fractions: BranchingFractions) -> Iterator[tuple[str, str, str | None, float]]:

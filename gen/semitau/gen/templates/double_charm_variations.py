@@ -56,7 +56,7 @@ def _change(study: StudyConfig, variation: DoubleCharmShare, whole: Expected) ->
     """Share of the part in the component, and one standard deviation of it, relative."""
     weights: dict[tuple[str, ...], float] = {}
     for chain, expected in whole:
-        if belongs(chain, variation):
+        if expected > 0.0 and belongs(chain, variation):
             key = chain.entry if variation.beside is not None else (chain.meson, chain.hadron or chain.lepton)
             weights[key] = weights.get(key, 0.0) + expected
     share = sum(weights.values()) / sum(expected for _, expected in whole)
