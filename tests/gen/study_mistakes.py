@@ -663,6 +663,15 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         ),
         1,
     ),
+    "residual energy that nothing looks at": (
+        'name = "R0"\nkind = "form_factor"\nset = "Dst"\nparameter = "R0(1)"',
+        'name = "R0"\nkind = "residual_energy"\nrelative = 0.1',
+        (
+            "variation[R0]: acts on nothing: no category cuts on e_res or has it as an axis. Remove the variation, or "
+            "give [selection] e_res a max."
+        ),
+        -1,
+    ),
     "unknown coefficient": (
         "[selection]",
         "[wilson]\nS = 0.1\n[selection]",

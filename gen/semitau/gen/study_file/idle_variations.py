@@ -20,6 +20,7 @@ from .variations import (
     LeptonIdentificationEfficiency,
     Misidentification,
     ProductionRatio,
+    ResidualEnergyScale,
     SoftPionEfficiency,
     Variation,
 )
@@ -29,7 +30,8 @@ from .written_variations import kept_directions
 def idle_variations(sections: Sections) -> Iterator[Conflict]:
     """Variations that would change no template; only those that can be judged with the tables that are sound."""
     modes = list(sections.modes.values())
-    leptons = {category.lepton for category in sections.categories.values()}
+    categories = sections.categories.values()
+    leptons = {category.lepton for category in categories}
     for i, variation in sections.variations.items():
         place = ("variation", i)
         match variation:
@@ -47,6 +49,11 @@ def idle_variations(sections: Sections) -> Iterator[Conflict]:
                     what = f"acts on nothing: there are {'B0' if share == 0.0 else 'B+'} alone"
                     remedy = "Remove the variation, or set charged_fraction between 0 and 1."
                     yield Conflict(place, what, f"[experiment] charged_fraction = {share:g}", remedy=remedy)
+            case ResidualEnergyScale():
+                used = any("e_res" in one.cuts or "e_res" in one.axes for one in categories)
+                if "category" in sections.whole and sections.selection is not None and not used:
+                    what = "acts on nothing: no category cuts on e_res or has it as an axis"
+                    yield Conflict(place, what, remedy="Remove the variation, or give [selection] e_res a max.")
             case SoftPionEfficiency():
                 if "mode" in sections.whole and all(mode.charm == ("D",) for mode in modes):
                     what = "acts on nothing: no mode has a D*"
