@@ -193,3 +193,11 @@ def test_report(model: Model) -> None:
     seen: list[tuple[str, int, int]] = []
     run_toys(model, 70, 1, report=lambda label, done, total: seen.append((label, done, total)))
     assert seen == [("toys", 32, 70), ("toys", 64, 70), ("toys", 70, 70)]
+
+
+def test_what_is_held_takes_its_functions_along() -> None:
+    """A yield held at 1.2 times the expectation, and another tied to it: both are 1.2, by hand."""
+    model = Model(problems.small(), functions={"yield_Dst_light": "yield_D_light"}, fixed={"yield_D_light": 1.2})
+    held = model.holding(model.values({"R_D": 0.4}))
+    assert [held[model.index(name)] for name in ("R_D", "yield_D_light", "yield_Dst_light")] == [0.4, 1.2, 1.2]
+    assert model.values()[model.index("yield_Dst_light")] == 1.0

@@ -196,6 +196,13 @@ class Model:
         set_functions(self.layout.arrays.functions, values)
         return values
 
+    def holding(self, values: Floats) -> Floats:
+        """These (parameters,) values with the parameters that the model holds where it holds them; functions follow."""
+        held = [i for i, parameter in enumerate(self.parameters) if parameter.fixed is not None]
+        found = values.copy()
+        found[held] = self.start[held]
+        return self.values(found)
+
     def expected_counts(self, parameters: Mapping[str, float] | ArrayLike | None = None) -> Floats:
         """Expected events, (bins,), at the given parameters (default: injected values)."""
         lanes = self.lane_expectations(self.values(parameters))

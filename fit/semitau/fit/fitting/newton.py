@@ -327,9 +327,7 @@ def maximise(
     """
     checked = model.data(data)
     free = np.array([i for i in model.free if model.names[i] not in _known(model, fixed)], dtype=np.int64)
-    x = model.start.copy() if start is None else model.values(start)
-    held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
-    x[held] = model.start[held]
+    x = model.start.copy() if start is None else model.holding(model.values(start))
     ending, s = run(model, checked, free, x)
     if start is not None:
         # From far out no slope may lead back, or only to a minimum of its own with negative yields.

@@ -10,12 +10,12 @@ from numpy.typing import ArrayLike, NDArray
 from scipy.stats import chi2
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import stream_key
-from semitau.core.templates import Floats
 
 from ..fitting.model import Model
 from ..uncertainty.curves import REGION_LEVELS
 from .pulls import LEVELS, binomial_interval
 from .ratio_toys import ratio_toys, shares_above
+from .toys import check_number
 
 
 @dataclass(frozen=True)
@@ -68,9 +68,8 @@ def interval_coverage(
     index = model.index(name)
     if index not in model.free:
         raise InputError(Problem("a fixed parameter has no interval", where=f"parameter {name}"))
-    if n < 1:
-        raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
-    truth = _truth(model, injected)
+    check_number(n)
+    truth = model.holding(model.values(injected))
     outer = ratio_toys(model, index, truth, n, stream_key(seed, "coverage", name), workers, keep=inner > 0)
     valid = np.isfinite(outer.heights) & np.isfinite(outer.errors)
     pulls = np.abs(outer.values[valid] - truth[index]) / outer.errors[valid]
@@ -108,19 +107,11 @@ def region_coverage(
     for name, place in zip(names, places, strict=True):
         if place not in model.free:
             raise InputError(Problem("a fixed parameter has no region", where=f"parameter {name}"))
-    if n < 1:
-        raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
+    check_number(n)
     stream = stream_key(seed, "coverage of regions", *names)
-    toys = ratio_toys(model, places[0], _truth(model, injected), n, stream, workers, also=(places[1],))
+    toys = ratio_toys(model, places[0], model.holding(model.values(injected)), n, stream, workers, also=(places[1],))
     heights = toys.heights[np.isfinite(toys.heights)]
     return {words: _held(float(chi2.cdf(level, 2)), heights < level) for words, level in REGION_LEVELS.items()}
-
-
-def _truth(model: Model, injected: Mapping[str, float] | ArrayLike | None) -> Floats:
-    truth = model.values(injected)
-    held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
-    truth[held] = model.start[held]
-    return truth
 
 
 def held(confidence: float, inside: int, number: int) -> Held:

@@ -22,7 +22,7 @@ from ..fitting.model import Model
 from ..fitting.newton import Scratch, minimise, scratch
 from ..likelihood.layout import EXACT_BY_COMPONENT, Arrays, Indices
 from ..likelihood.likelihood import VALUE, evaluate
-from .toys import BATCH, draw_toy
+from .toys import BATCH, draw_toy, padded_means
 
 Progress = Callable[[int, int], None]
 
@@ -57,7 +57,7 @@ def ratio_toys(
     index : of the parameter, which must be free. keep : also give the conditional fits.
     also : further parameters that are held at their truth, too.
     """
-    means = np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
+    means = padded_means(model, truth)
     start = truth.copy()
     held = np.array([i for i in model.free if i != index and i not in also], dtype=np.int64)
     place = int(np.flatnonzero(model.free == index)[0])

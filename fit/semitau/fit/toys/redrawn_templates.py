@@ -18,20 +18,30 @@ from collections.abc import Mapping
 from typing import NamedTuple
 
 import numpy as np
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import ArrayLike
 from semitau.core.compiled import kernel
 from semitau.core.engine import Job, run
 from semitau.core.errors import InputError, Problem
 from semitau.core.streams import event_key, stream_key
 from semitau.core.templates import Floats
 
-from ..fitting.ending import CONVERGED
 from ..fitting.model import Model
-from ..fitting.newton import Scratch, errors_at, minimise, scratch
+from ..fitting.newton import Scratch, scratch
 from ..likelihood.interpolation import FLOOR
 from ..likelihood.layout import EXACT_BY_COMPONENT, Arrays, Indices
+from .kept_toys import Batch, joined
 from .poisson import poisson
-from .toys import BATCH, Report, ToyResults, draw_toy
+from .toys import (
+    BATCH,
+    Report,
+    ToyResults,
+    check_number,
+    draw_toy,
+    fit_toy,
+    padded_means,
+    toy_results,
+    unfitted,
+)
 
 _ZERO = np.uint64(0)
 
@@ -57,26 +67,18 @@ def toys_with_new_templates(
 
     Raises InputError for n < 1, a bad seed, unknown names, factors that are not positive, and fitted coefficients.
     """
-    if isinstance(n, bool) or not isinstance(n, int | np.integer) or n < 1:
-        raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
+    check_number(n)
     if model.coefficients:
         raise InputError(Problem("templates cannot be drawn anew while coefficients are fitted", "toys"))
     thinning = _thinning(model, factors)
     truth = model.values(injected)
-    start = truth.copy()
-    held = np.array([parameter.fixed is not None for parameter in model.parameters])
-    start[held] = model.start[held]
+    start = model.holding(truth)
     streams = stream_key(seed, "toys"), stream_key(seed, "templates of toys")
-    means = np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
+    means = padded_means(model, truth)
     common = _Toys(model.layout.arrays, model.template_statistics, thinning, model.free, *streams, truth, start, means)
     tasks = [Job(_batch, common, (first, min(BATCH, n - first))) for first in range(0, n, BATCH)]
     progress = None if report is None else lambda done, _: report(label, min(n, done * BATCH), n)
-    parts = list(run(tasks, workers, progress))
-    values, errors, statuses, statistics, steps = (np.concatenate(part) for part in zip(*parts, strict=True))
-    for array in (truth, values, errors, statuses, statistics, steps):
-        array.flags.writeable = False
-    ratios = tuple(name for name in model.ratios if model.parameters[model.index(name)].fixed is None)
-    return ToyResults(model.names, ratios, truth, values, errors, statuses, statistics, steps, int(seed))
+    return toy_results(model, truth, joined(list(run(tasks, workers, progress))), seed)
 
 
 def _thinning(model: Model, factors: Mapping[str, float] | float) -> Floats:
@@ -90,9 +92,6 @@ def _thinning(model: Model, factors: Mapping[str, float] | float) -> Floats:
     if wrong:
         raise InputError(Problem("must be positive", "multiples of the generated events", ", ".join(wrong)))
     return np.array([1.0 / given[name] if name in given else 0.0 for name in names])
-
-
-Batch = tuple[Floats, Floats, NDArray[np.int64], Floats, NDArray[np.int64]]
 
 
 class _Toys(NamedTuple):
@@ -111,9 +110,7 @@ class _Toys(NamedTuple):
 
 def _batch(common: _Toys, first: int, size: int) -> Batch:
     true, counted, thinning, free, stream, template_stream, truth, start, means = common
-    parameters = truth.size
-    values, errors = np.zeros((size, parameters)), np.zeros((size, parameters))
-    statuses, steps, statistics = np.zeros(size, np.int64), np.zeros(size, np.int64), np.zeros(size)
+    fits = unfitted(size, truth.size)
     own = true._replace(
         nominal=true.nominal.copy(),
         odd=true.odd.copy(),
@@ -127,9 +124,9 @@ def _batch(common: _Toys, first: int, size: int) -> Batch:
     lanes = np.zeros(means.size), np.ones(true.nominal.size if exact else means.size), np.ones(means.size)
     _fit_toys(
         true, own, counted, thinning, free, stream, template_stream, np.uint64(first), truth, start, means, *lanes,
-        np.zeros(parameters), scratch(true), values, errors, statuses, statistics, steps,
+        np.zeros(truth.size), scratch(true), fits,
     )  # fmt: skip
-    return values, errors, statuses, statistics, steps
+    return fits
 
 
 @kernel
@@ -204,28 +201,13 @@ def _fit_toys(
     there: Floats,
     centres: Floats,
     s: Scratch,
-    values: Floats,
-    errors: Floats,
-    statuses: NDArray[np.int64],
-    statistics: Floats,
-    steps: NDArray[np.int64],
+    fits: Batch,
 ) -> None:
-    for i in range(statuses.shape[0]):
+    for i in range(fits[2].shape[0]):
         toy = first + np.uint64(i)
         redraw(true, own, counted, thinning, event_key(template_stream, toy), there)
         draw_toy(own, event_key(stream, toy), truth, means, counts, gammas, centres)
         gammas[:] = 1.0  # here the templates themselves fluctuate, not what is known of them
         for lane in range(counts.shape[0]):
             counts[lane] *= there[lane]
-        x = values[i]
-        x[:] = start
-        ending = minimise(own, free, counts, gammas, centres, x, s)
-        statuses[i] = ending.status
-        statistics[i] = 2.0 * ending.value
-        steps[i] = ending.steps
-        errors[i, :] = 0.0
-        if ending.status == CONVERGED:
-            errors_at(own, free, x, s, errors[i])
-        else:
-            for j in range(free.shape[0]):
-                errors[i, free[j]] = np.nan
+        fit_toy(own, free, start, counts, gammas, centres, s, i, fits)

@@ -181,8 +181,7 @@ def run_toys(
 
     Failed fits are counted, not raised. Raises InputError for n < 1, a bad seed, or unknown names.
     """
-    if isinstance(n, bool) or not isinstance(n, int | np.integer) or n < 1:
-        raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
+    check_number(n)
     common = _common(model, seed, injected, expectation)
     truth = common.truth
     key = "" if kept is None else toys_key(common)
@@ -194,15 +193,25 @@ def run_toys(
     batches = run(tasks, workers, progress)
     with closing(batches if kept is None else keeping(batches, kept, key, parts)) as made:  # type: ignore[type-var]
         parts = [*parts, *made]
-    values, errors, statuses, statistics, steps = joined(parts, n)
     if expectation is not None:
         truth = truth.copy()
         for name, value in expectation.true.items():
             truth[model.index(name)] = value
-    for array in (truth, values, errors, statuses, statistics, steps):
+    return toy_results(model, truth, joined(parts, n), seed, foreign=expectation is not None)
+
+
+def check_number(n: int) -> None:
+    """Raises InputError unless n is a number of toys."""
+    if isinstance(n, bool) or not isinstance(n, int | np.integer) or n < 1:
+        raise InputError(Problem("the number of toys must be a whole number", "toys", got=repr(n), wanted="1 or more"))
+
+
+def toy_results(model: Model, truth: Floats, fits: Batch, seed: int, *, foreign: bool = False) -> ToyResults:
+    """All fits of toys of a model, which become read-only."""
+    for array in (truth, *fits):
         array.flags.writeable = False
+    values, errors, statuses, statistics, steps = fits
     ratios = tuple(name for name in model.ratios if model.parameters[model.index(name)].fixed is None)
-    foreign = expectation is not None
     return ToyResults(model.names, ratios, truth, values, errors, statuses, statistics, steps, int(seed), foreign)
 
 
@@ -231,28 +240,30 @@ def _common(
     model: Model, seed: int, injected: Mapping[str, float] | ArrayLike | None, expectation: Expectation | None
 ) -> _Toys:
     truth = model.values(injected)
-    start = truth.copy()
-    held = [i for i, parameter in enumerate(model.parameters) if parameter.fixed is not None]
-    start[held] = model.start[held]
-    means = _padded_means(model, truth) if expectation is None else model.lanes(expectation.seen_by(model)[0], 0.0)
+    start = model.holding(truth)
+    means = padded_means(model, truth) if expectation is None else model.lanes(expectation.seen_by(model)[0], 0.0)
     return _Toys(model.layout.arrays, model.free, stream_key(seed, "toys"), truth, start, means)
 
 
 def _batch(common: _Toys, first: int, size: int) -> Batch:
     arrays, free, stream, truth, start, means = common
-    parameters = truth.size
-    values, errors = np.zeros((size, parameters)), np.zeros((size, parameters))
-    statuses, steps, statistics = np.zeros(size, np.int64), np.zeros(size, np.int64), np.zeros(size)
+    fits = unfitted(size, truth.size)
     exact = arrays.form == EXACT_BY_COMPONENT
     lanes = np.zeros(means.size), np.ones(arrays.nominal.size if exact else means.size)
     _fit_toys(
-        arrays, free, stream, np.uint64(first), truth, start, means, *lanes, np.zeros(parameters),
-        scratch(arrays), values, errors, statuses, statistics, steps,
-    )  # fmt: skip
-    return values, errors, statuses, statistics, steps
+        arrays, free, stream, np.uint64(first), truth, start, means, *lanes, np.zeros(truth.size), scratch(arrays), fits
+    )
+    return fits
 
 
-def _padded_means(model: Model, truth: Floats) -> Floats:
+def unfitted(size: int, parameters: int) -> Batch:
+    """Room for the fits of so many toys."""
+    tables = np.zeros((size, parameters)), np.zeros((size, parameters))
+    return *tables, np.zeros(size, np.int64), np.zeros(size), np.zeros(size, np.int64)
+
+
+def padded_means(model: Model, truth: Floats) -> Floats:
+    """(lanes,) expectations, 0 where there is no bin."""
     return np.where(model.layout.lane_bin >= 0, model.lane_expectations(truth), 0.0)
 
 
@@ -322,23 +333,36 @@ def _fit_toys(
     gammas: Floats,
     centres: Floats,
     s: Scratch,
-    values: Floats,
-    errors: Floats,
-    statuses: NDArray[np.int64],
-    statistics: Floats,
-    steps: NDArray[np.int64],
+    fits: Batch,
 ) -> None:
-    for i in range(statuses.shape[0]):
+    for i in range(fits[2].shape[0]):
         draw_toy(arrays, event_key(stream, first + np.uint64(i)), truth, means, counts, gammas, centres)
-        x = values[i]
-        x[:] = start
-        ending = minimise(arrays, free, counts, gammas, centres, x, s)
-        statuses[i] = ending.status
-        statistics[i] = 2.0 * ending.value
-        steps[i] = ending.steps
-        errors[i, :] = 0.0
-        if ending.status == CONVERGED:
-            errors_at(arrays, free, x, s, errors[i])
-        else:
-            for j in range(free.shape[0]):
-                errors[i, free[j]] = np.nan
+        fit_toy(arrays, free, start, counts, gammas, centres, s, i, fits)
+
+
+@kernel
+def fit_toy(
+    arrays: Arrays,
+    free: Indices,
+    start: Floats,
+    counts: Floats,
+    gammas: Floats,
+    centres: Floats,
+    s: Scratch,
+    place: int,
+    fits: Batch,
+) -> None:
+    """Fit the toy that `draw_toy` left, into this place of the fits."""
+    values, errors, statuses, statistics, steps = fits
+    x = values[place]
+    x[:] = start
+    ending = minimise(arrays, free, counts, gammas, centres, x, s)
+    statuses[place] = ending.status
+    statistics[place] = 2.0 * ending.value
+    steps[place] = ending.steps
+    errors[place, :] = 0.0
+    if ending.status == CONVERGED:
+        errors_at(arrays, free, x, s, errors[place])
+    else:
+        for j in range(free.shape[0]):
+            errors[place, free[j]] = np.nan

@@ -76,10 +76,7 @@ def template_bias(
     numbers = event_numbers(model, samples)
     samples = {name: (name,) for name in numbers.samples} if samples is None else samples
     components = [component.name for component in model.templates.components]
-    values = model.values(injected)
-    held = np.array([parameter.fixed is not None for parameter in model.parameters])
-    values[held] = model.start[held]
-    values = model.values(values)
+    values = model.holding(model.values(injected))
     arrays, free = model.layout.arrays, model.free
     lanes = arrays.floor.size
     contents, rows = np.zeros((len(components), lanes)), np.zeros((len(components), lanes, values.size))

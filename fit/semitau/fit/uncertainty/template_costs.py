@@ -200,10 +200,8 @@ def event_numbers(model: Model, samples: Mapping[str, Sequence[str]] | None = No
     ratios = tuple(name for name in model.ratios if model.parameters[model.index(name)].fixed is None)
     if not ratios:
         raise InputError(Problem("no ratio is fitted: there is no error to judge events by", "fit"))
-    values = model.injected.copy()
-    held = np.array([parameter.fixed is not None for parameter in model.parameters])
-    values[held] = model.start[held]
-    found = bin_derivatives(model, model.values(values))
+    values = model.holding(model.injected)
+    found = bin_derivatives(model, values)
     size = found.expected.size
     nominal, spread, unsure = (np.zeros((len(components), size)) for _ in range(3))
     for place, name in enumerate(components):
