@@ -42,10 +42,14 @@ if TYPE_CHECKING:
     from .toys.redrawn_templates import toys_with_new_templates as toys_with_new_templates
     from .toys.straightness import Linearity as Linearity
     from .toys.straightness import linearity as linearity
+    from .toys.toys import Expectation as Expectation
     from .toys.toys import ToyResults as ToyResults
     from .toys.toys import run_toys as run_toys
     from .uncertainty.allocation import best_events as best_events
     from .uncertainty.allocation import least_events as least_events
+    from .uncertainty.covariance_split import split_covariance as split_covariance
+    from .uncertainty.covering import covering_error as covering_error
+    from .uncertainty.covering import judge_shift as judge_shift
     from .uncertainty.curves import Profile as Profile
     from .uncertainty.curves import Region as Region
     from .uncertainty.curves import profile as profile
@@ -54,11 +58,16 @@ if TYPE_CHECKING:
     from .uncertainty.decomposition import budget as budget
     from .uncertainty.fit_quality import Quality as Quality
     from .uncertainty.fit_quality import quality as quality
+    from .uncertainty.foreign_fit import ForeignFit as ForeignFit
+    from .uncertainty.foreign_fit import foreign_fit as foreign_fit
+    from .uncertainty.foreign_fit import shift_errors as shift_errors
     from .uncertainty.nuisances import NuisanceShift as NuisanceShift
     from .uncertainty.nuisances import held_in_turn as held_in_turn
     from .uncertainty.nuisances import nuisance_shifts as nuisance_shifts
     from .uncertainty.prospects import Reach as Reach
     from .uncertainty.prospects import reach as reach
+    from .uncertainty.template_bias import TemplateBias as TemplateBias
+    from .uncertainty.template_bias import template_bias as template_bias
     from .uncertainty.template_costs import EventNumbers as EventNumbers
     from .uncertainty.template_costs import event_numbers as event_numbers
 
@@ -69,7 +78,9 @@ _HOME = {
     "Correlated": ".likelihood.constraints",
     "Data": ".fitting.data",
     "EventNumbers": ".uncertainty.template_costs",
+    "Expectation": ".toys.toys",
     "FitResult": ".fitting.result",
+    "ForeignFit": ".uncertainty.foreign_fit",
     "Gaussian": ".likelihood.constraints",
     "IntervalCoverage": ".toys.covering",
     "Linearity": ".toys.straightness",
@@ -83,6 +94,7 @@ _HOME = {
     "Quality": ".uncertainty.fit_quality",
     "Reach": ".uncertainty.prospects",
     "Region": ".uncertainty.curves",
+    "TemplateBias": ".uncertainty.template_bias",
     "Tension": ".averages.compatibility",
     "ToyInterval": ".toys.neyman",
     "ToyResults": ".toys.toys",
@@ -91,11 +103,14 @@ _HOME = {
     "best_events": ".uncertainty.allocation",
     "budget": ".uncertainty.decomposition",
     "correct_for_templates": ".toys.poor_templates",
+    "covering_error": ".uncertainty.covering",
     "deepest": ".fitting.coefficients",
     "event_numbers": ".uncertainty.template_costs",
+    "foreign_fit": ".uncertainty.foreign_fit",
     "held_in_turn": ".uncertainty.nuisances",
     "interpolate": ".likelihood.interpolation",
     "interval_coverage": ".toys.covering",
+    "judge_shift": ".uncertainty.covering",
     "least_events": ".uncertainty.allocation",
     "linearity": ".toys.straightness",
     "maximise": ".fitting.newton",
@@ -109,7 +124,10 @@ _HOME = {
     "region": ".uncertainty.curves",
     "region_coverage": ".toys.covering",
     "run_toys": ".toys.toys",
+    "shift_errors": ".uncertainty.foreign_fit",
+    "split_covariance": ".uncertainty.covariance_split",
     "split_shape_and_rate": ".fitting.shape_and_rate",
+    "template_bias": ".uncertainty.template_bias",
     "templates_at": "semitau.core.quadratic",
     "tension": ".averages.compatibility",
     "toy_interval": ".toys.neyman",
@@ -123,7 +141,9 @@ __all__ = [
     "Correlated",
     "Data",
     "EventNumbers",
+    "Expectation",
     "FitResult",
+    "ForeignFit",
     "Gaussian",
     "IntervalCoverage",
     "Linearity",
@@ -137,6 +157,7 @@ __all__ = [
     "Quality",
     "Reach",
     "Region",
+    "TemplateBias",
     "Tension",
     "ToyInterval",
     "ToyResults",
@@ -145,11 +166,14 @@ __all__ = [
     "best_events",
     "budget",
     "correct_for_templates",
+    "covering_error",
     "deepest",
     "event_numbers",
+    "foreign_fit",
     "held_in_turn",
     "interpolate",
     "interval_coverage",
+    "judge_shift",
     "least_events",
     "linearity",
     "maximise",
@@ -163,7 +187,10 @@ __all__ = [
     "region",
     "region_coverage",
     "run_toys",
+    "shift_errors",
+    "split_covariance",
     "split_shape_and_rate",
+    "template_bias",
     "templates_at",
     "tension",
     "toy_interval",
