@@ -10,20 +10,17 @@ from typing import NamedTuple
 import numpy as np
 import numpy.typing as npt
 from semitau.core.compiled import kernel
-from semitau.core.streams import event_key
 
 from ..block import CATEGORY, LANES, ROWS, SOFT_EFFICIENCY, SOFT_FOUND
 from ..response.candidates import Scenario, Windows, reconstruct
-from ..response.compaction import drop_unbinned, move
+from ..response.compaction import drop_unbinned
 from ..response.detector import Chain, Detector
 from ..response.finding import find, list_found
+from ..response.found_decays import draw_block, take_found
 from ..response.measuring import measure
-from ..response.photons import keep_photons
-from ..response.tau_pions import keep_partners
 from ..templates.binning import Cuts
 from ..templates.chunk import FOUND_STEPS, soft_weight
-from ..truth.any_drawing import AnyTable, draw
-from ..truth.radiation import radiate
+from ..truth.any_drawing import AnyTable
 from ..truth.variation_weights import VariationTable, variation_weights
 from .grid_table import GridTable, find_cells
 
@@ -76,22 +73,13 @@ def list_chunk(
     for begin in range(0, events, LANES):
         here = min(LANES, events - begin)
         first_event = np.uint64(first + begin)
-        for i in range(LANES):
-            numbers[i] = first_event + np.uint64(i)
-            keys[i] = event_key(stream, numbers[i])
-        draw(x, table, stream, first_event)
-        if chain.radiation.on == 1:
-            radiate(x, chain.radiation, stream, first_event)
+        draw_block(x, keys, numbers, table, chain, stream, first_event)
         find(x, keys, chain, detector, quantiles)
         passed = list_found(x, here, found, lanes)
         done = 0
         while done < passed:
             take = min(passed - done, LANES - filled)
-            move(x, keys, numbers, lanes, done, take, y, y_keys, y_numbers, filled)
-            if chain.partners > 0:
-                keep_partners(x, lanes, done, take, y, filled)
-            if chain.radiation.on == 1:
-                keep_photons(x, lanes, done, take, y, filled)
+            take_found(x, keys, numbers, lanes, done, take, chain, y, y_keys, y_numbers, filled)
             done += take
             filled += take
             if filled == LANES:

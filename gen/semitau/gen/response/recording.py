@@ -7,7 +7,6 @@ from dataclasses import dataclass
 import numpy as np
 import numpy.typing as npt
 from semitau.core.compiled import kernel
-from semitau.core.streams import event_key
 
 from .. import block as row
 from ..block import LANES, ROWS
@@ -15,16 +14,13 @@ from ..templates.binning import ROW_OF, Axes, Cuts, place
 from ..templates.chunk import FOUND_STEPS
 from ..templates.chunk_tasks import NOMINAL, Bench
 from ..templates.component_plan import ChannelPlan
-from ..truth.any_drawing import AnyTable, draw, table_of
-from ..truth.radiation import radiate
+from ..truth.any_drawing import AnyTable, table_of
 from .candidates import Scenario, Windows, reconstruct
-from .compaction import move
 from .detector import Chain, Detector
 from .finding import find, list_found
+from .found_decays import draw_block, take_found
 from .measuring import measure
-from .photons import keep_photons
 from .setup import kernel_chain
-from .tau_pions import keep_partners
 
 Floats = npt.NDArray[np.float64]
 Integers = npt.NDArray[np.int64]
@@ -124,22 +120,13 @@ def _record(
     for begin in range(0, events, LANES):
         here = min(LANES, events - begin)
         first_event = np.uint64(first + begin)
-        for i in range(LANES):
-            numbers[i] = first_event + np.uint64(i)
-            keys[i] = event_key(stream, numbers[i])
-        draw(x, table, stream, first_event)
-        if chain.radiation.on == 1:
-            radiate(x, chain.radiation, stream, first_event)
+        draw_block(x, keys, numbers, table, chain, stream, first_event)
         for k in range(_TRUTH.shape[0]):
             for i in range(here):
                 truth[k, begin + i] = x[_TRUTH[k] + i]
         find(x, keys, chain, detector, quantiles)
         passed = list_found(x, here, found, lanes)
-        move(x, keys, numbers, lanes, 0, passed, y, y_keys, y_numbers, 0)
-        if chain.partners > 0:
-            keep_partners(x, lanes, 0, passed, y, 0)
-        if chain.radiation.on == 1:
-            keep_photons(x, lanes, 0, passed, y, 0)
+        take_found(x, keys, numbers, lanes, 0, passed, chain, y, y_keys, y_numbers, 0)
         measure(y, y_keys, chain, detector)
         reconstruct(y, chain, detector.beams, scenario, windows)
         place(y, passed, cuts, axes, flow, bins)
