@@ -52,7 +52,7 @@ def _count(study_file: str, most_kinds: int) -> Counts:
     from semitau.gen.templates import chunk, component_plan
     from semitau.gen.templates.chunk_tasks import channel_inputs, channel_tasks, make_bench
 
-    stages = {"draw": 0, "find": 0, "measure": 0}
+    stages = {"draw_block": 0, "find": 0, "measure": 0}  # kernels of a chunk, with photons in the first
 
     def watched(name: str) -> None:
         kernel = getattr(chunk, name)
