@@ -10,19 +10,22 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from semitau.core.content_digest import content_digest
 from semitau.core.errors import InputError
 from semitau.core.templates import TemplateSet
 from semitau.fit.fitting.newton import maximise
 from semitau.fit.uncertainty.prospects import reach
 from semitau.study.averages.part import AverageResults
 from semitau.study.averages.picture import average_picture
-from semitau.study.averages.step import average_part
+from semitau.study.averages.step import average_part, ingredients
 from semitau.study.command_line import main
 from semitau.study.graph.materials import Materials
 from semitau.study.pictures.reach import reach_curves
 from semitau.study.reach.part import Reach
 from semitau.study.reach.run import reach_part
+from semitau.study.results import Results
 from semitau.study.run.opening import open_study
+from semitau.study.run.study_folder import study_key
 from semitau.study.run.study_model import study_model
 
 from .conftest import small_templates
@@ -155,6 +158,27 @@ def test_fitted_values_are_never_looked_at(mini: WriteStudy) -> None:
     made = [materials(path, small_templates(seed)) for seed in (None, 1, 2)]
     assert len({reach_part(one.study, one, 1, None).model_dump_json() for one in made}) == 1
     assert len({average_part(one.study, one, 1, None).model_dump_json() for one in made}) == 1
+
+
+def test_results_of_another_study_belong_to_the_keys(mini: WriteStudy, results: Results) -> None:
+    """Errors that the file takes from results.json of another study: the average is made again when they change, and
+    only then."""
+    planned = '\n[[planned]]\nname = "later"\nresults = "other.json"\n'
+    path = written(mini, '[average]\nfile = "others.toml"\n', OTHERS + planned)
+    other = path.parent / "other.json"
+
+    def keys() -> tuple[str, str]:
+        study = open_study(path)
+        return study_key(study), content_digest(ingredients(study))
+
+    other.write_text(results.text())
+    before = keys()
+    other.write_text(results.text() + "\n")
+    assert keys() == before
+    first, *rest = results.ratios
+    worse = first.model_copy(update={"systematic": 1.5 * (first.systematic or 0.0)})
+    other.write_text(results.model_copy(update={"ratios": (worse, *rest)}).text())
+    assert all(new != old for new, old in zip(keys(), before, strict=True))
 
 
 def test_the_picture_needs_the_part_alone(mini: WriteStudy, templates: TemplateSet, tmp_path: Path) -> None:

@@ -10,7 +10,11 @@ from typing import get_args
 import pytest
 from pydantic import BaseModel, ValidationError
 from semitau.core.errors import InputError
+from semitau.study.findings import Finding, findings
+from semitau.study.result_part import Part
 from semitau.study.results import Results, read_results
+
+from .invented_parts import with_every_part
 
 DOCS = Path(__file__).parents[2] / "docs" / "results.md"
 
@@ -76,3 +80,30 @@ def test_docs_explain_every_field() -> None:
         assert section is not None, f"docs/results.md has no section {name}"
         rows = dict(re.findall(r"^\| `(\w+)` \| .*? \| (.*?) \|$", section[1], flags=re.M))
         assert rows == {field: info.description for field, info in model.model_fields.items()}, name
+
+
+def test_findings_of_a_design_and_of_too_few_events(results: Results) -> None:
+    """Why a gain is not confirmed, and what is marked in the sizing: first, and with one mark."""
+    whole = with_every_part(results)
+    assert whole.design is not None
+    assert whole.sizing is not None
+
+    def told(section: str, **changes: Part) -> Finding:
+        found = findings(whole.model_copy(update=changes))
+        return next(finding for finding in found if finding.section == section)
+
+    doubtful = whole.design.confirmation.model_copy(update={"confirmed": False})
+    unknown = doubtful.model_copy(update={"noise": None})
+    for check, words in (
+        (whole.design.confirmation, "on those of the search)."),
+        (doubtful, ": not confirmed. Keep the study as it is, or generate more events."),
+        (unknown, ": not confirmed, there are too few events to tell it from fluctuations of the templates."),
+    ):
+        assert words in told("design", design=whole.design.model_copy(update={"confirmation": check})).text
+    same = told("design", design=whole.design.model_copy(update={"snippet": ""})).text
+    assert same.startswith("Nothing better than the study as it is was found.")
+    marked = whole.sizing.model_copy(update={"sentences": ("Fine.", "Look at this: with R(D) all is bad.")})
+    finding = told("sizing", sizing=marked)
+    assert finding.alarming
+    assert finding.text.startswith("With R(D) all is bad. ")
+    assert "Look at this" not in finding.text

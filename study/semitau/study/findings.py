@@ -87,9 +87,11 @@ def _sizing(sizing: Sizing) -> Finding:
     short = sorted((sample for sample in sizing.samples if sample.needed > 1.0), key=lambda sample: -sample.needed)
     needs = "; ".join(f"{sample.label} needs {counted(sample.needed)} times as many" for sample in short)
     few = f"Too few events: {needs}." if short else "Every component has the events that it needs."
-    marked = [sentence for sentence in sizing.sentences if sentence.startswith("Look at this")]
+    mark = "Look at this: "  # which an alarming finding gets anyway
+    marked = [sentence.removeprefix(mark) for sentence in sizing.sentences if sentence.startswith(mark)]
+    marked = [sentence[:1].upper() + sentence[1:] for sentence in marked]
     text = f"{few} Finite templates enlarge the expected error {costs}."
-    return Finding("sizing", "How many events", " ".join((text, *marked)), alarming=bool(marked))
+    return Finding("sizing", "How many events", " ".join((*marked, text)), alarming=bool(marked))
 
 
 def _goodness(results: Results) -> Iterator[Finding]:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from semitau.core.errors import InputError, Problem
+from semitau.fit.averages.measurements import Measurement
 from semitau.gen.study_file.places import place_in
 from semitau.gen.study_file.rules import suggestion
 from semitau.gen.study_file.study import StudyConfig
@@ -26,6 +27,13 @@ def checked_average(study: StudyConfig) -> AverageInput | None:
     if problems:
         raise InputError(*problems)
     return given
+
+
+def planned_by_others(study: StudyConfig) -> tuple[Measurement, ...]:
+    """What the file plans, with the errors that results of other studies give: part of every key that the average is
+    kept under. Raises InputError as `checked_average`."""
+    given = checked_average(study)
+    return () if given is None else given.planned
 
 
 def _unknown_sources(study: StudyConfig, given: AverageInput) -> Iterator[Problem]:

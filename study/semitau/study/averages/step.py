@@ -18,7 +18,7 @@ from semitau.gen.study_file.study import StudyConfig
 
 from ..graph.materials import Materials
 from ..numbers import shortened
-from .checking import checked_average
+from .checking import checked_average, planned_by_others
 from .part import AverageResults
 from .run import averaged
 from .tables import RATIOS
@@ -27,8 +27,13 @@ Report = Callable[[str, int, int | None], None]
 
 
 def ingredients(study: StudyConfig) -> Any:
-    """What of the study file the average depends on besides templates, [fit], and the file that it names."""
-    return None if study.average is None else [study.study.name, study.average.model_dump(mode="json")]
+    """What the average depends on besides templates, [fit], and the file that the study names.
+
+    Raises InputError if that file, or the results that it names, are not sound any more.
+    """
+    if study.average is None:
+        return None
+    return [study.study.name, study.average.model_dump(mode="json"), planned_by_others(study)]
 
 
 def average_part(

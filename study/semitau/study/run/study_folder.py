@@ -111,10 +111,15 @@ def _name_in(study_file: Path) -> str:
 
 
 def study_key(study: StudyConfig) -> str:
-    """SHA-256 of all that results depend on: study text, seed, versions, code, files that it names."""
+    """SHA-256 of all that results depend on: study text, seed, versions, code, files that it names.
+
+    Raises InputError if the file of [average] is not sound any more.
+    """
+    from ..averages.checking import planned_by_others
+
     files = {file: file_digest(study.beside(file)) for file in named_files(study.model_dump(mode="json"))}
     code = code_digest("core", "gen", "fit", "study")
-    return content_digest(study.digest, study.study.seed, versions(), code, files)
+    return content_digest(study.digest, study.study.seed, versions(), code, files, planned_by_others(study))
 
 
 def named_files(document: object) -> Iterator[str]:
