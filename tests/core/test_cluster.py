@@ -58,7 +58,10 @@ def test_results_are_those_of_threads_in_their_order(cluster: Cluster) -> None:
     work += [Job(tasks.product, common[:10] + 1.0, (number,)) for number in range(3)]
     there = [result.tobytes() for result in run(work, 1)]
     assert there == [work[k]().tobytes() for k in range(43)]
-    assert len({*run([Job(tasks.process, None, (number,)) for number in range(8)])} - {os.getpid()}) == 2
+    began, seen = time.monotonic(), set[int]()
+    while len(seen) < 2 and time.monotonic() - began < 60:  # one worker may be late, or quick enough for both
+        seen |= {*run([Job(tasks.process, None, (number,)) for number in range(8)])}
+    assert len(seen - {os.getpid()}) == 2
     assert list(run([functools.partial(pow, 3, number) for number in range(5)])) == [1, 3, 9, 27, 81]
 
 

@@ -412,13 +412,16 @@ def test_other_rows_are_left_alone() -> None:
 
 
 @pytest.mark.skipif(platform.machine() not in ("x86_64", "AMD64"), reason="looks for x86 instructions")
-@pytest.mark.parametrize("name", ["_draw_angles", "_draw_angles_complex", "_polarise", "_draw_visible"])
+@pytest.mark.parametrize(
+    "name", ["_draw_angles", "_draw_angles_complex", "_draw_tensor_angles", "_polarise", "_draw_visible"]
+)
 def test_kernels_vectorise(name: str) -> None:
     """Far more packed than scalar multiplications: a branch or a call in a lane loop would turn this round."""
     function = getattr(truth, name).py_func
     compiled = njit(nogil=True, error_model="numpy")(function)
-    for sample in (SAMPLES[0], SAMPLES[5]):
-        table = channel_table(next(chains_of(sample.decay, ("mu",))))
+    tensor = gen.Decay("B0", "D2*(2460)-", "tau")
+    for decay in (tensor,) if "tensor" in name else (SAMPLES[0].decay, SAMPLES[5].decay):
+        table = channel_table(next(chains_of(decay, ("mu",))))
         arguments = [new_block(), table, stream_key(1), np.uint64(0)]
         compiled(*(arguments if "draw" in name else arguments[:2]))
     assembly = "".join(compiled.inspect_asm().values())

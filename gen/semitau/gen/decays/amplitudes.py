@@ -14,8 +14,8 @@ the amplitude for lepton helicity -1/2 is N K- and for +1/2 it is N K+, where
     -                a_- (1+cos th)/sqrt 2    +b_- sin th / sqrt 2    - sin th_V / sqrt 2
     0                -a_0 sin th              t + b_0 cos th          cos th_V
 
-B -> D has helicity 0 only. B -> D* -> D pi: sqrt(3) N sum e^{i lambda chi} d K, coherent. For D**, whose decay is taken
-as isotropic, the helicities add incoherently. |amplitude|^2 is in units where
+B -> D has helicity 0 only. B -> D* -> D pi: sqrt(3) N sum e^{i lambda chi} d K, coherent; how the helicities of other
+charmed mesons add is in truth/charm_spin.py. |amplitude|^2 is in units where
 
     d Gamma / d q2 d cos(theta) = G_F^2 V_cb^2 / (32 pi^3 M^2) |p| (1 - m_lepton^2/q2) sum |amplitude|^2.
 

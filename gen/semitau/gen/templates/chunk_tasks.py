@@ -28,6 +28,7 @@ from ..study_file.components import Background
 from ..study_file.study import StudyConfig
 from ..truth.any_drawing import AnyTable, table_of
 from ..truth.bilinear_pieces import PieceTable, no_pieces, piece_table
+from ..truth.charm_spin import ISOTROPIC
 from ..truth.variation_weights import WIDTH, VariationTable, variation_table
 from .binning import ROW_OF, Axes, Cuts, category_code, make_axes, make_cuts
 from .chunk import FOUND_STEPS, Sums, fill_chunk, fill_drawn
@@ -276,4 +277,4 @@ def weight_table(channel: AnyChain, decays: Sequence[Decay]) -> VariationTable:
 
 
 def _no_weights() -> VariationTable:
-    return VariationTable(np.zeros(0), 0, WIDTH, 1, 0, 0.0, 0.0, 0.0, 0, 0.0, 0.0)
+    return VariationTable(np.zeros(0), 0, WIDTH, 1, 0, 0.0, ISOTROPIC, 0, 0.0, 0.0)

@@ -21,6 +21,7 @@ from ..decays.decay import Decay
 from ..decays.form_factor_shifts import Coefficient
 from ..decays.operators import Operators, operators, shift_operators
 from .channel_table import regular_amplitudes
+from .charm_spin import TWO_UNITS_TO_VECTOR, CharmSpin, first_wave, second_wave
 from .spin_algebra import helicity_states, lepton_terms
 from .variation_weights import VariationTable, analyse, variation_table
 
@@ -29,7 +30,6 @@ Integers = npt.NDArray[np.int64]
 
 OPERATORS_AT_MOST = 6
 AMPLITUDES = 8
-_ROOT_HALF = float(np.sqrt(0.5))
 
 
 class PieceTable(NamedTuple):
@@ -92,20 +92,19 @@ def bilinear_pieces(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
     x : block as `variation_weights` takes it. out : (>= n, >= pieces).
     """
     analyse(x, table.chain)
-    incoherent, coherent = table.chain.incoherent, table.chain.coherent
-    states = np.zeros((OPERATORS_AT_MOST, 10))
+    states = np.zeros((OPERATORS_AT_MOST, 14))
     for i in range(n):
         _states(x, i, table, states)
         px, py, pz = x[row.POLARISATION_X + i], x[row.POLARISATION_Y + i], x[row.POLARISATION_Z + i]
         place = 0
         for m in range(table.operators):
             for k in range(m, table.operators):
-                out[i, place] = _real_part(states[m], states[k], incoherent, coherent, px, py, pz)
+                out[i, place] = _real_part(states[m], states[k], table.chain.spin, px, py, pz)
                 place += 1
         if table.imaginary:
             for m in range(table.operators):
                 for k in range(m + 1, table.operators):
-                    out[i, place] = _imaginary_part(states[m], states[k], incoherent, coherent, px, py, pz)
+                    out[i, place] = _imaginary_part(states[m], states[k], table.chain.spin, px, py, pz)
                     place += 1
         density = 0.0
         for p in range(table.pieces):
@@ -117,13 +116,16 @@ def bilinear_pieces(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
 
 @inlined
 def _states(x: Floats, i: int, table: PieceTable, states: Floats) -> None:
-    """For each operator K of the three charm helicities and both lepton helicities, real, then the coherent sum M."""
+    """For each operator K of the three charm helicities and both lepton helicities, real, then the coherent sums M.
+
+    A sum takes four numbers: real and imaginary part of M_- and of M_+. One sum for each wave of `charm_spin.py`.
+    """
     k = int(x[row.NODE + i])
     f = x[row.NODE + i] - k
     x_lepton = table.chain.lepton_mass / np.sqrt(x[row.Q2 + i])
     v, cos_chi, sin_chi = x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i]
-    across = _ROOT_HALF * np.sqrt((1.0 - v) * (1.0 + v))
-    real, turned = across * cos_chi, across * sin_chi
+    plus, zero = first_wave(table.chain.spin.wave, v)
+    side = second_wave(table.chain.spin.wave, v)
     step = table.operators * AMPLITUDES
     for o in range(table.operators):
         a = k * step + o * AMPLITUDES
@@ -144,35 +146,61 @@ def _states(x: Floats, i: int, table: PieceTable, states: Floats) -> None:
         )
         s = states[o]
         s[0], s[1], s[2], s[3], s[4], s[5] = kp_minus, km_minus, k0_minus, kp_plus, km_plus, k0_plus
-        s[6] = real * (kp_minus - km_minus) + v * k0_minus
-        s[7] = turned * (kp_minus + km_minus)
-        s[8] = real * (kp_plus - km_plus) + v * k0_plus
-        s[9] = turned * (kp_plus + km_plus)
+        s[6] = plus * cos_chi * (kp_minus - km_minus) + zero * k0_minus
+        s[7] = plus * sin_chi * (kp_minus + km_minus)
+        s[8] = plus * cos_chi * (kp_plus - km_plus) + zero * k0_plus
+        s[9] = plus * sin_chi * (kp_plus + km_plus)
+        s[10] = side * cos_chi * (kp_minus + km_minus)
+        s[11] = side * sin_chi * (kp_minus - km_minus)
+        s[12] = side * cos_chi * (kp_plus + km_plus)
+        s[13] = side * sin_chi * (kp_plus - km_plus)
 
 
 @inlined
-def _real_part(a: Floats, b: Floats, incoherent: float, coherent: float, px: float, py: float, pz: float) -> float:
+def _real_part(a: Floats, b: Floats, spin: CharmSpin, px: float, py: float, pz: float) -> float:
     """Re D of two operators."""
     minus = a[0] * b[0] + a[1] * b[1] + a[2] * b[2]
     plus = a[3] * b[3] + a[4] * b[4] + a[5] * b[5]
     mixed = a[3] * b[0] + a[4] * b[1] + a[5] * b[2] + a[0] * b[3] + a[1] * b[4] + a[2] * b[5]
     flat = (1.0 - pz) * minus + (1.0 + pz) * plus + px * mixed
-    minus = a[6] * b[6] + a[7] * b[7]
-    plus = a[8] * b[8] + a[9] * b[9]
-    # conj(a_plus) b_minus and conj(a_minus) b_plus
-    up_real, up_imaginary = a[8] * b[6] + a[9] * b[7], a[8] * b[7] - a[9] * b[6]
-    down_real, down_imaginary = a[6] * b[8] + a[7] * b[9], a[6] * b[9] - a[7] * b[8]
-    wave = (1.0 - pz) * minus + (1.0 + pz) * plus + px * (up_real + down_real) + py * (up_imaginary - down_imaginary)
-    return incoherent * flat + coherent * wave  # type: ignore[no-any-return]
+    waves = _real_wave(a, b, 6, px, py, pz)
+    if spin.wave == TWO_UNITS_TO_VECTOR:
+        waves += _real_wave(a, b, 10, px, py, pz)
+    return spin.incoherent * flat + spin.coherent * waves  # type: ignore[no-any-return]
 
 
 @inlined
-def _imaginary_part(a: Floats, b: Floats, incoherent: float, coherent: float, px: float, py: float, pz: float) -> float:
+def _real_wave(a: Floats, b: Floats, first: int, px: float, py: float, pz: float) -> float:
+    """Of the sums M whose four numbers begin at `first`."""
+    f, g, h, k = first, first + 1, first + 2, first + 3
+    minus = a[f] * b[f] + a[g] * b[g]
+    plus = a[h] * b[h] + a[k] * b[k]
+    # conj(a_plus) b_minus and conj(a_minus) b_plus
+    up_real, up_imaginary = a[h] * b[f] + a[k] * b[g], a[h] * b[g] - a[k] * b[f]
+    down_real, down_imaginary = a[f] * b[h] + a[g] * b[k], a[f] * b[k] - a[g] * b[h]
+    return (  # type: ignore[no-any-return]
+        (1.0 - pz) * minus + (1.0 + pz) * plus + px * (up_real + down_real) + py * (up_imaginary - down_imaginary)
+    )
+
+
+@inlined
+def _imaginary_part(a: Floats, b: Floats, spin: CharmSpin, px: float, py: float, pz: float) -> float:
     """Im D of two operators."""
     mixed = a[0] * b[3] + a[1] * b[4] + a[2] * b[5] - a[3] * b[0] - a[4] * b[1] - a[5] * b[2]
-    minus = a[6] * b[7] - a[7] * b[6]
-    plus = a[8] * b[9] - a[9] * b[8]
-    up_real, up_imaginary = a[8] * b[6] + a[9] * b[7], a[8] * b[7] - a[9] * b[6]
-    down_real, down_imaginary = a[6] * b[8] + a[7] * b[9], a[6] * b[9] - a[7] * b[8]
-    wave = (1.0 - pz) * minus + (1.0 + pz) * plus + px * (up_imaginary + down_imaginary) + py * (down_real - up_real)
-    return incoherent * py * mixed + coherent * wave  # type: ignore[no-any-return]
+    waves = _imaginary_wave(a, b, 6, px, py, pz)
+    if spin.wave == TWO_UNITS_TO_VECTOR:
+        waves += _imaginary_wave(a, b, 10, px, py, pz)
+    return spin.incoherent * py * mixed + spin.coherent * waves  # type: ignore[no-any-return]
+
+
+@inlined
+def _imaginary_wave(a: Floats, b: Floats, first: int, px: float, py: float, pz: float) -> float:
+    """As `_real_wave`."""
+    f, g, h, k = first, first + 1, first + 2, first + 3
+    minus = a[f] * b[g] - a[g] * b[f]
+    plus = a[h] * b[k] - a[k] * b[h]
+    up_real, up_imaginary = a[h] * b[f] + a[k] * b[g], a[h] * b[g] - a[k] * b[f]
+    down_real, down_imaginary = a[f] * b[h] + a[g] * b[k], a[f] * b[k] - a[g] * b[h]
+    return (  # type: ignore[no-any-return]
+        (1.0 - pz) * minus + (1.0 + pz) * plus + px * (up_imaginary + down_imaginary) + py * (down_real - up_real)
+    )

@@ -21,6 +21,7 @@ from ..decays.decay import Decay
 from ..decays.line_shapes import has_line_shape, mass_density
 from .alias import interval_table, interval_tables
 from .charm_masses import MassTable, mass_table, point_masses
+from .charm_spin import ISOTROPIC, TWO_UNITS_TO_VECTOR, CharmSpin, spin_of_orbital, spin_of_vector
 from .hadronic_currents import HadronTable, hadron_table
 from .tau_decay import energy_density, energy_range
 
@@ -43,7 +44,7 @@ ORBITAL_VECTOR = 3  # D** -> D* pion, D* -> D soft
 class ChannelTable(NamedTuple):
     """Constants and tables of one fully specified decay chain. Masses in GeV, q² in GeV².
 
-    incoherent, coherent : how the charm helicities add, see `spin_density`.
+    spin : how the charm helicities add.
     has_tau : 1 if the lepton of the B decay is a tau that decays, else 0.
     one_neutrino : 1 for a tau that gives pions, else 0. hadrons : for one that gives several.
     visible_mass, visible_span : lowest energy and range of the tau's daughter.
@@ -51,7 +52,7 @@ class ChannelTable(NamedTuple):
     intervals : of q² at each mass point. masses : of what has no fixed mass.
     q2_table (points * intervals, 3), visible_table (256, 3) : for `draw_position`.
     amplitudes (points * (intervals + 2), 4 or 16) : at the nodes and once more at the last; columns J_+, J_-, J_0, J_t
-        if all is real, else real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0.
+        if all is real and `spin` has one wave, else real and imaginary parts of J_+, J_-, J_0, J_t, S, T_+, T_-, T_0.
     """
 
     parent_mass: float
@@ -59,8 +60,7 @@ class ChannelTable(NamedTuple):
     lepton_mass: float
     q2_min: float
     q2_span: float
-    incoherent: float
-    coherent: float
+    spin: CharmSpin
     chain: int
     vector_mass: float
     d_mass: float
@@ -82,7 +82,7 @@ def channel_table(channel: Channel) -> ChannelTable:
     """Table of a decay chain, about a millisecond to make. InputError if a particle is too light for its decay."""
     decay = channel.decay
     _check_thresholds(channel)
-    photon = channel.soft == "photon"
+    spin = _charm_spin(channel)
     if channel.bachelor == "none":
         chain = VECTOR if channel.vector else GROUND
     else:
@@ -96,8 +96,7 @@ def channel_table(channel: Channel) -> ChannelTable:
         lepton_mass=decay.m_lepton,
         q2_min=low,
         q2_span=high - low,
-        incoherent=(0.5 if photon else 0.0) if chain == VECTOR else 1.0,
-        coherent=(-0.5 if photon else 1.0) if chain == VECTOR else 0.0,
+        spin=spin,
         chain=chain,
         vector_mass=channel.m_vector,
         d_mass=channel.m_ground,
@@ -110,10 +109,17 @@ def channel_table(channel: Channel) -> ChannelTable:
         intervals=q2_intervals(decay),
         masses=mass_table(channel),
         q2_table=q2_table(decay),
-        amplitudes=amplitude_columns((decay,))[0],
+        amplitudes=amplitude_columns((decay,), spin)[0],
         visible_table=visible_table(visible_mass),
         hadrons=hadron_table(channel.tau_to),
     )
+
+
+def _charm_spin(channel: Channel) -> CharmSpin:
+    state = channel.decay.orbital
+    if state is not None:
+        return spin_of_orbital(state, bool(channel.vector), channel.second != "none")
+    return spin_of_vector(channel.soft == "photon") if channel.vector else ISOTROPIC
 
 
 def _check_thresholds(channel: Channel) -> None:
@@ -161,10 +167,14 @@ def regular_amplitudes(decay: Decay) -> HelicityAmplitudes:
 
 
 @lru_cache(maxsize=16)
-def amplitude_columns(decays: tuple[Decay, ...]) -> tuple[Floats, ...]:
-    """Amplitudes of each decay as `ChannelTable.amplitudes` has them, all of one kind; shared by its chains."""
+def amplitude_columns(decays: tuple[Decay, ...], spin: CharmSpin) -> tuple[Floats, ...]:
+    """Amplitudes of each decay as `ChannelTable.amplitudes` has them, all of one kind; shared by its chains.
+
+    The kernels for complex amplitudes are those that know two waves of the charm decay.
+    """
     values = [regular_amplitudes(decay) for decay in decays]
-    columns_of = complex_columns if any(map(needs_complex, values)) else real_columns
+    two_waves = spin.wave == TWO_UNITS_TO_VECTOR
+    columns_of = complex_columns if two_waves or any(map(needs_complex, values)) else real_columns
     return tuple(map(columns_of, values))
 
 

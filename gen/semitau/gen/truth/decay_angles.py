@@ -36,7 +36,8 @@ def decay_angles(
 ) -> DecayAngles:
     """Angles from the momenta of the B, the charmed meson and lepton of its decay.
 
-    d : the D from a D*; None where the charm decay is not looked at. visible : charged daughter of a tau, else None.
+    d : the D from a D*, the D or D* from a D**; None where the charm decay is not looked at.
+    visible : charged daughter of a tau, else None.
     """
     charm, lepton = to_rest_frame(charm, parent), to_rest_frame(lepton, parent)
     boson = -charm

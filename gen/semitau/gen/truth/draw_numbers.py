@@ -35,7 +35,7 @@ ROTATION_COS = np.uint64(20)
 ROTATION_AZIMUTH = np.uint64(21)
 ROTATION_SPIN = np.uint64(22)
 
-SOFT_COS = np.uint64(23)
+SOFT_1 = np.uint64(23)  # flight of the D in a D* from a D**; the others are 37 to 39
 SOFT_AZIMUTH = np.uint64(24)
 
 FLIGHT_1 = np.uint64(25)  # of the B in the Upsilon(4S) frame: three draws, then its azimuth
@@ -52,6 +52,9 @@ CHARM_MASS_POINT = np.uint64(33)
 PION_PAIR_MASS = np.uint64(34)  # of a state that gives two pions
 PION_PAIR_COS = np.uint64(35)
 PION_PAIR_AZIMUTH = np.uint64(36)
+SOFT_2 = np.uint64(37)
+SOFT_3 = np.uint64(38)
+SOFT_TERM = np.uint64(39)
 
 HADRON_1 = np.uint64(40)  # pions of a tau: flight of the neutrino seen from them
 HADRON_2 = np.uint64(41)

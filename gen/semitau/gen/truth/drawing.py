@@ -8,6 +8,7 @@ Nothing is rejected and nothing is weighted. The joint density is drawn as a cha
   from choosing the sign with the odds of the density at c and -c.
 - chi: the density is a trigonometric polynomial up to 2 chi. Its values at four angles a quarter turn apart have a sum
   that does not depend on the base angle, so a uniform base angle and a choice among the four are exact.
+- cos(theta_V) and chi of a spin-2 meson together: `tensor_angles.py`.
 - tau daughter: energy from an alias table, direction isotropic, then reversed with the odds of the density at n and -n;
   the density is linear in n.P, so this is exact.
 - the whole event is turned by a uniformly distributed rotation, since the B has no spin.
@@ -31,11 +32,13 @@ from . import draw_numbers as draw
 from .alias import draw_position, draw_position_in
 from .channel_table import BROAD_INTERVALS, Q2_INTERVALS, VECTOR, VISIBLE_INTERVALS, ChannelTable
 from .charm_masses import draw_masses
+from .charm_spin import ONE_UNIT, CharmSpin
 from .cosines import even_cosine
 from .hadronic_tau import draw_hadrons
-from .momenta import fill_momenta
-from .spin_algebra import helicity_states, lepton_terms, spin_density, square
+from .momenta import fill_momenta, rotation
+from .spin_algebra import both_waves, helicity_states, lepton_terms, spin_density, square
 from .tau_decay import emission
+from .tensor_angles import tensor_direction
 
 Floats = npt.NDArray[np.float64]
 
@@ -48,17 +51,22 @@ def draw_decays(x: Floats, table: ChannelTable, stream: np.uint64, first_event: 
 
     x : block, see `block.py`; the scratch rows are overwritten. table : from `channel_table`.
     stream : from `core.streams.stream_key`; first_event : uint64 number of the first event.
-    Events depend on (stream, event number) and the table only. Draws 0 to 24 of `truth_draws` are used.
+    Events depend on (stream, event number) and the table only. Draws 0 to 46 of `draw_numbers.py` are used.
     """
     light_mass = table.soft_mass if table.chain == VECTOR else table.pion_mass
     draw_masses(x, table.masses, table.charm_mass, light_mass, stream, first_event)
     _draw_intervals(x, stream, first_event)
     _look_up(x, table.intervals, table.q2_table, table.visible_table, table.amplitudes)
-    real = table.amplitudes.shape[1] == 4
-    if real:
+    real, one_unit = table.amplitudes.shape[1] == 4, table.spin.wave == ONE_UNIT
+    _fill_q2(x, table)
+    if real and one_unit:
         _draw_angles(x, table, stream, first_event)
-    else:
+    elif real:
+        _draw_tensor_angles(x, table, stream, first_event)
+    elif one_unit:
         _draw_angles_complex(x, table, stream, first_event)
+    else:
+        _draw_tensor_angles_complex(x, table, stream, first_event)
     if table.has_tau:
         if real:
             _polarise(x, table)
@@ -134,11 +142,9 @@ def _complex_amplitudes(x: Floats, i: int) -> tuple[complex, ...]:
 
 
 @inlined
-def _lane_angles(
-    x: Floats, i: int, key: np.uint64, x_lepton: float, incoherent: float, coherent: float, J: Any
-) -> None:
-    """cos(theta), cos(theta_V) and chi of lane i from its eight amplitudes J."""
-    ap, am, a0, bp, bm, b0, t = lepton_terms(x_lepton, *J)
+def _lane_theta(x: Floats, i: int, key: np.uint64, table: ChannelTable, J: Any) -> tuple[Any, ...]:
+    """Draws cos(theta) of lane i from its eight amplitudes J; gives its `helicity_states`."""
+    ap, am, a0, bp, bm, b0, t = lepton_terms(table.lepton_mass / np.sqrt(x[row.Q2 + i]), *J)
     straight = square(ap) + square(am)
     sin2 = 0.5 * straight + square(a0) + 0.5 * (square(bp) + square(bm)) + square(t)
     cos2 = straight + square(b0) + square(t)
@@ -153,8 +159,15 @@ def _lane_angles(
     even = sin2 * (1.0 - c * c) + cos2 * c * c
     odd = c * (square(am) - square(ap) + 2.0 * (t * np.conj(b0)).real)
     c = c if uniform(key, draw.THETA_SIGN) * (2.0 * even) < even + odd else -c
+    x[row.COS_THETA + i] = c
+    return helicity_states(c, ap, am, a0, bp, bm, b0, t)  # type: ignore[no-any-return]
 
-    kp_minus, km_minus, k0_minus, kp_plus, km_plus, k0_plus = helicity_states(c, ap, am, a0, bp, bm, b0, t)
+
+@inlined
+def _lane_angles(x: Floats, i: int, key: np.uint64, spin: CharmSpin, states: Any) -> None:
+    """cos(theta_V) and chi of lane i."""
+    kp_minus, km_minus, k0_minus, kp_plus, km_plus, k0_plus = states
+    incoherent, coherent = spin.incoherent, spin.coherent
     transverse = square(kp_minus) + square(km_minus) + square(kp_plus) + square(km_plus)
     longitudinal = square(k0_minus) + square(k0_plus)
     flat = incoherent * (transverse + longitudinal)
@@ -190,7 +203,6 @@ def _lane_angles(
     edge_3 = edge_2 + constant - first + second
     turned_cos = cos_chi if u < edge_1 else (-sin_chi if u < edge_2 else (-cos_chi if u < edge_3 else sin_chi))
     turned_sin = sin_chi if u < edge_1 else (cos_chi if u < edge_2 else (-sin_chi if u < edge_3 else -cos_chi))
-    x[row.COS_THETA + i] = c
     x[row.COS_V + i] = v
     x[row.COS_CHI + i] = turned_cos
     x[row.SIN_CHI + i] = turned_sin
@@ -213,11 +225,24 @@ def _fill_q2(x: Floats, table: ChannelTable) -> None:
 @inlined
 def _all_angles(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64, amplitudes: Any) -> None:
     """amplitudes : `_real_amplitudes` or `_complex_amplitudes`."""
-    _fill_q2(x, table)
     for i in range(LANES):
         key = event_key(stream, first_event + np.uint64(i))
-        x_lepton = table.lepton_mass / np.sqrt(x[row.Q2 + i])
-        _lane_angles(x, i, key, x_lepton, table.incoherent, table.coherent, amplitudes(x, i))
+        _lane_angles(x, i, key, table.spin, _lane_theta(x, i, key, table, amplitudes(x, i)))
+
+
+@inlined
+def _all_tensor_angles(
+    x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64, amplitudes: Any, density: Any
+) -> None:
+    """As `_all_angles`. density : `spin_density`, or `both_waves` with complex amplitudes."""
+    for i in range(LANES):
+        key = event_key(stream, first_event + np.uint64(i))
+        states = _lane_theta(x, i, key, table, amplitudes(x, i))
+        turn = rotation(uniform(key, draw.V_1), uniform(key, draw.V_2), uniform(key, draw.V_3))
+        v, cos_chi, sin_chi = tensor_direction(turn, uniform(key, draw.V_TERM), table.spin, density, states)
+        x[row.COS_V + i] = v
+        x[row.COS_CHI + i] = cos_chi
+        x[row.SIN_CHI + i] = sin_chi
 
 
 @kernel
@@ -230,12 +255,20 @@ def _draw_angles_complex(x: Floats, table: ChannelTable, stream: np.uint64, firs
     _all_angles(x, table, stream, first_event, _complex_amplitudes)
 
 
+@kernel
+def _draw_tensor_angles(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
+    _all_tensor_angles(x, table, stream, first_event, _real_amplitudes, spin_density)
+
+
+@kernel
+def _draw_tensor_angles_complex(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
+    _all_tensor_angles(x, table, stream, first_event, _complex_amplitudes, both_waves)
+
+
 @inlined
-def _lane_polarisation(x: Floats, i: int, table: ChannelTable, J: Any) -> None:
+def _lane_polarisation(x: Floats, i: int, table: ChannelTable, J: Any, density: Any) -> None:
     states = helicity_states(x[row.COS_THETA + i], *lepton_terms(table.lepton_mass / np.sqrt(x[row.Q2 + i]), *J))
-    trace, px, py, pz = spin_density(
-        table.incoherent, table.coherent, x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i], *states
-    )
+    trace, px, py, pz = density(table.spin, x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i], *states)
     x[row.POLARISATION_X + i] = px / trace
     x[row.POLARISATION_Y + i] = py / trace
     x[row.POLARISATION_Z + i] = pz / trace
@@ -244,13 +277,13 @@ def _lane_polarisation(x: Floats, i: int, table: ChannelTable, J: Any) -> None:
 @kernel
 def _polarise(x: Floats, table: ChannelTable) -> None:
     for i in range(LANES):
-        _lane_polarisation(x, i, table, _real_amplitudes(x, i))
+        _lane_polarisation(x, i, table, _real_amplitudes(x, i), spin_density)
 
 
 @kernel
 def _polarise_complex(x: Floats, table: ChannelTable) -> None:
     for i in range(LANES):
-        _lane_polarisation(x, i, table, _complex_amplitudes(x, i))
+        _lane_polarisation(x, i, table, _complex_amplitudes(x, i), both_waves)
 
 
 @kernel

@@ -15,6 +15,7 @@ from .. import block as row
 from ..block import LANES
 from . import draw_numbers as draw
 from .channel_table import GROUND, ORBITAL_VECTOR, VECTOR, ChannelTable
+from .cosines import even_cosine
 from .pion_pair import split_pair
 from .tau_decay import TAU_MASS
 
@@ -191,7 +192,11 @@ def _copy_light_to_pion(x: Floats) -> None:
 
 @kernel
 def _cascade(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.uint64) -> None:
-    """D** -> D* pion (or pair of pions) along the drawn direction, D* -> D soft isotropic."""
+    """D** -> D* pion (or pair of pions) along the drawn direction, D* -> D soft by the alignment of the D* alone.
+
+    The spin of the D** is averaged over for the latter.
+    """
+    across2, along2 = 1.0, 1.0 + table.spin.alignment
     inner = two_body_momentum(table.vector_mass, table.d_mass, table.soft_mass)
     d_energy, soft_energy = np.sqrt(inner**2 + table.d_mass**2), np.sqrt(inner**2 + table.soft_mass**2)
     for i in range(LANES):
@@ -208,11 +213,23 @@ def _cascade(x: Floats, table: ChannelTable, stream: np.uint64, first_event: np.
         x[row.PION_PX + i], x[row.PION_PY + i], x[row.PION_PZ + i] = pion[0], pion[1], pion[2]
         x[row.PION_E + i] = gamma * pion_energy + gamma_beta * outer * nz
 
-        mz = 2.0 * uniform(key, draw.SOFT_COS) - 1.0
+        c = even_cosine(
+            uniform(key, draw.SOFT_1),
+            uniform(key, draw.SOFT_2),
+            uniform(key, draw.SOFT_3),
+            uniform(key, draw.SOFT_TERM),
+            across2,
+            along2,
+        )
         sine, cosine = sincos_turns(uniform(key, draw.SOFT_AZIMUTH))
-        across = np.sqrt((1.0 - mz) * (1.0 + mz))
-        mx, my = across * cosine, across * sine
-        along = inner * (mx * nx + my * ny + mz * nz)
+        v, cos_chi, sin_chi = x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i]
+        across = np.sqrt((1.0 - c) * (1.0 + c))
+        # on n, n' = (v cos chi, -v sin chi, s) and n x n'
+        first, second = across * cosine, across * sine
+        mx = c * nx + first * v * cos_chi + second * sin_chi
+        my = c * ny - first * v * sin_chi + second * cos_chi
+        mz = c * nz + first * np.sqrt((1.0 - v) * (1.0 + v))
+        along = inner * c
         # boost along n: p + [(gamma - 1) p.n + gamma beta E] n
         push = (vector_gamma - 1.0) * along + vector_gamma_beta * d_energy
         px, py, pz = inner * mx + push * nx, inner * my + push * ny, inner * mz + push * nz

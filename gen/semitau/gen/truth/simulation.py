@@ -72,9 +72,10 @@ def simulate(
     Fields that a decay does not have are left out; in a sample that mixes D** -> D* pi and D pi, Dst and soft are None
     where there is no D*. The records carry the decay (see `weights`).
 
-    The D* keeps its spin correlations, also in D* -> D gamma. A narrow D** has its nominal mass, a broad one or a
-    continuum that of its line shape (`charm_mass` of the decay fixes it). They decay isotropically, the spin of the tau
-    being exact for the summed D** spin.
+    The D* keeps its spin correlations, also in D* -> D gamma, and so does a D** that decays to one pion; a D* from it
+    is aligned as the partial wave asks, averaged over the spin of the D**. Two pions and continua are flat in phase
+    space. A narrow D** has its nominal mass, a broad one or a continuum that of its line shape (`charm_mass` of the
+    decay fixes it).
 
     InputError tells what is wrong with the arguments.
     Source: shared amplitudes (`amplitudes.py`), exact conditional sampling (`truth.py`).

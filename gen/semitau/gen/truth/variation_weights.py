@@ -22,7 +22,8 @@ from ..decays.chains import Channel
 from ..decays.decay import Decay
 from ..decays.rates import width
 from .channel_table import amplitude_columns, channel_table
-from .spin_algebra import chain_density
+from .charm_spin import CharmSpin
+from .spin_algebra import both_waves, chain_density, spin_density
 from .tau_decay import emission
 
 Floats = npt.NDArray[np.float64]
@@ -47,8 +48,7 @@ class VariationTable(NamedTuple):
     real: int
     variations: int
     lepton_mass: float
-    incoherent: float
-    coherent: float
+    spin: CharmSpin
     has_tau: int
     one_neutrino: float
     visible_mass: float
@@ -69,8 +69,8 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
     ]
     if wrong or not decays:
         raise InputError(*(wrong or [Problem("no variation is given", where=channel.name)]))
-    columns, parts = _columns(channel.decay, tuple(decays), shape_only)
     table = channel_table(channel)
+    columns, parts = _columns(channel.decay, tuple(decays), shape_only, table.spin)
     return VariationTable(
         columns=columns,
         groups=-(-(1 + len(decays)) // WIDTH),
@@ -78,8 +78,7 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
         real=int(parts == 4),
         variations=len(decays),
         lepton_mass=table.lepton_mass,
-        incoherent=table.incoherent,
-        coherent=table.coherent,
+        spin=table.spin,
         has_tau=table.has_tau,
         one_neutrino=table.one_neutrino,
         visible_mass=table.visible_mass,
@@ -87,9 +86,9 @@ def variation_table(channel: Channel, decays: Sequence[Decay], *, shape_only: bo
 
 
 @lru_cache(maxsize=4)  # chains of one decay follow each other
-def _columns(drawn: Decay, decays: tuple[Decay, ...], shape_only: bool) -> tuple[Floats, int]:
+def _columns(drawn: Decay, decays: tuple[Decay, ...], shape_only: bool, spin: CharmSpin) -> tuple[Floats, int]:
     """Columns of a `VariationTable`, and how many numbers a node has."""
-    given = amplitude_columns((drawn, *decays))
+    given = amplitude_columns((drawn, *decays), spin)
     rates = [width(decay) for decay in (drawn, *decays)] if shape_only else [1.0] * len(given)
     scaled = [column * np.sqrt(rates[0] / rate) for column, rate in zip(given, rates, strict=True)]
     groups = -(-len(scaled) // WIDTH)
@@ -169,12 +168,13 @@ def _complex(columns: Floats, a: int, b: int, f: float) -> tuple[complex, ...]:
 
 
 @inlined
-def _weigh(x: Floats, table: VariationTable, out: Floats, n: int, parts: int, amplitudes: Any) -> None:
+def _weigh(x: Floats, table: VariationTable, out: Floats, n: int, parts: int, amplitudes: Any, density: Any) -> None:
     """Densities of the drawn decay and the variations go one after the other into the scratch rows.
 
-    parts, amplitudes : 4 and `_real`, or 16 and `_complex`; the compiler makes a loop of its own for each.
+    parts, amplitudes, density : 4, `_real`, `spin_density`, or 16, `_complex`, `both_waves`; the compiler makes a loop
+    of its own for each.
     """
-    incoherent, coherent, columns, groups = table.incoherent, table.coherent, table.columns, table.groups
+    spin, columns, groups = table.spin, table.columns, table.groups
     lepton_mass, width = table.lepton_mass, table.width
     for i in range(n):
         # Everything of the event is read before the loop: the compiler cannot know that the scratch rows are elsewhere.
@@ -189,8 +189,8 @@ def _weigh(x: Floats, table: VariationTable, out: Floats, n: int, parts: int, am
             place = row.SCRATCH_0 + group * WIDTH
             for j in range(width):
                 x[place + j] = chain_density(
-                    x_lepton, incoherent, coherent, theta, v, cos_chi, sin_chi, 1.0, px, py, pz,
-                    amplitudes(columns, low + j, high + j, f),
+                    x_lepton, spin, theta, v, cos_chi, sin_chi, px, py, pz,
+                    amplitudes(columns, low + j, high + j, f), density,
                 )  # fmt: skip
         scale = 1.0 / x[row.SCRATCH_0]
         for j in range(table.variations):
@@ -199,9 +199,9 @@ def _weigh(x: Floats, table: VariationTable, out: Floats, n: int, parts: int, am
 
 @kernel
 def _weights_real(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
-    _weigh(x, table, out, n, 4, _real)
+    _weigh(x, table, out, n, 4, _real, spin_density)
 
 
 @kernel
 def _weights_complex(x: Floats, table: VariationTable, out: Floats, n: int) -> None:
-    _weigh(x, table, out, n, 16, _complex)
+    _weigh(x, table, out, n, 16, _complex, both_waves)

@@ -4,7 +4,8 @@ A search over many points on one sample finds, besides what is good, what its fl
 events that part is gone. The events come in batches, which give the error of the gain (delete-one jackknife: B. Efron,
 C. Stein, Ann. Statist. 9 (1981) 586) and the information without what fluctuations of the templates put into it: a
 product of derivatives from one batch with those from another has no such part. With J_b of B batches, each scaled to
-the whole, the mean over different batches is (B J̄J̄ᵀ - Σ_b J_b J_bᵀ/B)/(B - 1).
+the whole, the mean over different batches is (B J̄J̄ᵀ - Σ_b J_b J_bᵀ/B)/(B - 1). Where little is known this can be
+negative, which information is not: there it counts as none (`positive_information.py`).
 """
 
 from __future__ import annotations
@@ -16,6 +17,7 @@ import numpy as np
 from semitau.core.candidate_grid import GENERATED, CandidateGrid, GridAxis
 from semitau.core.errors import Problem, RunError
 from semitau.core.templates import Floats
+from semitau.fit.uncertainty.positive_information import positive_information
 from semitau.fit.uncertainty.working_points import Sensitivity, add_cross_information
 
 from .goal import Goal
@@ -88,7 +90,7 @@ def confirm(
     clean = np.array(
         [[goal.merit(_covariance(parts, own, sensitivity, clean=True)) for parts in by_point] for own in kept]
     )
-    # With very few events products of batches may not add up to an information at all.
+    # With very few events products of batches may tell nothing of a ratio or a free yield.
     enough = bool(np.isfinite(clean).all())
     merits = clean if enough else plain
     if not np.isfinite(merits).all():
@@ -125,13 +127,12 @@ def _covariance(
     parts: Sequence[Floats], batches: Sequence[int], sensitivity: Sensitivity, clean: bool
 ) -> Floats | None:
     size = len(sensitivity.names)
-    information = np.zeros((size, size))
+    plain, crossed = np.zeros((size, size)), np.zeros((size, size))
     for contents in parts:
         chosen = np.ascontiguousarray(contents[list(batches)])
         whole = chosen.mean(axis=0)
         whole[:, GENERATED] = chosen[:, :, GENERATED].sum(axis=0)
+        plain += sensitivity.information(whole)
         if clean:
-            add_cross_information(chosen, whole, sensitivity.template_statistics, information)
-        else:
-            information += sensitivity.information(whole)
-    return sensitivity.covariance(information)
+            add_cross_information(chosen, whole, sensitivity.template_statistics, crossed)
+    return sensitivity.covariance(positive_information(crossed, plain) if clean else plain)
