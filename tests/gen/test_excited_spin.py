@@ -15,6 +15,7 @@ import numpy as np
 import pytest
 from scipy import stats
 from scipy.linalg import expm
+from scipy.special import factorial2
 from semitau import gen
 from semitau.core.streams import stream_key, uniforms
 from semitau.gen.decays.amplitudes import lepton_amplitudes
@@ -25,7 +26,7 @@ from semitau.gen.truth.charm_spin import CharmSpin, spin_of_orbital
 from semitau.gen.truth.decay_angles import decay_angles, to_rest_frame
 from semitau.gen.truth.momenta import rotation
 from semitau.gen.truth.spin_algebra import both_waves, helicity_states, lepton_terms, spin_density
-from semitau.gen.truth.tensor_angles import tensor_direction
+from semitau.gen.truth.tensor_angles import axes, tensor_direction
 
 from . import dirac
 from .dirac import GAMMA5, ONE, dot, lower, slash
@@ -111,8 +112,24 @@ def terms(k: object) -> list[np.ndarray]:
     return [getattr(k, name) for name in ("a_plus", "a_minus", "a_zero", "b_plus", "b_minus", "b_zero", "t")]
 
 
-def test_corners_of_an_icosahedron() -> None:
-    """A choice among the corners gives any even polynomial of degree four: against its integral, in bins of cos."""
+def test_sums_over_an_icosahedron() -> None:
+    """Each even monomial of degree up to four has its mean over the sphere as its mean over the six axes.
+
+    The mean of x^a y^b z^c, all even, is (a-1)!! (b-1)!! (c-1)!! / (a+b+c+1)!! (handbook integral).
+    """
+    turn = rotation(*uniforms(stream_key(SEED, "turn"), 0, 3, 0))
+    corners = np.array(axes(turn))
+    np.testing.assert_allclose(np.sum(corners**2, axis=1), 1.0, rtol=1e-14)
+    for powers in product(range(5), repeat=3):
+        if sum(powers) % 2 or sum(powers) > 4:
+            continue
+        even = not any(p % 2 for p in powers)
+        mean = np.prod([factorial2(p - 1) if p else 1 for p in powers]) / factorial2(sum(powers) + 1) if even else 0.0
+        assert np.mean(np.prod(corners**powers, axis=1)) == pytest.approx(mean, abs=1e-14)
+
+
+def test_choice_among_the_axes() -> None:
+    """Directions of a spin-2 decay against the integral of its density, in bins of cos and azimuth."""
     turns = np.array([uniforms(stream_key(SEED, "turn"), 0, 100_000, k) for k in range(4)])
     spin = spin_of(D2, to_vector=False)
     states = helicity_states(0.3, *lepton_terms(0.4, 0.2, 0.9, -0.7, 0.5, 0.0, 0.0, 0.0, 0.0))

@@ -48,6 +48,8 @@ CHAINS = [
     ("D*-", "pi", "neutral_pion"),
     ("D*-", "mu", "photon"),
     ("D2*(2460)-", "mu", "none"),
+    ("D2*(2460)-", "mu", "charged_pion"),
+    ("D2*(2460)-", "pi", "neutral_pion"),
     ("D0*(2300)-", "mu", "none"),
     ("D1'(2430)-", "mu", "charged_pion"),
     ("D1(2420)-", "mu", "charged_pion"),

@@ -29,10 +29,7 @@ def tensor_direction(turn: tuple[float, ...], u: float, spin: CharmSpin, density
     turn : row-major rotation matrix. u : uniform. density, states : `spin_density` or `both_waves`, and the six
     amplitudes that it takes.
     """
-    x, y, z = (turn[0], turn[3], turn[6]), (turn[1], turn[4], turn[7]), (turn[2], turn[5], turn[8])
-    n1, n2 = _corner(y, z, 1.0), _corner(y, z, -1.0)
-    n3, n4 = _corner(x, y, 1.0), _corner(x, y, -1.0)
-    n5, n6 = _corner(z, x, 1.0), _corner(z, x, -1.0)
+    n1, n2, n3, n4, n5, n6 = axes(turn)
     d1 = _density_at(n1, spin, density, states)
     d2 = d1 + _density_at(n2, spin, density, states)
     d3 = d2 + _density_at(n3, spin, density, states)
@@ -43,6 +40,20 @@ def tensor_direction(turn: tuple[float, ...], u: float, spin: CharmSpin, density
     ny = _pick(chosen, d1, d2, d3, d4, d5, n1[1], n2[1], n3[1], n4[1], n5[1], n6[1])
     nz = _pick(chosen, d1, d2, d3, d4, d5, n1[2], n2[2], n3[2], n4[2], n5[2], n6[2])
     return _angles((nx, ny, nz))  # type: ignore[no-any-return]
+
+
+@inlined
+def axes(turn: tuple[float, ...]) -> tuple[Direction, ...]:
+    """Six corners of the turned icosahedron, of which no two are opposite."""
+    x, y, z = (turn[0], turn[3], turn[6]), (turn[1], turn[4], turn[7]), (turn[2], turn[5], turn[8])
+    return (
+        _corner(y, z, 1.0),
+        _corner(y, z, -1.0),
+        _corner(x, y, 1.0),
+        _corner(x, y, -1.0),
+        _corner(z, x, 1.0),
+        _corner(z, x, -1.0),
+    )
 
 
 @inlined
