@@ -59,7 +59,7 @@ def _times(sample: SizingSample) -> str:
 
 
 def _coverage(found: Sizing) -> Iterator[str]:
-    """Coverage at the events nearest to those of now, with the needed ones, and where it is lowest."""
+    """Coverage at the events nearest to those of now, with the needed ones, and where it is lowest of the multiples tried."""
     together = [toys for toys in found.toys if toys.factor is not None and toys.what == "all"]
     if not together:
         return
@@ -71,8 +71,8 @@ def _coverage(found: Sizing) -> Iterator[str]:
         yield (
             f"{ratio.label}: intervals of one error (nominal {percent(LEVELS[1])}) hold the true value in "
             f"{_shares([t for t in together if t.factor == nearest], ratio.ratio)} with {events}, in "
-            f"{_shares(needed, ratio.ratio)} with the needed ones, and least often, in "
-            f"{_shares([lowest], ratio.ratio)}, with {lowest.factor:g} times the events."
+            f"{_shares(needed, ratio.ratio)} with the needed ones. Of the multiples that were tried "
+            f"{lowest.factor:g} times the events have the lowest coverage, {_shares([lowest], ratio.ratio)}."
         )
     for ratio in found.ratios:
         poor = [
