@@ -141,6 +141,15 @@ def add_curvature(arrays: Arrays, tile: int, begin: int, end: int, x: Floats, he
                 hessian[k, p] += scale_of(arrays, component, x, j, -1) * arrays.inverse_injected[p] * shift
 
 
+@inlined
+def set_point(arrays: Arrays, x: Floats, work: Workspace) -> None:
+    """What the contents of all bins need at the parameters x: interpolation of nuisances, scales of components."""
+    for p in range(x.shape[0]):
+        work.bends[p, 0], work.bends[p, 1], work.bends[p, 2] = bend(x[p])
+    for c in range(work.scales.shape[0]):
+        work.scales[c] = scale_of(arrays, c, x, -1, -1)
+
+
 @kernel
 def has_hold(arrays: Arrays, parameter: int, x: Floats, work: Workspace) -> bool:
     """Whether a parameter changes any bin that is above its floor, at the parameters of the last evaluation."""
@@ -158,10 +167,7 @@ def has_hold(arrays: Arrays, parameter: int, x: Floats, work: Workspace) -> bool
 @kernel
 def expectations(arrays: Arrays, x: Floats, work: Workspace, plain: Floats, out: Floats) -> None:
     """Fill (lanes,) arrays with the plain sums and the protected expectations at the parameters x."""
-    for p in range(x.shape[0]):
-        work.bends[p, 0], work.bends[p, 1], work.bends[p, 2] = bend(x[p])
-    for c in range(work.scales.shape[0]):
-        work.scales[c] = scale_of(arrays, c, x, -1, -1)
+    set_point(arrays, x, work)
     for tile in range(arrays.tile_filled.shape[0]):
         sum_pieces(arrays, tile, x, VALUE, work)
         first = arrays.tile_first[tile]

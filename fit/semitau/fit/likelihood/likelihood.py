@@ -30,12 +30,12 @@ from .expectation import EXACT as EXACT
 from .expectation import FISHER as FISHER
 from .expectation import VALUE as VALUE
 from .expectation import Workspace as Workspace
-from .expectation import add_curvature, scale_of, sum_pieces
+from .expectation import add_curvature, set_point, sum_pieces
 from .expectation import expectations as expectations
 from .expectation import has_hold as has_hold
 from .expectation import workspace as workspace
 from .functions import pull_back, set_functions
-from .interpolation import bend, positive
+from .interpolation import positive
 from .layout import APPROXIMATE, EXACT_BY_COMPONENT, Arrays
 from .outer_products import add_outer_products as add_outer_products
 
@@ -63,10 +63,7 @@ def evaluate(
     work.protected[0] = 0
     set_functions(arrays.functions, x)
     value: float = add_constraints(arrays.constraints, x, centres, mode != VALUE, mode == EXACT, gradient, hessian)
-    for p in range(parameters):
-        work.bends[p, 0], work.bends[p, 1], work.bends[p, 2] = bend(x[p])
-    for c in range(work.scales.shape[0]):
-        work.scales[c] = scale_of(arrays, c, x, -1, -1)
+    set_point(arrays, x, work)
     for tile in range(arrays.tile_filled.shape[0]):
         sum_pieces(arrays, tile, x, mode, work)
         if arrays.form == EXACT_BY_COMPONENT:

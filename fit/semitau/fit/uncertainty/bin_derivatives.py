@@ -9,8 +9,8 @@ from semitau.core.compiled import kernel
 from semitau.core.templates import Floats
 
 from ..fitting.model import Model
-from ..likelihood.expectation import FISHER, Workspace, scale_of, sum_pieces, workspace
-from ..likelihood.interpolation import bend, positive
+from ..likelihood.expectation import FISHER, Workspace, set_point, sum_pieces, workspace
+from ..likelihood.interpolation import positive
 from ..likelihood.layout import Arrays, Indices
 
 
@@ -40,10 +40,7 @@ def bin_derivatives(model: Model, values: Floats) -> BinDerivatives:
 
 @kernel
 def _fill(arrays: Arrays, x: Floats, work: Workspace, expected: Floats, rows: Floats) -> None:
-    for p in range(x.shape[0]):
-        work.bends[p, 0], work.bends[p, 1], work.bends[p, 2] = bend(x[p])
-    for c in range(work.scales.shape[0]):
-        work.scales[c] = scale_of(arrays, c, x, -1, -1)
+    set_point(arrays, x, work)
     for tile in range(arrays.tile_filled.shape[0]):
         sum_pieces(arrays, tile, x, FISHER, work)
         first = arrays.tile_first[tile]

@@ -29,8 +29,7 @@ from semitau.core.errors import InputError, Problem
 from semitau.core.templates import Floats
 
 from ..fitting.model import Model
-from ..likelihood.expectation import FISHER, Workspace, scale_of, sum_some_pieces, workspace
-from ..likelihood.interpolation import bend
+from ..likelihood.expectation import FISHER, Workspace, set_point, sum_some_pieces, workspace
 from ..likelihood.layout import Arrays
 from .template_costs import event_numbers
 
@@ -138,10 +137,7 @@ def _spread_at_injection(model: Model, components: Sequence[str]) -> Floats:
 
 @kernel
 def _fill(arrays: Arrays, x: Floats, work: Workspace, contents: Floats, rows: Floats) -> None:
-    for p in range(x.shape[0]):
-        work.bends[p, 0], work.bends[p, 1], work.bends[p, 2] = bend(x[p])
-    for c in range(work.scales.shape[0]):
-        work.scales[c] = scale_of(arrays, c, x, -1, -1)
+    set_point(arrays, x, work)
     for tile in range(arrays.tile_filled.shape[0]):
         first = arrays.tile_first[tile]
         for piece in range(arrays.tile_pieces[tile], arrays.tile_pieces[tile + 1]):
