@@ -5,7 +5,7 @@ from __future__ import annotations
 import math
 
 import pytest
-from semitau.study.numbers import counted, digits_for, percent, signed, with_error
+from semitau.study.numbers import counted, digits_beside, digits_for, percent, signed, with_error
 from semitau.study.terminal.progress import duration
 
 # Two significant digits of the error: the common practice of particle physics tables.
@@ -46,3 +46,10 @@ def test_durations() -> None:
         "1 min 0 s",
         "3 min 20 s",
     ]
+
+
+def test_small_numbers_beside_others() -> None:
+    """Common practice: as the others, unless nothing of the number would be seen."""
+    assert signed(0.0063, digits_beside(0.0063, 0.026)) == "0.0063"
+    assert signed(0.000031, digits_beside(0.000031, 0.018)) == "0.00003"
+    assert signed(0.0, digits_beside(0.0, 0.018)) == "0.0000"

@@ -19,6 +19,11 @@ def digits_for(error: float) -> int:
     return max(places, 0)
 
 
+def digits_beside(value: float, error: float) -> int:
+    """Decimal places for a number beside others with this error: one more than theirs, or more to show a digit."""
+    return max(digits_for(error) + 1, digits_for(value) - 1 if value > 0 else 0)
+
+
 def with_error(value: float, error: float) -> str:
     """E.g. "0.299 ± 0.012"."""
     places = digits_for(error)

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping, Sequence
 
-from ..numbers import counted, digits_for, signed
+from ..numbers import counted, digits_beside, digits_for, signed
 from .part import BiasPair, BiasRatio, BiasStudy
 
 UNLIKELY = 0.01
@@ -100,7 +100,7 @@ def _shift(pair: BiasPair, ratio: BiasRatio, labels: dict[str, str], nominal: st
 def _covering(ratio: BiasRatio, sources: Mapping[str, str]) -> str:
     names = [sources.get(name, name) for name in ratio.covered_by]
     whose = _listed(names) if names else "the whole systematic error"
-    return f"{signed(ratio.covering, digits_for(ratio.error) + 1)} of {whose}"
+    return f"{signed(ratio.covering, digits_beside(ratio.covering, ratio.error))} of {whose}"
 
 
 def _listed(names: Sequence[str]) -> str:

@@ -59,7 +59,7 @@ def _times(sample: SizingSample) -> str:
 
 
 def _coverage(found: Sizing) -> Iterator[str]:
-    """Coverage at the events nearest to those of now, with the needed ones, and where it is lowest of the multiples tried."""
+    """Coverage at the events nearest to those of now, with the needed ones, and the lowest of the multiples tried."""
     together = [toys for toys in found.toys if toys.factor is not None and toys.what == "all"]
     if not together:
         return

@@ -9,7 +9,7 @@ from rich.table import Table
 from rich.text import Text
 
 from ..bias.part import Bias, BiasPair, BiasRatio
-from ..numbers import GAP, digits_for, percent, shortened, signed
+from ..numbers import GAP, digits_beside, digits_for, percent, shortened, signed
 from .summary import listed, plain_table
 
 COLOURS = {"not covered": "bold red", "undecided": "yellow", "covered": "", "negligible": "dim"}
@@ -42,7 +42,7 @@ def shift_table(bias: Bias) -> Table:
             ratio.label,
             f"{signed(ratio.shift, places, plus=True)}{GAP}±{GAP}{signed(ratio.shift_error, places)}",
             signed(ratio.significance, 2, plus=True),
-            signed(ratio.covering, places),
+            signed(ratio.covering, digits_beside(ratio.covering, ratio.error)),
             Text(ratio.status, style=COLOURS[ratio.status]),
         )
     return table

@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Iterator
 
 from ...bias.part import Bias, BiasPair, BiasRatio
-from ...numbers import GAP, digits_for, percent
+from ...numbers import GAP, digits_beside, digits_for, percent
 from ...results import Results
 from ..table import NOTHING, Cell, Column, ReportTable, chance, measured, number, table, words
 
@@ -68,7 +68,7 @@ def _nominal_cells(pair: BiasPair, ratio: BiasRatio) -> Iterator[Cell]:
     yield words(ratio.label)
     yield _shift(ratio)
     yield number(ratio.significance, 2, plus=True)
-    yield number(ratio.covering, digits_for(ratio.error) + 1)
+    yield number(ratio.covering, digits_beside(ratio.covering, ratio.error))
     yield words(MARKS[ratio.status], ratio.status)
     yield _pull(ratio.pull_mean, ratio.pull_mean_error)
     yield _pull(ratio.pull_width, ratio.pull_width_error)
