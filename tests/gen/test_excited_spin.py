@@ -223,22 +223,29 @@ def four(events: ak.Array, name: str) -> np.ndarray:
     return np.stack([ak.to_numpy(events[name][part], allow_missing=False) for part in ("px", "py", "pz", "E")])
 
 
-@pytest.mark.parametrize(
-    ("family", "density"),
-    [
-        (D1, lambda c: (c + c**3 + 2) / 4),  # 1 + 3 cos²
-        (D1_BROAD, lambda c: (c + 1) / 2),
-        (D2, lambda c: (3 * c - c**3 + 2) / 4),  # sin²
-    ],
-)
-def test_alignment_of_the_vector(family: str, density: object) -> None:
+@pytest.mark.parametrize("soft", ["pion", "photon"])
+@pytest.mark.parametrize("family", [D1, D1_BROAD, D2])
+def test_alignment_of_the_vector(family: str, soft: str) -> None:
     """Angle between the two pions in the D* frame: 1 + 3 cos² for a D wave, sin² for spin 2, flat for an S wave.
 
-    Squares of the Clebsch-Gordan coefficients of AMPLITUDES; used in measurements to tell D1 from D2* (Phys. Rev. D 82
-    (2010) 111101, from memory).
+    From the squares of the Clebsch-Gordan coefficients of AMPLITUDES; used in measurements to tell D1 from D2* (Phys.
+    Rev. D 82 (2010) 111101, from memory). Helicity 0 gives cos² with a pion and sin² with a photon (summed over its
+    helicities), the others sin² / 2 and (1 + cos²) / 2.
     """
+    transverse, straight, _ = AMPLITUDES[family, True] ** 2
+    even, square = (
+        (transverse, straight - transverse) if soft == "pion" else (straight + transverse, transverse - straight)
+    )
+    norm = 2 * even + 2 * square / 3
+
+    def density(c: np.ndarray) -> np.ndarray:
+        return (even * (c + 1) + square * (c**3 + 1) / 3) / norm
+
     charm = charm_name("B+", family)
-    events = gen.simulate(gen.Decay("B+", charm, "mu"), 40_000, SEED, charm_to="D*+ pi-")
+    to = "D*+ pi-" if soft == "pion" else "D*0 pi0"
+    events = gen.simulate(gen.Decay("B+", charm, "mu"), 40_000 if soft == "pion" else 110_000, SEED, charm_to=to)
+    mass2 = events.soft.E**2 - events.soft.px**2 - events.soft.py**2 - events.soft.pz**2
+    events = events[mass2 > 0.01] if soft == "pion" else events[mass2 < 0.001]
     vector = four(events, "Dst")
     soft = to_rest_frame(four(events, "soft"), vector)[:3]
     pion = to_rest_frame(four(events, "pion"), vector)[:3]

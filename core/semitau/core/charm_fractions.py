@@ -100,6 +100,7 @@ STRANGE_VECTOR_PHOTON = Fraction(0.936, 0.004)
 
 LIGHT_DECAYS: Mapping[str, tuple[tuple[float, tuple[str, ...]], ...]] = MappingProxyType(
     {
+        "pi0": ((1.0, ("gamma", "gamma")),),
         "K0": ((0.5, ("K_L",)), (0.346, ("pi+", "pi+")), (0.154, ("pi0", "pi0"))),
         "K*0": ((2 / 3, ("K+", "pi+")), (1 / 3, ("K0", "pi0"))),
         "K*+": ((2 / 3, ("K0", "pi+")), (1 / 3, ("K+", "pi0"))),

@@ -5,7 +5,7 @@ published 64-bit variant). A stream key names a purpose ("truth", channel, ...),
 draw is a numbered constant of the code. A new draw never shifts the others, so scenarios of one event stay correlated.
 
 Draw numbers are shared out: truth 0-49, response 50-127, shapes 128-191, single neutrinos of tau decays 192-255,
-double charm 256-319 and what decays beside it 320-1023, photons of leptons 2048-2175 (the detector from 2112 on).
+double charm 256-319, light hadrons that decay 320-1023, neutral pions 1024-1151, photons of leptons 2048-2175 (the detector from 2112 on).
 """
 
 from __future__ import annotations

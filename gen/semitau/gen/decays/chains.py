@@ -12,7 +12,7 @@ from .branching_fractions import FROM_TABLES, BranchingFractions
 from .decay import CHARMS, DEFAULT_SETS, LEPTONS, PARENTS, Decay, WilsonCoefficients, charm_name
 from .form_factor_set import FormFactorSet
 from .lepton_couplings import Given, LeptonCouplings
-from .orbital_states import CHARGED_PION_SHARE, ETA_NEUTRAL_SHARE, PION_PAIR_SHARES, CharmState
+from .orbital_states import CHARGED_PION_SHARE, PION_PAIR_SHARES, CharmState
 from .rates import observables, ratio
 from .seen_charm import SeenCharm
 
@@ -218,7 +218,7 @@ def _light_mesons(state: CharmState, charge: str) -> Iterator[tuple[str, str, bo
             yield "charged", "none", is_vector, other, share * CHARGED_PION_SHARE
             yield "neutral", "none", is_vector, charge, share * (1.0 - CHARGED_PION_SHARE)
         elif state.light == "eta":
-            yield "eta", "none", is_vector, charge, share * ETA_NEUTRAL_SHARE
+            yield "eta", "none", is_vector, charge, share
         else:
             yield from _pion_pairs(is_vector, charge, share)
     yield from _pion_pairs(False, charge, state.to_two_pions / total)

@@ -43,7 +43,7 @@ class Directions:
 
 
 @lru_cache(maxsize=32)
-def directions(chosen: FormFactorSet, transition: str, order: Order) -> Directions:
+def directions(chosen: FormFactorSet, transition: str, order: Order, families: tuple[str, ...] = ()) -> Directions:
     """Directions of the covariance of one transition of a set; of both, if B -> D and B -> D* share their parameters.
 
     order "variance": eigenvectors of the correlation matrix, all of them, as in `FormFactors.directions`; shares are
@@ -51,6 +51,8 @@ def directions(chosen: FormFactorSet, transition: str, order: Order) -> Directio
     the effect of a direction is the information that an event has on it,
     sum of the integrals of (change of s)^2 / s over the normalised spectra s in q2 of mu and tau, longitudinal and
     transverse apart. Normalisations have none and drop out. InputError if the set lacks the transition.
+
+    families : of "Dss", whose spectra count; all resonances if left out.
     """
     member = chosen[transition]
     start = member.directions
@@ -60,7 +62,7 @@ def directions(chosen: FormFactorSet, transition: str, order: Order) -> Directio
         variances = ((start / errors) ** 2 * ~idle).sum(axis=1)
         return Directions(start, _shares(variances))
     transitions = ("D", "Dst") if chosen.shared else (transition,)
-    changes = np.concatenate([_changes(chosen, name, len(start)) for name in transitions], axis=1)
+    changes = np.concatenate([_changes(chosen, name, len(start), families) for name in transitions], axis=1)
     effects, turn = np.linalg.eigh(changes @ changes.T)
     effects, turn = effects[::-1], turn[:, ::-1]
     large = effects > NEGLIGIBLE * max(float(effects.sum()), 1e-300)
@@ -71,9 +73,11 @@ def directions(chosen: FormFactorSet, transition: str, order: Order) -> Directio
     return Directions(shifts * np.sign(largest)[:, np.newaxis], _shares(effects[large]))
 
 
-def moved(chosen: FormFactorSet, transition: str, order: Order, direction: int, n_sigma: float) -> FormFactorSet:
-    """The set moved by `n_sigma` along one of its directions, counted from 0."""
-    shift = n_sigma * directions(chosen, transition, order).shifts[direction]
+def moved(
+    chosen: FormFactorSet, transition: str, order: Order, direction: int, n_sigma: float, families: tuple[str, ...] = ()
+) -> FormFactorSet:
+    """The set moved by `n_sigma` along one of its directions, counted from 0. families : as in `directions`."""
+    shift = n_sigma * directions(chosen, transition, order, families).shifts[direction]
     return chosen.shifted(dict(zip(chosen[transition].names, shift.tolist(), strict=True)), transition)
 
 
@@ -82,9 +86,9 @@ def _shares(sizes: Floats) -> Floats:
     return sizes / total if total > 0.0 else np.zeros_like(sizes)
 
 
-def _changes(chosen: FormFactorSet, transition: str, count: int) -> Floats:
+def _changes(chosen: FormFactorSet, transition: str, count: int, excited: tuple[str, ...]) -> Floats:
     """(directions, points): half the difference of both sides of each direction, over the root of the spectrum."""
-    families = {"D": ("D",), "Dst": ("D*",)}.get(transition, tuple(ORBITAL_STATES))
+    families = {"D": ("D",), "Dst": ("D*",)}.get(transition, excited or tuple(ORBITAL_STATES))
     found = []
     for family in families:
         for lepton in ("mu", "tau"):

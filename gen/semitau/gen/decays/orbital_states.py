@@ -108,6 +108,3 @@ PION_PAIR_SHARES: Mapping[tuple[str, str], float] = MappingProxyType(
 )
 """Charges of the two pions of isospin 1/2 -> isospin 1/2 and a pair: mean of a pair of isospin 0 (2/3, 0, 1/3) and of
 isospin 1 (1/3, 2/3, 0). The share of two charged ones is 1/2 +- 1/6."""
-
-ETA_NEUTRAL_SHARE = 0.719
-"""Share of eta decays without charged particles (particle data tables, from memory); the tracks of the others veto."""

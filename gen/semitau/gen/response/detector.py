@@ -9,7 +9,7 @@ import numpy as np
 from ..truth.radiation import SILENT, Radiation
 from .efficiency import Efficiency, constant
 
-NO_PARTICLE, CHARGED_PION, NEUTRAL_PION, PHOTON = range(4)
+NO_PARTICLE, CHARGED_PION, NEUTRAL_PION, PHOTON, ETA = range(5)
 """Kinds of the soft particle of a D* and of the light mesons of a D**."""
 
 
@@ -50,7 +50,7 @@ class Tracks(NamedTuple):
 
 
 class Photons(NamedTuple):
-    """Photons, and neutral pions as one object. sigma(E)/E = stochastic / sqrt(E) (+) floor; angle: rad."""
+    """Photons, and reconstructed neutral pions as one. sigma(E)/E = stochastic / sqrt(E) (+) floor; angle: rad."""
 
     stochastic: float
     floor: float
@@ -121,7 +121,7 @@ class Chain(NamedTuple):
 
     charged_parent, charged_d : 1 or 0. muon : 1 if the charged lepton is a muon. tau_pion : 1 if a tau gave pions;
     partners : which others, NO_PARTNER to TWO_CHARGED. radiation : photons of the lepton.
-    soft, pion, pion2 : NO_PARTICLE, CHARGED_PION, NEUTRAL_PION (also an eta, as one object) or PHOTON.
+    soft, pion, pion2 : NO_PARTICLE, CHARGED_PION, NEUTRAL_PION, PHOTON or ETA.
     beside_soft, kaon, hadron : what double charm has besides, numbers of `light_decays.SPECIES` or NO_SPECIES.
     """
 

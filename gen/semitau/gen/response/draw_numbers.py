@@ -37,8 +37,7 @@ PION_SEEN = np.uint64(91)
 
 NO_CLUSTER = np.uint64(92)
 CLUSTER_ENERGY = np.uint64(93)
-SOFT_LEFT_OVER = np.uint64(94)
-PION_LEFT_OVER = np.uint64(95)
+SOFT_LEFT_OVER = np.uint64(94)  # of a photon
 
 RANDOM_KIND = np.uint64(96)
 RANDOM_DELTA_M = np.uint64(97)
@@ -48,14 +47,17 @@ RANDOM_AZIMUTH = np.uint64(99)
 WRONG_TAG_ENERGY = np.uint64(100)
 
 PION2_SEEN = np.uint64(101)
-PION2_LEFT_OVER = np.uint64(102)
 
 PARTNER1_SEEN = np.uint64(110)
 PARTNER2_SEEN = np.uint64(111)
 PARTNER1_SMEAR = np.uint64(112)  # two normal pairs each
 PARTNER2_SMEAR = np.uint64(116)
-PARTNER1_LEFT_OVER = np.uint64(120)
-PARTNER2_LEFT_OVER = np.uint64(121)
+
+SOFT_PHOTONS = np.uint64(1024)  # four for each neutral pion: `neutral_pions.energy_left`
+PION_PHOTONS = np.uint64(1028)
+PION2_PHOTONS = np.uint64(1032)
+PARTNER1_PHOTONS = np.uint64(1036)
+PARTNER2_PHOTONS = np.uint64(1040)
 
 RADIATED_FIRST = np.uint64(2112)  # eight for each photon of a lepton
 

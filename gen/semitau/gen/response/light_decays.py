@@ -1,4 +1,4 @@
-"""Decays of light hadrons, as flat tables for compiled loops: what a companion of the signal leaves in the detector.
+"""Decays of light hadrons, as flat tables for compiled loops: what companions of the signal leave in the detector.
 
 Daughters follow flat phase space, resonances have their nominal mass, and every decay is at the place of the B.
 """
@@ -12,10 +12,7 @@ from semitau.core.constants import MASS
 # Fates of a species.
 TRACK, CLUSTER, UNSEEN, DECAYS = range(4)
 
-NEUTRAL_PAIR = ("pi0", "gamma")
-"""A neutral pion counts as one object, as everywhere in the response."""
-
-SPECIES = ("pi+", "K+", *NEUTRAL_PAIR, "K_L", *LIGHT_DECAYS)
+SPECIES = ("pi+", "K+", "gamma", "K_L", *LIGHT_DECAYS)
 NO_SPECIES = -1
 
 

@@ -19,6 +19,7 @@ from .charm_decay import PION
 from .collider import to_laboratory
 from .detector import (
     CHARGED_PION,
+    ETA,
     NEUTRAL_PION,
     NO_PARTICLE,
     PHOTON,
@@ -30,7 +31,9 @@ from .detector import (
     Tracks,
 )
 from .efficiency import evaluate
-from .others import add_others, has_others
+from .light_decays import species
+from .neutral_pions import energy_left
+from .others import add_others, follow_one, has_others
 from .photons import measure_photons
 from .tau_pions import known_masses, measure_pions
 from .tracks import (
@@ -48,6 +51,7 @@ _MOMENTUM = row.SCRATCH_0
 _CHANCE = row.SCRATCH_1
 _INSIDE = row.SCRATCH_2
 NEUTRAL_PION_MASS = mass("pi0")
+ETA_SPECIES = species("eta")
 
 
 @kernel
@@ -61,7 +65,7 @@ def measure(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> None:
     measure_pions(y, keys, chain.partners, detector)
     measure_soft(y, keys, chain, detector)
     measure_pion(y, keys, chain.pion, detector)
-    see_light_meson(y, keys, chain.pion2, row.PION2_PX, draws.PION2_SEEN, draws.PION2_LEFT_OVER, detector)
+    see_light_meson(y, keys, chain.pion2, row.PION2_PX, draws.PION2_SEEN, draws.PION2_PHOTONS, detector)
     if has_others(chain):
         add_others(y)
     if chain.radiation.on == 1:
@@ -191,8 +195,9 @@ def measure_soft(y: Floats, keys: Keys, chain: Chain, detector: Detector) -> Non
         y[row.MEASURED_SOFT_PZ + i] = qz
         found = 1.0 if uniform(keys[i], draws.SOFT_SEEN) < y[row.SOFT_EFFICIENCY + i] else 0.0
         y[row.SOFT_FOUND + i] = found
-        leaves = 1.0 if uniform(keys[i], draws.SOFT_LEFT_OVER) < detector.residual.lost_neutral else 0.0
-        y[row.LEFT_OVER + i] += (1.0 - found) * inside * leaves * e
+        alone = inside * e if uniform(keys[i], draws.SOFT_LEFT_OVER) < detector.residual.lost_neutral else 0.0
+        both = energy_left(px, py, pz, e, keys[i], draws.SOFT_PHOTONS, detector.photons, detector.residual)
+        y[row.LEFT_OVER + i] += (1.0 - found) * (alone if chain.soft == PHOTON else both)
 
 
 @kernel
@@ -200,16 +205,16 @@ def measure_pion(y: Floats, keys: Keys, kind: int, detector: Detector) -> None:
     """The (first) light meson of a D**: EXTRA, and in LEFT_OVER the energy of a neutral one."""
     for i in range(LANES):
         y[row.EXTRA + i] = 0.0
-    see_light_meson(y, keys, kind, row.PION_PX, draws.PION_SEEN, draws.PION_LEFT_OVER, detector)
+    see_light_meson(y, keys, kind, row.PION_PX, draws.PION_SEEN, draws.PION_PHOTONS, detector)
 
 
 @kernel
 def see_light_meson(
-    y: Floats, keys: Keys, kind: int, first: int, seen: np.uint64, left_over: np.uint64, detector: Detector
+    y: Floats, keys: Keys, kind: int, first: int, seen: np.uint64, photons: np.uint64, detector: Detector
 ) -> None:
-    """EXTRA becomes 1 if it is charged and seen; if it is neutral it may leave its energy in LEFT_OVER.
+    """EXTRA becomes 1 if it is charged and seen; photons of a neutral one may leave their energy in LEFT_OVER.
 
-    first : of the four rows of its momentum. seen, left_over : numbers of its draws.
+    first : of the four rows of its momentum. seen, photons : numbers of its draws. An eta decays as in `others.py`.
     """
     if kind == NO_PARTICLE:
         return
@@ -225,11 +230,25 @@ def see_light_meson(
             y[row.EXTRA + i] = max(y[row.EXTRA + i], found)
     if kind == NEUTRAL_PION:
         for i in range(LANES):
-            inside = in_photon_acceptance(
-                y[row.LAB_PION_PX + i], y[row.LAB_PION_PY + i], y[row.LAB_PION_PZ + i], detector.photons
+            px, py, pz, e = (
+                y[row.LAB_PION_PX + i],
+                y[row.LAB_PION_PY + i],
+                y[row.LAB_PION_PZ + i],
+                y[row.LAB_PION_E + i],
             )
-            leaves = 1.0 if uniform(keys[i], left_over) < detector.residual.lost_neutral else 0.0
-            y[row.LEFT_OVER + i] += inside * leaves * y[row.LAB_PION_E + i]
+            y[row.LEFT_OVER + i] += energy_left(px, py, pz, e, keys[i], photons, detector.photons, detector.residual)
+    if kind == ETA:
+        for i in range(LANES):
+            px, py, pz, e = (
+                y[row.LAB_PION_PX + i],
+                y[row.LAB_PION_PY + i],
+                y[row.LAB_PION_PZ + i],
+                y[row.LAB_PION_E + i],
+            )
+            if e > 0.0:
+                found, left = follow_one(keys[i], ETA_SPECIES, px, py, pz, e, detector)
+                y[row.EXTRA + i] = max(y[row.EXTRA + i], found)
+                y[row.LEFT_OVER + i] += left
 
 
 @kernel

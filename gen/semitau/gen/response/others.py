@@ -1,8 +1,8 @@
 """What a B decay has beside charmed meson and lepton in double charm: does it make a track, what energy does it leave?
 
-A charged particle that is seen vetoes the event, as the pion of a D** does; a neutral pion or photon within acceptance
-leaves its energy with the chance of a lost neutral particle; a K_L leaves nothing. Light hadrons decay first. Lanes
-that `find` has found are looked at one at a time, the others not at all.
+A charged particle that is seen vetoes the event, as the pion of a D** does; a photon within acceptance leaves its
+energy with the chance of a lost neutral particle; a K_L leaves nothing. Light hadrons decay first, neutral pions to two
+photons. Lanes that `find` has found are looked at one at a time, the others not at all.
 """
 
 from __future__ import annotations
@@ -73,6 +73,17 @@ def _push(x: Floats, i: int, first: int, kind: int, beams: Beams, kinds: Integer
     kinds[n] = kind
     momenta[n, 0], momenta[n, 1], momenta[n, 2], momenta[n, 3] = px, py, pz, e
     return n + 1
+
+
+@kernel
+def follow_one(
+    key: np.uint64, kind: int, px: float, py: float, pz: float, e: float, detector: Detector
+) -> tuple[float, float]:
+    """As `_follow`, for one particle of this species and laboratory momentum: the eta of a continuum."""
+    kinds, momenta = np.empty(_MOST, dtype=np.int64), np.empty((_MOST, 4))
+    kinds[0] = kind
+    momenta[0, 0], momenta[0, 1], momenta[0, 2], momenta[0, 3] = px, py, pz, e
+    return _follow(key, kinds, momenta, 1, detector)  # type: ignore[no-any-return]
 
 
 @kernel

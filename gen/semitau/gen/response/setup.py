@@ -26,12 +26,11 @@ _BACHELOR = {
     "none": kernel.NO_PARTICLE,
     "charged": kernel.CHARGED_PION,
     "neutral": kernel.NEUTRAL_PION,
-    "eta": kernel.NEUTRAL_PION,
+    "eta": kernel.ETA,
 }
 _PARTNERS = {"rho": kernel.ONE_NEUTRAL, "a1_1prong": kernel.TWO_NEUTRAL, "a1": kernel.TWO_CHARGED}
 
 
-# A photon takes the place of a neutral pion: both are one object that may leave its energy.
 _BESIDE_SOFT = {"none": "", "charged_pion": "pi+", "neutral": "pi0"}
 
 
@@ -117,7 +116,10 @@ def kernel_chain(channel: AnyChain, least_photon: float | None = None) -> kernel
 def _others(channel: AnyChain) -> tuple[int, int, int]:
     """Species of what double charm has beside charmed meson and lepton."""
     if isinstance(channel, DoubleCharmChain):
-        return species(_BESIDE_SOFT[channel.beside_soft]), species(channel.kaon), species(channel.hadron)
+        # The more frequent one stands for both: a photon of a D_s*, a pion of a D*.
+        photon = channel.beside_soft == "neutral" and channel.partner.startswith("D_s")
+        beside = "gamma" if photon else _BESIDE_SOFT[channel.beside_soft]
+        return species(beside), species(channel.kaon), species(channel.hadron)
     return NO_SPECIES, NO_SPECIES, NO_SPECIES
 
 

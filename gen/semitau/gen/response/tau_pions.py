@@ -21,7 +21,8 @@ from .charm_decay import PION
 from .collider import to_laboratory
 from .detector import NO_PARTNER, ONE_NEUTRAL, TWO_CHARGED, Detector, Leptons, Photons, Residual, Tracks
 from .efficiency import evaluate
-from .tracks import in_photon_acceptance, in_track_acceptance, smeared_track
+from .neutral_pions import energy_left
+from .tracks import in_track_acceptance, smeared_track
 
 Floats = npt.NDArray[np.float64]
 Keys = npt.NDArray[np.uint64]
@@ -128,9 +129,9 @@ def measure_pions(y: Floats, keys: Keys, partners: int, detector: Detector) -> N
     if partners == TWO_CHARGED:
         _add_tracks(y, keys, detector.tracks)
         return
-    _leave_energy(y, keys, row.LAB_PARTNER1_PX, draws.PARTNER1_LEFT_OVER, detector.photons, detector.residual)
+    _leave_energy(y, keys, row.LAB_PARTNER1_PX, draws.PARTNER1_PHOTONS, detector.photons, detector.residual)
     if partners != ONE_NEUTRAL:
-        _leave_energy(y, keys, row.LAB_PARTNER2_PX, draws.PARTNER2_LEFT_OVER, detector.photons, detector.residual)
+        _leave_energy(y, keys, row.LAB_PARTNER2_PX, draws.PARTNER2_PHOTONS, detector.photons, detector.residual)
 
 
 @kernel
@@ -162,9 +163,8 @@ def _add_tracks(y: Floats, keys: Keys, tracks: Tracks) -> None:
 @kernel
 def _leave_energy(y: Floats, keys: Keys, first: int, draw: np.uint64, photons: Photons, residual: Residual) -> None:
     for i in range(LANES):
-        inside = in_photon_acceptance(y[first + i], y[first + LANES + i], y[first + 2 * LANES + i], photons)
-        leaves = 1.0 if uniform(keys[i], draw) < residual.lost_neutral else 0.0
-        y[row.LEFT_OVER + i] += inside * leaves * y[first + 3 * LANES + i]
+        px, py, pz, e = y[first + i], y[first + LANES + i], y[first + 2 * LANES + i], y[first + 3 * LANES + i]
+        y[row.LEFT_OVER + i] += energy_left(px, py, pz, e, keys[i], draw, photons, residual)
 
 
 @kernel

@@ -24,7 +24,7 @@ from .variations import (
     SoftPionEfficiency,
     Variation,
 )
-from .written_variations import kept_directions
+from .written_variations import excited_families, kept_directions
 
 
 def idle_variations(sections: Sections) -> Iterator[Conflict]:
@@ -80,8 +80,12 @@ def idle_variations(sections: Sections) -> Iterator[Conflict]:
 def nuisance_names(sections: Sections, variation: Variation) -> list[str]:
     """Names of the nuisance parameters that a table makes."""
     if isinstance(variation, FormFactorDirections) and (chosen := _chosen(sections, variation.set)) is not None:
-        return [part.name for part in kept_directions(variation, chosen)]
+        return [part.name for part in kept_directions(variation, chosen, _excited(sections))]
     return [variation.name]
+
+
+def _excited(sections: Sections) -> tuple[str, ...]:
+    return excited_families(charm for mode in sections.modes.values() for charm in mode.charm)
 
 
 def _described(mode: Mode, transition: str) -> bool:
@@ -115,10 +119,10 @@ def _form_factor(
             yield Conflict((*place, "parameter"), what, shown(given), ", ".join(allowed), near)
         return
     if isinstance(variation, FormFactorDirections):
-        if not kept_directions(variation, chosen):
+        if not kept_directions(variation, chosen, _excited(sections)):
             yield Conflict((*place, "set"), "acts on nothing: the set has no covariance", shown(variation.set))
         return
-    shifts = directions(chosen, variation.set, variation.order).shifts
+    shifts = directions(chosen, variation.set, variation.order, _excited(sections)).shifts
     if variation.direction > len(shifts):
         what = "is no direction of the set"
         yield Conflict((*place, "direction"), what, str(variation.direction), f"1 to {len(shifts)}")

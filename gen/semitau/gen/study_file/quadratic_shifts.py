@@ -62,6 +62,6 @@ def _directions(table: FormFactorShifts, chosen: FormFactorSet) -> Iterator[tupl
         at_most=table.at_most,
     )  # fmt: skip
     shifts, names = directions(chosen, table.set, table.order).shifts, chosen[table.set].names
-    for kept in kept_directions(asked, chosen):
+    for kept in kept_directions(asked, chosen, ()):
         row = shifts[kept.direction - 1].tolist()
         yield tuple((name, shift) for name, shift in zip(names, row, strict=True) if shift != 0.0)

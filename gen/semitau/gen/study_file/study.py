@@ -45,7 +45,7 @@ from .sizing import SizingSection
 from .sizing_conflicts import sizing_conflicts
 from .variations import SingleVariation, Variation
 from .wilson import Quadratic, Wilson
-from .written_variations import single_variations
+from .written_variations import excited_families, single_variations
 
 CONFLICTS = "semitau_conflicts"
 
@@ -168,9 +168,14 @@ class StudyConfig(Table):
         return self.branching_fractions.fractions
 
     @property
+    def excited_families(self) -> tuple[str, ...]:
+        """D** and continua of all modes."""
+        return excited_families(charm for mode in self.modes for charm in mode.charm)
+
+    @property
     def variations(self) -> tuple[SingleVariation, ...]:
         """All variations, one for each nuisance parameter, in the file's order."""
-        return tuple(single_variations(self.variation_tables, self.form_factor_set))
+        return tuple(single_variations(self.variation_tables, self.form_factor_set, self.excited_families))
 
     @property
     def coefficients(self) -> tuple[Coefficient, ...]:

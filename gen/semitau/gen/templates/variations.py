@@ -158,7 +158,8 @@ def varied_set(study: StudyConfig, variation: FormFactor | FormFactorDirection, 
     """The study's form-factor set of that transition, moved by one standard deviation."""
     nominal = study.form_factor_set(variation.set)
     if isinstance(variation, FormFactorDirection):
-        return moved(nominal, variation.set, variation.order, variation.direction - 1, float(sign))
+        order, number = variation.order, variation.direction - 1
+        return moved(nominal, variation.set, order, number, float(sign), study.excited_families)
     member = nominal[variation.set]
     shift = variation.shift
     if shift is None:

@@ -21,7 +21,7 @@ from ..decays.decay import Decay
 from ..decays.line_shapes import has_line_shape, mass_density
 from .alias import interval_table, interval_tables
 from .charm_masses import MassTable, mass_table, point_masses
-from .charm_spin import ISOTROPIC, TWO_UNITS_TO_VECTOR, CharmSpin, spin_of_orbital, spin_of_vector
+from .charm_spin import ISOTROPIC, TWO_UNITS_TO_VECTOR, CharmSpin, spin_of_orbital, spin_of_vector, with_photon
 from .hadronic_currents import HadronTable, hadron_table
 from .tau_decay import energy_density, energy_range
 
@@ -118,7 +118,8 @@ def channel_table(channel: Channel) -> ChannelTable:
 def _charm_spin(channel: Channel) -> CharmSpin:
     state = channel.decay.orbital
     if state is not None:
-        return spin_of_orbital(state, bool(channel.vector), channel.second != "none")
+        spin = spin_of_orbital(state, bool(channel.vector), channel.second != "none")
+        return with_photon(spin) if channel.soft == "photon" else spin
     return spin_of_vector(channel.soft == "photon") if channel.vector else ISOTROPIC
 
 

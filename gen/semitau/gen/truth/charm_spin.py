@@ -61,6 +61,11 @@ def spin_of_orbital(state: CharmState, to_vector: bool, two_pions: bool) -> Char
     return TENSOR_TO_VECTOR if to_vector else TENSOR_TO_SPINLESS
 
 
+def with_photon(spin: CharmSpin) -> CharmSpin:
+    """Of a D** whose D* decays to D photon: helicity 0 of the D* gives sin² in the place of cos², 1 the contrary."""
+    return spin._replace(alignment=-spin.alignment / (2.0 + spin.alignment))
+
+
 _ROOT_HALF = float(np.sqrt(0.5))
 _ROOT_THREE_HALVES = float(np.sqrt(1.5))
 _ROOT_THREE = float(np.sqrt(3.0))
