@@ -111,3 +111,8 @@ def test_whatever_the_body_meets_in_the_file_is_input(tmp_path: Path) -> None:
 
     with pytest.raises(InputError, match="truncated, damaged, or of a kind that cannot be read"):
         read()
+
+
+def test_something_that_is_no_path() -> None:
+    with pytest.raises(InputError, match=r"not a path \(got int"), open_root(3):  # type: ignore[arg-type]
+        pass

@@ -6,6 +6,7 @@ Statistical tests use a fixed seed, which SEMITAU_TEST_SEED replaces; each fails
 from __future__ import annotations
 
 import os
+from typing import Any
 
 import numpy as np
 import pytest
@@ -69,8 +70,8 @@ def test_keys_differ() -> None:
     assert stream_key(5, "a", 1) == stream_key(5, "a", 1)
 
 
-@pytest.mark.parametrize("seed", [-1, 2**64, 0.5])
-def test_bad_seed(seed: int) -> None:
+@pytest.mark.parametrize("seed", [-1, 2**64, 0.5, float("nan"), float("inf"), "7", None])
+def test_bad_seed(seed: Any) -> None:
     with pytest.raises(InputError, match="whole number"):
         stream_key(seed)
 

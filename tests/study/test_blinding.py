@@ -154,6 +154,10 @@ def test_unblinding_is_refused_after_changes(
     blind_study: tuple[Path, Results], monkeypatch: pytest.MonkeyPatch
 ) -> None:
     path, _ = blind_study
+    monkeypatch.setenv("SEMITAU_PASSPHRASE", "another one altogether")
+    with pytest.raises(InputError, match="the run had another passphrase"):
+        declare_final(path, "A. Nalyst")
+    monkeypatch.setenv("SEMITAU_PASSPHRASE", PASSPHRASE)
     declare_final(path, "A. Nalyst")
     text, templates = path.read_text(), read_templates("out/templates.root")
 

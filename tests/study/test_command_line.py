@@ -100,3 +100,13 @@ def test_schema_is_json_and_goes_whole_into_a_file(
     assert main(["schema", *which, "--output", str(tmp_path / "schema.json"), "--quiet"]) == 0
     assert (tmp_path / "schema.json").read_text() == printed
     assert os.listdir(tmp_path) == ["schema.json"]
+
+
+def test_letters_that_the_terminal_cannot_show() -> None:
+    """A result in a poorer encoding is better than none: the help has an ellipsis or dash, `rates` Greek letters."""
+    study = Path(__file__).parents[2] / "configs" / "marlow_small.toml"
+    command = [sys.executable, "-m", "semitau.study", "rates", str(study)]
+    environment = os.environ | {"PYTHONIOENCODING": "ascii", "PYTHONUTF8": "0"}
+    done = subprocess.run(command, env=environment, capture_output=True, check=False)
+    assert done.returncode == 0, done.stderr
+    assert b"?" in done.stdout

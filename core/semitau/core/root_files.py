@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
@@ -49,6 +50,8 @@ def open_root(path: Path | str) -> Iterator[Any]:
         reads the file, too.
     """
     where = str(path)
+    if not isinstance(path, str | os.PathLike):
+        raise InputError(Problem("not a path", where="path", got=type(path).__name__, wanted="a string or a Path"))
     try:
         with open(path, "rb") as file:
             if file.read(4) != b"root":

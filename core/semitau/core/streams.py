@@ -5,7 +5,8 @@ published 64-bit variant). A stream key names a purpose ("truth", channel, ...),
 draw is a numbered constant of the code. A new draw never shifts the others, so scenarios of one event stay correlated.
 
 Draw numbers are shared out: truth 0-49, response 50-127, shapes 128-191, single neutrinos of tau decays 192-255,
-double charm 256-319, light hadrons that decay 320-1023, neutral pions 1024-1151, photons of leptons 2048-2175 (the detector from 2112 on).
+double charm 256-319, light hadrons that decay 320-1023, neutral pions 1024-1151, photons of leptons 2048-2175 (the
+detector from 2112 on).
 """
 
 from __future__ import annotations
@@ -79,8 +80,8 @@ def stream_key(seed: int, *words: int | str) -> np.uint64:
 
     Raises InputError for a seed outside its range.
     """
-    whole = int(seed)
-    if whole != seed or not 0 <= whole <= _MASK:
+    whole = int(seed) if isinstance(seed, int | float | np.integer) and seed == seed // 1 else -1
+    if not 0 <= whole <= _MASK:
         raise InputError(
             Problem("the seed must be a whole number", where="seed", got=str(seed), wanted="0 to 2^64 - 1")
         )

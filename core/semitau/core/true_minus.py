@@ -2,8 +2,16 @@
 
 from __future__ import annotations
 
+import math
+
 GAP = "\u00a0"
 RAISED = str.maketrans("0123456789-", "⁰¹²³⁴⁵⁶⁷⁸⁹⁻")
+
+
+def with_sign(value: float, error: float) -> str:
+    """A difference beside its error, which has two digits: "+0.0013 ± 0.0017"."""
+    places = max(1 - math.floor(math.log10(error)), 0) if error > 0.0 and math.isfinite(error) else 3
+    return f"{formatted(value, f'+.{places}f')} ± {error:.{places}f}"
 
 
 def formatted(value: float, form: str) -> str:

@@ -7,6 +7,7 @@ import sys
 from collections.abc import Sequence
 from difflib import get_close_matches
 from importlib import import_module
+from io import TextIOWrapper
 
 import click
 
@@ -93,5 +94,8 @@ def main(arguments: Sequence[str] | None = None) -> int:
     # Before numpy is loaded. Our own threads use the cores, and the matrices of a fit are small: eigenvalues of 30 x 30
     # take 20 times longer when the threads of the linear algebra wait for a busy core.
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, TextIOWrapper) and stream.encoding.lower().replace("-", "") != "utf8":
+            stream.reconfigure(errors="replace")  # rather a question mark than no result
     given = list(sys.argv[1:] if arguments is None else arguments)
     return exit_status(lambda: group.main(given, prog_name="semitau", standalone_mode=False))

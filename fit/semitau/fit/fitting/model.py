@@ -105,6 +105,9 @@ class Model:
         functions: Mapping[str, str] | None = None,
         coefficients: Sequence[str] = (),
     ) -> None:
+        if not isinstance(templates, TemplateSet):
+            got, wanted = type(templates).__name__, "a template set, as fit.read_templates gives"
+            raise InputError(Problem("not a template set", where="templates", got=got, wanted=wanted))
         self.templates = templates
         self.template_statistics = bool(template_statistics)
         self.likelihood = _known_likelihood(likelihood)

@@ -11,12 +11,19 @@ from math import ceil, isfinite
 
 import numpy as np
 from scipy.stats import binomtest, norm
-from semitau.core.true_minus import formatted
+from scipy.stats import t as student
+from semitau.core.true_minus import formatted, with_sign
 
 from .pulls import Summary, binomial_interval
 
 SIGNIFICANT = 3.0
 """Standard deviations from which a departure is called one; by chance it happens once in 370 tests."""
+
+RARE = float(2.0 * norm.sf(SIGNIFICANT))
+"""Chance of such a departure."""
+
+FEW = 20
+"""Toys below which the pull width, whose error comes from the same pulls, is not judged."""
 
 TOLERATED = 0.1
 """Bias in units of the fit's error that "no bias" must exclude: it would add half a percent to the total error."""
@@ -31,7 +38,7 @@ class Verdict:
 
     judgement : "biased" (the departure is significant), "unbiased" (a bias above TOLERATED of the fit's error is
         excluded at 95% confidence), or "undecided" (too few toys for either).
-    significance, p_value : the bias in standard deviations of its own error, and how often chance alone does that.
+    significance, p_value : the bias over its own error, and how often chance alone does that (Student's law).
     excluded : a bias beyond this, in units of the fit's error, is excluded at 95% confidence.
     toys_needed : about how many toys would exclude a bias above TOLERATED if none is there.
     covers : whether pull width and both coverages agree with their nominal values within SIGNIFICANT.
@@ -54,10 +61,12 @@ def judge(summary: Summary) -> Verdict:
         text = f"{summary.parameter}: {summary.fitted} of {summary.toys} toys were fitted: nothing can be said."
         return Verdict(summary.parameter, "undecided", float("nan"), 1.0, float("inf"), 0, False, text)
     significance = summary.bias / summary.bias_error
-    p_value = float(2.0 * norm.sf(abs(significance)))
-    excluded = (abs(summary.bias) + AT_95 * summary.bias_error) / summary.mean_error
+    # The error of a mean of few toys is known by these toys only: Student's law.
+    p_value = float(2.0 * student.sf(abs(significance), summary.fitted - 1))
+    reach = float(student.isf(0.025, summary.fitted - 1)) * summary.bias_error
+    excluded = (abs(summary.bias) + reach) / summary.mean_error
     needed = ceil((AT_95 * summary.spread / (TOLERATED * summary.mean_error)) ** 2)
-    if abs(significance) >= SIGNIFICANT:
+    if p_value <= RARE:
         judgement = "biased"
     else:
         judgement = "unbiased" if excluded <= TOLERATED else "undecided"
@@ -84,7 +93,7 @@ def judge(summary: Summary) -> Verdict:
 def _of_bias(
     summary: Summary, judgement: str, significance: float, p_value: float, excluded: float, needed: int
 ) -> str:
-    size = f"{formatted(summary.bias, '+.2g')} ± {formatted(summary.bias_error, '.1g')}"
+    size = with_sign(summary.bias, summary.bias_error)
     relative = f"{formatted(summary.bias / summary.mean_error, '+.3f')} of the fit's error"
     if judgement == "biased":
         return (
@@ -108,10 +117,10 @@ def _departures(summary: Summary) -> list[str]:
     """Pull width and coverages that do not agree with their nominal values."""
     found = []
     width = (summary.pull_width - 1.0) / summary.pull_width_error if summary.pull_width_error > 0 else np.inf
-    if not (isfinite(width) and abs(width) < SIGNIFICANT):
+    if summary.fitted >= FEW and not (isfinite(width) and abs(width) < SIGNIFICANT):
         found.append(f"pull width {summary.pull_width:.3f} ± {summary.pull_width_error:.3f}")
     for part in summary.coverage:
-        if binomtest(part.inside, part.number, part.nominal).pvalue < 2.0 * norm.sf(SIGNIFICANT):
+        if binomtest(part.inside, part.number, part.nominal).pvalue < RARE:
             found.append(f"coverage {part.fraction:.1%} where {part.nominal:.1%} is due")
     return found
 

@@ -62,6 +62,9 @@ def declare_final(path: Path, by: str, output: Path | None = None, seed: int | N
     """
     study, folder, hiding, results = _opened(path, by, output, seed)
     key = study_key(study)
+    if results.blinding is not None and results.blinding.fingerprint != hiding.part.fingerprint:
+        remedy = "Give the passphrase of that run, or run `semitau study` with this one."
+        raise InputError(Problem("the run had another passphrase", where=str(folder.path), remedy=remedy))
     if results.study.key != key or results.blinding != hiding.part:
         raise InputError(
             Problem("the folder holds an older run", where=str(folder.path), remedy="Run `semitau study` first.")

@@ -14,7 +14,7 @@ SEED = 1
 
 @click.command()
 @click.argument("templates", type=click.Path(path_type=Path))
-@click.option("--number", type=click.IntRange(1), default=2000, show_default=True, help="Toys.")
+@click.option("--number", type=click.IntRange(2), default=2000, show_default=True, help="Toys.")
 @click.option(
     "--factors", default="", metavar="LIST", help='Also fit toys at these multiples of the ratios, e.g. "0.8,1,1.2".'
 )
