@@ -145,9 +145,7 @@ def test_data_of_a_template_set_and_of_a_file(tmp_path: Path) -> None:
 
 
 def test_bad_models() -> None:
-    with pytest.raises(
-        InputError, match=r"not a template set \(got str, allowed a template set"
-    ):
+    with pytest.raises(InputError, match=r"not a template set \(got str, allowed a template set"):
         Model("templates.root")  # type: ignore[arg-type]
     with pytest.raises(InputError, match="Did you mean 'R_Dst'"):
         Model(SMALL, fixed={"R_Dsta": 0.3})

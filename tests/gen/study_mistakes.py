@@ -791,7 +791,7 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         "variation[R0]: does not say what varies (allowed beside or source, one of them)",
         -2,
     ),
-    "no toys": ("[selection]", "[toys]\nnumber = 0\n[selection]", "toys.number: must be above 0 (got 0)", 1),
+    "no toys": ("[selection]", "[toys]\nnumber = 0\n[selection]", "toys.number: must not be below 2 (got 0)", 1),
     "reach of an unknown ratio": (
         "[selection]",
         "[reach]\nagainst = { R_D = 0.3, R_Ds = 0.25 }\n[selection]",

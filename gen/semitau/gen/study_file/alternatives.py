@@ -55,7 +55,7 @@ class BiasSection(Table):
     negligible: NotNegative = Field(
         default=0.1, description="share of the whole error below which a shift does not matter"
     )
-    replicas: Annotated[Count, Field(ge=4)] = Field(
+    replicas: Annotated[Count, Field(ge=4), WithJsonSchema({"type": "integer", "minimum": 4})] = Field(
         default=10, description="independent sets of events that tell the error of the shifts from finite templates"
     )
     replica_events: Annotated[Positive, Field(le=1)] = Field(

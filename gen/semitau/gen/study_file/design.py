@@ -7,7 +7,7 @@ from typing import Annotated, Literal
 from pydantic import Field, model_validator
 
 from .categories import Axis
-from .rules import ByObservable, Count, Flag, Fraction, ObservableKey, Positive, Table, Value, broken
+from .rules import ByObservable, Count, Flag, Fraction, ObservableKey, Positive, Several, Table, Value, broken
 
 Goal = Literal["mean", "area", "R_D", "R_Dst"]
 Range = tuple[Value, Value]
@@ -21,7 +21,7 @@ class ScannedCut(Table):
 
     min: Range | None = Field(default=None, description="lowest and highest value of the lower limit")
     max: Range | None = Field(default=None, description="lowest and highest value of the upper limit")
-    steps: Annotated[Count, Field(ge=2, le=100)] = Field(
+    steps: Annotated[Several, Field(le=100)] = Field(
         default=8, description="values of each range; that of the study is added"
     )
     by_category: Flag = Field(default=False, description="a value of its own for each [[category]] table")

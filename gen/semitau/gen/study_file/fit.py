@@ -9,13 +9,13 @@ from pydantic import BeforeValidator, Field, model_validator
 from .fit_parameters import Bounds, Constraint, Correlated
 from .names import COEFFICIENTS, RatioName
 from .rules import (
-    Count,
     Distinct,
     Flag,
     Identifier,
     Increasing,
     Number,
     Positive,
+    Several,
     ShortTable,
     Table,
     Text,
@@ -97,13 +97,13 @@ class Linearity(ShortTable):
     factors: Annotated[tuple[Positive, ...], Field(min_length=2), Increasing] = Field(
         default=(0.8, 1.0, 1.2, 1.4), description="of all injected ratios at once"
     )
-    number: Count = Field(default=500, ge=2, description="toys at each")
+    number: Several = Field(default=500, description="toys at each")
 
 
 class Toys(Table):
     """Pseudo-experiments that try the fit."""
 
-    number: Count = Field(default=2000, ge=2, description="toys at the injected ratios")
+    number: Several = Field(default=2000, description="toys at the injected ratios")
     linearity: Annotated[Linearity | None, BeforeValidator(lambda given: None if given is False else given)] = Field(
         default=Linearity(), description="false switches it off"
     )

@@ -170,6 +170,9 @@ Count = Annotated[
     Field(strict=True, gt=0),
     WithJsonSchema({"type": "integer", "exclusiveMinimum": 0}),
 ]
+Several = Annotated[
+    int, BeforeValidator(_whole), Field(strict=True, ge=2), WithJsonSchema({"type": "integer", "minimum": 2})
+]
 Seed = Annotated[int, Field(strict=True, ge=0, lt=2**63)]
 Energy = Annotated[float, _energy, _energy_schema, _strict]
 # Where an observable is named as a key.

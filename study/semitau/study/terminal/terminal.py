@@ -57,4 +57,6 @@ class Terminal:
         if not console.is_terminal:
             # Rich folds at 80 columns when it writes to a pipe; tables there should keep their lines.
             console.width = max(console.width, 120)
+        elif not stderr:
+            console.width = max(console.width, 80)  # rather lines that the terminal breaks than figures that are cut
         return console
