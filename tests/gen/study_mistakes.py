@@ -792,6 +792,12 @@ MISTAKES: dict[str, tuple[str, str, str] | tuple[str, str, str, int]] = {
         -2,
     ),
     "no toys": ("[selection]", "[toys]\nnumber = 0\n[selection]", "toys.number: must not be below 2 (got 0)", 1),
+    "design for a ratio that is held": (
+        "[selection]",
+        '[fit]\nfixed = { R_D = 0.3 }\n[design]\nminimise = "R_D"\n[selection]',
+        'design.minimise: names no ratio that is fitted (got "R_D", allowed mean, area, R_Dst)',
+        3,
+    ),
     "reach of an unknown ratio": (
         "[selection]",
         "[reach]\nagainst = { R_D = 0.3, R_Ds = 0.25 }\n[selection]",

@@ -209,8 +209,8 @@ def test_syntax(tmp_path: Path, text: str, message: str) -> None:
     assert [line.lower() for line in complaint(tmp_path, text)] == [message.lower()]
 
 
-def test_empty_file_lacks_everything(tmp_path: Path) -> None:
-    got = complaint(tmp_path, "")
+def test_file_without_tables_lacks_everything(tmp_path: Path) -> None:
+    got = complaint(tmp_path, "# nothing yet\n")
     assert [line.split(": ")[1].split(". ")[0] for line in got] == [
         f"lacks the key {key}" for key in ("study", "experiment", "mode", "category")
     ]
@@ -221,6 +221,12 @@ def test_empty_file_lacks_everything(tmp_path: Path) -> None:
     [
         (lambda path: None, "there is no such file"),
         (lambda path: path.mkdir(), "is a folder. Name the file in it."),
+        (lambda path: path.write_bytes(b"\n \n"), "is empty. Examples are in configs/ and docs/."),
+        (
+            lambda path: path.write_text("a = “300\u00a0MeV”"),
+            ":1:5: is no TOML: invalid value (got \u00a0 (U+00A0), “ (U+201C)",
+        ),
+        (lambda path: path.write_text("a = ‘b’\n"), "’ (U+2019)). Write straight quotes and plain blanks"),
         (lambda path: path.write_bytes(b"root\x00\x00\xff\xfe"), ":1: is no UTF-8 text. Save the file as UTF-8 text."),
         (lambda path: path.write_bytes(b"# a\n# \xe9\n"), ":2: is no UTF-8 text. Save the file as UTF-8 text."),
         (lambda path: path.write_bytes(b"#" * 5_000_000), "is too large"),

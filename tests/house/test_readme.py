@@ -1,4 +1,4 @@
-"""The README is executed: its commands exist, its Python block prints what it says."""
+"""The README is executed: its commands exist, its Python block prints what it says, as those of docs/python.md do."""
 
 from __future__ import annotations
 
@@ -50,3 +50,11 @@ def test_python_blocks_print_what_they_say(number: int) -> None:
     assert expected, "a Python block of the README must state its output in '# prints:' comments"
     done = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
     assert done.stdout.splitlines() == expected
+
+
+def test_the_python_page_prints_what_it_says(tmp_path: Path) -> None:
+    """All blocks of docs/python.md as one session, in an empty folder."""
+    code = "\n".join(re.findall(r"^```python\n(.*?)^```", (ROOT / "docs" / "python.md").read_text(), flags=re.M | re.S))
+    done = subprocess.run([sys.executable, "-c", code], cwd=tmp_path, capture_output=True, text=True, check=False)
+    assert done.returncode == 0, done.stderr
+    assert done.stdout.splitlines() == re.findall(r"# prints: (.*)$", code, flags=re.M)

@@ -6,6 +6,7 @@ from collections.abc import Iterator
 from typing import TYPE_CHECKING
 
 from .design import DesignSection, ScannedCut
+from .prospect_conflicts import fitted_ratios
 from .rules import shown
 from .sections import Conflict, Place
 
@@ -40,6 +41,10 @@ def design_conflicts(study: StudyConfig, design: DesignSection) -> Iterator[Conf
             "Leave out coefficients in [fit], or [design].",
         )
         yield Conflict(("design",), what, shown(study.fit.coefficients), remedy=remedy)
+    goal, fitted = design.minimise, fitted_ratios(study)
+    if goal not in ("mean", "area", *fitted) and not any(name.startswith(f"{goal}_B") for name in fitted):
+        allowed = ", ".join(("mean", "area", *fitted))
+        yield Conflict(("design", "minimise"), "names no ratio that is fitted", shown(goal), allowed)
     for observable, scan in design.cuts.items():
         place: Place = ("design", "cuts", observable)
         if observable == "delta_m":

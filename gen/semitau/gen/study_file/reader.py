@@ -19,6 +19,9 @@ from .study import StudyConfig
 
 MOST_BYTES = 4_000_000
 
+TYPESET = "“”„‟‘’‚«»\u00a0\u2007\u202f"
+"""Letters that stand in the place of quotes and blanks in typeset text."""
+
 
 def read_study(path: Path | str) -> StudyConfig:
     """The study in a TOML file, with its text and path.
@@ -50,6 +53,8 @@ def text_of(path: Path) -> str:
     if len(content) > MOST_BYTES:
         problem = Problem("is too large", str(path), f"{len(content)} bytes", f"up to {MOST_BYTES} bytes")
         raise InputError(problem)
+    if not content.strip():
+        raise InputError(Problem("is empty", str(path), remedy="Examples are in configs/ and docs/."))
     try:
         # universal newlines, as TOML asks; a byte-order mark, which some editors write, is no harm
         return content.decode("utf-8-sig").replace("\r\n", "\n")
@@ -65,7 +70,11 @@ def tables_of(text: str, path: Path) -> dict[str, Any]:
         return tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
         message, place = _syntax(str(error), text)
-        raise InputError(Problem(f"is no TOML: {message}", f"{path}:{place}")) from None
+        line = text.splitlines()[int(place.partition(":")[0]) - 1] if text.strip() else ""
+        odd = sorted({letter for letter in line if letter in TYPESET})
+        got = ", ".join(f"{letter} (U+{ord(letter):04X})" for letter in odd)
+        remedy = "Write straight quotes and plain blanks; word processors replace them." if odd else ""
+        raise InputError(Problem(f"is no TOML: {message}", f"{path}:{place}", got=got, remedy=remedy)) from None
     except RecursionError:
         raise InputError(Problem("is no TOML: nested too deeply", str(path))) from None
     except ValueError as error:  # such as a date that does not exist, or a number of too many digits

@@ -69,9 +69,11 @@ class Sections:
 def missing_file(place: Place, file: str, folder: Path) -> Iterator[Conflict]:
     """A conflict if there is no file of this name, seen from `folder`."""
     try:
-        found = (folder / file).is_file()
+        found, is_folder = (folder / file).is_file(), (folder / file).is_dir()
     except (OSError, ValueError):  # a name that no file can have
-        found = False
-    if not found:
+        found, is_folder = False, False
+    if is_folder:
+        yield Conflict(place, "is a folder", shown(file), remedy="Name the file in it.")
+    elif not found:
         remedy = "Relative names are looked for beside the study file."
         yield Conflict(place, "there is no such file", shown(file), remedy=remedy)

@@ -25,7 +25,7 @@ from .part import (
 )
 from .tables import RATIOS
 
-REGIONS = (0.6827, 0.9545, 0.9973)
+REGIONS = (0.6826895, 0.9544997, 0.9973002)
 """Probabilities of the regions that are told."""
 
 

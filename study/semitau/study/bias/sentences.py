@@ -54,8 +54,8 @@ def other_sentences(
     own = [pair for pair in apart if pair.fitted_with == nominal]
     well = [pair for pair in own if pair.ratios and all(r.status in ("covered", "negligible") for r in pair.ratios)]
     yield (
-        f"Fitted with the study itself, {len(well)} of {len(own)} alternatives shift no ratio by more than what covers "
-        "it, or negligibly."
+        f"Fitted with the study itself, {len(well)} of {len(own)} alternatives shift every ratio negligibly, or by no "
+        "more than what covers it."
     )
     for pair in own:
         if pair.goodness is not None and pair.goodness.deviance < SAME:

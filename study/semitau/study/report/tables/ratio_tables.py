@@ -45,7 +45,7 @@ def budget_table(results: Results) -> ReportTable | None:
     columns = [Column("Source", text=True)]
     for budget in results.budget:
         label = labels[budget.ratio]
-        columns += [Column(f"error of {label}"), Column(f"{label}, source held")]
+        columns += [Column(f"error of {label}"), Column(f"fall of {label} error if held")]
     sources = {row.source: row.label for budget in results.budget for row in budget.rows}
     largest = {
         source: max(
