@@ -48,6 +48,7 @@ def given(**tables: dict[str, object]) -> BranchingFractions:
         "Dst0": "D*0",
         "Dsst": "D_s*+",
         "Ds": "D_s+",
+        "pairs": "pi pi",
     }
     return BranchingFractionTables.model_validate({names.get(k, k): v for k, v in tables.items()}).fractions
 
@@ -173,6 +174,40 @@ def test_decays_of_excited_charm() -> None:
     assert total(tensor, vector="", second="none") == pytest.approx(0.5 * whole, rel=1e-12)
     assert whole - total(tensor, vector="") == pytest.approx(0.2 * whole, rel=1e-12)
     assert whole - total(tensor, second="none") == pytest.approx(0.3 * whole, rel=1e-12)
+
+
+@pytest.mark.parametrize("family", ["D1(2420)", "(D* pi pi)"])
+def test_charges_of_pion_pairs(family: str) -> None:
+    """Pair of isospin 0: pi+ pi- 2/3, pi0 pi0 1/3; of isospin 1: pi+ pi- 1/3, pi+ pi0 2/3 (Clebsch-Gordan coefficients,
+    particle data tables); without a word the mean of both. The rate stays."""
+    scalar = {"pi+ pi-": 2 / 3, "pi+ pi0": 0.0, "pi0 pi0": 1 / 3}
+    vector = {"pi+ pi-": 1 / 3, "pi+ pi0": 2 / 3, "pi0 pi0": 0.0}
+    mean = {name: (scalar[name] + vector[name]) / 2 for name in scalar}
+    rate = total(of(family, FROM_TABLES))
+    for shares, fractions in ((scalar, given(pairs=scalar)), (vector, given(pairs=vector)), (mean, FROM_TABLES)):
+        chains = of(family, fractions)
+        assert total(chains) == pytest.approx(rate, rel=1e-12)
+        pairs = rate - total(chains, second="none")
+        for kinds, share in zip(
+            (("charged", "charged"), ("charged", "neutral"), ("neutral", "neutral")), shares.values(), strict=True
+        ):
+            assert total(chains, bachelor=kinds[0], second=kinds[1]) == pytest.approx(share * pairs, abs=1e-12 * pairs)
+
+
+def test_varied_charges_of_pion_pairs(tmp_path: Path) -> None:
+    """One standard deviation is the way from the mean to either isospin: charged pairs 2/3 or 1/3 of all; nothing else
+    but pairs moves."""
+    study = study_with(tmp_path, CHANGE.format("pi pi", "pi+ pi-"))
+    for sign, charged in ((1, 2 / 3), (-1, 1 / 3)):
+        found = factors(study, sign)
+        for name, factor in found.items():
+            pair = sum(name.split("->")[-1].count(pion) for pion in ("pi+", "pi-", "pi0"))
+            if factor != 1.0:
+                assert pair >= 2
+                assert factor == pytest.approx(2 * charged, rel=1e-9) or factor == pytest.approx(
+                    2 - 2 * charged, rel=1e-9
+                )
+        assert any(factor != 1.0 for factor in found.values())
 
 
 @pytest.mark.parametrize("family", ["D2*(2460)", "D1'(2430)"])

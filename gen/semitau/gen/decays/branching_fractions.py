@@ -1,8 +1,8 @@
 """The branching fractions that decay chains are made with: those of the tables, or others given instead of them.
 
 A fraction is named by the particle that decays and by the final state in words: "tau" to "mu", "D*+" to "D0 pi+",
-"D1(2420)" to "D pi pi", "B+" to "D* l" (one light lepton, mean of e and mu) or "D D_s+" (no charge for the first D),
-"D_s+" to "tau" or "phi e". Neutrinos and charge conjugates are left out.
+"D1(2420)" to "D pi pi", "pi pi" to "pi+ pi-", "B+" to "D* l" (one light lepton, mean of e and mu) or "D D_s+" (no
+charge for the first D), "D_s+" to "tau" or "phi e". Neutrinos and charge conjugates are left out.
 """
 
 from __future__ import annotations
@@ -16,7 +16,7 @@ from semitau.core.charm_fractions import STRANGE_VECTOR_PHOTON, TO_LEPTONS, TO_T
 from semitau.core.constants import BRANCHING_FRACTION, LIFETIME
 
 from .decay import CHARMS, PARENTS
-from .orbital_states import CHARM_STATES, ORBITAL_STATES, CharmState
+from .orbital_states import CHARM_STATES, ORBITAL_STATES, PION_PAIR_ERROR, PION_PAIR_SHARES, CharmState
 
 LIGHT = " l"
 """Behind a charmed meson: with one light lepton, mean of e and mu."""
@@ -27,7 +27,17 @@ VECTOR_DECAYS = {
 }
 """Species of the D* -> final state -> (species of the D, kind of soft particle)."""
 
-COMPLETE = ("D*+", "D*0", "D_s*+", "D1(2420)", "D2*(2460)", "D1'(2430)")
+PION_PAIR = "pi pi"
+"""Stands where a particle does: two pions beside a D or D*, by their charges."""
+
+PION_PAIRS = {
+    "pi+ pi-": ("charged", "charged"),
+    "pi+ pi0": ("charged", "neutral"),
+    "pi0 pi0": ("neutral", "neutral"),
+}
+"""Final state -> kinds of both pions."""
+
+COMPLETE = ("D*+", "D*0", "D_s*+", "D1(2420)", "D2*(2460)", "D1'(2430)", PION_PAIR)
 """Particles whose decays sum to one."""
 
 _ORBITAL_DECAYS = {  # by parity and angular momentum; the D0* has D pi alone
@@ -67,6 +77,10 @@ TABLES: Mapping[str, Mapping[str, Fraction | None]] = MappingProxyType(
         "D_s*+": {
             "D_s+ gamma": STRANGE_VECTOR_PHOTON,
             "D_s+ pi0": Fraction(1.0 - STRANGE_VECTOR_PHOTON.value, STRANGE_VECTOR_PHOTON.error),
+        },
+        PION_PAIR: {
+            name: Fraction(PION_PAIR_SHARES[kinds], PION_PAIR_ERROR if name == "pi+ pi-" else 0.0)
+            for name, kinds in PION_PAIRS.items()
         },
         "tau": {k: Fraction(v, 0.0) for k, v in BRANCHING_FRACTION["tau"].items()},
         **{meson: {_words(k): v for k, v in row.items()} for meson, row in TO_LEPTONS.items()},
@@ -120,6 +134,11 @@ class BranchingFractions:
             vector: tuple((*products, self.value(vector, final)) for final, products in finals.items())
             for vector, finals in VECTOR_DECAYS.items()
         }
+
+    @cached_property
+    def pion_pairs(self) -> tuple[tuple[str, str, float], ...]:
+        """Kinds of two pions beside a D or D*, share."""
+        return tuple((*kinds, self.value(PION_PAIR, final)) for final, kinds in PION_PAIRS.items())
 
     def state(self, family: str) -> CharmState:
         """A D** or continuum with the shares of its decays; its whole rate as in the tables."""

@@ -12,7 +12,7 @@ from .branching_fractions import FROM_TABLES, BranchingFractions
 from .decay import CHARMS, DEFAULT_SETS, LEPTONS, PARENTS, Decay, WilsonCoefficients, charm_name
 from .form_factor_set import FormFactorSet
 from .lepton_couplings import Given, LeptonCouplings
-from .orbital_states import CHARGED_PION_SHARE, PION_PAIR_SHARES, CharmState
+from .orbital_states import CHARGED_PION_SHARE
 from .rates import observables, ratio
 from .seen_charm import SeenCharm
 
@@ -203,14 +203,17 @@ def _charm_chains(decay: Decay, fractions: BranchingFractions) -> Iterator[tuple
     if decay.orbital is None:
         parts = [("none", "none", "D*" in decay.charm, charge, 1.0)]
     else:
-        parts = [part for part in _light_mesons(fractions.state(decay.family), charge) if part[-1] > 0.0]
+        parts = [part for part in _light_mesons(fractions, decay.family, charge) if part[-1] > 0.0]
     for bachelor, second, is_vector, daughter_charge, share in parts:
         for vector, soft, ground, fraction in _hadron_chains(is_vector, daughter_charge, fractions):
             yield bachelor, second, vector, soft, ground, share * fraction
 
 
-def _light_mesons(state: CharmState, charge: str) -> Iterator[tuple[str, str, bool, str, float]]:
+def _light_mesons(
+    fractions: BranchingFractions, family: str, charge: str
+) -> Iterator[tuple[str, str, bool, str, float]]:
     """Bachelor, second pion, whether the rest is a D*, charge of the rest, share."""
+    state = fractions.state(family)
     other = "0" if charge == "+" else "+"
     total = 1.0 + state.to_two_pions
     for is_vector, share in ((True, state.to_vector / total), (False, (1.0 - state.to_vector) / total)):
@@ -220,13 +223,15 @@ def _light_mesons(state: CharmState, charge: str) -> Iterator[tuple[str, str, bo
         elif state.light == "eta":
             yield "eta", "none", is_vector, charge, share
         else:
-            yield from _pion_pairs(is_vector, charge, share)
-    yield from _pion_pairs(False, charge, state.to_two_pions / total)
+            yield from _pion_pairs(fractions, is_vector, charge, share)
+    yield from _pion_pairs(fractions, False, charge, state.to_two_pions / total)
 
 
-def _pion_pairs(is_vector: bool, charge: str, share: float) -> Iterator[tuple[str, str, bool, str, float]]:
+def _pion_pairs(
+    fractions: BranchingFractions, is_vector: bool, charge: str, share: float
+) -> Iterator[tuple[str, str, bool, str, float]]:
     other = "0" if charge == "+" else "+"
-    for (first, second), isospin in PION_PAIR_SHARES.items():
+    for first, second, isospin in fractions.pion_pairs:
         yield first, second, is_vector, charge if first == second else other, share * isospin
 
 

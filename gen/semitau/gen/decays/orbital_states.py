@@ -107,4 +107,7 @@ PION_PAIR_SHARES: Mapping[tuple[str, str], float] = MappingProxyType(
     {("charged", "charged"): 1.0 / 2.0, ("charged", "neutral"): 1.0 / 3.0, ("neutral", "neutral"): 1.0 / 6.0}
 )
 """Charges of the two pions of isospin 1/2 -> isospin 1/2 and a pair: mean of a pair of isospin 0 (2/3, 0, 1/3) and of
-isospin 1 (1/3, 2/3, 0). The share of two charged ones is 1/2 +- 1/6."""
+isospin 1 (1/3, 2/3, 0)."""
+
+PION_PAIR_ERROR = 1.0 / 6.0
+"""Of the share of two charged pions: the distance to either isospin."""

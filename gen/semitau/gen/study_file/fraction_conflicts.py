@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Iterator, Mapping
 
-from ..decays.branching_fractions import COMPLETE, LIGHT, TABLES, BranchingFractions
+from ..decays.branching_fractions import COMPLETE, LIGHT, PION_PAIR, TABLES, BranchingFractions
 from ..decays.charm_semileptonic import muon_over_electron
 from ..decays.double_charm import class_of, source_of
 from ..decays.orbital_states import CHARM_STATES
@@ -124,6 +124,8 @@ def _of_modes(sections: Sections, tables: BranchingFractionTables) -> Iterator[t
                     yield (_vector(parent),)
             if family in CHARM_STATES:
                 yield (family,)
+                if _gives_pairs(family, tables.fractions):
+                    yield (PION_PAIR,)
                 if _gives_vector(family, tables.fractions):
                     yield ("D*0",)
                     yield ("D*+",)
@@ -155,6 +157,12 @@ def _gives_vector(family: str, fractions: BranchingFractions) -> bool:
     if family in COMPLETE:
         return fractions.value(family, "D* pi") > 0.0
     return CHARM_STATES[family].to_vector > 0.0
+
+
+def _gives_pairs(family: str, fractions: BranchingFractions) -> bool:
+    if family in COMPLETE:
+        return fractions.value(family, "D pi pi") > 0.0
+    return CHARM_STATES[family].light == "pi pi"
 
 
 def _vector(parent: str) -> str:

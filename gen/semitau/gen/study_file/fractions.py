@@ -97,6 +97,9 @@ class BranchingFractionTables(Table):
     D1_broad: dict[Annotated[str, FinalState("D1'(2430)")], GivenFraction] = Field(
         default={}, alias="D1'(2430)", description="sum to one"
     )
+    pairs: dict[Annotated[str, FinalState("pi pi")], GivenFraction] = Field(
+        default={}, alias="pi pi", description="two pions beside a D or D* by their charges; sum to one"
+    )
     vector_charged: dict[Annotated[str, FinalState("D*+")], GivenFraction] = Field(
         default={}, alias="D*+", description="sum to one"
     )
