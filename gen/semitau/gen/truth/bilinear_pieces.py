@@ -9,7 +9,7 @@ whose quadratic form it polarises: the tau decay is the form W = 1 + odd . sigma
 from __future__ import annotations
 
 from functools import lru_cache
-from typing import NamedTuple
+from typing import Any, NamedTuple
 
 import numpy as np
 import numpy.typing as npt
@@ -92,19 +92,29 @@ def bilinear_pieces(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
     x : block as `variation_weights` takes it. out : (>= n, >= pieces).
     """
     analyse(x, table.chain)
+    if table.chain.spin.wave == TWO_UNITS_TO_VECTOR:
+        _pieces_of_both_waves(x, table, out, n)
+    else:
+        _pieces_of_one_wave(x, table, out, n)
+
+
+@inlined
+def _fill_pieces(x: Floats, table: PieceTable, out: Floats, n: int, fill: Any, real: Any, imaginary: Any) -> None:
+    """fill, real, imaginary : `_states`, `_real_part`, `_imaginary_part`, or their like for both waves."""
+    spin = table.chain.spin
     states = np.zeros((OPERATORS_AT_MOST, 14))
     for i in range(n):
-        _states(x, i, table, states)
+        fill(x, i, table, states)
         px, py, pz = x[row.POLARISATION_X + i], x[row.POLARISATION_Y + i], x[row.POLARISATION_Z + i]
         place = 0
         for m in range(table.operators):
             for k in range(m, table.operators):
-                out[i, place] = _real_part(states[m], states[k], table.chain.spin, px, py, pz)
+                out[i, place] = real(states[m], states[k], spin, px, py, pz)
                 place += 1
         if table.imaginary:
             for m in range(table.operators):
                 for k in range(m + 1, table.operators):
-                    out[i, place] = _imaginary_part(states[m], states[k], table.chain.spin, px, py, pz)
+                    out[i, place] = imaginary(states[m], states[k], spin, px, py, pz)
                     place += 1
         density = 0.0
         for p in range(table.pieces):
@@ -112,6 +122,16 @@ def bilinear_pieces(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
         scale = 1.0 / density
         for p in range(table.pieces):
             out[i, p] *= scale
+
+
+@kernel
+def _pieces_of_one_wave(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
+    _fill_pieces(x, table, out, n, _states, _real_part, _imaginary_part)
+
+
+@kernel
+def _pieces_of_both_waves(x: Floats, table: PieceTable, out: Floats, n: int) -> None:
+    _fill_pieces(x, table, out, n, _both_states, _both_real_parts, _both_imaginary_parts)
 
 
 @inlined
@@ -125,7 +145,7 @@ def _states(x: Floats, i: int, table: PieceTable, states: Floats) -> None:
     x_lepton = table.chain.lepton_mass / np.sqrt(x[row.Q2 + i])
     v, cos_chi, sin_chi = x[row.COS_V + i], x[row.COS_CHI + i], x[row.SIN_CHI + i]
     plus, zero = first_wave(table.chain.spin.wave, v)
-    side = second_wave(table.chain.spin.wave, v)
+    real, turned = plus * cos_chi, plus * sin_chi
     step = table.operators * AMPLITUDES
     for o in range(table.operators):
         a = k * step + o * AMPLITUDES
@@ -146,14 +166,22 @@ def _states(x: Floats, i: int, table: PieceTable, states: Floats) -> None:
         )
         s = states[o]
         s[0], s[1], s[2], s[3], s[4], s[5] = kp_minus, km_minus, k0_minus, kp_plus, km_plus, k0_plus
-        s[6] = plus * cos_chi * (kp_minus - km_minus) + zero * k0_minus
-        s[7] = plus * sin_chi * (kp_minus + km_minus)
-        s[8] = plus * cos_chi * (kp_plus - km_plus) + zero * k0_plus
-        s[9] = plus * sin_chi * (kp_plus + km_plus)
-        s[10] = side * cos_chi * (kp_minus + km_minus)
-        s[11] = side * sin_chi * (kp_minus - km_minus)
-        s[12] = side * cos_chi * (kp_plus + km_plus)
-        s[13] = side * sin_chi * (kp_plus - km_plus)
+        s[6] = real * (kp_minus - km_minus) + zero * k0_minus
+        s[7] = turned * (kp_minus + km_minus)
+        s[8] = real * (kp_plus - km_plus) + zero * k0_plus
+        s[9] = turned * (kp_plus + km_plus)
+
+
+@inlined
+def _both_states(x: Floats, i: int, table: PieceTable, states: Floats) -> None:
+    """As `_states`, with the sums of the second wave behind."""
+    _states(x, i, table, states)
+    side = second_wave(table.chain.spin.wave, x[row.COS_V + i])
+    real, turned = side * x[row.COS_CHI + i], side * x[row.SIN_CHI + i]
+    for o in range(table.operators):
+        s = states[o]
+        s[10], s[11] = real * (s[0] + s[1]), turned * (s[0] - s[1])
+        s[12], s[13] = real * (s[3] + s[4]), turned * (s[3] - s[4])
 
 
 @inlined
@@ -163,10 +191,13 @@ def _real_part(a: Floats, b: Floats, spin: CharmSpin, px: float, py: float, pz: 
     plus = a[3] * b[3] + a[4] * b[4] + a[5] * b[5]
     mixed = a[3] * b[0] + a[4] * b[1] + a[5] * b[2] + a[0] * b[3] + a[1] * b[4] + a[2] * b[5]
     flat = (1.0 - pz) * minus + (1.0 + pz) * plus + px * mixed
-    waves = _real_wave(a, b, 6, px, py, pz)
-    if spin.wave == TWO_UNITS_TO_VECTOR:
-        waves += _real_wave(a, b, 10, px, py, pz)
-    return spin.incoherent * flat + spin.coherent * waves  # type: ignore[no-any-return]
+    return spin.incoherent * flat + spin.coherent * _real_wave(a, b, 6, px, py, pz)  # type: ignore[no-any-return]
+
+
+@inlined
+def _both_real_parts(a: Floats, b: Floats, spin: CharmSpin, px: float, py: float, pz: float) -> float:
+    first = _real_part(a, b, spin, px, py, pz)
+    return first + spin.coherent * _real_wave(a, b, 10, px, py, pz)  # type: ignore[no-any-return]
 
 
 @inlined
@@ -187,10 +218,14 @@ def _real_wave(a: Floats, b: Floats, first: int, px: float, py: float, pz: float
 def _imaginary_part(a: Floats, b: Floats, spin: CharmSpin, px: float, py: float, pz: float) -> float:
     """Im D of two operators."""
     mixed = a[0] * b[3] + a[1] * b[4] + a[2] * b[5] - a[3] * b[0] - a[4] * b[1] - a[5] * b[2]
-    waves = _imaginary_wave(a, b, 6, px, py, pz)
-    if spin.wave == TWO_UNITS_TO_VECTOR:
-        waves += _imaginary_wave(a, b, 10, px, py, pz)
-    return spin.incoherent * py * mixed + spin.coherent * waves  # type: ignore[no-any-return]
+    wave = _imaginary_wave(a, b, 6, px, py, pz)
+    return spin.incoherent * py * mixed + spin.coherent * wave  # type: ignore[no-any-return]
+
+
+@inlined
+def _both_imaginary_parts(a: Floats, b: Floats, spin: CharmSpin, px: float, py: float, pz: float) -> float:
+    first = _imaginary_part(a, b, spin, px, py, pz)
+    return first + spin.coherent * _imaginary_wave(a, b, 10, px, py, pz)  # type: ignore[no-any-return]
 
 
 @inlined
