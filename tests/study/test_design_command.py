@@ -48,4 +48,7 @@ def test_ratios_that_cannot_be_told(mini: WriteStudy, capsys: Capture) -> None:
     # other tables name the ratio as well
     path.write_text(text[: text.index("[toys]")] + '[design]\nminimise = "R_D"\n')
     assert main(["design", str(path), "--quiet"]) == 2
-    assert "[design] minimise: is no fitted ratio (got R_D, allowed R_Dst)" in capsys.readouterr().err
+    assert (
+        'design.minimise: names no ratio that is fitted (got "R_D", allowed mean, area, R_Dst)'
+        in capsys.readouterr().err
+    )

@@ -5,6 +5,7 @@ Nothing is drawn at random. The templates are those of conftest.py instead of ge
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from pathlib import Path
 
@@ -186,7 +187,9 @@ def test_the_picture_needs_the_part_alone(mini: WriteStudy, templates: TemplateS
     part = average_part(made.study, made, 1, None)
     again = AverageResults.model_validate_json(part.model_dump_json())
     assert again == part
-    assert [region.probability for region in part.regions] == [0.6827, 0.9545, 0.9973]
+    # erf(n / sqrt 2) for one, two and three standard deviations
+    expected = [math.erf(n / math.sqrt(2.0)) for n in (1, 2, 3)]
+    assert [region.probability for region in part.regions] == pytest.approx(expected, abs=5e-7)
     drawn = [average_picture(one).save(tmp_path / str(k), "a", "b", "c").svg for k, one in enumerate((part, again))]
     assert drawn[0] == drawn[1]
 
