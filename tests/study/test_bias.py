@@ -334,8 +334,8 @@ def test_what_is_not_covered_comes_first_in_words(bias: Bias) -> None:
     assert rest[0].startswith("Made with the study itself, fitted with a third one: R(D) shifts by +0.0120 ± 0.0010")
     assert "against the 0.0110 of the whole systematic error: the generated events are too few" in rest[0]
     assert rest[1] == (
-        "Fitted with the study itself, 0 of 2 alternatives shift every ratio negligibly, or by no more than what covers "
-        "it."
+        "Fitted with the study itself, 0 of 2 alternatives shift every ratio negligibly, or by no more than what "
+        "covers it."
     )
 
 
